@@ -1,0 +1,66 @@
+"""Divide finite-volume meshes among MPI ranks along a Hilbert curve, and measure the result.
+
+The public names are loaded on first use: `import sfcpart` starts no MPI and compiles nothing.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from sfcpart.api import (
+        Mesh,
+        Partition,
+        assess,
+        cell_graph,
+        curve_keys,
+        curve_order,
+        read_mesh,
+        read_part,
+        split,
+        write_split,
+    )
+
+__version__ = "0.1.0"
+
+_PUBLIC = {
+    "Mesh": "sfcpart.mesh.mesh",
+    "Partition": "sfcpart.partition",
+    "assess": "sfcpart.api",
+    "cell_graph": "sfcpart.api",
+    "curve_keys": "sfcpart.api",
+    "curve_order": "sfcpart.api",
+    "read_mesh": "sfcpart.api",
+    "read_part": "sfcpart.api",
+    "split": "sfcpart.api",
+    "write_split": "sfcpart.api",
+}
+
+__all__ = [  # noqa: RUF022 - in the order a user meets them
+    "read_mesh",
+    "Mesh",
+    "cell_graph",
+    "curve_keys",
+    "curve_order",
+    "split",
+    "Partition",
+    "assess",
+    "write_split",
+    "read_part",
+    "__version__",
+]
+
+
+def __getattr__(name: str) -> Any:
+    """Import a public name on first use."""
+    if name not in _PUBLIC:
+        raise AttributeError(f"module 'sfcpart' has no attribute {name!r}")
+    value = getattr(import_module(_PUBLIC[name]), name)
+    globals()[name] = value
+    return value
+
+
+def __dir__() -> list[str]:
+    """List the public names."""
+    return sorted(__all__)

@@ -1,0 +1,1 @@
+"""Measuring a partition, and looking over a mesh."""

@@ -1,0 +1,1 @@
+"""Ranks: one contract, three communicators."""

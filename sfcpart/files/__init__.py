@@ -1,0 +1,1 @@
+"""Reading meshes, writing parts."""

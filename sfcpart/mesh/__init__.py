@@ -1,0 +1,1 @@
+"""Meshes: the value, its geometry, and what can be wrong with it."""

@@ -1,0 +1,1 @@
+"""Ways to split a mesh: one signature, one registry."""

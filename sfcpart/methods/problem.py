@@ -1,0 +1,58 @@
+"""What every way to split is given: one frozen value, checked at the gate, integers only."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, field
+
+from sfcpart.comm.base import Comm
+from sfcpart.dtypes import FloatArray, Int64Array
+from sfcpart.graph import CellGraph
+
+__all__ = ["Problem"]
+
+
+@dataclass(frozen=True, eq=False)
+class Problem:
+    """A mesh to divide, as a method sees it (all arrays are this rank's slice of the cells).
+
+    Attributes
+    ----------
+    centers : (n_local, dim) float64
+        Cell centres.
+    first_gid : int
+        Global number of this rank's first cell: slices are contiguous in file order.
+    weight : (n_local,) int64 or None
+        Quantised work of each cell; None means 1 each.
+    part_speed : (n_parts,) float64
+        Relative speed of each part, > 0; all ones by default.
+    tolerance : float
+        Allowed excess of the heaviest part over its fair share, e.g. 0.03.
+    level_sizes : tuple of int
+        Nested levels; their product is n_parts. (n_parts,) means one level.
+    limit_weight : (n_local,) int64 or None
+        A second quantised weight (memory) with `part_limit` as the most a part may hold.
+    part_limit : (n_parts,) int64 or None
+    group : (n_local,) int64 or None
+        Cells with the same non-negative number stay together; -1 = free.
+    seed : int
+        The only source of randomness, hashed with the gid where used.
+    graph : callable
+        Returns the cell graph (built on first call); methods without need never call it.
+    comm : Comm
+        The ranks that split together.
+    """
+
+    centers: FloatArray
+    n_parts: int
+    part_speed: FloatArray
+    comm: Comm
+    graph: Callable[[], CellGraph]
+    first_gid: int = 0
+    weight: Int64Array | None = None
+    tolerance: float = 0.03
+    level_sizes: tuple[int, ...] = field(default=())
+    limit_weight: Int64Array | None = None
+    part_limit: Int64Array | None = None
+    group: Int64Array | None = None
+    seed: int = 0

@@ -1,0 +1,146 @@
+"""The frozen result: which part each cell belongs to. It does not know how it was made."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from sfcpart.dtypes import PART, Array, Int32Array, Int64Array
+from sfcpart.errors import PartitionError
+
+__all__ = ["Partition"]
+
+
+@dataclass(frozen=True, eq=False)
+class Partition:
+    """Part of every cell, in the mesh's own cell order.
+
+    Attributes
+    ----------
+    cell_part : (n_cells,) int32, read-only
+        Part of each cell, 0 <= part < n_parts.
+    n_parts : int
+        Number of parts; a part may be empty only if there are more parts than cells.
+
+    Examples
+    --------
+    >>> partition = Partition.from_array([0, 0, 1, 1, 2])
+    >>> partition.n_parts, partition.part_size().tolist()
+    (3, [2, 2, 1])
+    """
+
+    cell_part: Int32Array
+    n_parts: int
+
+    @classmethod
+    def from_array(cls, cell_part: ArrayLike, n_parts: int | None = None) -> Partition:
+        """Check and freeze an array of parts.
+
+        Parameters
+        ----------
+        cell_part : (n_cells,) integers
+            Part of each cell; not modified, copied unless it is already int32 and read-only.
+        n_parts : int, optional
+            Number of parts; by default one more than the largest part.
+
+        Raises
+        ------
+        PartitionError
+            If the array is not one row of integers, or a part is out of range.
+        """
+        array = np.asarray(cell_part)
+        if array.ndim != 1:
+            raise PartitionError(
+                f"cell_part has shape {array.shape}; wanted one integer a cell, (n_cells,)"
+            )
+        if array.dtype.kind not in "iu":
+            array = _whole_numbers(array)
+        highest = int(array.max(initial=-1))
+        count = highest + 1 if n_parts is None else int(n_parts)
+        if count < 1:
+            raise PartitionError(f"n_parts is {count}; wanted at least 1")
+        if highest >= count or int(array.min(initial=0)) < 0:
+            bad = int(np.flatnonzero((array < 0) | (array >= count))[0])
+            raise PartitionError(
+                f"cell {bad} is in part {array[bad]}; parts go from 0 to {count - 1}"
+            )
+        if count > np.iinfo(PART).max:
+            raise PartitionError(f"n_parts is {count}; at most {np.iinfo(PART).max} can be held")
+        if array.dtype != PART or array.flags.writeable:
+            array = array.astype(PART)
+            array.flags.writeable = False
+        return cls(cell_part=array, n_parts=count)
+
+    @property
+    def n_cells(self) -> int:
+        """Number of cells."""
+        return len(self.cell_part)
+
+    def part_size(self) -> Int64Array:
+        """Return the number of cells of each part, (n_parts,) int64."""
+        return np.bincount(self.cell_part, minlength=self.n_parts).astype(np.int64)
+
+    def relabel(self, new_label: ArrayLike) -> Partition:
+        """Rename parts: part p becomes `new_label[p]`.
+
+        Parameters
+        ----------
+        new_label : (n_parts,) integers
+            A permutation of 0..n_parts-1.
+
+        Raises
+        ------
+        PartitionError
+            If `new_label` is not a permutation of the parts.
+        """
+        label = np.asarray(new_label)
+        if label.shape != (self.n_parts,) or not np.array_equal(
+            np.sort(label), np.arange(self.n_parts)
+        ):
+            raise PartitionError(
+                f"new_label is no permutation of 0..{self.n_parts - 1}: every part needs one label"
+            )
+        return Partition.from_array(label.astype(PART)[self.cell_part], self.n_parts)
+
+    def equals(self, other: Partition) -> bool:
+        """Tell whether two partitions agree cell by cell and in their number of parts."""
+        return self.n_parts == other.n_parts and np.array_equal(self.cell_part, other.cell_part)
+
+    def overlap(self, other: Partition, weights: ArrayLike | None = None) -> Array:
+        """Return the weight that part p of this and part q of the other share.
+
+        Parameters
+        ----------
+        other : Partition
+            A partition of the same cells.
+        weights : (n_cells,) numbers, optional
+            Weight of each cell; 1 by default.
+
+        Returns
+        -------
+        scipy.sparse.csr_array
+            (n_parts, other.n_parts), int64 counts or sums of weights.
+
+        Raises
+        ------
+        PartitionError
+            If the two do not divide the same number of cells.
+        """
+        from scipy.sparse import coo_array
+
+        if self.n_cells != other.n_cells:
+            raise PartitionError(
+                f"the partitions have {self.n_cells} and {other.n_cells} cells; wanted the same mesh"
+            )
+        weight = np.ones(self.n_cells, np.int64) if weights is None else np.asarray(weights)
+        shape = (self.n_parts, other.n_parts)
+        return coo_array((weight, (self.cell_part, other.cell_part)), shape=shape).tocsr()
+
+
+def _whole_numbers(array: Array) -> Array:
+    """Accept floats that are whole numbers (a field read from a file); refuse the rest."""
+    if array.dtype.kind != "f" or not np.all(np.isfinite(array)) or np.any(array != np.rint(array)):
+        raise PartitionError(f"cell_part holds {array.dtype} values; wanted whole numbers")
+    return array.astype(np.int64)
