@@ -1,0 +1,131 @@
+"""The one home of h5py: open a file for reading, or create one, with errors of our own.
+
+h5py loads on first use, so `import sfcpart` does not pay for it. Everything that can go wrong
+while a file is open (it is cut short, a chunk is corrupt, the disk is full) leaves the
+`with` block as one `FileError` line; errors of ours pass through unchanged.
+"""
+
+from __future__ import annotations
+
+import errno
+import os
+from contextlib import contextmanager
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from sfcpart.errors import FileError, SfcpartError
+
+if TYPE_CHECKING:
+    from collections.abc import Iterator
+    from os import PathLike
+
+__all__ = ["create_hdf5", "is_hdf5", "read_hdf5"]
+
+_SIGNATURE = b"\x89HDF\r\n\x1a\n"
+# A corrupt file shows itself in any of these, depending on which byte is wrong.
+_READ_FAILURES = (OSError, RuntimeError, LookupError, ValueError, TypeError, AttributeError)
+_WRITE_FAILURES = (OSError, RuntimeError)
+
+
+@contextmanager
+def read_hdf5(path: str | PathLike[str]) -> Iterator[Any]:
+    """Open an HDF5 file for reading; yields the `h5py.File`.
+
+    Parameters
+    ----------
+    path : path
+        The file; it is opened with mode "r" and closed on leaving.
+
+    Raises
+    ------
+    FileError
+        If the file is missing, a folder, unreadable, no HDF5, cut short, locked by a writer,
+        or if a dataset cannot be read while it is open.
+    """
+    place = Path(path)
+    _check_readable(place)
+    import h5py
+
+    try:
+        file = h5py.File(place, "r")
+    except OSError as error:
+        raise FileError(_why_not_opened(place, error)) from error
+    with file, _mapped(place, "reading", _READ_FAILURES):
+        yield file
+
+
+@contextmanager
+def create_hdf5(path: str | PathLike[str], *, track_order: bool = False) -> Iterator[Any]:
+    """Create an HDF5 file (an existing one is replaced); yields the `h5py.File`.
+
+    Writing beside and renaming is the caller's task (`sfcpart.files.folder`).
+
+    Parameters
+    ----------
+    path : path
+        The file to create.
+    track_order : bool
+        Whether groups remember the order in which members were added.
+
+    Raises
+    ------
+    FileError
+        If the file cannot be created, or writing fails (disk full, quota).
+    """
+    place = Path(path)
+    import h5py
+
+    try:
+        file = h5py.File(place, "w", track_order=track_order)
+    except OSError as error:
+        raise FileError(f"{place}: cannot be created: {_reason(error)}") from error
+    with _mapped(place, "writing", _WRITE_FAILURES), file:
+        yield file
+
+
+def is_hdf5(path: str | PathLike[str]) -> bool:
+    """Tell by its first bytes whether a file is HDF5 (without loading h5py)."""
+    with Path(path).open("rb") as file:
+        return file.read(len(_SIGNATURE)) == _SIGNATURE
+
+
+def _check_readable(place: Path) -> None:
+    """Raise one line for everything the file system itself can say no to."""
+    try:
+        if place.is_dir():
+            raise FileError(f"{place}: is a folder; wanted an HDF5 file")
+        if not is_hdf5(place):
+            raise FileError(f"{place}: is no HDF5 file (its first bytes are not HDF5's)")
+    except FileError:
+        raise
+    except OSError as error:
+        raise FileError(f"{place}: cannot be read: {_reason(error)}") from error
+
+
+def _why_not_opened(place: Path, error: OSError) -> str:
+    """Put the library's refusal into one line that says what to do."""
+    text = " ".join(str(error).split())
+    if error.errno == errno.EAGAIN or "unable to lock file" in text:
+        return f"{place}: is locked by a program that writes it; wait for it, then try again"
+    if "truncated" in text or "eof" in text.lower():
+        return f"{place}: the HDF5 file is cut short; copy or write it again ({text})"
+    return f"{place}: the HDF5 file is damaged and cannot be opened ({text})"
+
+
+@contextmanager
+def _mapped(place: Path, doing: str, failures: tuple[type[Exception], ...]) -> Iterator[None]:
+    """Turn what h5py raises inside the block into a FileError that names the file."""
+    try:
+        yield
+    except (SfcpartError, MemoryError):
+        raise
+    except failures as error:
+        raise FileError(f"{place}: {doing} HDF5 failed: {_reason(error)}") from error
+
+
+def _reason(error: BaseException) -> str:
+    """Return the message of an exception in one line."""
+    number = getattr(error, "errno", None)
+    if number:
+        return os.strerror(number)
+    return " ".join(str(error).split()).strip("'\"") or type(error).__name__
