@@ -1,0 +1,365 @@
+"""Exchange lists of all parts at once: who needs which foreign cells, and who sends them.
+
+What: each part owns its cells, in curve order, and needs a halo: the foreign cells within
+`layers` steps across shared faces, or across shared points.
+How: parts are spread over the cell graph (or over the relation of cells and points) layer by
+layer and the resulting pairs are sorted by counting (`sfcpart.kernels.halo`).
+Cost: O(layers x entries of the relation) time and O(n_cells + halo) memory.
+Source: common practice, no source.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Literal, TypeAlias
+
+import numpy as np
+
+from sfcpart.dtypes import (
+    OFFSET,
+    PART,
+    Array,
+    Int32Array,
+    Int64Array,
+    IntArray,
+    index_dtype,
+)
+from sfcpart.errors import InputError, MeshError, PartitionError
+from sfcpart.kernels.threads import run_ranges
+
+if TYPE_CHECKING:
+    from sfcpart.graph import CellGraph
+    from sfcpart.mesh.mesh import Mesh
+    from sfcpart.partition import Partition
+
+__all__ = ["Across", "Halo", "build_halo"]
+
+Across: TypeAlias = Literal["faces", "points"]
+_Lists: TypeAlias = tuple[Int64Array, Int32Array]
+
+
+@dataclass(frozen=True, eq=False)
+class Halo:
+    """Owned cells, halo cells and exchange lists of every part (CSR by part, read-only).
+
+    Locally, part p numbers its owned cells first (`owned`, in curve order) and then its halo
+    cells (`halo`, grouped by owner in ascending order, within an owner in that owner's local
+    order). "Pair" k is one direction between two parts: pair k of part p is with part
+    `neighbour[k]`, for k in `neighbour_indptr[p]:neighbour_indptr[p + 1]`.
+
+    Symmetry: what p receives from q is, cell by cell, what q sends to p.
+
+    Attributes
+    ----------
+    n_parts : int
+    layers : int
+    across : "faces" or "points"
+    owned_indptr : (n_parts + 1,) int64
+    owned : (n_cells,) int32 or int64
+        Cells of each part in curve order.
+    halo_indptr : (n_parts + 1,) int64
+    halo : (n_halo,) int32 or int64
+        Foreign cells each part needs.
+    neighbour_indptr : (n_parts + 1,) int64
+    neighbour : (n_pairs,) int32
+        Parts each part exchanges with, ascending.
+    receive_indptr : (n_pairs + 1,) int64
+        Rows of `halo` that each pair receives.
+    send_indptr : (n_pairs + 1,) int64
+    send : (n_halo,) int32 or int64
+        Local numbers of the owned cells that each pair sends.
+    """
+
+    n_parts: int
+    layers: int
+    across: Across
+    owned_indptr: Int64Array
+    owned: IntArray
+    halo_indptr: Int64Array
+    halo: IntArray
+    neighbour_indptr: Int64Array
+    neighbour: Int32Array
+    receive_indptr: Int64Array
+    send_indptr: Int64Array
+    send: IntArray
+
+    @property
+    def n_cells(self) -> int:
+        """Number of cells of the mesh."""
+        return len(self.owned)
+
+    def owned_cells(self, part: int) -> IntArray:
+        """Return the cells part `part` owns, in local order."""
+        return self.owned[self.owned_indptr[part] : self.owned_indptr[part + 1]]
+
+    def halo_cells(self, part: int) -> IntArray:
+        """Return the foreign cells part `part` needs, in local order."""
+        return self.halo[self.halo_indptr[part] : self.halo_indptr[part + 1]]
+
+    def neighbours(self, part: int) -> Int32Array:
+        """Return the parts that part `part` exchanges with, ascending."""
+        return self.neighbour[self.neighbour_indptr[part] : self.neighbour_indptr[part + 1]]
+
+    def send_list(self, part: int, to: int) -> IntArray:
+        """Return the local numbers of the cells that `part` sends to `to`, in order."""
+        pair = self._pair(part, to)
+        return self.send[self.send_indptr[pair] : self.send_indptr[pair + 1]]
+
+    def receive_list(self, part: int, source: int) -> Int64Array:
+        """Return the local numbers of the cells that `part` receives from `source`, in order."""
+        pair = self._pair(part, source)
+        offset = self.owned_indptr[part + 1] - self.owned_indptr[part] - self.halo_indptr[part]
+        first, last = self.receive_indptr[pair : pair + 2]
+        return np.arange(first + offset, last + offset, dtype=np.int64)
+
+    def _pair(self, part: int, other: int) -> int:
+        """Return the pair of `part` with its neighbour `other`."""
+        first = int(self.neighbour_indptr[part])
+        near = self.neighbours(part)
+        at = int(np.searchsorted(near, other))
+        if at == len(near) or near[at] != other:
+            raise InputError(
+                f"parts {part} and {other} exchange nothing; the neighbours of part {part} are "
+                f"{near.tolist()}"
+            )
+        return first + at
+
+
+def build_halo(
+    mesh: Mesh | None,
+    graph: CellGraph | None,
+    partition: Partition,
+    *,
+    layers: int = 1,
+    across: Across = "faces",
+    order: IntArray | None = None,
+) -> Halo:
+    """Build the exchange lists of all parts.
+
+    Parameters
+    ----------
+    mesh : Mesh or None
+        Needed across points, and for the curve order where `order` is not given.
+    graph : CellGraph or None
+        Needed across faces.
+    partition : Partition
+        Part of each cell.
+    layers : int, optional
+        Steps from an owned cell that the halo reaches, >= 1.
+    across : {"faces", "points"}, optional
+        Whether one step crosses a shared face or any shared point.
+    order : (n_cells,) integers, optional
+        The cells in curve order, a permutation; by default the Hilbert order of the centres.
+
+    Returns
+    -------
+    Halo
+
+    Raises
+    ------
+    InputError
+        If `layers`, `across` or `order` is wrong, or what they need is missing.
+    MeshError
+        If points are asked for and the mesh has none.
+    PartitionError
+        If the partition has not one part for each cell.
+
+    Notes
+    -----
+    O(layers x entries) time; the result does not depend on the number of threads.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> from sfcpart.graph import CellGraph
+    >>> from sfcpart.partition import Partition
+    >>> row = CellGraph(  # four cells in a row
+    ...     indptr=np.array([0, 1, 3, 5, 6]), indices=np.array([1, 0, 2, 1, 3, 2]),
+    ...     data=np.ones(6), boundary_count=np.zeros(4, np.int32), boundary_measure=np.zeros(4))
+    >>> halves = Partition.from_array([0, 0, 1, 1])
+    >>> halo = build_halo(None, row, halves, order=np.arange(4))
+    >>> halo.halo_cells(0).tolist(), halo.send_list(1, 0).tolist()
+    ([2], [0])
+    """
+    _check_options(layers, across)
+    order = _checked_order(mesh, partition, order)
+    owned_indptr, owned = _group(order, partition)
+    if across == "faces":
+        lists = _across_faces(graph, partition, layers)
+    else:
+        lists = _across_points(mesh, partition, layers)
+    return _sorted_halo(owned_indptr, owned, lists, layers=layers, across=across)
+
+
+def _check_options(layers: int, across: str) -> None:
+    """Refuse wrong numbers of layers and unknown ways to step."""
+    if isinstance(layers, bool) or not isinstance(layers, int | np.integer) or layers < 1:
+        raise InputError(f"layers is {layers!r}; wanted a whole number, at least 1")
+    if across not in ("faces", "points"):
+        raise InputError(f'across is {across!r}; wanted "faces" or "points"')
+
+
+def _checked_order(mesh: Mesh | None, partition: Partition, order: IntArray | None) -> IntArray:
+    """Return the curve order as a permutation of the cells in the narrowest dtype."""
+    n_cells = partition.n_cells
+    if order is None:
+        if mesh is None:
+            raise InputError("neither mesh nor order is given; wanted one of them for the order")
+        from sfcpart.curve import curve_order
+
+        order = curve_order(mesh.centers)
+    order = np.asarray(order)
+    if order.shape != (n_cells,) or order.dtype.kind not in "iu":
+        raise InputError(
+            f"order is {order.dtype} of shape {order.shape}; wanted the {n_cells} cells, a "
+            f"permutation of 0..{n_cells - 1}"
+        )
+    if n_cells and (order.min() < 0 or order.max() >= n_cells or not _all_met(order)):
+        raise InputError(f"order is no permutation of 0..{n_cells - 1}; wanted every cell once")
+    return np.ascontiguousarray(order, index_dtype(n_cells))
+
+
+def _all_met(order: IntArray) -> bool:
+    """Tell whether every row number occurs (hence once) in an array within range."""
+    met = np.zeros(len(order), np.bool_)
+    met[order] = True
+    return bool(met.all())
+
+
+def _group(order: IntArray, partition: Partition) -> tuple[Int64Array, IntArray]:
+    """Group the cells by part, each part in curve order."""
+    from sfcpart.kernels.halo import group_rows
+
+    indptr = np.zeros(partition.n_parts + 1, OFFSET)
+    owned = np.empty_like(order)
+    group_rows(order, partition.cell_part, indptr, owned)
+    return indptr, owned
+
+
+def _across_faces(graph: CellGraph | None, partition: Partition, layers: int) -> _Lists:
+    """Return per cell the foreign parts within `layers` faces."""
+    if graph is None:
+        raise InputError("graph is missing; wanted the cell graph for a halo across faces")
+    if graph.n_cells != partition.n_cells:
+        raise PartitionError(
+            f"the partition has {partition.n_cells} cells and the graph {graph.n_cells}; "
+            "wanted one part a cell"
+        )
+    part = partition.cell_part
+    lists = _no_lists(partition.n_cells)
+    for _ in range(layers):
+        lists = _spread(graph.indptr, graph.indices, part, part, lists)
+    return lists
+
+
+def _across_points(mesh: Mesh | None, partition: Partition, layers: int) -> _Lists:
+    """Return per cell the foreign parts within `layers` steps over shared points."""
+    if mesh is None or mesh.points is None:
+        raise MeshError('the mesh has no points; use across="faces", or a mesh with points')
+    n_cells, n_points = len(mesh.kind), len(mesh.points)
+    if n_cells != partition.n_cells:
+        raise PartitionError(
+            f"the partition has {partition.n_cells} cells and the mesh {n_cells}; "
+            "wanted one part a cell"
+        )
+    point_indptr, point_cell = _cells_of_points(mesh.indptr, mesh.indices, n_points)
+    part = partition.cell_part
+    no_part = np.full(n_points, -1, PART)
+    lists = _no_lists(n_cells)
+    for _ in range(layers):
+        at_point = _spread(point_indptr, point_cell, no_part, part, lists)
+        lists = _spread(mesh.indptr, mesh.indices, part, no_part, at_point)
+    return lists
+
+
+def _cells_of_points(
+    indptr: Int64Array, indices: IntArray, n_points: int
+) -> tuple[Int64Array, IntArray]:
+    """Turn "points of each cell" into "cells of each point"."""
+    from scipy.sparse import csr_array
+
+    n_cells = len(indptr) - 1
+    ones = np.ones(len(indices), np.int8)
+    cells_of = csr_array((ones, indices, indptr), shape=(n_cells, n_points)).tocsc()
+    return cells_of.indptr.astype(OFFSET), cells_of.indices
+
+
+def _no_lists(n_rows: int) -> _Lists:
+    """Return a list of no parts for each row."""
+    return np.zeros(n_rows + 1, OFFSET), np.empty(0, PART)
+
+
+def _spread(
+    indptr: Int64Array,
+    indices: IntArray,
+    row_part: Int32Array,
+    column_part: Int32Array,
+    lists: _Lists,
+) -> _Lists:
+    """Collect, per row, the parts at its columns and those that already reach them."""
+    from sfcpart.kernels.halo import reach
+
+    n_rows = len(indptr) - 1
+    to_indptr = np.zeros(n_rows + 1, OFFSET)
+    relation = (indptr, indices, row_part, column_part, *lists)
+    nothing = np.empty(0, PART)
+    capacity = 64
+    while max(run_ranges(reach, n_rows, *relation, to_indptr, nothing, capacity)) > capacity:
+        capacity *= 4
+    np.cumsum(to_indptr, out=to_indptr)
+    to_part = np.empty(int(to_indptr[-1]), PART)
+    if len(to_part):
+        run_ranges(reach, n_rows, *relation, to_indptr, to_part, capacity)
+    return to_indptr, to_part
+
+
+def _sorted_halo(
+    owned_indptr: Int64Array, owned: IntArray, lists: _Lists, *, layers: int, across: Across
+) -> Halo:
+    """Sort the pairs of part and cell into the lists of both sides and freeze them."""
+    from sfcpart.kernels.halo import sort_pairs
+
+    n_parts, n_pairs = len(owned_indptr) - 1, len(lists[1])
+    halo_indptr, sent_indptr = np.zeros((2, n_parts + 1), OFFSET)
+    halo, send = np.empty(n_pairs, owned.dtype), np.empty(n_pairs, owned.dtype)
+    owner = np.empty(n_pairs, PART)
+    sort_pairs(owned_indptr, owned, *lists, halo_indptr, halo, owner, sent_indptr, send)
+    neighbour_indptr, neighbour, receive_indptr = _runs(halo_indptr, owner)
+    send_indptr = _send_rows(neighbour_indptr, neighbour, receive_indptr)
+    arrays = (owned_indptr, owned, halo_indptr, halo)
+    pairs = (neighbour_indptr, neighbour, receive_indptr, send_indptr, send)
+    _freeze(*arrays, *pairs)
+    return Halo(n_parts, int(layers), across, *arrays, *pairs)
+
+
+def _runs(halo_indptr: Int64Array, owner: Int32Array) -> tuple[Int64Array, Int32Array, Int64Array]:
+    """Find the runs of one owner within each part's halo: its neighbours and their rows."""
+    n_halo = len(owner)
+    starts = np.zeros(n_halo + 1, np.bool_)
+    starts[1:-1] = owner[1:] != owner[:-1]
+    starts[halo_indptr] = True
+    receive_indptr = np.flatnonzero(starts).astype(OFFSET)
+    neighbour_indptr = np.searchsorted(receive_indptr, halo_indptr).astype(OFFSET)
+    if n_halo == 0:
+        return neighbour_indptr, owner, np.zeros(1, OFFSET)
+    return neighbour_indptr, owner[receive_indptr[:-1]], receive_indptr
+
+
+def _send_rows(
+    neighbour_indptr: Int64Array, neighbour: Int32Array, receive_indptr: Int64Array
+) -> Int64Array:
+    """Return the rows each pair sends: the length of the mirrored pair's receive list.
+
+    Pairs are sorted by (part, neighbour), so the mirrored ones follow from a stable sort by
+    neighbour.
+    """
+    mirror = np.argsort(neighbour, kind="stable")
+    rows = np.zeros(len(neighbour) + 1, OFFSET)
+    np.cumsum(np.diff(receive_indptr)[mirror], out=rows[1:])
+    return rows
+
+
+def _freeze(*arrays: Array) -> None:
+    """Make arrays read-only."""
+    for array in arrays:
+        array.flags.writeable = False
