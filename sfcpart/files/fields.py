@@ -1,0 +1,48 @@
+"""Which fields of a mesh go into a file, under which names and as which numbers."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+
+from sfcpart.dtypes import Array, IntArray
+
+__all__ = ["file_dtype", "gathered", "writable_fields"]
+
+
+def writable_fields(fields: Mapping[str, Array], reserved: frozenset[str]) -> dict[str, Array]:
+    """Return the fields of real numbers by names that fit every file format.
+
+    Names in `reserved` are left out (the writers put arrays of their own there), and so are
+    fields of text, objects or complex numbers, which the formats cannot hold. A "/" in a name,
+    which would open a group in HDF5, becomes "_"; of fields whose names then agree the last stays.
+
+    Examples
+    --------
+    >>> list(writable_fields({"a/b": np.ones(2), "part": np.ones(2)}, frozenset({"part"})))
+    ['a_b']
+    """
+    kept = {}
+    for name, field in fields.items():
+        fitting = name.replace("/", "_").replace("\0", "_").strip(". ") or "field"
+        if fitting not in reserved and np.asarray(field).dtype.kind in "biuf":
+            kept[fitting] = np.asarray(field)
+    return kept
+
+
+def gathered(field: Array, rows: IntArray) -> Array:
+    """Return rows of a field as a table of numbers that the file formats know."""
+    values = field[rows]
+    if values.ndim > 2:
+        values = values.reshape(len(values), -1)
+    return np.ascontiguousarray(values, file_dtype(values.dtype))
+
+
+def file_dtype(dtype: np.dtype[np.generic]) -> np.dtype[np.generic]:
+    """Return the nearest dtype of at most 8 bytes in the machine's byte order."""
+    if dtype.kind == "b":
+        return np.dtype(np.uint8)
+    if dtype.kind == "f" and dtype.itemsize not in (4, 8):
+        return np.dtype(np.float32 if dtype.itemsize < 4 else np.float64)
+    return dtype.newbyteorder("=")
