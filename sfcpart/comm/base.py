@@ -5,7 +5,7 @@ Three communicators keep the contract (`tests/unit/comm`, `tests/mpi`): `SerialC
 `comm`, calls these methods in the same order on every rank, and never asks whether the size is 1.
 
 Arrays are numpy arrays of any fixed-size dtype (bool and structured too, not object); every rank
-passes the same dtype, in native byte order. A result belongs to the caller, who may write to it;
+passes the same dtype; results are in native byte order. A result belongs to the caller, who may write to it;
 it may share memory with the argument (with one rank it often is the argument), so whoever writes
 to the result has given the argument away. What is passed must not be written to by another
 thread during the call.
@@ -110,12 +110,12 @@ def reducible(array: Array, op: str) -> Array:
 
 
 def movable(array: Array) -> Array:
-    """Return a C-contiguous array of one dimension or more; refuse what has no fixed size."""
+    """Return a C-contiguous native array of one dimension or more; refuse what has no fixed size."""
     array = np.asarray(array)
     if array.dtype.hasobject or array.ndim == 0:
         what = "a single value" if array.ndim == 0 else f"{array.dtype} values"
         raise InputError(f"{what} to exchange; wanted an array of rows of a fixed-size dtype")
-    return np.ascontiguousarray(array)
+    return np.ascontiguousarray(array, array.dtype.newbyteorder("="))
 
 
 def same_rows(arrays: Sequence[Array], size: int) -> list[Array]:

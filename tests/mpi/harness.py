@@ -1,0 +1,70 @@
+"""Start MPI jobs from a test process that never imports mpi4py.
+
+`run_job(module, size, folder)` starts `mpiexec -n SIZE python -m MODULE FOLDER` with a time limit
+and returns when it has ended; what the ranks saw, they wrote into the folder. A job that fails,
+or hangs and is killed with all its processes, raises with what it printed.
+"""
+
+from __future__ import annotations
+
+import os
+import shutil
+import signal
+import subprocess
+import sys
+from pathlib import Path
+
+__all__ = ["MpiJobError", "mpiexec", "run_job"]
+
+ROOT = Path(__file__).resolve().parents[2]
+
+
+class MpiJobError(Exception):
+    """A job failed or ran out of time."""
+
+
+def mpiexec() -> str:
+    """Return the launcher: the one beside this Python if there is one (PyPI package mpich)."""
+    beside = Path(sys.executable).with_name("mpiexec")
+    found = str(beside) if beside.exists() else shutil.which("mpiexec")
+    if found is None:
+        raise MpiJobError("no mpiexec: install the extra 'test', which brings one")
+    return found
+
+
+def run_job(module: str, size: int, folder: Path, *, timeout: float = 120.0) -> None:
+    """Run one module on `size` ranks with the folder as its argument; raise if it does not end."""
+    command = [mpiexec(), "-n", str(size), sys.executable, "-m", module, str(folder)]
+    job = subprocess.Popen(
+        command,
+        cwd=ROOT,  # `python -m tests.mpi...` is found from here
+        env=_environment(),
+        stdin=subprocess.DEVNULL,
+        stdout=subprocess.PIPE,
+        stderr=subprocess.STDOUT,
+        text=True,
+        start_new_session=True,  # so that the whole job can be killed and nothing else
+    )
+    try:
+        printed, _ = job.communicate(timeout=timeout)
+    except subprocess.TimeoutExpired:
+        _kill(job)
+        printed, _ = job.communicate()
+        raise MpiJobError(f"{size} ranks of {module} ran over {timeout:g} s:\n{printed}") from None
+    if job.returncode != 0:
+        raise MpiJobError(f"{size} ranks of {module} ended with {job.returncode}:\n{printed}")
+
+
+def _environment() -> dict[str, str]:
+    """Return the environment of a job: one thread a rank, for ranks outnumber the cores."""
+    return {**os.environ, "OMP_NUM_THREADS": "1", "OPENBLAS_NUM_THREADS": "1"}
+
+
+def _kill(job: subprocess.Popen[str]) -> None:
+    """Ask the launcher to end its ranks, then kill what is left of its session."""
+    for sign in (signal.SIGTERM, signal.SIGKILL):
+        try:
+            os.killpg(job.pid, sign)
+            job.wait(5)
+        except (ProcessLookupError, subprocess.TimeoutExpired):
+            continue

@@ -1,0 +1,20 @@
+"""`MpiComm` takes any communicator of mpi4py and keeps its messages to itself."""
+
+from __future__ import annotations
+
+import json
+
+from tests.mpi.harness import run_job
+
+
+def test_halves_and_selves(tmp_path):
+    run_job("tests.mpi.communicators_job", 4, tmp_path)
+    seen = [json.loads((tmp_path / f"rank{r}.json").read_text()) for r in range(4)]
+    assert [rank["half"] for rank in seen] == [
+        [1, 2, [[2, 1], [0, 1]]],
+        [1, 2, [[3, 1], [1, 1]]],
+        [0, 2, [[2, 0], [0, 0]]],
+        [0, 2, [[3, 0], [1, 0]]],
+    ]
+    assert [rank["alone"] for rank in seen] == [[0, 1, [0]]] * 4
+    assert [rank["pending"] for rank in seen] == ["ours"] * 4
