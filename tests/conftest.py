@@ -13,7 +13,6 @@ import pytest
 from hypothesis import HealthCheck, settings
 
 from sfcpart.kernels._jit import COMPILED
-from tests.strategies import DEGENERATE, EMPTY, Case
 
 _COMMON = {
     "deadline": None,  # the first call of a kernel compiles it
@@ -25,15 +24,33 @@ settings.register_profile("ci", derandomize=True, database=None, print_blob=True
 settings.load_profile("ci" if os.environ.get("CI") else "dev")
 
 
-@pytest.fixture(params=sorted(DEGENERATE))
-def degenerate(request: pytest.FixtureRequest) -> Case:
-    """Give each mesh that often breaks programs, with parts and weights."""
+def pytest_generate_tests(metafunc: pytest.Metafunc) -> None:
+    """Run a test that asks for `degenerate` or `empty_call` once for each of them.
+
+    `degenerate` is a `Case`: a mesh that often breaks programs, with parts and weights;
+    `empty_call` is a call that would make an empty mesh and must raise MeshError.
+    """
+    for name, table in (("degenerate", "DEGENERATE"), ("empty_call", "EMPTY")):
+        if name in metafunc.fixturenames:
+            from tests import strategies
+
+            cases = sorted(getattr(strategies, table))
+            metafunc.parametrize(name, cases, indirect=True)
+
+
+@pytest.fixture
+def degenerate(request: pytest.FixtureRequest):
+    """Make one of the meshes that often break programs, with parts and weights."""
+    from tests.strategies import DEGENERATE
+
     return DEGENERATE[request.param]()
 
 
-@pytest.fixture(params=sorted(EMPTY))
+@pytest.fixture
 def empty_call(request: pytest.FixtureRequest):
-    """Give each call that would make an empty mesh and must raise MeshError."""
+    """Give one of the calls that would make an empty mesh and must raise MeshError."""
+    from tests.strategies import EMPTY
+
     return EMPTY[request.param]
 
 
