@@ -2,74 +2,36 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass, field
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from dataclasses import dataclass, field, replace
 from types import MappingProxyType
-from typing import Any
+from typing import TYPE_CHECKING, Any, TypeVar
+
+import numpy as np
+from numpy.typing import ArrayLike
 
 from sfcpart.dtypes import Array, FloatArray, Int64Array, IntArray, KindArray
+from sfcpart.mesh import build
+from sfcpart.mesh.gate import (
+    check_fields,
+    check_indices,
+    check_kinds,
+    check_offsets,
+    check_positions,
+    check_sizes,
+    frozen,
+    parse_blocks,
+)
+from sfcpart.mesh.kinds import KINDS, kind_tables
+from sfcpart.mesh.pieces import BoundaryGroup, FaceList, Polyhedra
+
+if TYPE_CHECKING:
+    from sfcpart.kernels.cells import CellArrays
 
 __all__ = ["BoundaryGroup", "FaceList", "Mesh", "Polyhedra"]
 
 _EMPTY: Mapping[str, Any] = MappingProxyType({})
-
-
-@dataclass(frozen=True, eq=False)
-class Polyhedra:
-    """Faces of the polyhedral cells (rows of other cells are empty).
-
-    Attributes
-    ----------
-    face_indptr : (n_faces + 1,) int64
-    face_indices : (sum,) int32 or int64
-        Points of each face, in turn around it.
-    cell_indptr : (n_cells + 1,) int64
-    cell_indices : (sum,) int32 or int64
-        Faces of each cell; a face shared by two cells is stored once or twice.
-    """
-
-    face_indptr: Int64Array
-    face_indices: IntArray
-    cell_indptr: Int64Array
-    cell_indices: IntArray
-
-
-@dataclass(frozen=True, eq=False)
-class FaceList:
-    """Faces as a finite-volume code holds them.
-
-    Attributes
-    ----------
-    cell : (n_faces, 2) int32 or int64
-        The two cells of each face; -1 as the second cell on the boundary.
-    measure : (n_faces,) float64
-    """
-
-    cell: IntArray
-    measure: FloatArray
-
-
-@dataclass(frozen=True, eq=False)
-class BoundaryGroup:
-    """A named set of elements of lower dimension.
-
-    Attributes
-    ----------
-    name : str
-        As in the file, or made of field and tag ("gmsh:physical=7").
-    tag : int
-        Number in the file, -1 if it has none.
-    kind : (n,) uint8
-        VTK type codes.
-    indptr, indices : CSR
-        Points of each element.
-    """
-
-    name: str
-    tag: int
-    kind: KindArray
-    indptr: Int64Array
-    indices: IntArray
+T = TypeVar("T")
 
 
 @dataclass(frozen=True, eq=False)
@@ -103,6 +65,344 @@ class Mesh:
     faces: FaceList | None = None
     given_center: FloatArray | None = None
     given_measure: FloatArray | None = None
-    cell_fields: Mapping[str, Array] = field(default=_EMPTY)
-    point_fields: Mapping[str, Array] = field(default=_EMPTY)
+    cell_fields: Mapping[str, Array] = field(default_factory=lambda: _EMPTY)
+    point_fields: Mapping[str, Array] = field(default_factory=lambda: _EMPTY)
     boundary: tuple[BoundaryGroup, ...] = ()
+    _derived: dict[str, Any] = field(default_factory=dict, init=False, repr=False)
+
+    @classmethod
+    def from_arrays(
+        cls,
+        points: ArrayLike,
+        cells: Mapping[str, Any] | Iterable[tuple[str, Any]],
+        *,
+        cell_fields: Mapping[str, ArrayLike] | None = None,
+        point_fields: Mapping[str, ArrayLike] | None = None,
+        boundary: Sequence[BoundaryGroup] = (),
+    ) -> Mesh:
+        """Make a mesh of points and blocks of cells.
+
+        Parameters
+        ----------
+        points : (n_points, 2) or (n_points, 3) real numbers
+            Not copied if float64 and C-contiguous: do not change them afterwards.
+        cells : mapping or sequence of pairs
+            `{"tetra": (n, 4) integers, ...}` or `[("tetra", ...), ...]` in file order, with
+            meshio's names. "polygon": a list of lists, a table, or (indptr, indices).
+            "polyhedron": for each cell a list of faces, each a list of points.
+            The cells of highest dimension are the mesh; other blocks become boundary groups
+            named by their kind.
+        cell_fields, point_fields : mapping of str to array, optional
+            One row a cell (or one row an element of every block, cut to the cells) or a point.
+        boundary : sequence of BoundaryGroup, optional
+            Further groups, kept as they are.
+
+        Returns
+        -------
+        Mesh
+
+        Raises
+        ------
+        MeshError
+            No cells, an unknown kind, a coordinate that is not finite, a point out of range,
+            a field of another length. The message names the first offender.
+
+        Notes
+        -----
+        O(size of the connectivity); int64 connectivity is cast to int32 where that fits.
+
+        Examples
+        --------
+        >>> mesh = Mesh.from_arrays(
+        ...     [[0, 0], [2, 0], [2, 1], [0, 1], [3, 0]],
+        ...     {"quad": [[0, 1, 2, 3]], "triangle": [[1, 4, 2]], "line": [[0, 1]]},
+        ... )
+        >>> mesh.n_cells, mesh.dim, mesh.measures.tolist(), mesh.boundary[0].name
+        (2, 2, [2.0, 0.5], 'line')
+        """
+        position = check_positions(points, "point")
+        blocks = parse_blocks(cells)
+        dim = build.check_dim([block.kind.dim for block in blocks])
+        main = [block for block in blocks if block.kind.dim == dim]
+        lower = [block for block in blocks if block.kind.dim < dim]
+        kind, indptr, indices = build.join(main, len(position))
+        belongs = np.repeat([b.kind.dim == dim for b in blocks], [b.n for b in blocks])
+        return cls(
+            points=position,
+            kind=kind,
+            indptr=indptr,
+            indices=indices,
+            polyhedra=build.polyhedra(main, len(position)),
+            cell_fields=build.cut_fields(cell_fields, belongs),
+            point_fields=check_fields(point_fields, len(position), "point"),
+            boundary=(*(build.group(block, len(position)) for block in lower), *boundary),
+        )
+
+    @classmethod
+    def from_cells(
+        cls,
+        points: ArrayLike,
+        kind: ArrayLike,
+        indptr: ArrayLike,
+        indices: ArrayLike,
+        *,
+        polyhedra: Polyhedra | None = None,
+        cell_fields: Mapping[str, ArrayLike] | None = None,
+        point_fields: Mapping[str, ArrayLike] | None = None,
+        boundary: Sequence[BoundaryGroup] = (),
+    ) -> Mesh:
+        """Make a mesh of cells in CSR form, kinds interleaved as they stand in a file.
+
+        Parameters
+        ----------
+        points : (n_points, 2) or (n_points, 3) real numbers
+        kind : (n,) integers
+            VTK type codes.
+        indptr : (n + 1,) integers
+        indices : (sum,) integers
+            Points of each cell in VTK order; for a polyhedron each of its points once.
+        polyhedra : Polyhedra, optional
+            Their faces; `cell_indptr` has n + 1 entries. Needed if kind 42 occurs.
+        cell_fields, point_fields, boundary
+            As in `from_arrays`; fields of n rows are cut to the cells of highest dimension.
+
+        Returns
+        -------
+        Mesh
+            Elements of lower dimension become boundary groups, one for each kind.
+
+        Raises
+        ------
+        MeshError
+            As `from_arrays`.
+
+        Examples
+        --------
+        >>> points = [[0, 0], [2, 0], [2, 1], [0, 1], [3, 0]]
+        >>> mesh = Mesh.from_cells(points, [5, 9], [0, 3, 7], [1, 4, 2, 0, 1, 2, 3])
+        >>> mesh.kind.tolist(), mesh.measures.tolist()
+        ([5, 9], [0.5, 2.0])
+        """
+        position = check_positions(points, "point")
+        flat = np.asarray(indices)
+        offset = check_offsets(indptr, len(np.asarray(kind)), len(flat), "cells")
+        code = check_kinds(kind, offset)
+        flat = frozen(check_indices(flat, len(position), "point", offset))
+        dims = kind_tables().dim[code]
+        belongs = dims == build.check_dim(np.unique(dims).tolist())
+        groups: tuple[BoundaryGroup, ...] = ()
+        if not belongs.all():
+            groups = build.groups_by_kind(code, offset, flat, ~belongs)
+            offset, flat = build.take_rows(offset, flat, belongs)
+            code, polyhedra = frozen(code[belongs]), build.cut_polyhedra(polyhedra, belongs)
+        return cls(
+            points=position,
+            kind=code,
+            indptr=offset,
+            indices=flat,
+            polyhedra=build.check_polyhedra(polyhedra, code, len(position)),
+            cell_fields=build.cut_fields(cell_fields, belongs),
+            point_fields=check_fields(point_fields, len(position), "point"),
+            boundary=(*groups, *boundary),
+        )
+
+    @classmethod
+    def from_faces(
+        cls,
+        face_cell: ArrayLike,
+        face_measure: ArrayLike,
+        centers: ArrayLike,
+        measures: ArrayLike,
+        *,
+        cell_fields: Mapping[str, ArrayLike] | None = None,
+    ) -> Mesh:
+        """Make a mesh from faces, as a finite-volume code holds them (any cells, hanging nodes).
+
+        Parameters
+        ----------
+        face_cell : (n_faces, 2) integers
+            The two cells of each face; -1 for the absent one on the boundary.
+        face_measure : (n_faces,) real numbers >= 0
+        centers : (n_cells, 2) or (n_cells, 3) real numbers
+        measures : (n_cells,) real numbers >= 0
+        cell_fields : mapping of str to array, optional
+
+        Returns
+        -------
+        Mesh
+            Without points; its cells are of kind 1 (vertex).
+
+        Raises
+        ------
+        MeshError
+            A cell out of range, a face without a cell or between a cell and itself, a
+            coordinate that is not finite, a negative measure.
+
+        Examples
+        --------
+        >>> mesh = Mesh.from_faces([[0, 1], [1, -1]], [2.0, 1.0], [[0, 0], [1, 0]], [1.0, 1.0])
+        >>> mesh.n_cells, mesh.dim, mesh.faces.cell.tolist()
+        (2, 2, [[0, 1], [1, -1]])
+        """
+        center = check_positions(centers, "cell centre")
+        pair = build.check_face_cells(face_cell, len(center))
+        area = check_sizes(face_measure, len(pair), "face")
+        size = check_sizes(measures, len(center), "cell")
+        return cls(
+            **build.bare_cells(len(center)),
+            faces=FaceList(cell=pair, measure=area),
+            given_center=center,
+            given_measure=size,
+            cell_fields=check_fields(cell_fields, len(center), "cell"),
+        )
+
+    @classmethod
+    def from_centers(
+        cls,
+        centers: ArrayLike,
+        *,
+        measures: ArrayLike | None = None,
+        cell_fields: Mapping[str, ArrayLike] | None = None,
+    ) -> Mesh:
+        """Make a mesh of bare cell centres, which has no faces.
+
+        Parameters
+        ----------
+        centers : (n_cells, 2) or (n_cells, 3) real numbers
+            Not copied if float64 and C-contiguous.
+        measures : (n_cells,) real numbers >= 0, optional
+            1 each by default.
+        cell_fields : mapping of str to array, optional
+
+        Returns
+        -------
+        Mesh
+            Without points; its cells are of kind 1 (vertex).
+
+        Raises
+        ------
+        MeshError
+            No centres, a coordinate that is not finite, a negative measure.
+
+        Examples
+        --------
+        >>> mesh = Mesh.from_centers([[0.0, 0.5], [1.0, 0.5]])
+        >>> mesh.n_cells, mesh.dim, mesh.measures.tolist()
+        (2, 2, [1.0, 1.0])
+        """
+        center = check_positions(centers, "cell centre")
+        size = None if measures is None else check_sizes(measures, len(center), "cell")
+        return cls(
+            **build.bare_cells(len(center)),
+            given_center=center,
+            given_measure=size,
+            cell_fields=check_fields(cell_fields, len(center), "cell"),
+        )
+
+    @property
+    def n_cells(self) -> int:
+        """Number of cells."""
+        return len(self.kind)
+
+    @property
+    def n_points(self) -> int:
+        """Number of points, 0 for meshes without."""
+        return 0 if self.points is None else len(self.points)
+
+    @property
+    def dim(self) -> int:
+        """Topological dimension of the cells: 2 or 3."""
+        if self.points is None:
+            return self.space_dim
+        return int(kind_tables().dim[self.kind[0]])
+
+    @property
+    def space_dim(self) -> int:
+        """Dimension of the centres: 2 for cells in the plane, a constant third column dropped."""
+        if self.given_center is not None:
+            return int(self.given_center.shape[1])
+        return self.keep("space_dim", self._find_space_dim)
+
+    @property
+    def centers(self) -> FloatArray:
+        """Centroids of the cells, (n_cells, space_dim) float64, computed on first use."""
+        if self.given_center is not None:
+            return self.given_center
+        return self.keep("geometry", self._find_geometry)[0]
+
+    @property
+    def signed_measures(self) -> FloatArray:
+        """Measures with the sign of the order of corners (`geometry`), (n_cells,) float64."""
+        if self.given_center is not None:
+            return self.measures
+        return self.keep("geometry", self._find_geometry)[1]
+
+    @property
+    def measures(self) -> FloatArray:
+        """Areas or volumes of the cells, (n_cells,) float64 >= 0; 1 each if not known."""
+        if self.given_measure is not None:
+            return self.given_measure
+        return self.keep("measures", self._find_measures)
+
+    def with_cell_field(self, name: str, values: ArrayLike) -> Mesh:
+        """Return the same mesh with a cell field added or replaced.
+
+        Parameters
+        ----------
+        name : str
+        values : (n_cells, ...) array
+
+        Raises
+        ------
+        MeshError
+            If `values` has not one row a cell.
+
+        Examples
+        --------
+        >>> mesh = Mesh.from_centers([[0.0, 0.5], [1.0, 0.5]])
+        >>> sorted(mesh.with_cell_field("part", [0, 1]).cell_fields)
+        ['part']
+        """
+        checked = check_fields({name: values}, self.n_cells, "cell")
+        mesh = replace(self, cell_fields=MappingProxyType({**self.cell_fields, **checked}))
+        mesh._derived.update(self._derived)
+        return mesh
+
+    def keep(self, name: str, make: Callable[[], T]) -> T:
+        """Return a derived value, made on first use and then kept."""
+        if name not in self._derived:
+            self._derived[name] = make()
+        value: T = self._derived[name]
+        return value
+
+    def cell_arrays(self) -> CellArrays:
+        """Return the cells as kernels take them (`sfcpart.kernels.cells.CellArrays`)."""
+        return self.keep("cell_arrays", lambda: build.cell_arrays(self))
+
+    def __repr__(self) -> str:
+        """Say what the mesh holds in one line."""
+        codes, counts = np.unique(self.kind, return_counts=True)
+        what = ", ".join(f"{n} {KINDS[int(k)].name}" for k, n in zip(codes, counts, strict=True))
+        return f"Mesh({what}; dim {self.dim} in {self.space_dim}-D; {self.n_points} points)"
+
+    def _find_space_dim(self) -> int:
+        """See whether plane cells lie in a plane of constant third coordinate."""
+        assert self.points is not None
+        if self.dim == 3 or self.points.shape[1] == 2:
+            return int(self.points.shape[1])
+        third = self.points[:, 2]
+        return 2 if third.min() == third.max() else 3
+
+    def _find_geometry(self) -> tuple[FloatArray, FloatArray]:
+        """Compute centroids and signed measures."""
+        from sfcpart.mesh.geometry import centers_and_signed_measures
+
+        centers, measures = centers_and_signed_measures(self)
+        return frozen(centers), frozen(measures)
+
+    def _find_measures(self) -> FloatArray:
+        """Drop the signs, without a copy where there are none."""
+        if self.given_center is not None:
+            return frozen(np.ones(self.n_cells))
+        signed = self.signed_measures
+        return signed if signed.min() >= 0 else frozen(np.abs(signed))
