@@ -131,8 +131,8 @@ def channel_mixed(counts: tuple[int, int], *, rows: tuple[int, int, int] = (1, 2
     Returns
     -------
     Shape
-        Blocks "wedge", "hexahedron", "pyramid", "tetra"; field "row" (int32); boundary group
-        "bed" (quads).
+        Blocks "wedge", "hexahedron", "pyramid", "tetra"; fields "row" (int32), "work" and
+        "memory" (float64: cost of a cell, kilobytes it takes); boundary group "bed" (quads).
     """
     n_wedge, n_hex, n_tet = rows
     n_rows = n_wedge + n_hex + 1 + n_tet
@@ -156,10 +156,16 @@ def channel_mixed(counts: tuple[int, int], *, rows: tuple[int, int, int] = (1, 2
         "pyramid": pyramids,
         "tetra": tets,
     }
+    sizes = [len(block) for block in cells.values()]
+    fields = {
+        "row": _rows(counts, rows),
+        "work": np.repeat([1.5, 1.25, 1.0, 0.75], sizes),
+        "memory": np.repeat([1.0, 1.2, 0.9, 0.7], sizes),
+    }
     return Shape(
         points=np.concatenate([points, middles]),
         cells=cells,
-        cell_fields={"row": _rows(counts, rows)},
+        cell_fields=fields,
         boundary={"bed": corners[0][:, [0, 3, 2, 1]]},
     )
 

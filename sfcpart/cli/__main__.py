@@ -1,0 +1,5 @@
+"""`python -m sfcpart.cli` is the same as `sfcpart`."""
+
+from sfcpart.cli import main
+
+main()
