@@ -19,8 +19,8 @@ from typing import Any
 import numpy as np
 from mpi4py import MPI
 
-from sfcpart.comm.base import (
-    Reduction,
+from sfcpart.comm.base import Reduction
+from sfcpart.comm.gate import (
     check_root,
     movable,
     parcel,

@@ -7,8 +7,8 @@ from typing import Any
 
 import numpy as np
 
-from sfcpart.comm.base import (
-    Reduction,
+from sfcpart.comm.base import Reduction
+from sfcpart.comm.gate import (
     check_root,
     movable,
     reducible,

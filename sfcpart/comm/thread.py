@@ -17,8 +17,8 @@ from typing import Any, TypeVar
 
 import numpy as np
 
-from sfcpart.comm.base import (
-    Reduction,
+from sfcpart.comm.base import Reduction
+from sfcpart.comm.gate import (
     check_root,
     movable,
     parcel,
@@ -53,24 +53,60 @@ class _Call:
         return f"{self.name}({', '.join(map(str, self.agree))})"
 
 
+class _Barrier:
+    """A barrier that lets through all who met, even if it is broken before they have left.
+
+    (`threading.Barrier` fails those still leaving; which error a run ends with would then be
+    left to chance.)
+    """
+
+    def __init__(self, size: int, timeout: float) -> None:
+        self._size = size
+        self._timeout = timeout
+        self._changed = threading.Condition()
+        self._waiting = 0
+        self._round = 0
+        self._broken = False
+
+    def wait(self) -> bool:
+        """Wait for all; tell whether they came, or the barrier is broken or ran out of time."""
+        with self._changed:
+            if self._broken:
+                return False
+            mine = self._round
+            self._waiting += 1
+            if self._waiting == self._size:
+                self._waiting = 0
+                self._round += 1
+                self._changed.notify_all()
+            self._changed.wait_for(lambda: self._round != mine or self._broken, self._timeout)
+            if self._round == mine:
+                self.abort()
+            return self._round != mine
+
+    def abort(self) -> None:
+        """Break the barrier: whoever waits, or will wait, is told."""
+        with self._changed:  # a condition's lock is re-entrant
+            self._broken = True
+            self._changed.notify_all()
+
+
 class _Room:
     """Where the ranks meet: one barrier, one slot a rank."""
 
     def __init__(self, size: int, timeout: float) -> None:
         self.size = size
         self.timeout = timeout
-        self.barrier = threading.Barrier(size, timeout=timeout)
+        self.barrier = _Barrier(size, timeout)
         self.slots: list[_Call] = [_Call("", (), None)] * size
 
     def wait(self, rank: int) -> None:
         """Wait for all ranks; an error if one of them will not come."""
-        try:
-            self.barrier.wait()
-        except threading.BrokenBarrierError:
+        if not self.barrier.wait():
             raise _RoomBrokenError(
                 f"rank {rank} waited for the others in vain: "
                 f"a rank failed, or took more than {self.timeout:g} s"
-            ) from None
+            )
 
     def meet(self, rank: int, call: _Call, take: Callable[[list[Any]], T]) -> T:
         """Put a call into this rank's slot; when all are there, `take` from the values."""

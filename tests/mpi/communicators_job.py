@@ -7,12 +7,13 @@ import sys
 from pathlib import Path
 
 import numpy as np
-from mpi4py import MPI
-
-from sfcpart.comm.mpi import MpiComm
 
 
 def main() -> None:
+    from mpi4py import MPI  # not above: pytest imports this module when it looks for doctests
+
+    from sfcpart.comm.mpi import MpiComm
+
     world = MPI.COMM_WORLD
     half = MpiComm(world.Split(world.rank % 2, -world.rank))  # every second rank, in reverse
     alone = MpiComm(MPI.COMM_SELF)
