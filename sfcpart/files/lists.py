@@ -9,10 +9,10 @@ Datasets (P parts, K pairs of a part and a neighbour):
   which come first in its local numbers, then its halo cells;
 - `neighbour_indptr` (P+1), `neighbour` (K): the parts p exchanges with, ascending, are
   `neighbour[neighbour_indptr[p]:neighbour_indptr[p+1]]`; the row is the pair's number k;
-- `receive_indptr` (K+1): pair k receives halo cells `receive_indptr[k]:receive_indptr[k+1]`, counted
-  over all parts; subtract `halo_indptr[p]` and add the owned cells of p for local numbers;
-- `send_indptr` (K+1), `send`: pair k sends the local cells `send[send_indptr[k]:send_indptr[k+1]]`,
-  in the order in which the other side receives them;
+- `receive_indptr` (K+1): pair k receives halo cells `receive_indptr[k]:receive_indptr[k+1]`,
+  counted over all parts; subtract `halo_indptr[p]` and add the owned cells of p for local numbers;
+- `send_indptr` (K+1), `send`: pair k sends the local cells
+  `send[send_indptr[k]:send_indptr[k+1]]`, in the order in which the other side receives them;
 - `cell_gid` (only in a file of its own): cell numbers of the unsplit mesh, for each part the owned
   cells and then the halo cells.
 """
@@ -123,7 +123,9 @@ def read_lists(file: Any, part: int) -> PartLists:
         )
     n_parts = int(group.attrs["n_parts"])
     if not 0 <= part < n_parts:
-        raise FileError(f"{file.filename}: has no part {part}; its parts go from 0 to {n_parts - 1}")
+        raise FileError(
+            f"{file.filename}: has no part {part}; its parts go from 0 to {n_parts - 1}"
+        )
     n_owned = int(np.diff(group["owned_indptr"][part : part + 2])[0])
     halo_rows = group["halo_indptr"][part : part + 2]
     first, last = (int(row) for row in group["neighbour_indptr"][part : part + 2])

@@ -33,7 +33,7 @@ if TYPE_CHECKING:
     from sfcpart.halo import Halo
     from sfcpart.mesh.mesh import Mesh, Polyhedra
 
-__all__ = ["GHOST", "Block", "Drawing", "Renumbered", "blocks", "drawing_of"]
+__all__ = ["GHOST", "POLYHEDRON", "Block", "Drawing", "Renumbered", "blocks", "drawing_of"]
 
 BLOCK_CELLS = 1 << 20
 """Cells in one block: 2^20 hexahedra take about 64 MB while they are renumbered."""
@@ -208,7 +208,7 @@ def _renumber(
     n_items: int,
     seed: _Relation | None,
 ) -> Renumbered:
-    """Number the items of some rows within each part."""
+    """Give the items of some rows numbers within each part."""
     from sfcpart.kernels.pieces import number_locally
 
     indptr, indices = relation

@@ -53,7 +53,7 @@ def reach(
             size = from_indptr[j + 1] - first if len(from_part) > 0 else 0
             for k in range(-1, size):
                 part = column_part[j] if k < 0 else from_part[first + k]
-                if part < 0 or part == own or part == last:
+                if part < 0 or part in (own, last):
                     continue
                 last = part
                 at = count
