@@ -1,1 +1,47 @@
-"""Measuring a partition, and looking over a mesh."""
+"""Measuring a partition, and looking over a mesh.
+
+Names are loaded on first use, so that the columns and the networks can be listed without loading
+(let alone compiling) a kernel.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from sfcpart.assess.assessment import Assessment
+    from sfcpart.assess.columns import PART_COLUMNS, TOTAL_COLUMNS, Column
+    from sfcpart.assess.measure import assess_partition
+    from sfcpart.assess.pairs import PartPairs
+    from sfcpart.assess.step_model import DEFAULT_NETWORK, LEAVES_OUT, NETWORKS, Network, StepModel
+
+__all__ = [
+    "DEFAULT_NETWORK",
+    "LEAVES_OUT",
+    "NETWORKS",
+    "PART_COLUMNS",
+    "TOTAL_COLUMNS",
+    "Assessment",
+    "Column",
+    "Network",
+    "PartPairs",
+    "StepModel",
+    "assess_partition",
+]
+
+_HOME = {
+    "Assessment": "assessment",
+    "Column": "columns",
+    "PART_COLUMNS": "columns",
+    "TOTAL_COLUMNS": "columns",
+    "PartPairs": "pairs",
+    "assess_partition": "measure",
+}
+
+
+def __getattr__(name: str) -> Any:
+    """Import a public name on first use."""
+    if name not in __all__:
+        raise AttributeError(f"module 'sfcpart.assess' has no attribute {name!r}")
+    return getattr(import_module(f"sfcpart.assess.{_HOME.get(name, 'step_model')}"), name)

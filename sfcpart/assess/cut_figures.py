@@ -1,0 +1,93 @@
+"""Set the cut beside the least possible, where that is known.
+
+The continuous bound needs a planar or solid mesh with points: faces alone do not show whether
+some of them join opposite ends (periodic), where the bound would not hold. A bound above the cut
+of the partition at hand would prove that the geometry is not what it seems (overlapping cells);
+it is dropped. Cost: linear in parts, and one pass over the cells of a lattice.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+
+from sfcpart.assess.assessment import Number
+from sfcpart.assess.bounds import least_cut_measure, least_lattice_cut
+from sfcpart.assess.lattice import Lattice, find_lattice
+from sfcpart.assess.shape import flat_axes, has_measures
+from sfcpart.dtypes import Array
+from sfcpart.graph import CellGraph
+from sfcpart.mesh.mesh import Mesh
+
+__all__ = ["cut_figures"]
+
+_SLACK = 1e-9
+"""Relative rounding allowed between a measured cut and a bound on it."""
+
+
+def cut_figures(
+    mesh: Mesh,
+    graph: CellGraph,
+    *,
+    part: Mapping[str, Array | None],
+    total: Mapping[str, Number],
+) -> dict[str, Number]:
+    """Return the totals that compare the cut with all faces and with the least possible.
+
+    Parameters
+    ----------
+    mesh, graph : Mesh, CellGraph
+    part : mapping of str to array
+        Columns by part: "cells", "measure".
+    total : mapping of str to number
+        "cut_faces" and "cut_measure".
+    """
+    cut_faces, cut_measure = float(total["cut_faces"] or 0), float(total["cut_measure"] or 0)
+    figures: dict[str, Number] = {
+        "n_faces": graph.n_faces,
+        "cut_share": _ratio(cut_faces, graph.n_faces),
+    }
+    lattice = _lattice(mesh, graph)
+    if lattice is not None:
+        least = _least_faces(lattice, part)
+        figures |= {"least_cut_faces": least, "cut_faces_ratio": _ratio(cut_faces, least)}
+    bound = max(
+        _continuous_bound(mesh, graph, part),
+        0.0 if lattice is None else _least_faces(lattice, part) * lattice.face_measure,
+    )
+    if 0 < bound <= cut_measure * (1 + _SLACK):
+        figures |= {"least_cut_measure": bound, "cut_measure_ratio": cut_measure / bound}
+    return figures
+
+
+def _lattice(mesh: Mesh, graph: CellGraph) -> Lattice | None:
+    """Look for a lattice in a planar or solid mesh."""
+    axes = flat_axes(mesh)
+    if axes is None or not has_measures(mesh):
+        return None
+    centers = mesh.centers if axes.all() else np.ascontiguousarray(mesh.centers[:, axes])
+    return find_lattice(centers, mesh.measures, graph)
+
+
+def _least_faces(lattice: Lattice, part: Mapping[str, Array | None]) -> int:
+    """Return the bound on the cut faces of a lattice."""
+    cells = part["cells"]
+    assert cells is not None
+    return least_lattice_cut(
+        cells, dim=lattice.dim, boundary_faces=lattice.boundary_faces, sides=lattice.sides
+    )
+
+
+def _continuous_bound(mesh: Mesh, graph: CellGraph, part: Mapping[str, Array | None]) -> float:
+    """Return the isoperimetric bound on the cut measure, 0 where it does not apply."""
+    measure = part["measure"]
+    if mesh.points is None or measure is None or flat_axes(mesh) is None:
+        return 0.0
+    boundary = float(graph.boundary_measure.sum())
+    return least_cut_measure(measure, dim=mesh.dim, boundary_measure=boundary)
+
+
+def _ratio(above: float, below: float) -> float | None:
+    """Divide, None where there is nothing to divide by."""
+    return above / below if below > 0 else None

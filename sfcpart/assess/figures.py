@@ -1,0 +1,195 @@
+"""Turn sums into the figures of `columns`: by part, then in total.
+
+Cost: linear in parts and pairs of parts.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+
+from sfcpart.assess.assessment import Number
+from sfcpart.assess.bounds import least_imbalance, least_surface_measure
+from sfcpart.assess.columns import PART_COLUMNS
+from sfcpart.assess.gate import Given
+from sfcpart.assess.step_model import StepTime
+from sfcpart.assess.sums import CellSums, FaceSums
+from sfcpart.dtypes import Array, FloatArray, Int64Array
+
+__all__ = ["part_figures", "total_figures"]
+
+
+def part_figures(
+    sums: CellSums,
+    given: Given,
+    *,
+    stretch: FloatArray,
+    flat_dim: int | None,
+    time: StepTime | None,
+) -> dict[str, Array | None]:
+    """Return the column of every name in `PART_COLUMNS`.
+
+    `flat_dim` is the dimension of a planar or solid mesh, None for curved surfaces.
+    """
+    part: dict[str, Array | None] = dict.fromkeys(column.name for column in PART_COLUMNS)
+    part |= {
+        "part": np.arange(len(sums.cells), dtype=np.int32),
+        "cells": sums.cells,
+        "weight": sums.weight,
+        "speed": given.speed,
+        "load": _load(sums.weight, given.speed),
+        "load_unweighted": _load(sums.cells.astype(np.float64), given.speed),
+        "measure": sums.measure,
+        "stretch": stretch,
+    }
+    if given.part_limit is not None:
+        part |= {
+            "limit_weight": sums.limit_weight,
+            "limit_share": sums.limit_weight / given.part_limit,
+        }
+    if sums.faces is not None:
+        part |= _face_columns(sums, sums.faces, flat_dim)
+    if time is not None:
+        part["step_seconds"] = time.work + time.exchange
+    return part
+
+
+def _face_columns(sums: CellSums, faces: FaceSums, flat_dim: int | None) -> dict[str, Array]:
+    """Return the columns that need faces."""
+    n_parts = len(sums.cells)
+    pairs = faces.pairs
+    surface = faces.cut_measure + faces.boundary_measure
+    columns = {
+        "cut_faces": faces.cut_faces,
+        "cut_measure": faces.cut_measure,
+        "boundary_faces": faces.boundary_faces,
+        "boundary_measure": faces.boundary_measure,
+        "halo_cells": _whole_sums(pairs.part, pairs.received_cells, n_parts),
+        "sent_cells": _whole_sums(pairs.part, pairs.sent_cells, n_parts),
+        "neighbours": np.bincount(pairs.part, minlength=n_parts).astype(np.int64),
+        "smallest_interface": _smallest_interface(pairs.part, pairs.faces, n_parts),
+        "pieces": faces.pieces,
+        "stray_cells": sums.cells - faces.largest_piece,
+        "surface": surface,
+        "faces_to_cells": _ratio(faces.cut_faces + faces.boundary_faces, sums.cells),
+    }
+    if sums.measure is not None:
+        columns["surface_to_measure"] = _ratio(surface, sums.measure)
+    if sums.measure is not None and flat_dim is not None:
+        least = least_surface_measure(sums.measure, dim=flat_dim)
+        columns["surface_ratio"] = _ratio(surface, least)
+    return columns
+
+
+def _load(weight: FloatArray, speed: FloatArray) -> FloatArray:
+    """Return the weight of each part over the fair share of its speed (NaN if all weigh 0)."""
+    return _ratio(weight, speed * (weight.sum() / speed.sum()))
+
+
+def _ratio(above: Array, below: Array) -> FloatArray:
+    """Divide, NaN where the divisor is not positive."""
+    ratio = np.full(len(above), np.nan)
+    np.divide(above, below, out=ratio, where=below > 0)
+    return ratio
+
+
+def _whole_sums(part: Array, values: Int64Array, n_parts: int) -> Int64Array:
+    """Add whole numbers by part, exactly."""
+    total = np.zeros(n_parts, np.int64)
+    np.add.at(total, part, values)
+    return total
+
+
+def _smallest_interface(part: Array, faces: Int64Array, n_parts: int) -> Int64Array:
+    """Return the fewest faces each part shares with a neighbour, 0 without neighbours."""
+    most = np.iinfo(np.int64).max
+    least = np.full(n_parts, most)
+    np.minimum.at(least, part, faces)
+    return np.where(least == most, 0, least)
+
+
+def total_figures(
+    part: Mapping[str, Array | None], given: Given, *, time: StepTime | None
+) -> dict[str, Number]:
+    """Return the totals that follow from the columns; bounds on the cut come on top."""
+    cells = _column(part, "cells")
+    total: dict[str, Number] = {
+        "n_parts": len(cells),
+        "n_cells": int(cells.sum()),
+        "weight": float(_column(part, "weight").sum()),
+        "measure": None if part["measure"] is None else float(part["measure"].sum()),
+        "imbalance": _excess(_column(part, "load")),
+        "imbalance_unweighted": _excess(_column(part, "load_unweighted")),
+        "limit_share": None if part["limit_share"] is None else _worst(part["limit_share"]),
+        "n_empty_parts": int((cells == 0).sum()),
+        "stretch_max": _worst(_column(part, "stretch")),
+    }
+    total |= _least_imbalances(given, int(cells.sum()), float(_column(part, "weight").sum()))
+    if part["cut_faces"] is not None:
+        total |= _face_totals(part)
+    if time is not None:
+        total |= {
+            "step_seconds": time.total,
+            "exchange_share": time.exchange_share,
+            "speed_up": time.speed_up,
+            "efficiency": time.efficiency,
+        }
+    return total
+
+
+def _face_totals(part: Mapping[str, Array | None]) -> dict[str, Number]:
+    """Return the totals that need faces."""
+    has_cells = _column(part, "cells") > 0
+    neighbours, interface = _column(part, "neighbours"), _column(part, "smallest_interface")
+    halo, pieces = _column(part, "halo_cells"), _column(part, "pieces")
+    total: dict[str, Number] = {
+        "cut_faces": int(_column(part, "cut_faces").sum()) // 2,
+        "cut_measure": float(_column(part, "cut_measure").sum()) / 2,
+        "halo_cells": int(halo.sum()),
+        "halo_cells_max": int(halo.max()),
+        "neighbours_max": int(neighbours.max()),
+        "neighbours_mean": float(neighbours[has_cells].mean()),
+        "smallest_interface": int(interface[interface > 0].min(initial=np.iinfo(np.int64).max)),
+        "n_split_parts": int((pieces > 1).sum()),
+        "pieces_max": int(pieces.max()),
+        "stray_cells": int(_column(part, "stray_cells").sum()),
+    }
+    if not neighbours.any():
+        total["smallest_interface"] = 0
+    ratio = part["surface_ratio"]
+    if ratio is not None and np.isfinite(ratio).any():
+        total["surface_ratio_mean"] = float(np.nanmean(ratio))
+        total["surface_ratio_max"] = _worst(ratio)
+    return total
+
+
+def _least_imbalances(given: Given, n_cells: int, weight: float) -> dict[str, Number]:
+    """Return how well the cells could be balanced over these ranks."""
+    equal = least_imbalance(n_cells, given.speed, heaviest=1.0, is_equal=True)
+    if given.weight is None:
+        return {"least_imbalance": equal, "least_imbalance_unweighted": equal}
+    heaviest = float(given.weight.max())
+    is_equal = bool((given.weight == heaviest).all())
+    least = least_imbalance(weight, given.speed, heaviest=heaviest, is_equal=is_equal)
+    known = least if weight > 0 else None
+    return {"least_imbalance": known, "least_imbalance_unweighted": equal}
+
+
+def _column(part: Mapping[str, Array | None], name: str) -> Array:
+    """Return a column that is known."""
+    column = part[name]
+    assert column is not None
+    return column
+
+
+def _excess(load: Array) -> float | None:
+    """Return the largest load - 1."""
+    worst = _worst(load)
+    return None if worst is None else worst - 1.0
+
+
+def _worst(values: Array) -> float | None:
+    """Return the largest value there is."""
+    known = values[np.isfinite(values)]
+    return float(known.max()) if len(known) else None

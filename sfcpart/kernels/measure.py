@@ -1,0 +1,240 @@
+"""Loops behind the figures of a partition: cut faces, sums of parts, pairs of parts, pieces.
+
+`count_cuts` and `count_off_lattice` stream over ranges of cells; `join_inside` joins cells of one
+range, `join_across` the rest. Sums per part are taken in cell order by one pass (`sum_parts`), so
+that a float sum cannot depend on the number of threads. Every kernel is linear in cells plus
+entries of the cell graph.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from sfcpart.dtypes import FloatArray, Int32Array, Int64Array, IntArray
+from sfcpart.kernels._jit import jit
+
+__all__ = [
+    "count_cuts",
+    "count_off_lattice",
+    "count_pieces",
+    "find_pairs",
+    "join_across",
+    "join_inside",
+    "sum_parts",
+]
+
+
+@jit
+def count_cuts(
+    start: int,
+    stop: int,
+    indptr: Int64Array,
+    indices: IntArray,
+    data: FloatArray,
+    cell_part: Int32Array,
+    cut_count: Int32Array,
+    cut_measure: FloatArray,
+) -> None:
+    """Write the faces of each cell that lead to another part, and their measure."""
+    for i in range(start, stop):
+        part = cell_part[i]
+        count = 0
+        measure = 0.0
+        for entry in range(indptr[i], indptr[i + 1]):
+            if cell_part[indices[entry]] != part:
+                count += 1
+                measure += data[entry]
+        cut_count[i] = count
+        cut_measure[i] = measure
+
+
+@jit
+def sum_parts(
+    cell_part: Int32Array,
+    n_parts: int,
+    values: tuple[FloatArray, ...],
+    counts: tuple[Int32Array, ...],
+    centers: FloatArray,
+) -> tuple[Int64Array, FloatArray, Int64Array, FloatArray, FloatArray]:
+    """Sum values and counts of the cells of each part in cell order; box their centres.
+
+    An empty array among them stands for one that is not known; its sums are 0.
+    """
+    n_axes = centers.shape[1]
+    n_cells = np.zeros(n_parts, np.int64)
+    value_sum = np.zeros((n_parts, len(values)))
+    count_sum = np.zeros((n_parts, len(counts)), np.int64)
+    low = np.full((n_parts, n_axes), np.inf)
+    high = np.full((n_parts, n_axes), -np.inf)
+    for i in range(len(cell_part)):
+        part = cell_part[i]
+        n_cells[part] += 1
+        for k in range(len(values)):
+            if len(values[k]) > 0:
+                value_sum[part, k] += values[k][i]
+        for k in range(len(counts)):
+            if len(counts[k]) > 0:
+                count_sum[part, k] += counts[k][i]
+        for k in range(n_axes):
+            x = centers[i, k]
+            low[part, k] = min(low[part, k], x)
+            high[part, k] = max(high[part, k], x)
+    return n_cells, value_sum, count_sum, low, high
+
+
+@jit
+def find_pairs(
+    edge_cells: Int64Array,
+    indptr: Int64Array,
+    indices: IntArray,
+    cell_part: Int32Array,
+    part_start: Int64Array,
+    capacity: int,
+) -> tuple[Int32Array, Int32Array, Int64Array, Int64Array]:
+    """Find which parts meet, in how many faces, and how many distinct cells each owns there.
+
+    `part_start` says where the cut entries of each part begin; returned are the part, the other
+    part, the faces and the cells of the part that touch the other, one row for each ordered pair.
+    """
+    n_parts = len(part_start) - 1
+    other = np.empty(part_start[n_parts], np.int32)
+    cursor = part_start[:n_parts].copy()
+    seen = np.full(n_parts, -1, np.int64)
+    for i in edge_cells:
+        part = cell_part[i]
+        at = cursor[part]
+        for entry in range(indptr[i], indptr[i + 1]):
+            q = cell_part[indices[entry]]
+            if q != part:
+                # The first face of this cell towards q is marked by the sign: a distinct cell.
+                other[at] = q if seen[q] == i else -1 - q
+                seen[q] = i
+                at += 1
+        cursor[part] = at
+    pair_part = np.empty(capacity, np.int32)
+    pair_other = np.empty(capacity, np.int32)
+    pair_faces = np.zeros(capacity, np.int64)
+    pair_cells = np.zeros(capacity, np.int64)
+    slot = np.full(n_parts, -1, np.int64)
+    n_pairs = 0
+    for part in range(n_parts):
+        first = n_pairs
+        for at in range(part_start[part], part_start[part + 1]):
+            q = other[at]
+            is_new_cell = q < 0
+            if is_new_cell:
+                q = -1 - q
+            if slot[q] < first:
+                slot[q] = n_pairs
+                pair_part[n_pairs] = part
+                pair_other[n_pairs] = q
+                n_pairs += 1
+            pair_faces[slot[q]] += 1
+            if is_new_cell:
+                pair_cells[slot[q]] += 1
+    return pair_part[:n_pairs], pair_other[:n_pairs], pair_faces[:n_pairs], pair_cells[:n_pairs]
+
+
+@jit
+def join_inside(
+    start: int,
+    stop: int,
+    indptr: Int64Array,
+    indices: IntArray,
+    cell_part: Int32Array,
+    parent: Int32Array,
+) -> None:
+    """Join neighbours of one part that both lie in the range (union by lowest cell, halving)."""
+    for i in range(start, stop):
+        parent[i] = i
+        part = cell_part[i]
+        a = i
+        for entry in range(indptr[i], indptr[i + 1]):
+            j = indices[entry]
+            if j < start or j >= i or cell_part[j] != part:
+                continue
+            b = parent[j]
+            while parent[b] != b:
+                parent[b] = parent[parent[b]]
+                b = parent[b]
+            if b < a:
+                parent[a] = b
+                a = b
+            elif a < b:
+                parent[b] = a
+
+
+@jit
+def join_across(
+    range_starts: Int64Array,
+    indptr: Int64Array,
+    indices: IntArray,
+    cell_part: Int32Array,
+    parent: Int32Array,
+) -> None:
+    """Join neighbours of one part that lie in different ranges (the last range ends the list)."""
+    for r in range(1, len(range_starts) - 1):
+        start = range_starts[r]
+        for i in range(start, range_starts[r + 1]):
+            part = cell_part[i]
+            for entry in range(indptr[i], indptr[i + 1]):
+                j = indices[entry]
+                if j >= start or cell_part[j] != part:
+                    continue
+                a = parent[i]
+                while parent[a] != a:
+                    parent[a] = parent[parent[a]]
+                    a = parent[a]
+                b = parent[j]
+                while parent[b] != b:
+                    parent[b] = parent[parent[b]]
+                    b = parent[b]
+                if a < b:
+                    parent[b] = a
+                elif b < a:
+                    parent[a] = b
+
+
+@jit
+def count_pieces(
+    cell_part: Int32Array, parent: Int32Array, n_parts: int
+) -> tuple[Int64Array, Int64Array]:
+    """Count the pieces of each part and the cells of its largest piece; flattens `parent`."""
+    size = np.zeros(len(parent), np.int32)
+    for i in range(len(parent)):
+        # Parents have lower numbers, so that the parent's own root is already final.
+        root = parent[parent[i]]
+        parent[i] = root
+        size[root] += 1
+    pieces = np.zeros(n_parts, np.int64)
+    largest = np.zeros(n_parts, np.int64)
+    for i in range(len(parent)):
+        if parent[i] == i:
+            part = cell_part[i]
+            pieces[part] += 1
+            largest[part] = max(largest[part], size[i])
+    return pieces, largest
+
+
+@jit
+def count_off_lattice(
+    start: int,
+    stop: int,
+    indptr: Int64Array,
+    indices: IntArray,
+    site: Int32Array,
+) -> int:
+    """Count entries of a range that do not join two sites one step apart, or join them again."""
+    n_bad = 0
+    for i in range(start, stop):
+        for entry in range(indptr[i], indptr[i + 1]):
+            j = indices[entry]
+            steps = 0
+            for k in range(site.shape[1]):
+                steps += abs(site[i, k] - site[j, k])
+            is_repeated = False
+            for earlier in range(indptr[i], entry):
+                is_repeated |= indices[earlier] == j
+            if steps != 1 or is_repeated:
+                n_bad += 1
+    return n_bad
