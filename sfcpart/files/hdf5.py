@@ -19,7 +19,7 @@ if TYPE_CHECKING:
     from collections.abc import Iterator
     from os import PathLike
 
-__all__ = ["create_hdf5", "is_hdf5", "read_hdf5"]
+__all__ = ["check_stored", "create_hdf5", "is_hdf5", "read_hdf5"]
 
 _SIGNATURE = b"\x89HDF\r\n\x1a\n"
 # A corrupt file shows itself in any of these, depending on which byte is wrong.
@@ -87,6 +87,34 @@ def is_hdf5(path: str | PathLike[str]) -> bool:
     """Tell by its first bytes whether a file is HDF5 (without loading h5py)."""
     with Path(path).open("rb") as file:
         return file.read(len(_SIGNATURE)) == _SIGNATURE
+
+
+def check_stored(dataset: Any, path: str | PathLike[str]) -> None:
+    """Check that a dataset's shape is backed by bytes in the file, before memory is taken.
+
+    A damaged header can claim any shape, and a virtual dataset whose source file is gone reads
+    as zeros without a word.
+
+    Raises
+    ------
+    FileError
+        If the dataset claims far more than the file stores, or a source is missing.
+    """
+    if dataset.is_virtual:
+        folder = Path(path).resolve().parent
+        for source in dataset.virtual_sources():
+            if source.file_name != "." and not (folder / source.file_name).exists():
+                raise FileError(f"{path}: {dataset.name} lies in {source.file_name}, not found")
+        return
+    stored = Path(path).stat().st_size
+    claimed = dataset.size * dataset.dtype.itemsize
+    # gzip cannot pack more than 1032 to 1 (its documentation says so).
+    most = 1032 * stored if dataset.id.get_create_plist().get_nfilters() else stored
+    if claimed > most:
+        raise FileError(
+            f"{path}: {dataset.name} claims {claimed} bytes, but the file has {stored}; "
+            f"it is damaged"
+        )
 
 
 def _check_readable(place: Path) -> None:

@@ -1,0 +1,111 @@
+"""Meshes given by faces, in a small HDF5 layout of our own (extension `.h5`).
+
+For meshes as finite-volume codes hold them, hanging nodes and any polyhedra included: no
+points, only which cells meet at each face. Everything is in the group `/faces_mesh`:
+
+===================== =================================== ==========================
+dataset               shape and type                      content
+===================== =================================== ==========================
+`face_cell`           (n_faces, 2) integers               the two cells; -1 second on the boundary
+`face_measure`        (n_faces,) reals                    area (3-D) or length (2-D)
+`cell_center`         (n_cells, 2 or 3) reals             centre of each cell
+`cell_measure`        (n_cells,) reals                    volume or area
+`cell_fields/<name>`  (n_cells, ...) numbers, optional    fields
+===================== =================================== ==========================
+
+and the attribute `layout` is 1. Cost: linear; written arrays are not packed.
+"""
+
+from __future__ import annotations
+
+from os import PathLike
+from typing import Any
+
+import numpy as np
+
+from sfcpart.dtypes import Array
+from sfcpart.errors import FileError, InputError, MeshError
+from sfcpart.files.hdf5 import check_stored, create_hdf5, read_hdf5
+from sfcpart.mesh.mesh import Mesh
+
+__all__ = ["read_faces", "write_faces"]
+
+_LAYOUT = 1
+_GROUP = "faces_mesh"
+
+
+def read_faces(path: str | PathLike[str]) -> Mesh:
+    """Read a mesh given by faces.
+
+    Parameters
+    ----------
+    path : path
+
+    Returns
+    -------
+    Mesh
+        Without points.
+
+    Raises
+    ------
+    FileError
+        If the file cannot be read or a dataset is missing.
+    MeshError
+        If cells, measures or centres are wrong; the message starts with the path.
+    """
+    with read_hdf5(path) as file:
+        if _GROUP not in file:
+            raise FileError(f"{path}: has no group {_GROUP}")
+        group = file[_GROUP]
+        if group.attrs.get("layout") != _LAYOUT:
+            raise FileError(
+                f"{path}: {_GROUP} has layout {group.attrs.get('layout')}; wanted {_LAYOUT}"
+            )
+        fields = group.get("cell_fields", {})
+        arrays = [_array(group, name, path) for name in _DATASETS]
+        cell_fields = {name: _array(fields, name, path) for name in fields}
+    try:
+        return Mesh.from_faces(*arrays, cell_fields=cell_fields)
+    except MeshError as error:
+        raise MeshError(f"{path}: {error}") from error
+
+
+_DATASETS = ("face_cell", "face_measure", "cell_center", "cell_measure")
+
+
+def _array(group: Any, name: str, path: str | PathLike[str]) -> Array:
+    """Read one dataset of numbers."""
+    dtype = getattr(group.get(name), "dtype", None)
+    if dtype is None or dtype.kind not in "biuf":
+        raise FileError(f"{path}: {_GROUP}/{name} is {dtype or 'missing'}; wanted numbers")
+    check_stored(group[name], path)
+    return np.asarray(group[name][()])
+
+
+def write_faces(path: str | PathLike[str], mesh: Mesh) -> None:
+    """Write a mesh that is given by faces.
+
+    Parameters
+    ----------
+    path : path
+        Replaced if it exists.
+    mesh : Mesh
+        Made by `Mesh.from_faces`.
+
+    Raises
+    ------
+    InputError
+        If the mesh is not given by faces.
+    FileError
+        If the file cannot be written.
+    """
+    if mesh.faces is None or mesh.given_center is None or mesh.given_measure is None:
+        raise InputError("the mesh is not given by faces; write_faces wants Mesh.from_faces")
+    with create_hdf5(path) as file:
+        group = file.create_group(_GROUP)
+        group.attrs["layout"] = _LAYOUT
+        arrays = (mesh.faces.cell, mesh.faces.measure, mesh.given_center, mesh.given_measure)
+        for name, array in zip(_DATASETS, arrays, strict=True):
+            group.create_dataset(name, data=array)
+        for name, values in mesh.cell_fields.items():
+            group.create_dataset(f"cell_fields/{name}", data=values)

@@ -1,0 +1,293 @@
+"""Read VTKHDF files of type UnstructuredGrid, the open HDF5 format of VTK.
+
+One or several partitions, mixed kinds in any order, polyhedra, cell and point fields. Ids are
+read in blocks and stored as int32 where they fit, so 10^7 hexahedra take about 70 bytes a cell.
+Ghost cells (`vtkGhostType`, bit 1) are dropped, so no cell is counted twice. Points of several
+partitions are joined where `PointData/GlobalPointIds` says they are one; without it they stay
+separate and the mesh has a crack along the partitions (`Mesh.with_points_merged` closes it).
+Of a file with time steps the last step is read. Field data of the whole grid are not read.
+
+Source: VTK file formats, "VTKHDF" (https://docs.vtk.org), versions 1.0 to 2.6.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from os import PathLike
+from typing import Any
+
+import numpy as np
+
+from sfcpart.dtypes import COORDINATE, OFFSET, Array, Int64Array, IntArray, index_dtype
+from sfcpart.errors import FileError, MeshError
+from sfcpart.files.hdf5 import check_stored, read_hdf5
+from sfcpart.files.raw import RawMesh, join_pieces
+from sfcpart.mesh.mesh import Polyhedra
+
+__all__ = ["read_vtkhdf", "vtkhdf_counts"]
+
+_BLOCK = 1 << 21  # ids converted at a time: 16 MB, small beside any mesh worth splitting
+
+
+def read_vtkhdf(path: str | PathLike[str]) -> RawMesh:
+    """Read an unstructured grid.
+
+    Parameters
+    ----------
+    path : path
+        A `.vtkhdf` file (or any HDF5 file with a group `VTKHDF`).
+
+    Returns
+    -------
+    RawMesh
+        Elements in file order, ghosts left out.
+
+    Raises
+    ------
+    FileError
+        If the file cannot be read, is of another VTKHDF type, or its arrays do not fit together.
+    MeshError
+        If a partition names points it does not have.
+    """
+    with read_hdf5(path) as file:
+        reader = _Reader(str(path), _grid(file, path))
+        raw = reader.read()
+    return join_pieces(raw, len(reader.extent.n_cells), str(path))
+
+
+def vtkhdf_counts(path: str | PathLike[str]) -> tuple[int, int]:
+    """Return (cells, points) of the step that would be read, ghosts included, without reading.
+
+    Raises
+    ------
+    FileError
+        As for `read_vtkhdf`.
+    """
+    with read_hdf5(path) as file:
+        extent = _extent(_grid(file, path), str(path))
+        return sum(extent.n_cells), sum(extent.n_points)
+
+
+@dataclass(frozen=True)
+class _Extent:
+    """Which rows of the datasets belong to the step that is read."""
+
+    step: int  # -1 without time steps
+    first_part: int
+    n_points: list[int]
+    n_cells: list[int]
+    n_ids: list[int]
+    point: int
+    cell: int
+    id: int
+
+
+def _grid(file: Any, path: str | PathLike[str]) -> Any:
+    """Return the group of the grid; say what else the file is if it is no unstructured grid."""
+    if "VTKHDF" not in file:
+        inside = ", ".join(list(file)[:8]) or "nothing"
+        raise FileError(f"{path}: is HDF5, but has no group VTKHDF (it has {inside})")
+    group = file["VTKHDF"]
+    found = group.attrs.get("Type", b"")
+    kind = found.decode("ascii", "replace") if isinstance(found, bytes) else str(found)
+    if kind != "UnstructuredGrid":
+        raise FileError(
+            f"{path}: is VTKHDF of type {kind or 'unknown'}; wanted UnstructuredGrid "
+            f"(save the mesh as one unstructured grid)"
+        )
+    version = np.asarray(group.attrs.get("Version", [0, 0])).reshape(-1)
+    if len(version) < 1 or version[0] not in (1, 2):
+        raise FileError(f"{path}: is VTKHDF version {version.tolist()}; wanted version 1 or 2")
+    return group
+
+
+def _extent(group: Any, path: str) -> _Extent:
+    """Find the parts and first rows of the last time step, or of the whole file."""
+    counts = [
+        _numbers(group, name, path)
+        for name in ("NumberOfPoints", "NumberOfCells", "NumberOfConnectivityIds")
+    ]
+    if len({len(count) for count in counts}) != 1:
+        raise FileError(f"{path}: the counts of points, cells and ids differ in number of parts")
+    if "Steps" not in group:
+        whole = [count.tolist() for count in counts]
+        return _Extent(-1, 0, whole[0], whole[1], whole[2], 0, 0, 0)
+    steps = group["Steps"]
+    step = int(steps.attrs["NSteps"]) - 1
+    if step < 0:
+        raise FileError(f"{path}: holds no time steps")
+    at = {name: _at_step(steps, name, step, path) for name in _STEP_STARTS}
+    first = at["PartOffsets"]
+    n_parts = len(counts[0]) - first
+    if "NumberOfParts" in steps:
+        n_parts = _at_step(steps, "NumberOfParts", step, path)
+    if first < 0 or n_parts < 0 or first + n_parts > len(counts[0]):
+        raise FileError(f"{path}: the last time step has parts {first} to {first + n_parts - 1}")
+    own = [count[first : first + n_parts].tolist() for count in counts]
+    starts = (at["PointOffsets"], at["CellOffsets"], at["ConnectivityIdOffsets"])
+    return _Extent(step, first, own[0], own[1], own[2], *starts)
+
+
+_STEP_STARTS = ("PartOffsets", "PointOffsets", "CellOffsets", "ConnectivityIdOffsets")
+
+
+def _at_step(steps: Any, name: str, step: int, path: str) -> int:
+    """Return the entry of one time step of a dataset of `Steps`."""
+    values = np.asarray(steps[name][()]).reshape(-1)
+    if step >= len(values) or values[step] < 0:
+        raise FileError(f"{path}: Steps/{name} has no entry for time step {step}")
+    return int(values[step])
+
+
+def _numbers(group: Any, name: str, path: str) -> Int64Array:
+    """Read a small dataset of counts."""
+    counts = np.asarray(_dataset(group, name, "iu", path)[()]).reshape(-1)
+    if np.any(counts < 0):
+        raise FileError(f"{path}: {name} holds {counts.min()}; counts cannot be negative")
+    return counts.astype(np.int64)
+
+
+def _dataset(group: Any, name: str, dtype_kinds: str, path: str) -> Any:
+    """Return a dataset that must be there and hold numbers of some sort."""
+    if name not in group or not hasattr(group[name], "dtype"):
+        raise FileError(f"{path}: VTKHDF/{name} is missing; the file is no complete mesh")
+    dataset = group[name]
+    if dataset.dtype.kind not in dtype_kinds:
+        raise FileError(f"{path}: VTKHDF/{name} holds {dataset.dtype}; wanted numbers")
+    check_stored(dataset, path)
+    return dataset
+
+
+@dataclass
+class _Reader:
+    """One file that is being read."""
+
+    path: str
+    group: Any
+
+    def __post_init__(self) -> None:
+        self.extent = _extent(self.group, self.path)
+
+    def read(self) -> RawMesh:
+        """Read everything of the step."""
+        extent = self.extent
+        n_points, n_cells = sum(extent.n_points), sum(extent.n_cells)
+        points = self._rows("Points", extent.point, n_points, "fiu").astype(COORDINATE, copy=False)
+        kind = self._rows("Types", extent.cell, n_cells, "u")
+        indices = self._ids("Connectivity", extent.id, extent.n_ids, extent.n_points)
+        first_offset = extent.cell + extent.first_part
+        indptr = self._indptr("Offsets", first_offset, extent.n_cells, extent.n_ids)
+        return RawMesh(
+            points=points,
+            kind=kind,
+            indptr=indptr,
+            indices=indices,
+            polyhedra=self._polyhedra(),
+            cell_fields=self._fields("CellData", extent.cell, n_cells),
+            point_fields=self._fields("PointData", extent.point, n_points),
+        )
+
+    def _rows(self, name: str, start: int, count: int, dtype_kinds: str) -> Array:
+        """Read consecutive rows of a dataset."""
+        dataset = _dataset(self.group, name, dtype_kinds, self.path)
+        self._check_length(name, dataset, start + count)
+        return np.asarray(dataset[start : start + count])
+
+    def _check_length(self, name: str, dataset: Any, wanted: int) -> None:
+        """Refuse a dataset that is shorter than the counts say."""
+        length = dataset.shape[0] if dataset.shape else 0
+        if length < wanted:
+            raise FileError(
+                f"{self.path}: VTKHDF/{name} has {length} rows; the counts ask for {wanted}"
+            )
+
+    def _ids(self, name: str, start: int, counts: list[int], bounds: list[int]) -> IntArray:
+        """Read ids that are local to each part and make them ids of the joined parts."""
+        dataset = _dataset(self.group, name, "iu", self.path)
+        self._check_length(name, dataset, start + sum(counts))
+        joined = np.empty(sum(counts), index_dtype(sum(bounds)))
+        done, shift = 0, 0
+        for part, (count, bound) in enumerate(zip(counts, bounds, strict=True)):
+            for a, b in _blocks(count):
+                ids = dataset[start + done + a : start + done + b]
+                self._check_range(name, ids, bound, part, a)
+                np.add(ids, shift, out=joined[done + a : done + b], casting="unsafe")
+            done += count
+            shift += bound
+        return joined
+
+    def _check_range(self, name: str, ids: Array, bound: int, part: int, first: int) -> None:
+        """Refuse ids that name nothing in their own part."""
+        if ids.min() < 0 or ids.max() >= bound:
+            bad = int(np.flatnonzero((ids < 0) | (ids >= bound))[0])
+            raise MeshError(
+                f"{self.path}: entry {first + bad} of VTKHDF/{name} in partition {part} is "
+                f"{ids[bad]}; the partition has {bound} of these, 0 to {bound - 1}"
+            )
+
+    def _indptr(self, name: str, start: int, rows: list[int], totals: list[int]) -> Int64Array:
+        """Read the offsets of each part (they restart at 0) and chain them."""
+        dataset = _dataset(self.group, name, "iu", self.path)
+        self._check_length(name, dataset, start + sum(rows) + len(rows))
+        indptr = np.zeros(sum(rows) + 1, OFFSET)
+        done, shift = 0, 0
+        for part, (count, total) in enumerate(zip(rows, totals, strict=True)):
+            own = indptr[done : done + count + 1]
+            own[:] = dataset[start + done + part : start + done + part + count + 1]
+            if own[0] != 0 or own[-1] != total:
+                raise FileError(
+                    f"{self.path}: VTKHDF/{name} of partition {part} goes from {own[0]} to "
+                    f"{own[-1]}; wanted 0 to {total}"
+                )
+            own += shift
+            done += count
+            shift += total
+        return indptr
+
+    def _polyhedra(self) -> Polyhedra | None:
+        """Read the faces of polyhedra, if the file has any."""
+        if "PolyhedronToFaces" not in self.group:
+            return None
+        extent = self.extent
+        faces, face_first = self._part_counts("NumberOfFaces")
+        face_ids, face_id_first = self._part_counts("NumberOfFaceConnectivityIds")
+        links, link_first = self._part_counts("NumberOfPolyhedronToFaceIds")
+        first_offset = face_first + extent.first_part
+        return Polyhedra(
+            self._indptr("FaceOffsets", first_offset, faces, face_ids),
+            self._ids("FaceConnectivity", face_id_first, face_ids, extent.n_points),
+            self._indptr(
+                "PolyhedronOffsets", extent.cell + extent.first_part, extent.n_cells, links
+            ),
+            self._ids("PolyhedronToFaces", link_first, links, faces),
+        )
+
+    def _part_counts(self, name: str) -> tuple[list[int], int]:
+        """Return counts of the step's parts, and the sum of those before them."""
+        counts = _numbers(self.group, name, self.path)
+        first, n_parts = self.extent.first_part, len(self.extent.n_cells)
+        if len(counts) < first + n_parts:
+            raise FileError(f"{self.path}: VTKHDF/{name} has {len(counts)} entries; too few")
+        return counts[first : first + n_parts].tolist(), int(counts[:first].sum())
+
+    def _fields(self, where: str, start: int, n_rows: int) -> dict[str, Array]:
+        """Read the fields that hold numbers."""
+        group = self.group.get(where, {})
+        fields = {}
+        for name in group:
+            dataset = group[name]
+            if getattr(dataset, "dtype", None) is None or dataset.dtype.kind not in "biuf":
+                continue
+            at = start
+            if self.extent.step >= 0 and name in self.group["Steps"].get(f"{where}Offsets", {}):
+                starts = self.group["Steps"][f"{where}Offsets"]
+                at = _at_step(starts, name, self.extent.step, self.path)
+            fields[name] = self._rows(f"{where}/{name}", at, n_rows, "biuf")
+        return fields
+
+
+def _blocks(count: int) -> Iterator[tuple[int, int]]:
+    """Yield consecutive (start, stop) that cover 0..count."""
+    for start in range(0, count, _BLOCK):
+        yield start, min(start + _BLOCK, count)
