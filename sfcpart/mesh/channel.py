@@ -151,7 +151,7 @@ def channel_mixed(counts: tuple[int, int], *, rows: tuple[int, int, int] = (1, 2
     pyramids, joint_tets = _joint_cells(joint[0], apex)
     tets = np.concatenate([joint_tets, high.reshape(-1, 8)[:, kuhn_tets()].reshape(-1, 4)])
     cells = {
-        "wedge": low.reshape(-1, 8)[:, [[0, 3, 7, 1, 2, 6], [0, 7, 4, 1, 6, 5]]].reshape(-1, 6),
+        "wedge": low.reshape(-1, 8)[:, [[1, 2, 6, 0, 3, 7], [1, 6, 5, 0, 7, 4]]].reshape(-1, 6),
         "hexahedron": middle.reshape(-1, 8),
         "pyramid": pyramids,
         "tetra": tets,

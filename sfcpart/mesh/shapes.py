@@ -272,8 +272,9 @@ def _checked_counts(counts: Sequence[int]) -> tuple[int, ...]:
 
 
 def _swept(block: IntArray, step: Array, n_flat: int) -> IntArray:
-    """Join each flat cell to its copy one layer up, for all layers."""
-    both = np.concatenate([block, block + n_flat], axis=1).astype(step.dtype)
+    """Join each flat cell to its copy one layer up, for all layers; wedges begin at the top."""
+    pair = [block + n_flat, block] if block.shape[1] == 3 else [block, block + n_flat]
+    both = np.concatenate(pair, axis=1).astype(step.dtype)
     return (both[None] + step).reshape(-1, both.shape[1])
 
 

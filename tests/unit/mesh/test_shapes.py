@@ -17,6 +17,7 @@ from sfcpart.mesh.channel import (
     pier_shell,
     section_area,
 )
+from sfcpart.mesh.geometry import centers_and_signed_measures
 from sfcpart.mesh.refined import refined_box
 from sfcpart.mesh.shapes import Shape, extrude, jittered_tets, lattice, truncated_octahedra
 
@@ -24,7 +25,7 @@ from sfcpart.mesh.shapes import Shape, extrude, jittered_tets, lattice, truncate
 FACES = {
     "tetra": [[0, 2, 1], [0, 1, 3], [1, 2, 3], [0, 3, 2]],
     "pyramid": [[0, 3, 2, 1], [0, 1, 4], [1, 2, 4], [2, 3, 4], [3, 0, 4]],
-    "wedge": [[0, 2, 1], [3, 4, 5], [0, 1, 4, 3], [1, 2, 5, 4], [2, 0, 3, 5]],
+    "wedge": [[0, 1, 2], [3, 5, 4], [0, 3, 4, 1], [1, 4, 5, 2], [2, 5, 3, 0]],
     "hexahedron": [
         [0, 3, 2, 1],
         [4, 5, 6, 7],
@@ -275,3 +276,23 @@ def test_shuffled_faces_join_the_same_cells():
 def test_impossible_shapes_are_refused(make):
     with pytest.raises(InputError, match=r"wanted|need"):
         make()
+
+
+@pytest.mark.parametrize(
+    ("make", "size"),
+    [
+        (lambda: channel_section(40, 8), 324.344824898114),
+        (lambda: channel_mixed((16, 6)), 4080.0),
+        (lambda: pier_shell(36, 12, fin=4), 85.254803570333),
+        (lambda: channel_with_rotor(8), 966.144),
+        (lambda: truncated_octahedra((4, 3, 3)), 2304.0),
+        (lambda: refined_box(8), 512.0),
+    ],
+)
+def test_meshes_have_the_known_size_and_no_inverted_cell(make, size):
+    mesh = make().to_mesh()
+    assert mesh.measures.sum() == pytest.approx(size, rel=1e-12)
+    assert mesh.measures.min() > 0
+    if mesh.points is not None:
+        _, signed = centers_and_signed_measures(mesh)
+        assert signed.min() > 0
