@@ -24,6 +24,14 @@ settings.register_profile("ci", derandomize=True, database=None, print_blob=True
 settings.load_profile("ci" if os.environ.get("CI") else "dev")
 
 
+def pytest_collection_modifyitems(items: list[pytest.Item]) -> None:
+    """Skip tests marked `large` when kernels run as plain Python."""
+    if not COMPILED:
+        for item in items:
+            if item.get_closest_marker("large"):
+                item.add_marker(pytest.mark.skip(reason="too slow as plain Python"))
+
+
 def pytest_generate_tests(metafunc: pytest.Metafunc) -> None:
     """Run a test that asks for `degenerate` or `empty_call` once for each of them.
 
