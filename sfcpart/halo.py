@@ -326,10 +326,22 @@ def _sorted_halo(
     sort_pairs(owned_indptr, owned, *lists, halo_indptr, halo, owner, sent_indptr, send)
     neighbour_indptr, neighbour, receive_indptr = _runs(halo_indptr, owner)
     send_indptr = _send_rows(neighbour_indptr, neighbour, receive_indptr)
-    arrays = (owned_indptr, owned, halo_indptr, halo)
-    pairs = (neighbour_indptr, neighbour, receive_indptr, send_indptr, send)
-    _freeze(*arrays, *pairs)
-    return Halo(n_parts, int(layers), across, *arrays, *pairs)
+    _freeze(owned_indptr, owned, halo_indptr, halo, neighbour_indptr, neighbour)
+    _freeze(receive_indptr, send_indptr, send)
+    return Halo(
+        n_parts=n_parts,
+        layers=int(layers),
+        across=across,
+        owned_indptr=owned_indptr,
+        owned=owned,
+        halo_indptr=halo_indptr,
+        halo=halo,
+        neighbour_indptr=neighbour_indptr,
+        neighbour=neighbour,
+        receive_indptr=receive_indptr,
+        send_indptr=send_indptr,
+        send=send,
+    )
 
 
 def _runs(halo_indptr: Int64Array, owner: Int32Array) -> tuple[Int64Array, Int32Array, Int64Array]:

@@ -142,7 +142,7 @@ def _check_free(target: Path, *, overwrite: bool) -> None:
 def _foreign(folder: Path) -> str | None:
     """Say what in a folder sfcpart did not write, or None."""
     try:
-        sizes = json.loads((folder / MANIFEST).read_text(encoding="utf-8"))["files"]
+        sizes = dict(json.loads((folder / MANIFEST).read_text(encoding="utf-8"))["files"])
     except FileNotFoundError:
         return "sfcpart did not write it"
     except (ValueError, LookupError, TypeError):

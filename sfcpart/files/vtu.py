@@ -108,17 +108,17 @@ def _piece(
     """Take the k-th part of a block and add its fields."""
     rows = slice(block.cell_indptr[k], block.cell_indptr[k + 1])
     cells, points = block.cells[rows], _part_of(block.points, k, rows)
-    cell_data = {
+    cell_data: dict[str, Array] = {
         "vtkGhostType": block.ghost[rows],
         "GlobalCellIds": cells.astype(GID),
         "part": partition.cell_part[cells],
         **{name: gathered(field, cells) for name, field in cell_fields.items()},
     }
-    point_data = {
+    point_data: dict[str, Array] = {
         "GlobalPointIds": points.used.astype(GID),
         **{name: gathered(field, points.used) for name, field in point_fields.items()},
     }
-    shape = {
+    shape: dict[str, Array] = {
         "connectivity": points.entries,
         "offsets": points.offsets[1:].astype(OFFSET),
         "types": drawing.kind[cells],
@@ -129,7 +129,7 @@ def _piece(
         stream, end = _face_stream(faces, _part_of(block.face_points, k, face_rows))
         shape["faces"] = stream
         shape["faceoffsets"] = np.where(drawing.kind[cells] == POLYHEDRON, end, -1)
-    sections = {
+    sections: dict[str, Mapping[str, Array]] = {
         "Points": {"Points": drawing.coordinates(points.used)},
         "Cells": shape,
         "PointData": point_data,
