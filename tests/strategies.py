@@ -214,10 +214,10 @@ def _islands() -> Mesh:
     return Mesh.from_arrays(points, {"quad": np.arange(12).reshape(3, 4)})
 
 
-def _flat_in_space() -> Mesh:
-    """Make a plane sheet of triangles in 3-D, off the axes' origin."""
+def _sheet(slope: float) -> Mesh:
+    """Make a plane sheet of triangles in 3-D that climbs along x from z = 7."""
     mesh = grid((3, 3), simplices=True)
-    points = np.column_stack([mesh.points, np.full(mesh.n_points, 7.0)])
+    points = np.column_stack([mesh.points, 7.0 + slope * mesh.points[:, 0]])
     return Mesh.from_arrays(points, {"triangle": np.asarray(mesh.indices).reshape(-1, 3)})
 
 
@@ -259,7 +259,8 @@ DEGENERATE: dict[str, Callable[[], Case]] = {
     "centers_on_a_line": lambda: Case(
         Mesh.from_centers(np.column_stack([np.arange(7.0), np.zeros(7), np.zeros(7)])), 3
     ),
-    "flat_in_space": lambda: Case(_flat_in_space(), 4),
+    "flat_in_space": lambda: Case(_sheet(0.0), 4),
+    "tilted_in_space": lambda: Case(_sheet(0.5), 4),
     "zero_measure": lambda: Case(_pancake(), 2),
     "disconnected": lambda: Case(_islands(), 2),
     "non_manifold": lambda: Case(_fins(), 2),
