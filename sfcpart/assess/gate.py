@@ -113,7 +113,7 @@ def _numbers(name: str, values: ArrayLike) -> FloatArray:
     array = np.asarray(values)
     if array.dtype.kind not in "iufb":
         raise WeightError(f"{name} holds {array.dtype} values; wanted numbers")
-    return np.ascontiguousarray(array, dtype=np.float64)
+    return np.asarray(array, dtype=np.float64, order="C")
 
 
 def _refuse(name: str, array: FloatArray, is_bad: Array, wanted: str) -> None:
