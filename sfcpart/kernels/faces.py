@@ -77,7 +77,8 @@ def _add(ring: Int64Array, n: int, point: int) -> int:
 def _rank_face(ring: Int64Array, n: int) -> tuple[Any, Any, Any, Any, int]:
     """Return the four smallest corners in order (0 for none) and the twist of a face.
 
-    The twist of four corners is the rank of the one opposite the smallest.
+    The twist of four corners is the rank of the one opposite the smallest. More than four corners
+    have twist 3, and bit 31 set in the third, so that they never equal a smaller face.
     """
     a = b = c = d = np.int64(1 << 40)
     at = 0
@@ -96,7 +97,7 @@ def _rank_face(ring: Int64Array, n: int) -> tuple[Any, Any, Any, Any, int]:
         across = ring[(at + 2) % 4]
         return a, b, c, d, (0 if across == b else 1 if across == c else 2)
     if n > 4:
-        return a, b, c, d, 3
+        return a, b, c | 1 << 31, d, 3
     return a, b, (c if n > 2 else np.int64(0)), np.int64(0), 0
 
 
