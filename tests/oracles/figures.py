@@ -13,10 +13,20 @@ def figures_by_sets(graph: CellGraph, cell_part: list[int], n_parts: int) -> dic
         list(zip(graph.indices[a:b].tolist(), graph.data[a:b].tolist(), strict=True))
         for a, b in zip(graph.indptr[:-1].tolist(), graph.indptr[1:].tolist(), strict=True)
     ]
-    names = (
-        "cells cut_faces cut_measure boundary_faces boundary_measure halo_cells sent_cells "
-        "neighbours smallest_interface pieces stray_cells surface"
-    ).split()
+    names = [
+        "cells",
+        "cut_faces",
+        "cut_measure",
+        "boundary_faces",
+        "boundary_measure",
+        "halo_cells",
+        "sent_cells",
+        "neighbours",
+        "smallest_interface",
+        "pieces",
+        "stray_cells",
+        "surface",
+    ]
     figures: dict[str, list[float]] = {name: [0] * n_parts for name in names}
     for p in range(n_parts):
         own = {i for i, q in enumerate(cell_part) if q == p}

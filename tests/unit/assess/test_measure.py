@@ -103,7 +103,11 @@ def test_a_cell_is_sent_once_to_each_part_that_touches_it():
 
 def test_weights_and_speeds_stand_beside_plain_counts():
     found = assess_lattice(
-        box(4, 1), [0, 0, 1, 1], weights=[1, 1, 4, 2], speeds=[1, 3], limit_weights=[1, 2, 3, 4],
+        box(4, 1),
+        [0, 0, 1, 1],
+        weights=[1, 1, 4, 2],
+        speeds=[1, 3],
+        limit_weights=[1, 2, 3, 4],
         limits=[6, 7],
     )
     # speeds scale to 1/2 and 3/2, so fair shares are 2 and 6 of 8
@@ -137,7 +141,9 @@ def test_centres_alone_leave_out_what_needs_faces():
     found = assess_partition(Mesh.from_centers(centers), None, Partition.from_array([0, 0, 1, 1]))
     for column in PART_COLUMNS:
         known = not column.needs_faces and column.name not in {
-            "measure", "limit_weight", "limit_share",
+            "measure",
+            "limit_weight",
+            "limit_share",
         }
         assert (found.part[column.name] is not None) == known, column.name
     for column in TOTAL_COLUMNS:
@@ -187,7 +193,9 @@ def test_faces_that_join_opposite_ends_get_no_bound():
     graph = graph_of_edges(4, edges, [(k, 1.0) for k in range(4) for _ in range(2)])
     mesh = Mesh.from_faces(
         [[a, b] for a, b, _ in edges] + [[k, -1] for k in range(4) for _ in range(2)],
-        np.ones(12), centers, np.ones(4),
+        np.ones(12),
+        centers,
+        np.ones(4),
     )
     found = assess_partition(mesh, graph, Partition.from_array([0, 0, 1, 1]))
     assert found.total["cut_faces"] == 2
@@ -298,9 +306,7 @@ def test_wide_indices_give_the_same():
     mesh, graph = lattice_mesh(sites), lattice_graph(sites)
     partition = Partition.from_array(np.arange(25) % 4)
     narrow = assess_partition(mesh, graph, partition)
-    wide = assess_partition(
-        mesh, replace(graph, indices=graph.indices.astype(np.int64)), partition
-    )
+    wide = assess_partition(mesh, replace(graph, indices=graph.indices.astype(np.int64)), partition)
     assert narrow.total == wide.total
 
 
