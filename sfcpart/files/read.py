@@ -9,6 +9,7 @@ from __future__ import annotations
 import re
 import stat
 from collections.abc import Callable, Mapping
+from importlib import import_module
 from os import PathLike, strerror
 from pathlib import Path
 
@@ -70,6 +71,12 @@ EXTENSIONS: Mapping[str, tuple[str, ...]] = {
 }
 """Formats to try for each file extension, in turn; names as meshio has them."""
 
+_OWN: Mapping[str, tuple[str, str]] = {
+    "vtkhdf": ("sfcpart.files.vtkhdf_read", "read_vtkhdf"),
+    "vtu": ("sfcpart.files.vtu_read", "read_vtu"),
+    "pvtu": ("sfcpart.files.vtu_read", "read_pvtu"),
+    "su2": ("sfcpart.files.su2_read", "read_su2"),
+}
 _HEAD = 4096
 # Only signatures that no other format can begin with.
 _SIGNATURES: tuple[tuple[str, re.Pattern[bytes]], ...] = (
@@ -140,14 +147,10 @@ def _read_raw(place: Path, formats: tuple[str, ...]) -> RawMesh:
 
 def _reader(formats: tuple[str, ...]) -> Callable[[Path], RawMesh]:
     """Return the reader of a format; the module it is in is loaded now."""
-    if formats[0] == "vtkhdf":
-        from sfcpart.files.vtkhdf_read import read_vtkhdf
-
-        return read_vtkhdf
-    if formats[0] == "su2":
-        from sfcpart.files.su2_read import read_su2
-
-        return read_su2
+    module, name = _OWN.get(formats[0], ("", ""))
+    if module:
+        reader: Callable[[Path], RawMesh] = getattr(import_module(module), name)
+        return reader
     from sfcpart.files.meshio_files import read_with_meshio
 
     return lambda place: read_with_meshio(place, formats)
