@@ -1,0 +1,298 @@
+"""Cut a line of items into contiguous chunks under a bottleneck: sweep back, then walk forward.
+
+A cut is a position between items; chunk p takes the items from cut p to cut p + 1. Given the
+most each chunk may hold, `sweep_back` finds, chunk by chunk from the last, the set of positions
+from which the rest of the line can still be divided. Each set is a short list of intervals: one,
+unless single items outweigh what some slow part may hold. `walk_forward` then picks cuts nearest
+to wanted positions inside these sets.
+
+A rank sees its stretch of the line: positions `first <= a < last`, with prefix sums from position
+`base` on that reach a few items past `last`. Empty prefix sums stand for items of weight 1
+(`total`) or for no limit (`limit`). What lies beyond `last` arrives as intervals with the sums at
+their lower ends.
+
+Source: the probe of A. Pinar, C. Aykanat, Fast optimal load balancing algorithms for 1D
+partitioning, JPDC 64:974 (2004), run from the right on sets of positions instead of one position,
+which keeps it exact when parts differ in speed and none may be empty.
+Cost: O(P log n) a sweep, plus the items heavier than a part may hold.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from sfcpart.dtypes import FloatArray, Int64Array
+from sfcpart.kernels._jit import jit
+
+__all__ = ["caps", "pick", "sweep_back", "walk_forward"]
+
+
+@jit
+def caps(bottleneck: float, speed: FloatArray, most: int) -> Int64Array:
+    """Return the largest weight w <= most of each part with float64(w) / speed <= bottleneck."""
+    cap = np.empty(len(speed), np.int64)
+    for p in range(len(speed)):
+        if most / speed[p] <= bottleneck:
+            cap[p] = most
+            continue
+        w = np.int64(min(bottleneck * speed[p], 4.0e18))
+        while w > 0 and w / speed[p] > bottleneck:
+            w -= 1
+        while (w + 1) / speed[p] <= bottleneck:
+            w += 1
+        cap[p] = min(w, most)
+    return cap
+
+
+@jit
+def sum_before(prefix: Int64Array, at: int, base: int) -> int:
+    """Return the sum of the items before a position; an empty prefix means 1 each."""
+    return prefix[at - base] if len(prefix) else np.int64(at)
+
+
+@jit
+def limit_before(prefix: Int64Array, at: int, base: int) -> int:
+    """Return the limited sum before a position; an empty prefix means there is no limit."""
+    return prefix[at - base] if len(prefix) else np.int64(0)
+
+
+@jit
+def sweep_back(
+    span: Int64Array,
+    total: Int64Array,
+    limit: Int64Array,
+    cap: Int64Array,
+    limit_cap: Int64Array,
+    speed: FloatArray,
+    heavy: Int64Array,
+    came_ptr: Int64Array,
+    came: Int64Array,
+    brackets: FloatArray,
+    own_ptr: Int64Array,
+    own: Int64Array,
+) -> int:
+    """Find the positions of this stretch from which chunks p, p + 1, ... can end the line.
+
+    Parameters
+    ----------
+    span : (4,) int64
+        first, last, base, least (items a chunk takes at least).
+    heavy : int64
+        Positions whose next `least` items may be too much for some part, ascending.
+    came_ptr (P + 2,), came (m, 4)
+        For each p, intervals (low, high, total at low, limit at low) beyond `last`, ascending.
+    brackets : (2,) float64, changed
+        Smallest quotient above the bottleneck and largest below that a comparison met.
+    own_ptr (P + 2,), own (capacity, 2), written
+        Intervals for p = P, P - 1, ..., 0, each list descending.
+
+    Returns
+    -------
+    int
+        Number of intervals; -1 if `own` is too short.
+    """
+    first, last, base, least = span[0], span[1], span[2], span[3]
+    n_parts = len(cap)
+    n = 0
+    own_ptr[0] = 0
+    own_ptr[1] = 0  # p = P: only the end of the line, which came
+    for q in range(1, n_parts + 1):
+        p = n_parts - q
+        fresh = n
+        top = last - 1  # highest position not decided
+        own_begin, own_end = own_ptr[q - 1], own_ptr[q]
+        came_begin, came_end = came_ptr[p + 1], came_ptr[p + 2]
+        n_came = came_end - came_begin
+        n_all = n_came + own_end - own_begin
+        for k in range(n_all):
+            if top < first:
+                break
+            if k < n_came:
+                row = came_end - 1 - k
+                low, high = came[row, 0], came[row, 1]
+                total_low, limit_low = came[row, 2], came[row, 3]
+            else:
+                row = own_begin + k - n_came
+                low, high = own[row, 0], own[row, 1]
+                total_low = sum_before(total, low, base)
+                limit_low = limit_before(limit, low, base)
+            below = first
+            if k + 1 < n_came:
+                below = max(first, came[came_end - 2 - k, 1] - least + 1)
+            elif k + 1 < n_all:
+                below = max(first, own[own_begin + k + 1 - n_came, 1] - least + 1)
+            # positions whose chunk p takes exactly `least` items
+            right, left = min(top, high - least), max(first, low - least)
+            if right >= left:
+                h = np.searchsorted(heavy, right + 1) - 1
+                while right >= left:
+                    blocked = left - 1
+                    while h >= 0 and heavy[h] >= left:
+                        a = heavy[h]
+                        h -= 1
+                        w = sum_before(total, a + least, base) - sum_before(total, a, base)
+                        v = limit_before(limit, a + least, base) - limit_before(limit, a, base)
+                        if w <= cap[p]:
+                            brackets[1] = max(brackets[1], w / speed[p])
+                        else:
+                            brackets[0] = min(brackets[0], w / speed[p])
+                        if w > cap[p] or v > limit_cap[p]:
+                            blocked = a
+                            break
+                    if right > blocked:
+                        if n > fresh and own[n - 1, 0] == right + 1:
+                            own[n - 1, 0] = blocked + 1
+                        else:
+                            if n == len(own):
+                                return -1
+                            own[n, 0], own[n, 1] = blocked + 1, right
+                            n += 1
+                    right = blocked - 1
+            top = min(top, low - least - 1)
+            # positions whose chunk p reaches up to `low`
+            if top >= below:
+                a, stop = below, top + 1
+                while a < stop:
+                    middle = (a + stop) >> 1
+                    if (
+                        total_low - sum_before(total, middle, base) <= cap[p]
+                        and limit_low - limit_before(limit, middle, base) <= limit_cap[p]
+                    ):
+                        stop = middle
+                    else:
+                        a = middle + 1
+                if a <= top:
+                    w = total_low - sum_before(total, a, base)
+                    brackets[1] = max(brackets[1], w / speed[p])
+                    if n > fresh and own[n - 1, 0] == top + 1:
+                        own[n - 1, 0] = a
+                    else:
+                        if n == len(own):
+                            return -1
+                        own[n, 0], own[n, 1] = a, top
+                        n += 1
+                if a > below:
+                    w = total_low - sum_before(total, a - 1, base)
+                    if w > cap[p]:
+                        brackets[0] = min(brackets[0], w / speed[p])
+                top = below - 1
+        own_ptr[q + 1] = n
+    return n
+
+
+@jit
+def pass_on(
+    span: Int64Array,
+    total: Int64Array,
+    limit: Int64Array,
+    came_ptr: Int64Array,
+    came: Int64Array,
+    own_ptr: Int64Array,
+    own: Int64Array,
+    out_ptr: Int64Array,
+    out: Int64Array,
+) -> int:
+    """Write what the stretch before this one needs: intervals up to `first + least`, and one more."""
+    n_parts = len(out_ptr) - 2
+    n = 0
+    out_ptr[0] = 0
+    for p in range(n_parts + 1):
+        q = n_parts - p
+        begin, end = own_ptr[q], own_ptr[q + 1]
+        n_all = end - begin + came_ptr[p + 1] - came_ptr[p]
+        for k in range(n_all):
+            if k < end - begin:
+                low, high = own[end - 1 - k, 0], own[end - 1 - k, 1]
+                out[n, 0], out[n, 1] = low, high
+                out[n, 2] = sum_before(total, low, span[2])
+                out[n, 3] = limit_before(limit, low, span[2])
+            else:
+                out[n] = came[came_ptr[p] + k - (end - begin)]
+            n += 1
+            if out[n - 1, 0] >= span[0] + span[3]:
+                break
+        out_ptr[p + 1] = n
+    return n
+
+
+@jit
+def pick(
+    p: int,
+    origin: Int64Array,
+    wanted: int,
+    span: Int64Array,
+    total: Int64Array,
+    limit: Int64Array,
+    cap: Int64Array,
+    limit_cap: Int64Array,
+    own_ptr: Int64Array,
+    own: Int64Array,
+) -> tuple[int, int]:
+    """Return the best ends of chunk p on this stretch: last one <= wanted, first one above; or -1.
+
+    `origin` is (begin of the chunk, total there, limit there).
+    """
+    q = len(cap) - (p + 1)
+    first = origin[0] + span[3]
+    base = span[2]
+    above = np.int64(-1)
+    for row in range(own_ptr[q], own_ptr[q + 1]):
+        low, high = max(own[row, 0], first), own[row, 1]
+        if high < low:
+            break
+        if low <= wanted:
+            a, stop = low - 1, min(high, wanted)  # the last position within reach
+            while a < stop:
+                middle = (a + stop + 1) >> 1
+                if (
+                    sum_before(total, middle, base) - origin[1] <= cap[p]
+                    and limit_before(limit, middle, base) - origin[2] <= limit_cap[p]
+                ):
+                    a = middle
+                else:
+                    stop = middle - 1
+            if a >= low:
+                # a part of the same interval may lie above `wanted`; it is not nearer by our rule
+                return a, above
+        if high > wanted:
+            above = max(low, wanted + 1)
+    return np.int64(-1), above
+
+
+@jit
+def walk_forward(
+    p: int,
+    origin: Int64Array,
+    wanted: Int64Array,
+    span: Int64Array,
+    total: Int64Array,
+    limit: Int64Array,
+    cap: Int64Array,
+    limit_cap: Int64Array,
+    own_ptr: Int64Array,
+    own: Int64Array,
+    cut: Int64Array,
+) -> int:
+    """Pick the ends of chunks p, p + 1, ... until one may lie beyond this stretch; return it.
+
+    `origin` and `cut` are changed; the last cut is not picked.
+    """
+    base, last = span[2], span[1]
+    while p < len(cap) - 1:
+        near, above = pick(
+            p, origin, wanted[p + 1], span, total, limit, cap, limit_cap, own_ptr, own
+        )
+        ends_here = (
+            wanted[p + 1] < last
+            or sum_before(total, last, base) - origin[1] > cap[p]
+            or limit_before(limit, last, base) - origin[2] > limit_cap[p]
+        )
+        chosen = near if near >= 0 else above
+        if not ends_here or chosen < 0:
+            break
+        cut[p + 1] = chosen
+        origin[0] = chosen
+        origin[1] = sum_before(total, chosen, base)
+        origin[2] = limit_before(limit, chosen, base)
+        p += 1
+    return p

@@ -1,0 +1,162 @@
+"""Split along a curve: contiguous, weighted chunks of the curve order with least bottleneck.
+
+The order of the cells is that of `sfcpart.curve`; the chunks are those of `methods.chunks`. With
+nested levels the curve is first divided among the parts of the first level, each with the summed
+speed and limit of what it contains and with one item at least for each of its smallest parts, and
+each chunk then again. `tolerance` plays no role here: the least bottleneck is always given.
+"""
+
+from __future__ import annotations
+
+from functools import partial
+from typing import cast
+
+import numpy as np
+
+from sfcpart.curve import Curve, curve_slice
+from sfcpart.dtypes import PART, Int32Array, Int64Array
+from sfcpart.errors import PartitionError
+from sfcpart.methods.chunks import cut_line
+from sfcpart.methods.line import Line
+from sfcpart.methods.problem import Problem
+from sfcpart.methods.together import Bundles
+
+__all__ = ["along_hilbert", "along_morton", "along_rows", "split_along"]
+
+
+def split_along(problem: Problem, *, curve: Curve) -> Int32Array:
+    """Return the part of each local cell: chunks of the curve with least bottleneck.
+
+    Parameters
+    ----------
+    problem : Problem
+    curve : {"hilbert", "morton", "rows"}
+
+    Returns
+    -------
+    (n_local,) int32
+        The same for any number of ranks and threads. A part is empty only if there are fewer
+        cells than parts.
+
+    Raises
+    ------
+    InputError
+        If a centre is not finite.
+    PartitionError
+        If limits cannot be kept, a group or cell is too heavy for every part, or groups leave
+        fewer items than parts.
+
+    Notes
+    -----
+    O(n) for keys and order, O(P log n log w_max) for the chunks.
+    """
+    problem.comm.check(_unfit(problem))
+    place = curve_slice(problem.centers, curve=curve, comm=problem.comm)
+    weight = None if problem.weight is None else place.gather(problem.weight)
+    limited = None if problem.limit_weight is None else place.gather(problem.limit_weight)
+    if problem.group is None:
+        return cast(Int32Array, place.scatter(_parts(problem, len(place), weight, limited)))
+    bundles = Bundles.of(
+        place.gather(problem.group), weight=weight, limit_weight=limited, comm=problem.comm
+    )
+    problem.comm.check(_too_heavy(problem, bundles))
+    n_items = len(bundles.name)
+    item_part = _parts(problem, n_items, bundles.weight, bundles.limit_weight)
+    return cast(Int32Array, place.scatter(bundles.spread(item_part)))
+
+
+along_hilbert = partial(split_along, curve="hilbert")
+along_morton = partial(split_along, curve="morton")
+along_rows = partial(split_along, curve="rows")
+
+
+def _parts(
+    problem: Problem, n_items: int, weight: Int64Array | None, limited: Int64Array | None
+) -> Int32Array:
+    """Return the part of each item of this rank's stretch."""
+    sizes = problem.level_sizes or (problem.n_parts,)
+    line = Line.of(
+        n_items,
+        weight=weight,
+        limit_weight=limited,
+        reach=problem.n_parts // sizes[0] + 1,
+        comm=problem.comm,
+    )
+    cut = _nested_cuts(problem, line, sizes)
+    bounded = np.clip(cut, line.first, line.last)
+    return np.repeat(np.arange(problem.n_parts, dtype=PART), np.diff(bounded))
+
+
+def _nested_cuts(problem: Problem, line: Line, sizes: tuple[int, ...]) -> Int64Array:
+    """Divide the line level by level; return the cuts of the smallest parts, (n_parts + 1,)."""
+    n_cells = int(problem.comm.allreduce(np.array([len(problem.centers)], np.int64))[0])
+    some_for_each = line.n_items >= problem.n_parts
+    if not some_for_each and n_cells >= problem.n_parts:
+        raise PartitionError(
+            f"groups leave {line.n_items} items for {problem.n_parts} parts; "
+            "ask for fewer parts or smaller groups"
+        )
+    cut = np.array([0, line.n_items], np.int64)
+    n_chunks = 1
+    for size in sizes:
+        n_chunks *= size
+        inside = problem.n_parts // n_chunks
+        speed = problem.part_speed.astype(np.float64).reshape(n_chunks, inside).sum(axis=1)
+        limit = None
+        if problem.limit_weight is not None and problem.part_limit is not None:
+            limit = problem.part_limit.astype(np.int64).reshape(n_chunks, inside).sum(axis=1)
+        pieces = []
+        for chunk in range(len(cut) - 1):
+            own = slice(chunk * size, (chunk + 1) * size)
+            pieces.append(
+                cut_line(
+                    line,
+                    int(cut[chunk]),
+                    int(cut[chunk + 1]),
+                    speed=speed[own],
+                    limit=None if limit is None else limit[own],
+                    least=inside if some_for_each else 0,
+                )[:-1]
+            )
+        cut = np.append(np.concatenate(pieces), line.n_items)
+    return cut
+
+
+def _unfit(problem: Problem) -> PartitionError | None:
+    """Return an error if speeds, levels or single cells do not fit the parts."""
+    if problem.n_parts < 1:
+        return PartitionError(f"{problem.n_parts} parts; wanted at least 1")
+    if len(problem.part_speed) != problem.n_parts:
+        return PartitionError(f"{len(problem.part_speed)} speeds for {problem.n_parts} parts")
+    if not np.all(np.isfinite(problem.part_speed) & (problem.part_speed > 0)):
+        bad = int(np.flatnonzero(~(problem.part_speed > 0) | ~np.isfinite(problem.part_speed))[0])
+        return PartitionError(
+            f"part {bad} has speed {problem.part_speed[bad]}; wanted finite numbers above 0"
+        )
+    if problem.level_sizes and int(np.prod(problem.level_sizes)) != problem.n_parts:
+        spelled = "x".join(map(str, problem.level_sizes))
+        return PartitionError(f"levels {spelled} do not multiply to {problem.n_parts} parts")
+    if problem.limit_weight is None or problem.part_limit is None or not len(problem.limit_weight):
+        return None
+    heaviest = int(np.argmax(problem.limit_weight))
+    need, most = int(problem.limit_weight[heaviest]), int(problem.part_limit.max())
+    if need <= most:
+        return None
+    return PartitionError(
+        f"cell {problem.first_gid + heaviest} alone needs {need}, but no part may hold more than "
+        f"{most}; raise the limit"
+    )
+
+
+def _too_heavy(problem: Problem, bundles: Bundles) -> PartitionError | None:
+    """Return an error that names a group whose limited weight no part may hold."""
+    if bundles.limit_weight is None or problem.part_limit is None or not len(bundles.name):
+        return None
+    heaviest = int(np.argmax(bundles.limit_weight))
+    need, most = int(bundles.limit_weight[heaviest]), int(problem.part_limit.max())
+    if need <= most:
+        return None
+    return PartitionError(
+        f"group {int(bundles.name[heaviest])} needs {need}, but no part may hold more than {most}; "
+        "raise the limit or make the group smaller"
+    )

@@ -1,0 +1,116 @@
+"""Items in a line, spread over ranks, with the sums before every position.
+
+Each rank holds one stretch of the line: `total[i]` is the weight of all items before position
+`first + i`. The sums reach a few positions into the next stretches, so that small windows need no
+messages. Items of weight 1 and a missing limit need no array at all.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from sfcpart.comm.base import Comm
+from sfcpart.dtypes import OFFSET, WEIGHT, Int64Array
+
+__all__ = ["Line"]
+
+
+@dataclass(frozen=True, eq=False)
+class Line:
+    """A rank's stretch of a line of weighted items.
+
+    Attributes
+    ----------
+    comm : Comm
+    offset : (size + 1,) int64
+        Position of each rank's first item; the last entry is the number of items.
+    total : (n_local + 1 + k,) int64, or empty
+        Weight before position offset[rank] + i; empty if each item weighs 1.
+    limit : (n_local + 1 + k,) int64, or empty
+        The same for the limited weight; empty if there is none.
+    """
+
+    comm: Comm
+    offset: Int64Array
+    total: Int64Array
+    limit: Int64Array
+
+    @classmethod
+    def of(
+        cls,
+        n_items: int,
+        *,
+        weight: Int64Array | None,
+        limit_weight: Int64Array | None,
+        reach: int,
+        comm: Comm,
+    ) -> Line:
+        """Build the sums; `reach` is how many positions beyond the stretch they must cover."""
+        lengths = np.concatenate(comm.allgather(np.array([n_items], OFFSET)))
+        offset = np.concatenate(([0], np.cumsum(lengths))).astype(OFFSET)
+        sums = [
+            np.empty(0, WEIGHT) if given is None else _sums(given, offset, reach, comm)
+            for given in (weight, limit_weight)
+        ]
+        return cls(comm, offset, sums[0], sums[1])
+
+    @property
+    def first(self) -> int:
+        """Position of this rank's first item."""
+        return int(self.offset[self.comm.rank])
+
+    @property
+    def last(self) -> int:
+        """Position after this rank's last item."""
+        return int(self.offset[self.comm.rank + 1])
+
+    @property
+    def n_items(self) -> int:
+        """Items of all ranks."""
+        return int(self.offset[-1])
+
+    def own_part(self, begin: int, end: int) -> tuple[int, int]:
+        """Return the positions of [begin, end) that are this rank's, perhaps none."""
+        first = min(max(self.first, begin), end)
+        return first, max(first, min(self.last, end))
+
+    def sums_at(self, positions: Int64Array) -> Int64Array:
+        """Return (weight, limited weight) before some positions, (n, 2), on every rank."""
+        here = (positions > self.first) & (positions <= self.last)
+        found = np.zeros((len(positions), 2), WEIGHT)
+        for column, sums in enumerate((self.total, self.limit)):
+            if len(sums):
+                found[here, column] = sums[positions[here] - self.first]
+        found = self.comm.allreduce(found)
+        if not len(self.total):
+            found[:, 0] = positions
+        return found
+
+    def windows(self, begin: int, end: int, width: int) -> tuple[Int64Array, Int64Array]:
+        """Return weight and limited weight of every `width` items in a row that start here."""
+        first, last = self.own_part(begin, max(begin, end - width + 1))
+        low, high = first - self.first, last - self.first
+        pair = [
+            sums[low + width : high + width] - sums[low:high] if len(sums) else sums
+            for sums in (self.total, self.limit)
+        ]
+        return pair[0], pair[1]
+
+
+def _sums(values: Int64Array, offset: Int64Array, reach: int, comm: Comm) -> Int64Array:
+    """Return the sums before each position of the stretch and `reach` positions more."""
+    first, last, end = offset[comm.rank], offset[comm.rank + 1], offset[-1]
+    n = len(values)
+    n_more = int(min(reach, end - last))
+    sums = np.empty(n + 1 + n_more, WEIGHT)
+    sums[0] = 0
+    np.cumsum(values, out=sums[1 : n + 1])
+    sums[: n + 1] += comm.exscan(sums[n : n + 1])[0]
+    wanted = offset[1:, None] + np.arange(1, reach + 1)
+    here = (wanted > first) & (wanted <= last)
+    beyond = np.zeros(wanted.shape, WEIGHT)
+    beyond[here] = sums[wanted[here] - first]
+    sums[n + 1 :] = comm.allreduce(beyond)[comm.rank, :n_more]
+    return sums
