@@ -17,8 +17,9 @@ from __future__ import annotations
 import argparse
 from pathlib import Path
 
-from mesh_files import write_faces, write_meshio, write_vtkhdf
+from mesh_files import write_meshio, write_vtkhdf
 
+from sfcpart.files.faces_file import write_faces
 from sfcpart.mesh.channel import channel_section, channel_water
 from sfcpart.mesh.refined import FaceShape, refined_box
 from sfcpart.mesh.shapes import Shape, jittered_tets, lattice
@@ -64,7 +65,7 @@ def main() -> None:
     if asked.shuffle is not None:
         shape = shape.with_shuffled_cells(asked.shuffle)
     if isinstance(shape, FaceShape):
-        write_faces(asked.path, shape)
+        write_faces(asked.path, shape.to_mesh())
     elif asked.path.suffix == ".vtkhdf":
         write_vtkhdf(asked.path, shape)
     else:

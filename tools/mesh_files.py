@@ -1,4 +1,4 @@
-"""Write meshes made by rule: VTKHDF and faces with h5py, MSH text by hand, others with meshio."""
+"""Write meshes made by rule: VTKHDF with h5py, MSH text by hand, others with meshio."""
 
 from __future__ import annotations
 
@@ -8,7 +8,6 @@ import h5py
 import meshio
 import numpy as np
 
-from sfcpart.mesh.refined import FaceShape
 from sfcpart.mesh.shapes import Shape
 
 KINDS = {"triangle": 5, "quad": 9, "tetra": 10, "hexahedron": 12, "wedge": 13, "pyramid": 14}
@@ -66,16 +65,6 @@ def write_vtkhdf(path: Path, shape: Shape) -> None:
         root["NumberOfConnectivityIds"] = np.array([connectivity])
         for name, array in shape.cell_fields.items():
             root[f"CellData/{name}"] = array
-
-
-def write_faces(path: Path, shape: FaceShape) -> None:
-    """Write the faces file: two cells and the measure of each face, centre and measure of cells."""
-    with h5py.File(path, "w") as file:
-        file["face_cell"] = shape.face_cell
-        file["face_measure"] = shape.face_measure
-        file["cell_center"] = shape.cell_center
-        file["cell_measure"] = shape.cell_measure
-        file["cell_fields/level"] = shape.cell_level
 
 
 def _blocks(root, shape: Shape) -> int:
