@@ -75,6 +75,7 @@ _OWN: Mapping[str, tuple[str, str]] = {
     "vtkhdf": ("sfcpart.files.vtkhdf_read", "read_vtkhdf"),
     "vtu": ("sfcpart.files.vtu_read", "read_vtu"),
     "pvtu": ("sfcpart.files.vtu_read", "read_pvtu"),
+    "vtk": ("sfcpart.files.vtk_read", "read_vtk"),
     "su2": ("sfcpart.files.su2_read", "read_su2"),
 }
 _HEAD = 4096
