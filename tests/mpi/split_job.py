@@ -1,0 +1,32 @@
+"""The job of `test_split.py`: every problem is split by every method that needs no graph."""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+
+import numpy as np
+
+from sfcpart.comm import world
+from sfcpart.curve import curve_order
+from sfcpart.methods.registry import METHODS
+from tests.laws import PROBLEMS, problem_of
+
+
+def main() -> None:
+    comm = world()
+    seen = {}
+    for name in PROBLEMS:
+        problem = problem_of(name, comm)
+        seen[f"{name} order"] = curve_order(problem.centers, comm=comm)
+        for method in METHODS.values():
+            if not method.needs_graph:
+                seen[f"{name} {method.name}"] = method.run(problem)
+    whole = {key: comm.allgather(mine) for key, mine in seen.items()}
+    if comm.rank == 0:
+        joined = {key: np.concatenate(pieces) for key, pieces in whole.items()}
+        np.savez(Path(sys.argv[1]) / "seen.npz", **joined)
+
+
+if __name__ == "__main__":
+    main()
