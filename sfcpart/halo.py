@@ -145,7 +145,8 @@ def build_halo(
     partition : Partition
         Part of each cell.
     layers : int, optional
-        Steps from an owned cell that the halo reaches, >= 1.
+        Steps from an owned cell that the halo reaches; 0 for no halo, which is all that a mesh
+        known by its cell centres only can have.
     across : {"faces", "points"}, optional
         Whether one step crosses a shared face or any shared point.
     order : (n_cells,) integers, optional
@@ -184,7 +185,9 @@ def build_halo(
     _check_options(layers, across)
     order = _checked_order(mesh, partition, order)
     owned_indptr, owned = _group(order, partition)
-    if across == "faces":
+    if layers == 0:
+        lists = _no_lists(partition.n_cells)
+    elif across == "faces":
         lists = _across_faces(graph, partition, layers)
     else:
         lists = _across_points(mesh, partition, layers)
@@ -193,8 +196,8 @@ def build_halo(
 
 def _check_options(layers: int, across: str) -> None:
     """Refuse wrong numbers of layers and unknown ways to step."""
-    if isinstance(layers, bool) or not isinstance(layers, int | np.integer) or layers < 1:
-        raise InputError(f"layers is {layers!r}; wanted a whole number, at least 1")
+    if isinstance(layers, bool) or not isinstance(layers, int | np.integer) or layers < 0:
+        raise InputError(f"layers is {layers!r}; wanted a whole number, 1 or more (0: no halo)")
     if across not in ("faces", "points"):
         raise InputError(f'across is {across!r}; wanted "faces" or "points"')
 

@@ -61,7 +61,7 @@ def _hybrid() -> Mesh:
 SAMPLES: dict[str, Callable[[], Mesh]] = {
     "tets": lambda: jittered_tets((4, 4, 3)).to_mesh(),
     "mixed": lambda: channel_mixed((8, 4)).to_mesh(),
-    "section": lambda: channel_section(12).to_mesh(),
+    "section": lambda: channel_section(12, 4).to_mesh(),
     "shell": lambda: pier_shell(12, 5).to_mesh(),
     "polyhedra": lambda: truncated_octahedra((3, 2, 2)).to_mesh(),
     "hybrid": _hybrid,
@@ -84,5 +84,8 @@ def sliced(mesh: Mesh, *, n_parts: int, **options: Any) -> Parted:
     cell_part = np.empty(mesh.n_cells, np.int32)
     cell_part[order] = np.arange(mesh.n_cells) * n_parts // mesh.n_cells
     partition = Partition.from_array(cell_part, n_parts)
-    halo = build_halo(mesh, cell_graph(mesh), partition, order=order, **options)
+    if mesh.points is None and mesh.faces is None:
+        halo = build_halo(mesh, None, partition, order=order, layers=0)
+    else:
+        halo = build_halo(mesh, cell_graph(mesh), partition, order=order, **options)
     return Parted(mesh, partition, halo)

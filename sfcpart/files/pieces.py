@@ -32,8 +32,18 @@ if TYPE_CHECKING:
 
     from sfcpart.halo import Halo
     from sfcpart.mesh.mesh import Mesh, Polyhedra
+    from sfcpart.partition import Partition
 
-__all__ = ["GHOST", "POLYHEDRON", "Block", "Drawing", "Renumbered", "blocks", "drawing_of"]
+__all__ = [
+    "GHOST",
+    "POLYHEDRON",
+    "Block",
+    "Drawing",
+    "Renumbered",
+    "blocks",
+    "check_same_cells",
+    "drawing_of",
+]
 
 BLOCK_CELLS = 1 << 20
 """Cells in one block: 2^20 hexahedra take about 64 MB while they are renumbered."""
@@ -148,6 +158,29 @@ def drawing_of(mesh: Mesh) -> Drawing:
     )
 
 
+def check_same_cells(drawing: Drawing, partition: Partition, halo: Halo) -> None:
+    """Check that mesh, partition and exchange lists belong together.
+
+    Raises
+    ------
+    PartitionError
+        If their numbers of cells or parts differ.
+    """
+    counts = {
+        "mesh": len(drawing.kind),
+        "partition": partition.n_cells,
+        "exchange lists": halo.n_cells,
+    }
+    if len(set(counts.values())) > 1:
+        found = ", ".join(f"{what} {count}" for what, count in counts.items())
+        raise PartitionError(f"numbers of cells differ: {found}; wanted all of the same mesh")
+    if partition.n_parts != halo.n_parts:
+        raise PartitionError(
+            f"the partition has {partition.n_parts} parts and the exchange lists {halo.n_parts}; "
+            "wanted lists of this partition"
+        )
+
+
 def blocks(drawing: Drawing, halo: Halo, *, block_cells: int = BLOCK_CELLS) -> Iterator[Block]:
     """Yield the local meshes of all parts in order, a block of parts at a time.
 
@@ -157,17 +190,7 @@ def blocks(drawing: Drawing, halo: Halo, *, block_cells: int = BLOCK_CELLS) -> I
     halo : Halo
     block_cells : int, optional
         A block stops before the part that would take it above this many cells.
-
-    Raises
-    ------
-    PartitionError
-        If the halo was built for another number of cells.
     """
-    if halo.n_cells != len(drawing.kind):
-        raise PartitionError(
-            f"the halo has {halo.n_cells} cells and the mesh {len(drawing.kind)}; "
-            "wanted lists of the same mesh"
-        )
     end = halo.owned_indptr + halo.halo_indptr
     first = 0
     while first < halo.n_parts:

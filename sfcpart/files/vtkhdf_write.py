@@ -18,7 +18,7 @@ from sfcpart.dtypes import COORDINATE, GID, KIND, OFFSET, PART, Array, Int64Arra
 from sfcpart.files.fields import file_dtype, gathered, writable_fields
 from sfcpart.files.hdf5 import create_hdf5
 from sfcpart.files.lists import write_lists
-from sfcpart.files.pieces import Block, Drawing, Renumbered, blocks, drawing_of
+from sfcpart.files.pieces import Block, Drawing, Renumbered, blocks, check_same_cells, drawing_of
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -112,6 +112,7 @@ def write_vtkhdf(
     Version 2.6 is declared because global ids carry the string attribute `Attribute`.
     """
     drawing = drawing_of(mesh)
+    check_same_cells(drawing, partition, halo)
     with create_hdf5(path) as file:
         root = _Columns(file.create_group("VTKHDF"), compress=compress)
         root.group.attrs["Version"] = np.array(_VERSION, np.int64)

@@ -20,7 +20,15 @@ from sfcpart.dtypes import GID, OFFSET, Array, Int64Array
 from sfcpart.errors import FileError
 from sfcpart.files.fields import gathered, writable_fields
 from sfcpart.files.lists import write_list_file
-from sfcpart.files.pieces import POLYHEDRON, Block, Drawing, Renumbered, blocks, drawing_of
+from sfcpart.files.pieces import (
+    POLYHEDRON,
+    Block,
+    Drawing,
+    Renumbered,
+    blocks,
+    check_same_cells,
+    drawing_of,
+)
 from sfcpart.files.vtkhdf_write import CELL_NAMES, POINT_NAMES
 
 if TYPE_CHECKING:
@@ -79,6 +87,7 @@ def write_vtu_pieces(
     """
     place = Path(folder)
     drawing = drawing_of(mesh)
+    check_same_cells(drawing, partition, halo)
     cell_fields = writable_fields(mesh.cell_fields, CELL_NAMES)
     given = mesh.point_fields if drawing.points is mesh.points else {}
     point_fields = writable_fields(given, POINT_NAMES)
@@ -216,8 +225,5 @@ def _active(section: str) -> str:
 def _array_tag(tag: str, name: str, array: Array) -> str:
     """Return the beginning of the element that describes an array."""
     kind = {"i": "Int", "u": "UInt", "f": "Float"}[array.dtype.kind]
-    width = 1 if array.ndim == 1 else array.shape[1]
-    return (
-        f'<{tag} type="{kind}{8 * array.dtype.itemsize}" Name={quoteattr(name)} '
-        f'NumberOfComponents="{width}"'
-    )
+    width = "" if array.ndim == 1 else f' NumberOfComponents="{array.shape[1]}"'
+    return f'<{tag} type="{kind}{8 * array.dtype.itemsize}" Name={quoteattr(name)}{width}'

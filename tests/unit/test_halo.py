@@ -102,6 +102,13 @@ def test_a_row_of_cells_by_hand():
     assert halo.neighbours(0).tolist() == [1]
 
 
+def test_no_layers_no_halo():
+    halo = build_halo(None, None, Partition.from_array([1, 0, 1]), order=[2, 1, 0], layers=0)
+    assert halo.owned_cells(1).tolist() == [2, 0]
+    assert len(halo.halo) == len(halo.send) == len(halo.neighbour) == 0
+    assert halo.neighbours(0).tolist() == []
+
+
 def test_a_cell_near_very_many_parts():
     n = 700
     graph = graph_of([(0, leaf) for leaf in range(1, n)], n)
@@ -155,7 +162,7 @@ def test_default_order_is_the_curve_order():
 @pytest.mark.parametrize(
     ("options", "message"),
     [
-        ({"layers": 0}, "layers is 0"),
+        ({"layers": -1}, "layers is -1"),
         ({"layers": 1.5}, "layers is 1.5"),
         ({"layers": True}, "layers is True"),
         ({"across": "edges"}, "across is 'edges'"),
