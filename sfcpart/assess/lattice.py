@@ -11,7 +11,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from sfcpart.dtypes import FloatArray, Int32Array
+from sfcpart.assess.gate import frozen
+from sfcpart.dtypes import FloatArray, Int64Array
 from sfcpart.graph import CellGraph
 from sfcpart.kernels.measure import count_off_lattice
 from sfcpart.kernels.threads import run_ranges
@@ -21,7 +22,7 @@ __all__ = ["Lattice", "find_lattice"]
 _TOLERANCE = 1e-6
 """Allowed distance from a site, in cell sides, and relative difference of measures."""
 _SAMPLE = 1024
-_MOST_EMPTY_SITES = 64
+_MOST_SITES = 64
 """A box with more sites a cell is not searched for shared sites, and not taken for a lattice."""
 
 
@@ -61,20 +62,18 @@ def find_lattice(centers: FloatArray, measures: FloatArray, graph: CellGraph) ->
     spacing = float(measures[0]) ** (1 / dim)
     if not spacing > 0 or not _is_regular(measures, graph, dim):
         return None
-    origin = centers.min(axis=0)
-    if not _lies_on_sites(centers[:_SAMPLE], origin, spacing):
+    low = np.array([column.min() for column in centers.T])
+    high = np.array([column.max() for column in centers.T])
+    n_sites = np.rint((high - low) / spacing) + 1
+    if n_sites.prod() > _MOST_SITES * max(len(centers), _SAMPLE):
         return None
-    site = _sites(centers, origin, spacing)
-    if site is None or not _has_own_sites(site):
+    sides = n_sites.astype(np.int64)
+    if not _fits(centers, graph, low, spacing=spacing, sides=sides):
         return None
-    off = run_ranges(count_off_lattice, len(site), graph.indptr, graph.indices, site)
-    if sum(off):
-        return None
-    sides = tuple(int(n) for n in site.max(axis=0) + 1)
-    long_sides = tuple(side for side in sides if side > 1) or (1,)
-    is_full = _fills_box(sides, graph)
+    long_sides = tuple(int(side) for side in sides if side > 1) or (1,)
     # Both faces of a cell across an axis of one cell are on the boundary.
-    boundary = int(graph.boundary_count.sum()) - 2 * len(site) * (dim - len(long_sides))
+    boundary = int(graph.boundary_count.sum()) - 2 * len(centers) * (dim - len(long_sides))
+    is_full = _fills_box(sides, graph)
     face_measure = spacing ** (dim - 1)
     return Lattice(len(long_sides), face_measure, boundary, long_sides if is_full else None)
 
@@ -82,49 +81,38 @@ def find_lattice(centers: FloatArray, measures: FloatArray, graph: CellGraph) ->
 def _is_regular(measures: FloatArray, graph: CellGraph, dim: int) -> bool:
     """Tell whether all cells have one measure and the 2 dim faces of a square or cube."""
     first = float(measures[0])
-    sample = measures[:_SAMPLE]
-    if np.abs(sample - first).max() > _TOLERANCE * first:
+    allowed = _TOLERANCE * first
+    if np.abs(measures[:_SAMPLE] - first).max() > allowed:
+        return False
+    if measures.max() - first > allowed or first - measures.min() > allowed:
         return False
     n_faces = np.diff(graph.indptr) + graph.boundary_count
-    return bool(
-        (n_faces == 2 * dim).all()
-        and measures.max() - first <= _TOLERANCE * first
-        and first - measures.min() <= _TOLERANCE * first
+    return bool((n_faces == 2 * dim).all())
+
+
+def _fits(
+    centers: FloatArray, graph: CellGraph, origin: FloatArray, *, spacing: float, sides: Int64Array
+) -> bool:
+    """Tell whether cells lie on sites of their own, joined only one step apart."""
+    is_taken = np.zeros(int(sides.prod()), np.bool_)
+    n_bad = run_ranges(
+        count_off_lattice,
+        len(centers),
+        frozen(graph.indptr),
+        frozen(graph.indices),
+        frozen(centers),
+        origin,
+        spacing,
+        _TOLERANCE,
+        sides,
+        is_taken,
     )
+    return sum(n_bad) == 0 and int(np.count_nonzero(is_taken)) == len(centers)
 
 
-def _lies_on_sites(centers: FloatArray, origin: FloatArray, spacing: float) -> bool:
-    """Tell whether centres are whole multiples of the spacing away from the origin."""
-    steps = (centers - origin) / spacing
-    return bool((np.abs(steps - np.rint(steps)) <= _TOLERANCE * np.maximum(1.0, steps)).all())
-
-
-def _sites(centers: FloatArray, origin: FloatArray, spacing: float) -> Int32Array | None:
-    """Return the whole-number site of each cell, block by block, or None if one is off."""
-    site = np.empty(centers.shape, np.int32)
-    if (centers.max(axis=0) - origin).max() / spacing > np.iinfo(np.int32).max / 2:
-        return None
-    for start in range(0, len(centers), 1 << 18):
-        block = centers[start : start + (1 << 18)]
-        if not _lies_on_sites(block, origin, spacing):
-            return None
-        site[start : start + len(block)] = np.rint((block - origin) / spacing)
-    return site
-
-
-def _has_own_sites(site: Int32Array) -> bool:
-    """Tell whether no two cells share a site."""
-    shape = tuple(int(n) for n in site.max(axis=0) + 1)
-    if float(np.prod(np.array(shape, float))) > _MOST_EMPTY_SITES * max(len(site), 1024):
-        return False
-    taken = np.zeros(shape, np.bool_)
-    taken[tuple(site.T)] = True
-    return int(np.count_nonzero(taken)) == len(site)
-
-
-def _fills_box(sides: tuple[int, ...], graph: CellGraph) -> bool:
+def _fills_box(sides: Int64Array, graph: CellGraph) -> bool:
     """Tell whether every site of the box is taken and every inner face joined."""
     n = graph.n_cells
-    if int(np.prod(np.array(sides, np.int64))) != n:
+    if int(sides.prod()) != n:
         return False
-    return len(graph.indices) == 2 * sum(n - n // side for side in sides)
+    return len(graph.indices) == 2 * sum(n - n // int(side) for side in sides)

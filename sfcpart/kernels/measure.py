@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from sfcpart.dtypes import FloatArray, Int32Array, Int64Array, IntArray
+from sfcpart.dtypes import BoolArray, FloatArray, Int32Array, Int64Array, IntArray
 from sfcpart.kernels._jit import jit
 
 __all__ = [
@@ -222,19 +222,37 @@ def count_off_lattice(
     stop: int,
     indptr: Int64Array,
     indices: IntArray,
-    site: Int32Array,
+    centers: FloatArray,
+    origin: FloatArray,
+    spacing: float,
+    tolerance: float,
+    sides: Int64Array,
+    is_taken: BoolArray,
 ) -> int:
-    """Count entries of a range that do not join two sites one step apart, or join them again."""
+    """Mark the sites of a range of cells; count what does not fit a lattice.
+
+    Counted are cells off the sites, and entries that do not join two sites one step apart along
+    one axis, or join them again. Ranges may mark the same site: they write the same byte.
+    """
     n_bad = 0
+    scale = 1.0 / spacing  # 18 divisions a cube would take as long as the rest
     for i in range(start, stop):
+        site = 0
+        for k in range(len(sides)):
+            steps = (centers[i, k] - origin[k]) * scale
+            nearest = np.rint(steps)
+            if abs(steps - nearest) > tolerance * max(1.0, steps):
+                n_bad += 1
+            site = site * sides[k] + min(max(int(nearest), 0), sides[k] - 1)
+        is_taken[site] = True
         for entry in range(indptr[i], indptr[i + 1]):
             j = indices[entry]
-            steps = 0
-            for k in range(site.shape[1]):
-                steps += abs(site[i, k] - site[j, k])
+            apart = 0.0
+            for k in range(len(sides)):
+                apart += abs(centers[i, k] - centers[j, k])
             is_repeated = False
             for earlier in range(indptr[i], entry):
                 is_repeated |= indices[earlier] == j
-            if steps != 1 or is_repeated:
+            if np.rint(apart * scale) != 1.0 or is_repeated:
                 n_bad += 1
     return n_bad

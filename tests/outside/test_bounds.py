@@ -84,7 +84,7 @@ def test_inner_surface_is_never_above_the_least_over_down_sets(side):
 
 
 @pytest.mark.parametrize(
-    ("side", "dim"), [(s, 2) for s in range(2, 60)] + [(s, 3) for s in range(2, 12)]
+    ("side", "dim"), [(2, 2), (3, 2), (8, 2), (31, 2), (2, 3), (3, 3), (8, 3), (11, 3)]
 )
 def test_quarter_to_three_quarters_cuts_a_layer(side, dim):
     # Bollobas and Leader 1991: both parts between 1/4 and 3/4 of a k^n grid cut k^(n-1) or more.
@@ -228,8 +228,5 @@ def test_least_imbalance_is_the_best_of_all_counts(n, speeds):
 
 def test_a_heavy_cell_bounds_the_imbalance():
     # max(W/P, w_max) <= bottleneck (from memory, elementary)
-    weights = np.array([1, 1, 1, 1, 1, 1, 1, 10.0])
-    assert least_imbalance(17, np.ones(4), heaviest=10, is_equal=False) == pytest.approx(
-        40 / 17 - 1
-    )
-    assert weights.sum() == 17
+    found = least_imbalance(17, np.ones(4), heaviest=10, is_equal=False)
+    assert found == pytest.approx(10 / (17 / 4) - 1)
