@@ -13,6 +13,10 @@ Datasets (P parts, K pairs of a part and a neighbour):
   counted over all parts; subtract `halo_indptr[p]` and add the owned cells of p for local numbers;
 - `send_indptr` (K+1), `send`: pair k sends the local cells
   `send[send_indptr[k]:send_indptr[k+1]]`, in the order in which the other side receives them;
+- `boundary/0`, `boundary/1`, ...: one for each boundary group of the mesh, with the attributes
+  `name` and `tag`. Rows `part_indptr[p]:part_indptr[p+1]` are the elements that bound cells which p
+  owns: `kind` (VTK type code), `cell` (local number of the owned cell), `element` (number in the
+  unsplit group) and local points `points[indptr[row]:indptr[row+1]]`;
 - `cell_gid` (only in a file of its own): cell numbers of the unsplit mesh, for each part the owned
   cells and then the halo cells.
 """
@@ -24,16 +28,27 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from sfcpart.dtypes import Int32Array, Int64Array, IntArray
+from sfcpart.dtypes import Array, Int32Array, Int64Array, IntArray
 from sfcpart.errors import FileError
 from sfcpart.files.hdf5 import create_hdf5
 
 if TYPE_CHECKING:
+    from collections.abc import Iterable, Iterator
     from os import PathLike
 
+    from sfcpart.files.boundary import GroupByPart
     from sfcpart.halo import Halo
 
-__all__ = ["FORMAT_VERSION", "GROUP", "PartLists", "read_lists", "write_list_file", "write_lists"]
+__all__ = [
+    "FORMAT_VERSION",
+    "GROUP",
+    "PartBoundary",
+    "PartLists",
+    "read_lists",
+    "write_groups",
+    "write_list_file",
+    "write_lists",
+]
 
 GROUP = "sfcpart"
 FORMAT_VERSION = 1
@@ -46,6 +61,34 @@ _ARRAYS = (
     "send_indptr",
     "send",
 )
+
+
+@dataclass(frozen=True, eq=False)
+class PartBoundary:
+    """The elements of one boundary group that bound cells owned by one part.
+
+    Attributes
+    ----------
+    name : str
+    tag : int
+        Number in the unsplit mesh, -1 if it had none.
+    kind : (n,) uint8
+        VTK type codes.
+    indptr, indices : CSR
+        Local points of each element.
+    cell : (n,) int32 or int64
+        Local number of the owned cell that each element bounds.
+    element : (n,) int64
+        Number of each element in the unsplit group.
+    """
+
+    name: str
+    tag: int
+    kind: Array
+    indptr: Int64Array
+    indices: IntArray
+    cell: IntArray
+    element: Int64Array
 
 
 @dataclass(frozen=True, eq=False)
@@ -63,6 +106,7 @@ class PartLists:
     receive: IntArray
     send_indptr: Int64Array
     send: IntArray
+    boundary: tuple[PartBoundary, ...]
 
 
 def write_lists(file: Any, halo: Halo, *, input_digest: str = "") -> None:
@@ -86,7 +130,13 @@ def write_lists(file: Any, halo: Halo, *, input_digest: str = "") -> None:
         group.create_dataset(name, data=getattr(halo, name))
 
 
-def write_list_file(path: str | PathLike[str], halo: Halo, *, input_digest: str = "") -> None:
+def write_list_file(
+    path: str | PathLike[str],
+    halo: Halo,
+    *,
+    groups: Iterable[GroupByPart] = (),
+    input_digest: str = "",
+) -> None:
     """Write the exchange lists, with the cells they speak of, into a file of their own.
 
     Raises
@@ -96,6 +146,7 @@ def write_list_file(path: str | PathLike[str], halo: Halo, *, input_digest: str 
     """
     with create_hdf5(path) as file:
         write_lists(file, halo, input_digest=input_digest)
+        write_groups(file, groups)
         cells = [
             rows
             for part in range(halo.n_parts)
@@ -144,4 +195,32 @@ def read_lists(file: Any, part: int) -> PartLists:
         receive=np.arange(n_owned, n_owned + n_halo),
         send_indptr=send_indptr - send_indptr[0],
         send=group["send"][send_indptr[0] : send_indptr[-1]],
+        boundary=tuple(_read_groups(group, part)),
     )
+
+
+def write_groups(file: Any, groups: Iterable[GroupByPart]) -> None:
+    """Write boundary groups into the group `/sfcpart` of an open HDF5 file."""
+    for number, rows in enumerate(groups):
+        group = file[GROUP].create_group(f"boundary/{number}")
+        group.attrs["name"] = rows.name
+        group.attrs["tag"] = rows.tag
+        for name in ("part_indptr", "element", "cell", "kind", "indptr", "points"):
+            group.create_dataset(name, data=getattr(rows, name))
+
+
+def _read_groups(group: Any, part: int) -> Iterator[PartBoundary]:
+    """Read one part's elements of each boundary group."""
+    for number in range(len(group.get("boundary", ()))):
+        stored = group[f"boundary/{number}"]
+        first, last = (int(row) for row in stored["part_indptr"][part : part + 2])
+        indptr = stored["indptr"][first : last + 1]
+        yield PartBoundary(
+            name=str(stored.attrs["name"]),
+            tag=int(stored.attrs["tag"]),
+            kind=stored["kind"][first:last],
+            indptr=indptr - indptr[0],
+            indices=stored["points"][indptr[0] : indptr[-1]],
+            cell=stored["cell"][first:last],
+            element=stored["element"][first:last],
+        )

@@ -16,13 +16,13 @@ import numpy as np
 from sfcpart.dtypes import OFFSET, Array, FloatArray, Int32Array, Int64Array, IntArray, KindArray
 from sfcpart.errors import FileError, InputError
 from sfcpart.files.hdf5 import read_hdf5
-from sfcpart.files.lists import PartLists, read_lists
+from sfcpart.files.lists import PartBoundary, PartLists, read_lists
 from sfcpart.mesh.mesh import Polyhedra
 
 if TYPE_CHECKING:
     from os import PathLike
 
-__all__ = ["Part", "read_part"]
+__all__ = ["Part", "PartBoundary", "read_part"]
 
 FILE_NAME = "parts.vtkhdf"
 _OWN_CELL_NAMES = frozenset({"vtkGhostType", "GlobalCellIds"})
@@ -60,6 +60,8 @@ class Part:
     layers : int
     across : "faces" or "points"
     input_digest : str
+    boundary : tuple of PartBoundary
+        The elements of each boundary group that bound owned cells.
     cell_fields, point_fields : mapping of str to array
     """
 
@@ -81,6 +83,7 @@ class Part:
     layers: int
     across: str
     input_digest: str
+    boundary: tuple[PartBoundary, ...]
     cell_fields: Mapping[str, Array]
     point_fields: Mapping[str, Array]
 
@@ -225,12 +228,16 @@ def _checked(place: Path, part: int, lists: PartLists, arrays: dict[str, Any]) -
         and len(arrays["point_gid"]) == n_points
         and _within(lists.send, lists.n_owned)
         and lists.receive_indptr[-1] == lists.n_halo
+        and all(_within(group.indices, n_points) for group in lists.boundary)
+        and all(_within(group.cell, lists.n_owned) for group in lists.boundary)
     )
     if not fits:
         raise FileError(f"{place}: mesh and exchange lists of part {part} do not fit; split again")
-    about = ("n_parts", "n_owned", "layers", "across", "input_digest")
+    about = ("n_parts", "n_owned", "layers", "across", "input_digest", "boundary")
     sides = ("neighbour", "send_indptr", "send", "receive_indptr", "receive")
     values = {name: getattr(lists, name) for name in (*about, *sides)}
+    for group in lists.boundary:
+        _freeze(group.kind, group.indptr, group.indices, group.cell, group.element)
     _freeze(*(values[name] for name in sides))
     _freeze(*(array for array in arrays.values() if isinstance(array, np.ndarray)))
     return Part(part=part, **values, **arrays)

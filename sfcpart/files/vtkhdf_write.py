@@ -15,9 +15,10 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from sfcpart.dtypes import COORDINATE, GID, KIND, OFFSET, PART, Array, Int64Array, index_dtype
+from sfcpart.files.boundary import groups_by_part
 from sfcpart.files.fields import file_dtype, gathered, writable_fields
 from sfcpart.files.hdf5 import create_hdf5
-from sfcpart.files.lists import write_lists
+from sfcpart.files.lists import write_groups, write_lists
 from sfcpart.files.pieces import Block, Drawing, Renumbered, blocks, check_same_cells, drawing_of
 
 if TYPE_CHECKING:
@@ -124,6 +125,7 @@ def write_vtkhdf(
         point_fields = mesh.point_fields if drawing.points is mesh.points else {}
         _write_points(root, drawing, point_fields, writer.point_gid)
         write_lists(file, halo, input_digest=input_digest)
+        write_groups(file, groups_by_part(mesh, halo, writer.points_of_parts()))
 
 
 class _CellWriter:
@@ -163,6 +165,11 @@ class _CellWriter:
         self._count("NumberOfConnectivityIds", np.diff(block.points.entry_indptr))
         if self.faces is not None and block.faces is not None and block.face_points is not None:
             self.faces.append(block.faces, block.face_points)
+
+    def points_of_parts(self) -> list[Array]:
+        """Return the global numbers of the points of each part."""
+        ends = np.cumsum(np.concatenate(self.count["NumberOfPoints"]))[:-1]
+        return np.split(np.concatenate(self.point_gid), ends)
 
     def _count(self, name: str, rows: Int64Array) -> None:
         self.count.setdefault(name, []).append(rows)

@@ -16,8 +16,9 @@ from xml.sax.saxutils import quoteattr
 
 import numpy as np
 
-from sfcpart.dtypes import GID, OFFSET, Array, Int64Array
+from sfcpart.dtypes import GID, OFFSET, Array, Int64Array, IntArray
 from sfcpart.errors import FileError
+from sfcpart.files.boundary import groups_by_part
 from sfcpart.files.fields import gathered, writable_fields
 from sfcpart.files.lists import write_list_file
 from sfcpart.files.pieces import (
@@ -92,18 +93,21 @@ def write_vtu_pieces(
     given = mesh.point_fields if drawing.points is mesh.points else {}
     point_fields = writable_fields(given, POINT_NAMES)
     names = [f"pieces/part_{part:04d}.vtu" for part in range(halo.n_parts)]
+    points_of_parts: list[IntArray] = []
     try:
         (place / "pieces").mkdir(exist_ok=True)
         for block in blocks(drawing, halo):
             for k in range(block.n_parts):
                 piece = _piece(block, k, drawing, partition, cell_fields, point_fields)
                 _write_piece(place / names[block.first + k], piece)
+            points_of_parts.extend(np.split(block.points.used, block.points.used_indptr[1:-1]))
         _write_joint(place / "parts.pvtu", piece, names)
     except OSError as error:
         if isinstance(error, FileError):
             raise
         raise FileError(f"{place}: cannot be written: {error.strerror or error}") from error
-    write_list_file(place / "lists.h5", halo, input_digest=input_digest)
+    groups = groups_by_part(mesh, halo, points_of_parts)
+    write_list_file(place / "lists.h5", halo, groups=groups, input_digest=input_digest)
 
 
 def _piece(

@@ -12,7 +12,8 @@ from sfcpart.errors import FileError, InputError
 from sfcpart.files.lists import write_list_file
 from sfcpart.files.part import read_part
 from sfcpart.files.vtkhdf_write import write_vtkhdf
-from tests.parted import SAMPLES, parted
+from sfcpart.mesh.mesh import Mesh
+from tests.parted import SAMPLES, parted, sliced
 
 
 @pytest.fixture
@@ -68,6 +69,46 @@ def _faces(solid, cell, named):
         named(solid.face_indices[solid.face_indptr[f] : solid.face_indptr[f + 1]]).tolist()
         for f in faces
     ]
+
+
+@pytest.mark.parametrize("name", ["mixed", "section"])
+def test_boundary_elements_go_to_the_owners_of_their_cells(tmp_path, name):
+    case = parted(name, n_parts=3)
+    assert case.mesh.boundary
+    path = tmp_path / "parts.vtkhdf"
+    write_vtkhdf(path, case.mesh, partition=case.partition, halo=case.halo)
+    parts = [read_part(path, number) for number in range(3)]
+    cells = [
+        set(case.mesh.indices[first:last].tolist())
+        for first, last in zip(case.mesh.indptr[:-1], case.mesh.indptr[1:], strict=True)
+    ]
+    for number, group in enumerate(case.mesh.boundary):
+        wanted, found = set(), set()
+        for element in range(len(group.kind)):
+            points = group.indices[group.indptr[element] : group.indptr[element + 1]].tolist()
+            for cell in [c for c, held in enumerate(cells) if held.issuperset(points)][:2]:
+                wanted.add((element, int(case.partition.cell_part[cell]), tuple(points)))
+        for part in parts:
+            mine = part.boundary[number]
+            assert (mine.name, mine.tag) == (group.name, group.tag)
+            assert np.array_equal(mine.kind, group.kind[mine.element])
+            for row, element in enumerate(mine.element):
+                local = mine.indices[mine.indptr[row] : mine.indptr[row + 1]]
+                cell = mine.cell[row]
+                assert cell < part.n_owned
+                assert set(local) <= set(part.indices[part.indptr[cell] : part.indptr[cell + 1]])
+                found.add((int(element), part.part, tuple(part.point_gid[local].tolist())))
+        assert found == wanted
+
+
+def test_an_inner_wall_goes_to_both_sides(tmp_path):
+    points = [[x, y] for y in (0.0, 1.0) for x in (0.0, 1.0, 2.0)]
+    cells = {"quad": [[0, 1, 4, 3], [1, 2, 5, 4]], "line": [[1, 4], [0, 3], [3, 5]]}
+    case = sliced(Mesh.from_arrays(points, cells), n_parts=2)
+    path = tmp_path / "parts.vtkhdf"
+    write_vtkhdf(path, case.mesh, partition=case.partition, halo=case.halo)
+    held = [read_part(path, number).boundary[0].element.tolist() for number in range(2)]
+    assert held == [[0, 1], [0]]  # line 3-5 is no side of any cell
 
 
 def test_a_field_travels_between_all_parts(folder):
