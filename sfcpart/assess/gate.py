@@ -14,7 +14,7 @@ from sfcpart.graph import CellGraph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
 
-__all__ = ["Given", "check_given", "frozen"]
+__all__ = ["Given", "cast_graph", "check_given", "frozen"]
 
 A = TypeVar("A", bound=Array)
 
@@ -43,6 +43,20 @@ def frozen(array: A) -> A:
     view = array.view()
     view.flags.writeable = False
     return view
+
+
+def cast_graph(graph: CellGraph) -> CellGraph:
+    """Return the graph as kernels take it: one dtype for each array, contiguous, read-only."""
+    indices = graph.indices
+    if indices.dtype not in (np.int32, np.int64):
+        indices = indices.astype(np.int64)
+    return CellGraph(
+        indptr=frozen(np.ascontiguousarray(graph.indptr, np.int64)),
+        indices=frozen(np.ascontiguousarray(indices)),
+        data=frozen(np.ascontiguousarray(graph.data, np.float64)),
+        boundary_count=frozen(np.ascontiguousarray(graph.boundary_count, np.int32)),
+        boundary_measure=frozen(np.ascontiguousarray(graph.boundary_measure, np.float64)),
+    )
 
 
 def check_given(

@@ -15,7 +15,7 @@ from sfcpart.assess.assessment import Assessment, Number
 from sfcpart.assess.columns import TOTAL_COLUMNS
 from sfcpart.assess.cut_figures import cut_figures
 from sfcpart.assess.figures import part_figures, total_figures
-from sfcpart.assess.gate import Given, check_given
+from sfcpart.assess.gate import Given, cast_graph, check_given
 from sfcpart.assess.shape import flat_axes, part_stretch
 from sfcpart.assess.step_model import StepModel, StepTime
 from sfcpart.assess.sums import CellSums, sum_cells
@@ -84,6 +84,7 @@ def assess_partition(
         limit_weights=limit_weights,
         limits=limits,
     )
+    graph = None if graph is None else cast_graph(graph)
     model = StepModel() if step_model is None else step_model
     sums = sum_cells(mesh, graph, partition, given)
     time = _step_time(sums, given, model)

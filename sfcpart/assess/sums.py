@@ -97,9 +97,9 @@ def _cuts(graph: CellGraph | None, cell_part: Int32Array) -> tuple[Int32Array, F
     run_ranges(
         count_cuts,
         graph.n_cells,
-        frozen(graph.indptr),
-        frozen(graph.indices),
-        frozen(graph.data),
+        graph.indptr,
+        graph.indices,
+        graph.data,
         cell_part,
         cut_count,
         cut_measure,
@@ -119,8 +119,8 @@ def _face_sums(
     pairs = PartPairs.from_cuts(
         cut_count,
         cut_faces,
-        indptr=frozen(graph.indptr),
-        indices=frozen(graph.indices),
+        indptr=graph.indptr,
+        indices=graph.indices,
         cell_part=cell_part,
     )
     pieces, largest = _pieces(graph, cell_part, len(cut_faces))
@@ -129,7 +129,7 @@ def _face_sums(
 
 def _pieces(graph: CellGraph, cell_part: Int32Array, n_parts: int) -> tuple[Int64Array, Int64Array]:
     """Count connected components inside each part, and the cells of the largest."""
-    indptr, indices = frozen(graph.indptr), frozen(graph.indices)
+    indptr, indices = graph.indptr, graph.indices
     parent = np.empty(graph.n_cells, np.int32)
     run_ranges(join_inside, graph.n_cells, indptr, indices, cell_part, parent)
     starts = [start for start, _ in ranges(graph.n_cells)]
