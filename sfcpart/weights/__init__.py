@@ -1,0 +1,31 @@
+"""What cells weigh and which must stay together: from fields, tables, faces; as exact integers.
+
+- `quantise`: floats to int64, once, with proved headroom, so that sums are exact;
+- `cell_weights`: weights of the cells of a mesh from a specification (`WeightSpec`);
+- `groups_from_field`, `groups_from_pairs`, `groups_from_boundaries`, `join_groups`: cells that
+  stay together.
+"""
+
+from __future__ import annotations
+
+from sfcpart.weights.groups import (
+    groups_from_boundaries,
+    groups_from_field,
+    groups_from_pairs,
+    join_groups,
+)
+from sfcpart.weights.quantise import Quantised, quantise, quantise_limits
+from sfcpart.weights.spec import WeightSpec, cell_weights, parse_weights
+
+__all__ = [
+    "Quantised",
+    "WeightSpec",
+    "cell_weights",
+    "groups_from_boundaries",
+    "groups_from_field",
+    "groups_from_pairs",
+    "join_groups",
+    "parse_weights",
+    "quantise",
+    "quantise_limits",
+]
