@@ -10,8 +10,9 @@ from sfcpart.curve import curve_order
 from sfcpart.methods.registry import METHODS
 from tests.laws import PROBLEMS, problem_of
 from tests.mpi.harness import run_job
+from tests.mpi.split_job import METHODS_OF
 
-ALONE = [name for name, method in METHODS.items() if not method.needs_graph]
+PAIRS = [(name, m) for name in PROBLEMS for m in METHODS_OF.get(name, ["hilbert"])]
 
 
 @pytest.fixture(scope="module", params=[1, 2, 3, 4])
@@ -29,8 +30,7 @@ def test_the_order_does_not_depend_on_the_ranks(seen, name):
     np.testing.assert_array_equal(seen[f"{name} order"], curve_order(centers))
 
 
-@pytest.mark.parametrize("method", ALONE)
-@pytest.mark.parametrize("name", PROBLEMS)
+@pytest.mark.parametrize(("name", "method"), PAIRS)
 def test_the_parts_do_not_depend_on_the_ranks(seen, name, method):
     wanted = METHODS[method].run(problem_of(name, SerialComm()))
     assert wanted.dtype == seen[f"{name} {method}"].dtype == np.int32
