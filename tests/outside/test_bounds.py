@@ -22,6 +22,7 @@ from sfcpart.assess.bounds import (
     least_surface,
     least_surface_measure,
 )
+from sfcpart.curve import curve_order
 from sfcpart.partition import Partition
 from tests.oracles.lattice_cuts import (
     least_cuts_of_all_splits,
@@ -230,3 +231,22 @@ def test_a_heavy_cell_bounds_the_imbalance():
     # max(W/P, w_max) <= bottleneck (from memory, elementary)
     found = least_imbalance(17, np.ones(4), heaviest=10, is_equal=False)
     assert found == pytest.approx(10 / (17 / 4) - 1)
+
+
+def test_hilbert_chunks_of_a_square_are_as_far_from_the_bound_as_computed_elsewhere():
+    # 128 x 128, p = 8 .. 128: the cut averages 1.38 of (sum of least perimeters - boundary) / 2.
+    # Computed independently of this project; the 2-D Hilbert curve has one form.
+    n = 128
+    x, y = np.meshgrid(np.arange(n), np.arange(n), indexing="ij")
+    order = curve_order(np.stack([x.ravel(), y.ravel()], axis=1).astype(float))
+    ratios = []
+    for n_parts in range(8, 129):
+        grid = np.empty(n * n, np.int32)
+        grid[order] = np.arange(n * n) * n_parts // (n * n)
+        grid = grid.reshape(n, n)
+        cut = sum(int(np.count_nonzero(np.diff(grid, axis=axis))) for axis in (0, 1))
+        size = np.bincount(grid.ravel())
+        bound = least_lattice_cut(size, dim=2, boundary_faces=4 * n, sides=(n, n))
+        assert bound <= cut
+        ratios.append(cut / bound)
+    assert round(float(np.mean(ratios)), 2) == 1.38

@@ -8,6 +8,7 @@ from hypothesis import strategies as st
 from hypothesis.extra import numpy as hnp
 
 from sfcpart.assess import PART_COLUMNS, assess_partition
+from sfcpart.halo import build_halo
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
 from tests.oracles.figures import figures_by_sets
@@ -118,3 +119,18 @@ def _assert_same(one, two, *, order):
         assert (value is None) == (other is None), name
         if value is not None:
             np.testing.assert_allclose(other, value, rtol=1e-12, err_msg=name)
+
+
+@given(split_graphs())
+def test_halo_counts_are_those_of_the_exchange_lists(drawn):
+    graph, found = assess_graph(*drawn)
+    cell_part, n_parts = drawn[4], drawn[5]
+    halo = build_halo(
+        None, graph, Partition.from_array(cell_part, n_parts), order=np.arange(graph.n_cells)
+    )
+    pairs = found.pairs
+    assert np.diff(halo.halo_indptr).tolist() == found.part["halo_cells"].tolist()
+    assert halo.neighbour.tolist() == pairs.neighbour.tolist()
+    assert np.diff(halo.neighbour_indptr).tolist() == found.part["neighbours"].tolist()
+    assert np.diff(halo.receive_indptr).tolist() == pairs.received_cells.tolist()
+    assert np.diff(halo.send_indptr).tolist() == pairs.sent_cells.tolist()
