@@ -17,7 +17,7 @@ def command(shell: str) -> None:
       sfcpart completion bash > ~/.local/share/bash-completion/completions/sfcpart
       eval "$(sfcpart completion zsh)"
       sfcpart completion fish > ~/.config/fish/completions/sfcpart.fish
-    """
+    """  # noqa: D301 - the mark is click's
     from click.shell_completion import get_completion_class
 
     from sfcpart.cli.verbs import PROGRAM, sfcpart

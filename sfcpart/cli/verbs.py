@@ -60,4 +60,4 @@ def sfcpart() -> None:
       sfcpart inspect MESH                           what is in it?
       sfcpart split MESH --parts 64 -o parts         the main job
       sfcpart split --help                           every option, with examples
-    """
+    """  # noqa: D301 - the mark is click's

@@ -1,0 +1,122 @@
+"""`sfcpart assess`: measure a partition that is there already, wherever it comes from."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import click
+
+from sfcpart.cli.options import (
+    SPEEDS,
+    mesh_argument,
+    network_options,
+    output_options,
+    set_threads,
+    step_model,
+    weight_option,
+)
+
+if TYPE_CHECKING:
+    from sfcpart.mesh.mesh import Mesh
+    from sfcpart.partition import Partition
+
+__all__ = ["command"]
+
+HELP = """Measure a partition of MESH, wherever it comes from.
+
+The part of each cell is taken from a cell field (--field) or from PARTS: a text or .npy file with
+one integer a cell in the order of MESH, or a folder that `sfcpart split` wrote.
+
+\b
+Examples:
+  sfcpart assess meshes/turbine.vtu --field body
+  sfcpart assess meshes/pier_shell.vtk --field sheet --json
+  sfcpart assess meshes/channel_mixed.vtu parts
+  sfcpart assess meshes/channel_mixed.vtu cell_part.npy --csv parts.csv --picture parts.png
+"""
+
+
+@click.command("assess", help=HELP)
+@mesh_argument
+@click.argument("parts", type=click.Path(), required=False)
+@click.option("--field", metavar="NAME", help="Cell field of MESH that holds the part.")
+@weight_option
+@click.option(
+    "--speeds", type=SPEEDS, metavar="LIST|FILE", help="Relative speed of each part, as in split."
+)
+@click.option("--csv", "csv_path", type=click.Path(), metavar="FILE", help="Write a row a part.")
+@click.option("--picture", type=click.Path(), metavar="FILE", help="Write a picture (PNG).")
+@click.option("--threads", type=int, metavar="T", help="Threads to use (default: all allowed).")
+@network_options
+@output_options
+def command(mesh: str, parts: str | None, **given: Any) -> None:
+    """Read mesh and parts, measure, print."""
+    if (parts is None) == (given["field"] is None):
+        raise click.UsageError("which parts? give either --field NAME or a file or folder of parts")
+    set_threads(given["threads"])
+    model = step_model(given)
+    from sfcpart import api
+    from sfcpart.cli.console import Stages
+    from sfcpart.cli.inputs import read_speeds
+
+    doing = Stages(quiet=given["quiet"] or given["as_json"])
+    with doing(f"reading {mesh}"):
+        loaded = api.read_mesh(mesh)
+        partition = _read_parts(loaded, parts, given["field"])
+    with doing("measuring"):
+        assessment = api.assess(
+            loaded,
+            partition,
+            weights=list(given["weights"]) or None,
+            speeds=read_speeds(given["speeds"], partition.n_parts),
+            step_model=model,
+        )
+    if given["csv_path"]:
+        _write_csv(given["csv_path"], assessment)
+    if given["picture"]:
+        with doing("drawing"):
+            _draw(given["picture"], mesh, loaded, partition, assessment)
+    _report(mesh, assessment, as_json=given["as_json"], quiet=given["quiet"])
+
+
+def _read_parts(mesh: Mesh, parts: str | None, field: str | None) -> Partition:
+    """Take the parts from a field, a file or a folder."""
+    from sfcpart.cli.inputs import partition_from_field, partition_from_path
+
+    if field is not None:
+        return partition_from_field(mesh, field)
+    assert parts is not None
+    return partition_from_path(parts, mesh.n_cells)
+
+
+def _write_csv(path: str, assessment: Any) -> None:
+    """Write one row a part; figures that are not known stay empty, so that columns are stable."""
+    from sfcpart.files.tables import write_part_table
+
+    unknown = [float("nan")] * assessment.n_parts
+    columns = {k: unknown if v is None else v for k, v in assessment.part.items()}
+    write_part_table(path, columns)
+
+
+def _draw(path: str, name: str, mesh: Mesh, partition: Partition, assessment: Any) -> None:
+    """Write the picture."""
+    from sfcpart.graph import cell_graph
+    from sfcpart.report.picture import draw_split
+
+    graph = None if mesh.points is None and mesh.faces is None else cell_graph(mesh)
+    figures = assessment.total
+    draw_split(path, mesh, partition=partition, graph=graph, title=name, figures=figures)
+
+
+def _report(mesh: str, assessment: Any, *, as_json: bool, quiet: bool) -> None:
+    """Print the figures."""
+    from sfcpart.cli.console import print_json
+    from sfcpart.cli.figures import headline, print_assessment
+
+    if as_json:
+        print_json({"mesh": mesh, **assessment.to_json_dict()})
+    elif not quiet:
+        total = assessment.total
+        print(f"{mesh}: {total['n_cells']:,} cells in {total['n_parts']:,} parts: ", end="")
+        print(f"{headline(assessment)}\n")
+        print_assessment(assessment)

@@ -1,0 +1,126 @@
+"""What the verbs print with: tables on the output, progress on a terminal's error stream.
+
+The output is plain in pipes (no colour, 80 columns), the error stream silent there except for
+notes and errors. `NO_COLOR` in the environment is respected everywhere.
+"""
+
+from __future__ import annotations
+
+import os
+import sys
+from collections.abc import Iterator
+from contextlib import contextmanager
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from rich.console import Console
+
+__all__ = ["Stages", "console", "note", "print_json", "print_pairs", "print_table"]
+
+PIPE_WIDTH = 80
+
+
+def console(*, stderr: bool = False) -> Console:
+    """Return a console: as wide as the terminal, 80 columns in a pipe, no guesses of emphasis."""
+    from rich.console import Console
+
+    stream = sys.stderr if stderr else sys.stdout
+    width = None if stream.isatty() else PIPE_WIDTH
+    return Console(file=stream, width=width, highlight=False, soft_wrap=False, emoji=False)
+
+
+def note(text: str) -> None:
+    """Print one line on the error stream."""
+    print(f"sfcpart: {text}", file=sys.stderr, flush=True)
+
+
+def print_json(value: Any) -> None:
+    """Print strict JSON and nothing else."""
+    from sfcpart.files.tables import json_text
+
+    sys.stdout.write(json_text(value))
+
+
+def print_pairs(rows: list[tuple[str, str]], *, title: str = "") -> None:
+    """Print names and texts in two columns, long texts wrapped under themselves."""
+    from rich.table import Table
+
+    table = Table(box=None, show_header=False, pad_edge=False, padding=(0, 2, 0, 0))
+    table.add_column(style="bold", no_wrap=True)
+    table.add_column(overflow="fold")
+    for name, text in rows:
+        table.add_row(name, _plain(text))
+    _print(title, table)
+
+
+def print_table(heads: list[str], rows: list[list[str]], *, title: str = "") -> None:
+    """Print a table of numbers, aligned to the right but for its first column."""
+    from rich.table import Table
+
+    table = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0), header_style="bold")
+    for k, head in enumerate(heads):
+        table.add_column(head, justify="right" if k else "left", overflow="fold")
+    for row in rows:
+        table.add_row(*map(_plain, row))
+    _print(title, table)
+
+
+def _plain(text: str) -> Any:
+    """Keep square brackets and the like as they are."""
+    from rich.text import Text
+
+    return Text(text)
+
+
+def _print(title: str, table: Any) -> None:
+    """Print a table under its title, without blanks at line ends."""
+    from rich.text import Text
+
+    out = console()
+    if title:
+        out.print(Text(title, style="bold"))
+    if sys.stdout.isatty():
+        out.print(table)
+        return
+    with out.capture() as captured:
+        out.print(table)
+    sys.stdout.write("".join(f"{line.rstrip()}\n" for line in captured.get().splitlines()))
+
+
+class Stages:
+    """Tells a person at a terminal what is being done and for how long; silent elsewhere."""
+
+    def __init__(self, *, quiet: bool) -> None:
+        self.quiet = quiet
+        self.live = not quiet and sys.stderr.isatty()
+        if not quiet and not _is_compiled():
+            note("first run: compiling (up to 20 s, once)")
+
+    @contextmanager
+    def __call__(self, text: str) -> Iterator[None]:
+        """Show a spinner while the block runs."""
+        if not self.live:
+            yield
+            return
+        from rich.progress import Progress, SpinnerColumn, TextColumn, TimeElapsedColumn
+
+        columns = (SpinnerColumn(), TextColumn("{task.description}"), TimeElapsedColumn())
+        with Progress(*columns, console=console(stderr=True), transient=True) as progress:
+            progress.add_task(text, total=None)
+            yield
+
+
+def _is_compiled() -> bool:
+    """Tell whether compiled kernels of this installation are on disk, or none will be needed."""
+    if os.environ.get("SFCPART_COMPILE") == "0":
+        return True
+    import sfcpart
+
+    kernels = Path(sfcpart.__file__).parent / "kernels"
+    places = [kernels / "__pycache__"]
+    if os.environ.get("NUMBA_CACHE_DIR"):
+        places = [Path(os.environ["NUMBA_CACHE_DIR"])]
+    elif not os.access(kernels, os.W_OK):
+        places.append(Path.home() / ".cache" / "numba")
+    return any(next(place.rglob("*.nbi"), None) is not None for place in places if place.is_dir())

@@ -1,0 +1,159 @@
+"""Put an assessment on the screen: one line, a table of totals, a table of parts."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+from sfcpart.cli.console import print_pairs, print_table
+
+if TYPE_CHECKING:
+    from sfcpart.assess.assessment import Assessment
+
+__all__ = ["headline", "number", "percent", "print_assessment"]
+
+MOST_PARTS = 12
+_PART_HEADS = {
+    "part": "part",
+    "cells": "cells",
+    "load": "load",
+    "load_unweighted": "(cells)",
+    "cut_faces": "cut",
+    "halo_cells": "halo",
+    "neighbours": "neighb.",
+    "smallest_interface": "least",
+    "pieces": "pieces",
+    "surface_ratio": "surf.",
+    "stretch": "stretch",
+    "step_seconds": "step",
+}
+
+
+def number(value: float | None) -> str:
+    """Write a number for people: whole ones in full, others to three digits, none as a dash."""
+    if value is None:
+        return "-"
+    if isinstance(value, int):
+        return f"{value:,}"
+    if value and not 1e-3 <= abs(value) < 1e6:
+        return f"{value:.2e}"
+    return f"{value:,.0f}" if abs(value) >= 1000 else f"{value:.3g}"
+
+
+def percent(share: float | None) -> str:
+    """Write a share in per cent."""
+    return "-" if share is None else f"{100 * share:.3g} %"
+
+
+def seconds(value: float | None) -> str:
+    """Write a time with the unit that suits it."""
+    if value is None:
+        return "-"
+    for unit, size in (("s", 1.0), ("ms", 1e-3), ("us", 1e-6)):
+        if value >= size:
+            return f"{value / size:.3g} {unit}"
+    return f"{value:.3g} s"
+
+
+def headline(assessment: Assessment) -> str:
+    """Say in half a line how good a partition is."""
+    total = assessment.total
+    words = [f"imbalance {percent(total['imbalance'])}"]
+    if total["cut_faces"] is not None:
+        words.append(f"{number(total['cut_faces'])} faces cut ({percent(total['cut_share'])})")
+    if total["efficiency"] is not None:
+        words.append(f"efficiency {percent(total['efficiency'])}")
+    return ", ".join(words)
+
+
+def print_assessment(assessment: Assessment) -> None:
+    """Print the totals and the parts (the slowest ones, if there are many)."""
+    print_pairs(_totals(assessment))
+    print()
+    rows = list(assessment.rows())
+    shown = rows if len(rows) <= MOST_PARTS else _slowest(rows)
+    heads = {k: head for k, head in _PART_HEADS.items() if any(r[k] is not None for r in rows)}
+    title = "" if shown is rows else f"the {len(shown)} slowest of {len(rows):,} parts"
+    print_table(
+        list(heads.values()), [[_cell(row, k) for k in heads] for row in shown], title=title
+    )
+
+
+def _cell(row: dict[str, Any], name: str) -> str:
+    """Write one figure of one part."""
+    if name in ("load", "load_unweighted"):
+        return "-" if row[name] is None else f"{row[name]:.3f}"
+    return seconds(row[name]) if name == "step_seconds" else number(row[name])
+
+
+def _slowest(rows: list[dict[str, Any]]) -> list[dict[str, Any]]:
+    """Pick the parts that hold the others up."""
+
+    def slowness(row: dict[str, Any]) -> tuple[float, float]:
+        return -(row["step_seconds"] or 0.0), -(row["load"] or 0.0)
+
+    return sorted(rows, key=slowness)[:MOST_PARTS]
+
+
+def _totals(assessment: Assessment) -> list[tuple[str, str]]:
+    """Return names and texts of the totals, what is unknown left out."""
+    total = assessment.total
+    rows = [
+        ("parts", f"{number(total['n_parts'])} of {number(total['n_cells'])} cells"),
+        (
+            "imbalance",
+            f"{percent(total['imbalance'])} (least possible "
+            f"{percent(total['least_imbalance'])}); cells alone "
+            f"{percent(total['imbalance_unweighted'])}",
+        ),
+    ]
+    if total["limit_share"] is not None:
+        rows.append(("limit", f"the fullest part holds {percent(total['limit_share'])} of it"))
+    if total["n_empty_parts"]:
+        rows.append(("empty parts", _listed(assessment.empty_parts.tolist())))
+    if total["cut_faces"] is not None:
+        rows += _face_totals(assessment)
+    return rows
+
+
+def _face_totals(assessment: Assessment) -> list[tuple[str, str]]:
+    """Return the totals that need faces."""
+    total = assessment.total
+    cut = f"{number(total['cut_faces'])} of {number(total['n_faces'])} faces"
+    cut += f" ({percent(total['cut_share'])}), measure {number(total['cut_measure'])}"
+    for name in ("cut_faces_ratio", "cut_measure_ratio"):
+        if total[name] is not None:
+            cut += f"; {number(total[name])} times the least possible"
+            break
+    mean = number(total["neighbours_mean"])
+    pieces = "every part in one piece"
+    if total["n_split_parts"]:
+        pieces = f"in several pieces: part {_listed(assessment.split_parts.tolist())}"
+    model = assessment.step_model
+    step = f"{seconds(total['step_seconds'])}, of which {percent(total['exchange_share'])}"
+    return [
+        ("cut", cut),
+        (
+            "halo",
+            f"{number(total['halo_cells'])} cells, at most {number(total['halo_cells_max'])} a "
+            f"part; neighbours {mean} on average, {number(total['neighbours_max'])} at most; "
+            f"smallest interface {number(total['smallest_interface'])} faces",
+        ),
+        (
+            "shape",
+            f"surface {number(total['surface_ratio_mean'])} times the least on average, "
+            f"{number(total['surface_ratio_max'])} at worst; stretch at most "
+            f"{number(total['stretch_max'])}",
+        ),
+        ("pieces", pieces),
+        (
+            "step",
+            f"{step} messages; speed-up {number(total['speed_up'])}, efficiency "
+            f"{percent(total['efficiency'])} (model, network {model.network.name})",
+        ),
+    ]
+
+
+def _listed(parts: list[int]) -> str:
+    """List parts, the first few if there are many."""
+    text = ", ".join(map(str, parts[:10]))
+    return text if len(parts) <= 10 else f"{text} and {len(parts) - 10} more"

@@ -1,0 +1,97 @@
+"""Read what options name besides the mesh: parts, speeds, pairs of cells."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from sfcpart.errors import FileError, InputError, PartitionError
+
+if TYPE_CHECKING:
+    from sfcpart.dtypes import Array, IntArray
+    from sfcpart.mesh.mesh import Mesh
+    from sfcpart.partition import Partition
+
+__all__ = ["partition_from_field", "partition_from_path", "read_pairs", "read_speeds"]
+
+
+def partition_from_field(mesh: Mesh, name: str) -> Partition:
+    """Return the partition that a cell field holds."""
+    from sfcpart.partition import Partition
+
+    if name not in mesh.cell_fields:
+        there = ", ".join(mesh.cell_fields) or "none"
+        raise InputError(f"the mesh has no cell field {name!r}; it has: {there}")
+    return Partition.from_array(mesh.cell_fields[name])
+
+
+def partition_from_path(path: str, n_cells: int) -> Partition:
+    """Return the partition in a file of integers, or in a folder that split wrote."""
+    from sfcpart.partition import Partition
+
+    place = Path(path)
+    if not place.is_dir():
+        from sfcpart.files.read import read_cell_values
+
+        return Partition.from_array(read_cell_values(place, n_cells))
+    cell_part, n_parts = _owners(place, n_cells)
+    return Partition.from_array(cell_part, n_parts)
+
+
+def _owners(folder: Path, n_cells: int) -> tuple[Array, int]:
+    """Collect the owned cells of all parts of a folder."""
+    from sfcpart.files.part import read_part
+
+    first = read_part(folder, 0)
+    cell_part = np.full(n_cells, -1, np.int64)
+    for part in range(first.n_parts):
+        piece = first if part == 0 else read_part(folder, part)
+        owned = piece.cell_gid[: piece.n_owned]
+        if len(owned) and owned.max() >= n_cells:
+            raise PartitionError(
+                f"{folder}: part {part} holds cell {owned.max()}; the mesh has {n_cells} cells"
+            )
+        cell_part[owned] = part
+    if n_cells and cell_part.min() < 0:
+        missing = int(np.argmin(cell_part))
+        raise PartitionError(f"{folder}: no part holds cell {missing} of this mesh")
+    return cell_part, first.n_parts
+
+
+def read_speeds(speeds: Any, n_parts: int) -> Array | None:
+    """Return the speed of each part, from a list or a file of numbers."""
+    if speeds is None:
+        return None
+    if isinstance(speeds, list):
+        return np.array(speeds)
+    from sfcpart.files.read import read_cell_values
+
+    return read_cell_values(speeds, n_parts).astype(float)
+
+
+def read_pairs(path: str | None) -> IntArray | None:
+    """Return the pairs of cells in a text or .npy file, (n, 2)."""
+    if path is None:
+        return None
+    try:
+        if path.endswith(".npy"):
+            pairs = np.load(path, allow_pickle=False)
+        else:
+            pairs = np.loadtxt(path, dtype=np.int64, ndmin=2, delimiter=_delimiter(path))
+    except OSError as error:
+        raise FileError(f"{path}: cannot be read: {error.strerror or error}") from error
+    except ValueError as error:
+        raise FileError(f"{path}: wanted two cell numbers a line: {error}") from error
+    if pairs.ndim != 2 or pairs.shape[1] != 2 or pairs.dtype.kind not in "iu":
+        raise FileError(
+            f"{path}: holds {pairs.dtype} of shape {pairs.shape}; wanted pairs of cells"
+        )
+    return pairs
+
+
+def _delimiter(path: str) -> str | None:
+    """Return the comma if the first line has one, else blanks."""
+    with Path(path).open(encoding="utf-8", errors="replace") as file:
+        return "," if "," in file.readline() else None

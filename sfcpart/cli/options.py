@@ -1,0 +1,196 @@
+"""Options that several verbs share, and how their values are spelled."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Callable
+from typing import TYPE_CHECKING, Any, TypeVar
+
+import click
+
+if TYPE_CHECKING:
+    from sfcpart.assess.step_model import StepModel
+
+__all__ = [
+    "LEVELS",
+    "PAIR",
+    "SPEEDS",
+    "Names",
+    "mesh_argument",
+    "network_options",
+    "output_options",
+    "set_threads",
+    "step_model",
+    "weight_option",
+]
+
+Function = TypeVar("Function", bound=Callable[..., Any])
+
+
+class Levels(click.ParamType):
+    """Numbers joined by x, such as 4x16."""
+
+    name = "levels"
+
+    def convert(self, value: Any, param: Any, ctx: Any) -> tuple[int, ...]:
+        """Split at the x."""
+        if isinstance(value, tuple):
+            return value
+        pieces = str(value).lower().split("x")
+        if not all(piece.isdigit() and int(piece) > 0 for piece in pieces):
+            self.fail(f"{value!r} is no list of counts; wanted such as 4x16", param, ctx)
+        return tuple(int(piece) for piece in pieces)
+
+
+class Speeds(click.ParamType):
+    """Speeds in turn with how many parts have each: 48*1.0,16*0.5; or a file of numbers."""
+
+    name = "speeds"
+
+    def convert(self, value: Any, param: Any, ctx: Any) -> Any:
+        """Return a list of speeds, or the path of a file."""
+        if isinstance(value, list) or os.path.exists(value):  # noqa: PTH110 - no Path at start
+            return value
+        speeds: list[float] = []
+        for piece in str(value).split(","):
+            count, star, speed = piece.rpartition("*")
+            try:
+                speeds += [float(speed)] * (int(count) if star else 1)
+            except ValueError:
+                self.fail(
+                    f"{value!r} is no file and no list of speeds; wanted such as 48*1,16*0.5",
+                    param,
+                    ctx,
+                )
+        return speeds
+
+
+class Pair(click.ParamType):
+    """Two names or a name and a number, joined by a colon."""
+
+    name = "pair"
+
+    def convert(self, value: Any, param: Any, ctx: Any) -> tuple[str, str]:
+        """Split at the last colon."""
+        if isinstance(value, tuple):
+            return value
+        first, _, second = str(value).rpartition(":")
+        if not first or not second:
+            self.fail(f"{value!r} is not two things joined by a colon", param, ctx)
+        return first, second
+
+
+class Names(click.ParamType):
+    """One of a table that is loaded only when a value is checked or completed."""
+
+    def __init__(self, name: str, load: Callable[[], list[str]]) -> None:
+        self.name = name
+        self.load = load
+
+    def convert(self, value: Any, param: Any, ctx: Any) -> str:
+        """Check against the table."""
+        names = self.load()
+        if value not in names:
+            self.fail(f"unknown {self.name} {value!r}; known: {', '.join(names)}", param, ctx)
+        return str(value)
+
+    def shell_complete(self, ctx: Any, param: Any, incomplete: str) -> list[Any]:
+        """Offer the names that begin alike."""
+        from click.shell_completion import CompletionItem
+
+        return [CompletionItem(name) for name in self.load() if name.startswith(incomplete)]
+
+
+LEVELS, SPEEDS, PAIR = Levels(), Speeds(), Pair()
+
+
+def _networks() -> list[str]:
+    """Load the names of the networks."""
+    from sfcpart.assess.step_model import NETWORKS
+
+    return list(NETWORKS)
+
+
+def mesh_argument(function: Function) -> Function:
+    """Add the argument MESH."""
+    return click.argument("mesh", type=click.Path())(function)
+
+
+def output_options(function: Function) -> Function:
+    """Add --json and --quiet."""
+    function = click.option(
+        "-q", "--quiet", is_flag=True, help="Print no figures and no progress; errors still are."
+    )(function)
+    return click.option("--json", "as_json", is_flag=True, help="Print JSON and nothing else.")(
+        function
+    )
+
+
+def weight_option(function: Function) -> Function:
+    """Add --weight."""
+    return click.option(
+        "-w",
+        "--weight",
+        "weights",
+        multiple=True,
+        metavar="SPEC",
+        help="Work of each cell: a cell field, or one of the forms below. Several multiply.",
+    )(function)
+
+
+def network_options(function: Function) -> Function:
+    """Add the numbers of the step model."""
+    options = (
+        click.option(
+            "--network",
+            type=Names("network", _networks),
+            metavar="NAME",
+            default="infiniband-edr",
+            show_default=True,
+            help="Network of the predicted step time: gigabit-ethernet, infiniband-fdr, "
+            "infiniband-edr, infiniband-hdr, infiniband-ndr, shared-memory.",
+        ),
+        click.option("--latency", type=float, metavar="S", help="Own seconds a message."),
+        click.option("--bandwidth", type=float, metavar="B/S", help="Own bytes a second."),
+        click.option(
+            "--cell-seconds",
+            type=float,
+            metavar="S",
+            default=1e-6,
+            show_default=True,
+            help="Work of a mean cell in one step.",
+        ),
+        click.option(
+            "--bytes-per-halo-cell",
+            type=float,
+            metavar="B",
+            default=40.0,
+            show_default=True,
+            help="Bytes sent for a halo cell in one exchange.",
+        ),
+        click.option(
+            "--exchanges",
+            type=float,
+            metavar="N",
+            default=5.0,
+            show_default=True,
+            help="Halo exchanges in one step.",
+        ),
+    )
+    for option in reversed(options):
+        function = option(function)
+    return function
+
+
+def step_model(given: dict[str, Any]) -> StepModel:
+    """Take the network options out of the given ones and make a model of them."""
+    from sfcpart.assess.step_model import StepModel
+
+    names = ("latency", "bandwidth", "cell_seconds", "bytes_per_halo_cell", "exchanges")
+    return StepModel.from_preset(given.pop("network"), **{name: given.pop(name) for name in names})
+
+
+def set_threads(count: int | None) -> None:
+    """Fix the number of threads of this process."""
+    if count is not None:
+        os.environ["SFCPART_THREADS"] = str(count)
