@@ -88,7 +88,7 @@ def row_form(array: Array) -> str:
     return f"{dtype.descr if dtype.names else dtype.str} rows of shape {array.shape[1:]}"
 
 
-def rooted(array: Array | None, root: int, rank: int) -> Array | None:
+def rooted(array: Array | None, *, root: int, rank: int) -> Array | None:
     """Return the root's array, movable, and None on the other ranks."""
     if rank != root:
         return None

@@ -111,7 +111,7 @@ class MpiComm:
     def bcast(self, array: Array | None, root: int = 0) -> Array:
         """Return the root's array on every rank."""
         check_root(root, self.size)
-        sent = rooted(array, root, self.rank)
+        sent = rooted(array, root=root, rank=self.rank)
         form = self._comm.bcast(None if sent is None else (sent.shape, sent.dtype), root)
         result = np.empty(*form) if sent is None else sent
         with _row_type(result) as row:

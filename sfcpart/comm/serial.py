@@ -62,7 +62,7 @@ class SerialComm:
     def bcast(self, array: Array | None, root: int = 0) -> Array:
         """Return the array itself."""
         check_root(root, 1)
-        sent = rooted(array, root, 0)
+        sent = rooted(array, root=root, rank=0)
         assert sent is not None
         return sent
 

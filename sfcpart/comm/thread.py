@@ -190,7 +190,7 @@ class ThreadComm:
     def bcast(self, array: Array | None, root: int = 0) -> Array:
         """Return the root's array on every rank."""
         check_root(root, self.size)
-        sent = rooted(array, root, self._rank)
+        sent = rooted(array, root=root, rank=self._rank)
         return self._meet("bcast", (root,), sent, lambda values: values[root].copy())
 
     def alltoall(self, arrays: Sequence[Array]) -> list[Array]:
