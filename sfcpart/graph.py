@@ -13,26 +13,13 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from sfcpart.dtypes import (
-    COORDINATE,
-    OFFSET,
-    Array,
-    FloatArray,
-    Int32Array,
-    Int64Array,
-    IntArray,
-    index_dtype,
-)
+from sfcpart.dtypes import OFFSET, Array, FloatArray, Int32Array, Int64Array, IntArray
 from sfcpart.errors import MeshError
-from sfcpart.kernels.threads import n_threads, run_ranges
 
 if TYPE_CHECKING:
     from sfcpart.mesh.mesh import Mesh
 
 __all__ = ["CellGraph", "cell_graph", "components"]
-
-_MOST_BLOCKS = 8
-_BUCKET_CHUNKS = 64
 
 
 @dataclass(frozen=True, eq=False)
@@ -171,151 +158,16 @@ def components(graph: CellGraph) -> tuple[int, Int32Array]:
 
 def _build(mesh: Mesh) -> CellGraph:
     """Choose by what the mesh is made of."""
+    from sfcpart.mesh.adjacency import join_cells, sort_faces
+
     if mesh.faces is not None:
-        return _from_faces(mesh)
+        return _graph(*sort_faces(mesh))
     if mesh.points is None:
         raise MeshError(
             "the mesh is known by its cell centres only, which tell no faces; "
             "wanted cells with points, or faces (Mesh.from_faces)"
         )
-    return _from_cells(mesh)
-
-
-@dataclass(frozen=True, eq=False)
-class _Slots:
-    """How the faces of cells are numbered: `stride` a cell if that is one number, else `start`."""
-
-    count: int
-    stride: int
-    start: Int64Array
-    cell: Int32Array
-    longest: int
-
-
-def _number_slots(mesh: Mesh) -> _Slots:
-    """Give the faces of all cells their numbers, cell by cell."""
-    from sfcpart.mesh.build import most_corners
-    from sfcpart.mesh.kinds import MAX_CORNERS, POLYHEDRON, kind_tables
-
-    longest = max(most_corners(mesh), MAX_CORNERS)
-    count = kind_tables().face_count[mesh.kind[0]]
-    if count > 0 and (mesh.kind == mesh.kind[0]).all():
-        none = np.zeros(1, np.int32)
-        stride = int(count)
-        return _checked(_Slots(stride * mesh.n_cells, stride, none.astype(OFFSET), none, longest))
-    each = kind_tables().face_count[mesh.kind].astype(np.int32)
-    free = each == 0
-    if mesh.polyhedra is not None:
-        longest = max(longest, int(np.diff(mesh.polyhedra.face_indptr).max()))
-        each[free] = np.diff(mesh.polyhedra.cell_indptr)[free]
-        free = free & (mesh.kind != POLYHEDRON)
-    each[free] = np.diff(mesh.indptr)[free]
-    start = np.zeros(mesh.n_cells + 1, OFFSET)
-    np.cumsum(each, out=start[1:])
-    cell = np.repeat(np.arange(mesh.n_cells, dtype=np.int32), each)
-    return _checked(_Slots(len(cell), 0, start, cell, longest))
-
-
-def _checked(slots: _Slots) -> _Slots:
-    """Refuse what 30 bits cannot number."""
-    from sfcpart.kernels.faces import SLOT_LIMIT
-
-    if slots.count >= SLOT_LIMIT:
-        raise MeshError(
-            f"the cells have {slots.count} faces; the cell graph holds fewer than {SLOT_LIMIT}: "
-            "split without measuring, or by a curve alone"
-        )
-    return slots
-
-
-def _from_cells(mesh: Mesh) -> CellGraph:
-    """Match the faces of cells."""
-    from sfcpart.kernels import faces
-
-    slots, cells = _number_slots(mesh), mesh.cell_arrays()
-    entry, mate = _match(mesh, slots)
-    n = mesh.n_cells
-    indptr = np.zeros(n + 1, OFFSET)
-    boundary_count = np.empty(n, np.int32)
-    boundary_measure = np.empty(n, COORDINATE)
-    run_ranges(faces.count_rows, n, slots.stride, slots.start, entry, mate, indptr, boundary_count)
-    np.cumsum(indptr, out=indptr)
-    indices = np.empty(indptr[-1], index_dtype(n))
-    data = np.empty(indptr[-1], COORDINATE)
-    run_ranges(
-        faces.fill_rows,
-        n,
-        mesh.points,
-        cells,
-        slots.stride,
-        slots.start,
-        slots.cell,
-        slots.longest,
-        entry,
-        mate,
-        indptr,
-        indices,
-        data,
-        boundary_measure,
-    )
-    return _graph(indptr, indices, data, boundary_count, boundary_measure)
-
-
-def _match(mesh: Mesh, slots: _Slots) -> tuple[Int64Array, Int32Array]:
-    """Return the sorted entries (one row if no groups need them) and the mate of each slot."""
-    from sfcpart.kernels import faces
-
-    cells, least = mesh.cell_arrays(), mesh.dim
-    n_blocks = max(1, min(n_threads(), _MOST_BLOCKS, mesh.n_cells // 16_384))
-    bounds = np.linspace(0, mesh.n_cells, n_blocks + 1).astype(OFFSET)
-    count = np.zeros((n_blocks, mesh.n_points), np.int32)
-    shape = (bounds, cells, least, slots.stride, slots.start, slots.longest)
-    run_ranges(faces.count_faces, n_blocks, *shape, count, smallest=1)
-    bucket = np.empty(mesh.n_points + 1, np.int32)
-    faces.place_buckets(count, bucket)
-    entry = np.empty((int(bucket[-1]), 2), np.int64)
-    mate = np.empty(slots.count, np.int32)
-    run_ranges(faces.fill_entries, n_blocks, *shape, count, entry, mate, smallest=1)
-    del count
-    marks = np.linspace(0, len(entry), _BUCKET_CHUNKS + 1)
-    chunks = np.searchsorted(bucket, marks).astype(OFFSET)
-    chunks[0], chunks[-1] = 0, mesh.n_points
-    groups = run_ranges(
-        faces.match_faces,
-        _BUCKET_CHUNKS,
-        chunks,
-        bucket,
-        cells,
-        slots.stride,
-        slots.start,
-        slots.cell,
-        slots.longest,
-        entry,
-        mate,
-        smallest=1,
-    )
-    return (entry if sum(groups) else np.zeros((1, 2), np.int64)), mate
-
-
-def _from_faces(mesh: Mesh) -> CellGraph:
-    """Sort given faces into rows."""
-    assert mesh.faces is not None
-    pair, size, n = mesh.faces.cell, mesh.faces.measure, mesh.n_cells
-    inner = pair[:, 1] >= 0
-    a, b, w = pair[inner, 0], pair[inner, 1], size[inner]
-    row, column = np.concatenate([a, b]), np.concatenate([b, a])
-    both = np.concatenate([w, w])
-    order = np.lexsort((both, column, row))
-    indptr = np.zeros(n + 1, OFFSET)
-    np.cumsum(np.bincount(row, minlength=n), out=indptr[1:])
-    bare = pair[~inner, 0]
-    return _graph(
-        indptr,
-        column[order],
-        both[order],
-        np.bincount(bare, minlength=n).astype(np.int32),
-        np.bincount(bare, weights=size[~inner], minlength=n),
-    )
+    return _graph(*join_cells(mesh))
 
 
 def _graph(*arrays: Array) -> CellGraph:

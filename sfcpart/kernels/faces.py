@@ -1,23 +1,28 @@
 """Match the faces of cells and write the cell graph.
 
-A *slot* is one face of one cell; slots are numbered cell by cell. A face is the set of its
-distinct corners. Every slot makes an entry of two int64: (second smallest corner, third) and
-(fourth, slot, twist), in the bucket of its smallest corner (a counting sort). Each bucket is
-sorted, equal neighbours are mates. Nothing is hashed, so nothing is left to chance.
+A *slot* is one face of one cell; slots are numbered cell by cell. Faces are equal if they have the
+same distinct corners. `list_faces` writes every face as two words: its four smallest corners and
+how it turns through them. A counting sort (`place_buckets`, `fill_buckets`) gathers the slots with
+the same smallest corner, `match_faces` sorts each bucket and joins equal neighbours, `count_rows`
+and `fill_rows` write the graph. Nothing is hashed, so nothing is left to chance. Memory: 20 bytes
+a slot and 12 an entry of the graph.
 
-Steps: `count_faces` -> `place_buckets` -> `fill_entries` -> `match_faces` -> `count_rows` ->
-`fill_rows`. Memory: 20 bytes a slot (16 of them until the mates are known), then 12 an entry of
-the graph. The mate of a slot is another slot, or one of
+The words of slot s, corners a < b < c < d (0 where there is none, ids below 2**30):
 
-    -1  boundary: no other cell has this face;
-    -2  no face: fewer distinct corners than a face needs, or both sides are the same cell;
-    -3 - i  the face belongs to the group that begins at entry i: more than two cells, or cells
-        that run around the same corners in different turn.
+    before matching   face[s] = (a << 32 | b,  c << 32 | d << 2 | turn)
+    after matching    face[s] = (mate, bits of the measure as float64)
+
+`turn` is the rank among b, c, d of the corner opposite a in a ring of four. Faces with more than
+four corners have turn 3, bit 30 set in c, and instead of d their row in the table of large faces.
+The mate is the slot of the same face in the other cell, or
+
+    -1      boundary: no other slot has this face;
+    -2      no face: fewer distinct corners than a face needs, or all its sides in one cell;
+    -3 - i  more than two cells meet here: their slots stand in `order` from i on, the last one
+            as its complement ~slot.
 """
 
 from __future__ import annotations
-
-from typing import Any
 
 import numpy as np
 
@@ -26,46 +31,107 @@ from sfcpart.kernels._jit import jit
 from sfcpart.kernels.cells import CellArrays
 
 __all__ = [
-    "BOUNDARY",
-    "NO_FACE",
-    "SLOT_LIMIT",
-    "count_faces",
+    "ID_LIMIT",
     "count_rows",
-    "fill_entries",
+    "fill_buckets",
     "fill_rows",
+    "list_faces",
+    "list_tetra_faces",
     "match_faces",
     "place_buckets",
 ]
 
-BOUNDARY, NO_FACE, GROUP = -1, -2, -3
-SLOT_LIMIT = 1 << 30
-_LARGE = 3
-_SMALL_BUCKET = 48
+ID_LIMIT = 1 << 30
+_LOW = 0xFFFFFFFF
+_FEW = 48
 
 
 @jit
-def _load_face(c: int, f: int, cells: CellArrays, ring: Int64Array) -> int:
-    """Write the distinct corners of face f of cell c to `ring`, in turn; return their number."""
-    k = cells.kind[c]
-    row = cells.indptr[c]
-    n = 0
-    if k == 42:
-        face = cells.poly_cell_indices[cells.poly_cell_indptr[c] + f]
-        for i in range(cells.poly_face_indptr[face], cells.poly_face_indptr[face + 1]):
-            n = _add(ring, n, cells.poly_face_indices[i])
-    elif cells.face_count[k] == 0:
-        n = _add(ring, n, cells.indices[row + f])
-        last = row + f + 1 == cells.indptr[c + 1]
-        n = _add(ring, n, cells.indices[row if last else row + f + 1])
-    else:
-        for i in range(cells.face_size[k, f]):
-            n = _add(ring, n, cells.indices[row + cells.face_corner[k, f, i]])
-    return n
+def list_tetra_faces(
+    start: int,
+    stop: int,
+    bounds: Int64Array,
+    tetra: Array,
+    face: Int64Array,
+    count: Int32Array,
+) -> None:
+    """List the faces of tetrahedra bounds[r]..bounds[r+1]; count smallest corners in row r."""
+    for r in range(start, stop):
+        for t in range(bounds[r], bounds[r + 1]):
+            a, b = np.int64(tetra[t, 0]), np.int64(tetra[t, 1])
+            c, d = np.int64(tetra[t, 2]), np.int64(tetra[t, 3])
+            if a > b:
+                a, b = b, a
+            if c > d:
+                c, d = d, c
+            if a > c:
+                a, c = c, a
+            if b > d:
+                b, d = d, b
+            if b > c:
+                b, c = c, b
+            s = 4 * t
+            face[s, 0] = a << 32 | b if a < b < c else -2
+            face[s, 1] = c << 32
+            face[s + 1, 0] = a << 32 | b if a < b < d else -2
+            face[s + 1, 1] = d << 32
+            face[s + 2, 0] = a << 32 | c if a < c < d else -2
+            face[s + 2, 1] = d << 32
+            face[s + 3, 0] = b << 32 | c if b < c < d else -2
+            face[s + 3, 1] = d << 32
+            count[r, a] += int(a < b < c) + int(a < b < d) + int(a < c < d)
+            count[r, b] += int(b < c < d)
+
+
+@jit
+def list_faces(
+    start: int,
+    stop: int,
+    bounds: Int64Array,
+    cells: CellArrays,
+    least: int,
+    longest: int,
+    slot_start: Int64Array,
+    stride: int,
+    face: Int64Array,
+    count: Int32Array,
+) -> None:
+    """List the faces of cells bounds[r]..bounds[r+1] of any kinds; count smallest corners.
+
+    A face has at least `least` distinct corners; none is longer than `longest`.
+    """
+    ring = np.empty(longest, np.int64)
+    for r in range(start, stop):
+        for cell in range(bounds[r], bounds[r + 1]):
+            k = cells.kind[cell]
+            row = cells.indptr[cell]
+            n_faces = np.int64(cells.face_count[k])
+            s = cell * stride if stride > 0 else slot_start[cell]
+            if n_faces == 0:
+                n_faces = slot_start[cell + 1] - s
+            for f in range(n_faces):
+                n = 0
+                row_of_large = np.int64(0)
+                if k == 42:
+                    row_of_large = cells.poly_cell_indices[cells.poly_cell_indptr[cell] + f]
+                    lo = cells.poly_face_indptr[row_of_large]
+                    for i in range(lo, cells.poly_face_indptr[row_of_large + 1]):
+                        n = _add(ring, n, cells.poly_face_indices[i])
+                elif cells.face_count[k] == 0:
+                    n = _add(ring, n, cells.indices[row + f])
+                    n = _add(ring, n, cells.indices[row + f + 1 if f + 1 < n_faces else row])
+                else:
+                    for i in range(cells.face_size[k, f]):
+                        n = _add(ring, n, cells.indices[row + cells.face_corner[k, f, i]])
+                if n < least:
+                    face[s + f, 0] = -2
+                else:
+                    count[r, _write_face(ring, n, row_of_large, s + f, face)] += 1
 
 
 @jit
 def _add(ring: Int64Array, n: int, point: int) -> int:
-    """Append a point that is not there yet; return the new length."""
+    """Append a corner that is not there yet; return the new length."""
     for i in range(n):
         if ring[i] == point:
             return n
@@ -74,107 +140,68 @@ def _add(ring: Int64Array, n: int, point: int) -> int:
 
 
 @jit
-def _rank_face(ring: Int64Array, n: int) -> tuple[Any, Any, Any, Any, int]:
-    """Return the four smallest corners in order (0 for none) and the twist of a face.
-
-    The twist of four corners is the rank of the one opposite the smallest. More than four corners
-    have twist 3, and bit 31 set in the third, so that they never equal a smaller face.
-    """
-    a = b = c = d = np.int64(1 << 40)
+def _write_face(ring: Int64Array, n: int, row_of_large: int, s: int, face: Int64Array) -> int:
+    """Write the words of slot s; return the smallest corner."""
+    none = np.int64(1 << 40)
+    a, b, c, d = none, none, none, none
     at = 0
     for i in range(n):
         p = ring[i]
         if p < a:
-            a, b, c, d = p, a, b, c
-            at = i
+            a, b, c, d, at = p, a, b, c, i
         elif p < b:
             b, c, d = p, b, c
         elif p < c:
             c, d = p, c
         elif p < d:
             d = p
-    if n == 4:
-        across = ring[(at + 2) % 4]
-        return a, b, c, d, (0 if across == b else 1 if across == c else 2)
-    if n > 4:
-        return a, b, c | 1 << 31, d, 3
-    return a, b, (c if n > 2 else np.int64(0)), np.int64(0), 0
+    face[s, 0] = a << 32 | b
+    if n == 2:
+        face[s, 1] = 0
+    elif n == 3:
+        face[s, 1] = c << 32
+    elif n == 4:
+        across = ring[(at + 2) & 3]
+        face[s, 1] = c << 32 | d << 2 | (0 if across == b else 1 if across == c else 2)
+    else:
+        face[s, 1] = (c | 1 << 30) << 32 | row_of_large << 2 | 3
+    return a
 
 
 @jit
-def _slot_start(c: int, stride: int, slot_start: Array) -> int:
-    """First slot of cell c: a product where all cells have `stride` faces, else looked up."""
-    return c * stride if stride > 0 else slot_start[c]
+def place_buckets(count: Int32Array, bucket: Int32Array) -> int:
+    """Turn counts into places: `bucket` begins each point's slots, `count` each row's share.
 
-
-@jit
-def count_faces(
-    start: int,
-    stop: int,
-    bounds: Int64Array,
-    cells: CellArrays,
-    least: int,
-    stride: int,
-    slot_start: Array,
-    longest: int,
-    count: Int32Array,
-) -> None:
-    """Count the faces of cells bounds[r]..bounds[r+1] by smallest corner into row r of `count`."""
-    ring = np.empty(longest, np.int64)
-    for r in range(start, stop):
-        for c in range(bounds[r], bounds[r + 1]):
-            n_faces = _slot_start(c + 1, stride, slot_start) - _slot_start(c, stride, slot_start)
-            for f in range(n_faces):
-                n = _load_face(c, f, cells, ring)
-                if n >= least:
-                    a = ring[0]
-                    for i in range(1, n):
-                        a = min(a, ring[i])
-                    count[r, a] += 1
-
-
-@jit
-def place_buckets(count: Int32Array, bucket: Int32Array) -> None:
-    """Turn counts into places: `bucket` gets the first entry of each point, `count` each row's."""
-    total = 0
+    Returns the size of the largest bucket.
+    """
+    total = largest = 0
     for p in range(count.shape[1]):
         bucket[p] = total
         for r in range(count.shape[0]):
             here = count[r, p]
             count[r, p] = total
             total += here
+        largest = max(largest, total - bucket[p])
     bucket[count.shape[1]] = total
+    return largest
 
 
 @jit
-def fill_entries(
+def fill_buckets(
     start: int,
     stop: int,
     bounds: Int64Array,
-    cells: CellArrays,
-    least: int,
-    stride: int,
-    slot_start: Array,
-    longest: int,
+    face: Int64Array,
     place: Int32Array,
-    entry: Int64Array,
-    mate: Int32Array,
+    order: Int32Array,
 ) -> None:
-    """Put the entry of each face into its bucket; mark slots that are no faces."""
-    ring = np.empty(longest, np.int64)
+    """Put slots bounds[r]..bounds[r+1] into their buckets."""
     for r in range(start, stop):
-        for cell in range(bounds[r], bounds[r + 1]):
-            slot = _slot_start(cell, stride, slot_start)
-            for f in range(_slot_start(cell + 1, stride, slot_start) - slot):
-                n = _load_face(cell, f, cells, ring)
-                if n < least:
-                    mate[slot + f] = -2
-                    continue
-                a, b, c, d, twist = _rank_face(ring, n)
-                at = place[r, a]
-                place[r, a] = at + 1
-                entry[at, 0] = b << 32 | c
-                entry[at, 1] = d << 32 | (slot + f) << 2 | twist
+        for s in range(bounds[r], bounds[r + 1]):
+            if face[s, 0] >= 0:
+                a = face[s, 0] >> 32
+                order[place[r, a]] = s
+                place[r, a] += 1
 
 
 @jit
@@ -183,283 +210,282 @@ def match_faces(
     stop: int,
     bounds: Int64Array,
     bucket: Int32Array,
-    cells: CellArrays,
+    largest: int,
+    points: FloatArray,
+    large_indptr: Int64Array,
+    large_indices: Array,
+    slot_cell: Int32Array,
     stride: int,
-    slot_start: Array,
-    slot_cell: Array,
-    longest: int,
-    entry: Int64Array,
-    mate: Int32Array,
-) -> int:
-    """Sort the buckets of points bounds[r]..bounds[r+1] and write mates; return groups found."""
-    ring, other = np.empty(longest, np.int64), np.empty(longest, np.int64)
-    groups = 0
+    face: Int64Array,
+    measure: FloatArray,
+    order: Int32Array,
+) -> None:
+    """Find the mates and measures of slots in the buckets of points bounds[r]..bounds[r+1].
+
+    `measure` is `face` seen as float64.
+    """
+    key = np.empty(largest, np.int64)
+    tail = np.empty(largest, np.int64)
     for r in range(start, stop):
         for p in range(bounds[r], bounds[r + 1]):
-            lo, hi = bucket[p], bucket[p + 1]
-            if hi - lo <= 48:
-                _insertion_sort(entry, lo, hi)
+            lo = bucket[p]
+            n = bucket[p + 1] - lo
+            for i in range(n):
+                s = np.int64(order[lo + i])
+                key[i] = face[s, 0] << 32 | face[s, 1] >> 32
+                d = (face[s, 1] & _LOW) >> 2
+                tail[i] = s if face[s, 1] & 3 == 3 else d << 32 | s
+            if n <= _FEW:
+                _insertion_sort(key, tail, n)
             else:
-                _heap_sort(entry, lo, hi)
-            i = lo
-            while i < hi:
+                _heap_sort(key, tail, n)
+            i = 0
+            while i < n:
+                s = tail[i] & _LOW
+                size = _face_size(points, large_indptr, large_indices, face[s, 0], face[s, 1])
                 j = i + 1
-                while (
-                    j < hi and entry[j, 0] == entry[i, 0] and entry[j, 1] >> 32 == entry[i, 1] >> 32
-                ):
+                while j < n and key[j] == key[i] and tail[j] >> 32 == tail[i] >> 32:
                     j += 1
-                groups += _match_run(
-                    i, j, cells, stride, slot_start, slot_cell, ring, other, entry, mate
-                )
+                if j > i + 1 and face[s, 1] & 3 == 3:
+                    j = _gather_equal(i, j, large_indptr, large_indices, face, tail)
+                _join(i, j, lo, size, slot_cell, stride, tail, face, measure, order)
                 i = j
-    return groups
 
 
 @jit
-def _insertion_sort(entry: Int64Array, lo: int, hi: int) -> None:
-    """Sort entries lo..hi (few of them)."""
-    for i in range(lo + 1, hi):
-        x, y = entry[i, 0], entry[i, 1]
+def _insertion_sort(key: Int64Array, tail: Int64Array, n: int) -> None:
+    """Sort a few pairs."""
+    for i in range(1, n):
+        x, y = key[i], tail[i]
         j = i
-        while j > lo and (entry[j - 1, 0] > x or (entry[j - 1, 0] == x and entry[j - 1, 1] > y)):
-            entry[j, 0] = entry[j - 1, 0]
-            entry[j, 1] = entry[j - 1, 1]
+        while j > 0 and (key[j - 1] > x or (key[j - 1] == x and tail[j - 1] > y)):
+            key[j] = key[j - 1]
+            tail[j] = tail[j - 1]
             j -= 1
-        entry[j, 0] = x
-        entry[j, 1] = y
+        key[j] = x
+        tail[j] = y
 
 
 @jit
-def _heap_sort(entry: Int64Array, lo: int, hi: int) -> None:
-    """Sort entries lo..hi in O(n log n): a point may have very many faces."""
-    n = hi - lo
+def _heap_sort(key: Int64Array, tail: Int64Array, n: int) -> None:
+    """Sort pairs in O(n log n): a point may have very many faces."""
     begin, end = n // 2, n
     while end > 1:
         if begin > 0:
             begin -= 1
-            x, y = entry[lo + begin, 0], entry[lo + begin, 1]
+            x, y = key[begin], tail[begin]
         else:
             end -= 1
-            x, y = entry[lo + end, 0], entry[lo + end, 1]
-            entry[lo + end, 0] = entry[lo, 0]
-            entry[lo + end, 1] = entry[lo, 1]
+            x, y = key[end], tail[end]
+            key[end], tail[end] = key[0], tail[0]
         hole = begin
         child = 2 * hole + 1
         while child < end:
-            u = lo + child
             if child + 1 < end and (
-                entry[u + 1, 0] > entry[u, 0]
-                or (entry[u + 1, 0] == entry[u, 0] and entry[u + 1, 1] > entry[u, 1])
+                key[child + 1] > key[child]
+                or (key[child + 1] == key[child] and tail[child + 1] > tail[child])
             ):
-                u += 1
                 child += 1
-            if entry[u, 0] < x or (entry[u, 0] == x and entry[u, 1] <= y):
+            if key[child] < x or (key[child] == x and tail[child] <= y):
                 break
-            entry[lo + hole, 0] = entry[u, 0]
-            entry[lo + hole, 1] = entry[u, 1]
+            key[hole], tail[hole] = key[child], tail[child]
             hole = child
             child = 2 * hole + 1
-        entry[lo + hole, 0] = x
-        entry[lo + hole, 1] = y
+        key[hole], tail[hole] = x, y
 
 
 @jit
-def _slot(word: int) -> int:
-    """Slot of an entry, from its second word."""
-    return (word & 0xFFFFFFFF) >> 2
-
-
-@jit
-def _cell(slot: int, stride: int, slot_cell: Array) -> int:
-    """Cell of a slot."""
-    return slot // stride if stride > 0 else slot_cell[slot]
-
-
-@jit
-def _match_run(
-    i: int,
-    j: int,
-    cells: CellArrays,
-    stride: int,
-    slot_start: Array,
-    slot_cell: Array,
-    ring: Int64Array,
-    other: Int64Array,
-    entry: Int64Array,
-    mate: Int32Array,
-) -> int:
-    """Give mates to entries i..j, whose four smallest corners agree; return groups found."""
-    if j - i == 1:
-        mate[_slot(entry[i, 1])] = -1
-        return 0
-    large = entry[i, 1] & 3 == 3
-    groups = 0
-    while i < j:
-        end = j
-        if large:
-            end = _gather_equal(i, j, cells, stride, slot_start, slot_cell, ring, other, entry)
-        groups += _group(i, end, stride, slot_cell, entry, mate)
-        i = end
-    return groups
+def _face_size(
+    points: FloatArray, large_indptr: Int64Array, large_indices: Array, first: int, second: int
+) -> float:
+    """Length of an edge, area of a triangle, norm of the vector area of a larger face."""
+    a, b = first >> 32, first & _LOW
+    c, d, turn = second >> 32, (second & _LOW) >> 2, second & 3
+    third = points.shape[1] == 3
+    ux, uy = points[b, 0] - points[a, 0], points[b, 1] - points[a, 1]
+    uz = points[b, 2] - points[a, 2] if third else 0.0
+    if c == 0:
+        return np.sqrt(ux * ux + uy * uy + uz * uz)
+    nx = ny = nz = 0.0
+    if turn == 3:
+        o = np.int64(large_indices[large_indptr[d]])
+        px = py = pz = 0.0
+        for i in range(large_indptr[d] + 1, large_indptr[d + 1]):
+            p = large_indices[i]
+            qx, qy = points[p, 0] - points[o, 0], points[p, 1] - points[o, 1]
+            qz = points[p, 2] - points[o, 2] if third else 0.0
+            nx += py * qz - pz * qy
+            ny += pz * qx - px * qz
+            nz += px * qy - py * qx
+            px, py, pz = qx, qy, qz
+    else:
+        # a triangle a, b, c, or the diagonals of a ring of four
+        v0, v1 = a, c
+        if d > 0 and turn == 0:
+            v0, v1 = c, d
+        elif d > 0:
+            v1 = d
+            if turn == 1:
+                ux, uy = points[c, 0] - points[a, 0], points[c, 1] - points[a, 1]
+                uz = points[c, 2] - points[a, 2] if third else 0.0
+                v0 = b
+            else:
+                ux, uy = points[d, 0] - points[a, 0], points[d, 1] - points[a, 1]
+                uz = points[d, 2] - points[a, 2] if third else 0.0
+                v0, v1 = b, c
+        vx, vy = points[v1, 0] - points[v0, 0], points[v1, 1] - points[v0, 1]
+        vz = points[v1, 2] - points[v0, 2] if third else 0.0
+        nx, ny, nz = uy * vz - uz * vy, uz * vx - ux * vz, ux * vy - uy * vx
+    size: float = 0.5 * np.sqrt(nx * nx + ny * ny + nz * nz)
+    return size
 
 
 @jit
 def _gather_equal(
     i: int,
     j: int,
-    cells: CellArrays,
-    stride: int,
-    slot_start: Array,
-    slot_cell: Array,
-    ring: Int64Array,
-    other: Int64Array,
-    entry: Int64Array,
+    large_indptr: Int64Array,
+    large_indices: Array,
+    face: Int64Array,
+    tail: Int64Array,
 ) -> int:
-    """Move the entries with the corners of entry i right behind it; mark turns that differ."""
-    s = _slot(entry[i, 1])
-    c = _cell(s, stride, slot_cell)
-    n = _load_face(c, s - _slot_start(c, stride, slot_start), cells, ring)
+    """Move the large faces i..j with the corners of the first right behind it, in slot order."""
+    f = (face[tail[i], 1] & _LOW) >> 2
     end = i + 1
     for at in range(i + 1, j):
-        t = _slot(entry[at, 1])
-        c = _cell(t, stride, slot_cell)
-        m = _load_face(c, t - _slot_start(c, stride, slot_start), cells, other)
-        if m != n:
-            continue
-        for u in range(n):
-            m = _add(ring, m, other[u])
-        if m == n:
-            word = entry[at, 1]
-            if _same_turn(ring, other, n):
-                word &= ~3
+        s = tail[at]
+        g = (face[s, 1] & _LOW) >> 2
+        if f == g or (
+            _holds(f, g, large_indptr, large_indices) and _holds(g, f, large_indptr, large_indices)
+        ):
             for u in range(at, end, -1):
-                entry[u, 1] = entry[u - 1, 1]
-            entry[end, 1] = word
+                tail[u] = tail[u - 1]
+            tail[end] = s
             end += 1
-    entry[i, 1] &= ~3
     return end
 
 
 @jit
-def _same_turn(ring: Int64Array, other: Int64Array, n: int) -> bool:
-    """Tell whether two rings of the same corners are the same polygon, either way round."""
-    at = 0
-    while other[at] != ring[0]:
-        at += 1
-    ahead, back = True, True
-    for i in range(n):
-        ahead &= ring[i] == other[(at + i) % n]
-        back &= ring[i] == other[(at + n - i) % n]
-    return ahead or back
+def _holds(f: int, g: int, large_indptr: Int64Array, large_indices: Array) -> bool:
+    """Tell whether large face f has all corners of large face g."""
+    for j in range(large_indptr[g], large_indptr[g + 1]):
+        found = False
+        for i in range(large_indptr[f], large_indptr[f + 1]):
+            found = found or large_indices[i] == large_indices[j]
+        if not found:
+            return False
+    return True
 
 
 @jit
-def _group(
-    i: int, j: int, stride: int, slot_cell: Array, entry: Int64Array, mate: Int32Array
-) -> int:
-    """Make entries i..j, one face, a group of distinct cells; a cell's second slot is no face."""
-    if j - i == 1:
-        mate[_slot(entry[i, 1])] = -1
-        return 0
-    if j - i == 2 and (entry[i, 1] & 3) == (entry[i + 1, 1] & 3):
-        s, t = _slot(entry[i, 1]), _slot(entry[i + 1, 1])
-        if _cell(s, stride, slot_cell) != _cell(t, stride, slot_cell):
-            mate[s] = t
-            mate[t] = s
-            return 0
-    end = i
-    last = -1
+def _join(
+    i: int,
+    j: int,
+    lo: int,
+    size: float,
+    slot_cell: Int32Array,
+    stride: int,
+    tail: Int64Array,
+    face: Int64Array,
+    measure: FloatArray,
+    order: Int32Array,
+) -> None:
+    """Write mate and measure of the slots i..j of one face."""
+    n = 0
+    last = np.int64(-1)
     for at in range(i, j):
-        s = _slot(entry[at, 1])
-        c = _cell(s, stride, slot_cell)
-        mate[s] = -2
-        if c != last:
-            entry[end, 1] = entry[at, 1]
-            end += 1
-        last = c
-    if end - i == 1:
-        return 0
-    for at in range(i, end):
-        mate[_slot(entry[at, 1])] = -3 - i
-    entry[i, 0] = end - i
-    return 1
+        s = tail[at] & _LOW
+        cell = s // stride if stride > 0 else np.int64(slot_cell[s])
+        face[s, 0] = -2
+        if cell != last:
+            order[lo + i + n] = s
+            n += 1
+        last = cell
+    s = np.int64(order[lo + i])
+    if j - i == 1:
+        face[s, 0] = -1
+        measure[s, 1] = size
+    elif n == 2:
+        t = np.int64(order[lo + i + 1])
+        face[s, 0], face[t, 0] = t, s
+        measure[s, 1], measure[t, 1] = size, size
+    elif n > 2:
+        for at in range(n):
+            s = np.int64(order[lo + i + at])
+            face[s, 0] = -3 - (lo + i)
+            measure[s, 1] = size
+        order[lo + i + n - 1] = ~s
 
 
 @jit
 def count_rows(
     start: int,
     stop: int,
+    slot_start: Int64Array,
     stride: int,
-    slot_start: Array,
-    entry: Int64Array,
-    mate: Int32Array,
+    face: Int64Array,
+    order: Int32Array,
     degree: Int64Array,
     boundary_count: Int32Array,
 ) -> None:
     """Count the neighbours of cells start..stop into `degree[cell + 1]`, and boundary faces."""
-    for c in range(start, stop):
+    for cell in range(start, stop):
         many = bare = 0
-        for slot in range(
-            _slot_start(c, stride, slot_start), _slot_start(c + 1, stride, slot_start)
-        ):
-            m = mate[slot]
-            if m >= 0:
-                many += 1
-            elif m == -1:
-                bare += 1
-            elif m <= -3:
-                many += entry[-3 - m, 0] - 1
-        degree[c + 1] = many
-        boundary_count[c] = bare
+        first = cell * stride if stride > 0 else slot_start[cell]
+        last = first + stride if stride > 0 else slot_start[cell + 1]
+        for s in range(first, last):
+            mate = face[s, 0]
+            many += int(mate >= 0)
+            bare += int(mate == -1)
+            if mate <= -3:
+                at = -3 - mate
+                while order[at] >= 0:
+                    many += 1
+                    at += 1
+        degree[cell + 1] = many
+        boundary_count[cell] = bare
 
 
 @jit
 def fill_rows(
     start: int,
     stop: int,
-    points: FloatArray,
-    cells: CellArrays,
+    slot_start: Int64Array,
+    slot_cell: Int32Array,
     stride: int,
-    slot_start: Array,
-    slot_cell: Array,
-    longest: int,
-    entry: Int64Array,
-    mate: Int32Array,
+    face: Int64Array,
+    measure: FloatArray,
+    order: Int32Array,
     indptr: Int64Array,
     indices: Array,
     data: FloatArray,
     boundary_measure: FloatArray,
 ) -> None:
-    """Write rows start..stop of the graph: neighbours and measures, by neighbour, then measure."""
-    ring = np.empty(longest, np.int64)
-    for c in range(start, stop):
-        slot = _slot_start(c, stride, slot_start)
-        first = end = indptr[c]
+    """Write rows start..stop of the graph: by neighbour, then by measure."""
+    for cell in range(start, stop):
+        first = cell * stride if stride > 0 else slot_start[cell]
+        last = first + stride if stride > 0 else slot_start[cell + 1]
+        end = indptr[cell]
         bare = 0.0
-        for f in range(_slot_start(c + 1, stride, slot_start) - slot):
-            m = mate[slot + f]
-            if m == -2:
-                continue
-            if m >= -1:
-                size = _face_measure(points, ring, _load_face(c, f, cells, ring))
-                if m == -1:
-                    bare += size
-                else:
-                    _insert(indices, data, first, end, _cell(m, stride, slot_cell), size)
-                    end += 1
-                continue
-            # a group is measured by its first slot, whoever asks
-            at = -3 - m
-            s = _slot(entry[at, 1])
-            owner = _cell(s, stride, slot_cell)
-            n = _load_face(owner, s - _slot_start(owner, stride, slot_start), cells, ring)
-            size = _face_measure(points, ring, n)
-            for i in range(at, at + entry[at, 0]):
-                neighbour = _cell(_slot(entry[i, 1]), stride, slot_cell)
-                if neighbour != c:
-                    _insert(indices, data, first, end, neighbour, size)
-                    end += 1
-        boundary_measure[c] = bare
+        for s in range(first, last):
+            mate = face[s, 0]
+            if mate == -1:
+                bare += measure[s, 1]
+            elif mate != -2:
+                at = -3 - mate
+                more = True
+                while more:
+                    t = mate
+                    if mate < 0:
+                        t = np.int64(order[at])
+                        at += 1
+                    more = mate < 0 and t >= 0
+                    t = t if t >= 0 else ~t
+                    if t != s:
+                        other = t // stride if stride > 0 else np.int64(slot_cell[t])
+                        _insert(indices, data, indptr[cell], end, other, measure[s, 1])
+                        end += 1
+        boundary_measure[cell] = bare
 
 
 @jit
@@ -476,38 +502,3 @@ def _insert(
         i -= 1
     indices[i] = neighbour
     data[i] = size
-
-
-@jit
-def _face_measure(points: FloatArray, ring: Int64Array, n: int) -> float:
-    """Length, or norm of the vector area, of a face with n distinct corners.
-
-    The corners are taken from the smallest on towards its smaller neighbour, so that the result
-    has the same bits whichever cell asks.
-    """
-    at = 0
-    for i in range(1, n):
-        if ring[i] < ring[at]:
-            at = i
-    after, before = (at + 1) % n, (at + n - 1) % n
-    step = 1 if ring[after] <= ring[before] else n - 1
-    third = points.shape[1] == 3
-    o = ring[at]
-    ax = ay = az = 0.0
-    nx = ny = nz = 0.0
-    i = at
-    for _ in range(n - 1):
-        i = (i + step) % n
-        p = ring[i]
-        bx = points[p, 0] - points[o, 0]
-        by = points[p, 1] - points[o, 1]
-        bz = points[p, 2] - points[o, 2] if third else 0.0
-        if n == 2:
-            nx, ny, nz = 2.0 * bx, 2.0 * by, 2.0 * bz
-        else:
-            nx += ay * bz - az * by
-            ny += az * bx - ax * bz
-            nz += ax * by - ay * bx
-        ax, ay, az = bx, by, bz
-    measure: float = 0.5 * np.sqrt(nx * nx + ny * ny + nz * nz)
-    return measure

@@ -26,6 +26,7 @@ __all__ = [
     "MAX_FACES",
     "POLYGON",
     "POLYHEDRON",
+    "TETRA",
     "VERTEX",
     "Kind",
     "KindTables",
@@ -33,7 +34,7 @@ __all__ = [
     "kind_tables",
 ]
 
-VERTEX, POLYGON, POLYHEDRON = 1, 7, 42
+VERTEX, POLYGON, TETRA, POLYHEDRON = 1, 7, 10, 42
 MAX_FACES, MAX_CORNERS = 8, 6
 
 Faces = tuple[tuple[int, ...], ...]
