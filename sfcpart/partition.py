@@ -3,12 +3,16 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import ArrayLike
 
 from sfcpart.dtypes import PART, Array, Int32Array, Int64Array
 from sfcpart.errors import PartitionError
+
+if TYPE_CHECKING:
+    from scipy.sparse import csr_array
 
 __all__ = ["Partition"]
 
@@ -108,7 +112,7 @@ class Partition:
         """Tell whether two partitions agree cell by cell and in their number of parts."""
         return self.n_parts == other.n_parts and np.array_equal(self.cell_part, other.cell_part)
 
-    def overlap(self, other: Partition, weights: ArrayLike | None = None) -> Array:
+    def overlap(self, other: Partition, weights: ArrayLike | None = None) -> csr_array:
         """Return the weight that part p of this and part q of the other share.
 
         Parameters

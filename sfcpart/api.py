@@ -1,0 +1,287 @@
+"""The public verbs: check, plan, call, wrap.
+
+mesh = sfcpart.read_mesh("channel.vtu")
+partition = sfcpart.split(mesh, 64)
+assessment = sfcpart.assess(mesh, partition)
+sfcpart.write_split("parts", mesh, partition)
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from os import PathLike
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from numpy.typing import ArrayLike
+
+from sfcpart.curve import curve_keys, curve_order
+from sfcpart.errors import InputError
+from sfcpart.files.part import Part, read_part
+from sfcpart.files.read import read_cell_values, read_mesh
+from sfcpart.graph import CellGraph, cell_graph
+from sfcpart.mesh.mesh import Mesh
+from sfcpart.partition import Partition
+from sfcpart.plan import Weights, part_speeds, plan_problem, weights_of
+
+if TYPE_CHECKING:
+    from sfcpart.assess import Assessment, StepModel
+    from sfcpart.assess.survey import Survey
+    from sfcpart.comm.base import Comm
+    from sfcpart.halo import Across
+
+__all__ = [
+    "Mesh",
+    "Part",
+    "Partition",
+    "assess",
+    "cell_graph",
+    "curve_keys",
+    "curve_order",
+    "inspect",
+    "read_cell_values",
+    "read_mesh",
+    "read_part",
+    "split",
+    "write_split",
+]
+
+
+def split(
+    mesh: Mesh,
+    n_parts: int,
+    *,
+    method: str = "hilbert",
+    tolerance: float = 0.03,
+    weights: Weights = None,
+    speeds: ArrayLike | None = None,
+    limit_weights: Weights = None,
+    limits: ArrayLike | None = None,
+    levels: Sequence[int] | None = None,
+    together: ArrayLike | str | Sequence[str] | None = None,
+    pairs: ArrayLike | None = None,
+    periodic: Sequence[tuple[str, str]] = (),
+    seed: int = 0,
+    comm: Comm | None = None,
+) -> Partition:
+    """Divide a mesh into parts of equal work.
+
+    Parameters
+    ----------
+    mesh : Mesh
+    n_parts : int
+        Number of parts, 1 <= n_parts <= n_cells. No part is empty.
+    method : str
+        A name of `sfcpart.methods.registry.METHODS`.
+    tolerance : float
+        How far the heaviest part may exceed its fair share (0.03: 3 %) where a method can trade
+        balance for a smaller cut. Curve methods give the least heaviest part there is.
+    weights : (n_cells,) numbers, or str, or list of str, optional
+        Work of each cell: numbers >= 0, or specifications (see `sfcpart.weights`), multiplied.
+        1 each by default.
+    speeds : (n_parts,) numbers, optional
+        Relative speed of each part's rank, > 0.
+    limit_weights, limits : optional
+        A second weight of each cell (as `weights`; 1 each by default) and the most of it that a
+        part may hold, one number or one a part: memory, for instance.
+    levels : sequence of int, optional
+        Nested levels such as (4, 16): nodes, then cores; their product is `n_parts`.
+    together : (n_cells,) numbers, or names of cell fields, optional
+        Cells with equal values stay in one part; negative numbers and NaN are free.
+    pairs : (m, 2) integers, optional
+        Cells that stay together two by two.
+    periodic : sequence of (str, str)
+        Pairs of boundary groups whose facing cells stay together.
+    seed : int
+        The only source of randomness of the methods that use any.
+    comm : Comm, optional
+        Reserved for meshes spread over ranks; this process alone by default.
+
+    Returns
+    -------
+    Partition
+        The same for any number of threads.
+
+    Raises
+    ------
+    InputError, WeightError, PartitionError
+        If something asked for is malformed or cannot be met; the message says what could.
+
+    Notes
+    -----
+    Curve methods: O(n) plus one sort of the keys. A partition changes the order in which a solver
+    sums; it says nothing about whether a simulation is right.
+
+    Examples
+    --------
+    >>> import sfcpart
+    >>> mesh = sfcpart.Mesh.from_centers([[x, y] for x in range(4) for y in range(4)])
+    >>> sfcpart.split(mesh, 4).part_size().tolist()
+    [4, 4, 4, 4]
+    """
+    from sfcpart.methods.registry import METHODS
+
+    if method not in METHODS:
+        raise InputError(f"method {method!r} is unknown; wanted one of {', '.join(METHODS)}")
+    problem = plan_problem(
+        mesh,
+        n_parts,
+        tolerance=tolerance,
+        weights=weights,
+        speeds=speeds,
+        limit_weights=limit_weights,
+        limits=limits,
+        levels=levels,
+        together=together,
+        pairs=pairs,
+        periodic=periodic,
+        seed=seed,
+        comm=_alone() if comm is None else comm,
+    )
+    return Partition.from_array(METHODS[method].run(problem), problem.n_parts)
+
+
+def assess(
+    mesh: Mesh,
+    partition: Partition | ArrayLike,
+    *,
+    weights: Weights = None,
+    speeds: ArrayLike | None = None,
+    limit_weights: Weights = None,
+    limits: ArrayLike | None = None,
+    step_model: StepModel | None = None,
+) -> Assessment:
+    """Measure a partition, wherever it comes from.
+
+    Parameters
+    ----------
+    mesh : Mesh
+    partition : Partition or (n_cells,) integers
+    weights, speeds, limit_weights, limits : optional
+        As for `split`.
+    step_model : StepModel, optional
+        What a step costs; a documented default otherwise.
+
+    Returns
+    -------
+    Assessment
+        Balance, cut, halo, pieces, shapes, bounds and predicted step time; see
+        `sfcpart.assess.columns` for every figure.
+
+    Raises
+    ------
+    PartitionError, WeightError
+        If the partition or the weights do not belong to the mesh.
+
+    Examples
+    --------
+    >>> import sfcpart
+    >>> points = [[0, 0], [1, 0], [2, 0], [0, 1], [1, 1], [2, 1]]
+    >>> mesh = sfcpart.Mesh.from_arrays(points, {"quad": [[0, 1, 4, 3], [1, 2, 5, 4]]})
+    >>> sfcpart.assess(mesh, [0, 1]).total["cut_faces"]
+    1
+    """
+    from sfcpart.assess import assess_partition
+
+    if not isinstance(partition, Partition):
+        partition = Partition.from_array(partition)
+    return assess_partition(
+        mesh,
+        graph_of(mesh),
+        partition,
+        weights=weights_of(mesh, weights),
+        speeds=None if speeds is None else part_speeds(speeds, partition.n_parts),
+        step_model=step_model,
+        limit_weights=weights_of(mesh, limit_weights),
+        limits=limits,
+    )
+
+
+def inspect(mesh: Mesh) -> Survey:
+    """Look a mesh over: what it holds and what is wrong with it.
+
+    Examples
+    --------
+    >>> import sfcpart
+    >>> sfcpart.inspect(sfcpart.Mesh.from_centers([[0.0, 0.0], [1.0, 0.0]])).n_cells
+    2
+    """
+    from sfcpart.assess.survey import survey_mesh
+
+    return survey_mesh(mesh, graph_of(mesh))
+
+
+def write_split(
+    folder: str | PathLike[str],
+    mesh: Mesh,
+    partition: Partition,
+    *,
+    assessment: Assessment | None = None,
+    formats: Sequence[str] = ("vtkhdf",),
+    layers: int = 1,
+    across: Across = "faces",
+    overwrite: bool = False,
+    picture: bool = False,
+    compress: bool = False,
+    source: str | PathLike[str] | None = None,
+    options: Mapping[str, Any] | None = None,
+) -> Path:
+    """Write the parts and their figures into a folder that appears complete or not at all.
+
+    Parameters
+    ----------
+    folder : path
+        The folder to make; refused if it holds something, unless `overwrite` and all of it was
+        written by sfcpart.
+    mesh : Mesh
+    partition : Partition
+    assessment : Assessment, optional
+        Figures to write; measured with defaults if missing.
+    formats : sequence of {"vtkhdf", "vtu", "same"}
+        One VTKHDF file with ghost cells and exchange lists; VTU pieces with a PVTU; or the
+        input's own format with a `part` field (needs `source`).
+    layers, across : int, {"faces", "points"}
+        Depth of the halo, and what it grows across.
+    overwrite, picture, compress : bool
+        Whether to replace an earlier result, to draw `parts.png`, to pack the VTKHDF file.
+    source : path, optional
+        The mesh file; its digest goes into `summary.json`.
+    options : mapping, optional
+        What the split was asked for, for `summary.json`.
+
+    Returns
+    -------
+    pathlib.Path
+        The folder.
+
+    Raises
+    ------
+    FileError
+        If the folder is refused or cannot be written; nothing is left behind then.
+    """
+    from sfcpart.deliver import Delivery, deliver
+
+    return deliver(
+        folder,
+        mesh,
+        partition,
+        assessment=assess(mesh, partition) if assessment is None else assessment,
+        graph=graph_of(mesh),
+        how=Delivery(tuple(formats), layers, across, overwrite, picture, compress),
+        source=None if source is None else Path(source),
+        options={} if options is None else options,
+    )
+
+
+def graph_of(mesh: Mesh) -> CellGraph | None:
+    """Return the cell graph, or None for a mesh known by its centres only."""
+    if mesh.points is None and mesh.faces is None:
+        return None
+    return cell_graph(mesh)
+
+
+def _alone() -> Comm:
+    """Return the communicator of this process."""
+    from sfcpart.comm import SerialComm
+
+    return SerialComm()

@@ -1,0 +1,219 @@
+"""From what a user asks to the one value a method takes: every check at one gate."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from math import isfinite, prod
+from typing import TYPE_CHECKING, TypeAlias
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from sfcpart.dtypes import Array, FloatArray, Int64Array
+from sfcpart.errors import InputError, PartitionError, WeightError
+from sfcpart.graph import cell_graph
+from sfcpart.mesh.mesh import Mesh
+from sfcpart.methods.problem import Problem
+from sfcpart.weights import (
+    cell_weights,
+    groups_from_boundaries,
+    groups_from_field,
+    groups_from_pairs,
+    join_groups,
+    quantise,
+    quantise_limits,
+)
+
+if TYPE_CHECKING:
+    from sfcpart.comm.base import Comm
+
+__all__ = ["Weights", "part_speeds", "plan_problem", "weights_of"]
+
+Weights: TypeAlias = ArrayLike | str | Sequence[str] | None
+"""One number a cell, or one or more specifications whose values are multiplied."""
+
+
+def plan_problem(
+    mesh: Mesh,
+    n_parts: int,
+    *,
+    tolerance: float,
+    weights: Weights,
+    speeds: ArrayLike | None,
+    limit_weights: Weights,
+    limits: ArrayLike | None,
+    levels: Sequence[int] | None,
+    together: ArrayLike | str | Sequence[str] | None,
+    pairs: ArrayLike | None,
+    periodic: Sequence[tuple[str, str]],
+    seed: int,
+    comm: Comm,
+) -> Problem:
+    """Check what was asked and cast it into a `Problem`; see `sfcpart.split` for the meanings."""
+    n_parts = _whole(n_parts, "n_parts")
+    _check_part_count(n_parts, mesh.n_cells)
+    weight = weights_of(mesh, weights)
+    limit_weight, part_limit = _limits(weights_of(mesh, limit_weights), limits, n_parts, mesh)
+    return Problem(
+        centers=mesh.centers,
+        n_parts=n_parts,
+        part_speed=part_speeds(speeds, n_parts),
+        comm=comm,
+        graph=lambda: cell_graph(mesh),
+        weight=None if weight is None else quantise(weight, comm=comm).values,
+        tolerance=_tolerance(tolerance),
+        level_sizes=_levels(levels, n_parts),
+        limit_weight=limit_weight,
+        part_limit=part_limit,
+        group=_groups(mesh, together, pairs, periodic),
+        seed=_whole(seed, "seed", least=0),
+    )
+
+
+def weights_of(mesh: Mesh, weights: Weights) -> Array | None:
+    """Return one number a cell, or None for 1 each.
+
+    Raises
+    ------
+    WeightError
+        If the array has another length, or a specification cannot be met.
+    """
+    if weights is None:
+        return None
+    if isinstance(weights, str) or _are_texts(weights):
+        return cell_weights(mesh, weights, graph=lambda: cell_graph(mesh))
+    array = np.asarray(weights)
+    if array.shape != (mesh.n_cells,):
+        raise WeightError(
+            f"weights have shape {array.shape}; wanted one number for each of the "
+            f"{mesh.n_cells} cells"
+        )
+    return array
+
+
+def part_speeds(speeds: ArrayLike | None, n_parts: int) -> FloatArray:
+    """Return the relative speed of each part, (n_parts,) float64; 1 each by default.
+
+    Raises
+    ------
+    WeightError
+        If there is not one positive finite number for each part.
+    """
+    if speeds is None:
+        return np.ones(n_parts)
+    array = np.asarray(speeds, np.float64)
+    if array.shape != (n_parts,):
+        raise WeightError(
+            f"speeds have shape {array.shape}; wanted one number for each of the {n_parts} parts"
+        )
+    wrong = np.flatnonzero(~((array > 0) & np.isfinite(array)))
+    if len(wrong):
+        raise WeightError(
+            f"the speed of part {wrong[0]} is {array[wrong[0]]}; wanted finite numbers above 0"
+        )
+    return array
+
+
+def _are_texts(weights: object) -> bool:
+    """Tell whether these are specifications rather than numbers."""
+    return isinstance(weights, list | tuple) and any(isinstance(item, str) for item in weights)
+
+
+def _whole(value: object, name: str, *, least: int = 1) -> int:
+    """Return a whole number of at least `least`."""
+    if isinstance(value, bool) or not isinstance(value, int | np.integer) or value < least:
+        raise InputError(f"{name} is {value!r}; wanted a whole number, {least} or more")
+    return int(value)
+
+
+def _check_part_count(n_parts: int, n_cells: int) -> None:
+    """Refuse parts that would stay empty."""
+    if n_parts > n_cells:
+        raise PartitionError(
+            f"{n_parts} parts were asked for, but the mesh has {n_cells} cells; "
+            f"ask for at most {n_cells}, or some parts would be empty"
+        )
+
+
+def _tolerance(tolerance: float) -> float:
+    """Return a finite tolerance >= 0."""
+    if (
+        not isinstance(tolerance, int | float | np.number)
+        or not isfinite(tolerance)
+        or tolerance < 0
+    ):
+        raise InputError(f"tolerance is {tolerance!r}; wanted a number >= 0, such as 0.03 for 3 %")
+    return float(tolerance)
+
+
+def _levels(levels: Sequence[int] | None, n_parts: int) -> tuple[int, ...]:
+    """Return nested level sizes whose product is the number of parts."""
+    if levels is None:
+        return (n_parts,)
+    sizes = tuple(_whole(size, "a level's size") for size in levels)
+    if prod(sizes) != n_parts or not sizes:
+        text = "x".join(map(str, sizes)) or "none"
+        raise InputError(f"levels {text} make {prod(sizes)} parts; wanted {n_parts}")
+    return sizes
+
+
+def _limits(
+    weight: Array | None, limits: ArrayLike | None, n_parts: int, mesh: Mesh
+) -> tuple[Int64Array | None, Int64Array | None]:
+    """Return the quantised second weight and the most of it each part may hold."""
+    if limits is None:
+        if weight is not None:
+            raise WeightError("a second weight was given without a limit; give both or none")
+        return None, None
+    most = np.asarray(limits, np.float64)
+    if most.shape not in ((), (1,), (n_parts,)):
+        raise WeightError(
+            f"limits have shape {most.shape}; wanted one number, or one for each of "
+            f"the {n_parts} parts"
+        )
+    second = quantise(
+        np.ones(mesh.n_cells, np.int64) if weight is None else weight, what="limited weight"
+    )
+    part_limit = quantise_limits(np.broadcast_to(most, (n_parts,)), second.exponent)
+    return second.values, part_limit
+
+
+def _groups(
+    mesh: Mesh,
+    together: ArrayLike | str | Sequence[str] | None,
+    pairs: ArrayLike | None,
+    periodic: Sequence[tuple[str, str]],
+) -> Int64Array | None:
+    """Unite all that must stay together into one grouping, None if all cells are free."""
+    found: list[Int64Array] = []
+    for values in _together_values(mesh, together):
+        if np.shape(values) != (mesh.n_cells,):
+            raise WeightError(
+                f"the group field has shape {np.shape(values)}; wanted one number for each of "
+                f"the {mesh.n_cells} cells"
+            )
+        found.append(groups_from_field(values))
+    if pairs is not None:
+        found.append(groups_from_pairs(pairs, n_cells=mesh.n_cells))
+    found += [groups_from_boundaries(mesh, first, second) for first, second in periodic]
+    return join_groups(*found) if found else None
+
+
+def _together_values(
+    mesh: Mesh, together: ArrayLike | str | Sequence[str] | None
+) -> list[ArrayLike]:
+    """Return the arrays behind what was given: field names, or the numbers themselves."""
+    if together is None:
+        return []
+    names = [together] if isinstance(together, str) else together
+    if not _are_texts(names):
+        return [together]
+    return [_cell_field(mesh, str(name)) for name in names]  # type: ignore[union-attr]
+
+
+def _cell_field(mesh: Mesh, name: str) -> Array:
+    """Return a cell field by name."""
+    if name not in mesh.cell_fields:
+        known = ", ".join(sorted(mesh.cell_fields)) or "none"
+        raise WeightError(f"there is no cell field {name!r}; the mesh has {known}")
+    return mesh.cell_fields[name]
