@@ -5,7 +5,9 @@ The public names are loaded on first use: `import sfcpart` starts no MPI and com
 
 from __future__ import annotations
 
+import sys
 from importlib import import_module
+from types import ModuleType
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -14,8 +16,10 @@ if TYPE_CHECKING:
         Partition,
         assess,
         cell_graph,
+        compare,
         curve_keys,
         curve_order,
+        inspect,
         read_mesh,
         read_part,
         split,
@@ -29,8 +33,10 @@ _PUBLIC = {
     "Partition": "sfcpart.partition",
     "assess": "sfcpart.api",
     "cell_graph": "sfcpart.api",
+    "compare": "sfcpart.api",
     "curve_keys": "sfcpart.api",
     "curve_order": "sfcpart.api",
+    "inspect": "sfcpart.api",
     "read_mesh": "sfcpart.api",
     "read_part": "sfcpart.api",
     "split": "sfcpart.api",
@@ -40,12 +46,14 @@ _PUBLIC = {
 __all__ = [  # noqa: RUF022 - in the order a user meets them
     "read_mesh",
     "Mesh",
+    "inspect",
     "cell_graph",
     "curve_keys",
     "curve_order",
     "split",
     "Partition",
     "assess",
+    "compare",
     "write_split",
     "read_part",
     "__version__",
@@ -64,3 +72,19 @@ def __getattr__(name: str) -> Any:
 def __dir__() -> list[str]:
     """List the public names."""
     return sorted(__all__)
+
+
+class _Package(ModuleType):
+    """The package itself: a subpackage never hides the public function of its name.
+
+    Importing `sfcpart.assess.measure` makes Python set `sfcpart.assess` to the subpackage, after
+    which `sfcpart.assess(mesh, partition)` would call a module.
+    """
+
+    def __setattr__(self, name: str, value: object) -> None:
+        """Set an attribute, unless it is a module under a public name."""
+        if name not in _PUBLIC or not isinstance(value, ModuleType):
+            super().__setattr__(name, value)
+
+
+sys.modules[__name__].__class__ = _Package
