@@ -28,6 +28,7 @@ if TYPE_CHECKING:
     from sfcpart.assess import Assessment, StepModel
     from sfcpart.assess.survey import Survey
     from sfcpart.comm.base import Comm
+    from sfcpart.comparison import Comparison
     from sfcpart.halo import Across
 
 __all__ = [
@@ -36,6 +37,7 @@ __all__ = [
     "Partition",
     "assess",
     "cell_graph",
+    "compare",
     "curve_keys",
     "curve_order",
     "inspect",
@@ -183,8 +185,7 @@ def assess(
     """
     from sfcpart.assess import assess_partition
 
-    if not isinstance(partition, Partition):
-        partition = Partition.from_array(partition)
+    partition = _as_partition(partition)
     return assess_partition(
         mesh,
         graph_of(mesh),
@@ -194,6 +195,85 @@ def assess(
         step_model=step_model,
         limit_weights=weights_of(mesh, limit_weights),
         limits=limits,
+    )
+
+
+def compare(
+    mesh: Mesh,
+    n_parts: int,
+    *,
+    methods: Sequence[str] | None = None,
+    given: Mapping[str, Partition | ArrayLike] | None = None,
+    steps: int = 10_000,
+    step_model: StepModel | None = None,
+    tolerance: float = 0.03,
+    weights: Weights = None,
+    speeds: ArrayLike | None = None,
+    limit_weights: Weights = None,
+    limits: ArrayLike | None = None,
+    levels: Sequence[int] | None = None,
+    together: ArrayLike | str | Sequence[str] | None = None,
+    pairs: ArrayLike | None = None,
+    periodic: Sequence[tuple[str, str]] = (),
+    seed: int = 0,
+) -> Comparison:
+    """Split one mesh in several ways and measure all alike.
+
+    Parameters
+    ----------
+    mesh : Mesh
+        With faces: bare centres have no cut to compare.
+    n_parts : int
+    methods : sequence of str, optional
+        All methods by default.
+    given : mapping of str to Partition or (n_cells,) integers, optional
+        Partitions from elsewhere, each one more row.
+    steps : int
+        Length of the run for which a total time is predicted, the time to split included.
+    step_model : StepModel, optional
+    tolerance, weights, speeds, limit_weights, limits, levels, together, pairs, periodic, seed
+        As for `split`, the same for all methods.
+
+    Returns
+    -------
+    Comparison
+        A method that cannot do what was asked has a row that says why.
+
+    Raises
+    ------
+    InputError, WeightError, PartitionError
+        If a method is unknown, or what was asked is malformed.
+
+    Examples
+    --------
+    >>> import sfcpart
+    >>> from sfcpart.mesh.shapes import lattice
+    >>> mesh = lattice((8, 8)).to_mesh()
+    >>> found = sfcpart.compare(mesh, 4, methods=["hilbert", "rows"])
+    >>> [(row["name"], row["cut_faces"]) for row in found.figures()]
+    [('hilbert', 16), ('rows', 24)]
+    """
+    from sfcpart.comparison import compare_methods
+
+    wish = {"weights": weights, "speeds": speeds, "limit_weights": limit_weights, "limits": limits}
+    problem = plan_problem(
+        mesh,
+        n_parts,
+        tolerance=tolerance,
+        levels=levels,
+        together=together,
+        pairs=pairs,
+        periodic=periodic,
+        seed=seed,
+        comm=_alone(),
+        **wish,
+    )
+    return compare_methods(
+        problem,
+        methods=methods,
+        given={name: _as_partition(parts) for name, parts in (given or {}).items()},
+        steps=steps,
+        measure=lambda partition: assess(mesh, partition, step_model=step_model, **wish),
     )
 
 
@@ -278,6 +358,11 @@ def graph_of(mesh: Mesh) -> CellGraph | None:
     if mesh.points is None and mesh.faces is None:
         return None
     return cell_graph(mesh)
+
+
+def _as_partition(parts: Partition | ArrayLike) -> Partition:
+    """Return a partition, whether given as one or as an array."""
+    return parts if isinstance(parts, Partition) else Partition.from_array(parts)
 
 
 def _alone() -> Comm:
