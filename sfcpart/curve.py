@@ -21,6 +21,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import TYPE_CHECKING, Literal, cast
 
 import numpy as np
@@ -29,7 +30,7 @@ from numpy.typing import ArrayLike
 from sfcpart.dtypes import COORDINATE, GID, KEY, Array, FloatArray, Int64Array, IntArray
 from sfcpart.errors import InputError
 from sfcpart.kernels import hilbert
-from sfcpart.kernels.radix import put_rows, sorting, take_rows
+from sfcpart.kernels.radix import put_rows, sorting, survey, take_rows
 from sfcpart.kernels.threads import run_ranges
 
 if TYPE_CHECKING:
@@ -116,7 +117,7 @@ def curve_order(
 
 @dataclass(frozen=True, eq=False)
 class CurveSlice:
-    """This rank's stretch of the curve, and the way there and back for values of cells.
+    """A rank's stretch of the curve, and the way there and back for values of cells.
 
     Attributes
     ----------
@@ -181,7 +182,8 @@ def curve_slice(centers: ArrayLike, *, curve: Curve = "hilbert", comm: Comm) -> 
     received = np.array([len(piece) for piece in pieces], np.int64)
     merge, key = sorting(_join(pieces))
     line = CurveSlice(comm, order, edge, received, merge)
-    return _untie(line, key, frame)
+    n_same = np.array([survey(key).n_equal], np.int64)
+    return _untie(line, key, frame) if comm.allreduce(n_same)[0] else line
 
 
 def _even_edges(key: Int64Array, comm: Comm) -> Int64Array:
@@ -202,9 +204,6 @@ def _even_edges(key: Int64Array, comm: Comm) -> Int64Array:
 def _untie(line: CurveSlice, key: Int64Array, frame: _Frame) -> CurveSlice:
     """Order the centres that share a key by their deeper keys, asked from their home ranks."""
     same = key[1:] == key[:-1]
-    n_same = np.array([np.count_nonzero(same)], np.int64)
-    if not line.comm.allreduce(n_same)[0]:
-        return line
     tied = np.flatnonzero(np.append(same, False) | np.append(False, same)) if len(key) else _ALL
     came = np.arange(len(key)) if line.merge is None else line.merge.astype(np.int64)
     start = np.cumsum(line.received) - line.received
@@ -214,9 +213,7 @@ def _untie(line: CurveSlice, key: Int64Array, frame: _Frame) -> CurveSlice:
     count = np.bincount(home, minlength=line.comm.size)
     place = (asked - start[home])[by_home]
     wanted = line.comm.alltoall(_cut(place, np.concatenate(([0], np.cumsum(count)))))
-    deep = [
-        frame.deeper_keys(line.order[line.edge[r] + rows]) for r, rows in enumerate(wanted)
-    ]
+    deep = [frame.deeper_keys(line.order[line.edge[r] + rows]) for r, rows in enumerate(wanted)]
     answer = np.empty(len(tied), KEY)
     answer[by_home] = _join(line.comm.alltoall(deep))
     came[tied] = came[tied[np.lexsort((answer, key[tied]))]]
@@ -329,7 +326,7 @@ def _alone() -> Comm:
 
 def _cut(array: Array, edge: Int64Array) -> list[Array]:
     """Cut an array into one piece for each rank."""
-    return [array[start:stop] for start, stop in zip(edge[:-1], edge[1:], strict=True)]
+    return [array[start:stop] for start, stop in pairwise(edge)]
 
 
 def _join(pieces: Sequence[Array]) -> Array:

@@ -35,7 +35,7 @@ def caps(bottleneck: float, speed: FloatArray, most: int) -> Int64Array:
         if most / speed[p] <= bottleneck:
             cap[p] = most
             continue
-        w = np.int64(min(bottleneck * speed[p], 4.0e18))
+        w = int(min(bottleneck * speed[p], 4.0e18))
         while w > 0 and w / speed[p] > bottleneck:
             w -= 1
         while (w + 1) / speed[p] <= bottleneck:
@@ -47,13 +47,13 @@ def caps(bottleneck: float, speed: FloatArray, most: int) -> Int64Array:
 @jit
 def sum_before(prefix: Int64Array, at: int, base: int) -> int:
     """Return the sum of the items before a position; an empty prefix means 1 each."""
-    return prefix[at - base] if len(prefix) else np.int64(at)
+    return int(prefix[at - base]) if len(prefix) else int(at)
 
 
 @jit
 def limit_before(prefix: Int64Array, at: int, base: int) -> int:
     """Return the limited sum before a position; an empty prefix means there is no limit."""
-    return prefix[at - base] if len(prefix) else np.int64(0)
+    return int(prefix[at - base]) if len(prefix) else 0
 
 
 @jit
@@ -192,7 +192,7 @@ def pass_on(
     out_ptr: Int64Array,
     out: Int64Array,
 ) -> int:
-    """Write what the stretch before this one needs: intervals up to `first + least`, and one more."""
+    """Write what the stretch before needs: intervals up to `first + least`, and one more."""
     n_parts = len(out_ptr) - 2
     n = 0
     out_ptr[0] = 0
@@ -233,11 +233,11 @@ def pick(
     `origin` is (begin of the chunk, total there, limit there).
     """
     q = len(cap) - (p + 1)
-    first = origin[0] + span[3]
-    base = span[2]
-    above = np.int64(-1)
+    first = int(origin[0] + span[3])
+    base = int(span[2])
+    above = -1
     for row in range(own_ptr[q], own_ptr[q + 1]):
-        low, high = max(own[row, 0], first), own[row, 1]
+        low, high = max(int(own[row, 0]), first), int(own[row, 1])
         if high < low:
             break
         if low <= wanted:
@@ -256,7 +256,7 @@ def pick(
                 return a, above
         if high > wanted:
             above = max(low, wanted + 1)
-    return np.int64(-1), above
+    return -1, above
 
 
 @jit

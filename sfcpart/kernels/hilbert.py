@@ -3,8 +3,8 @@
 How: a curve that refines itself is a machine whose state says how the curve runs through the
 current square or cube. The machine is derived once, from the published bit construction
 (J. Skilling, Programming the Hilbert curve, AIP Conf. Proc. 707, 381 (2004): reflected Gray code,
-undone level by level), and then widened to `LEVELS` levels a step: 3 in 3-D (12 states x 512
-entries), 4 in 2-D (4 x 256), so that the table stays in the first-level cache. An entry holds
+undone level by level), and then widened to `LEVELS` levels a step: 3 in 3-D (24 states x 512
+entries), 4 in 2-D (4 x 256): at most 24 kB, which stay in the first-level cache. An entry holds
 `digits | state << dim * levels`. Morton order is the machine with one state.
 
 Cost: 7 (3-D) or 8 (2-D) dependent look-ups a centre.
@@ -16,7 +16,7 @@ from functools import lru_cache
 
 import numpy as np
 
-from sfcpart.dtypes import FloatArray, Int64Array
+from sfcpart.dtypes import Array, FloatArray, Int64Array
 from sfcpart.kernels._jit import jit
 
 __all__ = [
@@ -125,16 +125,14 @@ def _widen(machine: list[list[tuple[int, int]]], dim: int) -> Int64Array:
 
 
 @lru_cache(maxsize=8)
-def curve_table(curve: str, dim: int) -> tuple[Int64Array, int]:
+def curve_table(curve: str, dim: int) -> tuple[Array, int]:
     """Return the table of a curve ("hilbert" or "morton") in 2-D or 3-D, and its first state.
 
     In 2-D a key has 31 levels but 32 are looked up: the first state is one whose first child
     leads to the state of the whole square.
     """
-    if curve == "morton":
-        machine = [[(child, 0) for child in range(1 << dim)]]
-    else:
-        machine = _machine(dim)
+    morton = [[(child, 0) for child in range(1 << dim)]]
+    machine = morton if curve == "morton" else _machine(dim)
     padding = -BITS[dim] % LEVELS[dim]
     first = 0
     for _ in range(padding):
@@ -146,7 +144,7 @@ def curve_table(curve: str, dim: int) -> tuple[Int64Array, int]:
 
 @jit
 def bounds_range(start: int, stop: int, centers: FloatArray) -> FloatArray:
-    """Return the lowest and highest coordinates of some rows, (2, dim); NaN if one is not finite."""
+    """Return lowest and highest coordinates of some rows, (2, dim); NaN if one is not finite."""
     dim = centers.shape[1]
     bounds = np.empty((2, dim))
     for k in range(dim):
@@ -169,7 +167,7 @@ def key_range_3d(
     axes: Int64Array,
     low: FloatArray,
     scale: float,
-    table: Int64Array,
+    table: Array,
     first: int,
     rows: Int64Array,
     deeper: int,
@@ -210,7 +208,7 @@ def key_range_2d(
     axes: Int64Array,
     low: FloatArray,
     scale: float,
-    table: Int64Array,
+    table: Array,
     first: int,
     rows: Int64Array,
     deeper: int,

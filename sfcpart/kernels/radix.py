@@ -13,13 +13,15 @@ of Computer Programming 3, sections 5.2 and 5.2.5; from memory).
 
 from __future__ import annotations
 
+from typing import NamedTuple
+
 import numpy as np
 
-from sfcpart.dtypes import Array, Int64Array, IntArray, index_dtype
+from sfcpart.dtypes import Array, BoolArray, Int64Array, IntArray, index_dtype
 from sfcpart.kernels._jit import jit
 from sfcpart.kernels.threads import ranges, run_ranges
 
-__all__ = ["put_rows", "sorting", "stable_order", "take_rows"]
+__all__ = ["Survey", "put_rows", "sorting", "stable_order", "survey", "take_rows"]
 
 _DIGIT = 11
 _SMALL = 24
@@ -55,10 +57,10 @@ def stable_order(key: Int64Array) -> tuple[IntArray, Int64Array]:
 
 def sorting(key: Int64Array) -> tuple[IntArray | None, Int64Array]:
     """Return what `stable_order` does, but None for the order of keys that are in order."""
-    low, high, ordered = _survey(key)
-    if ordered:
+    found = survey(key)
+    if found.in_order:
         return None, key
-    return _sort_rows(key, np.empty(0, index_dtype(len(key))), low, high)
+    return _sort_rows(key, np.empty(0, index_dtype(len(key))), found)
 
 
 def take_rows(values: Array, rows: IntArray) -> Array:
@@ -75,15 +77,34 @@ def put_rows(values: Array, rows: IntArray) -> Array:
     return out
 
 
-def _survey(key: Int64Array) -> tuple[int, int, bool]:
-    """Return the lowest and highest key and whether all are in order."""
+class Survey(NamedTuple):
+    """What one pass finds out about keys.
+
+    Attributes
+    ----------
+    low, high : int
+        Lowest and highest key.
+    in_order : bool
+    n_equal : int
+        Neighbours that are equal.
+    """
+
+    low: int
+    high: int
+    in_order: bool
+    n_equal: int
+
+
+def survey(key: Int64Array) -> Survey:
+    """Look at all keys once, with all threads."""
     found = np.array(run_ranges(survey_range, len(key), key))
-    return int(found[:, 0].min()), int(found[:, 1].max()), bool(found[:, 2].all())
+    low, high = int(found[:, 0].min()), int(found[:, 1].max())
+    return Survey(low, high, not found[:, 2].any(), int(found[:, 3].sum()))
 
 
-def _sort_rows(key: Int64Array, row: IntArray, low: int, high: int) -> tuple[IntArray, Int64Array]:
+def _sort_rows(key: Int64Array, row: IntArray, found: Survey) -> tuple[IntArray, Int64Array]:
     """Return new arrays with rows and keys in order; an empty `row` stands for 0, 1, 2, ..."""
-    n = len(key)
+    n, low, high = len(key), found.low, found.high
     shift = max(0, (high - low).bit_length() - _DIGIT)
     n_buckets = ((high - low) >> shift) + 1
     counts = np.array(run_ranges(count_range, n, key, low, shift, n_buckets))
@@ -106,9 +127,9 @@ def _sort_rows(key: Int64Array, row: IntArray, low: int, high: int) -> tuple[Int
 
 def _sort_again(key: Int64Array, row: IntArray) -> None:
     """Sort a large bucket in place with all threads."""
-    low, high, ordered = _survey(key)
-    if not ordered:
-        row[:], key[:] = _sort_rows(key, row, low, high)
+    found = survey(key)
+    if not found.in_order:
+        row[:], key[:] = _sort_rows(key, row, found)
 
 
 @jit
@@ -126,17 +147,18 @@ def put_range(start: int, stop: int, values: Array, rows: IntArray, out: Array) 
 
 
 @jit
-def survey_range(start: int, stop: int, key: Int64Array) -> tuple[int, int, int]:
-    """Return lowest and highest key of some rows, and 1 if they and the next row are in order."""
+def survey_range(start: int, stop: int, key: Int64Array) -> tuple[int, int, int, int]:
+    """Return lowest and highest key of some rows, falls and equals to the row after each."""
     if len(key) == 0:
-        return 0, 0, 1
-    low, high, inversions = key[start], key[start], 0
-    for i in range(start, stop):
+        return 0, 0, 0, 0
+    low, high = key[stop - 1], key[stop - 1]
+    falls, equals = 0, 0
+    for i in range(start, min(stop, len(key) - 1)):
         low = min(low, key[i])
         high = max(high, key[i])
-    for i in range(start, min(stop, len(key) - 1)):
-        inversions += key[i] > key[i + 1]
-    return low, high, 1 if inversions == 0 else 0
+        falls += key[i] > key[i + 1]
+        equals += key[i] == key[i + 1]
+    return low, high, falls, equals
 
 
 @jit
@@ -179,13 +201,13 @@ def finish_range(
     start: int,
     stop: int,
     edge: Int64Array,
-    skip: np.ndarray,
+    skip: BoolArray,
     key: Int64Array,
     row: IntArray,
 ) -> None:
     """Sort, in place, the buckets that begin at positions start..stop-1."""
-    first = np.searchsorted(edge, start)
-    last = np.searchsorted(edge, stop)
+    first = int(np.searchsorted(edge, start))
+    last = int(np.searchsorted(edge, stop))
     widest = 0
     for bucket in range(first, min(last, len(edge) - 1)):
         if not skip[bucket]:

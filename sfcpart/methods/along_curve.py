@@ -8,6 +8,7 @@ each chunk then again. `tolerance` plays no role here: the least bottleneck is a
 
 from __future__ import annotations
 
+from dataclasses import replace
 from functools import partial
 from typing import cast
 
@@ -75,6 +76,9 @@ def _parts(
 ) -> Int32Array:
     """Return the part of each item of this rank's stretch."""
     sizes = problem.level_sizes or (problem.n_parts,)
+    total = int(problem.comm.allreduce(np.array([n_items], np.int64))[0])
+    if total < problem.n_parts:
+        problem, limited = _one_item_a_part(problem, n_items, limited)
     line = Line.of(
         n_items,
         weight=weight,
@@ -87,15 +91,31 @@ def _parts(
     return np.repeat(np.arange(problem.n_parts, dtype=PART), np.diff(bounded))
 
 
-def _nested_cuts(problem: Problem, line: Line, sizes: tuple[int, ...]) -> Int64Array:
-    """Divide the line level by level; return the cuts of the smallest parts, (n_parts + 1,)."""
+def _one_item_a_part(
+    problem: Problem, n_items: int, limited: Int64Array | None
+) -> tuple[Problem, Int64Array]:
+    """Let no part take two items where some must stay empty: by a limit that two items break.
+
+    With U the sum of the limited weight and 1, an item counts U more and a part may hold U more.
+    """
     n_cells = int(problem.comm.allreduce(np.array([len(problem.centers)], np.int64))[0])
-    some_for_each = line.n_items >= problem.n_parts
-    if not some_for_each and n_cells >= problem.n_parts:
+    if n_cells >= problem.n_parts:
         raise PartitionError(
-            f"groups leave {line.n_items} items for {problem.n_parts} parts; "
+            f"groups leave fewer items than the {problem.n_parts} parts; "
             "ask for fewer parts or smaller groups"
         )
+    own = np.zeros(n_items, np.int64) if limited is None else limited
+    count = int(problem.comm.allreduce(own.sum(keepdims=True))[0]) + 1
+    limit = np.zeros(problem.n_parts, np.int64)
+    if limited is not None and problem.part_limit is not None:
+        limit = np.minimum(problem.part_limit, count - 1)
+    # not the cells' own weights any more: only _nested_cuts sees this problem
+    return replace(problem, limit_weight=own + count, part_limit=limit + count), own + count
+
+
+def _nested_cuts(problem: Problem, line: Line, sizes: tuple[int, ...]) -> Int64Array:
+    """Divide the line level by level; return the cuts of the smallest parts, (n_parts + 1,)."""
+    some_for_each = line.n_items >= problem.n_parts
     cut = np.array([0, line.n_items], np.int64)
     n_chunks = 1
     for size in sizes:

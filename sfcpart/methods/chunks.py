@@ -324,20 +324,19 @@ class _Task:
             found = line.comm.allreduce(found)
             found[aim >= self.weight] = self.end
         rest = self.least * np.arange(n_parts + 1)
-        return np.clip(found, self.begin + rest, self.end - rest[::-1]).astype(np.int64)
+        clipped: Int64Array = np.clip(found, self.begin + rest, self.end - rest[::-1])
+        return clipped.astype(np.int64)
 
     def _refuse(self) -> None:
         """Raise the error for limits that cannot be kept, saying what would be needed."""
         n_items, n_parts = self.end - self.begin, len(self.speed)
         if n_items < self.least * n_parts:
             raise PartitionError(
-                f"{n_items} items cannot give {n_parts} parts {self.least} each; ask for fewer parts"
+                f"{n_items} items cannot give {n_parts} parts {self.least} each; ask for fewer"
             )
         swap = Line(self.line.comm, self.line.offset, self.line.limit, np.empty(0, np.int64))
         positive = np.maximum(self.limit, 1).astype(np.float64)
-        factor = _Task.of(
-            swap, self.begin, self.end, positive, None, self.least
-        ).least_bottleneck()
+        factor = _Task.of(swap, self.begin, self.end, positive, None, self.least).least_bottleneck()
         held = int(self.edge_sums[1, 1] - self.edge_sums[0, 1])
         raise PartitionError(
             f"the limits cannot be kept by contiguous parts: the cells need {held} in all, the "

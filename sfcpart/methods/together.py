@@ -10,6 +10,7 @@ Cost: a sort of the group numbers on each stretch and two exchanges of one row a
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
@@ -120,7 +121,7 @@ class _Here:
         count = np.bincount(self.number % self.comm.size, minlength=self.comm.size)
         edge = np.concatenate(([0], np.cumsum(count)))
         table = np.column_stack([self.number, rows.reshape(len(self.number), len(combine))])
-        sent = [table[a:b] for a, b in zip(edge[:-1], edge[1:], strict=True)]
+        sent = [table[a:b] for a, b in pairwise(edge)]
         came = self.comm.alltoall(sent)
         everything = np.concatenate(came)
         number, inverse = np.unique(everything[:, 0], return_inverse=True)

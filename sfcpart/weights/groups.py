@@ -132,7 +132,7 @@ def join_groups(*groups: Int64Array) -> Int64Array:
 
 
 def _united(links: Int64Array, n_cells: int) -> Int64Array:
-    """Number connected cells by the lowest of them; the rest are free."""
+    """Name connected cells by the lowest of them; the rest are free."""
     from scipy.sparse import coo_array
     from scipy.sparse.csgraph import connected_components
 
@@ -187,7 +187,8 @@ def groups_from_boundaries(
         )
     center = [_element_centers(mesh, group) for group in pair]
     center[1] = center[1] - (center[1].mean(axis=0) - center[0].mean(axis=0))
-    distance, partner = cKDTree(center[1]).query(center[0])
+    found = cKDTree(center[1]).query(center[0])
+    distance, partner = np.asarray(found[0]), np.asarray(found[1])
     within = tolerance * float(np.linalg.norm(np.ptp(center[0], axis=0)))
     twice = np.bincount(partner, minlength=sizes[1]).max() > 1
     worst = int(np.argmax(distance))
