@@ -43,7 +43,6 @@ __all__ = [
 
 ID_LIMIT = 1 << 30
 _LOW = 0xFFFFFFFF
-_FEW = 48
 
 
 @jit
@@ -110,7 +109,7 @@ def list_faces(
             if n_faces == 0:
                 n_faces = slot_start[cell + 1] - s
             for f in range(n_faces):
-                n = 0
+                n = np.int64(0)
                 row_of_large = np.int64(0)
                 if k == 42:
                     row_of_large = cells.poly_cell_indices[cells.poly_cell_indptr[cell] + f]
@@ -235,11 +234,8 @@ def match_faces(
                 key[i] = face[s, 0] << 32 | face[s, 1] >> 32
                 d = (face[s, 1] & _LOW) >> 2
                 tail[i] = s if face[s, 1] & 3 == 3 else d << 32 | s
-            if n <= _FEW:
-                _insertion_sort(key, tail, n)
-            else:
-                _heap_sort(key, tail, n)
-            i = 0
+            _sort(key, tail, n)
+            i = np.int64(0)  # a bare 0 would compile callees twice
             while i < n:
                 s = tail[i] & _LOW
                 size = _face_size(points, large_indptr, large_indices, face[s, 0], face[s, 1])
@@ -253,45 +249,20 @@ def match_faces(
 
 
 @jit
-def _insertion_sort(key: Int64Array, tail: Int64Array, n: int) -> None:
-    """Sort a few pairs."""
-    for i in range(1, n):
-        x, y = key[i], tail[i]
-        j = i
-        while j > 0 and (key[j - 1] > x or (key[j - 1] == x and tail[j - 1] > y)):
-            key[j] = key[j - 1]
-            tail[j] = tail[j - 1]
-            j -= 1
-        key[j] = x
-        tail[j] = y
-
-
-@jit
-def _heap_sort(key: Int64Array, tail: Int64Array, n: int) -> None:
-    """Sort pairs in O(n log n): a point may have very many faces."""
-    begin, end = n // 2, n
-    while end > 1:
-        if begin > 0:
-            begin -= 1
-            x, y = key[begin], tail[begin]
-        else:
-            end -= 1
-            x, y = key[end], tail[end]
-            key[end], tail[end] = key[0], tail[0]
-        hole = begin
-        child = 2 * hole + 1
-        while child < end:
-            if child + 1 < end and (
-                key[child + 1] > key[child]
-                or (key[child + 1] == key[child] and tail[child + 1] > tail[child])
-            ):
-                child += 1
-            if key[child] < x or (key[child] == x and tail[child] <= y):
-                break
-            key[hole], tail[hole] = key[child], tail[child]
-            hole = child
-            child = 2 * hole + 1
-        key[hole], tail[hole] = x, y
+def _sort(key: Int64Array, tail: Int64Array, n: int) -> None:
+    """Sort pairs: by insertion, with Shell's widening gaps where a point has very many faces."""
+    gap = 1
+    while 27 * gap < n:
+        gap = 3 * gap + 1
+    while gap > 0:
+        for i in range(gap, n):
+            x, y = key[i], tail[i]
+            j = i
+            while j >= gap and (key[j - gap] > x or (key[j - gap] == x and tail[j - gap] > y)):
+                key[j], tail[j] = key[j - gap], tail[j - gap]
+                j -= gap
+            key[j], tail[j] = x, y
+        gap //= 3
 
 
 @jit

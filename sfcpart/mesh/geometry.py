@@ -13,7 +13,7 @@ import numpy as np
 from sfcpart.dtypes import COORDINATE, FloatArray
 from sfcpart.kernels.threads import run_ranges
 from sfcpart.mesh.build import most_corners
-from sfcpart.mesh.kinds import MAX_FACES
+from sfcpart.mesh.kinds import POLYHEDRON
 
 if TYPE_CHECKING:
     from sfcpart.mesh.mesh import Mesh
@@ -48,20 +48,17 @@ def centers_and_signed_measures(mesh: Mesh) -> tuple[FloatArray, FloatArray]:
     >>> centers.tolist(), measures.tolist()
     ([[1.0, 1.0]], [-4.5])
     """
-    from sfcpart.kernels.cells import PLANE, SOLID, SURFACE, cell_geometry
+    from sfcpart.kernels.cells import ring_geometry, solid_geometry
 
     assert mesh.points is not None
-    mode = SOLID if mesh.dim == 3 else PLANE if mesh.space_dim == 2 else SURFACE
     centers = np.empty((mesh.n_cells, mesh.space_dim), COORDINATE)
     measures = np.empty(mesh.n_cells, COORDINATE)
-    run_ranges(
-        cell_geometry,
-        mesh.n_cells,
-        mode,
-        mesh.points,
-        mesh.cell_arrays(),
-        max(most_corners(mesh), MAX_FACES),
-        centers,
-        measures,
-    )
+    kernel = solid_geometry if mesh.dim == 3 else ring_geometry
+    shape = (mesh.points, mesh.cell_arrays(), most_corners(mesh), centers, measures)
+    run_ranges(kernel, mesh.n_cells, *shape)
+    if mesh.polyhedra is not None:
+        from sfcpart.kernels.polyhedra import polyhedron_geometry
+
+        chosen = np.flatnonzero(mesh.kind == POLYHEDRON)
+        run_ranges(polyhedron_geometry, len(chosen), chosen, *shape, smallest=1024)
     return centers, measures
