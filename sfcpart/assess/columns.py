@@ -9,7 +9,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Literal
 
-__all__ = ["PART_COLUMNS", "TOTAL_COLUMNS", "Column"]
+__all__ = ["PART_COLUMNS", "TOTAL_COLUMNS", "Column", "markdown_table"]
 
 
 @dataclass(frozen=True)
@@ -256,3 +256,22 @@ TOTAL_COLUMNS: tuple[Column, ...] = (
     ),
 )
 """Figures of the whole partition, in table order."""
+
+
+def markdown_table(columns: tuple[Column, ...]) -> str:
+    """Return the columns as a Markdown table, for the documentation.
+
+    Examples
+    --------
+    >>> print(markdown_table(PART_COLUMNS[1:2]))
+    | key | unit | better | needs faces | meaning |
+    |---|---|---|---|---|
+    | `cells` | cells |  |  | Cells the part owns. |
+    """
+    lines = ["| key | unit | better | needs faces | meaning |", "|---|---|---|---|---|"]
+    lines += [
+        f"| `{column.name}` | {column.unit} | {column.better} | "
+        f"{'yes' if column.needs_faces else ''} | {column.meaning} |"
+        for column in columns
+    ]
+    return "\n".join(lines)

@@ -229,13 +229,6 @@ def test_whole_columns_hold_whole_numbers():
             assert isinstance(value, int) == column.is_whole, column.name
 
 
-def test_names_are_said_once():
-    for columns in (PART_COLUMNS, TOTAL_COLUMNS):
-        names = [column.name for column in columns]
-        assert len(set(names)) == len(names)
-        assert all(column.meaning.endswith(".") or ":" in column.meaning for column in columns)
-
-
 @pytest.mark.parametrize("sides", [(6, 5), (3, 4, 3)])
 @pytest.mark.parametrize("n_parts", [1, 2, 5, 30])
 def test_agrees_with_the_twin_by_sets(sides, n_parts):

@@ -1,0 +1,66 @@
+"""Write docs/figures.md, the table of every figure of an assessment, from `sfcpart.assess.columns`.
+
+python tools/make_figures_page.py > docs/figures.md
+"""
+
+from __future__ import annotations
+
+from sfcpart.assess import LEAVES_OUT, NETWORKS, PART_COLUMNS, TOTAL_COLUMNS, StepModel
+from sfcpart.assess.columns import markdown_table
+
+HEAD = """# The figures of a partition
+
+`sfcpart assess`, `parts.csv`, `summary.json` and `Assessment` use the same keys. They are stable:
+a key may be added, none is renamed or removed. A figure that cannot be known is empty in CSV and
+null in JSON. A partition changes the order in which a solver sums its cells; none of these figures
+says whether a simulation is right.
+
+This page is made by `tools/make_figures_page.py` from `sfcpart/assess/columns.py`."""
+
+BOUNDS = """## Lower bounds
+
+Bounds hold for splits into parts of the same sizes. Uniform lattices of squares or cubes: least
+perimeter of n squares (Harary and Harborth 1976, OEIS A027709), least surface of n cubes (Alonso
+and Cerf 1996, OEIS A193416), on full boxes also lines that a part must cut (squares), Bollobas and
+Leader 1991 and the bisection width (cubes). Planar and solid meshes with points: the disc or ball
+of each part's measure (isoperimetric inequality; faces are taken to be plane). Curved surfaces and
+meshes given by their faces have none, for faces alone do not show whether some of them join
+opposite ends."""
+
+
+def page() -> str:
+    """Return the page."""
+    default = StepModel()
+    networks = [
+        "| network | latency, s | bandwidth, bytes/s | source |",
+        "|---|---|---|---|",
+        *(
+            f"| `{n.name}` | {n.latency:g} | {n.bandwidth:g} | {n.source} |"
+            for n in NETWORKS.values()
+        ),
+    ]
+    model = f"""## The predicted step
+
+Time of a part = work / speed + exchanges * (sum over its neighbours of latency + bytes /
+bandwidth), bytes = the larger of cells sent and received, times the bytes of one halo cell. The
+step takes as long as the slowest part. Defaults: network `{default.network.name}`,
+{default.cell_seconds:g} s a cell, {default.bytes_per_halo_cell:g} bytes a halo cell,
+{default.exchanges:g} exchanges a step (common practice, no source).
+
+{chr(10).join(networks)}
+
+Left out: {"; ".join(LEAVES_OUT)}."""
+    parts = [
+        HEAD,
+        "## Of each part",
+        markdown_table(PART_COLUMNS),
+        "## In total",
+        markdown_table(TOTAL_COLUMNS),
+        BOUNDS,
+        model,
+    ]
+    return "\n\n".join(parts)
+
+
+if __name__ == "__main__":
+    print(page())
