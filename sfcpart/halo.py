@@ -279,12 +279,12 @@ def _cells_of_points(
     indptr: Int64Array, indices: IntArray, n_points: int
 ) -> tuple[Int64Array, IntArray]:
     """Turn "points of each cell" into "cells of each point"."""
-    from scipy.sparse import csr_array
+    from sfcpart.kernels.halo import rows_of_columns
 
-    n_cells = len(indptr) - 1
-    ones = np.ones(len(indices), np.int8)
-    cells_of = csr_array((ones, indices, indptr), shape=(n_cells, n_points)).tocsc()
-    return cells_of.indptr.astype(OFFSET), cells_of.indices
+    point_indptr = np.zeros(n_points + 1, OFFSET)
+    point_cell = np.empty(len(indices), index_dtype(len(indptr) - 1))
+    rows_of_columns(indptr, indices, point_indptr, point_cell)
+    return point_indptr, point_cell
 
 
 def _no_lists(n_rows: int) -> _Lists:

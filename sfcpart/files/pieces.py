@@ -50,7 +50,8 @@ BLOCK_CELLS = 1 << 20
 GHOST = 1
 """`vtkGhostType` of a cell that another part owns (bit 1: duplicate cell)."""
 VERTEX, POLYHEDRON = 1, 42
-_Relation = tuple[Int64Array, IntArray]
+_STRIDE = 1 << 20
+_Lists = tuple[Int64Array, IntArray]
 
 
 @dataclass(frozen=True, eq=False)
@@ -103,6 +104,34 @@ class Renumbered:
     offsets: IntArray
     used_indptr: Int64Array
     used: IntArray
+
+
+@dataclass(frozen=True, eq=False)
+class _Relation:
+    """Rows of items in CSR form, with the row width if all rows are equally long, else -1."""
+
+    indptr: Int64Array
+    indices: IntArray
+    n_items: int
+    width: int
+
+    @classmethod
+    def of(cls, indptr: Int64Array, indices: IntArray, n_items: int) -> _Relation:
+        """Find the width, a stretch of rows at a time."""
+        n_rows = len(indptr) - 1
+        width = int(indptr[1]) if n_rows else 0
+        stretches = (indptr[at : at + _STRIDE + 1] for at in range(0, n_rows, _STRIDE))
+        if not all(bool(np.all(np.diff(rows) == width)) for rows in stretches):
+            width = -1
+        return cls(indptr, indices, n_items, width)
+
+    def entries_before(self, row_indptr: Int64Array, rows: IntArray) -> Int64Array:
+        """Return how many entries the rows of all earlier parts have, (k + 1,)."""
+        if self.width >= 0:
+            return row_indptr * self.width
+        before = np.zeros(len(rows) + 1, OFFSET)
+        np.cumsum(self.indptr[rows + 1] - self.indptr[rows], out=before[1:])
+        return before[row_indptr]
 
 
 @dataclass(frozen=True, eq=False)
@@ -192,15 +221,27 @@ def blocks(drawing: Drawing, halo: Halo, *, block_cells: int = BLOCK_CELLS) -> I
         A block stops before the part that would take it above this many cells.
     """
     end = halo.owned_indptr + halo.halo_indptr
+    relations = _relations(drawing)
     first = 0
     while first < halo.n_parts:
         fits = int(np.searchsorted(end, end[first] + block_cells, side="right")) - 1
         last = max(first + 1, min(fits, halo.n_parts))
-        yield _block(drawing, halo, first, last)
+        yield _block(relations, halo, first, last)
         first = last
 
 
-def _block(drawing: Drawing, halo: Halo, first: int, last: int) -> Block:
+def _relations(drawing: Drawing) -> list[_Relation]:
+    """Return cells to points and, of polyhedra, cells to faces and faces to points."""
+    n_points, solid = len(drawing.points), drawing.polyhedra
+    relations = [_Relation.of(drawing.indptr, drawing.indices, n_points)]
+    if solid is not None:
+        n_faces = len(solid.face_indptr) - 1
+        relations.append(_Relation.of(solid.cell_indptr, solid.cell_indices, n_faces))
+        relations.append(_Relation.of(solid.face_indptr, solid.face_indices, n_points))
+    return relations
+
+
+def _block(relations: list[_Relation], halo: Halo, first: int, last: int) -> Block:
     """Build the local meshes of parts `first` to `last - 1`."""
     parts = range(first, last)
     lists = [rows for part in parts for rows in (halo.owned_cells(part), halo.halo_cells(part))]
@@ -209,59 +250,36 @@ def _block(drawing: Drawing, halo: Halo, first: int, last: int) -> Block:
     ghost = np.repeat(flags, [len(rows) for rows in lists])
     end = (halo.owned_indptr + halo.halo_indptr)[first : last + 1]
     cell_indptr = end - end[0]
-    points = _renumber(
-        cell_indptr, cells, (drawing.indptr, drawing.indices), len(drawing.points), None
-    )
+    points = _renumber(cell_indptr, cells, relations[0], None)
     faces = face_points = None
-    solid = drawing.polyhedra
-    if solid is not None:
-        n_faces = len(solid.face_indptr) - 1
-        relation = (solid.cell_indptr, solid.cell_indices)
-        faces = _renumber(cell_indptr, cells, relation, n_faces, None)
-        relation = (solid.face_indptr, solid.face_indices)
+    if len(relations) > 1:
+        faces = _renumber(cell_indptr, cells, relations[1], None)
         seed = (points.used_indptr, points.used)
-        face_points = _renumber(faces.used_indptr, faces.used, relation, len(drawing.points), seed)
+        face_points = _renumber(faces.used_indptr, faces.used, relations[2], seed)
     return Block(first, cell_indptr, cells, ghost, points, faces, face_points)
 
 
 def _renumber(
-    row_indptr: Int64Array,
-    rows: IntArray,
-    relation: _Relation,
-    n_items: int,
-    seed: _Relation | None,
+    row_indptr: Int64Array, rows: IntArray, relation: _Relation, seed: _Lists | None
 ) -> Renumbered:
     """Give the items of some rows numbers within each part."""
     from sfcpart.kernels.pieces import number_locally
 
-    indptr, indices = relation
     n_parts = len(row_indptr) - 1
     if seed is None:
-        seed = np.zeros(n_parts + 1, OFFSET), np.empty(0, indices.dtype)
-    entry_indptr = _entries_before(row_indptr, rows, indptr)
+        seed = np.zeros(n_parts + 1, OFFSET), np.empty(0, relation.indices.dtype)
+    entry_indptr = relation.entries_before(row_indptr, rows)
     n_entries = int(entry_indptr[-1])
     dtype = index_dtype(n_entries + len(seed[1]))
-    entries = np.empty(n_entries, dtype)
-    offsets = np.empty(len(rows) + n_parts, dtype)
-    used, used_count = np.empty(n_entries, indices.dtype), np.zeros(n_parts, OFFSET)
+    entries, offsets = np.empty(n_entries, dtype), np.empty(len(rows) + n_parts, dtype)
+    used, used_count = np.empty(n_entries, relation.indices.dtype), np.zeros(n_parts, OFFSET)
     into = (entry_indptr, entries, offsets, used, used_count)
-    relation_of = (row_indptr, rows, indptr, indices, n_items)
-    run_ranges(number_locally, n_parts, *relation_of, *seed, *into, smallest=1)
-    used_indptr = _summed(used_count)
+    of = (row_indptr, rows, relation.indptr, relation.indices, relation.n_items)
+    run_ranges(number_locally, n_parts, *of, *seed, *into, smallest=1)
+    used_indptr = np.concatenate([[0], np.cumsum(used_count)]).astype(OFFSET)
     return Renumbered(
         entry_indptr, entries, offsets, used_indptr, _compact(used, entry_indptr, used_count)
     )
-
-
-def _entries_before(row_indptr: Int64Array, rows: IntArray, indptr: Int64Array) -> Int64Array:
-    """Return how many entries the rows of all earlier parts have, (k + 1,)."""
-    n_rows = len(indptr) - 1
-    width = int(indptr[1]) if n_rows else 0
-    if indptr[-1] == n_rows * width and np.all(np.diff(indptr) == width):
-        return row_indptr * width
-    before = np.zeros(len(rows) + 1, OFFSET)
-    np.cumsum(indptr[rows + 1] - indptr[rows], out=before[1:])
-    return before[row_indptr]
 
 
 def _compact(used: IntArray, entry_indptr: Int64Array, count: Int64Array) -> IntArray:
@@ -269,10 +287,3 @@ def _compact(used: IntArray, entry_indptr: Int64Array, count: Int64Array) -> Int
     return np.concatenate(
         [used[start : start + n] for start, n in zip(entry_indptr[:-1], count, strict=True)]
     )
-
-
-def _summed(count: Int64Array) -> Int64Array:
-    """Turn counts into an indptr."""
-    indptr = np.zeros(len(count) + 1, OFFSET)
-    np.cumsum(count, out=indptr[1:])
-    return indptr

@@ -14,7 +14,7 @@ import numpy as np
 from sfcpart.dtypes import Int32Array, Int64Array, IntArray
 from sfcpart.kernels._jit import jit
 
-__all__ = ["group_rows", "reach", "sort_pairs"]
+__all__ = ["group_rows", "reach", "rows_of_columns", "sort_pairs"]
 
 
 @jit
@@ -89,6 +89,24 @@ def group_rows(order: IntArray, label: Int32Array, indptr: Int64Array, grouped: 
         slot = cursor[label[row]]
         grouped[slot] = row
         cursor[label[row]] = slot + 1
+
+
+@jit
+def rows_of_columns(
+    indptr: Int64Array, indices: IntArray, to_indptr: Int64Array, to_rows: IntArray
+) -> None:
+    """Transpose a CSR relation; `to_indptr` (n_columns + 1) comes in zero."""
+    for column in indices:
+        to_indptr[column + 1] += 1
+    n_columns = len(to_indptr) - 1
+    for column in range(n_columns):
+        to_indptr[column + 1] += to_indptr[column]
+    cursor = to_indptr[:n_columns].copy()
+    for row in range(len(indptr) - 1):
+        for e in range(indptr[row], indptr[row + 1]):
+            slot = cursor[indices[e]]
+            to_rows[slot] = row
+            cursor[indices[e]] = slot + 1
 
 
 @jit
