@@ -58,9 +58,9 @@ def print_table(heads: list[str], rows: list[list[str]], *, title: str = "") -> 
     """Print a table of numbers, aligned to the right but for its first column."""
     from rich.table import Table
 
-    table = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0), header_style="bold")
+    table = Table(box=None, pad_edge=False, padding=(0, 1, 0, 0), header_style="bold")
     for k, head in enumerate(heads):
-        table.add_column(head, justify="right" if k else "left", overflow="fold")
+        table.add_column(head, justify="right" if k else "left", no_wrap=True)
     for row in rows:
         table.add_row(*map(_plain, row))
     _print(title, table)

@@ -16,14 +16,14 @@ _PART_HEADS = {
     "part": "part",
     "cells": "cells",
     "load": "load",
-    "load_unweighted": "(cells)",
+    "load_unweighted": "by cells",
+    "limit_share": "limit",
     "cut_faces": "cut",
     "halo_cells": "halo",
-    "neighbours": "neighb.",
+    "neighbours": "meets",
     "smallest_interface": "least",
     "pieces": "pieces",
-    "surface_ratio": "surf.",
-    "stretch": "stretch",
+    "surface_ratio": "surface",
     "step_seconds": "step",
 }
 
@@ -72,6 +72,8 @@ def print_assessment(assessment: Assessment) -> None:
     rows = list(assessment.rows())
     shown = rows if len(rows) <= MOST_PARTS else _slowest(rows)
     heads = {k: head for k, head in _PART_HEADS.items() if any(r[k] is not None for r in rows)}
+    if all(row["load"] == row["load_unweighted"] for row in rows):
+        del heads["load_unweighted"]
     title = "" if shown is rows else f"the {len(shown)} slowest of {len(rows):,} parts"
     print_table(
         list(heads.values()), [[_cell(row, k) for k in heads] for row in shown], title=title
@@ -80,7 +82,7 @@ def print_assessment(assessment: Assessment) -> None:
 
 def _cell(row: dict[str, Any], name: str) -> str:
     """Write one figure of one part."""
-    if name in ("load", "load_unweighted"):
+    if name in ("load", "load_unweighted", "limit_share"):
         return "-" if row[name] is None else f"{row[name]:.3f}"
     return seconds(row[name]) if name == "step_seconds" else number(row[name])
 

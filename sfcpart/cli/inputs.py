@@ -77,7 +77,7 @@ def read_pairs(path: str | None) -> IntArray | None:
         return None
     try:
         if path.endswith(".npy"):
-            pairs = np.load(path, allow_pickle=False)
+            pairs: Array = np.load(path, allow_pickle=False)
         else:
             pairs = np.loadtxt(path, dtype=np.int64, ndmin=2, delimiter=_delimiter(path))
     except OSError as error:

@@ -11,8 +11,13 @@ import click
 if TYPE_CHECKING:
     from sfcpart.assess.step_model import StepModel
 
+    ParamType = click.ParamType[Any]
+else:
+    ParamType = click.ParamType  # generic only since click 8.2
+
 __all__ = [
     "LEVELS",
+    "LIMIT",
     "PAIR",
     "SPEEDS",
     "Names",
@@ -27,7 +32,19 @@ __all__ = [
 Function = TypeVar("Function", bound=Callable[..., Any])
 
 
-class Levels(click.ParamType):
+def _numbers(text: str) -> list[float]:
+    """Read 3,2*1.5 as 3, 1.5, 1.5; return nothing if it is no list of numbers."""
+    numbers: list[float] = []
+    for piece in text.split(","):
+        count, star, number = piece.rpartition("*")
+        try:
+            numbers += [float(number)] * (int(count) if star else 1)
+        except ValueError:
+            return []
+    return numbers
+
+
+class Levels(ParamType):
     """Numbers joined by x, such as 4x16."""
 
     name = "levels"
@@ -42,7 +59,7 @@ class Levels(click.ParamType):
         return tuple(int(piece) for piece in pieces)
 
 
-class Speeds(click.ParamType):
+class Speeds(ParamType):
     """Speeds in turn with how many parts have each: 48*1.0,16*0.5; or a file of numbers."""
 
     name = "speeds"
@@ -51,21 +68,30 @@ class Speeds(click.ParamType):
         """Return a list of speeds, or the path of a file."""
         if isinstance(value, list) or os.path.exists(value):  # noqa: PTH110 - no Path at start
             return value
-        speeds: list[float] = []
-        for piece in str(value).split(","):
-            count, star, speed = piece.rpartition("*")
-            try:
-                speeds += [float(speed)] * (int(count) if star else 1)
-            except ValueError:
-                self.fail(
-                    f"{value!r} is no file and no list of speeds; wanted such as 48*1,16*0.5",
-                    param,
-                    ctx,
-                )
+        speeds = _numbers(str(value))
+        if not speeds:
+            wanted = "wanted such as 48*1,16*0.5"
+            self.fail(f"{value!r} is no file and no list of speeds; {wanted}", param, ctx)
         return speeds
 
 
-class Pair(click.ParamType):
+class Limit(ParamType):
+    """A specification of weights and the most of it a part may hold: memory:300, 1:5000."""
+
+    name = "limit"
+
+    def convert(self, value: Any, param: Any, ctx: Any) -> tuple[str, list[float] | float]:
+        """Split at the last colon; several numbers are one for each part."""
+        if isinstance(value, tuple):
+            return value
+        spec, _, most = str(value).rpartition(":")
+        numbers = _numbers(most)
+        if not spec or not numbers:
+            self.fail(f"{value!r} is no limit; wanted such as memory:300 or 1:5000", param, ctx)
+        return spec, numbers if len(numbers) > 1 else numbers[0]
+
+
+class Pair(ParamType):
     """Two names or a name and a number, joined by a colon."""
 
     name = "pair"
@@ -80,7 +106,7 @@ class Pair(click.ParamType):
         return first, second
 
 
-class Names(click.ParamType):
+class Names(ParamType):
     """One of a table that is loaded only when a value is checked or completed."""
 
     def __init__(self, name: str, load: Callable[[], list[str]]) -> None:
@@ -101,7 +127,7 @@ class Names(click.ParamType):
         return [CompletionItem(name) for name in self.load() if name.startswith(incomplete)]
 
 
-LEVELS, SPEEDS, PAIR = Levels(), Speeds(), Pair()
+LEVELS, SPEEDS, LIMIT, PAIR = Levels(), Speeds(), Limit(), Pair()
 
 
 def _networks() -> list[str]:
@@ -134,7 +160,9 @@ def weight_option(function: Function) -> Function:
         "weights",
         multiple=True,
         metavar="SPEC",
-        help="Work of each cell: a cell field, or one of the forms below. Several multiply.",
+        help="Work of each cell; several multiply. A cell field (work), a table by kind of cell "
+        "(tetra=1,other=2) or by region (zone:1=1,2=4,other=1), a mix of cells and faces "
+        "(cell=1,face=0.25), products (work*tetra=1,other=2).",
     )(function)
 
 

@@ -8,6 +8,7 @@ import click
 
 from sfcpart.cli.options import (
     LEVELS,
+    LIMIT,
     PAIR,
     SPEEDS,
     Names,
@@ -85,9 +86,10 @@ def _methods() -> list[str]:
 )
 @click.option(
     "--limit",
-    type=PAIR,
-    metavar="FIELD:MOST",
-    help="A second weight of each cell (memory) and the most of it that a part may hold.",
+    type=LIMIT,
+    metavar="SPEC:MOST",
+    help="A second weight of each cell, spelled like --weight, and the most of it that a part may "
+    "hold: memory:300, or 1:5000 for cells. One number, or one for each part.",
 )
 @click.option(
     "--levels", type=LEVELS, metavar="AxB", help="Nested parts, such as 4x16: nodes, then cores."

@@ -109,12 +109,14 @@ def section_area(n_along: int, *, n_layers: int = 6, n_up: int = 0, pier: bool =
 
 
 def channel_water(n_along: int, n_up: int, *, n_across: int, width: float = 12.0) -> Shape:
-    """Return the section swept across the channel: hexahedra at the bed, wedges above.
+    """Return the section swept across the channel (z is up): hexahedra at the bed, wedges above.
 
     Fields and boundary groups are those of `channel_section`.
     """
     flat = channel_section(n_along, n_up)
-    return extrude(flat, np.linspace(0.0, width, n_across + 1))
+    swept = extrude(flat, np.linspace(0.0, width, n_across + 1))
+    along, up, across = swept.points.T
+    return replace(swept, points=np.stack([along, width - across, up], axis=1))
 
 
 def channel_mixed(counts: tuple[int, int], *, rows: tuple[int, int, int] = (1, 2, 2)) -> Shape:

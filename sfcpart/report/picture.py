@@ -56,7 +56,7 @@ def draw_split(
         Of the mesh: which parts touch, and where parts of a 3-D mesh end. Without it (bare
         centres) colours may repeat among parts that touch.
     title : str
-        First line, such as the name of the mesh.
+        First line, such as the name of the mesh; the number of parts by default.
     figures : mapping, optional
         `Assessment.total`: its imbalance, cut and halo are written below the picture.
     width : int
@@ -87,6 +87,7 @@ def draw_split(
     ]
     labels = _labels(mesh, partition) if mesh.space_dim == 2 else {}
     caption = _caption(partition, figures)
+    title = title or f"{partition.n_parts:,} parts"
     _write(Path(path), panels, labels=labels, title=title, caption=caption, width=width)
 
 

@@ -8,6 +8,7 @@ from matplotlib.image import imread
 
 from sfcpart.errors import FileError, InputError
 from sfcpart.graph import cell_graph
+from sfcpart.kernels._jit import COMPILED
 from sfcpart.mesh.channel import channel_mixed, channel_section, pier_shell
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.mesh.refined import refined_box
@@ -16,6 +17,13 @@ from sfcpart.partition import Partition
 from sfcpart.report.picture import draw_split
 
 WIDTH = 300
+
+
+@pytest.fixture(autouse=True)
+def _coarser_without_compiler(monkeypatch):
+    """Plain Python visits every pixel by itself: give it fewer of them."""
+    if not COMPILED:
+        monkeypatch.setattr("sfcpart.report.picture.FINE", 1)
 
 
 def _strips(mesh: Mesh, n_parts: int) -> Partition:
@@ -48,7 +56,7 @@ def test_every_sort_of_mesh_is_drawn(make, tmp_path):
 
 @pytest.mark.parametrize("dim", [2, 3])
 def test_bare_centres_are_drawn_without_a_graph(dim, tmp_path):
-    mesh = Mesh.from_centers(np.random.default_rng(1).random((200, dim)))
+    mesh = Mesh.from_centers(np.random.default_rng(1).random((60, dim)))
     draw_split(tmp_path / "a.png", mesh, partition=_strips(mesh, 4), width=WIDTH)
     assert imread(tmp_path / "a.png").shape[1] == WIDTH
 

@@ -1,0 +1,130 @@
+"""The work behind `sfcpart split`, stage by stage, and what it tells at the end."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+from sfcpart import api
+from sfcpart.cli.console import Stages, print_json
+from sfcpart.cli.figures import headline, print_assessment
+from sfcpart.cli.inputs import read_pairs, read_speeds
+
+if TYPE_CHECKING:
+    from sfcpart.assess.assessment import Assessment
+    from sfcpart.assess.step_model import StepModel
+    from sfcpart.mesh.mesh import Mesh
+    from sfcpart.partition import Partition
+
+__all__ = ["SplitJob"]
+
+
+class SplitJob:
+    """One run: read, split, measure, write."""
+
+    mesh: Mesh
+    partition: Partition
+    assessment: Assessment
+
+    def __init__(self, options: dict[str, Any], *, step_model: StepModel, quiet: bool) -> None:
+        self.options = options
+        self.step_model = step_model
+        self.formats = options.pop("formats") or ("vtkhdf",)
+        self.source = options.pop("mesh")
+        self.doing = Stages(quiet=quiet)
+
+    def run(self) -> None:
+        """Do the work; an output folder that cannot be used is refused before it."""
+        given = self.options
+        if given["output"] is not None:
+            from sfcpart.files.folder import check_output_folder
+
+            check_output_folder(given["output"], overwrite=given["overwrite"])
+        with self.doing(f"reading {self.source}"):
+            self.mesh = self._read()
+        with self.doing(f"splitting {self.mesh.n_cells:,} cells"):
+            self._split()
+        if given["output"] is not None:
+            with self.doing(f"writing {given['output']}"):
+                self._write()
+
+    def _read(self) -> Mesh:
+        """Read the mesh, with near points merged if asked."""
+        mesh = api.read_mesh(self.source)
+        tolerance = self.options["merge_points"]
+        return mesh if tolerance is None else mesh.with_points_merged(tolerance)
+
+    def _split(self) -> None:
+        """Split and measure with the same weights, speeds and limits."""
+        given = self.options
+        n_parts = given["n_parts"]
+        second, most = given["limit"] or (None, None)
+        load: dict[str, Any] = {
+            "weights": list(given["weights"]) or None,
+            "speeds": read_speeds(given["speeds"], n_parts),
+            "limit_weights": second,
+            "limits": most,
+        }
+        self.partition = api.split(
+            self.mesh,
+            n_parts,
+            method=given["method"],
+            tolerance=given["tolerance"],
+            levels=given["levels"],
+            together=list(given["together"]) or None,
+            pairs=read_pairs(given["pairs"]),
+            periodic=given["periodic"],
+            seed=given["seed"],
+            **load,
+        )
+        self.assessment = api.assess(self.mesh, self.partition, step_model=self.step_model, **load)
+
+    def _write(self) -> None:
+        """Write the folder."""
+        given = self.options
+        api.write_split(
+            given["output"],
+            self.mesh,
+            self.partition,
+            assessment=self.assessment,
+            formats=self.formats,
+            layers=given["layers"],
+            across=given["across"],
+            overwrite=given["overwrite"],
+            picture=given["picture"],
+            source=self.source,
+            options=self._told_options(),
+        )
+
+    def _told_options(self) -> dict[str, Any]:
+        """Return the options as they go into the summary."""
+        left_out = ("output", "overwrite", "picture")
+        told = {k: v for k, v in self.options.items() if k not in left_out and v not in (None, ())}
+        return told | {"formats": list(self.formats)}
+
+    def report(self, *, as_json: bool, quiet: bool) -> None:
+        """Print the result: JSON, or a line, figures and where they are."""
+        output = self.options["output"]
+        if as_json:
+            about = {"mesh": self.source, "output": output, "options": self._told_options()}
+            print_json({**about, **self.assessment.to_json_dict()})
+            return
+        if quiet:
+            return
+        n_cells, n_parts = self.mesh.n_cells, self.partition.n_parts
+        print(
+            f"{self.source}: {n_cells:,} cells into {n_parts:,} parts by {self.options['method']}"
+        )
+        print(f"{headline(self.assessment)}\n")
+        print_assessment(self.assessment)
+        if output is not None:
+            print(f"\nwritten to {output}: {', '.join(self._files())}")
+
+    def _files(self) -> list[str]:
+        """Return the names of what was written, the list for overwriting left out."""
+        from pathlib import Path
+
+        folder = Path(self.options["output"])
+        names = sorted(entry.name for entry in folder.iterdir() if entry.name[0] != ".")
+        pieces = [name for name in names if name.endswith(".vtu") and name != "parts.vtu"]
+        shown = [name for name in names if name not in pieces]
+        return shown + ([f"{len(pieces)} pieces .vtu"] if pieces else [])
