@@ -10,7 +10,10 @@ readers of their own and do not come here.
 from __future__ import annotations
 
 import contextlib
+import ctypes
 import io
+import itertools
+import threading
 import warnings
 from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
@@ -21,14 +24,25 @@ import numpy as np
 from sfcpart.dtypes import KIND, OFFSET, Array, Int64Array, IntArray, index_dtype
 from sfcpart.errors import FileError, MeshError, SfcpartError
 from sfcpart.files.raw import RawMesh, narrow_ids
-from sfcpart.mesh.kinds import POLYHEDRON, kind_of
+from sfcpart.mesh.kinds import KINDS, POLYHEDRON, kind_of
 from sfcpart.mesh.mesh import Polyhedra
 
-__all__ = ["quiet_meshio", "raw_of_meshio", "read_with_meshio"]
+__all__ = [
+    "load_with_meshio",
+    "meshio_of_raw",
+    "quiet_meshio",
+    "raw_of_meshio",
+    "read_with_meshio",
+    "save_with_meshio",
+]
 
 # meshio keeps the base triangle of a wedge so that it points inward, VTK so that it points
 # outward (VTK file formats, linear cell types).
 _WEDGE = (0, 2, 1, 3, 5, 4)
+
+PATIENCE = 60.0
+"""Seconds a reader may take, beside a second for every 100 kB of the file."""
+_SLOWEST = 100_000  # bytes a second; the slowest text readers do about 10 MB/s
 
 
 def read_with_meshio(path: Path, formats: Sequence[str]) -> RawMesh:
@@ -50,7 +64,7 @@ def read_with_meshio(path: Path, formats: Sequence[str]) -> RawMesh:
     reasons = []
     for name in formats:
         try:
-            return raw_of_meshio(_read(path, name))
+            return raw_of_meshio(load_with_meshio(path, name))
         except FileError as error:
             reasons.append(f"as {name}: {error}")
         except MeshError as error:
@@ -58,15 +72,40 @@ def read_with_meshio(path: Path, formats: Sequence[str]) -> RawMesh:
     raise FileError(f"{path}: cannot be read {'; '.join(reasons)}")
 
 
-def _read(path: Path, name: str) -> Any:
-    """Let meshio read the file as one format; any failure is a FileError with its reason."""
-    with quiet_meshio() as chatter:
+def load_with_meshio(path: Path, name: str) -> Any:
+    """Return the meshio mesh of a file in one format.
+
+    Raises
+    ------
+    FileError
+        If meshio cannot read it; the message does not name the file.
+    """
+    limit = PATIENCE + path.stat().st_size / _SLOWEST
+    with quiet_meshio() as chatter, interrupted_after(limit):
         import meshio
 
         mesh = meshio.read(path, file_format=name)
     if "cannot handle" in chatter.getvalue():
         raise FileError(_reason(chatter.getvalue(), ""))
     return mesh
+
+
+def save_with_meshio(path: Path, mesh: Any, name: str) -> None:
+    """Write a meshio mesh in one format.
+
+    Raises
+    ------
+    FileError
+        If meshio cannot write it so.
+    """
+    options = {"data_format": "XML"} if name == "xdmf" else {}
+    try:
+        with quiet_meshio():
+            import meshio
+
+            meshio.write(path, mesh, file_format=name, **options)
+    except FileError as error:
+        raise FileError(f"{path}: cannot be written as {name}: {error}") from error
 
 
 @contextlib.contextmanager
@@ -88,8 +127,38 @@ def quiet_meshio() -> Iterator[io.StringIO]:
         raise FileError(
             "asks for more memory than there is; it is damaged, or too large for this machine"
         ) from error
+    except _OutOfTimeError as error:
+        raise FileError("reading it does not come to an end; it is damaged") from error
     except (Exception, SystemExit) as error:
         raise FileError(_reason(chatter.getvalue(), _told(error))) from error
+
+
+class _OutOfTimeError(Exception):
+    """Raised in a reader that does not come back."""
+
+
+@contextlib.contextmanager
+def interrupted_after(seconds: float) -> Iterator[None]:
+    """Raise `_OutOfTimeError` in the block if it runs longer (some readers loop at a file's end).
+
+    Works on Python code only, which is where these readers loop.
+    """
+    reader = threading.get_ident()
+    done = threading.Event()
+
+    def watch() -> None:
+        if not done.wait(seconds):
+            ctypes.pythonapi.PyThreadState_SetAsyncExc(
+                ctypes.c_ulong(reader), ctypes.py_object(_OutOfTimeError)
+            )
+
+    watcher = threading.Thread(target=watch, daemon=True, name="sfcpart-patience")
+    watcher.start()
+    try:
+        yield
+    finally:
+        done.set()
+        watcher.join()
 
 
 def _told(error: BaseException) -> str:
@@ -237,3 +306,27 @@ def _sets(cell_sets: Mapping[str, Any], first: Sequence[int]) -> dict[str, Int64
             ids.append(local[(local >= 0) & (local < stop - start)] + start)
         sets[name] = np.concatenate(ids)
     return sets
+
+
+def meshio_of_raw(raw: RawMesh) -> Any:
+    """Turn elements in file order into a meshio mesh: one block for each run of a kind and width.
+
+    Raises
+    ------
+    FileError
+        If there are polyhedra beside other cells, which meshio cannot write.
+    """
+    if raw.polyhedra is not None:
+        raise FileError("polyhedra cannot be written in this format; use vtkhdf")
+    with quiet_meshio():
+        import meshio
+    width = np.diff(raw.indptr)
+    new = np.flatnonzero((np.diff(raw.kind) != 0) | (np.diff(width) != 0)) + 1
+    cuts = [0, *new.tolist(), len(raw.kind)]
+    blocks = []
+    for start, stop in itertools.pairwise(cuts):
+        name = KINDS[int(raw.kind[start])].name
+        table = raw.indices[raw.indptr[start] : raw.indptr[stop]].reshape(stop - start, -1)
+        blocks.append((name, table[:, _WEDGE] if name == "wedge" else table))
+    fields = {name: np.split(values, cuts[1:-1]) for name, values in raw.cell_fields.items()}
+    return meshio.Mesh(raw.points, blocks, point_data=dict(raw.point_fields), cell_data=fields)
