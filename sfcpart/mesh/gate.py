@@ -137,11 +137,12 @@ def check_kinds(kind: ArrayLike, indptr: Int64Array) -> KindArray:
         )
     width = np.diff(indptr)
     wanted = tables.n_nodes[codes]
-    least = np.where(codes == POLYGON, 3, np.where(codes == POLYHEDRON, 4, tables.n_corners[codes]))
-    wrong = np.where(wanted > 0, width != wanted, width < least)
+    least = tables.n_corners.copy()
+    least[[POLYGON, POLYHEDRON]] = 3, 4
+    wrong = ((width != wanted) & (wanted > 0)) | (width < least[codes])
     if wrong.any():
         bad = int(np.flatnonzero(wrong)[0])
-        name, many = KINDS[int(codes[bad])].name, wanted[bad] or f"at least {least[bad]}"
+        name, many = KINDS[int(codes[bad])].name, wanted[bad] or f"at least {least[codes[bad]]}"
         raise MeshError(f"cell {bad} ({name}) has {width[bad]} points; wanted {many}")
     return frozen(codes)
 
@@ -192,10 +193,17 @@ def _ragged(kind: Kind, rows: Any) -> Block:
     if isinstance(rows, tuple) and len(rows) == 2 and all(np.ndim(part) == 1 for part in rows):
         flat = np.asarray(rows[1])
         n = len(rows[0]) - 1
-        return Block(kind, n, check_offsets(rows[0], n, len(flat), "polygons"), flat)
-    size = np.fromiter((len(row) for row in rows), OFFSET, count=len(rows))
-    flat = np.concatenate([np.asarray(row) for row in rows]) if len(rows) else np.empty(0, OFFSET)
-    return Block(kind, len(rows), np.concatenate([[0], np.cumsum(size)]), flat)
+        indptr = check_offsets(rows[0], n, len(flat), "polygons")
+    else:
+        flat = np.concatenate([np.asarray(r) for r in rows]) if len(rows) else np.empty(0, OFFSET)
+        indptr = np.cumsum([0, *(len(row) for row in rows)], dtype=OFFSET)
+    size = np.diff(indptr)
+    if len(size) and size.min() < 3:
+        bad = int(np.argmin(size))
+        raise MeshError(
+            f"cells of kind 'polygon': row {bad} has {size[bad]} points; wanted at least 3"
+        )
+    return Block(kind, len(size), indptr, flat)
 
 
 def _polyhedra(kind: Kind, rows: Sequence[Sequence[Sequence[int]]]) -> Block:
