@@ -136,3 +136,10 @@ def test_jittered_tets_conserve_volume_and_surface():
     assert found.part["surface"].sum() == pytest.approx(148 + 2 * found.total["cut_measure"])
     assert found.total["least_cut_faces"] is None
     assert 1 < found.total["surface_ratio_mean"] < 3
+
+
+def test_two_squares_that_meet_at_both_ends_are_no_lattice():
+    # A ring of two: each has its upper and lower side on the boundary, the others joined twice.
+    faces = [[0, 1], [1, 0], [0, -1], [0, -1], [1, -1], [1, -1]]
+    mesh = Mesh.from_faces(faces, np.ones(6), [[0.0, 0.0], [1.0, 0.0]], np.ones(2))
+    assert find_lattice(mesh.centers, mesh.measures, cell_graph(mesh)) is None
