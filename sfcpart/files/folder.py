@@ -32,6 +32,7 @@ MANIFEST = ".sfcpart-files"
 _LOCK = ".sfcpart-lock"
 _RENAME_EXCHANGE = 2
 _AT_FDCWD = -100
+_NO_ROOM = frozenset({errno.ENOSPC, errno.EDQUOT, errno.EFBIG})
 _NO_EXCHANGE = frozenset({errno.ENOSYS, errno.EINVAL, errno.ENOTSUP})
 
 
@@ -81,7 +82,8 @@ def output_folder(path: str | PathLike[str], *, overwrite: bool = False) -> Iter
         _put_in_place(temporary, target)
     except FileError as error:
         # The user asked for `target` and never saw the temporary name.
-        raise FileError(str(error).replace(str(temporary), str(target))) from error
+        text = str(error).replace(str(temporary), str(target))
+        raise FileError(text + _advice(error.__cause__)) from error
     except SfcpartError:
         raise
     except OSError as error:
@@ -306,7 +308,11 @@ def _exchanged(one: Path, other: Path) -> bool:
 def _cannot(target: Path, error: OSError) -> FileError:
     """Say in one line why the folder could not be written."""
     reason = " ".join(str(error.strerror or error).split())
-    advice = ""
-    if error.errno in (errno.ENOSPC, errno.EDQUOT, errno.EFBIG):
-        advice = "; make room or give another place (nothing was left there)"
-    return FileError(f"{target}: cannot be written: {reason}{advice}")
+    return FileError(f"{target}: cannot be written: {reason}{_advice(error)}")
+
+
+def _advice(error: BaseException | None) -> str:
+    """Say what to do if there was no room."""
+    if isinstance(error, OSError) and error.errno in _NO_ROOM:
+        return "; make room or give another place (nothing was left there)"
+    return ""

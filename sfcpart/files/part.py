@@ -143,6 +143,8 @@ def read_part(path: str | PathLike[str], part: int) -> Part:
         raise InputError(f"part is {part!r}; wanted a whole number")
     place = Path(path)
     if place.is_dir():
+        if not (place / FILE_NAME).exists():
+            raise FileError(f"{place}: holds no {FILE_NAME}; wanted a folder that a split wrote")
         place = place / FILE_NAME
     with read_hdf5(place) as file:
         lists = read_lists(file, int(part))

@@ -146,6 +146,9 @@ def test_a_neighbour_that_is_none(folder):
 def test_files_that_are_no_parts(folder):
     with pytest.raises(FileError, match="cannot be read"):
         read_part(folder / "none", 0)
+    (folder / "empty").mkdir()
+    with pytest.raises(FileError, match=r"holds no parts\.vtkhdf"):
+        read_part(folder / "empty", 0)
     (folder / "text.vtkhdf").write_text("no")
     with pytest.raises(FileError, match="no HDF5 file"):
         read_part(folder / "text.vtkhdf", 0)

@@ -135,6 +135,21 @@ def test_exchange_lists_lie_beside_the_mesh(tmp_path):
         assert sorted(file) == ["VTKHDF", "sfcpart"]
 
 
+def test_the_documentation_names_every_dataset(tmp_path, root):
+    case = parted("section")
+    write(tmp_path / "parts.vtkhdf", case)
+    text = (root / "docs" / "parts_file.md").read_text("utf-8")
+    with h5py.File(tmp_path / "parts.vtkhdf") as file:
+        group = file["sfcpart"]
+        names = {*group.attrs, *group, *group["boundary/0"], *group["boundary/0"].attrs}
+        own = {"depth", "flow", "wet"}
+        for place in ("CellData", "PointData"):
+            names |= {f"{place}/{name}" for name in file["VTKHDF"][place] if name not in own}
+    assert {"send", "boundary", "CellData/part"} <= names
+    missing = [name for name in names if f"`{name}`" not in text and f"`{name}/" not in text]
+    assert missing == []
+
+
 def test_own_names_win_over_fields_of_the_mesh(tmp_path):
     case = parted("tets")
     mesh = case.mesh.with_cell_field("part", np.full(case.mesh.n_cells, 77))
@@ -201,4 +216,5 @@ except FileError as error:
         assert done.returncode == 0, (limit, done.stderr)
         assert done.stdout.startswith("FileError"), (limit, done.stdout, done.stderr)
         assert done.stdout.count("\n") == 1
+        assert "make room" in done.stdout
         assert list(tmp_path.iterdir()) == []
