@@ -40,6 +40,19 @@ def test_all_public_names_can_be_had():
     loaded_after("import sfcpart; [getattr(sfcpart, name) for name in sfcpart.__all__]")
 
 
+def test_public_names_stay_what_they_are_when_modules_are_loaded():
+    # Importing `sfcpart.x` sets the attribute `x` of the package, whatever was there before.
+    loaded_after(
+        "import importlib, pkgutil, sfcpart; "
+        "names = [m.name for m in pkgutil.walk_packages(sfcpart.__path__, 'sfcpart.')]; "
+        "[importlib.import_module(n) for n in names if n != 'sfcpart.comm.mpi' "
+        "and not n.endswith('__main__')]; "
+        "modules = [n for n in sfcpart.__all__ if n in vars(sfcpart) "
+        "and type(getattr(sfcpart, n)) is type(importlib)]; "
+        "assert not modules, modules"
+    )
+
+
 def test_no_launcher_no_mpi():
     assert "mpi4py" not in loaded_after("from sfcpart.comm import world; world().barrier()")
 
