@@ -99,6 +99,14 @@ def _cell_values(name: str, values: ArrayLike | None, n_cells: int) -> FloatArra
     if array.shape != (n_cells,):
         raise WeightError(f"{name} has shape {array.shape}; wanted one number a cell, ({n_cells},)")
     _refuse(name, array, ~(np.isfinite(array) & (array >= 0)), "finite numbers, at least 0")
+    with np.errstate(over="ignore"):
+        total = float(array.sum())
+    if not np.isfinite(total):
+        largest = int(np.argmax(array))
+        raise WeightError(
+            f"{name} add up to more than a float64 holds (largest: {name}[{largest}] = "
+            f"{array[largest]:g}); divide them all by a common number"
+        )
     return array
 
 

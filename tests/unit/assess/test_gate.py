@@ -33,6 +33,7 @@ def test_graph_of_another_mesh():
         ([1, 1, -2, 1], r"\[2\] is -2.0; wanted finite numbers, at least 0"),
         ([1, np.nan, np.inf, 1], r"\[1\] is nan"),
         (["a", "b", "c", "d"], "wanted numbers"),
+        ([1, 1e308, 1.1e308, 1], r"more than a float64 holds .*\[2\] = 1.1e\+308"),
     ],
 )
 def test_bad_cell_values(name, values, message):
