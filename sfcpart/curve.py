@@ -251,11 +251,11 @@ class _Frame:
         axes = np.flatnonzero(high > low)
         if not len(axes):
             return cls(array, curve, axes, low, 1.0)
-        half = float((high[axes] / 4 - low[axes] / 4).max())
-        if not 1e-280 < half < 1e280:
-            power = -int(np.frexp(half)[1])
-            array, low = np.ldexp(array, power), np.ldexp(low, power)
-            high = np.ldexp(high, power)
+        with np.errstate(over="ignore"):
+            extent = float((high[axes] - low[axes]).max())
+        if not 1e-280 < extent < np.inf:
+            power = -2 if extent > 1 else -int(np.frexp(extent)[1])
+            array, low, high = (np.ldexp(values, power) for values in (array, low, high))
         bits = hilbert.BITS[len(axes)]
         most = np.nextafter(2.0**bits, 0) if bits > 52 else 2.0**bits - 1
         scale = most / float((high[axes] - low[axes]).max())

@@ -305,13 +305,15 @@ class _Task:
     def _fair_positions(self) -> Int64Array:
         """Return the position nearest to each part's fair share of the line, (P + 1,)."""
         n_parts, line = len(self.speed), self.line
-        share = np.concatenate(([0.0], np.cumsum(self.speed)))
-        share /= share[-1]
+        equal = self.speed.min() == self.speed.max()
+        share = np.concatenate(([0.0], np.cumsum(np.ones(n_parts) if equal else self.speed)))
         base = 0 if not len(line.total) else int(self.edge_sums[0, 0])
         if not len(line.total) or self.weight == 0:
-            found = self.begin + np.rint((self.end - self.begin) * share).astype(np.int64)
+            found = self.begin + np.rint((self.end - self.begin) * share / share[-1]).astype(
+                np.int64
+            )
         else:
-            aim = self.weight * share
+            aim = self.weight * share / share[-1]
             first, last = line.own_part(self.begin, self.end)
             sums = line.total[first - line.first : last - line.first + 1]
             at = np.searchsorted(sums, np.floor(aim).astype(np.int64) + base, side="right") - 1
