@@ -100,7 +100,7 @@ def _write_parts(
 ) -> None:
     """Write the parts in each format asked for."""
     if "same" in how.formats:
-        from sfcpart.files.meshio_files import write_with_meshio
+        from sfcpart.files.meshio_write import write_with_meshio
 
         assert source is not None
         fields = {"part": partition.cell_part}

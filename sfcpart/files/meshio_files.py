@@ -10,10 +10,8 @@ readers of their own and do not come here.
 from __future__ import annotations
 
 import contextlib
-import ctypes
 import io
 import itertools
-import threading
 import warnings
 from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
@@ -23,6 +21,7 @@ import numpy as np
 
 from sfcpart.dtypes import KIND, OFFSET, Array, Int64Array, IntArray, index_dtype
 from sfcpart.errors import FileError, MeshError, SfcpartError
+from sfcpart.files.limits import OutOfTimeError, interrupted_after, memory_limited
 from sfcpart.files.raw import RawMesh, narrow_ids
 from sfcpart.mesh.kinds import KINDS, POLYHEDRON, kind_of
 from sfcpart.mesh.mesh import Polyhedra
@@ -80,14 +79,39 @@ def load_with_meshio(path: Path, name: str) -> Any:
     FileError
         If meshio cannot read it; the message does not name the file.
     """
+    if name == "xdmf":
+        _refuse_collections(path)
     limit = PATIENCE + path.stat().st_size / _SLOWEST
-    with quiet_meshio() as chatter, interrupted_after(limit):
+    with quiet_meshio() as chatter, interrupted_after(limit), memory_limited(path):
         import meshio
 
+        _mend_gmsh22()
         mesh = meshio.read(path, file_format=name)
     if "cannot handle" in chatter.getvalue():
         raise FileError(_reason(chatter.getvalue(), ""))
     return mesh
+
+
+def _refuse_collections(path: Path) -> None:
+    """Refuse XDMF files with several grids, of which meshio would read none or one."""
+    content = path.read_bytes()
+    if re.search(rb"GridType\s*=\s*.(Collection|Tree)|CollectionType", content):
+        raise FileError("is a collection of grids (time steps or pieces); wanted a single grid")
+
+
+def _mend_gmsh22() -> None:
+    """Let meshio 5.3 read fields of several blocks: it counts (name, table) pairs as 2 cells."""
+    from meshio.gmsh import _gmsh22
+
+    given = _gmsh22.cell_data_from_raw
+    if getattr(given, "mended", False):
+        return
+
+    def mended(blocks: Any, fields: Any) -> Any:
+        return given([b[1] if isinstance(b, (list, tuple)) else b for b in blocks], fields)
+
+    mended.mended = True  # type: ignore[attr-defined]
+    _gmsh22.cell_data_from_raw = mended
 
 
 def save_with_meshio(path: Path, mesh: Any, name: str) -> None:
@@ -127,38 +151,10 @@ def quiet_meshio() -> Iterator[io.StringIO]:
         raise FileError(
             "asks for more memory than there is; it is damaged, or too large for this machine"
         ) from error
-    except _OutOfTimeError as error:
+    except OutOfTimeError as error:
         raise FileError("reading it does not come to an end; it is damaged") from error
     except (Exception, SystemExit) as error:
         raise FileError(_reason(chatter.getvalue(), _told(error))) from error
-
-
-class _OutOfTimeError(Exception):
-    """Raised in a reader that does not come back."""
-
-
-@contextlib.contextmanager
-def interrupted_after(seconds: float) -> Iterator[None]:
-    """Raise `_OutOfTimeError` in the block if it runs longer (some readers loop at a file's end).
-
-    Works on Python code only, which is where these readers loop.
-    """
-    reader = threading.get_ident()
-    done = threading.Event()
-
-    def watch() -> None:
-        if not done.wait(seconds):
-            ctypes.pythonapi.PyThreadState_SetAsyncExc(
-                ctypes.c_ulong(reader), ctypes.py_object(_OutOfTimeError)
-            )
-
-    watcher = threading.Thread(target=watch, daemon=True, name="sfcpart-patience")
-    watcher.start()
-    try:
-        yield
-    finally:
-        done.set()
-        watcher.join()
 
 
 def _told(error: BaseException) -> str:

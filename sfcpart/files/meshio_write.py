@@ -21,8 +21,11 @@ from sfcpart.mesh.kinds import kind_of
 
 __all__ = ["CARRIERS", "write_with_meshio"]
 
-CARRIERS = ("vtu", "vtk", "gmsh", "xdmf", "med", "hmf", "tecplot")
+CARRIERS = ("vtu", "vtk", "gmsh", "xdmf", "tecplot")
 """Formats that can carry a field of the cells through meshio."""
+
+# meshio's writer of Gmsh 4.1 wants physical groups on every element; 2.2 does without.
+_WRITERS = {"gmsh": "gmsh22"}
 
 
 def write_with_meshio(
@@ -49,7 +52,8 @@ def write_with_meshio(
 
     Notes
     -----
-    Gmsh stores fields as reals; the numbers are the same. Cost: reading twice, writing once.
+    Gmsh files are written in version 2.2 and store fields as reals; the numbers are the same.
+    Cost: reading twice, writing once.
     """
     source, target = Path(mesh_path), Path(path)
     name = next((name for name in file_format(source) if name in CARRIERS), "")
@@ -63,7 +67,7 @@ def write_with_meshio(
         mesh.cell_data[field_name] = _per_block(mesh, np.asarray(values), field_name)
     beside = target.with_name(f".{target.stem}.{os.getpid()}{target.suffix}")
     try:
-        save_with_meshio(beside, mesh, _writer(source, name))
+        save_with_meshio(beside, mesh, _WRITERS.get(name, name))
         _check_same(beside, fields, source)
         _force_to_disk(beside)
         beside.replace(target)
@@ -80,7 +84,10 @@ def _load(source: Path, name: str) -> Any:
         from sfcpart.files.vtu_read import read_vtu
 
         return meshio_of_raw(read_vtk(source) if name == "vtk" else read_vtu(source))
-    return load_with_meshio(source, name)
+    try:
+        return load_with_meshio(source, name)
+    except FileError as error:
+        raise FileError(f"{source}: {error}") from error
 
 
 def _per_block(mesh: Any, values: Array, field_name: str) -> list[Array]:
@@ -101,15 +108,6 @@ def _per_block(mesh: Any, values: Array, field_name: str) -> list[Array]:
         pieces.append(own.astype(np.int32))
         at += size
     return pieces
-
-
-def _writer(source: Path, name: str) -> str:
-    """Return meshio's name of the writer; Gmsh files keep their version."""
-    if name == "gmsh":
-        with source.open("rb") as file:
-            head = file.read(200).partition(b"$MeshFormat")[2].split()
-        return "gmsh22" if head and head[0].startswith(b"2") else "gmsh"
-    return name
 
 
 def _check_same(beside: Path, fields: Mapping[str, Array], source: Path) -> None:
