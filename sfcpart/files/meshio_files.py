@@ -11,6 +11,7 @@ from __future__ import annotations
 
 import contextlib
 import io
+import re
 import itertools
 import warnings
 from collections.abc import Iterator, Mapping, Sequence
