@@ -307,13 +307,12 @@ class _Task:
         n_parts, line = len(self.speed), self.line
         equal = self.speed.min() == self.speed.max()
         share = np.concatenate(([0.0], np.cumsum(np.ones(n_parts) if equal else self.speed)))
+        n_items, whole = self.end - self.begin, share[-1]
         base = 0 if not len(line.total) else int(self.edge_sums[0, 0])
         if not len(line.total) or self.weight == 0:
-            found = self.begin + np.rint((self.end - self.begin) * share / share[-1]).astype(
-                np.int64
-            )
+            found = self.begin + np.rint(n_items * share / whole).astype(np.int64)
         else:
-            aim = self.weight * share / share[-1]
+            aim = self.weight * share / whole
             first, last = line.own_part(self.begin, self.end)
             sums = line.total[first - line.first : last - line.first + 1]
             at = np.searchsorted(sums, np.floor(aim).astype(np.int64) + base, side="right") - 1

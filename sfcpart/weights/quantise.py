@@ -128,7 +128,8 @@ def quantise_limits(limits: ArrayLike, exponent: int) -> Int64Array:
     if len(wrong):
         part = int(wrong[0])
         raise WeightError(f"the limit of part {part} is {array.flat[part]}; wanted numbers >= 0")
-    scaled = np.floor(np.ldexp(np.minimum(array, 2.0**1000), exponent))
+    with np.errstate(over="ignore"):
+        scaled = np.floor(np.ldexp(array, exponent))
     return np.minimum(scaled, float(_MOST) * 2).astype(WEIGHT)
 
 
