@@ -368,6 +368,40 @@ class Mesh:
         mesh._derived.update(self._derived)
         return mesh
 
+    def with_points_merged(self, tolerance: float) -> Mesh:
+        """Return the mesh with points that coincide made one, so that cracks close.
+
+        Parameters
+        ----------
+        tolerance : float
+            Largest distance of two points that are one, >= 0; chains of such points are one too,
+            so keep it well below the shortest edge. The lowest point of a group stays.
+
+        Returns
+        -------
+        Mesh
+            Cells, their order and fields as before; this very mesh if no points coincide.
+
+        Raises
+        ------
+        MeshError
+            If the mesh has no points, or the tolerance is negative or not finite.
+
+        Notes
+        -----
+        O(n log n) in the number of points (`sfcpart.mesh.merge`).
+
+        Examples
+        --------
+        >>> points = [[0, 0], [1, 0], [0, 1], [1, 0], [1, 1], [0, 1]]
+        >>> mesh = Mesh.from_arrays(points, {"triangle": [[0, 1, 2], [3, 4, 5]]})
+        >>> mesh.with_points_merged(1e-9).indices.tolist()
+        [0, 1, 2, 1, 3, 2]
+        """
+        from sfcpart.mesh.merge import merge_points
+
+        return merge_points(self, tolerance)
+
     def keep(self, name: str, make: Callable[[], T]) -> T:
         """Return a derived value, made on first use and then kept."""
         if name not in self._derived:
