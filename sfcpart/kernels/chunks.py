@@ -45,6 +45,19 @@ def caps(bottleneck: float, speed: FloatArray, most: int) -> Int64Array:
 
 
 @jit
+def count_up_to(ascending: Int64Array, value: int) -> int:
+    """Return how many entries are <= value (numpy's own search compiles for a second)."""
+    low, high = 0, len(ascending)
+    while low < high:
+        middle = (low + high) >> 1
+        if ascending[middle] <= value:
+            low = middle + 1
+        else:
+            high = middle
+    return low
+
+
+@jit
 def sum_before(prefix: Int64Array, at: int, base: int) -> int:
     """Return the sum of the items before a position; an empty prefix means 1 each."""
     return int(prefix[at - base]) if len(prefix) else int(at)
@@ -124,7 +137,7 @@ def sweep_back(
             # positions whose chunk p takes exactly `least` items
             right, left = min(top, high - least), max(first, low - least)
             if right >= left:
-                h = np.searchsorted(heavy, right + 1) - 1
+                h = count_up_to(heavy, right) - 1
                 while right >= left:
                     blocked = left - 1
                     while h >= 0 and heavy[h] >= left:
@@ -207,7 +220,8 @@ def pass_on(
                 out[n, 2] = sum_before(total, low, span[2])
                 out[n, 3] = limit_before(limit, low, span[2])
             else:
-                out[n] = came[came_ptr[p] + k - (end - begin)]
+                for column in range(4):  # an assignment of rows would compile for seconds
+                    out[n, column] = came[came_ptr[p] + k - (end - begin), column]
             n += 1
             if out[n - 1, 0] >= span[0] + span[3]:
                 break

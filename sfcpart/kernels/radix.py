@@ -186,7 +186,10 @@ def scatter_range(
     out_row: IntArray,
 ) -> None:
     """Move some rows to their buckets, each range at the offsets counted for it."""
-    offset = offsets[np.searchsorted(starts, start)]
+    slot = 0
+    while starts[slot] < start:
+        slot += 1
+    offset = offsets[slot]
     named = len(row) > 0
     for i in range(start, stop):
         bucket = (key[i] - low) >> shift
@@ -206,17 +209,21 @@ def finish_range(
     row: IntArray,
 ) -> None:
     """Sort, in place, the buckets that begin at positions start..stop-1."""
-    first = int(np.searchsorted(edge, start))
-    last = int(np.searchsorted(edge, stop))
+    first = 0
+    while first < len(edge) - 1 and edge[first] < start:
+        first += 1
+    last = first
+    while last < len(edge) - 1 and edge[last] < stop:
+        last += 1
     widest = 0
-    for bucket in range(first, min(last, len(edge) - 1)):
+    for bucket in range(first, last):
         if not skip[bucket]:
             widest = max(widest, edge[bucket + 1] - edge[bucket])
     spare_key = np.empty(widest, key.dtype)
     spare_row = np.empty(widest, row.dtype)
     count = np.empty(2048 + 1, np.int64)
     todo = np.empty((widest // _SMALL + 2, 2), np.int64)
-    for bucket in range(first, min(last, len(edge) - 1)):
+    for bucket in range(first, last):
         if skip[bucket] or edge[bucket + 1] - edge[bucket] < 2:
             continue
         todo[0, 0], todo[0, 1] = edge[bucket], edge[bucket + 1]
