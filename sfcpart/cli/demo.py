@@ -33,7 +33,13 @@ COLUMNS, ROWS, ACROSS = 100, 20, 20
 
 @click.command("demo", help=HELP)
 @click.option(
-    "-n", "--parts", "n_parts", type=int, default=16, show_default=True, help="Number of parts."
+    "-n",
+    "--parts",
+    "n_parts",
+    type=click.IntRange(min=1),
+    default=16,
+    show_default=True,
+    help="Number of parts.",
 )
 @click.option(
     "-o",

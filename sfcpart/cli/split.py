@@ -55,7 +55,9 @@ def _methods() -> list[str]:
 
 @click.command("split", help=HELP)
 @mesh_argument
-@click.option("-n", "--parts", "n_parts", type=int, metavar="N", help="Number of parts.")
+@click.option(
+    "-n", "--parts", "n_parts", type=click.IntRange(min=1), metavar="N", help="Number of parts."
+)
 @click.option(
     "-o", "--output", type=click.Path(), metavar="DIR", help="Folder to write, new or empty."
 )

@@ -1,0 +1,159 @@
+"""`sfcpart split` and `assess`: what they print and write."""
+
+from __future__ import annotations
+
+import csv
+import json
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+import sfcpart as api
+
+
+def test_split_writes_what_it_says_and_says_what_it_wrote(sfcpart, tmp_path):
+    code, out, err = sfcpart("split meshes/channel_mixed.vtu --parts 8 -o parts --picture")
+    assert (code, err) == (0, "")
+    first = out.splitlines()[0]
+    assert first == "meshes/channel_mixed.vtu: 2,784 cells into 8 parts by hilbert"
+    written = {entry.name for entry in (tmp_path / "parts").iterdir() if entry.name[0] != "."}
+    assert written == {"parts.vtkhdf", "parts.csv", "summary.json", "parts.png", "cell_part.npy"}
+    assert all(name in out.splitlines()[-1] for name in written)
+    rows = list(csv.DictReader((tmp_path / "parts" / "parts.csv").open()))
+    assert [int(row["cells"]) for row in rows] == [348] * 8
+    summary = json.loads((tmp_path / "parts" / "summary.json").read_text())
+    assert summary["total"]["n_cells"] == 2784
+    assert summary["options"]["method"] == "hilbert"
+    assert summary["input"]["digest"].startswith("sha256:")
+
+
+def test_split_is_the_api_call(sfcpart, meshes):
+    sfcpart("split meshes/channel_mixed.vtu --levels 2x3 --weight work --seed 4 -o parts -q")
+    mesh = api.read_mesh(meshes / "channel_mixed.vtu")
+    same = api.split(mesh, 6, levels=(2, 3), weights="work", seed=4)
+    assert np.load("parts/cell_part.npy").tolist() == same.cell_part.tolist()
+
+
+def test_output_in_a_pipe_is_plain_and_narrow(sfcpart):
+    out = sfcpart("split meshes/channel_mixed.vtu -n 32 --weight work --limit memory:200").out
+    assert "\x1b" not in out
+    assert "the 12 slowest of 32 parts" in out
+    assert max(map(len, out.splitlines())) <= 80
+    assert not any(line != line.rstrip() for line in out.splitlines())
+
+
+def test_json_is_json_and_nothing_else(sfcpart):
+    code, out, err = sfcpart("split meshes/channel_section.msh -n 4 --json")
+    told = json.loads(out)
+    assert (code, err) == (0, "")
+    assert told["mesh"] == "meshes/channel_section.msh"
+    assert told["output"] is None
+    assert told["total"]["n_parts"] == 4
+    assert told["part"]["cells"] == [206] * 4
+
+
+def test_quiet_prints_nothing(sfcpart):
+    assert sfcpart("split meshes/turbine.vtu -n 3 -o parts --quiet") == (0, "", "")
+
+
+def test_output_in_the_inputs_own_format_and_as_pieces(sfcpart, tmp_path):
+    line = "split meshes/channel_mixed.vtu -n 3 -o parts --format same --format vtu"
+    assert sfcpart(line).code == 0
+    names = {entry.name for entry in (tmp_path / "parts").rglob("*")}
+    assert "parts.pvtu" in names
+    back = api.read_mesh("parts/parts.vtu")
+    assert back.cell_fields["part"].tolist() == np.load("parts/cell_part.npy").tolist()
+
+
+def test_speeds_shift_the_work(sfcpart):
+    told = json.loads(sfcpart("split meshes/channel_mixed.vtu -n 4 --speeds 2*1,2*0.5 --json").out)
+    assert told["part"]["cells"] == [928, 928, 464, 464]
+    Path("speeds.txt").write_text("1\n1\n0.5\n0.5\n")
+    again = json.loads(
+        sfcpart("split meshes/channel_mixed.vtu -n 4 --speeds speeds.txt --json").out
+    )
+    assert again["part"]["cells"] == told["part"]["cells"]
+
+
+def test_cells_kept_together_stay_together(sfcpart):
+    Path("pairs.txt").write_text("0 2783\n5 1000\n")
+    sfcpart("split meshes/channel_mixed.vtu -n 5 --pairs pairs.txt --together row -o parts -q")
+    part = np.load("parts/cell_part.npy")
+    assert part[0] == part[2783]
+    assert part[5] == part[1000]
+    row = api.read_mesh("meshes/channel_mixed.vtu").cell_fields["row"]
+    for value in np.unique(row):
+        assert len(np.unique(part[row == value])) == 1
+
+
+def test_periodic_groups_stay_together(sfcpart):
+    sfcpart("split meshes/channel_section.msh -n 4 --periodic inflow:outflow -o parts -q")
+    mesh = api.read_mesh("meshes/channel_section.msh")
+    part = np.load("parts/cell_part.npy")
+    x = mesh.centers[:, 0]
+    y = mesh.centers[:, 1].round(6)
+    quads = np.flatnonzero(mesh.kind == 9)
+    left = quads[x[quads] < 1.0]
+    right = quads[x[quads] > 39.0]
+    assert len(left) == len(right) == 6
+    left, right = left[np.argsort(y[left])], right[np.argsort(y[right])]
+    assert part[left].tolist() == part[right].tolist()
+
+
+@pytest.mark.parametrize("across", ["faces", "points"])
+def test_halo_options_reach_the_files(sfcpart, across):
+    sfcpart(f"split meshes/kelvin_cells.vtkhdf -n 3 --layers 2 --across {across} -o parts -q")
+    part = api.read_part("parts", 1)
+    assert (part.layers, part.across) == (2, across)
+
+
+def test_overwrite_replaces_only_when_asked(sfcpart):
+    line = "split meshes/turbine.vtu -n 3 -o parts -q"
+    assert sfcpart(line).code == 0
+    refused = sfcpart(line)
+    assert refused.code == 4
+    assert "holds something already" in refused.err
+    assert sfcpart(f"{line} --overwrite").code == 0
+
+
+def test_assess_takes_fields_files_and_folders(sfcpart):
+    split = json.loads(sfcpart("split meshes/channel_mixed.vtu -n 5 -o parts --json").out)
+    np.savetxt("parts.txt", np.load("parts/cell_part.npy"), fmt="%d")
+    for source in ("parts", "parts/cell_part.npy", "parts.txt"):
+        told = json.loads(sfcpart(f"assess meshes/channel_mixed.vtu {source} --json").out)
+        assert told["total"] == split["total"]
+    body = json.loads(sfcpart("assess meshes/turbine.vtu --field body --json").out)
+    assert body["part"]["cells"] == [960, 48]
+    assert body["total"]["cut_faces"] == 0
+
+
+def test_assess_writes_csv_and_picture(sfcpart, tmp_path):
+    code, out, _ = sfcpart("assess meshes/turbine.vtu --field body --csv a.csv --picture a.png")
+    assert code == 0
+    assert out.startswith("meshes/turbine.vtu: 1,008 cells in 2 parts: imbalance 90.5 %")
+    rows = list(csv.DictReader((tmp_path / "a.csv").open()))
+    assert [row["cells"] for row in rows] == ["960", "48"]
+    assert (tmp_path / "a.png").read_bytes()[:4] == b"\x89PNG"
+
+
+def test_own_network_changes_the_predicted_step(sfcpart):
+    line = "split meshes/channel_mixed.vtu -n 8 --json"
+    fast = json.loads(sfcpart(line).out)
+    slow = json.loads(sfcpart(f"{line} --network gigabit-ethernet").out)
+    own = json.loads(sfcpart(f"{line} --latency 1 --bandwidth 1e9 --exchanges 1").out)
+    assert slow["total"]["step_seconds"] > fast["total"]["step_seconds"]
+    assert own["total"]["step_seconds"] > max(own["part"]["neighbours"])
+    assert own["step_model"]["network"] == "own"
+
+
+def test_demo_needs_nothing_and_says_what_is_next(sfcpart, tmp_path):
+    code, out, err = sfcpart("demo")
+    assert (code, err) == (0, "")
+    assert "Next:" in out
+    part = api.read_part("sfcpart-demo", 15)
+    assert part.n_parts == 16
+    assert {"parts.png", "parts.csv", "summary.json"} <= {
+        entry.name for entry in (tmp_path / "sfcpart-demo").iterdir()
+    }
+    assert sfcpart("demo -q") == (0, "", "")
