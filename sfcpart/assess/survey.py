@@ -1,0 +1,298 @@
+"""The look-over of a mesh before a split: what it holds, what is wrong, what it will need."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import asdict, dataclass
+from typing import Any
+
+import numpy as np
+
+from sfcpart.dtypes import Array
+from sfcpart.graph import CellGraph, components
+from sfcpart.mesh.check import (
+    CellCheck,
+    Offenders,
+    check_cells,
+    count_kinds,
+    default_tolerance,
+    unused_points,
+)
+from sfcpart.mesh.cracks import Cracks, find_cracks
+from sfcpart.mesh.kinds import POLYGON, kind_tables
+from sfcpart.mesh.mesh import Mesh
+
+__all__ = ["FieldNote", "GroupNote", "Survey", "split_memory", "survey_mesh"]
+
+_MANY_ALONE = 0.01
+_PROCESS = 260_000_000
+"""Bytes of a process that has loaded everything and split a mesh of no size (measured)."""
+
+
+@dataclass(frozen=True)
+class GroupNote:
+    """A boundary group in short: name, tag (-1 for none), elements."""
+
+    name: str
+    tag: int
+    n_elements: int
+
+
+@dataclass(frozen=True)
+class FieldNote:
+    """A cell field in short.
+
+    Attributes
+    ----------
+    name : str
+    dtype : str
+    usable_as_weight : bool
+        One finite number >= 0 a cell, not all zero.
+    smallest, largest, sum : float or None
+        None unless it holds one finite number a cell.
+    """
+
+    name: str
+    dtype: str
+    usable_as_weight: bool
+    smallest: float | None
+    largest: float | None
+    sum: float | None
+
+
+@dataclass(frozen=True)
+class Survey:
+    """What a mesh holds and what is wrong with it; figures that cannot be known are None.
+
+    Attributes
+    ----------
+    n_cells, n_points, dim, space_dim : int
+    kinds : mapping of str to int
+        Cells of each kind.
+    lowest, highest : tuple of float
+        Corners of the box around the points (or cell centres).
+    cells : CellCheck
+        Faulty cells, measures, stretch.
+    n_inner_faces, n_boundary_faces : int or None
+    boundary_measure : float or None
+    component_size : tuple of int, or None
+        Cells of each connected component, largest first.
+    alone : Offenders or None
+        Cells that share no face with another.
+    cracks : Cracks or None
+        Points that coincide and keep cells apart.
+    n_unused_points : int
+        Points that no cell lists.
+    boundary : tuple of GroupNote
+    fields : tuple of FieldNote
+    split_memory : int
+        Bytes a split of this mesh with measuring and writing will need (`split_memory`).
+    warnings : tuple of str
+        One sentence a fault: what was found and what to do.
+    """
+
+    n_cells: int
+    n_points: int
+    dim: int
+    space_dim: int
+    kinds: Mapping[str, int]
+    lowest: tuple[float, ...]
+    highest: tuple[float, ...]
+    cells: CellCheck
+    n_inner_faces: int | None
+    n_boundary_faces: int | None
+    boundary_measure: float | None
+    component_size: tuple[int, ...] | None
+    alone: Offenders | None
+    cracks: Cracks | None
+    n_unused_points: int
+    boundary: tuple[GroupNote, ...]
+    fields: tuple[FieldNote, ...]
+    split_memory: int
+    warnings: tuple[str, ...]
+
+    @property
+    def weight_fields(self) -> tuple[str, ...]:
+        """Names of the fields that can serve as weights."""
+        return tuple(note.name for note in self.fields if note.usable_as_weight)
+
+    def to_json_dict(self) -> dict[str, Any]:
+        """Return the survey as plain numbers, texts, lists and dicts with stable keys."""
+        plain = asdict(self)
+        plain["n_components"] = None if self.component_size is None else len(self.component_size)
+        plain["weight_fields"] = list(self.weight_fields)
+        plain["kinds"] = dict(self.kinds)
+        return plain
+
+
+def survey_mesh(mesh: Mesh, graph: CellGraph | None, *, tolerance: float | None = None) -> Survey:
+    """Look a mesh over.
+
+    Parameters
+    ----------
+    mesh : Mesh
+    graph : CellGraph or None
+        Its cell graph; None for meshes of bare centres.
+    tolerance : float, optional
+        Largest distance of two points that coincide; by default a billionth of the mesh's
+        diagonal, at most a tenth of its shortest edge.
+
+    Returns
+    -------
+    Survey
+
+    Raises
+    ------
+    MeshError
+        If the tolerance is negative or not finite.
+
+    Notes
+    -----
+    O(n log n) in the number of boundary points, O(edges of cells) otherwise.
+
+    Examples
+    --------
+    >>> from sfcpart.graph import cell_graph
+    >>> points = [[0, 0], [1, 0], [0, 1], [1, 0], [1, 1], [0, 1]]
+    >>> mesh = Mesh.from_arrays(
+    ...     points, {"triangle": [[0, 1, 2], [3, 4, 5]]}, cell_fields={"cost": [1.0, 2.5]}
+    ... )
+    >>> survey = survey_mesh(mesh, cell_graph(mesh))
+    >>> survey.component_size, survey.cracks.n_faces, survey.weight_fields
+    ((1, 1), 1, ('cost',))
+    """
+    cells = check_cells(mesh)
+    cracks = None
+    if mesh.points is not None and graph is not None:
+        reach = default_tolerance(mesh, cells.shortest_edge) if tolerance is None else tolerance
+        cracks = find_cracks(mesh, graph.boundary_count, reach)
+    spread = mesh.centers if mesh.points is None else mesh.points
+    alone = None if graph is None else Offenders.of(np.diff(graph.indptr) == 0)
+    sizes = None if graph is None else _component_sizes(graph)
+    fields = tuple(_note_field(name, values) for name, values in mesh.cell_fields.items())
+    return Survey(
+        n_cells=mesh.n_cells,
+        n_points=mesh.n_points,
+        dim=mesh.dim,
+        space_dim=mesh.space_dim,
+        kinds=count_kinds(mesh),
+        lowest=tuple(spread.min(axis=0).tolist()),
+        highest=tuple(spread.max(axis=0).tolist()),
+        cells=cells,
+        n_inner_faces=None if graph is None else graph.n_faces,
+        n_boundary_faces=None if graph is None else int(graph.boundary_count.sum()),
+        boundary_measure=None if graph is None else float(graph.boundary_measure.sum()),
+        component_size=sizes,
+        alone=alone,
+        cracks=cracks,
+        n_unused_points=unused_points(mesh),
+        boundary=tuple(GroupNote(g.name, g.tag, len(g.kind)) for g in mesh.boundary),
+        fields=fields,
+        split_memory=split_memory(mesh),
+        warnings=tuple(_warnings(mesh, cells, alone, sizes, cracks)),
+    )
+
+
+def _component_sizes(graph: CellGraph) -> tuple[int, ...]:
+    """Count the cells of each component, largest first."""
+    _, label = components(graph)
+    return tuple(sorted(np.bincount(label).tolist(), reverse=True))
+
+
+def _note_field(name: str, values: Array) -> FieldNote:
+    """Describe a field and see whether it can serve as weights."""
+    dtype = str(values.dtype)
+    if values.ndim == 2 and values.shape[1] == 1:
+        values = values[:, 0]
+    if values.ndim != 1 or values.dtype.kind not in "biuf" or not np.isfinite(values).all():
+        return FieldNote(name, dtype, False, None, None, None)
+    low, high, total = float(values.min()), float(values.max()), float(values.sum(dtype=float))
+    return FieldNote(name, dtype, low >= 0 and total > 0, low, high, total)
+
+
+def split_memory(mesh: Mesh) -> int:
+    """Estimate the peak memory of splitting, measuring and writing a mesh.
+
+    Parameters
+    ----------
+    mesh : Mesh
+
+    Returns
+    -------
+    int
+        Bytes: the process itself, the mesh twice (as read and as written), and for each cell its
+        centre and measure (8 bytes a number), 48 for keys, order, weights and parts, 28 and
+        another 32 a face of it for the cell graph while that is made.
+
+    Examples
+    --------
+    >>> small = Mesh.from_centers([[0.0, 0.0]])
+    >>> large = Mesh.from_centers([[0.0, 0.0]] * 1000)
+    >>> split_memory(large) - split_memory(small)
+    121878
+    """
+    held = [mesh.points, mesh.kind, mesh.indptr, mesh.indices, mesh.given_center]
+    held += [mesh.given_measure, *mesh.cell_fields.values(), *mesh.point_fields.values()]
+    n_faces = _count_cell_faces(mesh)
+    if mesh.polyhedra is not None:
+        faces = mesh.polyhedra
+        held += [faces.face_indptr, faces.face_indices, faces.cell_indptr, faces.cell_indices]
+    if mesh.faces is not None:
+        held += [mesh.faces.cell, mesh.faces.measure]
+    size = sum(array.nbytes for array in held if array is not None)
+    each = 8 * (mesh.space_dim + 1) + 48 + (28 if n_faces else 0)
+    return _PROCESS + 2 * size + each * mesh.n_cells + 32 * n_faces
+
+
+def _count_cell_faces(mesh: Mesh) -> int:
+    """Count the faces of all cells, shared ones from both sides."""
+    if mesh.faces is not None:
+        return 2 * len(mesh.faces.cell)
+    count = kind_tables().face_count.astype(np.int64)
+    total = int(np.bincount(mesh.kind, minlength=256) @ count)
+    if mesh.polyhedra is not None:
+        total += len(mesh.polyhedra.cell_indices)
+    return total + int(np.diff(mesh.indptr)[mesh.kind == POLYGON].sum())
+
+
+def _warnings(
+    mesh: Mesh,
+    cells: CellCheck,
+    alone: Offenders | None,
+    sizes: tuple[int, ...] | None,
+    cracks: Cracks | None,
+) -> list[str]:
+    """Say in a sentence each what may be wrong."""
+    found = []
+    if cells.no_measure.count:
+        found.append(_about(cells.no_measure, "no area or volume", "they weigh nothing by measure"))
+    if cells.collapsed.count:
+        found.append(_about(cells.collapsed, "an edge of no length", "some of their faces vanish"))
+    if cells.all_turned:
+        kinds = ", ".join(cells.all_turned)
+        found.append(f"every {kinds} is inside out: the file orders corners in another way")
+    elif cells.inverted.count:
+        found.append(_about(cells.inverted, "a negative measure", "they are inside out"))
+    if cracks is not None and cracks.n_faces:
+        found.append(
+            f"{cracks.n_points} points coincide within {cracks.tolerance:.3g} and keep "
+            f"{cracks.n_faces} pairs of faces apart: merge points to close the cracks"
+        )
+    if alone is not None and mesh.n_cells > 1 and alone.count:
+        text = _about(alone, "no neighbour", "they share no face with another cell")
+        if alone.count > _MANY_ALONE * mesh.n_cells:
+            text += "; are points merged, and are these the cells that were written?"
+            text += " (some readers turn quadratic cells into broken linear ones)"
+        found.append(text)
+    if sizes is not None and len(sizes) > 1:
+        found.append(
+            f"the mesh is in {len(sizes)} unconnected pieces; the largest has {sizes[0]} cells"
+        )
+    return found
+
+
+def _about(cells: Offenders, what: str, so: str) -> str:
+    """Name the first of some cells."""
+    few = ", ".join(map(str, cells.first[:3])) + (", ..." if cells.count > 3 else "")
+    plural = "cells have" if cells.count > 1 else "cell has"
+    return f"{cells.count} {plural} {what} ({few}): {so}"
