@@ -142,13 +142,7 @@ class _Task:
         """
         if self.begin == self.end:
             return
-        heaviest, lightest = 1, self.least
-        window, limited = self.line.windows(self.begin, self.end, max(1, self.least))
-        if len(self.line.total):
-            item = window if self.least <= 1 else self.line.windows(self.begin, self.end, 1)[0]
-            extreme = np.array([item.max(initial=0), -window.min(initial=_UNLIMITED)], np.int64)
-            found = self.line.comm.allreduce(extreme, "max")
-            heaviest, lightest = int(found[0]), -int(found[1]) if self.least else 0
+        heaviest, widest, lightest, most = self._extremes()
         slowest, fastest = float(self.speed.min()), float(self.speed.max())
         share = self.weight / float(self.speed.sum()) * (1 - 1e-9)
         if slowest == fastest:  # loads are integers
@@ -157,16 +151,39 @@ class _Task:
         if lightest > self.weight:  # fewer items than `least`: no division at all
             self.lowest = self.weight / slowest
         self.widest = heaviest / slowest
-        if not self.least:
-            return
         smallest = int(kernel.caps(self.lowest, self.speed, max(self.weight, 1)).min())
-        first = self.line.own_part(self.begin, self.end)[0]
-        is_heavy: BoolArray = np.zeros(max(len(window), len(limited)), np.bool_)
-        if len(window):
-            is_heavy |= window > smallest
-        if len(limited):
-            is_heavy |= limited > self.limit.min()
-        self.heavy = np.flatnonzero(is_heavy) + first
+        if self.least and (widest > smallest or most > int(self.limit.min())):
+            self.heavy = self._heavy_windows(smallest)
+
+    def _extremes(self) -> tuple[int, int, int, int]:
+        """Return heaviest item, heaviest and lightest window, and most limited window."""
+        line, width = self.line, max(1, self.least)
+        found = np.array([0, 0, -_UNLIMITED, 0], np.int64)
+        for _, weight, limited in line.windows(self.begin, self.end, width):
+            if len(weight):
+                found[1:3] = np.maximum(found[1:3], [weight.max(), -weight.min()])
+            if len(limited):
+                found[3] = max(found[3], limited.max())
+        if width > 1 and len(line.total):
+            for _, weight, _ in line.windows(self.begin, self.end, 1):
+                found[0] = max(found[0], weight.max())
+        found[0] = found[0] if width > 1 else found[1]
+        heaviest, widest, lightest, most = (int(x) for x in line.comm.allreduce(found, "max"))
+        if not len(line.total):
+            return 1, width, self.least, most
+        return heaviest, widest, -lightest if self.least else 0, most
+
+    def _heavy_windows(self, smallest: int) -> Int64Array:
+        """Return this rank's positions whose next `least` items may be too much for a part."""
+        places = [np.empty(0, np.int64)]
+        for start, weight, limited in self.line.windows(self.begin, self.end, self.least):
+            is_heavy: BoolArray = np.zeros(max(len(weight), len(limited)), np.bool_)
+            if len(weight):
+                is_heavy |= weight > smallest
+            if len(limited):
+                is_heavy |= limited > int(self.limit.min())
+            places.append(np.flatnonzero(is_heavy) + start)
+        return np.concatenate(places)
 
     def least_bottleneck(self) -> float:
         """Return the least bottleneck that some division keeps."""

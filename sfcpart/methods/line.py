@@ -7,6 +7,7 @@ messages. Items of weight 1 and a missing limit need no array at all.
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -15,6 +16,8 @@ from sfcpart.comm.base import Comm
 from sfcpart.dtypes import OFFSET, WEIGHT, Int64Array
 
 __all__ = ["Line"]
+
+_BLOCK = 1 << 15
 
 
 @dataclass(frozen=True, eq=False)
@@ -88,15 +91,21 @@ class Line:
             found[:, 0] = positions
         return found
 
-    def windows(self, begin: int, end: int, width: int) -> tuple[Int64Array, Int64Array]:
-        """Return weight and limited weight of every `width` items in a row that start here."""
+    def windows(
+        self, begin: int, end: int, width: int
+    ) -> Iterator[tuple[int, Int64Array, Int64Array]]:
+        """Yield position, weights and limited weights of every `width` items that start here.
+
+        In blocks that fit the cache; the arrays are empty where the line has none.
+        """
         first, last = self.own_part(begin, max(begin, end - width + 1))
-        low, high = first - self.first, last - self.first
-        pair = [
-            sums[low + width : high + width] - sums[low:high] if len(sums) else sums
-            for sums in (self.total, self.limit)
-        ]
-        return pair[0], pair[1]
+        for start in range(first, last, _BLOCK):
+            low, high = start - self.first, min(start + _BLOCK, last) - self.first
+            pair = [
+                sums[low + width : high + width] - sums[low:high] if len(sums) else sums
+                for sums in (self.total, self.limit)
+            ]
+            yield start, pair[0], pair[1]
 
 
 def _sums(values: Int64Array, offset: Int64Array, reach: int, comm: Comm) -> Int64Array:

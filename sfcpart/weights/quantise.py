@@ -153,16 +153,17 @@ def _checked(array: Array, first_gid: int, what: str) -> Array:
 
 def _exponent(array: Array, n: int, highest: float, comm: Comm) -> int:
     """Return the largest exponent with proved headroom, 0 for whole numbers that fit."""
-    # highest * 2**coarse < 2**(62 - bits of n): the sum of n floored values fits an int64
-    coarse = 62 - n.bit_length() - int(np.frexp(highest)[1]) - 1
-    floored = np.floor(_times_power(array, coarse)).astype(WEIGHT).sum()
     whole = array.dtype.kind != "f" or bool(np.all(array == np.floor(array)))
-    found = comm.allreduce(np.array([floored, not whole], WEIGHT))
-    bound = int(found[0]) + n  # of the sum times 2**coarse
-    if found[1] == 0 and _shifted(bound, -coarse) <= _MOST:
+    all_whole = comm.allreduce(np.array([whole], WEIGHT), "min")[0] == 1
+    if all_whole and n * highest <= _MOST:
         return 0
-    extra = (_MOST - n).bit_length() - 1 - bound.bit_length()
-    return coarse + extra
+    # highest * 2**coarse < 2**(61 - bits of n): the sum of n floored values fits an int64
+    coarse = 61 - n.bit_length() - int(np.frexp(highest)[1])
+    floored = np.floor(_times_power(array, coarse)).astype(WEIGHT).sum()
+    bound = int(comm.allreduce(np.array([floored], WEIGHT))[0]) + n  # of the sum times 2**coarse
+    if all_whole and _shifted(bound, -coarse) <= _MOST:
+        return 0
+    return coarse + (_MOST - n).bit_length() - 1 - bound.bit_length()
 
 
 def _shifted(value: int, by: int) -> int:
@@ -172,6 +173,8 @@ def _shifted(value: int, by: int) -> int:
 
 def _times_power(array: Array, exponent: int) -> FloatArray:
     """Return array * 2**exponent; integers above 2**53 are rounded first."""
+    if abs(exponent) < 1000:  # four times as fast, and as exact
+        return np.asarray(array * 2.0**exponent)
     return np.ldexp(array.astype(np.float64, copy=False), exponent)
 
 
