@@ -11,6 +11,8 @@ from typing import NamedTuple
 
 import pytest
 
+from sfcpart.kernels._jit import COMPILED
+
 ROOT = Path(__file__).resolve().parents[2]
 MESHES = ROOT / "meshes"
 
@@ -35,6 +37,11 @@ def sfcpart(capsys, tmp_path, monkeypatch):
     monkeypatch.chdir(tmp_path)
     (tmp_path / "meshes").symlink_to(MESHES)
     monkeypatch.setenv("SFCPART_THREADS", os.environ.get("SFCPART_THREADS", "2"))
+
+    if not COMPILED:  # plain Python visits cells and pixels one by one: give it fewer
+        for name, value in {"COLUMNS": 12, "ROWS": 4, "ACROSS": 3}.items():
+            monkeypatch.setattr(f"sfcpart.cli.demo.{name}", value)
+        monkeypatch.setattr("sfcpart.report.picture.FINE", 1)
 
     def call(line: str) -> Ended:
         from sfcpart.cli.run import run

@@ -1,4 +1,4 @@
-"""The sample meshes: as `tools/make_meshes.py` makes them, with the answers `meshes/README.md` tells."""
+"""The sample meshes: made again by `tools/make_meshes.py`, right as `meshes/README.md` tells."""
 
 from __future__ import annotations
 
