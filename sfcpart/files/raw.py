@@ -19,6 +19,8 @@ from sfcpart.mesh.mesh import Polyhedra
 __all__ = [
     "RawMesh",
     "check_ids",
+    "check_piece",
+    "check_rows",
     "concatenate",
     "join_pieces",
     "join_points",
@@ -148,7 +150,7 @@ def concatenate(parts: Sequence[RawMesh], source: str) -> RawMesh:
         If a piece names a point it does not have.
     """
     for part in parts:
-        check_ids(part.indptr, part.indices, len(part.points), source)
+        check_piece(part, source)
     if len(parts) == 1:
         return parts[0]
     points = np.concatenate([_three_columns(part.points) for part in parts])
@@ -162,6 +164,26 @@ def concatenate(parts: Sequence[RawMesh], source: str) -> RawMesh:
         cell_fields=_join_fields([part.cell_fields for part in parts]),
         point_fields=_join_fields([part.point_fields for part in parts]),
     )
+
+
+def check_piece(raw: RawMesh, source: str) -> None:
+    """Check what the operations of this module rely on: offsets that ascend, ids in range."""
+    check_rows(raw.indptr, raw.indices, f"{source}: cells")
+    check_ids(raw.indptr, raw.indices, len(raw.points), source)
+    faces = raw.polyhedra
+    if faces is not None:
+        check_rows(faces.cell_indptr, faces.cell_indices, f"{source}: polyhedra")
+        check_rows(faces.face_indptr, faces.face_indices, f"{source}: faces of polyhedra")
+        check_ids(faces.face_indptr, faces.face_indices, len(raw.points), source)
+        ids, n_faces = faces.cell_indices, len(faces.face_indptr) - 1
+        if len(ids) and (ids.min() < 0 or ids.max() >= n_faces):
+            raise MeshError(f"{source}: polyhedra name faces that are not there ({n_faces} are)")
+
+
+def check_rows(indptr: Int64Array, indices: IntArray, what: str) -> None:
+    """Check that offsets ascend from 0 and end where the data end."""
+    if indptr[0] != 0 or indptr[-1] != len(indices) or np.any(indptr[1:] < indptr[:-1]):
+        raise MeshError(f"{what}: offsets do not ascend from 0 to {len(indices)}; it is damaged")
 
 
 def check_ids(indptr: Int64Array, indices: IntArray, n_points: int, source: str) -> None:

@@ -87,7 +87,7 @@ _SIGNATURES: tuple[tuple[str, re.Pattern[bytes]], ...] = (
     ("ply", re.compile(rb"ply\r?\n")),
     ("medit", re.compile(rb"\s*MeshVersionFormatted\s")),
     ("off", re.compile(rb"OFF\s")),
-    ("su2", re.compile(rb"(\s*%[^\n]*\n|\s+)*N(DIME|ZONE)\s*=")),
+    ("su2", re.compile(rb"(?:\s|%[^\r\n]*)*N(DIME|ZONE)\s*=")),
     ("pvtu", re.compile(rb"(?s).{0,1000}<VTKFile[^>]*type=.PUnstructuredGrid.")),
     ("vtu", re.compile(rb"(?s).{0,1000}<VTKFile[\s>]")),
     ("xdmf", re.compile(rb"(?s).{0,1000}<Xdmf[\s>]")),
@@ -184,7 +184,7 @@ def file_format(path: str | PathLike[str]) -> tuple[str, ...]:
         raise FileError(
             f"{place}: has an unknown format (extension {place.suffix or 'none'}); known: {known}"
         )
-    if by_name[0] in ("vtkhdf", "hdf5", "vtu", "pvtu", "vtk", "su2"):
+    if by_name[0] in ("vtkhdf", "hdf5", "vtu", "pvtu", "vtk"):
         raise FileError(
             f"{place}: is no {by_name[0].upper()} file although it is called so; it is damaged "
             f"or of another format"

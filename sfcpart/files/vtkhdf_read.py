@@ -240,6 +240,8 @@ class _Reader:
                     f"{self.path}: VTKHDF/{name} of partition {part} goes from {own[0]} to "
                     f"{own[-1]}; wanted 0 to {total}"
                 )
+            if np.any(own[1:] < own[:-1]):
+                raise FileError(f"{self.path}: VTKHDF/{name} of partition {part} falls somewhere")
             own += shift
             done += count
             shift += total

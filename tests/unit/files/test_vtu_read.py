@@ -31,12 +31,10 @@ def write(path, grid, *, mode="Appended", raw=True, compressor="ZLib", wide=Fals
 @pytest.mark.parametrize(
     ("mode", "raw", "compressor", "wide", "big"),
     [
-        *list(
-            itertools.product(
-                ["Binary", "Appended"], [0, 1], ["None", "ZLib", "LZMA"], [0, 1], [0, 1]
-            )
-        ),
         ("Ascii", 0, "None", 0, 0),
+        *itertools.product(
+            ["Binary", "Appended"], [0, 1], ["None", "ZLib", "LZMA"], [0, 1], [0, 1]
+        ),
     ],
 )
 def test_every_storage_of_vtk_comes_back(tmp_path, mode, raw, compressor, wide, big):
@@ -48,7 +46,7 @@ def test_every_storage_of_vtk_comes_back(tmp_path, mode, raw, compressor, wide, 
 
 
 def test_older_face_streams_of_polyhedra_are_read(tmp_path):
-    # 27 numbers: the cube of file_samples as meshio (and VTK before 9.4) store polyhedra
+    # the cube of file_samples as meshio (and VTK before 9.4) store polyhedra
     import meshio
 
     from tests.file_samples import CUBE_FACES
@@ -67,10 +65,10 @@ def piece(x: float, gids, ghost=None):
     places = vtk.vtkPoints()
     square = [(x, 0), (x + 1, 0), (x + 1, 1), (x, 1)]
     ends = [(x + 2, 0), (x + 2, 1)]
-    for a, b, c in [(*p, z) for z in (0, 1) for p in square] + [
-        (*p, z) for z in (0, 1) for p in ends
-    ]:
-        places.InsertNextPoint(a, b, c)
+    for places_of_kind in (square, ends):
+        for z in (0, 1):
+            for a, b in places_of_kind:
+                places.InsertNextPoint(a, b, z)
     grid.SetPoints(places)
     grid.GetPointData().Initialize()
     for data, name, values in (
