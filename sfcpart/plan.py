@@ -53,7 +53,9 @@ def plan_problem(
     n_parts = _whole(n_parts, "n_parts")
     _check_part_count(n_parts, mesh.n_cells)
     weight = weights_of(mesh, weights)
-    limit_weight, part_limit = _limits(weights_of(mesh, limit_weights), limits, n_parts, mesh)
+    limit_weight, part_limit, limit_unit = _limits(
+        weights_of(mesh, limit_weights), limits, n_parts, mesh
+    )
     return Problem(
         centers=mesh.centers,
         n_parts=n_parts,
@@ -65,6 +67,7 @@ def plan_problem(
         level_sizes=_levels(levels, n_parts),
         limit_weight=limit_weight,
         part_limit=part_limit,
+        limit_unit=limit_unit,
         group=_groups(mesh, together, pairs, periodic),
         seed=_whole(seed, "seed", least=0),
     )
@@ -159,12 +162,12 @@ def _levels(levels: Sequence[int] | None, n_parts: int) -> tuple[int, ...]:
 
 def _limits(
     weight: Array | None, limits: ArrayLike | None, n_parts: int, mesh: Mesh
-) -> tuple[Int64Array | None, Int64Array | None]:
-    """Return the quantised second weight and the most of it each part may hold."""
+) -> tuple[Int64Array | None, Int64Array | None, float]:
+    """Return the quantised second weight, the most of it each part may hold, and their unit."""
     if limits is None:
         if weight is not None:
             raise WeightError("a second weight was given without a limit; give both or none")
-        return None, None
+        return None, None, 1.0
     most = np.asarray(limits, np.float64)
     if most.shape not in ((), (1,), (n_parts,)):
         raise WeightError(
@@ -175,7 +178,7 @@ def _limits(
         np.ones(mesh.n_cells, np.int64) if weight is None else weight, what="limited weight"
     )
     part_limit = quantise_limits(np.broadcast_to(most, (n_parts,)), second.exponent)
-    return second.values, part_limit
+    return second.values, part_limit, second.unit
 
 
 def _groups(

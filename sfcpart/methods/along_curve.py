@@ -8,7 +8,6 @@ each chunk then again. `tolerance` plays no role here: the least bottleneck is a
 
 from __future__ import annotations
 
-from dataclasses import replace
 from functools import partial
 from typing import cast
 
@@ -77,23 +76,33 @@ def _parts(
     """Return the part of each item of this rank's stretch."""
     sizes = problem.level_sizes or (problem.n_parts,)
     total = int(problem.comm.allreduce(np.array([n_items], np.int64))[0])
+    limit = _bounded_limit(problem, limited)
     if total < problem.n_parts:
-        problem, limited = _one_item_a_part(problem, n_items, limited)
+        limited, limit = _one_item_a_part(problem, n_items, limited, limit)
     line = Line.of(
         n_items,
         weight=weight,
         limit_weight=limited,
         reach=problem.n_parts // sizes[0] + 1,
         comm=problem.comm,
+        limit_unit=problem.limit_unit,
     )
-    cut = _nested_cuts(problem, line, sizes)
+    cut = _nested_cuts(problem, line, sizes, limit)
     bounded = np.clip(cut, line.first, line.last)
     return np.repeat(np.arange(problem.n_parts, dtype=PART), np.diff(bounded))
 
 
+def _bounded_limit(problem: Problem, limited: Int64Array | None) -> Int64Array | None:
+    """Return the limits, none above the sum of all cells, so that their sums cannot overflow."""
+    if limited is None or problem.part_limit is None:
+        return None
+    whole = int(problem.comm.allreduce(limited.sum(keepdims=True))[0])
+    return np.minimum(problem.part_limit, whole).astype(np.int64)
+
+
 def _one_item_a_part(
-    problem: Problem, n_items: int, limited: Int64Array | None
-) -> tuple[Problem, Int64Array]:
+    problem: Problem, n_items: int, limited: Int64Array | None, limit: Int64Array | None
+) -> tuple[Int64Array, Int64Array]:
     """Let no part take two items where some must stay empty: by a limit that two items break.
 
     With U the sum of the limited weight and 1, an item counts U more and a part may hold U more.
@@ -104,16 +113,15 @@ def _one_item_a_part(
             f"groups leave fewer items than the {problem.n_parts} parts; "
             "ask for fewer parts or smaller groups"
         )
-    own = np.zeros(n_items, np.int64) if limited is None else limited
-    count = int(problem.comm.allreduce(own.sum(keepdims=True))[0]) + 1
-    limit = np.zeros(problem.n_parts, np.int64)
-    if limited is not None and problem.part_limit is not None:
-        limit = np.minimum(problem.part_limit, count - 1)
-    # not the cells' own weights any more: only _nested_cuts sees this problem
-    return replace(problem, limit_weight=own + count, part_limit=limit + count), own + count
+    if limited is None or limit is None:
+        return np.ones(n_items, np.int64), np.ones(problem.n_parts, np.int64)
+    more = int(problem.comm.allreduce(limited.sum(keepdims=True))[0]) + 1
+    return limited + more, limit + more
 
 
-def _nested_cuts(problem: Problem, line: Line, sizes: tuple[int, ...]) -> Int64Array:
+def _nested_cuts(
+    problem: Problem, line: Line, sizes: tuple[int, ...], part_limit: Int64Array | None
+) -> Int64Array:
     """Divide the line level by level; return the cuts of the smallest parts, (n_parts + 1,)."""
     some_for_each = line.n_items >= problem.n_parts
     cut = np.array([0, line.n_items], np.int64)
@@ -122,9 +130,7 @@ def _nested_cuts(problem: Problem, line: Line, sizes: tuple[int, ...]) -> Int64A
         n_chunks *= size
         inside = problem.n_parts // n_chunks
         speed = problem.part_speed.astype(np.float64).reshape(n_chunks, inside).sum(axis=1)
-        limit = None
-        if problem.limit_weight is not None and problem.part_limit is not None:
-            limit = problem.part_limit.astype(np.int64).reshape(n_chunks, inside).sum(axis=1)
+        limit = None if part_limit is None else _summed(part_limit, n_chunks)
         pieces = []
         for chunk in range(len(cut) - 1):
             own = slice(chunk * size, (chunk + 1) * size)
@@ -140,6 +146,12 @@ def _nested_cuts(problem: Problem, line: Line, sizes: tuple[int, ...]) -> Int64A
             )
         cut = np.append(np.concatenate(pieces), line.n_items)
     return cut
+
+
+def _summed(limit: Int64Array, n_chunks: int) -> Int64Array:
+    """Return the limits of chunks of parts, none above half of what an int64 holds."""
+    sums = [min(sum(map(int, row)), 1 << 62) for row in limit.reshape(n_chunks, -1)]
+    return np.array(sums, np.int64)
 
 
 def _unfit(problem: Problem) -> PartitionError | None:
@@ -163,8 +175,8 @@ def _unfit(problem: Problem) -> PartitionError | None:
     if need <= most:
         return None
     return PartitionError(
-        f"cell {problem.first_gid + heaviest} alone needs {need}, but no part may hold more than "
-        f"{most}; raise the limit"
+        f"cell {problem.first_gid + heaviest} alone needs {need * problem.limit_unit:.10g}, but no "
+        f"part may hold more than {most * problem.limit_unit:.10g}; raise the limit"
     )
 
 
@@ -177,6 +189,7 @@ def _too_heavy(problem: Problem, bundles: Bundles) -> PartitionError | None:
     if need <= most:
         return None
     return PartitionError(
-        f"group {int(bundles.name[heaviest])} needs {need}, but no part may hold more than {most}; "
-        "raise the limit or make the group smaller"
+        f"group {int(bundles.name[heaviest])} needs {need * problem.limit_unit:.10g}, but no part "
+        f"may hold more than {most * problem.limit_unit:.10g}; raise the limit or make the group "
+        "smaller"
     )

@@ -355,11 +355,12 @@ class _Task:
         swap = Line(self.line.comm, self.line.offset, self.line.limit, np.empty(0, np.int64))
         positive = np.maximum(self.limit, 1).astype(np.float64)
         factor = _Task.of(swap, self.begin, self.end, positive, None, self.least).least_bottleneck()
-        held = int(self.edge_sums[1, 1] - self.edge_sums[0, 1])
+        need = int(self.edge_sums[1, 1] - self.edge_sums[0, 1]) * self.line.limit_unit
+        may_hold = sum(map(int, self.limit)) * self.line.limit_unit
         raise PartitionError(
-            f"the limits cannot be kept by contiguous parts: the cells need {held} in all, the "
-            f"{n_parts} parts may hold {sum(map(int, self.limit))}; limits {factor:.6g} times as "
-            "large would do; raise them or ask for more parts"
+            f"the limits cannot be kept by contiguous parts: the cells need {need:.10g} in all, "
+            f"the {n_parts} parts may hold {may_hold:.10g}; limits {factor:.6g} times as large "
+            "would do; raise them or ask for more parts"
         )
 
 

@@ -33,12 +33,15 @@ class Line:
         Weight before position offset[rank] + i; empty if each item weighs 1.
     limit : (n_local + 1 + k,) int64, or empty
         The same for the limited weight; empty if there is none.
+    limit_unit : float
+        What 1 of the limited weight stands for, for messages.
     """
 
     comm: Comm
     offset: Int64Array
     total: Int64Array
     limit: Int64Array
+    limit_unit: float = 1.0
 
     @classmethod
     def of(
@@ -49,6 +52,7 @@ class Line:
         limit_weight: Int64Array | None,
         reach: int,
         comm: Comm,
+        limit_unit: float = 1.0,
     ) -> Line:
         """Build the sums; `reach` is how many positions beyond the stretch they must cover."""
         lengths = np.concatenate(comm.allgather(np.array([n_items], OFFSET)))
@@ -57,7 +61,7 @@ class Line:
             np.empty(0, WEIGHT) if given is None else _sums(given, offset, reach, comm)
             for given in (weight, limit_weight)
         ]
-        return cls(comm, offset, sums[0], sums[1])
+        return cls(comm, offset, sums[0], sums[1], limit_unit)
 
     @property
     def first(self) -> int:

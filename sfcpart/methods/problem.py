@@ -33,6 +33,8 @@ class Problem:
     limit_weight : (n_local,) int64 or None
         A second quantised weight (memory) with `part_limit` as the most a part may hold.
     part_limit : (n_parts,) int64 or None
+    limit_unit : float
+        What the integer 1 of these two stands for; only messages need it.
     group : (n_local,) int64 or None
         Cells with the same non-negative number stay together; -1 = free.
     seed : int
@@ -54,5 +56,6 @@ class Problem:
     level_sizes: tuple[int, ...] = field(default=())
     limit_weight: Int64Array | None = None
     part_limit: Int64Array | None = None
+    limit_unit: float = 1.0
     group: Int64Array | None = None
     seed: int = 0

@@ -114,13 +114,16 @@ def join_groups(*groups: Int64Array) -> Int64Array:
     Returns
     -------
     (n_cells,) int64
-        A group is named by its lowest cell; a group of one cell is free.
+        A group is named by its lowest cell; a group of one cell is free. A single grouping is
+        returned as it is.
 
     Examples
     --------
     >>> join_groups(np.array([5, 5, -1, -1]), np.array([-1, 2, 2, 9])).tolist()
     [0, 0, 0, -1]
     """
+    if len(groups) == 1:
+        return groups[0]
     n_cells = len(groups[0])
     links = []
     for group in groups:
