@@ -97,4 +97,4 @@ def test_groups_are_listed_and_inverted_cells_warned_of():
 def test_the_memory_of_a_split_grows_with_the_mesh():
     small, large = grid((4, 4, 4)), grid((8, 8, 8))
     assert split_memory(large) > split_memory(small)
-    assert 300 < (split_memory(large) - split_memory(small)) / (512 - 64) < 600
+    assert 300 < (split_memory(large) - split_memory(small)) / (512 - 64) < 400
