@@ -27,7 +27,16 @@ from typing import TYPE_CHECKING, Literal, cast
 import numpy as np
 from numpy.typing import ArrayLike
 
-from sfcpart.dtypes import COORDINATE, GID, KEY, Array, FloatArray, Int64Array, IntArray
+from sfcpart.dtypes import (
+    COORDINATE,
+    GID,
+    KEY,
+    Array,
+    FloatArray,
+    Int64Array,
+    IntArray,
+    index_dtype,
+)
 from sfcpart.errors import InputError
 from sfcpart.kernels import hilbert
 from sfcpart.kernels.radix import put_rows, sorting, survey, take_rows
@@ -110,9 +119,8 @@ def curve_order(
     """
     comm = comm or _alone()
     line = curve_slice(centers, curve=curve, comm=comm)
-    n = len(line.order)
-    first = int(comm.exscan(np.array([n], GID))[0])
-    return cast(Int64Array, line.gather(np.arange(first, first + n, dtype=GID)))
+    first = comm.exscan(np.array([len(line.order)], GID))[0]
+    return cast(Int64Array, line.forward(line.order + first))
 
 
 @dataclass(frozen=True, eq=False)
@@ -144,8 +152,11 @@ class CurveSlice:
 
     def gather(self, values: Array) -> Array:
         """Bring one value a local cell to the curve: (n_local,) -> (n_slice,) in curve order."""
-        mine = take_rows(values, self.order)
-        came = _join(self.comm.alltoall(_cut(mine, self.edge)))
+        return self.forward(take_rows(values, self.order))
+
+    def forward(self, values: Array) -> Array:
+        """Bring values that are in local curve order already to the curve."""
+        came = _join(self.comm.alltoall(_cut(values, self.edge)))
         return came if self.merge is None else take_rows(came, self.merge)
 
     def scatter(self, values: Array) -> Array:
@@ -176,7 +187,7 @@ def curve_slice(centers: ArrayLike, *, curve: Curve = "hilbert", comm: Comm) -> 
     key = frame.keys()
     order, key = sorting(key)
     if order is None:
-        order = np.arange(len(key), dtype=np.int32 if len(key) < 2**31 else np.int64)
+        order = np.arange(len(key), dtype=index_dtype(len(key)))
     edge = _even_edges(key, comm)
     pieces = comm.alltoall(_cut(key, edge))
     received = np.array([len(piece) for piece in pieces], np.int64)
@@ -217,6 +228,7 @@ def _untie(line: CurveSlice, key: Int64Array, frame: _Frame) -> CurveSlice:
     answer = np.empty(len(tied), KEY)
     answer[by_home] = _join(line.comm.alltoall(deep))
     came[tied] = came[tied[np.lexsort((answer, key[tied]))]]
+    came = came.astype(index_dtype(len(came)))
     return CurveSlice(line.comm, line.order, line.edge, line.received, came)
 
 

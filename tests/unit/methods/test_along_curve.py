@@ -197,6 +197,35 @@ def test_more_parts_than_cells():
     assert split(centers, 6, part_speed=speed).tolist() == [1, 3, 4]
 
 
+def test_few_cells_keep_limits():
+    centers = np.arange(3.0)[:, None] * [1.0, 0.0]
+    memory, limit = np.array([4, 1, 2]), np.array([1, 4, 1, 1, 2])
+    part = split(centers, 5, limit_weight=memory, part_limit=limit)
+    assert part[0] == 1
+    assert part[2] == 4
+    assert part[1] in (2, 3)
+
+
+def test_limits_are_spelled_in_the_users_unit():
+    options = {"limit_weight": np.full(6, 2**40), "limit_unit": 2.0**-40}
+    centers = np.arange(6.0)[:, None] * [1.0, 0.0]
+    with pytest.raises(PartitionError, match="need 6 in all, the 2 parts may hold 5"):
+        split(centers, 2, part_limit=np.full(2, 5 * 2**39), **options)
+    with pytest.raises(
+        PartitionError, match="cell 0 alone needs 1, but no part may hold more than 0.5"
+    ):
+        split(centers, 2, part_limit=np.full(2, 2**39), **options)
+
+
+def test_unlimited_parts_do_not_overflow():
+    centers = np.random.default_rng(0).random((5000, 2))
+    part = split(
+        centers, 4096, limit_weight=np.full(5000, 2**40), part_limit=np.full(4096, 2**62),
+        level_sizes=(4, 1024),
+    )  # fmt: skip
+    assert len(np.unique(part)) == 4096
+
+
 def test_groups_that_leave_too_few_items():
     centers = np.random.default_rng(0).random((9, 2))
     with pytest.raises(PartitionError, match="groups leave fewer items than the 4 parts"):
