@@ -39,6 +39,7 @@ __all__ = [
     "list_tetra_faces",
     "match_faces",
     "place_buckets",
+    "sort_pairs",
 ]
 
 ID_LIMIT = 1 << 30
@@ -234,7 +235,7 @@ def match_faces(
                 key[i] = face[s, 0] << 32 | face[s, 1] >> 32
                 d = (face[s, 1] & _LOW) >> 2
                 tail[i] = s if face[s, 1] & 3 == 3 else d << 32 | s
-            _sort(key, tail, n)
+            sort_pairs(key, tail, n)
             i = np.int64(0)  # a bare 0 would compile callees twice
             while i < n:
                 s = tail[i] & _LOW
@@ -249,7 +250,7 @@ def match_faces(
 
 
 @jit
-def _sort(key: Int64Array, tail: Int64Array, n: int) -> None:
+def sort_pairs(key: Array, tail: Array, n: int) -> None:
     """Sort pairs: by insertion, with Shell's widening gaps where a point has very many faces."""
     gap = 1
     while 27 * gap < n:

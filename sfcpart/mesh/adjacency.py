@@ -21,7 +21,7 @@ from sfcpart.dtypes import (
     index_dtype,
 )
 from sfcpart.errors import MeshError
-from sfcpart.kernels import faces
+from sfcpart.kernels import face_list, faces
 from sfcpart.kernels.cells import CellArrays
 from sfcpart.kernels.threads import n_threads, run_ranges
 from sfcpart.mesh import build
@@ -182,19 +182,13 @@ def sort_faces(mesh: Mesh) -> Adjacency:
         As in `sfcpart.graph.CellGraph`.
     """
     assert mesh.faces is not None
-    pair, size, n = mesh.faces.cell, mesh.faces.measure, mesh.n_cells
-    inner = pair[:, 1] >= 0
-    a, b, w = pair[inner, 0], pair[inner, 1], size[inner]
-    row, column = np.concatenate([a, b]), np.concatenate([b, a])
-    both = np.concatenate([w, w])
-    order = np.lexsort((both, column, row))
+    cell, measure, n = mesh.faces.cell, mesh.faces.measure, mesh.n_cells
     indptr = np.zeros(n + 1, OFFSET)
-    np.cumsum(np.bincount(row, minlength=n), out=indptr[1:])
-    bare = pair[~inner, 0]
-    return (
-        indptr,
-        column[order],
-        both[order],
-        np.bincount(bare, minlength=n).astype(np.int32),
-        np.bincount(bare, weights=size[~inner], minlength=n).astype(COORDINATE),
-    )
+    boundary_count, boundary_measure = np.zeros(n, np.int32), np.zeros(n, COORDINATE)
+    face_list.count_faces(cell, measure, indptr[1:], boundary_count, boundary_measure)
+    np.cumsum(indptr, out=indptr)
+    indices = np.empty(indptr[-1], index_dtype(n))
+    data = np.empty(indptr[-1], COORDINATE)
+    face_list.place_faces(cell, measure, indptr[:-1].copy(), indices, data)
+    run_ranges(face_list.sort_rows, n, indptr, indices, data.view(np.int64))
+    return indptr, indices, data, boundary_count, boundary_measure

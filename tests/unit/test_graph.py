@@ -231,6 +231,27 @@ def test_faces_given_twice_count_twice():
     assert graph.boundary_measure.tolist() == [5, 7]
 
 
+@given(st.integers(2, 12), st.integers(0, 2**32 - 1))
+def test_given_faces_are_sorted_into_rows(n, seed):
+    rng = np.random.default_rng(seed)
+    pair = rng.integers(0, n, (int(rng.integers(0, 400)), 2))
+    pair = pair[pair[:, 0] != pair[:, 1]]
+    pair[rng.random(len(pair)) < 0.2, 1] = -1
+    measure = rng.integers(0, 4, len(pair)) / 4
+    graph = cell_graph(Mesh.from_faces(pair, measure, rng.random((n, 3)), np.ones(n)))
+    rows = [[] for _ in range(n)]
+    for (a, b), size in zip(pair.tolist(), measure.tolist(), strict=True):
+        if b >= 0:
+            rows[a].append((b, size))
+            rows[b].append((a, size))
+    flat = [entry for row in rows for entry in sorted(row)]
+    got = zip(graph.indices.tolist(), graph.data.tolist(), strict=True)
+    assert list(got) == flat
+    assert_graph(graph)
+    bare = [pair[(pair[:, 1] < 0) & (pair[:, 0] == c)] for c in range(n)]
+    assert graph.boundary_count.tolist() == [len(each) for each in bare]
+
+
 def test_the_graph_is_kept_with_the_mesh_and_its_copies():
     mesh = grid((3, 3))
     graph = cell_graph(mesh)
