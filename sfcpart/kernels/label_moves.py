@@ -1,0 +1,156 @@
+"""Data-parallel label moves with a second look.
+
+Every boundary vertex proposes its best other part; each proposal is then looked at again as if
+all better ones had been made, and stands only if it still does not lose. Both steps read the
+old labels only, so ranges of vertices can go to any number of threads.
+
+Source: Gilbert, Madduri, Boman, Rajamanickam, arXiv:2304.13194 (2023), sec. 3 (label
+propagation, "afterburner").
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from sfcpart.dtypes import Array
+from sfcpart.kernels._jit import jit
+
+__all__ = ["find_boundary", "look_again", "propose_moves", "spread_active"]
+
+
+@jit
+def find_boundary(
+    start: int, stop: int, indptr: Array, indices: Array, part: Array, found: Array
+) -> int:
+    """List the vertices of `start:stop` with a neighbour in another part at `found[start:]`."""
+    n = start
+    for v in range(start, stop):
+        p = part[v]
+        for j in range(indptr[v], indptr[v + 1]):
+            if part[indices[j]] != p:
+                found[n] = v
+                n += 1
+                break
+    return n - start
+
+
+@jit
+def propose_moves(
+    start: int,
+    stop: int,
+    active: Array,
+    indptr: Array,
+    indices: Array,
+    edge_weight: Array,
+    part: Array,
+    n_parts: int,
+    locked: Array,
+    boldness: int,
+    wish: Array,
+    wish_gain: Array,
+) -> int:
+    """Write wishes (part or -1) of `active[start:stop]`; return their outward edge weight.
+
+    A vertex may wish for a loss of up to `boldness`/256 of its links to its own part.
+    """
+    link = np.zeros(n_parts, np.int64)
+    near = np.empty(n_parts, np.int32)
+    outward = 0
+    for i in range(start, stop):
+        v = active[i]
+        own = part[v]
+        n_near = 0
+        for j in range(indptr[v], indptr[v + 1]):
+            p = part[indices[j]]
+            if link[p] == 0:
+                near[n_near] = p
+                n_near += 1
+            link[p] += edge_weight[j]
+        best = -1
+        best_link = 0
+        inside = link[own]
+        for x in range(n_near):
+            p = near[x]
+            if p != own:
+                outward += link[p]
+                if link[p] > best_link or (link[p] == best_link and p < best):
+                    best = p
+                    best_link = link[p]
+            link[p] = 0
+        wish[v] = -1
+        if best >= 0 and not locked[v]:
+            gain = best_link - inside
+            if gain >= 0 or -gain * 256 < boldness * inside:
+                wish[v] = best
+                wish_gain[v] = gain
+    return outward
+
+
+@jit
+def look_again(
+    start: int,
+    stop: int,
+    active: Array,
+    indptr: Array,
+    indices: Array,
+    edge_weight: Array,
+    part: Array,
+    wish: Array,
+    wish_gain: Array,
+    stands: Array,
+) -> None:
+    """Mark in `stands` the wishes of `active[start:stop]` that lose nothing after better ones."""
+    for i in range(start, stop):
+        v = active[i]
+        to = wish[v]
+        stands[i] = False
+        if to < 0:
+            continue
+        own = part[v]
+        gain = 0
+        for j in range(indptr[v], indptr[v + 1]):
+            u = indices[j]
+            p = part[u]
+            if wish[u] >= 0 and (
+                wish_gain[u] > wish_gain[v] or (wish_gain[u] == wish_gain[v] and u < v)
+            ):
+                p = wish[u]
+            if p == to:
+                gain += edge_weight[j]
+            elif p == own:
+                gain -= edge_weight[j]
+        stands[i] = gain >= 0
+
+
+@jit
+def spread_active(
+    active: Array, moved: Array, indptr: Array, indices: Array, part: Array, seen: Array, out: Array
+) -> int:
+    """List the boundary vertices among `active`, `moved` and the neighbours of `moved`.
+
+    `seen` is all False before and after; returns the length of the list in `out`.
+    """
+    n = 0
+    for i in range(len(active)):
+        out[n] = active[i]
+        seen[active[i]] = True
+        n += 1
+    for i in range(len(moved)):
+        v = moved[i]
+        for j in range(indptr[v] - 1, indptr[v + 1]):
+            u = v if j < indptr[v] else indices[j]
+            if not seen[u]:
+                seen[u] = True
+                out[n] = u
+                n += 1
+    kept = 0
+    for i in range(n):
+        v = out[i]
+        seen[v] = False
+        p = part[v]
+        for j in range(indptr[v], indptr[v + 1]):
+            if part[indices[j]] != p:
+                out[kept] = v
+                kept += 1
+                break
+    return kept
