@@ -184,14 +184,13 @@ def build_halo(
     """
     _check_options(layers, across)
     order = _checked_order(mesh, partition, order)
-    owned_indptr, owned = _group(order, partition)
     if layers == 0:
         lists = _no_lists(partition.n_cells)
     elif across == "faces":
         lists = _across_faces(graph, partition, layers)
     else:
         lists = _across_points(mesh, partition, layers)
-    return _sorted_halo(owned_indptr, owned, lists, layers=layers, across=across)
+    return _arranged(order, partition, lists, layers=layers, across=across)
 
 
 def _check_options(layers: int, across: str) -> None:
@@ -227,16 +226,6 @@ def _all_met(order: IntArray) -> bool:
     met = np.zeros(len(order), np.bool_)
     met[order] = True
     return bool(met.all())
-
-
-def _group(order: IntArray, partition: Partition) -> tuple[Int64Array, IntArray]:
-    """Group the cells by part, each part in curve order."""
-    from sfcpart.kernels.halo import group_rows
-
-    indptr = np.zeros(partition.n_parts + 1, OFFSET)
-    owned = np.empty_like(order)
-    group_rows(order, partition.cell_part, indptr, owned)
-    return indptr, owned
 
 
 def _across_faces(graph: CellGraph | None, partition: Partition, layers: int) -> _Lists:
@@ -316,17 +305,18 @@ def _spread(
     return to_indptr, to_part
 
 
-def _sorted_halo(
-    owned_indptr: Int64Array, owned: IntArray, lists: _Lists, *, layers: int, across: Across
+def _arranged(
+    order: IntArray, partition: Partition, lists: _Lists, *, layers: int, across: Across
 ) -> Halo:
-    """Sort the pairs of part and cell into the lists of both sides and freeze them."""
-    from sfcpart.kernels.halo import sort_pairs
+    """Group the cells, sort the pairs of part and cell into the lists of both sides, freeze."""
+    from sfcpart.kernels.halo import arrange
 
-    n_parts, n_pairs = len(owned_indptr) - 1, len(lists[1])
-    halo_indptr, sent_indptr = np.zeros((2, n_parts + 1), OFFSET)
-    halo, send = np.empty(n_pairs, owned.dtype), np.empty(n_pairs, owned.dtype)
-    owner = np.empty(n_pairs, PART)
-    sort_pairs(owned_indptr, owned, *lists, halo_indptr, halo, owner, sent_indptr, send)
+    n_parts, n_pairs = partition.n_parts, len(lists[1])
+    owned_indptr, halo_indptr, sent_indptr = np.zeros((3, n_parts + 1), OFFSET)
+    owned, owner = np.empty_like(order), np.empty(n_pairs, PART)
+    halo, send = np.empty(n_pairs, order.dtype), np.empty(n_pairs, order.dtype)
+    cells = (order, partition.cell_part, owned_indptr, owned)
+    arrange(*cells, *lists, halo_indptr, halo, owner, sent_indptr, send)
     neighbour_indptr, neighbour, receive_indptr = _runs(halo_indptr, owner)
     send_indptr = _send_rows(neighbour_indptr, neighbour, receive_indptr)
     _freeze(owned_indptr, owned, halo_indptr, halo, neighbour_indptr, neighbour)

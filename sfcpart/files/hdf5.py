@@ -19,7 +19,7 @@ if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
     from os import PathLike
 
-__all__ = ["check_stored", "create_hdf5", "is_hdf5", "read_hdf5"]
+__all__ = ["check_stored", "create_hdf5", "is_hdf5", "read_hdf5", "read_text", "write_text"]
 
 _SIGNATURE = b"\x89HDF\r\n\x1a\n"
 # A corrupt file shows itself in any of these, depending on which byte is wrong.
@@ -125,6 +125,32 @@ def check_stored(dataset: Any, path: str | PathLike[str]) -> None:
             f"{path}: {dataset.name} claims {claimed} bytes, but the file has {stored}; "
             f"it is damaged"
         )
+
+
+def write_text(group: Any, name: str, text: str) -> None:
+    """Write text as an attribute of fixed length.
+
+    Text of variable length lies in a heap, and the HDF5 library never returns from some heaps
+    with a wrong byte.
+    """
+    import h5py
+
+    stored = text.encode("utf-8")
+    group.attrs.create(name, stored, dtype=h5py.string_dtype("utf-8", max(1, len(stored))))
+
+
+def read_text(group: Any, name: str) -> str:
+    """Read an attribute that `write_text` wrote.
+
+    Raises
+    ------
+    FileError
+        If it is no text of fixed length.
+    """
+    attribute = group.attrs.get_id(name)
+    if attribute.dtype.kind != "S" or attribute.shape != ():
+        raise FileError(f"{group.file.filename}: attribute {name} is no text of fixed length")
+    return bytes(group.attrs[name]).decode("utf-8", "replace")
 
 
 class _PatientSink:

@@ -30,7 +30,7 @@ import numpy as np
 
 from sfcpart.dtypes import Array, Int32Array, Int64Array, IntArray
 from sfcpart.errors import FileError
-from sfcpart.files.hdf5 import create_hdf5
+from sfcpart.files.hdf5 import create_hdf5, read_text, write_text
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Iterator
@@ -124,8 +124,8 @@ def write_lists(file: Any, halo: Halo, *, input_digest: str = "") -> None:
     group.attrs["n_parts"] = halo.n_parts
     group.attrs["n_cells"] = halo.n_cells
     group.attrs["layers"] = halo.layers
-    group.attrs["across"] = halo.across
-    group.attrs["input_digest"] = input_digest
+    write_text(group, "across", halo.across)
+    write_text(group, "input_digest", input_digest)
     for name in _ARRAYS:
         group.create_dataset(name, data=getattr(halo, name))
 
@@ -183,13 +183,18 @@ def read_lists(file: Any, part: int) -> PartLists:
     receive_indptr = group["receive_indptr"][first : last + 1] - halo_rows[0]
     send_indptr = group["send_indptr"][first : last + 1]
     n_halo = int(halo_rows[1] - halo_rows[0])
+    if not (n_owned >= 0 and 0 <= n_halo <= len(group["send"])):
+        raise FileError(
+            f"{file.filename}: part {part} has {n_owned} owned and {n_halo} halo cells; "
+            "the file is damaged, split again"
+        )
     return PartLists(
         n_parts=n_parts,
         n_owned=n_owned,
         n_halo=n_halo,
         layers=int(group.attrs["layers"]),
-        across=str(group.attrs["across"]),
-        input_digest=str(group.attrs["input_digest"]),
+        across=read_text(group, "across"),
+        input_digest=read_text(group, "input_digest"),
         neighbour=group["neighbour"][first:last],
         receive_indptr=receive_indptr,
         receive=np.arange(n_owned, n_owned + n_halo),
@@ -203,7 +208,7 @@ def write_groups(file: Any, groups: Iterable[GroupByPart]) -> None:
     """Write boundary groups into the group `/sfcpart` of an open HDF5 file."""
     for number, rows in enumerate(groups):
         group = file[GROUP].create_group(f"boundary/{number}")
-        group.attrs["name"] = rows.name
+        write_text(group, "name", rows.name)
         group.attrs["tag"] = rows.tag
         for name in ("part_indptr", "element", "cell", "kind", "indptr", "points"):
             group.create_dataset(name, data=getattr(rows, name))
@@ -216,7 +221,7 @@ def _read_groups(group: Any, part: int) -> Iterator[PartBoundary]:
         first, last = (int(row) for row in stored["part_indptr"][part : part + 2])
         indptr = stored["indptr"][first : last + 1]
         yield PartBoundary(
-            name=str(stored.attrs["name"]),
+            name=read_text(stored, "name"),
             tag=int(stored.attrs["tag"]),
             kind=stored["kind"][first:last],
             indptr=indptr - indptr[0],

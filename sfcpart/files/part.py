@@ -220,20 +220,7 @@ class _Slices:
 
 def _checked(place: Path, part: int, lists: PartLists, arrays: dict[str, Any]) -> Part:
     """Put mesh and lists together after a check that they fit each other."""
-    n_cells, n_points = len(arrays["kind"]), len(arrays["points"])
-    fits = (
-        n_cells == lists.n_owned + lists.n_halo
-        and len(arrays["indptr"]) == n_cells + 1
-        and arrays["indptr"][-1] == len(arrays["indices"])
-        and _within(arrays["indices"], n_points)
-        and len(arrays["cell_gid"]) == n_cells
-        and len(arrays["point_gid"]) == n_points
-        and _within(lists.send, lists.n_owned)
-        and lists.receive_indptr[-1] == lists.n_halo
-        and all(_within(group.indices, n_points) for group in lists.boundary)
-        and all(_within(group.cell, lists.n_owned) for group in lists.boundary)
-    )
-    if not fits:
+    if not (_mesh_fits(lists, arrays) and _lists_fit(lists, arrays)):
         raise FileError(f"{place}: mesh and exchange lists of part {part} do not fit; split again")
     about = ("n_parts", "n_owned", "layers", "across", "input_digest", "boundary")
     sides = ("neighbour", "send_indptr", "send", "receive_indptr", "receive")
@@ -243,6 +230,53 @@ def _checked(place: Path, part: int, lists: PartLists, arrays: dict[str, Any]) -
     _freeze(*(values[name] for name in sides))
     _freeze(*(array for array in arrays.values() if isinstance(array, np.ndarray)))
     return Part(part=part, **values, **arrays)
+
+
+def _mesh_fits(lists: PartLists, arrays: dict[str, Any]) -> bool:
+    """Tell whether the local mesh is one and has the cells of the lists."""
+    n_cells, n_points, solid = len(arrays["kind"]), len(arrays["points"]), arrays["polyhedra"]
+    return (
+        n_cells == lists.n_owned + lists.n_halo == len(arrays["cell_gid"])
+        and n_points == len(arrays["point_gid"])
+        and _are_rows(arrays["indptr"], n_cells, arrays["indices"], n_points)
+        and (solid is None or _faces_fit(solid, n_cells, n_points))
+    )
+
+
+def _faces_fit(solid: Polyhedra, n_cells: int, n_points: int) -> bool:
+    """Tell whether the faces of polyhedra are within range."""
+    n_faces = len(solid.face_indptr) - 1
+    return _are_rows(solid.cell_indptr, n_cells, solid.cell_indices, n_faces) and _are_rows(
+        solid.face_indptr, n_faces, solid.face_indices, n_points
+    )
+
+
+def _lists_fit(lists: PartLists, arrays: dict[str, Any]) -> bool:
+    """Tell whether the exchange lists and boundary groups are within range."""
+    n_near, n_points = len(lists.neighbour), len(arrays["points"])
+    last = lists.n_owned + lists.n_halo
+    return (
+        _within(lists.neighbour, lists.n_parts)
+        and _are_rows(lists.send_indptr, n_near, lists.send, lists.n_owned)
+        and _are_rows(lists.receive_indptr, n_near, lists.receive, last)
+        and all(
+            _are_rows(group.indptr, len(group.kind), group.indices, n_points)
+            and len(group.cell) == len(group.kind) == len(group.element)
+            and _within(group.cell, lists.n_owned)
+            for group in lists.boundary
+        )
+    )
+
+
+def _are_rows(indptr: Int64Array, n_rows: int, indices: IntArray, n_items: int) -> bool:
+    """Tell whether CSR arrays are consistent and in range."""
+    return (
+        len(indptr) == n_rows + 1
+        and indptr[0] == 0
+        and indptr[-1] == len(indices)
+        and bool(np.all(np.diff(indptr) >= 0))
+        and _within(indices, n_items)
+    )
 
 
 def _within(indices: IntArray, n: int) -> bool:

@@ -14,7 +14,7 @@ import numpy as np
 from sfcpart.dtypes import Int32Array, Int64Array, IntArray
 from sfcpart.kernels._jit import jit
 
-__all__ = ["group_rows", "reach", "rows_of_columns", "sort_pairs"]
+__all__ = ["arrange", "reach", "rows_of_columns"]
 
 
 @jit
@@ -153,3 +153,32 @@ def sort_pairs(
         owner = halo_owner[slot]
         sent[cursor[owner]] = local[slot]
         cursor[owner] += 1
+
+
+@jit
+def arrange(
+    order: IntArray,
+    cell_part: Int32Array,
+    owned_indptr: Int64Array,
+    owned: IntArray,
+    reach_indptr: Int64Array,
+    reach_part: Int32Array,
+    halo_indptr: Int64Array,
+    halo: IntArray,
+    halo_owner: Int32Array,
+    sent_indptr: Int64Array,
+    sent: IntArray,
+) -> None:
+    """Group the cells, then sort the pairs: one kernel, so that one is loaded (20 ms each)."""
+    group_rows(order, cell_part, owned_indptr, owned)
+    sort_pairs(
+        owned_indptr,
+        owned,
+        reach_indptr,
+        reach_part,
+        halo_indptr,
+        halo,
+        halo_owner,
+        sent_indptr,
+        sent,
+    )

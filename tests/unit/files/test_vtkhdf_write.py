@@ -127,8 +127,8 @@ def test_exchange_lists_lie_beside_the_mesh(tmp_path):
             "n_parts": 4,
             "n_cells": case.mesh.n_cells,
             "layers": 2,
-            "across": "faces",
-            "input_digest": "abc",
+            "across": b"faces",
+            "input_digest": b"abc",
         }
         for name in ("owned_indptr", "halo_indptr", "neighbour_indptr", "neighbour", "send"):
             assert np.array_equal(group[name][:], getattr(case.halo, name))
