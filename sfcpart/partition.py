@@ -61,7 +61,7 @@ class Partition:
             )
         if array.dtype.kind not in "iu":
             array = _whole_numbers(array)
-        highest = int(array.max(initial=-1))
+        highest = int(array.max()) if len(array) else -1  # unsigned dtypes have no -1
         count = highest + 1 if n_parts is None else int(n_parts)
         if count < 1:
             raise PartitionError(f"n_parts is {count}; wanted at least 1")
@@ -136,7 +136,8 @@ class Partition:
 
         if self.n_cells != other.n_cells:
             raise PartitionError(
-                f"the partitions have {self.n_cells} and {other.n_cells} cells; wanted the same mesh"
+                f"the partitions have {self.n_cells} and {other.n_cells} cells; "
+                "wanted the same mesh"
             )
         weight = np.ones(self.n_cells, np.int64) if weights is None else np.asarray(weights)
         shape = (self.n_parts, other.n_parts)
