@@ -107,6 +107,15 @@ def write_tets(path: Path, file_format: str, **options) -> None:
     mesh.write(path, file_format=file_format, **options)
 
 
+def write_ugrid(path: Path) -> None:
+    """Write the six tets and four triangles as big-endian UGRID by hand (meshio's writer fails)."""
+    corners, tets, triangles = tet_block()
+    with path.open("wb") as file:
+        for block in ([8, 4, 0, 6, 0, 0, 0], corners, triangles + 1, [1, 1, 2, 2], tets + 1):
+            array = np.asarray(block)
+            file.write(array.astype(">f8" if array.dtype.kind == "f" else ">i4").tobytes())
+
+
 def write_shell(path: Path, file_format: str) -> None:
     """Write a tetrahedron's surface through meshio, for formats that hold triangles only."""
     corners = np.array([[0, 0, 0], [1, 0, 0], [0, 1, 0], [0, 0, 1]], float)

@@ -11,8 +11,8 @@ from __future__ import annotations
 
 import contextlib
 import io
-import re
 import itertools
+import re
 import warnings
 from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
@@ -168,9 +168,8 @@ def _told(error: BaseException) -> str:
 
 def _reason(chatter: str, told: str) -> str:
     """Make one line of what meshio printed and raised."""
-    lines = [" ".join(line.split()) for line in chatter.splitlines()]
-    wanted = [line for line in lines if line and "Couldn't read file" not in line]
-    text = " ".join(wanted + ([told] if told else []))
+    printed = " ".join(chatter.split()).partition("Error: Couldn't read file")[0].strip()
+    text = " ".join(part for part in (printed, told) if part)
     return text[:300] or "the content does not follow the format (meshio gives no reason)"
 
 

@@ -81,7 +81,7 @@ def _sections(text: bytes) -> _Sections:
     found = _Sections()
     marker = ""
     keywords = list(_KEYWORD.finditer(text))
-    ends = [match.start() for match in keywords[1:]] + [len(text)]
+    ends = [*(match.start() for match in keywords[1:]), len(text)][: len(keywords)]
     for match, end in zip(keywords, ends, strict=True):
         name, value = match[1].decode(), match[2].strip().decode("utf-8", "replace")
         body = text[match.end() : end]
@@ -115,7 +115,7 @@ def _points(body: bytes, n_points: int, dim: int) -> Array:
     if dim not in (2, 3):
         raise FileError(f"NDIME= {dim}: wanted 2 or 3, before NPOIN")
     flat = _numbers(body, np.float64, "NPOIN")
-    width, rest = divmod(len(flat), n_points) if n_points else (dim, 0)
+    width, rest = divmod(len(flat), n_points) if n_points else (dim, len(flat))
     if rest or width not in (dim, dim + 1, dim + 2):
         raise FileError(
             f"NPOIN= {n_points}, but {len(flat)} numbers follow; wanted {dim} coordinates a "

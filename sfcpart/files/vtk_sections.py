@@ -183,7 +183,10 @@ class _Sections:
         dtype = np.dtype(code if self.is_text else f">{code}")
         if count * (2 if self.is_text else dtype.itemsize) > left + 1:
             raise FileError(f"claims {count} numbers, but {left} bytes are left; it is cut short")
-        flat = np.fromfile(self.file, dtype, count, sep=" " if self.is_text else "")
+        try:
+            flat = np.fromfile(self.file, dtype, count, sep=" " if self.is_text else "")
+        except (ValueError, DeprecationWarning):  # the latter in older numpy, if made an error
+            raise FileError(f"has something else where {count} numbers are wanted") from None
         if len(flat) != count:
             raise FileError(f"claims {count} numbers, but {len(flat)} could be read")
         native: Array = flat.astype(dtype.newbyteorder("="), copy=False)
