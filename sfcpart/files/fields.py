@@ -10,13 +10,17 @@ from sfcpart.dtypes import Array, IntArray
 
 __all__ = ["file_dtype", "gathered", "writable_fields"]
 
+_INPUT_IDS = {"GlobalCellIds": "InputCellIds", "GlobalPointIds": "InputPointIds"}
+
 
 def writable_fields(fields: Mapping[str, Array], reserved: frozenset[str]) -> dict[str, Array]:
     """Return the fields of real numbers by names that fit every file format.
 
-    Names in `reserved` are left out (the writers put arrays of their own there), and so are
-    fields of text, objects or complex numbers, which the formats cannot hold. A "/" in a name,
-    which would open a group in HDF5, becomes "_"; of fields whose names then agree the last stays.
+    Names in `reserved` are left out (the writers put arrays of their own there), but global ids
+    that the input carried stay as `InputCellIds` and `InputPointIds`, so that a split of a split
+    still leads back to the first mesh. Fields of text, objects or complex numbers, which the
+    formats cannot hold, are left out. A "/" in a name, which would open a group in HDF5, becomes
+    "_"; of fields whose names then agree the last stays.
 
     Examples
     --------
@@ -24,11 +28,16 @@ def writable_fields(fields: Mapping[str, Array], reserved: frozenset[str]) -> di
     ['a_b']
     """
     kept = {}
-    for name, field in fields.items():
+    for name, field in {**_input_ids(fields), **fields}.items():
         fitting = name.replace("/", "_").replace("\0", "_").strip(". ") or "field"
         if fitting not in reserved and np.asarray(field).dtype.kind in "biuf":
             kept[fitting] = np.asarray(field)
     return kept
+
+
+def _input_ids(fields: Mapping[str, Array]) -> dict[str, Array]:
+    """Return global ids of the input by the names under which they stay."""
+    return {kept: fields[name] for name, kept in _INPUT_IDS.items() if name in fields}
 
 
 def gathered(field: Array, rows: IntArray) -> Array:

@@ -11,9 +11,10 @@ import pytest
 
 from sfcpart.errors import FileError, PartitionError
 from sfcpart.files import pieces
+from sfcpart.files.read import read_mesh
 from sfcpart.files.vtkhdf_write import write_vtkhdf
 from sfcpart.mesh.mesh import Mesh
-from tests.parted import SAMPLES, Parted, parted
+from tests.parted import SAMPLES, Parted, parted, sliced
 
 
 def write(path, case: Parted, **options) -> None:
@@ -161,8 +162,32 @@ def test_own_names_win_over_fields_of_the_mesh(tmp_path):
         data = file["VTKHDF/CellData"]
         assert data["part"][:].max() == 3
         assert len(set(data["GlobalCellIds"][:])) == mesh.n_cells
+        assert set(data["InputCellIds"][:]) == {0}
         assert data["a_b"].dtype == np.uint8
         assert data["tensor"].shape[1:] == (4,)
+
+
+@pytest.mark.parametrize("name", ["tets", "mixed", "polyhedra", "section", "shell"])
+def test_the_file_reads_as_the_mesh_it_was_made_of(tmp_path, name):
+    case = parted(name, n_parts=4, layers=2)
+    write(tmp_path / "parts.vtkhdf", case)
+    mesh = read_mesh(tmp_path / "parts.vtkhdf")
+    gid = mesh.cell_fields["GlobalCellIds"]
+    assert sorted(gid.tolist()) == list(range(case.mesh.n_cells))
+    assert mesh.n_points == case.mesh.n_points
+    assert np.allclose(mesh.centers, case.mesh.centers[gid], rtol=1e-13, atol=1e-13)
+    assert np.array_equal(mesh.cell_fields["part"], case.partition.cell_part[gid])
+
+
+def test_a_split_of_a_split_leads_back_to_the_first_mesh(tmp_path):
+    case = parted("tets", n_parts=4)
+    first = case.mesh.cell_fields["depth"]
+    for n_parts in (3, 2):
+        write(tmp_path / "parts.vtkhdf", case)
+        case = sliced(read_mesh(tmp_path / "parts.vtkhdf"), n_parts=n_parts)
+    mesh = case.mesh
+    assert np.array_equal(mesh.cell_fields["depth"], first[mesh.cell_fields["InputCellIds"]])
+    assert not np.array_equal(mesh.cell_fields["depth"], first[mesh.cell_fields["GlobalCellIds"]])
 
 
 def test_more_parts_than_cells(tmp_path):
