@@ -1,9 +1,9 @@
 """The cell graph: which cells share a face, and how large that face is.
 
 Faces are matched by the set of their distinct corners, exactly: a counting sort by smallest
-corner, then a sort of the few faces of each bucket (`kernels/faces.py`). O(faces) in time as long
-as few faces share their smallest corner, O(faces log faces) at worst; deterministic for any number
-of threads.
+corner, then a sort of the few faces of each bucket (`sfcpart.kernels.faces`). O(faces) in time
+while few faces share their smallest corner, and little more where many do; deterministic for any
+number of threads.
 """
 
 from __future__ import annotations

@@ -1,4 +1,4 @@
-"""Which cells share a face: the driver of the kernels in `kernels/faces.py`.
+"""Which cells share a face: the driver of the kernels `faces`, `face_match` and `face_rows`.
 
 Cells are cut into blocks, one a thread, that list faces and count them by smallest corner; buckets
 of equal smallest corner are then matched in chunks. Neither number shows in the result.
@@ -21,7 +21,7 @@ from sfcpart.dtypes import (
     index_dtype,
 )
 from sfcpart.errors import MeshError
-from sfcpart.kernels import face_list, faces
+from sfcpart.kernels import face_match, face_rows, faces
 from sfcpart.kernels.cells import CellArrays
 from sfcpart.kernels.threads import n_threads, run_ranges
 from sfcpart.mesh import build
@@ -107,12 +107,12 @@ def join_cells(mesh: Mesh) -> Adjacency:
     boundary_count = np.empty(n, np.int32)
     boundary_measure = np.empty(n, COORDINATE)
     shape = (slots.start, slots.stride, face, order)
-    run_ranges(faces.count_rows, n, *shape, indptr, boundary_count)
+    run_ranges(face_rows.count_rows, n, *shape, indptr, boundary_count)
     np.cumsum(indptr, out=indptr)
     indices = np.empty(indptr[-1], index_dtype(n))
     data = np.empty(indptr[-1], COORDINATE)
     faces_of = (slots.start, slots.cell, slots.stride, face, face.view(COORDINATE), order)
-    run_ranges(faces.fill_rows, n, *faces_of, indptr, indices, data, boundary_measure)
+    run_ranges(face_rows.fill_rows, n, *faces_of, indptr, indices, data, boundary_measure)
     return (indptr, indices, data, boundary_count, boundary_measure)
 
 
@@ -124,15 +124,15 @@ def _match(mesh: Mesh, cells: CellArrays, slots: _Slots) -> tuple[Int64Array, In
     face = np.empty((slots.count, 2), np.int64)
     _list(mesh, cells, slots, bounds, face, count)
     bucket = np.empty(mesh.n_points + 1, np.int32)
-    largest = faces.place_buckets(count, bucket)
+    largest = face_match.place_buckets(count, bucket)
     order = np.empty(int(bucket[-1]), np.int32)
     shape = (slots.first(bounds), face, count, order)
-    run_ranges(faces.fill_buckets, n_blocks, *shape, smallest=1)
+    run_ranges(face_match.fill_buckets, n_blocks, *shape, smallest=1)
     del count, shape
     chunks = np.searchsorted(bucket, np.linspace(0, len(order), _CHUNKS + 1)).astype(OFFSET)
     chunks[0], chunks[-1] = 0, mesh.n_points
     run_ranges(
-        faces.match_faces,
+        face_match.match_faces,
         _CHUNKS,
         chunks,
         bucket,
@@ -185,10 +185,10 @@ def sort_faces(mesh: Mesh) -> Adjacency:
     cell, measure, n = mesh.faces.cell, mesh.faces.measure, mesh.n_cells
     indptr = np.zeros(n + 1, OFFSET)
     boundary_count, boundary_measure = np.zeros(n, np.int32), np.zeros(n, COORDINATE)
-    face_list.count_faces(cell, measure, indptr[1:], boundary_count, boundary_measure)
+    face_rows.count_given(cell, measure, indptr[1:], boundary_count, boundary_measure)
     np.cumsum(indptr, out=indptr)
     indices = np.empty(indptr[-1], index_dtype(n))
     data = np.empty(indptr[-1], COORDINATE)
-    face_list.place_faces(cell, measure, indptr[:-1].copy(), indices, data)
-    run_ranges(face_list.sort_rows, n, indptr, indices, data.view(np.int64))
+    face_rows.place_given(cell, measure, indptr[:-1].copy(), indices, data)
+    run_ranges(face_rows.sort_rows, n, indptr, indices, data.view(np.int64))
     return indptr, indices, data, boundary_count, boundary_measure

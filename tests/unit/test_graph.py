@@ -252,6 +252,15 @@ def test_given_faces_are_sorted_into_rows(n, seed):
     assert graph.boundary_count.tolist() == [len(each) for each in bare]
 
 
+def test_more_faces_than_can_be_numbered_are_refused(monkeypatch):
+    from sfcpart.kernels import faces
+
+    monkeypatch.setattr(faces, "ID_LIMIT", 24)
+    assert cell_graph(grid((2, 1, 1))).n_faces == 1
+    with pytest.raises(MeshError, match="24 points or faces of cells; a cell graph takes fewer"):
+        cell_graph(grid((3, 2, 1)))
+
+
 def test_the_graph_is_kept_with_the_mesh_and_its_copies():
     mesh = grid((3, 3))
     graph = cell_graph(mesh)

@@ -54,7 +54,7 @@ def seconds(call: Callable[[], object]) -> float:
 
 
 def resident(field: str) -> int:
-    """Return VmRSS (now) or VmHWM (peak) of this process in bytes; getrusage counts the parent's."""
+    """Return VmRSS (now) or VmHWM (peak) of this process in bytes (not of its parent)."""
     lines = Path("/proc/self/status").read_text().splitlines()
     return 1024 * next(int(line.split()[1]) for line in lines if line.startswith(field + ":"))
 
