@@ -71,6 +71,67 @@ def test_boundary_groups_keep_names_and_tags(tmp_path, file_format, groups):
     np.testing.assert_array_equal(found, triangles)
 
 
+GMSH_41 = """$MeshFormat
+4.1 0 8
+$EndMeshFormat
+$PhysicalNames
+3
+1 1 "bed"
+2 5 "water"
+2 6 "layers"
+$EndPhysicalNames
+$Entities
+0 2 2 0
+1 0 0 0 1 0 0 1 1 0
+2 0 0 0 1 0 0 1 2 0
+1 0 0 0 1 1 0 1 5 0
+2 1 0 0 2 1 0 2 5 6 0
+$EndEntities
+$Nodes
+1 6 1 12
+2 1 0 6
+1
+2
+3
+4
+10
+12
+0 0 0
+1 0 0
+1 1 0
+0 1 0
+2 0 0
+2 1 0
+$EndNodes
+$Elements
+4 5 1 9
+1 1 1 1
+1 1 2
+1 2 1 1
+2 2 10
+2 1 2 2
+3 1 2 3
+4 1 3 4
+2 2 3 1
+9 2 10 12 3
+$EndElements
+"""
+
+
+def test_physical_names_of_gmsh_41_name_groups_and_regions(tmp_path):
+    path = tmp_path / "a.msh"
+    path.write_text(GMSH_41)
+    mesh = read_mesh(path)
+    assert mesh.indices.tolist() == [0, 1, 2, 0, 2, 3, 1, 4, 5, 2]
+    assert [(g.name, g.tag, g.indices.tolist()) for g in mesh.boundary] == [
+        ("bed", 1, [0, 1]),
+        ("gmsh:physical=2", 2, [1, 4]),
+    ]
+    assert mesh.cell_fields["gmsh:physical"].tolist() == [5, 5, 5]
+    assert mesh.cell_fields["set:water"].tolist() == [1, 1, 1]  # one surface is of two groups
+    assert mesh.cell_fields["set:layers"].tolist() == [0, 0, 1]
+
+
 def test_named_sets_become_groups_and_fields():
     corners, tets, triangles = tet_block()
     sets = {"rock": [[0, 2], []], "bed": [[], [1, 3]]}
