@@ -228,7 +228,8 @@ def test_elements_that_meshio_skips_are_an_error(tmp_path):
     assert read_mesh(path).kind.tolist() == [10, 11]
 
 
-def test_collections_of_grids_are_refused(tmp_path):
+def test_collections_of_grids_are_refused(tmp_path, monkeypatch):
+    monkeypatch.chdir(tmp_path)  # meshio writes the HDF5 of a series where it stands
     path = tmp_path / "a.xdmf"
     with meshio.xdmf.TimeSeriesWriter(path) as writer:
         corners, tets, _ = tet_block()
