@@ -20,28 +20,49 @@ import sys
 import tempfile
 import time
 from pathlib import Path
+from typing import NamedTuple
 
 HERE = Path(__file__).resolve().parent
 ENTRY = [sys.executable, "-c", "from sfcpart.cli import main; main()"]
 READ_ONLY = "import sys, meshio; meshio.read(sys.argv[1])"
 
 
-def run(command: list[str], **environment: str) -> tuple[float, int]:
-    """Run a command; return seconds of wall time and bytes of the largest resident set."""
+class Run(NamedTuple):
+    """Seconds of wall time and of processors, bytes of the largest resident set."""
+
+    wall: float
+    processor: float
+    memory: int
+
+
+def run(command: list[str], **environment: str) -> Run:
+    """Run a command to its end; a failure ends the bench."""
     start = time.perf_counter()
     child = subprocess.Popen(command, stdout=subprocess.DEVNULL, env={**os.environ, **environment})
     _, status, usage = os.wait4(child.pid, 0)
     child.returncode = os.waitstatus_to_exitcode(status)
     if child.returncode:
         raise SystemExit(f"{' '.join(command)}: exit code {child.returncode}")
-    return time.perf_counter() - start, usage.ru_maxrss * 1024
+    processor = usage.ru_utime + usage.ru_stime
+    return Run(time.perf_counter() - start, processor, usage.ru_maxrss * 1024)
 
 
-def alternate(first: list[str], second: list[str], *, runs: int) -> tuple[float, float, int]:
-    """Run two commands in turn; return both medians and the first one's largest memory."""
+def alternate(first: list[str], second: list[str], *, runs: int) -> tuple[Run, Run]:
+    """Run two commands in turn; return the medians of each."""
     rows = [(run(first), run(second)) for _ in range(runs)]
-    ours, other = ([row[k][0] for row in rows] for k in (0, 1))
-    return statistics.median(ours), statistics.median(other), max(row[0][1] for row in rows)
+    ours, other = (
+        Run(*map(statistics.median, zip(*side, strict=True))) for side in zip(*rows, strict=True)
+    )
+    return ours, other
+
+
+def compared(name: str, ours: Run, other_name: str, other: Run, *, most: float) -> str:
+    """Say both times and their ratio, of wall time and of processor time."""
+    return (
+        f"{name} {ours.wall:.3f} s, {other_name} {other.wall:.3f} s: ratio "
+        f"{ours.wall / other.wall:.2f} (wanted at most {most:g}); of processor time "
+        f"{ours.processor / other.processor:.2f}"
+    )
 
 
 def make(what: str, n_cells: int, path: Path) -> None:
@@ -52,9 +73,8 @@ def make(what: str, n_cells: int, path: Path) -> None:
 def bench_help(folder: Path, *, runs: int, n_cells: int) -> None:
     entry = shutil.which("sfcpart")
     command = [entry] if entry else ENTRY
-    ours, bare, _ = alternate([*command, "--help"], [sys.executable, "-c", "pass"], runs=4 * runs)
-    print(f"sfcpart --help {ours * 1e3:.1f} ms, bare Python {bare * 1e3:.1f} ms: ", end="")
-    print(f"ratio {ours / bare:.2f} (wanted at most 6)")
+    ours, bare = alternate([*command, "--help"], [sys.executable, "-c", "pass"], runs=4 * runs)
+    print(compared("sfcpart --help", ours, "bare Python", bare, most=6))
 
 
 def bench_vtu(folder: Path, *, runs: int, n_cells: int) -> None:
@@ -63,12 +83,11 @@ def bench_vtu(folder: Path, *, runs: int, n_cells: int) -> None:
     split = [*ENTRY, "split", str(path), "--parts", "64", "-o", str(folder / "parts"), "-q"]
     split.append("--overwrite")
     run(split)  # compile
-    ours, alone, memory = alternate(split, [sys.executable, "-c", READ_ONLY, str(path)], runs=runs)
+    ours, alone = alternate(split, [sys.executable, "-c", READ_ONLY, str(path)], runs=runs)
     cells = _cells(path)
     most = 350e6 + 500 * cells
-    print(f"split of {cells:,} tets {ours:.2f} s, meshio alone {alone:.2f} s: ", end="")
-    print(f"ratio {ours / alone:.2f} (wanted at most 4)")
-    print(f"peak memory {memory / 1e6:.0f} MB (wanted at most {most / 1e6:.0f} MB)")
+    print(compared(f"split of {cells:,} tets", ours, "meshio alone", alone, most=4))
+    print(f"peak memory {ours.memory / 1e6:.0f} MB (wanted at most {most / 1e6:.0f} MB)")
 
 
 def bench_hexes(folder: Path, *, runs: int, n_cells: int) -> None:
@@ -76,18 +95,23 @@ def bench_hexes(folder: Path, *, runs: int, n_cells: int) -> None:
     make("hexes", n_cells or 10_000_000, path)
     split = [*ENTRY, "split", str(path), "--parts", "64", "-o", str(folder / "parts"), "-q"]
     cells = _cells(path)
-    seconds, memory = run(split)
-    print(f"split of {cells:,} hexahedra from VTKHDF {seconds:.1f} s, peak memory ", end="")
-    print(f"{memory / 1e6:.0f} MB, {memory / cells:.0f} bytes a cell (wanted at most 600)")
+    ours = run(split)
+    print(f"split of {cells:,} hexahedra from VTKHDF {ours.wall:.1f} s, peak memory ", end="")
+    print(
+        f"{ours.memory / 1e6:.0f} MB, {ours.memory / cells:.0f} bytes a cell (wanted at most 600)"
+    )
 
 
 def bench_first(folder: Path, *, runs: int, n_cells: int) -> None:
     mesh = HERE.parent.parent / "meshes" / "channel_mixed.vtu"
     split = [*ENTRY, "split", str(mesh), "--parts", "8", "-o", str(folder / "parts"), "--overwrite"]
-    cold, _ = run(split, NUMBA_CACHE_DIR=str(folder / "kernels"))
-    warm, _ = run(split, NUMBA_CACHE_DIR=str(folder / "kernels"))
-    print(f"first run {cold:.1f} s, second {warm:.1f} s: ", end="")
-    print(f"{cold - warm:.1f} s of compiling (wanted at most 20)")
+    cold, warm = (run(split, NUMBA_CACHE_DIR=str(folder / "kernels")) for _ in range(2))
+    print(f"first run {cold.wall:.1f} s, second {warm.wall:.1f} s: ", end="")
+    print(
+        f"{cold.wall - warm.wall:.1f} s of compiling (wanted at most 20); of processor time ",
+        end="",
+    )
+    print(f"{cold.processor - warm.processor:.1f} s")
 
 
 def _cells(path: Path) -> int:
