@@ -198,7 +198,7 @@ def _groups(
         found.append(groups_from_field(values))
     if pairs is not None:
         found.append(groups_from_pairs(pairs, n_cells=mesh.n_cells))
-    found += [groups_from_boundaries(mesh, first, second) for first, second in periodic]
+    found += [groups_from_boundaries(mesh, sides) for sides in periodic]
     return join_groups(*found) if found else None
 
 

@@ -70,6 +70,95 @@ def limit_before(prefix: Int64Array, at: int, base: int) -> int:
 
 
 @jit
+def append_interval(own: Int64Array, fresh: int, n: int, low: int, high: int) -> int:
+    """Append an interval below the last one, or extend that; return the new count, -1 if full."""
+    if n > fresh and own[n - 1, 0] == high + 1:
+        own[n - 1, 0] = low
+        return n
+    if n < 0 or n == len(own):
+        return -1
+    own[n, 0], own[n, 1] = low, high
+    return n + 1
+
+
+@jit
+def take_least(
+    left: int,
+    right: int,
+    p: int,
+    span: Int64Array,
+    total: Int64Array,
+    limit: Int64Array,
+    cap: Int64Array,
+    limit_cap: Int64Array,
+    speed: FloatArray,
+    heavy: Int64Array,
+    brackets: FloatArray,
+    own: Int64Array,
+    fresh: int,
+    n: int,
+) -> int:
+    """Append the positions left..right whose chunk p may take exactly `least` items."""
+    base, least = span[2], span[3]
+    h = count_up_to(heavy, right) - 1
+    while right >= left:
+        blocked = left - 1
+        while h >= 0 and heavy[h] >= left and blocked < left:
+            a = heavy[h]
+            h -= 1
+            w = sum_before(total, a + least, base) - sum_before(total, a, base)
+            v = limit_before(limit, a + least, base) - limit_before(limit, a, base)
+            if w <= cap[p]:
+                brackets[1] = max(brackets[1], w / speed[p])
+            else:
+                brackets[0] = min(brackets[0], w / speed[p])
+            if w > cap[p] or v > limit_cap[p]:
+                blocked = a
+        if right > blocked:
+            n = append_interval(own, fresh, n, blocked + 1, right)
+        right = blocked - 1
+    return n
+
+
+@jit
+def reach_back(
+    low: int,
+    top: int,
+    p: int,
+    ends: Int64Array,
+    span: Int64Array,
+    total: Int64Array,
+    limit: Int64Array,
+    cap: Int64Array,
+    limit_cap: Int64Array,
+    speed: FloatArray,
+    brackets: FloatArray,
+) -> int:
+    """Return the lowest position of low..top from which chunk p reaches `ends`; top + 1 if none.
+
+    `ends` is (position, position, total there, limit there).
+    """
+    base = span[2]
+    a, stop = low, top + 1
+    while a < stop:
+        middle = (a + stop) >> 1
+        if (
+            ends[2] - sum_before(total, middle, base) <= cap[p]
+            and ends[3] - limit_before(limit, middle, base) <= limit_cap[p]
+        ):
+            stop = middle
+        else:
+            a = middle + 1
+    if a <= top:
+        brackets[1] = max(brackets[1], (ends[2] - sum_before(total, a, base)) / speed[p])
+    if a > low:
+        w = ends[2] - sum_before(total, a - 1, base)
+        if w > cap[p]:
+            brackets[0] = min(brackets[0], w / speed[p])
+    return a
+
+
+@jit
 def sweep_back(
     span: Int64Array,
     total: Int64Array,
@@ -104,91 +193,50 @@ def sweep_back(
     int
         Number of intervals; -1 if `own` is too short.
     """
-    first, last, base, least = span[0], span[1], span[2], span[3]
-    n_parts = len(cap)
-    n = 0
+    first, least, n_parts = span[0], span[3], len(cap)
+    ends = np.empty(4, np.int64)  # the interval of cut p + 1 at hand
     own_ptr[0] = 0
     own_ptr[1] = 0  # p = P: only the end of the line, which came
+    n = int(own_ptr[0])  # a plain 0 would compile the callees once more
     for q in range(1, n_parts + 1):
         p = n_parts - q
         fresh = n
-        top = last - 1  # highest position not decided
-        own_begin, own_end = own_ptr[q - 1], own_ptr[q]
-        came_begin, came_end = came_ptr[p + 1], came_ptr[p + 2]
-        n_came = came_end - came_begin
-        n_all = n_came + own_end - own_begin
+        top = span[1] - 1  # highest position not decided
+        n_came = came_ptr[p + 2] - came_ptr[p + 1]
+        n_all = n_came + own_ptr[q] - own_ptr[q - 1]
         for k in range(n_all):
             if top < first:
                 break
-            if k < n_came:
-                row = came_end - 1 - k
-                low, high = came[row, 0], came[row, 1]
-                total_low, limit_low = came[row, 2], came[row, 3]
-            else:
-                row = own_begin + k - n_came
-                low, high = own[row, 0], own[row, 1]
-                total_low = sum_before(total, low, base)
-                limit_low = limit_before(limit, low, base)
             below = first
-            if k + 1 < n_came:
-                below = max(first, came[came_end - 2 - k, 1] - least + 1)
-            elif k + 1 < n_all:
-                below = max(first, own[own_begin + k + 1 - n_came, 1] - least + 1)
-            # positions whose chunk p takes exactly `least` items
-            right, left = min(top, high - least), max(first, low - least)
-            if right >= left:
-                h = count_up_to(heavy, right) - 1
-                while right >= left:
-                    blocked = left - 1
-                    while h >= 0 and heavy[h] >= left:
-                        a = heavy[h]
-                        h -= 1
-                        w = sum_before(total, a + least, base) - sum_before(total, a, base)
-                        v = limit_before(limit, a + least, base) - limit_before(limit, a, base)
-                        if w <= cap[p]:
-                            brackets[1] = max(brackets[1], w / speed[p])
-                        else:
-                            brackets[0] = min(brackets[0], w / speed[p])
-                        if w > cap[p] or v > limit_cap[p]:
-                            blocked = a
-                            break
-                    if right > blocked:
-                        if n > fresh and own[n - 1, 0] == right + 1:
-                            own[n - 1, 0] = blocked + 1
-                        else:
-                            if n == len(own):
-                                return -1
-                            own[n, 0], own[n, 1] = blocked + 1, right
-                            n += 1
-                    right = blocked - 1
-            top = min(top, low - least - 1)
-            # positions whose chunk p reaches up to `low`
+            if k < n_came:
+                row = came_ptr[p + 2] - 1 - k
+                for column in range(4):
+                    ends[column] = came[row, column]
+                if k + 1 < n_came:
+                    below = max(first, came[row - 1, 1] - least + 1)
+            else:
+                row = own_ptr[q - 1] + k - n_came
+                ends[0], ends[1] = own[row, 0], own[row, 1]
+                ends[2] = sum_before(total, ends[0], span[2])
+                ends[3] = limit_before(limit, ends[0], span[2])
+            if n_came <= k + 1 < n_all:
+                below = max(first, own[own_ptr[q - 1] + k + 1 - n_came, 1] - least + 1)
+            # first the positions whose chunk ends inside the interval, `least` items on ...
+            n = take_least(
+                max(first, ends[0] - least), min(top, ends[1] - least), p, span,
+                total, limit, cap, limit_cap, speed, heavy, brackets, own, fresh, n,
+            )  # fmt: skip
+            top = min(top, ends[0] - least - 1)
+            # ... then those whose chunk must reach up to its lower end
             if top >= below:
-                a, stop = below, top + 1
-                while a < stop:
-                    middle = (a + stop) >> 1
-                    if (
-                        total_low - sum_before(total, middle, base) <= cap[p]
-                        and limit_low - limit_before(limit, middle, base) <= limit_cap[p]
-                    ):
-                        stop = middle
-                    else:
-                        a = middle + 1
+                a = reach_back(
+                    below, top, p, ends, span, total, limit, cap, limit_cap, speed, brackets
+                )
                 if a <= top:
-                    w = total_low - sum_before(total, a, base)
-                    brackets[1] = max(brackets[1], w / speed[p])
-                    if n > fresh and own[n - 1, 0] == top + 1:
-                        own[n - 1, 0] = a
-                    else:
-                        if n == len(own):
-                            return -1
-                        own[n, 0], own[n, 1] = a, top
-                        n += 1
-                if a > below:
-                    w = total_low - sum_before(total, a - 1, base)
-                    if w > cap[p]:
-                        brackets[0] = min(brackets[0], w / speed[p])
+                    n = append_interval(own, fresh, n, a, top)
                 top = below - 1
+            if n < 0:
+                return -1
         own_ptr[q + 1] = n
     return n
 

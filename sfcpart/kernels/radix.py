@@ -24,6 +24,7 @@ from sfcpart.kernels.threads import ranges, run_ranges
 __all__ = ["Survey", "put_rows", "sorting", "stable_order", "survey", "take_rows"]
 
 _DIGIT = 11
+_MOST_DIGITS = 1 << _DIGIT
 _SMALL = 24
 """Groups up to this size are sorted by insertion."""
 _LARGE = 1 << 18
@@ -221,7 +222,7 @@ def finish_range(
             widest = max(widest, edge[bucket + 1] - edge[bucket])
     spare_key = np.empty(widest, key.dtype)
     spare_row = np.empty(widest, row.dtype)
-    count = np.empty(2048 + 1, np.int64)
+    count = np.empty(_MOST_DIGITS + 1, np.int64)
     todo = np.empty((widest // _SMALL + 2, 2), np.int64)
     for bucket in range(first, last):
         if skip[bucket] or edge[bucket + 1] - edge[bucket] < 2:
@@ -231,50 +232,62 @@ def finish_range(
         while n_todo > 0:
             n_todo -= 1
             begin, end = todo[n_todo, 0], todo[n_todo, 1]
-            size = end - begin
-            low, high = key[begin], key[begin]
-            for i in range(begin + 1, end):
-                low = min(low, key[i])
-                high = max(high, key[i])
-            if low == high:
-                continue
-            # as many digits as there are rows, at most 2048, cover the range
-            most = 2
-            while most < size and most < 2048:
-                most <<= 1
-            shift = 0
-            while (high - low) >> shift >= most:
-                shift += 1
-            n_digits = ((high - low) >> shift) + 1
-            count[: n_digits + 1] = 0
-            for i in range(begin, end):
-                count[((key[i] - low) >> shift) + 1] += 1
-            for digit in range(n_digits):
-                count[digit + 1] += count[digit]
-            for i in range(begin, end):
-                digit = (key[i] - low) >> shift
-                at = count[digit]
-                count[digit] = at + 1
-                spare_key[at] = key[i]
-                spare_row[at] = row[i]
-            # count[digit] is now the end of the digit's group
-            left = 0
-            for digit in range(n_digits):
-                right = count[digit]
-                if right - left > _SMALL and shift > 0:
-                    for at in range(left, right):
-                        key[begin + at] = spare_key[at]
-                        row[begin + at] = spare_row[at]
-                    todo[n_todo, 0], todo[n_todo, 1] = begin + left, begin + right
-                    n_todo += 1
-                else:
-                    for at in range(left, right):
-                        k, r = spare_key[at], spare_row[at]
-                        to = begin + at
-                        while to > begin + left and key[to - 1] > k:
-                            key[to] = key[to - 1]
-                            row[to] = row[to - 1]
-                            to -= 1
-                        key[to] = k
-                        row[to] = r
-                left = right
+            n_todo = sort_group(begin, end, key, row, spare_key, spare_row, count, todo, n_todo)
+
+
+@jit
+def sort_group(
+    begin: int,
+    end: int,
+    key: Int64Array,
+    row: IntArray,
+    spare_key: Int64Array,
+    spare_row: IntArray,
+    count: Int64Array,
+    todo: Int64Array,
+    n_todo: int,
+) -> int:
+    """Count a group out by leading bits; insert small groups, put large ones on the list."""
+    low, high = key[begin], key[begin]
+    for i in range(begin + 1, end):
+        low = min(low, key[i])
+        high = max(high, key[i])
+    if low == high:
+        return n_todo
+    # about as many digits as there are rows, at most 2048, cover the range
+    most = 2
+    while most < end - begin and most < _MOST_DIGITS:
+        most <<= 1
+    shift = 0
+    while (high - low) >> shift >= most:
+        shift += 1
+    n_digits = ((high - low) >> shift) + 1
+    count[: n_digits + 1] = 0
+    for i in range(begin, end):
+        count[((key[i] - low) >> shift) + 1] += 1
+    for digit in range(n_digits):
+        count[digit + 1] += count[digit]
+    for i in range(begin, end):
+        digit = (key[i] - low) >> shift
+        at = count[digit]
+        count[digit] = at + 1
+        spare_key[at] = key[i]
+        spare_row[at] = row[i]
+    left = 0  # count[digit] is now the end of the digit's group
+    for digit in range(n_digits):
+        right = count[digit]
+        sorts_itself = right - left <= _SMALL or shift == 0
+        for at in range(left, right):
+            to = begin + at
+            if sorts_itself:
+                while to > begin + left and key[to - 1] > spare_key[at]:
+                    key[to] = key[to - 1]
+                    row[to] = row[to - 1]
+                    to -= 1
+            key[to] = spare_key[at]
+            row[to] = spare_row[at]
+        if not sorts_itself:
+            todo[n_todo, 0], todo[n_todo, 1] = begin + left, begin + right
+            n_todo += 1
+        left = right
+    return n_todo

@@ -137,8 +137,8 @@ def _nested_cuts(
             pieces.append(
                 cut_line(
                     line,
-                    int(cut[chunk]),
-                    int(cut[chunk + 1]),
+                    begin=int(cut[chunk]),
+                    end=int(cut[chunk + 1]),
                     speed=speed[own],
                     limit=None if limit is None else limit[own],
                     least=inside if some_for_each else 0,

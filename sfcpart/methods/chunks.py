@@ -32,9 +32,9 @@ _UNLIMITED = np.iinfo(np.int64).max
 
 def cut_line(
     line: Line,
+    *,
     begin: int,
     end: int,
-    *,
     speed: FloatArray,
     limit: Int64Array | None = None,
     least: int = 1,

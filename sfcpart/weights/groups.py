@@ -148,7 +148,7 @@ def _united(links: Int64Array, n_cells: int) -> Int64Array:
 
 
 def groups_from_boundaries(
-    mesh: Mesh, first: str, second: str, *, tolerance: float = 1e-6
+    mesh: Mesh, sides: tuple[str, str], *, tolerance: float = 1e-6
 ) -> Int64Array:
     """Keep the two sides of a periodic or coupled boundary together.
 
@@ -160,8 +160,8 @@ def groups_from_boundaries(
     ----------
     mesh : Mesh
         With points and boundary groups.
-    first, second : str
-        Names of the groups.
+    sides : pair of str
+        Names of the two groups.
     tolerance : float
         Largest distance of matched centres, as a share of the extent of the first group.
 
@@ -181,7 +181,8 @@ def groups_from_boundaries(
     """
     from scipy.spatial import cKDTree
 
-    pair = [_boundary_group(mesh, name) for name in (first, second)]
+    first, second = sides
+    pair = [_boundary_group(mesh, name) for name in sides]
     sizes = [len(group.kind) for group in pair]
     if sizes[0] != sizes[1]:
         raise WeightError(

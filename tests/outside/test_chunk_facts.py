@@ -24,7 +24,7 @@ def cuts(weight: list[int], speed: list[float]) -> np.ndarray:
         len(weight), weight=np.array(weight, np.int64), limit_weight=None, reach=1,
         comm=SerialComm(),
     )  # fmt: skip
-    return cut_line(line, 0, len(weight), speed=np.array(speed, np.float64))
+    return cut_line(line, begin=0, end=len(weight), speed=np.array(speed, np.float64))
 
 
 def grid_parts(side: int, dim: int, n_parts: int, method: str) -> np.ndarray:

@@ -293,7 +293,7 @@ def mesh_kind(shape: tuple[int, ...]) -> str:
 @pytest.mark.parametrize("shape", [(5, 4), (4, 3, 2)])
 def test_periodic_sides_are_paired(shape):
     mesh = with_sides(shape)
-    group = groups_from_boundaries(mesh, "inflow", "outflow")
+    group = groups_from_boundaries(mesh, ("inflow", "outflow"))
     x = mesh.centers[:, 0]
     inside = (x > 1) & (x < shape[0] - 1)
     assert (group[inside] == -1).all()
@@ -309,16 +309,16 @@ def test_periodic_sides_are_paired(shape):
 def test_sides_that_do_not_match():
     mesh = with_sides((5, 4), skew=0.25)
     with pytest.raises(WeightError, match="do not match by a shift: the centre of element"):
-        groups_from_boundaries(mesh, "inflow", "outflow")
-    assert (groups_from_boundaries(mesh, "inflow", "outflow", tolerance=0.2) >= 0).any()
+        groups_from_boundaries(mesh, ("inflow", "outflow"))
+    assert (groups_from_boundaries(mesh, ("inflow", "outflow"), tolerance=0.2) >= 0).any()
     with pytest.raises(WeightError, match="no boundary group 'wall'; the mesh has 'inflow', 'out"):
-        groups_from_boundaries(mesh, "inflow", "wall")
+        groups_from_boundaries(mesh, ("inflow", "wall"))
     fewer = mesh.boundary[1]
     fewer = type(fewer)("outflow", 1, fewer.kind[:2], fewer.indptr[:3], fewer.indices[:4])
     odd = Mesh.from_arrays(mesh.points, {"quad": np.asarray(mesh.indices).reshape(-1, 4)},
                            boundary=[mesh.boundary[0], fewer])  # fmt: skip
     with pytest.raises(WeightError, match="'inflow' has 4 elements and 'outflow' 2"):
-        groups_from_boundaries(odd, "inflow", "outflow")
+        groups_from_boundaries(odd, ("inflow", "outflow"))
 
 
 def test_element_behind_which_there_is_no_cell():
@@ -328,7 +328,7 @@ def test_element_behind_which_there_is_no_cell():
     odd = Mesh.from_arrays(mesh.points, {"quad": np.asarray(mesh.indices).reshape(-1, 4)},
                            boundary=[mesh.boundary[0], loose])  # fmt: skip
     with pytest.raises(WeightError):
-        groups_from_boundaries(odd, "inflow", "loose", tolerance=99.0)
+        groups_from_boundaries(odd, ("inflow", "loose"), tolerance=99.0)
 
 
 def test_polyhedra_have_their_points_in_faces():
@@ -339,4 +339,4 @@ def test_polyhedra_have_their_points_in_faces():
             for face in ([0, 1, 3, 2], [8, 9, 11, 10])]  # fmt: skip
     sides = [type(g)(n, 1, g.kind, g.indptr, g.indices) for n, g in zip("ab", ends, strict=True)]
     mesh = Mesh.from_arrays(cube, {"polyhedron": cells}, boundary=sides)
-    assert groups_from_boundaries(mesh, "a", "b").tolist() == [0, 0]
+    assert groups_from_boundaries(mesh, ("a", "b")).tolist() == [0, 0]

@@ -25,7 +25,7 @@ def cut(comm, weight, speed, *, limit_weight=None, limit=None, least=1, part=sli
         reach=least + 1,
         comm=comm,
     )
-    return cut_line(line, 0, line.n_items, speed=speed, limit=limit, least=least)
+    return cut_line(line, begin=0, end=line.n_items, speed=speed, limit=limit, least=least)
 
 
 @st.composite
