@@ -19,7 +19,7 @@ from sfcpart.dtypes import (
     index_dtype,
 )
 from sfcpart.errors import MeshError
-from sfcpart.mesh.gate import Block, check_fields, check_indices, check_offsets, frozen
+from sfcpart.mesh.gate import Block, as_array, check_fields, check_indices, check_offsets, frozen
 from sfcpart.mesh.kinds import KINDS, POLYHEDRON, VERTEX, kind_tables
 from sfcpart.mesh.pieces import BoundaryGroup, Polyhedra
 
@@ -107,7 +107,7 @@ def polyhedra(blocks: Sequence[Block], n_points: int) -> Polyhedra | None:
     faces = [face for each in cells for face in each]
     cell_indptr = np.cumsum([0, *map(len, cells)], dtype=OFFSET)
     face_indptr = np.cumsum([0, *map(len, faces)], dtype=OFFSET)
-    flat = np.concatenate([np.asarray(face) for face in faces])
+    flat = np.concatenate([np.asarray(face) for face in faces]) if faces else np.empty(0, OFFSET)
     raw = Polyhedra(face_indptr, flat, cell_indptr, np.arange(len(faces)))
     kind = np.repeat([b.kind.code for b in blocks], [b.n for b in blocks])
     return check_polyhedra(raw, kind, n_points)
@@ -130,7 +130,8 @@ def check_polyhedra(faces: Polyhedra | None, kind: Array, n_points: int) -> Poly
         bad = int(np.argmax(is_poly))
         raise MeshError(f"cell {bad} is a polyhedron; wanted `polyhedra` with its faces")
     n_faces = len(faces.face_indptr) - 1
-    flat, rows = np.asarray(faces.face_indices), np.asarray(faces.cell_indices)
+    flat = as_array(faces.face_indices, "faces of polyhedra")
+    rows = as_array(faces.cell_indices, "faces of polyhedra")
     face_indptr = check_offsets(faces.face_indptr, n_faces, len(flat), "faces")
     cell_indptr = check_offsets(faces.cell_indptr, len(kind), len(rows), "cells to faces")
     if n_faces and int(np.diff(face_indptr).min()) < 3:
@@ -152,7 +153,7 @@ def check_polyhedra(faces: Polyhedra | None, kind: Array, n_points: int) -> Poly
 
 def check_face_cells(face_cell: ArrayLike, n_cells: int) -> IntArray:
     """Check the two cells of each face; the absent cell goes second."""
-    pair = np.asarray(face_cell)
+    pair = as_array(face_cell, "face_cell")
     if pair.size == 0:
         pair = np.empty((0, 2), index_dtype(n_cells))
     if pair.ndim != 2 or pair.shape[1] != 2 or pair.dtype.kind not in "iu":

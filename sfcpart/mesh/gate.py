@@ -59,9 +59,20 @@ def frozen(array: Array) -> Array:
     return view
 
 
+def as_array(values: ArrayLike, what: str) -> Array:
+    """Make an array of numbers in native byte order; refuse rows of unequal length and objects."""
+    try:
+        array = np.asarray(values)
+    except ValueError:
+        raise MeshError(f"{what}: rows of unequal length; wanted one array") from None
+    if array.dtype.kind not in "biufc":
+        raise MeshError(f"{what}: values of dtype {array.dtype}; wanted numbers")
+    return array.astype(array.dtype.newbyteorder("="), copy=False)
+
+
 def check_positions(positions: ArrayLike, what: str) -> FloatArray:
     """Check finite coordinates in 2 or 3 columns; `what` names a row in messages ("point")."""
-    array = np.asarray(positions)
+    array = as_array(positions, f"{what} coordinates")
     if array.dtype.kind not in "fiu":
         raise MeshError(f"{what} coordinates have dtype {array.dtype}; wanted real numbers")
     if array.ndim != 2 or array.shape[1] not in (2, 3):
@@ -79,7 +90,7 @@ def check_positions(positions: ArrayLike, what: str) -> FloatArray:
 
 def check_sizes(sizes: ArrayLike, n_rows: int, what: str) -> FloatArray:
     """Check measures: one finite number >= 0 a row."""
-    array = np.asarray(sizes)
+    array = as_array(sizes, f"measures of {what}s")
     if array.shape != (n_rows,) or array.dtype.kind not in "fiu":
         raise MeshError(
             f"measures of {what}s have shape {array.shape}, dtype {array.dtype}; "
@@ -94,7 +105,7 @@ def check_sizes(sizes: ArrayLike, n_rows: int, what: str) -> FloatArray:
 
 def check_offsets(indptr: ArrayLike, n_rows: int, n_entries: int, what: str) -> Int64Array:
     """Check CSR offsets: n_rows + 1 integers that rise from 0 to n_entries."""
-    array = np.asarray(indptr)
+    array = as_array(indptr, f"offsets of {what}")
     if array.shape != (n_rows + 1,) or array.dtype.kind not in "iu":
         raise MeshError(
             f"offsets of {what} have shape {array.shape}, dtype {array.dtype}; "
@@ -111,8 +122,11 @@ def check_offsets(indptr: ArrayLike, n_rows: int, n_entries: int, what: str) -> 
 
 def check_indices(flat: Array, n: int, what: str, indptr: Int64Array) -> IntArray:
     """Check that entries lie in 0..n-1 and cast them to the smallest index dtype."""
-    if flat.dtype.kind not in "iu":
-        raise MeshError(f"{what}s are listed by {flat.dtype} values; wanted integers")
+    if flat.dtype.kind not in "iu" or flat.ndim != 1:
+        raise MeshError(
+            f"{what}s are listed by {flat.dtype} values of shape {flat.shape}; wanted integers, "
+            "one behind the other"
+        )
     if flat.size and (int(flat.min()) < 0 or int(flat.max()) >= n):
         place = int(np.flatnonzero((flat < 0) | (flat >= n))[0])
         row = int(np.searchsorted(indptr, place, side="right")) - 1
@@ -122,7 +136,7 @@ def check_indices(flat: Array, n: int, what: str, indptr: Int64Array) -> IntArra
 
 def check_kinds(kind: ArrayLike, indptr: Int64Array) -> KindArray:
     """Check that codes are known and each cell has as many points as its kind."""
-    codes = np.asarray(kind)
+    codes = as_array(kind, "kinds")
     if codes.ndim != 1 or codes.dtype.kind not in "iu":
         raise MeshError(f"kinds have shape {codes.shape}, dtype {codes.dtype}; wanted VTK codes")
     unknown = (codes < 0) | (codes > 255)
@@ -152,6 +166,7 @@ def check_fields(fields: Mapping[str, ArrayLike] | None, n: int, what: str) -> M
     checked: dict[str, Array] = {}
     for name, values in (fields or {}).items():
         array = np.asarray(values)
+        array = array.astype(array.dtype.newbyteorder("="), copy=False)
         if array.ndim < 1 or len(array) != n:
             raise MeshError(
                 f"{what} field {name!r} has shape {array.shape}; wanted {n} rows, one a {what}"
@@ -173,7 +188,7 @@ def _block(kind: Kind, rows: Any) -> Block:
         return _polyhedra(kind, rows)
     if kind.code == POLYGON and not (isinstance(rows, np.ndarray) and rows.ndim == 2):
         return _ragged(kind, rows)
-    table = np.asarray(rows)
+    table = as_array(rows, f"cells of kind {kind.name!r}")
     if table.size == 0:
         return Block(kind, 0, np.zeros(1, OFFSET), np.empty(0, np.int32))
     if table.ndim == 1 and kind.n_nodes == 1:
@@ -191,12 +206,11 @@ def _block(kind: Kind, rows: Any) -> Block:
 def _ragged(kind: Kind, rows: Any) -> Block:
     """Read polygons: a pair of flat arrays (indptr, indices), or one list of points a polygon."""
     if isinstance(rows, tuple) and len(rows) == 2 and all(np.ndim(part) == 1 for part in rows):
-        flat = np.asarray(rows[1])
+        flat = as_array(rows[1], "polygons")
         n = len(rows[0]) - 1
         indptr = check_offsets(rows[0], n, len(flat), "polygons")
     else:
-        flat = np.concatenate([np.asarray(r) for r in rows]) if len(rows) else np.empty(0, OFFSET)
-        indptr = np.cumsum([0, *(len(row) for row in rows)], dtype=OFFSET)
+        flat, indptr = _join_lists(rows, "polygons")
     size = np.diff(indptr)
     if len(size) and size.min() < 3:
         bad = int(np.argmin(size))
@@ -206,9 +220,18 @@ def _ragged(kind: Kind, rows: Any) -> Block:
     return Block(kind, len(size), indptr, flat)
 
 
+def _join_lists(lists: Sequence[Any], what: str) -> tuple[Array, Int64Array]:
+    """Put lists of numbers one behind the other; return them with their offsets."""
+    arrays = [as_array(each, what) for each in lists]
+    if any(array.ndim != 1 for array in arrays):
+        raise MeshError(f"{what}: wanted a list of points for each")
+    indptr = np.cumsum([0, *map(len, arrays)], dtype=OFFSET)
+    filled = [array for array in arrays if len(array)]
+    return (np.concatenate(filled) if filled else np.empty(0, OFFSET)), indptr
+
+
 def _polyhedra(kind: Kind, rows: Sequence[Sequence[Sequence[int]]]) -> Block:
     """Read polyhedra: for each cell a list of faces, for each face a list of points."""
-    each = [np.unique(np.concatenate([np.asarray(f) for f in faces])) for faces in rows]
-    indptr = np.concatenate([[0], np.cumsum([len(p) for p in each])]).astype(OFFSET)
-    flat = np.concatenate(each) if each else np.empty(0, OFFSET)
+    each = [np.unique(_join_lists(faces, "faces of polyhedra")[0]) for faces in rows]
+    flat, indptr = _join_lists(each, "polyhedra")
     return Block(kind, len(each), indptr, flat, rows)

@@ -13,6 +13,7 @@ from numpy.typing import ArrayLike
 from sfcpart.dtypes import Array, FloatArray, Int64Array, IntArray, KindArray
 from sfcpart.mesh import build
 from sfcpart.mesh.gate import (
+    as_array,
     check_fields,
     check_indices,
     check_kinds,
@@ -184,8 +185,8 @@ class Mesh:
         ([5, 9], [0.5, 2.0])
         """
         position = check_positions(points, "point")
-        flat = np.asarray(indices)
-        offset = check_offsets(indptr, len(np.asarray(kind)), len(flat), "cells")
+        flat = as_array(indices, "cells")
+        offset = check_offsets(indptr, np.size(kind), flat.size, "cells")
         code = check_kinds(kind, offset)
         flat = frozen(check_indices(flat, len(position), "point", offset))
         dims = kind_tables().dim[code]

@@ -23,7 +23,7 @@ def test_empty_meshes_are_refused(empty_call):
     [
         (SQUARE, {"triangle": [[0, 1, 4]]}, "kind 'triangle': row 0 lists point 4; .* 0 to 3"),
         (SQUARE, {"triangle": [[0, 1, 2], [0, -1, 2]]}, "row 1 lists point -1"),
-        (SQUARE, {"triangle": [[0, 1.5, 2]]}, "float64 values; wanted integers"),
+        (SQUARE, {"triangle": [[0, 1.5, 2]]}, "float64 values of shape .*; wanted integers"),
         (SQUARE, {"triangle": [[0, 1]]}, r"shape \(1, 2\); wanted \(n, 3\)"),
         (SQUARE, {"quadd": [[0, 1, 2, 3]]}, "'quadd' are not known; known are vertex, line"),
         (SQUARE, {"line": [[0, 1]]}, "dimension 1 at most"),
@@ -38,6 +38,12 @@ def test_empty_meshes_are_refused(empty_call):
         (SQUARE, {"polyhedron": [[[0, 1, 2], [0, 1, 2], [0, 1, 2]]]}, "3 faces; wanted at least 4"),
         (SQUARE, {"polyhedron": [[[0, 1], [1, 2], [2, 3], [3, 0]]]}, "fewer than 3 points"),
         (SQUARE, {"polygon": ([0, 3, 2], [0, 1, 2])}, "offsets of polygons go from 0 to 2"),
+        ([[0, 0], [1]], {"triangle": [[0, 1, 2]]}, "point coordinates: rows of unequal length"),
+        ([["a", "b"]], {"triangle": [[0, 1, 2]]}, "point coordinates: values of dtype <U1"),
+        (SQUARE, {"quad": [[0, 1, 2], [0, 1, 2, 3]]}, "kind 'quad': rows of unequal length"),
+        (SQUARE, {"triangle": [["a", "b", "c"]]}, "kind 'triangle': values of dtype <U1"),
+        (SQUARE, {"polygon": [[[0, 1, 2]]]}, "polygons: wanted a list of points for each"),
+        (SQUARE, {"polyhedron": [[]]}, "cell 0 .polyhedron. has 0 faces"),
         (SQUARE, {"polygon": [[0, 1]]}, "kind 'polygon': row 0 has 2 points; wanted at least 3"),
     ],
 )
@@ -57,6 +63,7 @@ def test_from_arrays_names_the_offender(points, cells, message):
         ([5, 7], [0, 3, 5], [0, 1, 2, 2, 3], r"cell 1 \(polygon\) has 2 points; wanted at least 3"),
         ([5], [0, 2], [0, 1, 2], "go from 0 to 2; wanted to rise from 0 to 3"),
         ([5, 5], [0, 3], [0, 1, 2], r"shape \(2,\).* wanted 3 integers"),
+        ([5], [0, 3], [[0, 1, 2]], r"of shape \(1, 3\); wanted integers, one behind the other"),
         ([42], [0, 4], [0, 1, 2, 3], "cell 0 is a polyhedron; wanted `polyhedra`"),
         ([], [0], [], "no cells"),
     ],
@@ -112,6 +119,17 @@ def test_arrays_are_read_only_views_where_the_dtype_fits():
     assert SQUARE.flags.writeable
     assert (mesh.kind.dtype, mesh.indptr.dtype) == (np.uint8, np.int64)
     assert Mesh.from_arrays(SQUARE, {"quad": cells.astype(np.uint64)}).indices.dtype == np.int32
+
+
+def test_foreign_byte_orders_are_turned():
+    mesh = Mesh.from_arrays(
+        SQUARE.astype(">f8"),
+        {"quad": np.array([[0, 1, 2, 3]], ">i4")},
+        cell_fields={"cost": np.array([2.5], ">f4")},
+    )
+    assert mesh.measures.tolist() == [1.0]
+    assert mesh.cell_fields["cost"].dtype == np.dtype("=f4")
+    assert mesh.cell_fields["cost"].dtype.isnative
 
 
 def test_lower_blocks_become_boundary_groups_and_fields_are_cut():
