@@ -70,7 +70,7 @@ def read_pvtu(path: Path) -> RawMesh:
     """
     try:
         root = ElementTree.fromstring(path.read_bytes())
-    except ElementTree.ParseError as error:
+    except (ElementTree.ParseError, ValueError, LookupError) as error:
         raise FileError(f"{path}: is damaged or cut short: {error}") from error
     sources = [piece.get("Source", "") for piece in root.iter("Piece")]
     if not all(sources) or not sources:

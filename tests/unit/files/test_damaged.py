@@ -18,6 +18,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from sfcpart.files.faces_file import write_faces
+from sfcpart.mesh.mesh import Mesh
 from tests.file_samples import MIXED, SU2, vtk_grid, write_shell, write_tets, write_ugrid
 
 N_COPIES = int(os.environ.get("SFCPART_DAMAGED_COPIES", "40"))
@@ -42,8 +44,9 @@ for name in sys.argv[1:]:
     try:
         mesh = read_mesh(name)
         assert mesh.n_cells > 0
-        assert np.isfinite(mesh.points).all()
-        assert mesh.indices.min() >= 0 and mesh.indices.max() < mesh.n_points
+        assert np.isfinite(mesh.centers).all() or mesh.points is not None
+        assert mesh.points is None or np.isfinite(mesh.points).all()
+        assert mesh.points is None or 0 <= mesh.indices.min() <= mesh.indices.max() < mesh.n_points
         assert len(mesh.indptr) == mesh.n_cells + 1 == len(mesh.kind) + 1
         assert all(len(values) == mesh.n_cells for values in mesh.cell_fields.values())
         outcomes.append([name, "mesh", ""])
@@ -101,6 +104,13 @@ def write_vtk(path: Path, name: str) -> None:
     writer.Write()
 
 
+def write_faces_mesh(path: Path) -> None:
+    pairs = [[i, i + 1] for i in range(29)] + [[29, -1]]
+    centers = np.random.default_rng(0).random((30, 3))
+    mesh = Mesh.from_faces(pairs, np.ones(30), centers, np.ones(30), cell_fields={"w": centers})
+    write_faces(path, mesh)
+
+
 WRITERS = {
     "xml.vtu": lambda path: write_vtk(path, "xml"),
     "meshio.vtu": lambda path: write_tets(path, "vtu"),
@@ -114,6 +124,7 @@ WRITERS = {
     "a.b8.ugrid": write_ugrid,
     "a.mesh": lambda path: write_tets(path, "medit"),
     "a.inp": lambda path: write_tets(path, "abaqus"),
+    "faces.h5": write_faces_mesh,
     "a.vtkhdf": lambda path: write_vtk(path, "hdf"),
 }
 
@@ -155,7 +166,7 @@ def test_damaged_copies_give_a_mesh_or_our_error(tmp_path, name):
     found = outcomes(tmp_path, names)
     assert found[0][1] == "mesh"
     wrong = [row for row in found if row[1] not in ("mesh", "error")]
-    if name.endswith(".vtkhdf"):
+    if name.endswith((".vtkhdf", ".h5")):
         wrong = [row for row in wrong if row[1] != "died" or not row[2].startswith("-")]
     assert not wrong
     assert sum(row[1] == "error" for row in found) > N_COPIES // 10
