@@ -1,9 +1,5 @@
 """Hill-climbing on a k-way partition from single seeds, each search with its own rollback.
 
-Vertices are searched in domains (ranges of vertices): vertices with a neighbour in another domain
-stay put, and each domain has its own share of the room left in each part, so domains can go to
-any number of threads.
-
 Sources: boundary refinement with rollback, Fiduccia, Mattheyses 1982; many short searches, each
 around one seed, Osipov, Sanders, ESA 2010 (both from memory). States as good as the best so far
 are kept too: on tetrahedra that wandering cuts 5 % more than insisting on a gain.
@@ -17,41 +13,7 @@ from sfcpart.dtypes import Array
 from sfcpart.kernels._jit import jit
 from sfcpart.kernels.heap import drop, put
 
-__all__ = ["count_demand", "freeze_rims", "search_domains"]
-
-
-@jit
-def freeze_rims(start: int, stop: int, border: Array, indptr: Array, indices: Array, done: Array) -> None:
-    """Mark vertices of domains `start:stop` that have a neighbour outside their domain."""
-    for d in range(start, stop):
-        low = border[d]
-        high = border[d + 1]
-        for v in range(low, high):
-            for j in range(indptr[v], indptr[v + 1]):
-                if indices[j] < low or indices[j] >= high:
-                    done[v] = True
-                    break
-
-
-@jit
-def count_demand(
-    start: int,
-    stop: int,
-    seed_ptr: Array,
-    seeds: Array,
-    indptr: Array,
-    indices: Array,
-    part: Array,
-    demand: Array,
-) -> None:
-    """Count edges from the seeds of each domain to other parts in `demand` (n_domains, n_parts)."""
-    for d in range(start, stop):
-        for i in range(seed_ptr[d], seed_ptr[d + 1]):
-            v = seeds[i]
-            for j in range(indptr[v], indptr[v + 1]):
-                p = part[indices[j]]
-                if p != part[v]:
-                    demand[d, p] += 1
+__all__ = ["search_from_seeds"]
 
 
 @jit
@@ -100,100 +62,84 @@ def best_move(
 
 
 @jit
-def search_domains(
-    start: int,
-    stop: int,
-    seed_ptr: Array,
+def search_from_seeds(
     seeds: Array,
     indptr: Array,
     indices: Array,
     edge_weight: Array,
     vertex_weight: Array,
     part: Array,
-    rooms: Array,
+    room: Array,
     done: Array,
     key: Array,
     spot: Array,
+    link: Array,
+    near: Array,
     patience: int,
-    border: Array,
-    moved: Array,
-    n_moved: Array,
 ) -> int:
-    """Search from each seed of domains `start:stop` in turn; return the fall of the cut (>= 0).
+    """Search from each seed in turn; return the fall of the cut (>= 0).
 
     A search moves the best vertex around its seed again and again, every vertex at most once
-    (`done`), until `patience` moves brought nothing better, then goes back to its last best
-    state. Domain d lists what it moved at `moved[border[d]...]` and its number in `n_moved[d]`.
+    (`done`) and only where `room` (n_parts,) allows, until `patience` moves brought nothing
+    better, then goes back to its last best state.
     """
-    n_parts = rooms.shape[1]
-    link = np.zeros(n_parts, np.int64)
-    near = np.empty(n_parts, np.int32)
-    heap = np.empty(len(part) // rooms.shape[0] * 2 + 16, np.int32)
+    heap = np.empty(len(part), np.int32)
     log_vertex = np.empty(patience + 1, np.int32)
     log_part = np.empty(patience + 1, np.int32)
     total = 0
-    for d in range(start, stop):
-        room = rooms[d]
-        listed = border[d]
-        for i in range(seed_ptr[d], seed_ptr[d + 1]):
-            s = seeds[i]
-            if done[s]:
-                continue
-            gain, to = best_move(
-                s, indptr, indices, edge_weight, vertex_weight[s], part, room, link, near
-            )
+    for i in range(len(seeds)):
+        s = seeds[i]
+        if done[s]:
+            continue
+        gain, to = best_move(
+            s, indptr, indices, edge_weight, vertex_weight[s], part, room, link, near
+        )
+        if to < 0:
+            continue
+        size = put(heap, spot, key, s, gain, 0)
+        since = 0  # gain and moves since the best state
+        n_moves = 0
+        while size > 0 and n_moves < patience:
+            v = heap[0]
+            weight = vertex_weight[v]
+            gain, to = best_move(v, indptr, indices, edge_weight, weight, part, room, link, near)
             if to < 0:
-                continue
-            size = put(heap, spot, key, s, gain, 0)
-            since = 0  # gain and moves since the best state
-            n_moves = 0
-            while size > 0 and n_moves < patience:
-                v = heap[0]
-                weight = vertex_weight[v]
-                gain, to = best_move(
-                    v, indptr, indices, edge_weight, weight, part, room, link, near
-                )
-                if to < 0:
-                    size = drop(heap, spot, key, v, size)
-                    continue
-                if gain < key[v]:  # its part filled up meanwhile
-                    size = put(heap, spot, key, v, gain, size)
-                    if heap[0] != v:
-                        continue
                 size = drop(heap, spot, key, v, size)
-                done[v] = True
-                log_vertex[n_moves] = v
-                log_part[n_moves] = part[v]
-                n_moves += 1
-                room[part[v]] += weight
-                room[to] -= weight
-                part[v] = to
-                since += gain
-                if since >= 0:
-                    for x in range(n_moves):
-                        moved[listed] = log_vertex[x]
-                        listed += 1
-                    total += since
-                    since = 0
-                    n_moves = 0
-                for j in range(indptr[v], indptr[v + 1]):
-                    u = indices[j]
-                    if done[u]:
-                        continue
-                    gain, to = best_move(
-                        u, indptr, indices, edge_weight, vertex_weight[u], part, room, link, near
-                    )
-                    if to >= 0:
-                        size = put(heap, spot, key, u, gain, size)
-                    elif spot[u] >= 0:
-                        size = drop(heap, spot, key, u, size)
-            while n_moves > 0:
-                n_moves -= 1
-                v = log_vertex[n_moves]
-                room[part[v]] += vertex_weight[v]
-                room[log_part[n_moves]] -= vertex_weight[v]
-                part[v] = log_part[n_moves]
-            for j in range(size):
-                spot[heap[j]] = -1
-        n_moved[d] = listed - border[d]
+                continue
+            if gain < key[v]:  # its part filled up meanwhile
+                size = put(heap, spot, key, v, gain, size)
+                if heap[0] != v:
+                    continue
+            size = drop(heap, spot, key, v, size)
+            done[v] = True
+            log_vertex[n_moves] = v
+            log_part[n_moves] = part[v]
+            n_moves += 1
+            room[part[v]] += weight
+            room[to] -= weight
+            part[v] = to
+            since += gain
+            if since >= 0:
+                total += since
+                since = 0
+                n_moves = 0
+            for j in range(indptr[v], indptr[v + 1]):
+                u = indices[j]
+                if done[u]:
+                    continue
+                gain, to = best_move(
+                    u, indptr, indices, edge_weight, vertex_weight[u], part, room, link, near
+                )
+                if to >= 0:
+                    size = put(heap, spot, key, u, gain, size)
+                elif spot[u] >= 0:
+                    size = drop(heap, spot, key, u, size)
+        while n_moves > 0:
+            n_moves -= 1
+            v = log_vertex[n_moves]
+            room[part[v]] += vertex_weight[v]
+            room[log_part[n_moves]] -= vertex_weight[v]
+            part[v] = log_part[n_moves]
+        for j in range(size):
+            spot[heap[j]] = -1
     return total

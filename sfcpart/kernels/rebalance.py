@@ -62,6 +62,50 @@ def least_loss(
 
 
 @jit
+def splits_part(
+    v: int, indptr: Array, indices: Array, part: Array, mark: Array, queue: Array, reach: int
+) -> bool:
+    """Whether taking v out may split its part: its own-part neighbours do not meet near it.
+
+    Looks at no more than `reach` vertices. `mark` is zero before and after.
+    """
+    own = part[v]
+    wanted = 0
+    last = 0
+    for j in range(indptr[v], indptr[v + 1]):
+        u = indices[j]
+        if part[u] == own and mark[u] == 0 and u != v:
+            mark[u] = 1
+            wanted += 1
+            if last == 0:
+                queue[0] = u
+                last = 1
+    if wanted == 0:  # the last of its part
+        return True
+    met = 1
+    mark[queue[0]] = 2
+    mark[v] = 2
+    i = 0
+    while i < last and met < wanted and last < reach:
+        w = queue[i]
+        i += 1
+        for j in range(indptr[w], indptr[w + 1]):
+            u = indices[j]
+            if part[u] == own and mark[u] != 2 and last < reach:
+                if mark[u] == 1:
+                    met += 1
+                mark[u] = 2
+                queue[last] = u
+                last += 1
+    for i in range(last):
+        mark[queue[i]] = 0
+    for j in range(indptr[v], indptr[v + 1]):
+        mark[indices[j]] = 0
+    mark[v] = 0
+    return met < wanted
+
+
+@jit
 def shed_excess(
     boundary: Array,
     indptr: Array,
@@ -77,11 +121,15 @@ def shed_excess(
     heap: Array,
     link: Array,
     near: Array,
+    reach: int,
+    mark: Array,
+    queue: Array,
 ) -> int:
     """Move vertices out of overloaded parts, least loss per weight first; return how many.
 
     A move goes to a part with room, or to one nearer to a part with room (`distance`, in steps
-    over neighbouring parts), so repeated calls carry the excess to where it fits.
+    over neighbouring parts), so repeated calls carry the excess to where it fits. With `reach`
+    > 0 vertices whose leaving may split their part stay (seen from `reach` vertices around).
     """
     size = 0
     for i in range(len(boundary)):
@@ -116,6 +164,8 @@ def shed_excess(
             if heap[0] != v:
                 continue
         size = drop(heap, spot, key, v, size)
+        if reach > 0 and splits_part(v, indptr, indices, part, mark, queue, reach):
+            continue
         load[own] -= w
         load[to] += w
         part[v] = to

@@ -340,8 +340,8 @@ def refine_pairs(
     stop: int,
     left: Array,
     right: Array,
-    member_ptr: Array,
-    members_all: Array,
+    fringe_ptr: Array,
+    fringe: Array,
     indptr: Array,
     indices: Array,
     edge_weight: Array,
@@ -353,35 +353,28 @@ def refine_pairs(
     key: Array,
     spot: Array,
     patience: int,
-    passes: int,
-) -> int:
-    """Refine pairs `start:stop` (no part in two pairs); return by how much the cut fell."""
-    largest = 0
+    gains: Array,
+) -> None:
+    """Refine pairs `start:stop` (no part in two pairs); write the falls of the cut to `gains`.
+
+    `fringe` lists the boundary vertices by part.
+    """
+    heap_a = np.empty(len(part), np.int32)
+    heap_b = np.empty(len(part), np.int32)
+    log = np.empty(len(part), np.int32)
     for i in range(start, stop):
         a = left[i]
         b = right[i]
-        largest = max(
-            largest, member_ptr[a + 1] - member_ptr[a] + member_ptr[b + 1] - member_ptr[b]
-        )
-    heap_a = np.empty(largest, np.int32)
-    heap_b = np.empty(largest, np.int32)
-    log = np.empty(largest, np.int32)
-    members = np.empty(largest, np.int32)
-    total = 0
-    for i in range(start, stop):
-        a = left[i]
-        b = right[i]
-        m = 0
-        for p in (a, b):
-            for x in range(member_ptr[p], member_ptr[p + 1]):
-                members[m] = members_all[x]
-                m += 1
-        for _ in range(passes):
+        m_a = fringe_ptr[a + 1] - fringe_ptr[a]
+        m = m_a + fringe_ptr[b + 1] - fringe_ptr[b]
+        members = np.empty(m, np.int32)
+        for x in range(m):
+            members[x] = fringe[fringe_ptr[a] + x] if x < m_a else fringe[fringe_ptr[b] + x - m_a]
+        for _ in range(10):
             fall_over, fall = refine_once(
                 a, b, members, m, indptr, indices, edge_weight, vertex_weight, part, load,
                 capacity, slack, key, spot, heap_a, heap_b, log, patience,
             )  # fmt: skip
-            total += fall
+            gains[i] += fall
             if fall_over == 0 and fall == 0:
                 break
-    return total

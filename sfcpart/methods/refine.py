@@ -1,125 +1,31 @@
-"""Better labels on one graph under part capacities: label moves, local searches, rebalancing.
+"""Better labels on one graph under part capacities: label moves, local searches, flows.
 
-`refine` never ends with a larger cut than it started with unless the start broke a capacity, and
-never breaks a capacity the start kept.
+None of them ends with a larger cut than it started with unless the start broke a capacity, and
+none breaks a capacity the start kept.
 
 Sources: data-parallel label moves with a second look, rebalancing and rollback, Gilbert et al.,
-arXiv:2304.13194 (2023); localized searches, Osipov, Sanders, ESA 2010; pairwise refinement,
-Kernighan, Lin 1970; Fiduccia, Mattheyses 1982 (the last three from memory).
+arXiv:2304.13194 (2023); localized searches, Osipov, Sanders, ESA 2010; flows between pairs of
+parts, Sanders, Schulz, ESA 2011; pairwise refinement, Kernighan, Lin 1970; Fiduccia, Mattheyses
+1982 (all but the first from memory).
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
-
 import numpy as np
 
-from sfcpart.dtypes import Array, Int32Array, Int64Array
-from sfcpart.kernels.label_moves import find_boundary, look_again, propose_moves, spread_active
+from sfcpart.dtypes import Int32Array, Int64Array
+from sfcpart.kernels.flow import flow_pairs
+from sfcpart.kernels.label_moves import look_again, propose_moves, spread_active
 from sfcpart.kernels.local_search import search_from_seeds
-from sfcpart.kernels.rebalance import link_parts, shed_excess
-from sfcpart.kernels.threads import ranges, run_ranges
-from sfcpart.methods.coarsen import WeightedGraph
+from sfcpart.kernels.threads import run_ranges
+from sfcpart.kernels.two_way import refine_pairs
+from sfcpart.methods.balance import rebalance
+from sfcpart.methods.labels import Labels, boundary_of, by_part, touching_pairs
 
-__all__ = ["Labels", "boundary_of", "cut_of", "move_labels", "rebalance", "search_locally"]
+__all__ = ["flow_between", "move_labels", "refine_between", "search_locally"]
 
-
-@dataclass(frozen=True, eq=False)
-class Labels:
-    """Part of each vertex of a graph with the loads of the parts, changed in place by refinement.
-
-    Attributes
-    ----------
-    graph : WeightedGraph
-    part : (n,) int32
-    load, capacity : (n_parts,) int64
-        Weight of each part and the most it may hold.
-    """
-
-    graph: WeightedGraph
-    part: Int32Array
-    capacity: Int64Array
-    load: Int64Array = field(init=False)
-    key: Int64Array = field(init=False)
-    spot: Int32Array = field(init=False)
-    heap: Int32Array = field(init=False)
-    link: Int64Array = field(init=False)
-    near: Int32Array = field(init=False)
-
-    def __post_init__(self) -> None:
-        n, k = self.graph.n, len(self.capacity)
-        load = np.zeros(k, np.int64)
-        np.add.at(load, self.part, self.graph.vertex_weight)
-        for name, value in (
-            ("load", load),
-            ("key", np.empty(n, np.int64)),
-            ("spot", np.full(n, -1, np.int32)),
-            ("heap", np.empty(n, np.int32)),
-            ("link", np.zeros(k, np.int64)),
-            ("near", np.empty(k, np.int32)),
-        ):
-            object.__setattr__(self, name, value)
-
-    @property
-    def overload(self) -> int:
-        """Total weight above the capacities."""
-        return int(np.maximum(self.load - self.capacity, 0).sum())
-
-    @property
-    def rows(self) -> tuple[Array, Array, Array, Array]:
-        """The graph's four arrays, as kernels take them."""
-        g = self.graph
-        return g.indptr, g.indices, g.edge_weight, g.vertex_weight
-
-
-def cut_of(graph: WeightedGraph, part: Int32Array) -> int:
-    """Return the total weight of the edges between parts."""
-    row = np.repeat(part, np.diff(graph.indptr))
-    return int(graph.edge_weight[row != part[graph.indices]].sum()) // 2
-
-
-def boundary_of(labels: Labels) -> Int32Array:
-    """Return the vertices with a neighbour in another part, ascending."""
-    n = labels.graph.n
-    found = np.empty(n, np.int32)
-    counts = run_ranges(
-        find_boundary, n, labels.graph.indptr, labels.graph.indices, labels.part, found
-    )
-    pieces = [found[lo : lo + c] for (lo, _), c in zip(ranges(n), counts, strict=True)]
-    return np.concatenate(pieces)
-
-
-def rebalance(labels: Labels) -> None:
-    """Carry excess weight to parts with room until none is over capacity or nothing helps."""
-    lowest, idle = labels.overload, 0
-    while lowest > 0 and idle < 4:
-        boundary = boundary_of(labels)
-        distance = _steps_to_room(labels, boundary)
-        moved = shed_excess(
-            boundary, *labels.rows, labels.part, labels.load, labels.capacity, distance,
-            labels.key, labels.spot, labels.heap, labels.link, labels.near,
-        )  # fmt: skip
-        overload = labels.overload
-        idle = 0 if overload < lowest else idle + 1
-        lowest = min(lowest, overload)
-        if moved == 0:
-            return
-
-
-def _steps_to_room(labels: Labels, boundary: Int32Array) -> Int32Array:
-    """Steps over neighbouring parts from each part to one that has room."""
-    n_parts = len(labels.capacity)
-    touching = np.zeros((n_parts, n_parts), np.bool_)
-    link_parts(boundary, labels.graph.indptr, labels.graph.indices, labels.part, touching)
-    distance = np.full(n_parts, n_parts, np.int32)
-    front = labels.load < labels.capacity
-    distance[front] = 0
-    step = 0
-    while front.any():
-        step += 1
-        front = touching[front].any(axis=0) & (distance == n_parts)
-        distance[front] = step
-    return distance
+MOST = 20_000
+"""Vertices a side of a band between two parts."""
 
 
 def move_labels(labels: Labels, *, boldness: int = 64, patience: int = 12) -> int:
@@ -169,27 +75,96 @@ def move_labels(labels: Labels, *, boldness: int = 64, patience: int = 12) -> in
             moved = np.concatenate([moved, shed])
         out = np.empty(n, np.int32)
         active = out[: spread_active(active, moved, graph.indptr, graph.indices, part, seen, out)]
-    part[:] = best
-    labels.load[:] = 0
-    np.add.at(labels.load, part, graph.vertex_weight)
+    labels.restore(best)
     return best_cut
 
 
 def search_locally(labels: Labels, *, rounds: int, patience: int, seed: int) -> int:
     """Improve by short searches from every boundary vertex; return by how much the cut fell."""
     total = 0
-    n = labels.graph.n
-    log_vertex = np.empty(n, np.int32)
-    log_part = np.empty(n, np.int32)
     for turn in range(rounds):
-        seeds = boundary_of(labels)
-        seeds = np.random.default_rng((seed, turn)).permutation(seeds)
-        done = np.zeros(n, np.bool_)
+        seeds = np.random.default_rng((seed, turn)).permutation(boundary_of(labels))
+        room = np.maximum(labels.capacity - labels.load, 0)
+        before = room.copy()
         fall = search_from_seeds(
-            seeds, *labels.rows, labels.part, labels.load, labels.capacity, done, labels.key,
-            labels.spot, labels.heap, labels.link, labels.near, log_vertex, log_part, patience,
+            seeds, *labels.rows, labels.part, room, np.zeros(labels.graph.n, np.bool_),
+            labels.key, labels.spot, labels.link, labels.near, patience,
         )  # fmt: skip
+        labels.load[:] += before - room
         total += fall
         if fall * 2000 <= total:
+            break
+    return total
+
+
+def flow_between(labels: Labels, *, sweeps: int, depth: int, stretch: float) -> int:
+    """Put the borders of all pairs of neighbouring parts where they cut least; return the fall."""
+    n, k = labels.graph.n, len(labels.capacity)
+    local = np.full(n, -1, np.int32)
+    stale = np.ones(k, np.bool_)
+    total = 0
+    for _ in range(sweeps):
+        boundary = boundary_of(labels)
+        pairs = touching_pairs(labels, boundary)
+        pairs = pairs[stale[pairs].any(axis=1)]
+        stale = np.zeros(k, np.bool_)
+        before = total
+        for group in _disjoint_groups(pairs, k):
+            fringe, fringe_ptr = by_part(boundary, labels.part, k)
+            gains = np.zeros(len(group), np.int64)
+            a, b = np.ascontiguousarray(group.T)
+            run_ranges(
+                flow_pairs, len(group), a, b, fringe_ptr, fringe, *labels.rows, labels.part,
+                labels.load, labels.capacity, local, MOST, depth, stretch, gains, smallest=1,
+            )  # fmt: skip
+            total += int(np.maximum(gains, 0).sum())
+            stale[group[gains != 0].ravel()] = True
+            boundary = boundary_of(labels)
+        if total == before:
+            break
+    return total
+
+
+def _disjoint_groups(pairs: Int32Array, n_parts: int) -> list[Int32Array]:
+    """Group pairs greedily, in order, so that no part occurs twice in a group."""
+    used: list[set[int]] = [set() for _ in range(n_parts)]
+    groups: list[list[tuple[int, int]]] = []
+    for a, b in pairs.tolist():
+        colour = 0
+        while colour in used[a] or colour in used[b]:
+            colour += 1
+        used[a].add(colour)
+        used[b].add(colour)
+        if colour == len(groups):
+            groups.append([])
+        groups[colour].append((a, b))
+    return [np.array(group, np.int32) for group in groups]
+
+
+def refine_between(labels: Labels, *, sweeps: int, patience: int, slack: int) -> int:
+    """Refine the border of every pair of neighbouring parts; return by how much the cut fell.
+
+    On the way a part may exceed its capacity by `slack`, so that full parts can swap vertices.
+    """
+    n, k = labels.graph.n, len(labels.capacity)
+    stale = np.ones(k, np.bool_)
+    total = 0
+    for _ in range(sweeps):
+        pairs = touching_pairs(labels, boundary_of(labels))
+        pairs = pairs[stale[pairs].any(axis=1)]
+        stale = np.zeros(k, np.bool_)
+        before = total
+        for group in _disjoint_groups(pairs, k):
+            fringe, fringe_ptr = by_part(boundary_of(labels), labels.part, k)
+            gains = np.zeros(len(group), np.int64)
+            a, b = np.ascontiguousarray(group.T)
+            run_ranges(
+                refine_pairs, len(group), a, b, fringe_ptr, fringe, *labels.rows, labels.part,
+                labels.load, labels.capacity, slack, labels.key, labels.spot, patience, gains,
+                smallest=1,
+            )  # fmt: skip
+            total += int(gains.sum())
+            stale[group[gains > 0].ravel()] = True
+        if total == before:
             break
     return total
