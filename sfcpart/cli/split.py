@@ -7,18 +7,13 @@ from typing import Any
 import click
 
 from sfcpart.cli.options import (
-    LEVELS,
-    LIMIT,
-    PAIR,
-    SPEEDS,
-    Names,
     mesh_argument,
     network_options,
     output_options,
     set_threads,
     step_model,
-    weight_option,
 )
+from sfcpart.cli.wishes import METHOD, MethodOption, check_part_count, wish_options
 
 __all__ = ["command"]
 
@@ -46,18 +41,8 @@ nothing about whether a simulation is right.
 """
 
 
-def _methods() -> list[str]:
-    """Load the names of the methods."""
-    from sfcpart.methods.registry import METHODS
-
-    return list(METHODS)
-
-
 @click.command("split", help=HELP)
 @mesh_argument
-@click.option(
-    "-n", "--parts", "n_parts", type=click.IntRange(min=1), metavar="N", help="Number of parts."
-)
 @click.option(
     "-o", "--output", type=click.Path(), metavar="DIR", help="Folder to write, new or empty."
 )
@@ -65,53 +50,14 @@ def _methods() -> list[str]:
 @click.option(
     "-m",
     "--method",
-    type=Names("method", _methods),
+    cls=MethodOption,
+    type=METHOD,
     metavar="NAME",
     default="hilbert",
     show_default=True,
-    help="How to split: hilbert, morton or rows (along a curve), or a graph method.",
+    help="How to split: NAMES.",
 )
-@click.option(
-    "--tolerance",
-    type=float,
-    default=0.03,
-    show_default=True,
-    metavar="SHARE",
-    help="Imbalance that graph methods may use up for a smaller cut.",
-)
-@weight_option
-@click.option(
-    "--speeds",
-    type=SPEEDS,
-    metavar="LIST|FILE",
-    help="Relative speed of each part: 48*1,16*0.5 or a file of numbers.",
-)
-@click.option(
-    "--limit",
-    type=LIMIT,
-    metavar="SPEC:MOST",
-    help="A second weight of each cell, spelled like --weight, and the most of it that a part may "
-    "hold: memory:300, or 1:5000 for cells. One number, or one for each part.",
-)
-@click.option(
-    "--levels", type=LEVELS, metavar="AxB", help="Nested parts, such as 4x16: nodes, then cores."
-)
-@click.option(
-    "--together", multiple=True, metavar="FIELD", help="Never part cells with equal FIELD >= 0."
-)
-@click.option(
-    "--pairs",
-    type=click.Path(),
-    metavar="FILE",
-    help="Never part the two cells in each line of FILE (text or .npy, cells from 0).",
-)
-@click.option(
-    "--periodic",
-    type=PAIR,
-    multiple=True,
-    metavar="A:B",
-    help="Never part the cells on either side of two boundary groups.",
-)
+@wish_options
 @click.option(
     "-f",
     "--format",
@@ -132,20 +78,13 @@ def _methods() -> list[str]:
     help="What the halo goes across.",
 )
 @click.option("--picture", is_flag=True, help="Write parts.png as well.")
-@click.option(
-    "--merge-points",
-    type=float,
-    metavar="TOL",
-    help="Merge points nearer than TOL first: closes cracks between blocks.",
-)
-@click.option("--seed", type=int, default=0, show_default=True, help="Start of random choices.")
-@click.option("--threads", type=int, metavar="T", help="Threads to use (default: all allowed).")
 @network_options
 @output_options
 def command(**given: Any) -> None:
     """Parse, split, write, print."""
     quiet, as_json = given.pop("quiet"), given.pop("as_json")
-    _check(given)
+    check_part_count(given)
+    _check_output(given)
     set_threads(given.pop("threads"))
     model = step_model(given)
     from sfcpart.cli.split_job import SplitJob
@@ -155,22 +94,11 @@ def command(**given: Any) -> None:
     job.report(as_json=as_json, quiet=quiet)
 
 
-def _check(given: dict[str, Any]) -> None:
-    """Refuse options that contradict each other, before anything is loaded."""
-    levels, n_parts = given["levels"], given["n_parts"]
-    if levels is None and n_parts is None:
-        raise click.UsageError("how many parts? give --parts N or --levels AxB")
-    product = 1
-    for count in levels or (n_parts,):
-        product *= count
-    if n_parts is not None and product != n_parts:
-        spelled = "x".join(map(str, levels))
-        raise click.UsageError(f"--levels {spelled} makes {product} parts, --parts asks {n_parts}")
-    given["n_parts"] = product
-    if given["output"] is None:
-        for name in ("overwrite", "picture", "formats"):
-            if given[name]:
-                spelled = "format" if name == "formats" else name
-                raise click.UsageError(f"--{spelled} needs a folder to write to: give -o DIR")
-    if given["threads"] is not None and given["threads"] < 1:
-        raise click.UsageError(f"--threads is {given['threads']}; wanted at least 1")
+def _check_output(given: dict[str, Any]) -> None:
+    """Refuse options for output without a place for it, before anything is loaded."""
+    if given["output"] is not None:
+        return
+    for name in ("overwrite", "picture", "formats"):
+        if given[name]:
+            spelled = "format" if name == "formats" else name
+            raise click.UsageError(f"--{spelled} needs a folder to write to: give -o DIR")

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 from sfcpart import api
 from sfcpart.cli.console import Stages, print_json
 from sfcpart.cli.figures import headline, print_assessment
-from sfcpart.cli.inputs import read_pairs, read_speeds
+from sfcpart.cli.wishes import load_wish, read_mesh, shape_wish
 
 if TYPE_CHECKING:
     from sfcpart.assess.assessment import Assessment
@@ -40,41 +40,18 @@ class SplitJob:
 
             check_output_folder(given["output"], overwrite=given["overwrite"])
         with self.doing(f"reading {self.source}"):
-            self.mesh = self._read()
+            self.mesh = read_mesh(self.source, given)
         with self.doing(f"splitting {self.mesh.n_cells:,} cells"):
             self._split()
         if given["output"] is not None:
             with self.doing(f"writing {given['output']}"):
                 self._write()
 
-    def _read(self) -> Mesh:
-        """Read the mesh, with near points merged if asked."""
-        mesh = api.read_mesh(self.source)
-        tolerance = self.options["merge_points"]
-        return mesh if tolerance is None else mesh.with_points_merged(tolerance)
-
     def _split(self) -> None:
         """Split and measure with the same weights, speeds and limits."""
-        given = self.options
-        n_parts = given["n_parts"]
-        second, most = given["limit"] or (None, None)
-        load: dict[str, Any] = {
-            "weights": list(given["weights"]) or None,
-            "speeds": read_speeds(given["speeds"], n_parts),
-            "limit_weights": second,
-            "limits": most,
-        }
+        given, load = self.options, load_wish(self.options)
         self.partition = api.split(
-            self.mesh,
-            n_parts,
-            method=given["method"],
-            tolerance=given["tolerance"],
-            levels=given["levels"],
-            together=list(given["together"]) or None,
-            pairs=read_pairs(given["pairs"]),
-            periodic=given["periodic"],
-            seed=given["seed"],
-            **load,
+            self.mesh, given["n_parts"], method=given["method"], **shape_wish(given), **load
         )
         self.assessment = api.assess(self.mesh, self.partition, step_model=self.step_model, **load)
 

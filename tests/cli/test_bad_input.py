@@ -107,7 +107,13 @@ BAD = [
     (nothing, "assess meshes/turbine.vtu no.npy", 4, "no.npy"),
     (nothing, "assess meshes/turbine.vtu meshes", 4, "parts.vtkhdf"),
     (nothing, "inspect no.vtu", 4, "No such file"),
+    (nothing, "compare no.vtu -n 2", 4, "No such file"),
+    (nothing, "compare meshes/turbine.vtu -n 2 --given hilbert:body", 3, "hilbert"),
+    (nothing, "compare meshes/turbine.vtu -n 2 --given a:zone", 4, "zone"),
     # wrong command lines
+    (nothing, "compare meshes/turbine.vtu", 2, "--parts"),
+    (nothing, "compare meshes/turbine.vtu -n 2 --method magic", 2, "hilbert"),
+    (nothing, "figures magic", 2, "magic"),
     (nothing, "nonsense", 2, "nonsense"),
     (nothing, "split", 2, "MESH"),
     (nothing, "split meshes/turbine.vtu", 2, "--parts"),

@@ -92,9 +92,10 @@ def test_methods_and_networks_named_in_help_exist(sfcpart):
     from sfcpart.assess.step_model import NETWORKS
     from sfcpart.methods.registry import METHODS
 
-    out = "".join(sfcpart("split --help").out.split())  # names may be broken at hyphens
-    for name in (*METHODS, *NETWORKS):
-        assert name in out
+    for verb in ("split", "compare"):
+        out = "".join(sfcpart(f"{verb} --help").out.split())  # names may be broken at hyphens
+        for name in (*METHODS, *NETWORKS):
+            assert name in out
 
 
 def test_version(sfcpart):

@@ -16,7 +16,7 @@ from sfcpart.graph import components
 from sfcpart.mesh.kinds import KINDS
 
 ROOT = Path(__file__).resolve().parents[2]
-NAMES = sorted(p.name for p in (ROOT / "meshes").iterdir() if p.suffix != ".md")
+NAMES = sorted(p.name for p in (ROOT / "meshes").iterdir() if p.suffix not in (".md", ".png"))
 
 
 def _tool(name: str, *arguments: str) -> None:

@@ -1,11 +1,13 @@
-"""`sfcpart split` and `assess`: what they print and write."""
+"""`sfcpart split`, `assess`, `compare`, `inspect`, `figures`, `demo`: what they print and write."""
 
 from __future__ import annotations
 
 import csv
 import json
+import re
 from pathlib import Path
 
+import meshio
 import numpy as np
 import pytest
 
@@ -157,3 +159,71 @@ def test_demo_needs_nothing_and_says_what_is_next(sfcpart, tmp_path):
         entry.name for entry in (tmp_path / "sfcpart-demo").iterdir()
     }
     assert sfcpart("demo -q") == (0, "", "")
+
+
+def test_compare_measures_all_alike(sfcpart, tmp_path):
+    line = "compare meshes/turbine.vtu -n 2 --method hilbert --method rows --given bodies:body"
+    told = json.loads(sfcpart(f"{line} --json --csv all.csv").out)
+    rows = {row["name"]: row for row in told["rows"]}
+    assert list(rows) == ["hilbert", "rows", "bodies"]
+    alone = json.loads(sfcpart("split meshes/turbine.vtu -n 2 --json").out)
+    assert rows["hilbert"]["cut_faces"] == alone["total"]["cut_faces"]
+    assert rows["bodies"]["cut_faces"] == 0
+    assert told["best"]["cut_faces"] == ["bodies"]
+    with (tmp_path / "all.csv").open() as file:
+        table = list(csv.DictReader(file))
+    assert [row["name"] for row in table] == list(rows)
+    assert [row["cut_faces"] for row in table] == [str(r["cut_faces"]) for r in told["rows"]]
+
+
+def test_compare_marks_the_best_and_names_the_shortest_run(sfcpart):
+    out = sfcpart("compare meshes/turbine.vtu -n 2 -m hilbert --given bodies:body").out
+    lines = {line.split()[0]: line for line in out.splitlines() if line}
+    assert "0*" in lines["bodies"].split()
+    assert "0*" not in lines["hilbert"].split()[3:4]
+    assert "shortest predicted run of 10,000 steps: hilbert" in out
+    assert max(map(len, out.splitlines())) <= 80
+
+
+def test_compare_says_why_a_method_cannot(sfcpart):
+    line = "compare meshes/turbine.vtu -n 2 -m hilbert --limit body:20 --together body"
+    code, out, _ = sfcpart(line)
+    assert code == 0
+    assert "hilbert" in out
+    assert "limit" in out
+
+
+def test_inspect_tells_what_is_there(sfcpart):
+    out = sfcpart("inspect meshes/channel_section.msh").out
+    assert "608 triangle, 216 quad" in out
+    assert "bed (60), surface (40), inflow (14), outflow (14)" in out
+    assert "324.3448249 in all" in out
+    assert "all cells connected" in out
+    assert "gmsh:physical" in out
+    told = json.loads(sfcpart("inspect meshes/turbine.vtu --json").out)
+    assert told["component_size"] == [960, 48]
+    assert told["kinds"] == {"hexahedron": 984, "wedge": 24}
+
+
+def test_inspect_finds_cracks_and_merging_closes_them(sfcpart):
+    points = np.array([[0.0, 0, 0], [1, 0, 0], [0, 1, 0], [1, 0, 0], [1, 1, 0], [0, 1, 0]])
+    meshio.Mesh(points, [("triangle", [[0, 1, 2], [3, 4, 5]])]).write("a.vtu")
+    cracked = json.loads(sfcpart("inspect a.vtu --json").out)
+    assert cracked["cracks"]["n_faces"] == 1
+    assert "merge points" in " ".join(sfcpart("inspect a.vtu").out.split())
+    closed = json.loads(sfcpart("inspect a.vtu --merge-points 1e-6 --json").out)
+    assert (closed["cracks"]["n_faces"], closed["n_inner_faces"]) == (0, 1)
+    split = json.loads(sfcpart("split a.vtu -n 2 --merge-points 1e-6 --json").out)
+    assert split["total"]["cut_faces"] == 1
+
+
+def test_figures_explains_every_key_of_the_json(sfcpart):
+    told = json.loads(sfcpart("split meshes/turbine.vtu -n 2 --json").out)
+    out = sfcpart("figures").out
+    for name in (*told["part"], *told["total"]):
+        assert re.search(rf"^{name} ", out, re.M)
+    some = sfcpart("figures pieces").out
+    assert some.splitlines()[0] == "Of each part"
+    assert len(some.splitlines()) <= 3
+    listed = json.loads(sfcpart("figures --json").out)
+    assert [column["name"] for column in listed["part"]] == list(told["part"])

@@ -1,0 +1,175 @@
+"""What a user may wish of a split: options that `split` and `compare` share, and what they mean."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import TYPE_CHECKING, Any, TypeVar
+
+import click
+
+from sfcpart.cli.options import LEVELS, LIMIT, PAIR, SPEEDS, Names, weight_option
+
+if TYPE_CHECKING:
+    from sfcpart.mesh.mesh import Mesh
+
+__all__ = [
+    "METHOD",
+    "MethodOption",
+    "check_part_count",
+    "load_wish",
+    "read_mesh",
+    "shape_wish",
+    "wish_options",
+]
+
+Function = TypeVar("Function", bound=Callable[..., Any])
+
+
+def _methods() -> list[str]:
+    """Load the names of the methods."""
+    from sfcpart.methods.registry import METHODS
+
+    return list(METHODS)
+
+
+METHOD = Names("method", _methods)
+
+
+class MethodOption(click.Option):
+    """An option whose help names the methods there are; they are loaded only to be shown."""
+
+    def get_help_record(self, ctx: click.Context) -> tuple[str, str] | None:
+        """Put the names into the help."""
+        record = super().get_help_record(ctx)
+        if record is None:
+            return None
+        return record[0], record[1].replace("NAMES", ", ".join(_methods()))
+
+
+def wish_options(function: Function) -> Function:
+    """Add what may be wished of the parts."""
+    options = (
+        click.option(
+            "-n",
+            "--parts",
+            "n_parts",
+            type=click.IntRange(min=1),
+            metavar="N",
+            help="Number of parts.",
+        ),
+        click.option(
+            "--levels",
+            type=LEVELS,
+            metavar="AxB",
+            help="Nested parts, such as 4x16: nodes, then cores.",
+        ),
+        click.option(
+            "--tolerance",
+            type=float,
+            default=0.03,
+            show_default=True,
+            metavar="SHARE",
+            help="Imbalance that graph methods may use up for a smaller cut.",
+        ),
+        weight_option,
+        click.option(
+            "--speeds",
+            type=SPEEDS,
+            metavar="LIST|FILE",
+            help="Relative speed of each part: 48*1,16*0.5 or a file of numbers.",
+        ),
+        click.option(
+            "--limit",
+            type=LIMIT,
+            metavar="SPEC:MOST",
+            help="A second weight of each cell, spelled like --weight, and the most of it that a "
+            "part may hold: memory:300, or 1:5000 for cells. One number, or one for each part.",
+        ),
+        click.option(
+            "--together",
+            multiple=True,
+            metavar="FIELD",
+            help="Never part cells with equal FIELD >= 0.",
+        ),
+        click.option(
+            "--pairs",
+            type=click.Path(),
+            metavar="FILE",
+            help="Never part the two cells in each line of FILE (text or .npy, cells from 0).",
+        ),
+        click.option(
+            "--periodic",
+            type=PAIR,
+            multiple=True,
+            metavar="A:B",
+            help="Never part the cells on either side of two boundary groups.",
+        ),
+        click.option(
+            "--seed", type=int, default=0, show_default=True, help="Start of random choices."
+        ),
+        click.option(
+            "--merge-points",
+            type=float,
+            metavar="TOL",
+            help="Merge points nearer than TOL first: closes cracks between blocks.",
+        ),
+        click.option(
+            "--threads",
+            type=click.IntRange(min=1),
+            metavar="T",
+            help="Threads to use (default: all allowed).",
+        ),
+    )
+    for option in reversed(options):
+        function = option(function)
+    return function
+
+
+def check_part_count(given: dict[str, Any]) -> None:
+    """Settle the number of parts, before anything is loaded."""
+    levels, n_parts = given["levels"], given["n_parts"]
+    if levels is None and n_parts is None:
+        raise click.UsageError("how many parts? give --parts N or --levels AxB")
+    product = 1
+    for count in levels or (n_parts,):
+        product *= count
+    if n_parts is not None and product != n_parts:
+        spelled = "x".join(map(str, levels))
+        raise click.UsageError(f"--levels {spelled} makes {product} parts, --parts asks {n_parts}")
+    given["n_parts"] = product
+
+
+def read_mesh(path: str, given: dict[str, Any]) -> Mesh:
+    """Read the mesh, with near points merged if asked."""
+    from sfcpart import api
+
+    mesh = api.read_mesh(path)
+    tolerance = given["merge_points"]
+    return mesh if tolerance is None else mesh.with_points_merged(tolerance)
+
+
+def load_wish(given: dict[str, Any]) -> dict[str, Any]:
+    """Return what makes work and its limits: arguments that splitting and measuring share."""
+    from sfcpart.cli.inputs import read_speeds
+
+    second, most = given["limit"] or (None, None)
+    return {
+        "weights": list(given["weights"]) or None,
+        "speeds": read_speeds(given["speeds"], given["n_parts"]),
+        "limit_weights": second,
+        "limits": most,
+    }
+
+
+def shape_wish(given: dict[str, Any]) -> dict[str, Any]:
+    """Return what else splitting takes."""
+    from sfcpart.cli.inputs import read_pairs
+
+    return {
+        "tolerance": given["tolerance"],
+        "levels": given["levels"],
+        "together": list(given["together"]) or None,
+        "pairs": read_pairs(given["pairs"]),
+        "periodic": given["periodic"],
+        "seed": given["seed"],
+    }
