@@ -15,7 +15,7 @@ import numpy as np
 
 from sfcpart.curve import Curve, curve_slice
 from sfcpart.dtypes import PART, Int32Array, Int64Array
-from sfcpart.errors import PartitionError
+from sfcpart.errors import InputError, PartitionError, WeightError
 from sfcpart.methods.chunks import cut_line
 from sfcpart.methods.line import Line
 from sfcpart.methods.problem import Problem
@@ -42,6 +42,8 @@ def split_along(problem: Problem, *, curve: Curve) -> Int32Array:
     ------
     InputError
         If a centre is not finite.
+    WeightError
+        If there is not one positive speed for each part.
     PartitionError
         If limits cannot be kept, a group or cell is too heavy for every part, or groups leave
         fewer items than parts.
@@ -131,20 +133,19 @@ def _nested_cuts(
         inside = problem.n_parts // n_chunks
         speed = problem.part_speed.astype(np.float64).reshape(n_chunks, inside).sum(axis=1)
         limit = None if part_limit is None else _summed(part_limit, n_chunks)
+        least = inside if some_for_each else 0
         pieces = []
         for chunk in range(len(cut) - 1):
             own = slice(chunk * size, (chunk + 1) * size)
-            pieces.append(
-                cut_line(
-                    line,
-                    begin=int(cut[chunk]),
-                    end=int(cut[chunk + 1]),
-                    speed=speed[own],
-                    limit=None if limit is None else limit[own],
-                    least=inside if some_for_each else 0,
-                )[:-1]
-            )
-        cut = np.append(np.concatenate(pieces), line.n_items)
+            ends = {"begin": int(cut[chunk]), "end": int(cut[chunk + 1])}
+            most = None if limit is None else limit[own]
+            try:
+                pieces.append(cut_line(line, **ends, speed=speed[own], limit=most, least=least))
+            except PartitionError as error:
+                if n_chunks == size:
+                    raise
+                raise PartitionError(f"inside chunk {chunk} of the level above, {error}") from error
+        cut = np.append(np.concatenate([piece[:-1] for piece in pieces]), line.n_items)
     return cut
 
 
@@ -154,15 +155,15 @@ def _summed(limit: Int64Array, n_chunks: int) -> Int64Array:
     return np.array(sums, np.int64)
 
 
-def _unfit(problem: Problem) -> PartitionError | None:
+def _unfit(problem: Problem) -> InputError | None:
     """Return an error if speeds, levels or single cells do not fit the parts."""
     if problem.n_parts < 1:
         return PartitionError(f"{problem.n_parts} parts; wanted at least 1")
     if len(problem.part_speed) != problem.n_parts:
-        return PartitionError(f"{len(problem.part_speed)} speeds for {problem.n_parts} parts")
+        return WeightError(f"{len(problem.part_speed)} speeds for {problem.n_parts} parts")
     if not np.all(np.isfinite(problem.part_speed) & (problem.part_speed > 0)):
         bad = int(np.flatnonzero(~(problem.part_speed > 0) | ~np.isfinite(problem.part_speed))[0])
-        return PartitionError(
+        return WeightError(
             f"part {bad} has speed {problem.part_speed[bad]}; wanted finite numbers above 0"
         )
     if problem.level_sizes and int(np.prod(problem.level_sizes)) != problem.n_parts:

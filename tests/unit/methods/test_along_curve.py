@@ -242,8 +242,18 @@ def test_groups_that_leave_too_few_items():
     ],
 )
 def test_unfit_options(options, message):
-    with pytest.raises(PartitionError, match=message):
+    with pytest.raises(InputError, match=message):
         split(np.zeros((5, 3)), 3, **options)
+
+
+def test_limits_inside_a_level():
+    centers = np.arange(8.0)[:, None] * [1.0, 0.0]
+    memory = np.array([3, 3, 3, 1, 1, 1, 1, 1])
+    with pytest.raises(PartitionError, match="inside chunk 0 of the level above, the limits"):
+        split(
+            centers, 4, level_sizes=(2, 2), limit_weight=memory, part_limit=np.full(4, 5),
+            weight=np.array([1, 1, 1, 3, 2, 2, 1, 1]),
+        )  # fmt: skip
 
 
 def test_centre_that_is_not_finite():
