@@ -10,23 +10,12 @@ from __future__ import annotations
 
 import numpy as np
 
-from sfcpart.dtypes import Array, FloatArray, Int64Array
-from sfcpart.graph import CellGraph
+from sfcpart.dtypes import FloatArray, Int64Array
 
-__all__ = ["PALETTE", "part_colours", "touching_parts"]
+__all__ = ["PALETTE", "part_colours"]
 
 PALETTE = ("#E69F00", "#56B4E9", "#009E73", "#F0E442", "#0072B2", "#D55E00", "#CC79A7")
 """Okabe and Ito's orange, sky blue, bluish green, yellow, blue, vermilion, reddish purple."""
-
-
-def touching_parts(cell_part: Array, graph: CellGraph, *, n_parts: int) -> list[Int64Array]:
-    """Return the parts that each part shares a face with."""
-    row = np.repeat(np.asarray(cell_part, np.int64), np.diff(graph.indptr))
-    column = np.asarray(cell_part, np.int64)[graph.indices]
-    foreign = row != column
-    pair = np.unique(row[foreign] * n_parts + column[foreign])
-    ends = np.searchsorted(pair // n_parts, np.arange(n_parts + 1))
-    return [pair[ends[p] : ends[p + 1]] % n_parts for p in range(n_parts)]
 
 
 def part_colours(neighbours: list[Int64Array]) -> FloatArray:

@@ -2,8 +2,9 @@
 
 Every face that can be seen is drawn, whatever the size of the mesh (`sfcpart.report.raster`);
 edges of cells are drawn only where cells are large enough to tell apart. Meshes without points are
-drawn by their centres: those of boundary cells where these are known, and of the others evenly
-picked ones, at most `MOST_MARKS` in all. Colours: `sfcpart.report.colours`.
+drawn by their centres, as cubes of the cells' measure: those of outer cells and of cells at the
+rim of a part where these are known; of more than `MOST_MARKS`, evenly picked ones.
+Colours: `sfcpart.report.colours`.
 """
 
 from __future__ import annotations
@@ -20,7 +21,8 @@ from sfcpart.errors import FileError, InputError
 from sfcpart.graph import CellGraph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
-from sfcpart.report.colours import part_colours, touching_parts
+from sfcpart.report.colours import part_colours
+from sfcpart.report.contact import rim_cells, touching_parts
 from sfcpart.report.raster import nearest_triangles
 from sfcpart.report.surface import Triangles, cell_triangles, part_surface
 
@@ -80,7 +82,7 @@ def draw_split(
     if width < 300:
         raise InputError(f"width is {width} pixels; wanted at least 300")
     colours = _colours(partition, graph)
-    views = _views(mesh, partition, graph)
+    views = [view for view in _views(mesh, partition, graph) if len(view[1].cell)]
     panels = [
         (name, *_render(triangles, place, width // len(views), partition.cell_part, colours))
         for name, triangles, place in views
@@ -104,8 +106,7 @@ def _views(
 ) -> list[tuple[str, Triangles, FloatArray]]:
     """Choose what is shown: names, triangles, and their corners in space (n, 3, dim)."""
     if mesh.points is None or (mesh.dim == 3 and graph is None):
-        marks = _marks(mesh)
-        return [("cells by their centres", marks, marks.corners)]
+        return _centre_views(mesh, partition, graph)
     if mesh.dim < 3:
         cells = cell_triangles(mesh)
         return [("" if mesh.space_dim == 2 else "surface", cells, cells.corners)]
@@ -134,20 +135,32 @@ def _apart(mesh: Mesh, partition: Partition, rim: Triangles) -> FloatArray:
     return moved
 
 
-def _marks(mesh: Mesh) -> Triangles:
+def _centre_views(
+    mesh: Mesh, partition: Partition, graph: CellGraph | None
+) -> list[tuple[str, Triangles, FloatArray]]:
+    """Show cells as marks at their centres: those outside, and apart those at rims of parts."""
+    if graph is None or mesh.space_dim == 2:
+        marks = _marks(mesh, np.arange(mesh.n_cells))
+        return [("cells by their centres", marks, marks.corners)]
+    is_outer = graph.boundary_count > 0
+    outer = _marks(mesh, np.flatnonzero(is_outer if is_outer.any() else ~is_outer))
+    rim = _marks(mesh, np.flatnonzero(rim_cells(partition.cell_part, graph)))
+    return [
+        ("cells by their centres", outer, outer.corners),
+        ("pulled apart", rim, _apart(mesh, partition, rim)),
+    ]
+
+
+def _marks(mesh: Mesh, cells: Array) -> Triangles:
     """Put a cube (a square in 2-D) of the cell's measure at the centre of each cell drawn."""
-    is_outer = np.zeros(mesh.n_cells, bool)
-    if mesh.faces is not None:
-        is_outer[mesh.faces.cell[mesh.faces.cell[:, 1] < 0, 0]] = True
-    cells = np.flatnonzero(is_outer) if is_outer.any() else np.arange(mesh.n_cells)
-    cells = cells[:: -(-len(cells) // MOST_MARKS)]
+    cells = cells[:: max(1, -(-len(cells) // MOST_MARKS))]
     squares = _visible_squares(mesh.space_dim)
     corner = mesh.centers[cells][:, None, None, :] + _mark_radius(mesh, cells) * squares
     corner = corner.reshape(-1, 4, mesh.space_dim)
     both = np.concatenate([corner[:, [0, 1, 2]], corner[:, [0, 2, 3]]])
     face = np.tile(np.arange(len(corner)), 2)
     cell = cells[face // len(squares)].astype(np.int64)
-    return Triangles(both, cell, face, is_outer[cell])
+    return Triangles(both, cell, face, np.ones(len(cell), bool))
 
 
 def _mark_radius(mesh: Mesh, cells: Array) -> FloatArray:

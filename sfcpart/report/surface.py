@@ -15,6 +15,7 @@ from sfcpart.dtypes import Array, BoolArray, FloatArray, Int64Array, IntArray
 from sfcpart.graph import CellGraph
 from sfcpart.mesh.kinds import KINDS, POLYGON, POLYHEDRON
 from sfcpart.mesh.mesh import Mesh
+from sfcpart.report.contact import rim_cells
 
 __all__ = ["Triangles", "cell_triangles", "part_surface"]
 
@@ -67,26 +68,25 @@ def part_surface(mesh: Mesh, cell_part: Array, *, graph: CellGraph) -> Triangles
     graph : CellGraph
         Of the mesh: it tells which cells are at the rim of their part.
     """
-    is_rim, is_near = _rim(cell_part, graph)
-    cells = np.flatnonzero(is_near)
+    cell_part = np.asarray(cell_part)
+    is_rim = rim_cells(cell_part, graph)
+    cells = np.flatnonzero(_with_neighbours(is_rim, graph))
     kinds = mesh.kind[cells]
     faces = _joined([_solid_faces(mesh, cells[kinds == k], k) for k in np.unique(kinds)])
     other = _behind(faces)
-    part = np.asarray(cell_part)[faces.cell]
-    drawn = is_rim[faces.cell] & ((other < 0) | (np.asarray(cell_part)[other] != part))
+    is_cut = cell_part[other] != cell_part[faces.cell]
+    drawn = is_rim[faces.cell] & ((other < 0) | is_cut)
     kept = _Faces(faces.corner[drawn], faces.size[drawn], faces.cell[drawn])
     return _fans(mesh, kept, other[drawn] < 0)
 
 
-def _rim(cell_part: Array, graph: CellGraph) -> tuple[BoolArray, BoolArray]:
-    """Mark cells with a boundary face or a neighbour of another part; and those and neighbours."""
-    row = np.repeat(np.arange(graph.n_cells), np.diff(graph.indptr))
-    part = np.asarray(cell_part)
-    is_rim = graph.boundary_count > 0
-    is_rim[row[part[row] != part[graph.indices]]] = True
-    is_near = is_rim.copy()
-    is_near[graph.indices[is_rim[row]]] = True
-    return is_rim, is_near
+def _with_neighbours(chosen: BoolArray, graph: CellGraph) -> BoolArray:
+    """Mark the chosen cells and all that share a face with them."""
+    cells = np.flatnonzero(chosen)
+    start = graph.indptr[cells]
+    near = chosen.copy()
+    near[graph.indices[_spread(start, graph.indptr[cells + 1] - start)]] = True
+    return near
 
 
 def _kinds(mesh: Mesh) -> Array:

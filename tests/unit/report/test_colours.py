@@ -9,7 +9,8 @@ from hypothesis import strategies as st
 
 from sfcpart.graph import cell_graph
 from sfcpart.mesh.shapes import lattice
-from sfcpart.report.colours import PALETTE, part_colours, touching_parts
+from sfcpart.report.colours import PALETTE, part_colours
+from sfcpart.report.contact import touching_parts
 
 
 def _neighbours(n: int, edges: set[tuple[int, int]]) -> list[np.ndarray]:

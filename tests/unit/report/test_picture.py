@@ -71,6 +71,20 @@ def test_touching_parts_are_shown_in_their_two_colours(tmp_path):
     assert min(counts.values()) > 1000
 
 
+def test_a_ring_without_boundary_is_drawn_whole(tmp_path):
+    ring = np.arange(8)
+    angle = 2 * np.pi * ring / 8
+    centers = np.stack([np.cos(angle), np.sin(angle), 0.1 * angle], axis=1)
+    pairs = np.stack([ring, (ring + 1) % 8], axis=1)
+    mesh = Mesh.from_faces(pairs, np.ones(8), centers, np.full(8, 0.05))
+    for n_parts in (1, 2):
+        path = tmp_path / f"{n_parts}.png"
+        draw_split(
+            path, mesh, partition=_strips(mesh, n_parts), graph=cell_graph(mesh), width=WIDTH
+        )
+        assert (imread(path)[..., :3].min(axis=2) < 0.9).any()
+
+
 def test_an_empty_part_is_no_obstacle(tmp_path):
     mesh = channel_section(10, 2).to_mesh()
     partition = Partition.from_array(np.zeros(mesh.n_cells, int), 5)
