@@ -245,15 +245,18 @@ class _Frame:
     @classmethod
     def of(cls, centers: ArrayLike, curve: Curve, comm: Comm) -> _Frame:
         """Check the centres and find the box around those of all ranks."""
-        error, array, bounds = None, np.empty((0, 0)), np.empty((2, 0))
+        error, array = None, np.empty((0, 0))
         try:
             if curve not in CURVES:
                 raise InputError(f"curve {curve!r} is unknown; wanted one of {', '.join(CURVES)}")
             array = _checked(centers)
-            bounds = _bounds(array)
         except InputError as caught:
             error = caught
         comm.check(error)
+        bounds = np.array(run_ranges(hilbert.bounds_range, len(array), array))
+        first_gid = int(comm.exscan(np.array([len(array)], GID))[0])
+        comm.check(_not_finite(array, first_gid) if np.isnan(bounds).any() else None)
+        bounds = np.stack([bounds[:, 0].min(axis=0), bounds[:, 1].max(axis=0)])
         low, high = comm.allreduce(bounds[0], "min"), comm.allreduce(bounds[1], "max")
         return cls._fitted(array, curve, low, high)
 
@@ -318,15 +321,13 @@ def _checked(centers: ArrayLike) -> FloatArray:
     return array
 
 
-def _bounds(array: FloatArray) -> FloatArray:
-    """Return the box around the rows, (2, dim); refuse what is not finite."""
-    found = np.array(run_ranges(hilbert.bounds_range, len(array), array))
-    if np.isnan(found).any():
-        row, axis = np.argwhere(~np.isfinite(array))[0]
-        raise InputError(
-            f"centre {row} has {array[row, axis]} on axis {axis}; coordinates must be finite"
-        )
-    return np.stack([found[:, 0].min(axis=0), found[:, 1].max(axis=0)])
+def _not_finite(array: FloatArray, first_gid: int) -> InputError:
+    """Return an error that names the first coordinate that is not finite."""
+    row, axis = np.argwhere(~np.isfinite(array))[0]
+    return InputError(
+        f"centre {first_gid + row} has {array[row, axis]} on axis {axis}; "
+        "coordinates must be finite"
+    )
 
 
 def _alone() -> Comm:

@@ -23,6 +23,7 @@ import numpy as np
 from sfcpart.dtypes import BoolArray, FloatArray, Int64Array
 from sfcpart.errors import PartitionError
 from sfcpart.kernels import chunks as kernel
+from sfcpart.methods.fair import fair_positions
 from sfcpart.methods.line import Line
 
 __all__ = ["cut_line"]
@@ -283,7 +284,14 @@ class _Task:
             state = _State.unpack(comm.bcast(packed, root=rank), n_parts, 1)[0]
         stretch = (self._span(), self.line.total, self.line.limit, self._caps(bottleneck),
                    self.limit, own_ptr, own)  # fmt: skip
-        wanted = self._fair_positions()
+        wanted = fair_positions(
+            self.line,
+            begin=self.begin,
+            end=self.end,
+            edge_sums=self.edge_sums,
+            speed=self.speed,
+            least=self.least,
+        )
         cut = np.full(n_parts + 1, self.end, np.int64)
         cut[0] = self.begin
         part, origin = 0, np.array([self.begin, *self.edge_sums[0]], np.int64)
@@ -318,32 +326,6 @@ class _Task:
         if len(above):
             return np.asarray(above[np.argmin(above[:, 0])]).copy()
         return np.array([self.end, *self.edge_sums[1]], np.int64)  # only empty parts follow
-
-    def _fair_positions(self) -> Int64Array:
-        """Return the position nearest to each part's fair share of the line, (P + 1,)."""
-        n_parts, line = len(self.speed), self.line
-        equal = self.speed.min() == self.speed.max()
-        share = np.concatenate(([0.0], np.cumsum(np.ones(n_parts) if equal else self.speed)))
-        n_items, whole = self.end - self.begin, share[-1]
-        base = 0 if not len(line.total) else int(self.edge_sums[0, 0])
-        if not len(line.total) or self.weight == 0:
-            found = self.begin + np.rint(n_items * share / whole).astype(np.int64)
-        else:
-            aim = self.weight * share / whole
-            first, last = line.own_part(self.begin, self.end)
-            sums = line.total[first - line.first : last - line.first + 1]
-            at = np.searchsorted(sums, np.floor(aim).astype(np.int64) + base, side="right") - 1
-            here = (at >= 0) & (at < last - first)
-            at = np.where(here, at, 0)
-            found = np.zeros(n_parts + 1, np.int64)
-            if last > first:
-                lower, upper = sums[at] - base, sums[np.minimum(at + 1, last - first)] - base
-                found = np.where(here, first + at + (aim - lower > upper - aim), 0)
-            found = line.comm.allreduce(found)
-            found[aim >= self.weight] = self.end
-        rest = self.least * np.arange(n_parts + 1)
-        clipped: Int64Array = np.clip(found, self.begin + rest, self.end - rest[::-1])
-        return clipped.astype(np.int64)
 
     def _refuse(self) -> None:
         """Raise the error for limits that cannot be kept, saying what would be needed."""

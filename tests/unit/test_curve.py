@@ -188,7 +188,7 @@ def test_bad_input_on_one_rank_fails_on_all():
             centers[2, 0] = np.nan
         return curve_keys(centers, comm=comm)
 
-    with pytest.raises(InputError, match="nan on axis 0"):
+    with pytest.raises(InputError, match="centre 5 has nan on axis 0"):
         run_ranks(3, work)
 
 

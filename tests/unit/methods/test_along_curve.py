@@ -271,3 +271,13 @@ def test_degenerate_meshes(degenerate):
             Partition.from_array(part, degenerate.n_parts), degenerate.mesh, degenerate.n_parts,
             weights=weights,
         )  # fmt: skip
+
+
+def test_registry():
+    for name in CURVE_METHODS:
+        method = METHODS[name]
+        assert method.name == name
+        assert not method.needs_graph
+        assert method.summary
+    with pytest.raises(TypeError):
+        METHODS["new"] = METHODS["hilbert"]

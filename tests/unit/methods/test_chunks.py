@@ -103,12 +103,28 @@ def test_equal_items_are_shared_evenly(scale):
     assert cuts.tolist() == [0, 2, 5, 8, 10]
 
 
-def test_loads_are_even_not_left_packed():
-    # one heavy item makes every bottleneck 50: the light ones are still shared evenly
-    weight = np.array([1] * 30 + [50], np.int64)
-    cuts = cut(SerialComm(), weight, np.ones(4))
-    assert cuts.tolist() == [0, 20, 28, 30, 31] or np.diff(cuts)[:3].max() <= 20
-    assert np.diff(cuts).min() >= 1
+@pytest.mark.parametrize("size", [1, 3])
+@pytest.mark.parametrize(
+    ("weight", "n_parts", "cuts"),
+    [
+        ([1] * 30 + [50], 4, [0, 10, 20, 30, 31]),
+        ([50] + [1] * 30, 4, [0, 1, 11, 21, 31]),
+        ([1] * 10 + [50] + [1] * 20, 4, [0, 10, 11, 21, 31]),
+        ([1] * 10 + [50, 900] + [1] * 20, 5, [0, 10, 11, 12, 22, 32]),
+        ([1] * 12, 4, [0, 3, 6, 9, 12]),
+    ],
+)
+def test_loads_beside_heavy_items_are_even(size, weight, n_parts, cuts):
+    # The bottleneck is the heavy item's: among all divisions that keep it, the light items are
+    # shared evenly and not packed to the left.
+    weight = np.array(weight, np.int64)
+    edge = np.arange(size + 1) * len(weight) // size
+
+    def work(comm):
+        part = slice(edge[comm.rank], edge[comm.rank + 1])
+        return cut(comm, weight, np.ones(n_parts), part=part)
+
+    assert [found.tolist() for found in run_ranks(size, work)] == [cuts] * size
 
 
 def test_slow_part_before_a_heavy_item_takes_a_light_one():
