@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import threading
+import time
 
 import numpy as np
 import pytest
@@ -100,6 +101,30 @@ def test_a_stuck_rank_is_named():
     with pytest.raises(RankError, match="rank 1 did not end within 0.2 s"):
         run_ranks(3, hang, timeout=0.2)
     stop.set()
+
+
+def test_a_slow_rank_is_not_waited_for_for_ever():
+    def dawdle(comm):
+        if comm.rank == 1:
+            time.sleep(0.4)
+
+    with pytest.raises(RankError, match=r"rank 0 waited for the others in vain: .* 0\.1 s"):
+        run_ranks(2, dawdle, timeout=0.1)
+
+
+def test_a_root_that_broadcasts_nothing_is_told():
+    with pytest.raises(InputError, match="rank 1 broadcasts None; wanted an array on the root"):
+        run_ranks(2, lambda comm: comm.bcast(None, 1), timeout=SOON)
+
+
+def test_arrays_for_the_ranks_must_be_alike():
+    def differ(comm):
+        comm.alltoall([np.zeros(1), np.zeros(1, np.float32)])
+
+    with pytest.raises(
+        InputError, match="the array for rank 1 holds <f4 .* and that for rank 0 <f8"
+    ):
+        run_ranks(2, differ, timeout=SOON)
 
 
 def test_a_mismatch_can_be_survived_together():
