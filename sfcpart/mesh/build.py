@@ -28,8 +28,8 @@ if TYPE_CHECKING:
     from sfcpart.mesh.mesh import Mesh
 
 
-def check_dim(dims: Sequence[int]) -> int:
-    """Return the highest of the dimensions that occur, if it is 2 or 3."""
+def check_dim(dims: Sequence[int], n_columns: int) -> int:
+    """Return the highest of the dimensions that occur, if it is 2 or 3 and points can hold it."""
     if not dims:
         raise MeshError("the mesh has no cells; wanted at least one cell of dimension 2 or 3")
     if max(dims) < 2:
@@ -37,6 +37,8 @@ def check_dim(dims: Sequence[int]) -> int:
             f"the mesh has elements of dimension {max(dims)} at most; "
             "wanted cells of dimension 2 or 3"
         )
+    if max(dims) > n_columns:
+        raise MeshError("the mesh has cells of dimension 3, but points with 2 coordinates each")
     return max(dims)
 
 

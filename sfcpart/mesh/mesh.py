@@ -123,7 +123,7 @@ class Mesh:
         """
         position = check_positions(points, "point")
         blocks = parse_blocks(cells)
-        dim = build.check_dim([block.kind.dim for block in blocks])
+        dim = build.check_dim([block.kind.dim for block in blocks], position.shape[1])
         main = [block for block in blocks if block.kind.dim == dim]
         lower = [block for block in blocks if block.kind.dim < dim]
         kind, indptr, indices = build.join(main, len(position))
@@ -190,7 +190,7 @@ class Mesh:
         code = check_kinds(kind, offset)
         flat = frozen(check_indices(flat, len(position), "point", offset))
         dims = kind_tables().dim[code]
-        belongs = dims == build.check_dim(np.unique(dims).tolist())
+        belongs = dims == build.check_dim(np.unique(dims).tolist(), position.shape[1])
         groups: tuple[BoundaryGroup, ...] = ()
         if not belongs.all():
             groups = build.groups_by_kind(code, offset, flat, ~belongs)

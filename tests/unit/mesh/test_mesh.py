@@ -11,6 +11,7 @@ from sfcpart.mesh.mesh import BoundaryGroup, FaceList, Mesh, Polyhedra
 from tests.strategies import grid
 
 SQUARE = np.array([(0, 0), (1, 0), (1, 1), (0, 1)], float)
+RAISED = np.column_stack([SQUARE, [0, 0, 0, 1]])
 
 
 def test_empty_meshes_are_refused(empty_call):
@@ -27,6 +28,7 @@ def test_empty_meshes_are_refused(empty_call):
         (SQUARE, {"triangle": [[0, 1]]}, r"shape \(1, 2\); wanted \(n, 3\)"),
         (SQUARE, {"quadd": [[0, 1, 2, 3]]}, "'quadd' are not known; known are vertex, line"),
         (SQUARE, {"line": [[0, 1]]}, "dimension 1 at most"),
+        (SQUARE, {"tetra": [[0, 1, 2, 3]]}, "dimension 3, but points with 2 coordinates"),
         (SQUARE[:, :1], {"line": [[0, 1]]}, r"shape \(4, 1\); wanted \(n, 2\) or \(n, 3\)"),
         (SQUARE * [1, np.nan], {"quad": [[0, 1, 2, 3]]}, r"point 0 has coordinates \[0.0, nan\]"),
         (
@@ -35,15 +37,15 @@ def test_empty_meshes_are_refused(empty_call):
             r"point 2 has coordinates \[-inf, 1.0\]",
         ),
         (SQUARE.astype(complex), {"quad": [[0, 1, 2, 3]]}, "complex128; wanted real"),
-        (SQUARE, {"polyhedron": [[[0, 1, 2], [0, 1, 2], [0, 1, 2]]]}, "3 faces; wanted at least 4"),
-        (SQUARE, {"polyhedron": [[[0, 1], [1, 2], [2, 3], [3, 0]]]}, "fewer than 3 points"),
+        (RAISED, {"polyhedron": [[[0, 1, 2], [0, 1, 2], [0, 1, 2]]]}, "3 faces; wanted at least 4"),
+        (RAISED, {"polyhedron": [[[0, 1], [1, 2], [2, 3], [3, 0]]]}, "fewer than 3 points"),
         (SQUARE, {"polygon": ([0, 3, 2], [0, 1, 2])}, "offsets of polygons go from 0 to 2"),
         ([[0, 0], [1]], {"triangle": [[0, 1, 2]]}, "point coordinates: rows of unequal length"),
         ([["a", "b"]], {"triangle": [[0, 1, 2]]}, "point coordinates: values of dtype <U1"),
         (SQUARE, {"quad": [[0, 1, 2], [0, 1, 2, 3]]}, "kind 'quad': rows of unequal length"),
         (SQUARE, {"triangle": [["a", "b", "c"]]}, "kind 'triangle': values of dtype <U1"),
         (SQUARE, {"polygon": [[[0, 1, 2]]]}, "polygons: wanted a list of points for each"),
-        (SQUARE, {"polyhedron": [[]]}, "cell 0 .polyhedron. has 0 faces"),
+        (RAISED, {"polyhedron": [[]]}, "cell 0 .polyhedron. has 0 faces"),
         (SQUARE, {"polygon": [[0, 1]]}, "kind 'polygon': row 0 has 2 points; wanted at least 3"),
     ],
 )
@@ -70,7 +72,7 @@ def test_from_arrays_names_the_offender(points, cells, message):
 )
 def test_from_cells_names_the_offender(kind, indptr, indices, message):
     with pytest.raises(MeshError, match=message):
-        Mesh.from_cells(SQUARE, np.array(kind, int), np.array(indptr), np.array(indices, int))
+        Mesh.from_cells(RAISED, np.array(kind, int), np.array(indptr), np.array(indices, int))
 
 
 @pytest.mark.parametrize(
