@@ -53,7 +53,7 @@ def memory_limited(path: Path) -> Iterator[None]:
     """Make requests for far more memory than a file can fill fail with MemoryError in the block.
 
     The limit is on address space and holds for the whole process while the block runs: 2 GB
-    and 64 bytes for each byte of the file. Formats that name further files are not limited,
+    and 64 bytes for each byte of the file (packed files: 512). Formats that name further files are not limited,
     nor are systems without such limits.
     """
     try:
@@ -64,7 +64,8 @@ def memory_limited(path: Path) -> Iterator[None]:
         yield
         return
     soft, hard = resource.getrlimit(resource.RLIMIT_AS)
-    wanted = pages * resource.getpagesize() + _ROOM + _BYTES_A_BYTE * path.stat().st_size
+    most = _BYTES_A_BYTE * path.stat().st_size * (8 if path.suffix == ".gz" else 1)
+    wanted = pages * resource.getpagesize() + _ROOM + most
     if path.suffix.lower() in _FILES_OF_PARTS or (soft != resource.RLIM_INFINITY and soft < wanted):
         yield
         return

@@ -12,7 +12,6 @@ from __future__ import annotations
 import contextlib
 import io
 import itertools
-import re
 import warnings
 from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
@@ -22,6 +21,7 @@ import numpy as np
 
 from sfcpart.dtypes import KIND, OFFSET, Array, Int64Array, IntArray, index_dtype
 from sfcpart.errors import FileError, MeshError, SfcpartError
+from sfcpart.files.first_look import LOOKS
 from sfcpart.files.limits import OutOfTimeError, interrupted_after, memory_limited
 from sfcpart.files.raw import RawMesh, narrow_ids
 from sfcpart.mesh.kinds import KINDS, POLYHEDRON, kind_of
@@ -40,7 +40,7 @@ __all__ = [
 # outward (VTK file formats, linear cell types).
 _WEDGE = (0, 2, 1, 3, 5, 4)
 
-PATIENCE = 60.0
+PATIENCE = 10.0
 """Seconds a reader may take, beside a second for every 100 kB of the file."""
 _SLOWEST = 100_000  # bytes a second; the slowest text readers do about 10 MB/s
 
@@ -80,24 +80,18 @@ def load_with_meshio(path: Path, name: str) -> Any:
     FileError
         If meshio cannot read it; the message does not name the file.
     """
-    if name == "xdmf":
-        _refuse_collections(path)
+    if name in LOOKS:
+        LOOKS[name](path)
     limit = PATIENCE + path.stat().st_size / _SLOWEST
-    with quiet_meshio() as chatter, interrupted_after(limit), memory_limited(path):
+    with quiet_meshio() as chatter:
         import meshio
 
         _mend_gmsh22()
-        mesh = meshio.read(path, file_format=name)
+        with interrupted_after(limit), memory_limited(path):
+            mesh = meshio.read(path, file_format=name)
     if "cannot handle" in chatter.getvalue():
         raise FileError(_reason(chatter.getvalue(), ""))
     return mesh
-
-
-def _refuse_collections(path: Path) -> None:
-    """Refuse XDMF files with several grids, of which meshio would read none or one."""
-    content = path.read_bytes()
-    if re.search(rb"GridType\s*=\s*.(Collection|Tree)|CollectionType", content):
-        raise FileError("is a collection of grids (time steps or pieces); wanted a single grid")
 
 
 def _mend_gmsh22() -> None:

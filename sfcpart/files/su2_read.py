@@ -43,6 +43,7 @@ class _Sections:
     """What the file says, section by section."""
 
     dim: int = 0
+    n_markers: int | None = None
     points: Array | None = None
     cells: _Elements | None = None
     markers: list[tuple[str, _Elements]] = field(default_factory=list)
@@ -93,12 +94,18 @@ def _sections(text: bytes) -> _Sections:
             found.points = _points(body, _count(name, value), found.dim)
         elif name == "NELEM" and found.cells is None:
             found.cells = _elements(body, _count(name, value), name)
+        elif name == "NMARK":
+            found.n_markers = _count(name, value)
         elif name == "MARKER_TAG":
             marker = value
         elif name == "MARKER_ELEMS":
             found.markers.append((marker, _elements(body, _count(name, value), name)))
         elif name in ("NPOIN", "NELEM"):
             raise FileError(f"has two sections {name}; wanted one")
+    if found.n_markers is not None and found.n_markers != len(found.markers):
+        raise FileError(
+            f"NMARK= {found.n_markers}, but {len(found.markers)} follow; it is cut short"
+        )
     return found
 
 

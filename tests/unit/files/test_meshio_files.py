@@ -181,7 +181,7 @@ def test_a_reader_that_ends_the_process_is_our_error_with_its_reason(tmp_path, c
         read_mesh(path)
     assert "\n" not in str(error.value)
     path = tmp_path / "a.ply"
-    path.write_text("ply\nformat ascii 1.0\nelement edge 2\n")
+    path.write_text("ply\nformat ascii 1.0\nelement edge 2\nend_header\n")
     with pytest.raises(FileError, match=r"got `element edge 2`$"):
         read_mesh(path)
     path = tmp_path / "a.msh"

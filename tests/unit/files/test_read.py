@@ -8,6 +8,7 @@ import numpy as np
 import pytest
 
 from sfcpart.errors import FileError, InputError, MeshError
+from sfcpart.files import meshio_files
 from sfcpart.files.read import EXTENSIONS, file_format, read_cell_values, read_mesh
 from tests.file_samples import SU2, write_shell, write_tets
 
@@ -124,6 +125,21 @@ def test_shells_are_read(tmp_path):
         mesh = read_mesh(path)
         assert (mesh.n_cells, mesh.dim, mesh.space_dim) == (4, 2, 3)
         assert mesh.measures.sum() == pytest.approx(1.5 + np.sqrt(3) / 2)
+
+
+@pytest.mark.parametrize("name", ["ply", "off", "stl"])
+def test_shells_cut_short_are_refused(tmp_path, monkeypatch, name):
+    monkeypatch.setattr(meshio_files, "PATIENCE", 1.0)
+    path = tmp_path / f"a.{name}"
+    write_shell(path, name)
+    content = path.read_bytes()
+    cuts = range(len(content) // 4, len(content) - 25, 7)
+    for stop in cuts:
+        path.write_bytes(content[:stop])
+        with pytest.raises((FileError, MeshError)) as error:
+            read_mesh(path)
+        assert "come to an end" not in str(error.value)  # seen at once, not after waiting
+    assert len(cuts) > 5
 
 
 def values(tmp_path, name, content, n_cells=3):

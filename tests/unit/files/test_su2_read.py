@@ -65,6 +65,7 @@ def test_files_of_meshio_are_read(tmp_path):
         ("NDIME= 2", "NDIME= 4", "NDIME= 4: wanted 2 or 3"),
         ("NDIME= 2", "NDIME= 2\nNZONE= 2", "holds 2 zones"),
         ("NMARK= 2", "NELEM= 0\nNMARK= 2", "two sections NELEM"),
+        ("NMARK= 2", "NMARK= 3", "NMARK= 3, but 2 follow"),
         ("NPOIN=", "NPOINTS=", "no section NPOIN"),
     ],
 )
