@@ -222,7 +222,14 @@ def push_flow(
 
 @jit
 def mark_sink_side(
-    n: int, ptr: Array, arc_to: Array, twin: Array, left: Array, sink: Array, level: Array, queue: Array
+    n: int,
+    ptr: Array,
+    arc_to: Array,
+    twin: Array,
+    left: Array,
+    sink: Array,
+    level: Array,
+    queue: Array,
 ) -> None:
     """Set level to -2 for vertices that still reach the sink."""
     last = 0
@@ -310,9 +317,7 @@ def flow_pairs(
                 n, band, local, a, b, indptr, indices, edge_weight, part, ptr, arc_to, twin,
                 left, source, sink, fill,
             )  # fmt: skip
-            value = push_flow(
-                n, ptr, arc_to, twin, left, source, sink, level, queue, arc, path
-            )
+            value = push_flow(n, ptr, arc_to, twin, left, source, sink, level, queue, arc, path)
             mark_sink_side(n, ptr, arc_to, twin, left, sink, level, queue)
             small = load[a]  # load of a if it keeps only the source's side; or all but the sink's
             for x in range(n_a):

@@ -111,7 +111,8 @@ def refine_once(
             size_b = drop(heap_b, spot, key, v, size_b)
         room = capacity[to] + slack - load[to] - weight
         if room < 0 and not (
-            load[own] > capacity[own] and load[to] + weight - capacity[to] < load[own] - capacity[own]
+            load[own] > capacity[own]
+            and load[to] + weight - capacity[to] < load[own] - capacity[own]
         ):
             continue
         spot[v] = LOCKED

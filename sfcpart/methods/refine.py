@@ -59,7 +59,9 @@ def move_labels(labels: Labels, *, boldness: int = 64, patience: int = 12) -> in
         if idle > patience or len(active) == 0:
             break
         stands = np.zeros(len(active), np.bool_)
-        run_ranges(look_again, len(active), active, *rows, part, wish, wish_gain, stands, smallest=4096)
+        run_ranges(
+            look_again, len(active), active, *rows, part, wish, wish_gain, stands, smallest=4096
+        )
         moved = active[stands]
         locked[active] = False
         locked[moved] = True
@@ -109,7 +111,9 @@ def flow_between(labels: Labels, *, sweeps: int, depth: int, stretch: float) -> 
         pairs = pairs[stale[pairs].any(axis=1)]
         stale = np.zeros(k, np.bool_)
         before = total
-        for group in _disjoint_groups(pairs, k):
+        for turn, group in enumerate(_disjoint_groups(pairs, k)):
+            if turn % 4 == 3:  # what changed meanwhile is within the bands anyway
+                boundary = boundary_of(labels)
             fringe, fringe_ptr = by_part(boundary, labels.part, k)
             gains = np.zeros(len(group), np.int64)
             a, b = np.ascontiguousarray(group.T)
@@ -119,7 +123,6 @@ def flow_between(labels: Labels, *, sweeps: int, depth: int, stretch: float) -> 
             )  # fmt: skip
             total += int(np.maximum(gains, 0).sum())
             stale[group[gains != 0].ravel()] = True
-            boundary = boundary_of(labels)
         if total == before:
             break
     return total

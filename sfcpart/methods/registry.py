@@ -8,6 +8,7 @@ from types import MappingProxyType
 
 from sfcpart.dtypes import Int32Array
 from sfcpart.methods.along_curve import along_hilbert, along_morton, along_rows
+from sfcpart.methods.on_graph import multilevel, smoothed
 from sfcpart.methods.problem import Problem
 
 __all__ = ["METHODS", "Method"]
@@ -55,6 +56,18 @@ METHODS: Mapping[str, Method] = MappingProxyType(
                 run=along_rows,
                 needs_graph=False,
                 summary="strips of cells row after row; a baseline",
+            ),
+            Method(
+                name="smoothed",
+                run=smoothed,
+                needs_graph=True,
+                summary="chunks of the Hilbert curve, borders moved to where they cut less",
+            ),
+            Method(
+                name="multilevel",
+                run=multilevel,
+                needs_graph=True,
+                summary="multilevel partition of the cell graph; the least cut, the most time",
             ),
         )
     }
