@@ -53,8 +53,8 @@ def memory_limited(path: Path) -> Iterator[None]:
     """Make requests for far more memory than a file can fill fail with MemoryError in the block.
 
     The limit is on address space and holds for the whole process while the block runs: 2 GB
-    and 64 bytes for each byte of the file (packed files: 512). Formats that name further files are not limited,
-    nor are systems without such limits.
+    and 64 bytes for each byte of the file (packed files: 512). Formats that name further files
+    are not limited, nor are systems without such limits.
     """
     try:
         import resource
