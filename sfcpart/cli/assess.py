@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from sfcpart.cli.options import (
+    LIMIT,
     SPEEDS,
     mesh_argument,
     network_options,
@@ -44,6 +45,12 @@ Examples:
 @click.option(
     "--speeds", type=SPEEDS, metavar="LIST|FILE", help="Relative speed of each part, as in split."
 )
+@click.option(
+    "--limit",
+    type=LIMIT,
+    metavar="SPEC:MOST",
+    help="A second weight of each cell and the most of it that a part may hold, as in split.",
+)
 @click.option("--csv", "csv_path", type=click.Path(), metavar="FILE", help="Write a row a part.")
 @click.option("--picture", type=click.Path(), metavar="FILE", help="Write a picture (PNG).")
 @click.option("--threads", type=int, metavar="T", help="Threads to use (default: all allowed).")
@@ -55,6 +62,7 @@ def command(mesh: str, parts: str | None, **given: Any) -> None:
         raise click.UsageError("which parts? give either --field NAME or a file or folder of parts")
     set_threads(given["threads"])
     model = step_model(given)
+    second, most = given["limit"] or (None, None)
     from sfcpart import api
     from sfcpart.cli.console import Stages
     from sfcpart.cli.inputs import read_speeds
@@ -70,6 +78,8 @@ def command(mesh: str, parts: str | None, **given: Any) -> None:
             weights=list(given["weights"]) or None,
             speeds=read_speeds(given["speeds"], partition.n_parts),
             step_model=model,
+            limit_weights=second,
+            limits=most,
         )
     if given["csv_path"]:
         _write_csv(given["csv_path"], assessment)
@@ -91,21 +101,25 @@ def _read_parts(mesh: Mesh, parts: str | None, field: str | None) -> Partition:
 
 def _write_csv(path: str, assessment: Any) -> None:
     """Write one row a part; figures that are not known stay empty, so that columns are stable."""
+    from sfcpart.cli.outputs import new_file
     from sfcpart.files.tables import write_part_table
 
     unknown = [float("nan")] * assessment.n_parts
     columns = {k: unknown if v is None else v for k, v in assessment.part.items()}
-    write_part_table(path, columns)
+    with new_file(path) as place:
+        write_part_table(place, columns)
 
 
 def _draw(path: str, name: str, mesh: Mesh, partition: Partition, assessment: Any) -> None:
     """Write the picture."""
+    from sfcpart.cli.outputs import new_file
     from sfcpart.graph import cell_graph
     from sfcpart.report.picture import draw_split
 
     graph = None if mesh.points is None and mesh.faces is None else cell_graph(mesh)
     figures = assessment.total
-    draw_split(path, mesh, partition=partition, graph=graph, title=name, figures=figures)
+    with new_file(path) as place:
+        draw_split(place, mesh, partition=partition, graph=graph, title=name, figures=figures)
 
 
 def _report(mesh: str, assessment: Any, *, as_json: bool, quiet: bool) -> None:

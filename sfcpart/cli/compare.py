@@ -161,15 +161,11 @@ def _cell(name: str, value: Any, *, best: bool) -> str:
 def _write_csv(path: str, comparison: Comparison) -> None:
     """Write one row a method, all figures."""
     import csv
-    from pathlib import Path
 
-    from sfcpart.errors import FileError
+    from sfcpart.cli.outputs import new_file
 
     rows = comparison.to_json_dict()["rows"]
-    try:
-        with Path(path).open("w", encoding="utf-8", newline="") as file:
-            writer = csv.DictWriter(file, list(rows[0]), lineterminator="\n")
-            writer.writeheader()
-            writer.writerows(rows)
-    except OSError as error:
-        raise FileError(f"{path}: cannot be written: {error.strerror or error}") from error
+    with new_file(path) as place, place.open("w", encoding="utf-8", newline="") as file:
+        writer = csv.DictWriter(file, list(rows[0]), lineterminator="\n")
+        writer.writeheader()
+        writer.writerows(rows)

@@ -110,6 +110,10 @@ BAD = [
     (nothing, "compare no.vtu -n 2", 4, "No such file"),
     (nothing, "compare meshes/turbine.vtu -n 2 --given hilbert:body", 3, "hilbert"),
     (nothing, "compare meshes/turbine.vtu -n 2 --given a:zone", 4, "zone"),
+    (nothing, "assess meshes/turbine.vtu --field body --csv no/a.csv", 4, "no/a.csv: cannot be"),
+    (nothing, "assess meshes/turbine.vtu --field body --csv meshes", 4, "meshes: cannot be"),
+    (nothing, "assess meshes/turbine.vtu --field body --picture no/a.png", 4, "no/a.png: cannot"),
+    (nothing, "compare meshes/turbine.vtu -n 2 -m rows --csv no/a.csv", 4, "no/a.csv: cannot be"),
     # wrong command lines
     (nothing, "compare meshes/turbine.vtu", 2, "--parts"),
     (nothing, "compare meshes/turbine.vtu -n 2 --method magic", 2, "hilbert"),

@@ -130,6 +130,15 @@ def test_assess_takes_fields_files_and_folders(sfcpart):
     assert body["total"]["cut_faces"] == 0
 
 
+def test_assess_measures_with_the_same_weights_speeds_and_limits(sfcpart):
+    load = "--weight work --speeds 1,2,1 --limit memory:1500 --json"
+    split = json.loads(sfcpart(f"split meshes/channel_mixed.vtu -n 3 -o parts {load}").out)
+    again = json.loads(sfcpart(f"assess meshes/channel_mixed.vtu parts {load}").out)
+    assert again["total"] == split["total"]
+    assert again["part"] == split["part"]
+    assert 0.5 < again["total"]["limit_share"] <= 1.0
+
+
 def test_assess_writes_csv_and_picture(sfcpart, tmp_path):
     code, out, _ = sfcpart("assess meshes/turbine.vtu --field body --csv a.csv --picture a.png")
     assert code == 0
