@@ -102,7 +102,7 @@ def _read_parts(mesh: Mesh, parts: str | None, field: str | None) -> Partition:
 def _write_csv(path: str, assessment: Any) -> None:
     """Write one row a part; figures that are not known stay empty, so that columns are stable."""
     from sfcpart.cli.outputs import new_file
-    from sfcpart.files.tables import write_part_table
+    from sfcpart.files.parts.tables import write_part_table
 
     unknown = [float("nan")] * assessment.n_parts
     columns = {k: unknown if v is None else v for k, v in assessment.part.items()}

@@ -34,13 +34,13 @@ Examples:
   sfcpart compare meshes/channel_mixed.vtu -n 5 --method hilbert --given mine:cell_part.npy --json
 """
 COLUMNS = {
-    "imbalance": "imbalance",
+    "imbalance": "imbal.",
     "cut_faces": "cut",
     "halo_cells": "halo",
     "neighbours_max": "meets",
     "n_split_parts": "broken",
     "surface_ratio_mean": "surface",
-    "efficiency": "efficiency",
+    "efficiency": "effic.",
     "split_seconds": "split",
     "peak_bytes": "memory",
 }

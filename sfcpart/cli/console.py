@@ -37,7 +37,7 @@ def note(text: str) -> None:
 
 def print_json(value: Any) -> None:
     """Print strict JSON and nothing else."""
-    from sfcpart.files.tables import json_text
+    from sfcpart.files.parts.tables import json_text
 
     sys.stdout.write(json_text(value))
 

@@ -33,7 +33,7 @@ def partition_from_path(path: str, n_cells: int) -> Partition:
 
     place = Path(path)
     if not place.is_dir():
-        from sfcpart.files.read import read_cell_values
+        from sfcpart.files.meshes.read import read_cell_values
 
         return Partition.from_array(read_cell_values(place, n_cells))
     cell_part, n_parts = _owners(place, n_cells)
@@ -42,7 +42,7 @@ def partition_from_path(path: str, n_cells: int) -> Partition:
 
 def _owners(folder: Path, n_cells: int) -> tuple[Array, int]:
     """Collect the owned cells of all parts of a folder."""
-    from sfcpart.files.part import read_part
+    from sfcpart.files.parts.part import read_part
 
     first = read_part(folder, 0)
     cell_part = np.full(n_cells, -1, np.int64)
@@ -66,7 +66,7 @@ def read_speeds(speeds: Any, n_parts: int) -> Array | None:
         return None
     if isinstance(speeds, list):
         return np.array(speeds)
-    from sfcpart.files.read import read_cell_values
+    from sfcpart.files.meshes.read import read_cell_values
 
     return read_cell_values(speeds, n_parts).astype(float)
 

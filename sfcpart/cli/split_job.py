@@ -36,7 +36,7 @@ class SplitJob:
         """Do the work; an output folder that cannot be used is refused before it."""
         given = self.options
         if given["output"] is not None:
-            from sfcpart.files.folder import check_output_folder
+            from sfcpart.files.parts.folder import check_output_folder
 
             check_output_folder(given["output"], overwrite=given["overwrite"])
         with self.doing(f"reading {self.source}"):

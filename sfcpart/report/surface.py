@@ -176,7 +176,8 @@ def _fans(mesh: Mesh, faces: _Faces, is_outer: BoolArray) -> Triangles:
         corner.append(faces.corner[rows][:, [0, k, k + 1]])
     ids = np.concatenate(face)
     return Triangles(
-        corners=mesh.points[np.concatenate(corner)],
+        # A plane mesh from a file may carry a third column of zeros.
+        corners=mesh.points[:, : mesh.space_dim][np.concatenate(corner)],
         cell=faces.cell[ids].astype(np.int64),
         face=ids.astype(np.int64),
         is_outer=is_outer[ids],

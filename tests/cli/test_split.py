@@ -194,6 +194,12 @@ def test_compare_marks_the_best_and_names_the_shortest_run(sfcpart):
     assert max(map(len, out.splitlines())) <= 80
 
 
+def test_compare_of_all_methods_fits_the_width(sfcpart):
+    out = sfcpart("compare meshes/channel_mixed.vtu -n 8 --weight work").out
+    assert "\u2026" not in out  # nothing is cut off
+    assert max(map(len, out.splitlines())) <= 80
+
+
 def test_compare_says_why_a_method_cannot(sfcpart):
     line = "compare meshes/turbine.vtu -n 2 -m hilbert --limit body:20 --together body"
     code, out, _ = sfcpart(line)

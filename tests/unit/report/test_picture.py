@@ -92,6 +92,16 @@ def test_an_empty_part_is_no_obstacle(tmp_path):
     assert (tmp_path / "a.png").stat().st_size > 1000
 
 
+def test_a_plane_mesh_with_three_coordinates_looks_like_one_with_two(tmp_path):
+    shape = channel_section(20, 4)
+    flat = shape.to_mesh()
+    padded = Mesh.from_arrays(np.pad(shape.points, ((0, 0), (0, 1))), dict(shape.cells))
+    for name, mesh in {"2": flat, "3": padded}.items():
+        path = tmp_path / f"{name}.png"
+        draw_split(path, mesh, partition=_strips(mesh, 3), graph=cell_graph(mesh), width=WIDTH)
+    assert np.array_equal(imread(tmp_path / "2.png"), imread(tmp_path / "3.png"))
+
+
 def test_a_single_flat_cell_is_drawn(tmp_path):
     mesh = Mesh.from_arrays(
         np.array([[0.0, 0], [1, 0], [0, 1]]), {"triangle": np.array([[0, 1, 2]])}
