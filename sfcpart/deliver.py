@@ -14,8 +14,8 @@ import numpy as np
 
 from sfcpart import __version__
 from sfcpart.errors import InputError
-from sfcpart.files.folder import check_output_folder, output_folder
-from sfcpart.files.tables import write_cell_part, write_part_table, write_summary
+from sfcpart.files.parts.folder import check_output_folder, output_folder
+from sfcpart.files.parts.tables import write_cell_part, write_part_table, write_summary
 
 if TYPE_CHECKING:
     from sfcpart.assess import Assessment
@@ -100,7 +100,7 @@ def _write_parts(
 ) -> None:
     """Write the parts in each format asked for."""
     if "same" in how.formats:
-        from sfcpart.files.meshio_write import write_with_meshio
+        from sfcpart.files.meshes.meshio_write import write_with_meshio
 
         assert source is not None
         fields = {"part": partition.cell_part}
@@ -109,11 +109,11 @@ def _write_parts(
         return
     halo = _halo(mesh, graph, partition, how)
     if "vtu" in how.formats:
-        from sfcpart.files.vtu import write_vtu_pieces
+        from sfcpart.files.parts.vtu import write_vtu_pieces
 
         write_vtu_pieces(place, mesh, partition=partition, halo=halo, input_digest=digest)
     if "vtkhdf" in how.formats:
-        from sfcpart.files.vtkhdf_write import write_vtkhdf
+        from sfcpart.files.parts.vtkhdf_write import write_vtkhdf
 
         write_vtkhdf(
             place / "parts.vtkhdf",

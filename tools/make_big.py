@@ -19,7 +19,7 @@ from pathlib import Path
 
 from mesh_files import write_meshio, write_vtkhdf
 
-from sfcpart.files.faces_file import write_faces
+from sfcpart.files.meshes.faces_file import write_faces
 from sfcpart.mesh.channel import channel_section, channel_water
 from sfcpart.mesh.refined import FaceShape, refined_box
 from sfcpart.mesh.shapes import Shape, jittered_tets, lattice

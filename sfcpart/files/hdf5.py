@@ -58,7 +58,7 @@ def read_hdf5(path: str | PathLike[str]) -> Iterator[Any]:
 def create_hdf5(path: str | PathLike[str], *, track_order: bool = False) -> Iterator[Any]:
     """Create an HDF5 file (an existing one is replaced); yields the `h5py.File`.
 
-    Writing beside and renaming is the caller's task (`sfcpart.files.folder`).
+    Writing beside and renaming is the caller's task (`sfcpart.files.parts.folder`).
 
     Parameters
     ----------

@@ -20,7 +20,7 @@ def flux_sum(graph, value: np.ndarray, measure: np.ndarray) -> np.ndarray:
 def main() -> None:
     from mpi4py import MPI  # not above: pytest imports this module when it looks for doctests
 
-    from sfcpart.files.part import read_part
+    from sfcpart.files.parts.part import read_part
     from sfcpart.graph import cell_graph
     from sfcpart.mesh.mesh import Mesh
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from sfcpart.files.vtkhdf_write import write_vtkhdf
+from sfcpart.files.parts.vtkhdf_write import write_vtkhdf
 from sfcpart.graph import cell_graph
 from tests.mpi.harness import run_job
 from tests.mpi.solver_job import STEPS, flux_sum

@@ -13,8 +13,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from sfcpart.files.vtkhdf_write import write_vtkhdf
-from sfcpart.files.vtu import write_vtu_pieces
+from sfcpart.files.parts.vtkhdf_write import write_vtkhdf
+from sfcpart.files.parts.vtu import write_vtu_pieces
 from sfcpart.graph import cell_graph
 from sfcpart.halo import build_halo
 from sfcpart.mesh.mesh import Mesh

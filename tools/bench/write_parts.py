@@ -21,10 +21,10 @@ from pathlib import Path
 import numpy as np
 
 from sfcpart.curve import curve_order
-from sfcpart.files.folder import output_folder
-from sfcpart.files.part import read_part
-from sfcpart.files.vtkhdf_write import write_vtkhdf
-from sfcpart.files.vtu import write_vtu_pieces
+from sfcpart.files.parts.folder import output_folder
+from sfcpart.files.parts.part import read_part
+from sfcpart.files.parts.vtkhdf_write import write_vtkhdf
+from sfcpart.files.parts.vtu import write_vtu_pieces
 from sfcpart.graph import cell_graph
 from sfcpart.halo import build_halo
 from sfcpart.kernels.threads import n_threads

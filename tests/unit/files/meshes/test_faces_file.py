@@ -6,8 +6,8 @@ import numpy as np
 import pytest
 
 from sfcpart.errors import FileError, InputError, MeshError
-from sfcpart.files.faces_file import read_faces, write_faces
-from sfcpart.files.read import read_mesh
+from sfcpart.files.meshes.faces_file import read_faces, write_faces
+from sfcpart.files.meshes.read import read_mesh
 from sfcpart.mesh.mesh import Mesh
 
 PAIRS = [[0, 1], [1, 2], [2, -1], [0, -1]]

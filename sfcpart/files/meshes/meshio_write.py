@@ -15,8 +15,8 @@ import numpy as np
 
 from sfcpart.dtypes import Array
 from sfcpart.errors import FileError, InputError, SfcpartError
-from sfcpart.files.meshio_files import load_with_meshio, meshio_of_raw, save_with_meshio
-from sfcpart.files.read import file_format, read_mesh
+from sfcpart.files.meshes.meshio_files import load_with_meshio, meshio_of_raw, save_with_meshio
+from sfcpart.files.meshes.read import file_format, read_mesh
 from sfcpart.mesh.kinds import kind_of
 
 __all__ = ["CARRIERS", "write_with_meshio"]
@@ -80,8 +80,8 @@ def write_with_meshio(
 def _load(source: Path, name: str) -> Any:
     """Read a file as a meshio mesh; VTK files by our readers, which lose nothing."""
     if name in ("vtk", "vtu"):
-        from sfcpart.files.vtk_read import read_vtk
-        from sfcpart.files.vtu_read import read_vtu
+        from sfcpart.files.meshes.vtk_read import read_vtk
+        from sfcpart.files.meshes.vtu_read import read_vtu
 
         return meshio_of_raw(read_vtk(source) if name == "vtk" else read_vtu(source))
     try:

@@ -16,10 +16,10 @@ import numpy as np
 
 from sfcpart.dtypes import KIND, OFFSET, Array, Int64Array
 from sfcpart.errors import FileError, InsufficientMemoryError
-from sfcpart.files.face_stream import unpack_face_stream
-from sfcpart.files.lattice import lattice_points, lattice_raw
-from sfcpart.files.raw import RawMesh, narrow_ids, select_rows
-from sfcpart.files.vtk_sections import CellArray, LegacyFile, read_sections
+from sfcpart.files.meshes.face_stream import unpack_face_stream
+from sfcpart.files.meshes.lattice import lattice_points, lattice_raw
+from sfcpart.files.meshes.raw import RawMesh, narrow_ids, select_rows
+from sfcpart.files.meshes.vtk_sections import CellArray, LegacyFile, read_sections
 from sfcpart.mesh.kinds import POLYHEDRON, kind_tables
 from sfcpart.mesh.mesh import Polyhedra
 

@@ -9,9 +9,9 @@ import numpy as np
 import pytest
 
 from sfcpart.errors import FileError, InputError
-from sfcpart.files.lists import write_list_file
-from sfcpart.files.part import read_part
-from sfcpart.files.vtkhdf_write import write_vtkhdf
+from sfcpart.files.parts.lists import write_list_file
+from sfcpart.files.parts.part import read_part
+from sfcpart.files.parts.vtkhdf_write import write_vtkhdf
 from sfcpart.mesh.mesh import Mesh
 from tests.parted import SAMPLES, parted, sliced
 

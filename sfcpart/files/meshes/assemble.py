@@ -14,7 +14,7 @@ import numpy as np
 
 from sfcpart.dtypes import KIND, Array, BoolArray
 from sfcpart.errors import MeshError
-from sfcpart.files.raw import RawMesh, select_rows, take_elements
+from sfcpart.files.meshes.raw import RawMesh, select_rows, take_elements
 from sfcpart.mesh.gate import check_indices, check_kinds, check_offsets, frozen
 from sfcpart.mesh.kinds import KINDS, kind_tables
 from sfcpart.mesh.mesh import BoundaryGroup, Mesh

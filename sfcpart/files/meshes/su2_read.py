@@ -19,7 +19,7 @@ import numpy as np
 
 from sfcpart.dtypes import KIND, OFFSET, Array, Int64Array
 from sfcpart.errors import FileError
-from sfcpart.files.raw import RawMesh, narrow_ids
+from sfcpart.files.meshes.raw import RawMesh, narrow_ids
 from sfcpart.mesh.kinds import kind_tables
 
 __all__ = ["read_su2"]

@@ -11,7 +11,7 @@ import numpy as np
 
 from sfcpart.dtypes import OFFSET, Array, BoolArray, Int64Array, index_dtype
 from sfcpart.errors import FileError
-from sfcpart.files.raw import narrow_ids
+from sfcpart.files.meshes.raw import narrow_ids
 from sfcpart.mesh.mesh import Polyhedra
 
 __all__ = ["unpack_face_stream"]

@@ -10,9 +10,9 @@ import numpy as np
 import pytest
 
 from sfcpart.errors import FileError, PartitionError
-from sfcpart.files import pieces
-from sfcpart.files.read import read_mesh
-from sfcpart.files.vtkhdf_write import write_vtkhdf
+from sfcpart.files.meshes.read import read_mesh
+from sfcpart.files.parts import pieces
+from sfcpart.files.parts.vtkhdf_write import write_vtkhdf
 from sfcpart.mesh.mesh import Mesh
 from tests.parted import SAMPLES, Parted, parted, sliced
 
@@ -225,8 +225,8 @@ def test_a_full_disk_is_one_line_and_leaves_nothing(tmp_path):
 import resource, sys
 from tests.parted import parted
 from sfcpart.errors import FileError
-from sfcpart.files.folder import output_folder
-from sfcpart.files.vtkhdf_write import write_vtkhdf
+from sfcpart.files.parts.folder import output_folder
+from sfcpart.files.parts.vtkhdf_write import write_vtkhdf
 case = parted("tets")
 resource.setrlimit(resource.RLIMIT_FSIZE, (int(sys.argv[2]), int(sys.argv[2])))
 try:

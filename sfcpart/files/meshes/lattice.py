@@ -13,7 +13,7 @@ import numpy as np
 
 from sfcpart.dtypes import KIND, OFFSET, Array, FloatArray, IntArray, index_dtype
 from sfcpart.errors import FileError, InsufficientMemoryError
-from sfcpart.files.raw import RawMesh
+from sfcpart.files.meshes.raw import RawMesh
 
 __all__ = ["lattice_points", "lattice_raw"]
 

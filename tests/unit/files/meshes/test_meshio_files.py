@@ -10,10 +10,10 @@ import numpy as np
 import pytest
 
 from sfcpart.errors import FileError, InputError, MeshError
-from sfcpart.files import limits, meshio_files
-from sfcpart.files.meshio_files import raw_of_meshio
-from sfcpart.files.meshio_write import write_with_meshio
-from sfcpart.files.read import read_mesh
+from sfcpart.files.meshes import limits, meshio_files
+from sfcpart.files.meshes.meshio_files import raw_of_meshio
+from sfcpart.files.meshes.meshio_write import write_with_meshio
+from sfcpart.files.meshes.read import read_mesh
 from tests.file_samples import tet_block, write_shell, write_tets, write_ugrid
 
 FORMATS = {
@@ -144,7 +144,7 @@ def test_named_sets_become_groups_and_fields():
 
 
 def read_mesh_of(mesh):
-    from sfcpart.files.assemble import build_mesh
+    from sfcpart.files.meshes.assemble import build_mesh
 
     return build_mesh(raw_of_meshio(mesh), "given")
 

@@ -15,8 +15,8 @@ from pathlib import Path
 import pytest
 
 from sfcpart.errors import FileError, MeshError
-from sfcpart.files import folder as folder_module
-from sfcpart.files.folder import MANIFEST, check_output_folder, output_folder
+from sfcpart.files.parts import folder as folder_module
+from sfcpart.files.parts.folder import MANIFEST, check_output_folder, output_folder
 
 
 def write(place: Path, text: str, **options) -> None:
@@ -226,7 +226,7 @@ def test_a_kill_between_two_renames_is_mended(tmp_path):
 
 CHILD = """
 import sys
-from sfcpart.files.folder import output_folder
+from sfcpart.files.parts.folder import output_folder
 print("ready", flush=True)
 for turn in range(10**6):
     with output_folder(sys.argv[1], overwrite=True) as folder:
@@ -261,7 +261,7 @@ def test_a_limit_on_file_size_is_a_full_disk(tmp_path):
     script = """
 import resource, sys
 from sfcpart.errors import FileError
-from sfcpart.files.folder import output_folder
+from sfcpart.files.parts.folder import output_folder
 resource.setrlimit(resource.RLIMIT_FSIZE, (100, 100))
 try:
     with output_folder(sys.argv[1]) as folder:

@@ -16,7 +16,7 @@ import numpy as np
 from sfcpart.dtypes import OFFSET, Array, FloatArray, Int32Array, Int64Array, IntArray, KindArray
 from sfcpart.errors import FileError, InputError
 from sfcpart.files.hdf5 import read_hdf5
-from sfcpart.files.lists import PartBoundary, PartLists, read_lists
+from sfcpart.files.parts.lists import PartBoundary, PartLists, read_lists
 from sfcpart.mesh.mesh import Polyhedra
 
 if TYPE_CHECKING:

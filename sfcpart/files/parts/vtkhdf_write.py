@@ -3,8 +3,8 @@
 What: every part is one partition of the open VTKHDF standard: its points, its owned cells in
 curve order, then its halo cells marked in `vtkGhostType`; `GlobalCellIds` and `GlobalPointIds`
 number the unsplit mesh; the cell field `part` names the owner of each cell. Polyhedra are kept.
-How: block by block (`sfcpart.files.pieces`) into contiguous datasets, so memory stays bounded.
-The group `/sfcpart` (`sfcpart.files.lists`) lies outside `/VTKHDF`, where readers ignore it.
+How: block by block (`sfcpart.files.parts.pieces`) into contiguous datasets, so memory stays bounded.
+The group `/sfcpart` (`sfcpart.files.parts.lists`) lies outside `/VTKHDF`, where readers ignore it.
 Source: VTK file format documentation, "VTKHDF" (versions 2.2, 2.5 polyhedra, 2.6 attributes).
 """
 
@@ -15,11 +15,18 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from sfcpart.dtypes import COORDINATE, GID, KIND, OFFSET, PART, Array, Int64Array, index_dtype
-from sfcpart.files.boundary import groups_by_part
-from sfcpart.files.fields import file_dtype, gathered, writable_fields
 from sfcpart.files.hdf5 import create_hdf5
-from sfcpart.files.lists import write_groups, write_lists
-from sfcpart.files.pieces import Block, Drawing, Renumbered, blocks, check_same_cells, drawing_of
+from sfcpart.files.parts.boundary import groups_by_part
+from sfcpart.files.parts.fields import file_dtype, gathered, writable_fields
+from sfcpart.files.parts.lists import write_groups, write_lists
+from sfcpart.files.parts.pieces import (
+    Block,
+    Drawing,
+    Renumbered,
+    blocks,
+    check_same_cells,
+    drawing_of,
+)
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -89,7 +96,7 @@ def write_vtkhdf(
     Parameters
     ----------
     path : path
-        The file, replaced if it exists; see `sfcpart.files.folder` for writing safely.
+        The file, replaced if it exists; see `sfcpart.files.parts.folder` for writing safely.
     mesh : Mesh
         Cell and point fields go along; without points, cells become vertices at their centres.
     partition : Partition

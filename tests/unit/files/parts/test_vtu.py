@@ -10,7 +10,7 @@ import numpy as np
 import pytest
 
 from sfcpart.errors import FileError, PartitionError
-from sfcpart.files.vtu import write_vtu_pieces
+from sfcpart.files.parts.vtu import write_vtu_pieces
 from tests.parted import Parted, parted
 
 

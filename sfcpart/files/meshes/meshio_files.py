@@ -21,9 +21,9 @@ import numpy as np
 
 from sfcpart.dtypes import KIND, OFFSET, Array, Int64Array, IntArray, index_dtype
 from sfcpart.errors import FileError, MeshError, SfcpartError
-from sfcpart.files.first_look import LOOKS
-from sfcpart.files.limits import OutOfTimeError, interrupted_after, memory_limited
-from sfcpart.files.raw import RawMesh, narrow_ids
+from sfcpart.files.meshes.first_look import LOOKS
+from sfcpart.files.meshes.limits import OutOfTimeError, interrupted_after, memory_limited
+from sfcpart.files.meshes.raw import RawMesh, narrow_ids
 from sfcpart.mesh.kinds import KINDS, POLYHEDRON, kind_of
 from sfcpart.mesh.mesh import Polyhedra
 

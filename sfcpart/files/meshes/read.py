@@ -17,8 +17,8 @@ import numpy as np
 
 from sfcpart.dtypes import Array
 from sfcpart.errors import FileError, InputError, SfcpartError
-from sfcpart.files.assemble import build_mesh
-from sfcpart.files.raw import RawMesh
+from sfcpart.files.meshes.assemble import build_mesh
+from sfcpart.files.meshes.raw import RawMesh
 from sfcpart.mesh.mesh import Mesh
 
 __all__ = ["EXTENSIONS", "file_format", "read_cell_values", "read_mesh"]
@@ -72,11 +72,11 @@ EXTENSIONS: Mapping[str, tuple[str, ...]] = {
 """Formats to try for each file extension, in turn; names as meshio has them."""
 
 _OWN: Mapping[str, tuple[str, str]] = {
-    "vtkhdf": ("sfcpart.files.vtkhdf_read", "read_vtkhdf"),
-    "vtu": ("sfcpart.files.vtu_read", "read_vtu"),
-    "pvtu": ("sfcpart.files.vtu_read", "read_pvtu"),
-    "vtk": ("sfcpart.files.vtk_read", "read_vtk"),
-    "su2": ("sfcpart.files.su2_read", "read_su2"),
+    "vtkhdf": ("sfcpart.files.meshes.vtkhdf_read", "read_vtkhdf"),
+    "vtu": ("sfcpart.files.meshes.vtu_read", "read_vtu"),
+    "pvtu": ("sfcpart.files.meshes.vtu_read", "read_pvtu"),
+    "vtk": ("sfcpart.files.meshes.vtk_read", "read_vtk"),
+    "su2": ("sfcpart.files.meshes.su2_read", "read_su2"),
 }
 _HEAD = 4096
 # Only signatures that no other format can begin with.
@@ -101,7 +101,7 @@ def read_mesh(path: str | PathLike[str]) -> Mesh:
     Parameters
     ----------
     path : path
-        VTKHDF, VTU, legacy VTK, SU2, faces in HDF5 (`sfcpart.files.faces_file`), or one of the
+        VTKHDF, VTU, legacy VTK, SU2, faces in HDF5 (`sfcpart.files.meshes.faces_file`), or one of the
         formats meshio reads. Content that gives itself away wins over the extension.
 
     Returns
@@ -126,7 +126,7 @@ def read_mesh(path: str | PathLike[str]) -> Mesh:
     place = Path(path)
     formats = file_format(place)
     if formats[0] == "faces":
-        from sfcpart.files.faces_file import read_faces
+        from sfcpart.files.meshes.faces_file import read_faces
 
         return read_faces(place)
     return build_mesh(_read_raw(place, formats), str(place))
@@ -157,7 +157,7 @@ def _reader(formats: tuple[str, ...]) -> Callable[[Path], RawMesh]:
     if module:
         reader: Callable[[Path], RawMesh] = getattr(import_module(module), name)
         return reader
-    from sfcpart.files.meshio_files import read_with_meshio
+    from sfcpart.files.meshes.meshio_files import read_with_meshio
 
     return lambda place: read_with_meshio(place, formats)
 

@@ -18,7 +18,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from sfcpart.files.faces_file import write_faces
+from sfcpart.files.meshes.faces_file import write_faces
 from sfcpart.mesh.mesh import Mesh
 from tests.file_samples import MIXED, SU2, vtk_grid, write_shell, write_tets, write_ugrid
 
@@ -31,8 +31,8 @@ import faulthandler, json, resource, sys
 from pathlib import Path
 import numpy as np
 faulthandler.dump_traceback_later({seconds}, exit=True)
-from sfcpart.files import meshio_files
-from sfcpart.files.read import read_mesh
+from sfcpart.files.meshes import meshio_files
+from sfcpart.files.meshes.read import read_mesh
 from sfcpart.errors import SfcpartError
 import meshio, h5py
 meshio_files.PATIENCE = 1.0

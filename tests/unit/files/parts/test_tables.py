@@ -10,7 +10,7 @@ import numpy as np
 import pytest
 
 from sfcpart.errors import FileError, InputError
-from sfcpart.files.tables import json_text, write_cell_part, write_part_table, write_summary
+from sfcpart.files.parts.tables import json_text, write_cell_part, write_part_table, write_summary
 from sfcpart.partition import Partition
 
 

@@ -1,6 +1,6 @@
 """What a reader of one format hands over: all elements of a file, in file order, unchecked.
 
-`sfcpart.files.assemble` makes a mesh of it. Here are the operations readers share: keep some
+`sfcpart.files.meshes.assemble` makes a mesh of it. Here are the operations readers share: keep some
 elements, join pieces.
 """
 

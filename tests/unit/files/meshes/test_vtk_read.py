@@ -8,7 +8,7 @@ import vtk
 from vtk.util.numpy_support import numpy_to_vtk
 
 from sfcpart.errors import FileError, InsufficientMemoryError, MeshError
-from sfcpart.files.read import read_mesh
+from sfcpart.files.meshes.read import read_mesh
 from tests.file_samples import assert_is_sample, vtk_grid
 
 

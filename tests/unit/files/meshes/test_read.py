@@ -8,8 +8,8 @@ import numpy as np
 import pytest
 
 from sfcpart.errors import FileError, InputError, MeshError
-from sfcpart.files import meshio_files
-from sfcpart.files.read import EXTENSIONS, file_format, read_cell_values, read_mesh
+from sfcpart.files.meshes import meshio_files
+from sfcpart.files.meshes.read import EXTENSIONS, file_format, read_cell_values, read_mesh
 from tests.file_samples import SU2, write_shell, write_tets
 
 

@@ -22,7 +22,7 @@ import numpy as np
 from sfcpart.dtypes import COORDINATE, OFFSET, Array, Int64Array, IntArray, index_dtype
 from sfcpart.errors import FileError, MeshError
 from sfcpart.files.hdf5 import check_stored, read_hdf5
-from sfcpart.files.raw import RawMesh, join_pieces
+from sfcpart.files.meshes.raw import RawMesh, join_pieces
 from sfcpart.mesh.mesh import Polyhedra
 
 __all__ = ["read_vtkhdf", "vtkhdf_counts"]

@@ -19,9 +19,9 @@ import numpy as np
 
 from sfcpart.dtypes import KIND, OFFSET, Array, Int64Array
 from sfcpart.errors import FileError, MeshError
-from sfcpart.files.face_stream import unpack_face_stream
-from sfcpart.files.raw import RawMesh, concatenate, join_pieces, narrow_ids
-from sfcpart.files.vtu_arrays import ArrayDecoder
+from sfcpart.files.meshes.face_stream import unpack_face_stream
+from sfcpart.files.meshes.raw import RawMesh, concatenate, join_pieces, narrow_ids
+from sfcpart.files.meshes.vtu_arrays import ArrayDecoder
 from sfcpart.mesh.kinds import POLYHEDRON
 from sfcpart.mesh.mesh import Polyhedra
 

@@ -18,10 +18,10 @@ import numpy as np
 
 from sfcpart.dtypes import GID, OFFSET, Array, Int64Array, IntArray
 from sfcpart.errors import FileError
-from sfcpart.files.boundary import groups_by_part
-from sfcpart.files.fields import gathered, writable_fields
-from sfcpart.files.lists import write_list_file
-from sfcpart.files.pieces import (
+from sfcpart.files.parts.boundary import groups_by_part
+from sfcpart.files.parts.fields import gathered, writable_fields
+from sfcpart.files.parts.lists import write_list_file
+from sfcpart.files.parts.pieces import (
     POLYHEDRON,
     Block,
     Drawing,
@@ -30,7 +30,7 @@ from sfcpart.files.pieces import (
     check_same_cells,
     drawing_of,
 )
-from sfcpart.files.vtkhdf_write import CELL_NAMES, POINT_NAMES
+from sfcpart.files.parts.vtkhdf_write import CELL_NAMES, POINT_NAMES
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -71,7 +71,7 @@ def write_vtu_pieces(
     Parameters
     ----------
     folder : path
-        An existing folder (see `sfcpart.files.folder`).
+        An existing folder (see `sfcpart.files.parts.folder`).
     mesh : Mesh
         Cell and point fields go along; without points, cells become vertices at their centres.
     partition : Partition

@@ -9,7 +9,7 @@ import pytest
 import vtk
 
 from sfcpart.errors import FileError, MeshError
-from sfcpart.files.read import read_mesh
+from sfcpart.files.meshes.read import read_mesh
 from sfcpart.mesh.mesh import Mesh
 from tests.file_samples import MIXED, assert_is_sample, points, vtk_grid, write_tets
 

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from sfcpart.errors import FileError, MeshError
-from sfcpart.files.read import read_mesh
+from sfcpart.files.meshes.read import read_mesh
 from tests.file_samples import SU2, write_tets
 
 

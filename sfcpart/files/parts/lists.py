@@ -36,7 +36,7 @@ if TYPE_CHECKING:
     from collections.abc import Iterable, Iterator
     from os import PathLike
 
-    from sfcpart.files.boundary import GroupByPart
+    from sfcpart.files.parts.boundary import GroupByPart
     from sfcpart.halo import Halo
 
 __all__ = [
@@ -93,7 +93,7 @@ class PartBoundary:
 
 @dataclass(frozen=True, eq=False)
 class PartLists:
-    """The exchange lists of one part, in local numbers (see `sfcpart.files.part.Part`)."""
+    """The exchange lists of one part, in local numbers (see `sfcpart.files.parts.part.Part`)."""
 
     n_parts: int
     n_owned: int

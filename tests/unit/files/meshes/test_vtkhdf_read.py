@@ -8,9 +8,9 @@ import vtk
 
 from sfcpart.errors import FileError, MeshError
 from sfcpart.files.hdf5 import create_hdf5
-from sfcpart.files.read import read_mesh
-from sfcpart.files.vtkhdf_read import vtkhdf_counts
-from sfcpart.files.vtkhdf_write import write_vtkhdf
+from sfcpart.files.meshes.read import read_mesh
+from sfcpart.files.meshes.vtkhdf_read import vtkhdf_counts
+from sfcpart.files.parts.vtkhdf_write import write_vtkhdf
 from sfcpart.graph import cell_graph
 from tests.file_samples import MIXED, assert_is_sample, points, vtk_grid
 from tests.parted import parted

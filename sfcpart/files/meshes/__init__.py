@@ -1,0 +1,1 @@
+"""From a file on disk to a `Mesh`, and per-cell values from files."""

@@ -1,0 +1,1 @@
+"""From a partition to the folder that a solver loads, and back to one part."""
