@@ -19,6 +19,7 @@ VERBS: dict[str, tuple[str, str]] = {
     "inspect": ("sfcpart.cli.inspect", "Say what a mesh file holds, and what is wrong with it."),
     "demo": ("sfcpart.cli.demo", "Split an invented tidal channel; needs no file."),
     "figures": ("sfcpart.cli.figures_verb", "Explain every figure of a partition."),
+    "manual": ("sfcpart.cli.manual", "Print a page of the manual: figures, files."),
     "completion": ("sfcpart.cli.completion", "Print the script that completes words in a shell."),
 }
 

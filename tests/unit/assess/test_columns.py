@@ -2,15 +2,14 @@
 
 from __future__ import annotations
 
-import runpy
-
 from sfcpart.assess import PART_COLUMNS, TOTAL_COLUMNS
+from sfcpart.manual import read_page
+from sfcpart.manual.figures_page import page
 
 
-def test_the_page_of_figures_is_what_the_table_says(root):
-    page = runpy.run_path(str(root / "tools" / "make_figures_page.py"))["page"]()
-    written = (root / "docs" / "figures.md").read_text(encoding="utf-8")
-    assert written == page + "\n", "run python tools/make_figures_page.py > docs/figures.md"
+def test_the_page_of_figures_is_what_the_table_says():
+    again = "python -m sfcpart.manual.figures_page > sfcpart/manual/figures.md"
+    assert read_page("figures") == page() + "\n", f"run {again}"
 
 
 def test_names_are_said_once_and_meanings_are_sentences():

@@ -13,6 +13,7 @@ from sfcpart.errors import FileError, PartitionError
 from sfcpart.files.meshes.read import read_mesh
 from sfcpart.files.parts import pieces
 from sfcpart.files.parts.vtkhdf_write import write_vtkhdf
+from sfcpart.manual import read_page
 from sfcpart.mesh.mesh import Mesh
 from tests.parted import SAMPLES, Parted, parted, sliced
 
@@ -136,10 +137,10 @@ def test_exchange_lists_lie_beside_the_mesh(tmp_path):
         assert sorted(file) == ["VTKHDF", "sfcpart"]
 
 
-def test_the_documentation_names_every_dataset(tmp_path, root):
+def test_the_documentation_names_every_dataset(tmp_path):
     case = parted("section")
     write(tmp_path / "parts.vtkhdf", case)
-    text = (root / "docs" / "parts_file.md").read_text("utf-8")
+    text = read_page("parts_file")
     with h5py.File(tmp_path / "parts.vtkhdf") as file:
         group = file["sfcpart"]
         names = {*group.attrs, *group, *group["boundary/0"], *group["boundary/0"].attrs}

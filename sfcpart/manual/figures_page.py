@@ -1,6 +1,6 @@
-"""Write docs/figures.md, the table of every figure of an assessment, from `sfcpart.assess.columns`.
+"""Make the page of figures from `sfcpart.assess.columns`.
 
-python tools/make_figures_page.py > docs/figures.md
+python -m sfcpart.manual.figures_page > sfcpart/manual/figures.md
 """
 
 from __future__ import annotations
@@ -15,7 +15,7 @@ a key may be added, none is renamed or removed. A figure that cannot be known is
 null in JSON. A partition changes the order in which a solver sums its cells; none of these figures
 says whether a simulation is right.
 
-This page is made by `tools/make_figures_page.py` from `sfcpart/assess/columns.py`."""
+This page is made by `sfcpart/manual/figures_page.py` from `sfcpart/assess/columns.py`."""
 
 BOUNDS = """## Lower bounds
 

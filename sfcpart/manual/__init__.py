@@ -1,0 +1,39 @@
+"""The pages behind `sfcpart manual`: Markdown files shipped with the package."""
+
+from __future__ import annotations
+
+from importlib.resources import files
+
+from sfcpart.errors import InputError
+
+__all__ = ["PAGES", "read_page"]
+
+PAGES: dict[str, str] = {
+    "figures": "every figure of a report: unit, meaning, bounds, the model of a step",
+    "parts_file": "the file of parts, for those who write a solver's reader",
+    "reading": "which mesh files are read, how, and what is refused",
+}
+"""Pages and what they hold."""
+
+
+def read_page(name: str) -> str:
+    """Return a page as Markdown.
+
+    Parameters
+    ----------
+    name : str
+        One of `PAGES`.
+
+    Raises
+    ------
+    InputError
+        If there is no such page.
+
+    Examples
+    --------
+    >>> read_page("figures").splitlines()[0]
+    '# The figures of a partition'
+    """
+    if name not in PAGES:
+        raise InputError(f"there is no page {name!r}; there are {', '.join(PAGES)}")
+    return files("sfcpart.manual").joinpath(f"{name}.md").read_text(encoding="utf-8")
