@@ -7,8 +7,9 @@ from pathlib import Path
 
 from mesh_files import write_meshio, write_msh, write_vtkhdf
 
-from sfcpart.mesh.channel import channel_mixed, channel_section, channel_with_rotor, pier_shell
+from sfcpart.mesh.channel import channel_mixed, channel_section
 from sfcpart.mesh.shapes import truncated_octahedra
+from sfcpart.mesh.structures import channel_with_rotor, pier_shell
 
 HOME = Path(__file__).resolve().parent.parent / "meshes"
 

@@ -1,4 +1,4 @@
-"""The pages behind `sfcpart manual`: Markdown files shipped with the package."""
+"""The pages behind `sfcpart manual`: Markdown shipped with the package, or made of its tables."""
 
 from __future__ import annotations
 
@@ -36,4 +36,8 @@ def read_page(name: str) -> str:
     """
     if name not in PAGES:
         raise InputError(f"there is no page {name!r}; there are {', '.join(PAGES)}")
+    if name == "figures":
+        from sfcpart.manual.figures_page import page
+
+        return page()
     return files("sfcpart.manual").joinpath(f"{name}.md").read_text(encoding="utf-8")

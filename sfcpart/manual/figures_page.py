@@ -1,7 +1,4 @@
-"""Make the page of figures from `sfcpart.assess.columns`.
-
-python -m sfcpart.manual.figures_page > sfcpart/manual/figures.md
-"""
+"""The page of figures, made from `sfcpart.assess.columns`, so that it cannot lag behind."""
 
 from __future__ import annotations
 
@@ -13,9 +10,7 @@ HEAD = """# The figures of a partition
 `sfcpart assess`, `parts.csv`, `summary.json` and `Assessment` use the same keys. They are stable:
 a key may be added, none is renamed or removed. A figure that cannot be known is empty in CSV and
 null in JSON. A partition changes the order in which a solver sums its cells; none of these figures
-says whether a simulation is right.
-
-This page is made by `sfcpart/manual/figures_page.py` from `sfcpart/assess/columns.py`."""
+says whether a simulation is right."""
 
 BOUNDS = """## Lower bounds
 
@@ -59,8 +54,4 @@ Left out: {"; ".join(LEAVES_OUT)}."""
         BOUNDS,
         model,
     ]
-    return "\n\n".join(parts)
-
-
-if __name__ == "__main__":
-    print(page())
+    return "\n\n".join(parts) + "\n"

@@ -2,8 +2,11 @@
 
     python tools/bench/curve_split.py [--cells 10000000] [--parts 1000] [--repeats 5]
 
-All figures come from one run; each is the median of the repeats, the kernels compiled before. The
-reference is `np.argsort(keys, kind="stable")` on the same keys. The last lines say what limits
+All figures come from one run, the kernels compiled before. In each round every piece of work is
+done once, so that whatever else the machine does falls on all alike; figures are medians over the
+rounds, ratios medians of the ratios within a round. The reference is
+`np.argsort(keys, kind="stable")` on the same keys. Processor time (of all threads together) is
+shown beside, since it tells more where the machine is not idle. The last lines say what limits
 the work: the bytes it must move through memory, and how long this machine takes to copy as many.
 """
 
@@ -26,14 +29,20 @@ from sfcpart.methods.registry import METHODS
 TARGET = 0.35
 
 
-def median_time(call: Callable[[], object], repeats: int) -> float:
-    call()
-    seconds = []
-    for _ in range(repeats):
-        began = time.perf_counter()
+def measure(
+    work: dict[str, Callable[[], object]], rounds: int
+) -> tuple[dict[str, list[float]], dict[str, float]]:
+    seconds: dict[str, list[float]] = {name: [] for name in work}
+    cpu = dict.fromkeys(work, float("inf"))
+    for call in work.values():
         call()
-        seconds.append(time.perf_counter() - began)
-    return statistics.median(seconds)
+    for _ in range(rounds):
+        for name, call in work.items():
+            began, cpu_began = time.perf_counter(), time.process_time()
+            call()
+            seconds[name].append(time.perf_counter() - began)
+            cpu[name] = min(cpu[name], time.process_time() - cpu_began)
+    return seconds, cpu
 
 
 def copy_rows(start: int, stop: int, source: np.ndarray, target: np.ndarray) -> None:
@@ -59,7 +68,7 @@ def main() -> None:
         return METHODS["hilbert"].run(problem)
 
     spare = np.empty_like(keys)
-    work = {
+    work: dict[str, Callable[[], object]] = {
         "np.argsort(keys, kind='stable')": lambda: np.argsort(keys, kind="stable"),
         "keys": lambda: curve_keys(centers),
         "sort keys": lambda: stable_order(keys),
@@ -67,12 +76,18 @@ def main() -> None:
         f"keys, order, split into {n_parts}, cell_part": split,
         "the same with weights": lambda: split(weight),
     }
-    copy = median_time(lambda: run_ranges(copy_rows, n, keys, spare), given.repeats)
-    seconds = {name: median_time(call, given.repeats) for name, call in work.items()}
-    reference = next(iter(seconds.values()))
-    print(f"{n} random centres, {n_threads()} threads, medians of {given.repeats}")
-    for name, value in seconds.items():
-        print(f"  {name:48s} {value:7.3f} s   ratio {value / reference:.3f}")
+    work["copy"] = lambda: run_ranges(copy_rows, n, keys, spare)
+    seconds, cpu = measure(work, given.repeats)
+    copy = statistics.median(seconds.pop("copy"))
+    references = next(iter(seconds.values()))
+    reference = statistics.median(references)
+    print(f"{n} random centres, {n_threads()} threads, medians of {given.repeats} rounds")
+    for name, values in seconds.items():
+        ratio = statistics.median(v / r for v, r in zip(values, references, strict=True))
+        print(
+            f"  {name:48s} {statistics.median(values):7.3f} s   ratio {ratio:.3f}"
+            f"   least cpu {cpu[name]:.3f} s"
+        )
     # centres twice (box, keys); keys written, and read by survey, count, scatter, two more surveys;
     # key and row written by the scatter, read and written by the finish; rows, labels, parts
     moved = n * (2 * 24 + 8 + 5 * 8 + 12 + 2 * 12 + 4 + 2 * 4 + 4)
