@@ -10,10 +10,11 @@ import numpy as np
 
 from sfcpart.graph import cell_graph
 from sfcpart.halo import Halo, build_halo
-from sfcpart.mesh.channel import channel_mixed, channel_section, pier_shell
+from sfcpart.mesh.channel import channel_mixed, channel_section
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.mesh.refined import refined_box
 from sfcpart.mesh.shapes import jittered_tets, truncated_octahedra
+from sfcpart.mesh.structures import pier_shell
 from sfcpart.partition import Partition
 
 __all__ = ["SAMPLES", "Parted", "parted", "sliced"]

@@ -13,13 +13,12 @@ from sfcpart.mesh.channel import (
     channel_mixed,
     channel_section,
     channel_water,
-    channel_with_rotor,
-    pier_shell,
     section_area,
 )
 from sfcpart.mesh.geometry import centers_and_signed_measures
 from sfcpart.mesh.refined import refined_box
 from sfcpart.mesh.shapes import Shape, extrude, jittered_tets, lattice, truncated_octahedra
+from sfcpart.mesh.structures import channel_with_rotor, pier_shell
 
 # Faces of each 3-D cell, written down here again from the VTK file-format document's figures.
 FACES = {

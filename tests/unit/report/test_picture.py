@@ -9,10 +9,11 @@ from matplotlib.image import imread
 from sfcpart.errors import FileError, InputError
 from sfcpart.graph import cell_graph
 from sfcpart.kernels._jit import COMPILED
-from sfcpart.mesh.channel import channel_mixed, channel_section, pier_shell
+from sfcpart.mesh.channel import channel_mixed, channel_section
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.mesh.refined import refined_box
 from sfcpart.mesh.shapes import truncated_octahedra
+from sfcpart.mesh.structures import pier_shell
 from sfcpart.partition import Partition
 from sfcpart.report.picture import draw_split
 

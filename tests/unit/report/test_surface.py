@@ -6,8 +6,9 @@ import numpy as np
 import pytest
 
 from sfcpart.graph import cell_graph
-from sfcpart.mesh.channel import channel_mixed, channel_section, pier_shell
+from sfcpart.mesh.channel import channel_mixed, channel_section
 from sfcpart.mesh.shapes import jittered_tets, lattice, truncated_octahedra
+from sfcpart.mesh.structures import pier_shell
 from sfcpart.report.surface import cell_triangles, part_surface
 
 
