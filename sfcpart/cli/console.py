@@ -118,9 +118,17 @@ def _is_compiled() -> bool:
     import sfcpart
 
     kernels = Path(sfcpart.__file__).parent / "kernels"
-    places = [kernels / "__pycache__"]
+    compiled = [path.stat().st_mtime for path in _compiled_files(kernels)]
+    sources = [path.stat().st_mtime for path in kernels.glob("*.py")]
+    return bool(compiled) and max(compiled) >= max(sources)
+
+
+def _compiled_files(kernels: Path) -> list[Path]:
+    """List the indexes of compiled kernels, where numba's documentation says that they go."""
     if os.environ.get("NUMBA_CACHE_DIR"):
-        places = [Path(os.environ["NUMBA_CACHE_DIR"])]
-    elif not os.access(kernels, os.W_OK):
-        places.append(Path.home() / ".cache" / "numba")
-    return any(next(place.rglob("*.nbi"), None) is not None for place in places if place.is_dir())
+        return list(Path(os.environ["NUMBA_CACHE_DIR"]).rglob("*.nbi"))
+    here = list((kernels / "__pycache__").glob("*.nbi"))
+    if here or os.access(kernels, os.W_OK):
+        return here
+    caches = os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache"
+    return list(Path(caches, "numba").glob("kernels_*/*.nbi"))
