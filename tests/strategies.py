@@ -63,7 +63,8 @@ def _collinear(draw: st.DrawFn, dim: int, n: int) -> np.ndarray:
 def _any_floats(draw: st.DrawFn, dim: int, n: int) -> np.ndarray:
     size = draw(st.sampled_from([1.0, 1e-12, 1e12]))
     unit = st.floats(-1.0, 1.0, allow_subnormal=False)
-    return draw(hnp.arrays(np.float64, (n, dim), elements=unit)) * size
+    drawn = draw(hnp.arrays(np.float64, (n, dim), elements=unit))
+    return np.where(np.abs(drawn) > 1e-100, drawn, 0.0) * size  # squares do not underflow
 
 
 @st.composite

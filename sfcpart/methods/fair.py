@@ -71,12 +71,12 @@ def _around_heavy(line: Line, begin: int, end: int, aim: FloatArray, base: int) 
     level, n_heavy = aim[-1] / n_parts, 0
     rows = np.empty((0, 2), np.int64)
     for _ in range(_ROUNDS):
-        rows = _items_above(line, begin, end, level)
-        count, weight = (int(x) for x in line.comm.allreduce(
-            np.array([len(rows), rows[:, 1].sum()], np.int64)))  # fmt: skip
-        if count == n_heavy:
+        above = _items_above(line, begin, end, level)
+        mine = np.array([len(above), above[:, 1].sum()], np.int64)
+        count, weight = (int(x) for x in line.comm.allreduce(mine))
+        if count == n_heavy or count >= n_parts:  # the latter if a level was rounded down
             break
-        n_heavy, level = count, (aim[-1] - weight) / (n_parts - count)
+        rows, n_heavy, level = above, count, (aim[-1] - weight) / (n_parts - count)
     if n_heavy == 0:
         return aim
     start, heavy = np.concatenate(line.comm.allgather(rows)).astype(np.float64).T
