@@ -31,5 +31,3 @@ def jit(function: Callable[P, R]) -> Callable[P, R]:
         function
     )
     return compiled
-
-
