@@ -8,7 +8,7 @@ see the same face, so measures add up to that of the domain. Cost: O(corners) a 
 
 from __future__ import annotations
 
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 
@@ -53,7 +53,7 @@ def solid_geometry(
     q = np.empty((most, 3))
     for c in range(start, stop):
         k = cells.kind[c]
-        n = np.int64(cells.n_corners[k])
+        n: Any = np.int64(cells.n_corners[k])
         if n == 0:
             continue
         row = cells.indptr[c]
@@ -158,7 +158,7 @@ def ring_geometry(
     for c in range(start, stop):
         k = cells.kind[c]
         row = cells.indptr[c]
-        n = np.int64(cells.n_corners[k])
+        n: Any = np.int64(cells.n_corners[k])
         if n == 0:
             n = cells.indptr[c + 1] - row
         tabled = cells.face_count[k] > 0

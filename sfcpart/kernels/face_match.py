@@ -8,6 +8,8 @@ memory).
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 
 from sfcpart.dtypes import Array, FloatArray, Int32Array, Int64Array
@@ -82,13 +84,13 @@ def match_faces(
         for p in range(bounds[r], bounds[r + 1]):
             lo = bucket[p]
             n = bucket[p + 1] - lo
-            for i in range(n):
-                s = np.int64(order[lo + i])
-                key[i] = face[s, 0] << 32 | face[s, 1] >> 32
+            for at in range(n):
+                s = np.int64(order[lo + at])
+                key[at] = face[s, 0] << 32 | face[s, 1] >> 32
                 d = (face[s, 1] & _LOW) >> 2
-                tail[i] = s if face[s, 1] & 3 == 3 else d << 32 | s
+                tail[at] = s if face[s, 1] & 3 == 3 else d << 32 | s
             sort_pairs(key, tail, n)
-            i = np.int64(0)  # a bare 0 would compile callees twice
+            i: Any = np.int64(0)  # a bare 0 would compile callees twice
             while i < n:
                 s = tail[i] & _LOW
                 b, c = face[s, 0] & _LOW, face[s, 1] >> 32
@@ -159,7 +161,8 @@ def _face_size(
         for axis in range(points.shape[1]):
             d = points[b, axis] - points[a, axis]
             nx += d * d
-        return np.sqrt(nx)
+        length: float = np.sqrt(nx)
+        return length
     o = np.int64(large_indices[large_indptr[large]])
     px = py = pz = 0.0
     for i in range(large_indptr[large] + 1, large_indptr[large + 1]):

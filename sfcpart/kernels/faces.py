@@ -24,6 +24,8 @@ The mate is the slot of the same face in the other cell, or
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 
 from sfcpart.dtypes import Array, Int32Array, Int64Array
@@ -100,8 +102,8 @@ def list_faces(
             if n_faces == 0:
                 n_faces = slot_start[cell + 1] - s
             for f in range(n_faces):
-                n = np.int64(0)
-                row_of_large = np.int64(0)
+                n: Any = np.int64(0)
+                row_of_large: Any = np.int64(0)
                 if k == 42:
                     row_of_large = cells.poly_cell_indices[cells.poly_cell_indptr[cell] + f]
                     lo = cells.poly_face_indptr[row_of_large]
@@ -111,12 +113,48 @@ def list_faces(
                     n = _add(ring, n, cells.indices[row + f])
                     n = _add(ring, n, cells.indices[row + f + 1 if f + 1 < n_faces else row])
                 else:
+                    if cells.face_size[k, f] == 4:
+                        a = _write_ring(cells.indices, row, cells.face_corner[k, f], s + f, face)
+                        if a >= 0:
+                            count[r, a] += 1
+                            continue
                     for i in range(cells.face_size[k, f]):
                         n = _add(ring, n, cells.indices[row + cells.face_corner[k, f, i]])
                 if n < least:
                     face[s + f, 0] = -2
                 else:
                     count[r, _write_face(ring, n, row_of_large, s + f, face)] += 1
+
+
+@jit
+def _write_ring(indices: Array, row: int, corner: Array, s: int, face: Int64Array) -> Any:
+    """Write the words of a face with four distinct corners; return the smallest, or -1.
+
+    What `_write_face` does, in less than half of its time.
+    """
+    p, q = np.int64(indices[row + corner[0]]), np.int64(indices[row + corner[1]])
+    o, r = np.int64(indices[row + corner[2]]), np.int64(indices[row + corner[3]])
+    a, b, c, across = p, q, r, o
+    if q < a:
+        a, b, c, across = q, o, p, r
+    if o < a:
+        a, b, c, across = o, r, q, p
+    if r < a:
+        a, b, c, across = r, p, o, q
+    if b > c:
+        b, c = c, b
+    turn = np.int64(0)
+    if across > c:
+        d, turn = across, np.int64(2)
+    elif across > b:
+        c, d, turn = across, c, np.int64(1)
+    else:
+        b, c, d = across, b, c
+    if not a < b < c < d:
+        return np.int64(-1)
+    face[s, 0] = a << 32 | b
+    face[s, 1] = c << 32 | d << 2 | turn
+    return a
 
 
 @jit
@@ -130,7 +168,7 @@ def _add(ring: Int64Array, n: int, point: int) -> int:
 
 
 @jit
-def _write_face(ring: Int64Array, n: int, row_of_large: int, s: int, face: Int64Array) -> int:
+def _write_face(ring: Int64Array, n: int, row_of_large: int, s: int, face: Int64Array) -> Any:
     """Write the words of slot s; return the smallest corner."""
     none = np.int64(1 << 40)
     a, b, c, d = none, none, none, none
