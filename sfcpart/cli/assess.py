@@ -12,7 +12,7 @@ from sfcpart.cli.options import (
     mesh_argument,
     network_options,
     output_options,
-    set_threads,
+    prepare_process,
     step_model,
     weight_option,
 )
@@ -60,7 +60,7 @@ def command(mesh: str, parts: str | None, **given: Any) -> None:
     """Read mesh and parts, measure, print."""
     if (parts is None) == (given["field"] is None):
         raise click.UsageError("which parts? give either --field NAME or a file or folder of parts")
-    set_threads(given["threads"])
+    prepare_process(given["threads"])
     model = step_model(given)
     second, most = given["limit"] or (None, None)
     from sfcpart import api

@@ -11,7 +11,7 @@ from sfcpart.cli.options import (
     mesh_argument,
     network_options,
     output_options,
-    set_threads,
+    prepare_process,
     step_model,
 )
 from sfcpart.cli.wishes import METHOD, MethodOption, check_part_count, wish_options
@@ -80,7 +80,7 @@ COLUMNS = {
 def command(mesh: str, **given: Any) -> None:
     """Read, split in each way, print."""
     check_part_count(given)
-    set_threads(given["threads"])
+    prepare_process(given["threads"])
     model = step_model(given)
     from sfcpart import api
     from sfcpart.cli.console import Stages, print_json

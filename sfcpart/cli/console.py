@@ -118,9 +118,13 @@ def _is_compiled() -> bool:
     import sfcpart
 
     kernels = Path(sfcpart.__file__).parent / "kernels"
-    compiled = [path.stat().st_mtime for path in _compiled_files(kernels)]
-    sources = [path.stat().st_mtime for path in kernels.glob("*.py")]
-    return bool(compiled) and max(compiled) >= max(sources)
+    return any(_is_fresh(index, kernels) for index in _compiled_files(kernels))
+
+
+def _is_fresh(index: Path, kernels: Path) -> bool:
+    """Tell whether an index is newer than its kernel: an update leaves old ones behind."""
+    source = kernels / f"{index.name.split('.')[0]}.py"
+    return source.is_file() and index.stat().st_mtime >= source.stat().st_mtime
 
 
 def _compiled_files(kernels: Path) -> list[Path]:

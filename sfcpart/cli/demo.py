@@ -6,7 +6,7 @@ from typing import Any
 
 import click
 
-from sfcpart.cli.options import output_options, set_threads
+from sfcpart.cli.options import output_options, prepare_process
 
 __all__ = ["command"]
 
@@ -54,7 +54,7 @@ COLUMNS, ROWS, ACROSS = 100, 20, 20
 @output_options
 def command(n_parts: int, output: str, threads: int | None, **how: Any) -> None:
     """Make the mesh, split it, measure, write, print."""
-    set_threads(threads)
+    prepare_process(threads)
     from sfcpart import api
     from sfcpart.cli.console import Stages, print_json
     from sfcpart.cli.figures import headline, print_assessment

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from sfcpart.cli.options import mesh_argument, output_options, set_threads
+from sfcpart.cli.options import mesh_argument, output_options, prepare_process
 
 if TYPE_CHECKING:
     from sfcpart.assess.survey import FieldNote, Survey
@@ -42,7 +42,7 @@ def command(
     mesh: str, merge_points: float | None, threads: int | None, as_json: bool, quiet: bool
 ) -> None:
     """Read, look over, print."""
-    set_threads(threads)
+    prepare_process(threads)
     from sfcpart import api
     from sfcpart.cli.console import Stages, print_json
 

@@ -24,7 +24,7 @@ __all__ = [
     "mesh_argument",
     "network_options",
     "output_options",
-    "set_threads",
+    "prepare_process",
     "step_model",
     "weight_option",
 ]
@@ -218,7 +218,10 @@ def step_model(given: dict[str, Any]) -> StepModel:
     return StepModel.from_preset(given.pop("network"), **{name: given.pop(name) for name in names})
 
 
-def set_threads(count: int | None) -> None:
-    """Fix the number of threads of this process."""
-    if count is not None:
-        os.environ["SFCPART_THREADS"] = str(count)
+def prepare_process(threads: int | None) -> None:
+    """Fix the number of threads, and load the compiler before anything else needs it."""
+    if threads is not None:
+        os.environ["SFCPART_THREADS"] = str(threads)
+    from sfcpart.kernels._jit import load_for_us_alone
+
+    load_for_us_alone()

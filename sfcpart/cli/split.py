@@ -10,7 +10,7 @@ from sfcpart.cli.options import (
     mesh_argument,
     network_options,
     output_options,
-    set_threads,
+    prepare_process,
     step_model,
 )
 from sfcpart.cli.wishes import METHOD, MethodOption, check_part_count, wish_options
@@ -85,7 +85,7 @@ def command(**given: Any) -> None:
     quiet, as_json = given.pop("quiet"), given.pop("as_json")
     check_part_count(given)
     _check_output(given)
-    set_threads(given.pop("threads"))
+    prepare_process(given.pop("threads"))
     model = step_model(given)
     from sfcpart.cli.split_job import SplitJob
 
