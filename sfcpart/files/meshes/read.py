@@ -101,8 +101,8 @@ def read_mesh(path: str | PathLike[str]) -> Mesh:
     Parameters
     ----------
     path : path
-        VTKHDF, VTU, legacy VTK, SU2, faces in HDF5 (`sfcpart.files.meshes.faces_file`), or one of the
-        formats meshio reads. Content that gives itself away wins over the extension.
+        VTKHDF, VTU, legacy VTK, SU2, faces in HDF5 (`sfcpart.files.meshes.faces_file`), or one of
+        the formats meshio reads. Content that gives itself away wins over the extension.
 
     Returns
     -------

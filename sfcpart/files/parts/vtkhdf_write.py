@@ -3,7 +3,8 @@
 What: every part is one partition of the open VTKHDF standard: its points, its owned cells in
 curve order, then its halo cells marked in `vtkGhostType`; `GlobalCellIds` and `GlobalPointIds`
 number the unsplit mesh; the cell field `part` names the owner of each cell. Polyhedra are kept.
-How: block by block (`sfcpart.files.parts.pieces`) into contiguous datasets, so memory stays bounded.
+How: block by block (`sfcpart.files.parts.pieces`) into contiguous datasets, so that memory stays
+bounded.
 The group `/sfcpart` (`sfcpart.files.parts.lists`) lies outside `/VTKHDF`, where readers ignore it.
 Source: VTK file format documentation, "VTKHDF" (versions 2.2, 2.5 polyhedra, 2.6 attributes).
 """
