@@ -5,9 +5,7 @@ The public names are loaded on first use: `import sfcpart` starts no MPI and com
 
 from __future__ import annotations
 
-import sys
 from importlib import import_module
-from types import ModuleType
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -72,19 +70,3 @@ def __getattr__(name: str) -> Any:
 def __dir__() -> list[str]:
     """List the public names."""
     return sorted(__all__)
-
-
-class _Package(ModuleType):
-    """The package itself: a subpackage never hides the public function of its name.
-
-    Importing `sfcpart.assess.measure` makes Python set `sfcpart.assess` to the subpackage, after
-    which `sfcpart.assess(mesh, partition)` would call a module.
-    """
-
-    def __setattr__(self, name: str, value: object) -> None:
-        """Set an attribute, unless it is a module under a public name."""
-        if name not in _PUBLIC or not isinstance(value, ModuleType):
-            super().__setattr__(name, value)
-
-
-sys.modules[__name__].__class__ = _Package

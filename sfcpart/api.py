@@ -25,11 +25,11 @@ from sfcpart.partition import Partition
 from sfcpart.plan import Weights, part_speeds, plan_problem, weights_of
 
 if TYPE_CHECKING:
-    from sfcpart.assess import Assessment, StepModel
-    from sfcpart.assess.survey import Survey
     from sfcpart.comm.base import Comm
     from sfcpart.comparison import Comparison
     from sfcpart.halo import Across
+    from sfcpart.measure import Assessment, StepModel
+    from sfcpart.measure.survey import Survey
 
 __all__ = [
     "Mesh",
@@ -168,7 +168,7 @@ def assess(
     -------
     Assessment
         Balance, cut, halo, pieces, shapes, bounds and predicted step time; see
-        `sfcpart.assess.columns` for every figure.
+        `sfcpart.measure.columns` for every figure.
 
     Raises
     ------
@@ -183,7 +183,7 @@ def assess(
     >>> sfcpart.assess(mesh, [0, 1]).total["cut_faces"]
     1
     """
-    from sfcpart.assess import assess_partition
+    from sfcpart.measure import assess_partition
 
     partition = _as_partition(partition)
     return assess_partition(
@@ -286,7 +286,7 @@ def inspect(mesh: Mesh) -> Survey:
     >>> sfcpart.inspect(sfcpart.Mesh.from_centers([[0.0, 0.0], [1.0, 0.0]])).n_cells
     2
     """
-    from sfcpart.assess.survey import survey_mesh
+    from sfcpart.measure.survey import survey_mesh
 
     return survey_mesh(mesh, graph_of(mesh))
 

@@ -8,16 +8,16 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from sfcpart.assess.columns import TOTAL_COLUMNS, Column
 from sfcpart.errors import InputError, SfcpartError
 from sfcpart.graph import CellGraph
+from sfcpart.measure.columns import TOTAL_COLUMNS, Column
 from sfcpart.meter import metered
 from sfcpart.methods.problem import Problem
 from sfcpart.methods.registry import METHODS
 from sfcpart.partition import Partition
 
 if TYPE_CHECKING:
-    from sfcpart.assess import Assessment
+    from sfcpart.measure import Assessment
 
 __all__ = ["COMPARED_COLUMNS", "ComparedSplit", "Comparison", "compare_methods"]
 

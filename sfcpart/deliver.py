@@ -18,10 +18,10 @@ from sfcpart.files.parts.folder import check_output_folder, output_folder
 from sfcpart.files.parts.tables import write_cell_part, write_part_table, write_summary
 
 if TYPE_CHECKING:
-    from sfcpart.assess import Assessment
     from sfcpart.dtypes import Array
     from sfcpart.graph import CellGraph
     from sfcpart.halo import Across, Halo
+    from sfcpart.measure import Assessment
     from sfcpart.mesh.mesh import Mesh
     from sfcpart.partition import Partition
 

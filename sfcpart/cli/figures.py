@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 from sfcpart.cli.console import print_pairs, print_table
 
 if TYPE_CHECKING:
-    from sfcpart.assess.assessment import Assessment
+    from sfcpart.measure.assessment import Assessment
 
 __all__ = ["headline", "number", "percent", "print_assessment"]
 

@@ -23,8 +23,8 @@ def command(names: tuple[str, ...], as_json: bool) -> None:
     """Print the table of figures, or some rows of it."""
     from dataclasses import asdict
 
-    from sfcpart.assess.columns import PART_COLUMNS, TOTAL_COLUMNS
     from sfcpart.cli.console import print_json, print_pairs
+    from sfcpart.measure.columns import PART_COLUMNS, TOTAL_COLUMNS
 
     known = {column.name for column in (*PART_COLUMNS, *TOTAL_COLUMNS)}
     unknown = [name for name in names if name not in known]

@@ -9,7 +9,7 @@ import click
 from sfcpart.cli.options import mesh_argument, output_options, prepare_process
 
 if TYPE_CHECKING:
-    from sfcpart.assess.survey import FieldNote, Survey
+    from sfcpart.measure.survey import FieldNote, Survey
 
 __all__ = ["command"]
 

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any, TypeVar
 import click
 
 if TYPE_CHECKING:
-    from sfcpart.assess.step_model import StepModel
+    from sfcpart.measure.step_model import StepModel
 
     ParamType = click.ParamType[Any]
 else:
@@ -132,7 +132,7 @@ LEVELS, SPEEDS, LIMIT, PAIR = Levels(), Speeds(), Limit(), Pair()
 
 def _networks() -> list[str]:
     """Load the names of the networks."""
-    from sfcpart.assess.step_model import NETWORKS
+    from sfcpart.measure.step_model import NETWORKS
 
     return list(NETWORKS)
 
@@ -212,7 +212,7 @@ def network_options(function: Function) -> Function:
 
 def step_model(given: dict[str, Any]) -> StepModel:
     """Take the network options out of the given ones and make a model of them."""
-    from sfcpart.assess.step_model import StepModel
+    from sfcpart.measure.step_model import StepModel
 
     names = ("latency", "bandwidth", "cell_seconds", "bytes_per_halo_cell", "exchanges")
     return StepModel.from_preset(given.pop("network"), **{name: given.pop(name) for name in names})

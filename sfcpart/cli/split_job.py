@@ -10,8 +10,8 @@ from sfcpart.cli.figures import headline, print_assessment
 from sfcpart.cli.wishes import load_wish, read_mesh, shape_wish
 
 if TYPE_CHECKING:
-    from sfcpart.assess.assessment import Assessment
-    from sfcpart.assess.step_model import StepModel
+    from sfcpart.measure.assessment import Assessment
+    from sfcpart.measure.step_model import StepModel
     from sfcpart.mesh.mesh import Mesh
     from sfcpart.partition import Partition
 

@@ -1,9 +1,9 @@
-"""The page of figures, made from `sfcpart.assess.columns`, so that it cannot lag behind."""
+"""The page of figures, made from `sfcpart.measure.columns`, so that it cannot lag behind."""
 
 from __future__ import annotations
 
-from sfcpart.assess import LEAVES_OUT, NETWORKS, PART_COLUMNS, TOTAL_COLUMNS, StepModel
-from sfcpart.assess.columns import markdown_table
+from sfcpart.measure import LEAVES_OUT, NETWORKS, PART_COLUMNS, TOTAL_COLUMNS, StepModel
+from sfcpart.measure.columns import markdown_table
 
 HEAD = """# The figures of a partition
 

@@ -89,7 +89,7 @@ def test_words_are_completed(process):
 
 
 def test_methods_and_networks_named_in_help_exist(sfcpart):
-    from sfcpart.assess.step_model import NETWORKS
+    from sfcpart.measure.step_model import NETWORKS
     from sfcpart.methods.registry import METHODS
 
     for verb in ("split", "compare"):

@@ -10,8 +10,9 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from sfcpart.assess import assess_partition
-from sfcpart.assess.bounds import (
+from sfcpart.curve import curve_order
+from sfcpart.measure import assess_partition
+from sfcpart.measure.bounds import (
     bisection_width,
     least_cut_measure,
     least_imbalance,
@@ -22,7 +23,6 @@ from sfcpart.assess.bounds import (
     least_surface,
     least_surface_measure,
 )
-from sfcpart.curve import curve_order
 from sfcpart.partition import Partition
 from tests.oracles.lattice_cuts import (
     least_cuts_of_all_splits,

@@ -7,8 +7,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 from hypothesis.extra import numpy as hnp
 
-from sfcpart.assess import PART_COLUMNS, assess_partition
 from sfcpart.halo import build_halo
+from sfcpart.measure import PART_COLUMNS, assess_partition
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
 from tests.oracles.figures import figures_by_sets

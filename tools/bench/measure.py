@@ -1,6 +1,6 @@
 """Time measuring a partition against one sort of the mesh's face keys.
 
-    python tools/bench/assess.py [--side 55] [--parts 64] [--repeats 5]
+    python tools/bench/measure.py [--side 55] [--parts 64] [--repeats 5]
 
 The mesh is a jittered lattice of 6 side^3 tets (10^6 by default) in random cell order, the worst
 case for memory; the partition is a grid of boxes. The reference is `np.sort` of as many int64 as
@@ -17,9 +17,9 @@ from collections.abc import Callable
 
 import numpy as np
 
-from sfcpart.assess import assess_partition
 from sfcpart.graph import cell_graph
 from sfcpart.kernels.threads import n_threads
+from sfcpart.measure import assess_partition
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.mesh.shapes import jittered_tets
 from sfcpart.partition import Partition

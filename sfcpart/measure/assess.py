@@ -1,7 +1,7 @@
 """Measure a partition from anywhere: balance, cut, halo, pieces, shape, bounds, predicted time.
 
 Stages: gate -> sums over cells (`sums`) -> figures by part and in total (`figures`) -> bounds.
-10^6 tets in 64 parts take about 0.07 s on two cores (tools/bench/assess.py); beside mesh and graph
+10^6 tets in 64 parts take about 0.07 s on two cores (tools/bench/measure.py); beside mesh and graph
 25 bytes a cell.
 """
 
@@ -12,16 +12,16 @@ from types import MappingProxyType
 import numpy as np
 from numpy.typing import ArrayLike
 
-from sfcpart.assess.assessment import Assessment, Number
-from sfcpart.assess.columns import TOTAL_COLUMNS
-from sfcpart.assess.cut_figures import cut_figures
-from sfcpart.assess.figures import part_figures, total_figures
-from sfcpart.assess.gate import Given, cast_graph, check_given
-from sfcpart.assess.shape import flat_axes, part_stretch
-from sfcpart.assess.step_model import StepModel, StepTime
-from sfcpart.assess.sums import CellSums, sum_cells
 from sfcpart.dtypes import BoolArray, FloatArray, Int32Array
 from sfcpart.graph import CellGraph
+from sfcpart.measure.assessment import Assessment, Number
+from sfcpart.measure.columns import TOTAL_COLUMNS
+from sfcpart.measure.cut_figures import cut_figures
+from sfcpart.measure.figures import part_figures, total_figures
+from sfcpart.measure.gate import Given, cast_graph, check_given
+from sfcpart.measure.shape import flat_axes, part_stretch
+from sfcpart.measure.step_model import StepModel, StepTime
+from sfcpart.measure.sums import CellSums, sum_cells
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
 
@@ -63,7 +63,7 @@ def assess_partition(
     Returns
     -------
     Assessment
-        `sfcpart.assess.columns` says what each figure means. A partition changes the order in
+        `sfcpart.measure.columns` says what each figure means. A partition changes the order in
         which a solver sums; none of the figures says whether a simulation is right.
 
     Raises

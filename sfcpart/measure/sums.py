@@ -11,9 +11,6 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from sfcpart.assess.gate import Given, frozen
-from sfcpart.assess.pairs import PartPairs
-from sfcpart.assess.shape import has_measures
 from sfcpart.dtypes import FloatArray, Int32Array, Int64Array
 from sfcpart.graph import CellGraph
 from sfcpart.kernels.measure import (
@@ -24,6 +21,9 @@ from sfcpart.kernels.measure import (
     sum_parts,
 )
 from sfcpart.kernels.threads import ranges, run_ranges
+from sfcpart.measure.gate import Given, frozen
+from sfcpart.measure.pairs import PartPairs
+from sfcpart.measure.shape import has_measures
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
 

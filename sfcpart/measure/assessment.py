@@ -7,10 +7,10 @@ from dataclasses import dataclass
 from math import isfinite
 from typing import TypeAlias
 
-from sfcpart.assess.columns import PART_COLUMNS, TOTAL_COLUMNS, Column
-from sfcpart.assess.pairs import PartPairs
-from sfcpart.assess.step_model import StepModel
 from sfcpart.dtypes import Array, Int32Array
+from sfcpart.measure.columns import PART_COLUMNS, TOTAL_COLUMNS, Column
+from sfcpart.measure.pairs import PartPairs
+from sfcpart.measure.step_model import StepModel
 
 __all__ = ["Assessment", "Number"]
 

@@ -11,11 +11,11 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from sfcpart.assess.gate import frozen
 from sfcpart.dtypes import FloatArray, Int64Array
 from sfcpart.graph import CellGraph
 from sfcpart.kernels.measure import count_off_lattice
 from sfcpart.kernels.threads import run_ranges
+from sfcpart.measure.gate import frozen
 
 __all__ = ["Lattice", "find_lattice"]
 

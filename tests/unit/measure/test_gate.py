@@ -5,8 +5,8 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from sfcpart.assess import assess_partition
 from sfcpart.errors import InputError, PartitionError, WeightError
+from sfcpart.measure import assess_partition
 from sfcpart.partition import Partition
 from tests.oracles.lattices import box, lattice_graph, lattice_mesh
 

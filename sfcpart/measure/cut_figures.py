@@ -12,12 +12,12 @@ from collections.abc import Mapping
 
 import numpy as np
 
-from sfcpart.assess.assessment import Number
-from sfcpart.assess.bounds import least_cut_measure, least_lattice_cut
-from sfcpart.assess.lattice import Lattice, find_lattice
-from sfcpart.assess.shape import flat_axes, has_measures
 from sfcpart.dtypes import Array
 from sfcpart.graph import CellGraph
+from sfcpart.measure.assessment import Number
+from sfcpart.measure.bounds import least_cut_measure, least_lattice_cut
+from sfcpart.measure.lattice import Lattice, find_lattice
+from sfcpart.measure.shape import flat_axes, has_measures
 from sfcpart.mesh.mesh import Mesh
 
 __all__ = ["cut_figures"]

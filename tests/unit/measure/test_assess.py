@@ -10,7 +10,7 @@ import pytest
 from scipy.sparse import csr_array
 from scipy.sparse.csgraph import connected_components
 
-from sfcpart.assess import PART_COLUMNS, TOTAL_COLUMNS, StepModel, assess_partition
+from sfcpart.measure import PART_COLUMNS, TOTAL_COLUMNS, StepModel, assess_partition
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
 from tests.oracles.figures import figures_by_sets

@@ -23,7 +23,7 @@ from sfcpart.dtypes import FloatArray
 from sfcpart.errors import InputError
 
 if TYPE_CHECKING:
-    from sfcpart.assess.pairs import PartPairs
+    from sfcpart.measure.pairs import PartPairs
 
 __all__ = ["DEFAULT_NETWORK", "LEAVES_OUT", "NETWORKS", "Network", "StepModel", "StepTime"]
 

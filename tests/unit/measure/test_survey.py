@@ -7,9 +7,9 @@ import json
 import numpy as np
 import pytest
 
-from sfcpart.assess.survey import split_memory, survey_mesh
 from sfcpart.errors import MeshError
 from sfcpart.graph import cell_graph
+from sfcpart.measure.survey import split_memory, survey_mesh
 from sfcpart.mesh.check import Offenders
 from sfcpart.mesh.mesh import BoundaryGroup, Mesh
 from tests.strategies import DEGENERATE, grid

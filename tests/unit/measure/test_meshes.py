@@ -9,10 +9,10 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from sfcpart.assess import assess_partition
-from sfcpart.assess.bounds import least_cut_measure
-from sfcpart.assess.lattice import find_lattice
 from sfcpart.graph import cell_graph
+from sfcpart.measure import assess_partition
+from sfcpart.measure.bounds import least_cut_measure
+from sfcpart.measure.lattice import find_lattice
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.mesh.shapes import jittered_tets, lattice
 from sfcpart.partition import Partition

@@ -9,13 +9,13 @@ from collections.abc import Mapping
 
 import numpy as np
 
-from sfcpart.assess.assessment import Number
-from sfcpart.assess.bounds import least_imbalance, least_surface_measure
-from sfcpart.assess.columns import PART_COLUMNS
-from sfcpart.assess.gate import Given
-from sfcpart.assess.step_model import StepTime
-from sfcpart.assess.sums import CellSums, FaceSums
 from sfcpart.dtypes import Array, FloatArray, Int64Array
+from sfcpart.measure.assessment import Number
+from sfcpart.measure.bounds import least_imbalance, least_surface_measure
+from sfcpart.measure.columns import PART_COLUMNS
+from sfcpart.measure.gate import Given
+from sfcpart.measure.step_model import StepTime
+from sfcpart.measure.sums import CellSums, FaceSums
 
 __all__ = ["part_figures", "total_figures"]
 

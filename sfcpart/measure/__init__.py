@@ -10,11 +10,11 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from sfcpart.assess.assessment import Assessment
-    from sfcpart.assess.columns import PART_COLUMNS, TOTAL_COLUMNS, Column
-    from sfcpart.assess.measure import assess_partition
-    from sfcpart.assess.pairs import PartPairs
-    from sfcpart.assess.step_model import DEFAULT_NETWORK, LEAVES_OUT, NETWORKS, Network, StepModel
+    from sfcpart.measure.assess import assess_partition
+    from sfcpart.measure.assessment import Assessment
+    from sfcpart.measure.columns import PART_COLUMNS, TOTAL_COLUMNS, Column
+    from sfcpart.measure.pairs import PartPairs
+    from sfcpart.measure.step_model import DEFAULT_NETWORK, LEAVES_OUT, NETWORKS, Network, StepModel
 
 __all__ = [
     "DEFAULT_NETWORK",
@@ -36,12 +36,12 @@ _HOME = {
     "PART_COLUMNS": "columns",
     "TOTAL_COLUMNS": "columns",
     "PartPairs": "pairs",
-    "assess_partition": "measure",
+    "assess_partition": "assess",
 }
 
 
 def __getattr__(name: str) -> Any:
     """Import a public name on first use."""
     if name not in __all__:
-        raise AttributeError(f"module 'sfcpart.assess' has no attribute {name!r}")
-    return getattr(import_module(f"sfcpart.assess.{_HOME.get(name, 'step_model')}"), name)
+        raise AttributeError(f"module 'sfcpart.measure' has no attribute {name!r}")
+    return getattr(import_module(f"sfcpart.measure.{_HOME.get(name, 'step_model')}"), name)

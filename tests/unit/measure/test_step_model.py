@@ -5,8 +5,8 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from sfcpart.assess import DEFAULT_NETWORK, LEAVES_OUT, NETWORKS, Network, PartPairs, StepModel
 from sfcpart.errors import InputError
+from sfcpart.measure import DEFAULT_NETWORK, LEAVES_OUT, NETWORKS, Network, PartPairs, StepModel
 
 PAIRS = PartPairs(
     part=np.array([0, 1, 1, 2], np.int32),

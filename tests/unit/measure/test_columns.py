@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from sfcpart.assess import PART_COLUMNS, TOTAL_COLUMNS
 from sfcpart.manual import read_page
+from sfcpart.measure import PART_COLUMNS, TOTAL_COLUMNS
 
 
 def test_the_manual_names_every_figure_and_its_unit():
