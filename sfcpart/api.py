@@ -30,6 +30,7 @@ if TYPE_CHECKING:
     from sfcpart.halo import Across
     from sfcpart.measure import Assessment, StepModel
     from sfcpart.measure.survey import Survey
+    from sfcpart.weights import FaceWeight
 
 __all__ = [
     "Mesh",
@@ -63,6 +64,7 @@ def split(
     together: ArrayLike | str | Sequence[str] | None = None,
     pairs: ArrayLike | None = None,
     periodic: Sequence[tuple[str, str]] = (),
+    face_weight: FaceWeight = "count",
     seed: int = 0,
     comm: Comm | None = None,
 ) -> Partition:
@@ -94,6 +96,8 @@ def split(
         Cells that stay together two by two.
     periodic : sequence of (str, str)
         Pairs of boundary groups whose facing cells stay together.
+    face_weight : {"count", "measure"}
+        What methods on the cell graph keep small: the number of cut faces, or their total measure.
     seed : int
         The only source of randomness of the methods that use any.
     comm : Comm, optional
@@ -137,6 +141,7 @@ def split(
         together=together,
         pairs=pairs,
         periodic=periodic,
+        face_weight=face_weight,
         seed=seed,
         comm=_alone() if comm is None else comm,
     )
@@ -215,6 +220,7 @@ def compare(
     together: ArrayLike | str | Sequence[str] | None = None,
     pairs: ArrayLike | None = None,
     periodic: Sequence[tuple[str, str]] = (),
+    face_weight: FaceWeight = "count",
     seed: int = 0,
 ) -> Comparison:
     """Split one mesh in several ways and measure all alike.
@@ -231,7 +237,8 @@ def compare(
     steps : int
         Length of the run for which a total time is predicted, the time to split included.
     step_model : StepModel, optional
-    tolerance, weights, speeds, limit_weights, limits, levels, together, pairs, periodic, seed
+    tolerance, weights, speeds, limit_weights, limits, levels, together, pairs, periodic,
+    face_weight, seed
         As for `split`, the same for all methods.
 
     Returns
@@ -264,6 +271,7 @@ def compare(
         together=together,
         pairs=pairs,
         periodic=periodic,
+        face_weight=face_weight,
         seed=seed,
         comm=_alone(),
         **wish,

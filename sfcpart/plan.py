@@ -15,6 +15,8 @@ from sfcpart.graph import cell_graph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.methods.problem import Problem
 from sfcpart.weights import (
+    FACE_WEIGHTS,
+    FaceWeight,
     cell_weights,
     groups_from_boundaries,
     groups_from_field,
@@ -46,6 +48,7 @@ def plan_problem(
     together: ArrayLike | str | Sequence[str] | None,
     pairs: ArrayLike | None,
     periodic: Sequence[tuple[str, str]],
+    face_weight: FaceWeight,
     seed: int,
     comm: Comm,
 ) -> Problem:
@@ -69,6 +72,7 @@ def plan_problem(
         part_limit=part_limit,
         limit_unit=limit_unit,
         group=_groups(mesh, together, pairs, periodic),
+        face_weight=_face_weight(face_weight),
         seed=_whole(seed, "seed", least=0),
     )
 
@@ -147,6 +151,13 @@ def _tolerance(tolerance: float) -> float:
     ):
         raise InputError(f"tolerance is {tolerance!r}; wanted a number >= 0, such as 0.03 for 3 %")
     return float(tolerance)
+
+
+def _face_weight(face_weight: FaceWeight) -> FaceWeight:
+    """Return a known way to weigh faces."""
+    if face_weight not in FACE_WEIGHTS:
+        raise InputError(f"face_weight is {face_weight!r}; wanted one of {', '.join(FACE_WEIGHTS)}")
+    return face_weight
 
 
 def _levels(levels: Sequence[int] | None, n_parts: int) -> tuple[int, ...]:

@@ -105,6 +105,13 @@ def wish_options(function: Function) -> Function:
             help="Never part the cells on either side of two boundary groups.",
         ),
         click.option(
+            "--face-weight",
+            type=click.Choice(["count", "measure"]),
+            default="count",
+            show_default=True,
+            help="What graph methods keep small: how many faces are cut, or how much they measure.",
+        ),
+        click.option(
             "--seed", type=int, default=0, show_default=True, help="Start of random choices."
         ),
         click.option(
@@ -171,5 +178,6 @@ def shape_wish(given: dict[str, Any]) -> dict[str, Any]:
         "together": list(given["together"]) or None,
         "pairs": read_pairs(given["pairs"]),
         "periodic": given["periodic"],
+        "face_weight": given["face_weight"],
         "seed": given["seed"],
     }

@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 from sfcpart.comm.base import Comm
 from sfcpart.dtypes import FloatArray, Int64Array
 from sfcpart.graph import CellGraph
+from sfcpart.weights import FaceWeight
 
 __all__ = ["Problem"]
 
@@ -37,6 +38,9 @@ class Problem:
         What the integer 1 of these two stands for; only messages need it.
     group : (n_local,) int64 or None
         Cells with the same non-negative number stay together; -1 = free.
+    face_weight : {"count", "measure"}
+        What a method that cuts the cell graph lets a cut face cost, as integers:
+        `face_weights(graph.data, by=problem.face_weight)` of `sfcpart.weights`.
     seed : int
         The only source of randomness, hashed with the gid where used.
     graph : callable
@@ -58,4 +62,5 @@ class Problem:
     part_limit: Int64Array | None = None
     limit_unit: float = 1.0
     group: Int64Array | None = None
+    face_weight: FaceWeight = "count"
     seed: int = 0

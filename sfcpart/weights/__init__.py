@@ -2,12 +2,14 @@
 
 - `quantise`: floats to int64, once, with proved headroom, so that sums are exact;
 - `cell_weights`: weights of the cells of a mesh from a specification (`WeightSpec`);
+- `face_weights`: what it costs to cut each face;
 - `groups_from_field`, `groups_from_pairs`, `groups_from_boundaries`, `join_groups`: cells that
   stay together.
 """
 
 from __future__ import annotations
 
+from sfcpart.weights.faces import FACE_WEIGHTS, FaceWeight, face_weights
 from sfcpart.weights.groups import (
     groups_from_boundaries,
     groups_from_field,
@@ -18,9 +20,12 @@ from sfcpart.weights.quantise import Quantised, quantise, quantise_limits
 from sfcpart.weights.spec import WeightSpec, cell_weights, parse_weights
 
 __all__ = [
+    "FACE_WEIGHTS",
+    "FaceWeight",
     "Quantised",
     "WeightSpec",
     "cell_weights",
+    "face_weights",
     "groups_from_boundaries",
     "groups_from_field",
     "groups_from_pairs",
