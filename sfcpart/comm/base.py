@@ -13,13 +13,25 @@ whoever writes to the result has given the argument away.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from typing import Any, Literal, Protocol
+from typing import Any, Literal, Protocol, TypeAlias
 
 from sfcpart.dtypes import Array
 
-__all__ = ["Comm", "Reduction"]
+__all__ = ["Comm", "Link", "Reduction", "Stretch"]
 
 Reduction = Literal["sum", "min", "max"]
+Stretch: TypeAlias = tuple[int, int, int]
+"""A rank with the first row of a buffer that goes to it or comes from it, and the row after."""
+
+
+class Link(Protocol):
+    """One exchange with a few ranks, set up once and made any number of times (`Comm.link`)."""
+
+    def start(self) -> None:
+        """Send what the buffer `sent` holds now; leave both buffers alone until `finish`."""
+
+    def finish(self) -> None:
+        """Return once `received` holds what came and `sent` may be written to again."""
 
 
 class Comm(Protocol):
@@ -57,6 +69,24 @@ class Comm(Protocol):
         """Send `arrays[r]` to rank r; return what each rank sent here, in rank order.
 
         Lengths may differ; dtype and trailing shape may not.
+        """
+
+    def link(
+        self,
+        sent: Array,
+        received: Array,
+        *,
+        targets: Sequence[Stretch],
+        sources: Sequence[Stretch],
+    ) -> Link:
+        """Set up an exchange of rows between two C-contiguous buffers of one form, by neighbours.
+
+        Row lo to hi - 1 of `sent` goes to each (rank, lo, hi) of `targets`, and what comes from
+        each of `sources` is put into those rows of `received`; at most one stretch a rank and
+        side, and both ends must mean the same number of rows. Under MPI nothing is sent to
+        others, setting up is local, and `finish` raises RankError where fewer or more bytes come.
+        All ranks start and finish their links in the same order, also those without neighbours;
+        several links may be on their way at once, and collectives may be called meanwhile.
         """
 
     def bcast_object(self, value: Any, root: int = 0) -> Any:

@@ -7,11 +7,14 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from sfcpart.comm.base import Stretch
 from sfcpart.dtypes import Array
 from sfcpart.errors import InputError, RankError
 
 __all__ = [
+    "check_buffers",
     "check_root",
+    "check_stretches",
     "comparable",
     "movable",
     "parcel",
@@ -101,6 +104,37 @@ def check_root(root: int, size: int) -> None:
     """Refuse a root that is no rank."""
     if not 0 <= root < size:
         raise InputError(f"root is {root}; ranks go from 0 to {size - 1}")
+
+
+def check_buffers(sent: Array, received: Array) -> None:
+    """Refuse the buffers of a link that cannot be sent from or received into."""
+    for array in (sent, received):
+        movable(array)
+        if not array.flags.c_contiguous or not array.dtype.isnative:
+            raise InputError(
+                f"a buffer of {row_form(array)} is not C-contiguous in native byte order; "
+                "wanted one that rows can be sent from as they are"
+            )
+    if not received.flags.writeable:
+        raise InputError("the buffer to receive into is read-only; wanted a writable one")
+    if row_form(sent) != row_form(received):
+        raise InputError(
+            f"the buffers hold {row_form(sent)} and {row_form(received)}; "
+            "wanted one dtype and trailing shape"
+        )
+
+
+def check_stretches(stretches: Sequence[Stretch], n_rows: int, size: int) -> None:
+    """Refuse stretches of no rank, of rows that are not there, or two for one rank."""
+    for rank, lo, hi in stretches:
+        if not 0 <= rank < size:
+            raise InputError(f"a stretch for rank {rank}; ranks go from 0 to {size - 1}")
+        if not 0 <= lo <= hi <= n_rows:
+            raise InputError(f"rows {lo} to {hi} for rank {rank} of a buffer of {n_rows} rows")
+    ranks = [rank for rank, _, _ in stretches]
+    if len(set(ranks)) < len(ranks):
+        twice = next(rank for place, rank in enumerate(ranks) if rank in ranks[:place])
+        raise InputError(f"two stretches for rank {twice}; wanted one")
 
 
 def parcel(error: BaseException, rank: int) -> bytes:

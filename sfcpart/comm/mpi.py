@@ -10,18 +10,22 @@ left out: no send buffer is put together, and a sparse exchange costs what it se
 
 from __future__ import annotations
 
+import weakref
 import zlib
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
+from functools import lru_cache
 from itertools import pairwise
 from typing import Any
 
 import numpy as np
 from mpi4py import MPI
 
-from sfcpart.comm.base import Reduction
+from sfcpart.comm.base import Reduction, Stretch
 from sfcpart.comm.gate import (
+    check_buffers,
     check_root,
+    check_stretches,
     movable,
     parcel,
     raise_parcel,
@@ -32,11 +36,12 @@ from sfcpart.comm.gate import (
     summable,
 )
 from sfcpart.dtypes import Array, Int64Array
-from sfcpart.errors import RankError
+from sfcpart.errors import InputError, RankError
 
-__all__ = ["MpiComm"]
+__all__ = ["MpiComm", "adopted"]
 
 _TAG = 1
+_LINK_TAG = 2
 _OPERATION = {"sum": MPI.SUM, "min": MPI.MIN, "max": MPI.MAX}
 
 
@@ -147,6 +152,20 @@ class MpiComm:
             ]
             MPI.Request.Waitall(requests)
 
+    def link(
+        self,
+        sent: Array,
+        received: Array,
+        *,
+        targets: Sequence[Stretch],
+        sources: Sequence[Stretch],
+    ) -> _MpiLink:
+        """Set up an exchange between two buffers."""
+        check_buffers(sent, received)
+        check_stretches(targets, len(sent), self.size)
+        check_stretches(sources, len(received), self.size)
+        return _MpiLink(self._comm, sent, received, targets, sources)
+
     def bcast_object(self, value: Any, root: int = 0) -> Any:
         """Return the root's small picklable value on every rank."""
         check_root(root, self.size)
@@ -162,11 +181,106 @@ class MpiComm:
         raise_parcel(self._comm.bcast(packed, first), error)
 
 
+def adopted(communicator: Any) -> MpiComm:
+    """Return the `MpiComm` over a communicator of mpi4py: made once, then found again.
+
+    It is kept with the communicator (as an attribute, MPI's own way) and freed with it. The first
+    call with a communicator is collective.
+    """
+    if communicator == MPI.COMM_NULL or communicator.Is_inter():
+        raise InputError(
+            "a communicator without ranks or between groups; wanted one group of ranks"
+        )
+    key = _attribute()
+    mine: MpiComm | None = communicator.Get_attr(key)
+    if mine is None:
+        mine = MpiComm(communicator)
+        communicator.Set_attr(key, mine)
+    return mine
+
+
+@lru_cache(maxsize=1)
+def _attribute() -> int:
+    """Return the key under which communicators keep their `MpiComm`."""
+    return int(MPI.Comm.Create_keyval(delete_fn=lambda comm, key, mine: mine._comm.Free()))
+
+
+class _MpiLink:
+    """A link of persistent requests (`sfcpart.comm.base.Link`)."""
+
+    def __init__(
+        self,
+        comm: MPI.Intracomm,
+        sent: Array,
+        received: Array,
+        targets: Sequence[Stretch],
+        sources: Sequence[Stretch],
+    ) -> None:
+        row, sends, receives = _committed_row(sent), _bytes(sent), _bytes(received)
+        self._row_bytes = row.Get_size()
+
+        def part(buffer: Array, lo: int, hi: int) -> tuple[Array, int, MPI.Datatype]:
+            return buffer[lo * self._row_bytes : hi * self._row_bytes], hi - lo, row
+
+        self._sources = [stretch for stretch in sources if self._has_bytes(stretch)]
+        self._requests = [
+            comm.Recv_init(part(receives, lo, hi), rank, _LINK_TAG)
+            for rank, lo, hi in self._sources
+        ]
+        self._requests += [
+            comm.Send_init(part(sends, lo, hi), rank, _LINK_TAG)
+            for rank, lo, hi in targets
+            if self._has_bytes((rank, lo, hi))
+        ]
+        self._statuses = [MPI.Status() for _ in self._requests]
+        self._started = False
+        weakref.finalize(self, _free, [*self._requests, row])
+
+    def _has_bytes(self, stretch: Stretch) -> bool:
+        """Tell whether a message is needed."""
+        return self._row_bytes > 0 and stretch[2] > stretch[1]
+
+    def start(self) -> None:
+        """Send what the buffer holds now."""
+        if self._started:
+            raise InputError("a link is started twice; finish it before it is started again")
+        self._started = True
+        MPI.Prequest.Startall(self._requests)
+
+    def finish(self) -> None:
+        """Wait for all messages."""
+        if not self._started:
+            raise InputError("a link is finished before it is started")
+        self._started = False
+        try:
+            MPI.Request.Waitall(self._requests, self._statuses)
+        except MPI.Exception as error:
+            raise RankError(f"an exchange with neighbours failed: {error}") from error
+        for (rank, lo, hi), status in zip(self._sources, self._statuses, strict=False):
+            came = status.Get_count(MPI.BYTE)
+            if came != (hi - lo) * self._row_bytes:
+                raise RankError(
+                    f"{came} bytes from rank {rank}; wanted {hi - lo} rows of {self._row_bytes}"
+                )
+
+
+def _free(handles: list[Any]) -> None:
+    """Free MPI's side of a link."""
+    if not MPI.Is_finalized():
+        for handle in handles:
+            handle.Free()
+
+
+def _committed_row(array: Array) -> MPI.Datatype:
+    """Make the MPI datatype of one row of an array; it must be freed."""
+    n_bytes = array.dtype.itemsize * int(np.prod(array.shape[1:], dtype=np.int64))
+    return MPI.BYTE.Create_contiguous(n_bytes).Commit()
+
+
 @contextmanager
 def _row_type(array: Array) -> Iterator[MPI.Datatype]:
     """Make the MPI datatype of one row of an array."""
-    n_bytes = array.dtype.itemsize * int(np.prod(array.shape[1:], dtype=np.int64))
-    row = MPI.BYTE.Create_contiguous(n_bytes).Commit()
+    row = _committed_row(array)
     try:
         yield row
     finally:

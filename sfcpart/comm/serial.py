@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 
-from sfcpart.comm.base import Reduction
+from sfcpart.comm.base import Reduction, Stretch
 from sfcpart.comm.gate import (
     check_root,
     movable,
@@ -16,6 +16,7 @@ from sfcpart.comm.gate import (
     same_rows,
     summable,
 )
+from sfcpart.comm.staged import StagedLink
 from sfcpart.dtypes import Array
 
 __all__ = ["SerialComm"]
@@ -69,6 +70,17 @@ class SerialComm:
     def alltoall(self, arrays: Sequence[Array]) -> list[Array]:
         """Return the one array itself, in a list."""
         return same_rows(arrays, 1)
+
+    def link(
+        self,
+        sent: Array,
+        received: Array,
+        *,
+        targets: Sequence[Stretch],
+        sources: Sequence[Stretch],
+    ) -> StagedLink:
+        """Set up an exchange between two buffers."""
+        return StagedLink(self, sent, received, targets=targets, sources=sources)
 
     def bcast_object(self, value: Any, root: int = 0) -> Any:
         """Return the value itself."""

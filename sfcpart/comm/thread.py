@@ -17,7 +17,7 @@ from typing import Any, TypeVar
 
 import numpy as np
 
-from sfcpart.comm.base import Reduction
+from sfcpart.comm.base import Reduction, Stretch
 from sfcpart.comm.gate import (
     check_root,
     movable,
@@ -29,6 +29,7 @@ from sfcpart.comm.gate import (
     same_rows,
     summable,
 )
+from sfcpart.comm.staged import StagedLink
 from sfcpart.dtypes import Array
 from sfcpart.errors import InputError, RankError
 
@@ -202,6 +203,17 @@ class ThreadComm:
             rows,
             lambda values: [value[self._rank].copy() for value in values],
         )
+
+    def link(
+        self,
+        sent: Array,
+        received: Array,
+        *,
+        targets: Sequence[Stretch],
+        sources: Sequence[Stretch],
+    ) -> StagedLink:
+        """Set up an exchange between two buffers."""
+        return StagedLink(self, sent, received, targets=targets, sources=sources)
 
     def bcast_object(self, value: Any, root: int = 0) -> Any:
         """Return the root's small picklable value on every rank."""

@@ -12,6 +12,7 @@ import numpy as np
 def main() -> None:
     from mpi4py import MPI  # not above: pytest imports this module when it looks for doctests
 
+    from sfcpart.comm import adopt
     from sfcpart.comm.mpi import MpiComm
 
     world = MPI.COMM_WORLD
@@ -25,7 +26,23 @@ def main() -> None:
         "alone": [alone.rank, alone.size, alone.exscan(np.array([3])).tolist()],
         "pending": pending.wait(),
     }
+    ours = adopt(world)
+    seen["adopted"] = [ours is adopt(world), ours is adopt(MPI.COMM_WORLD), ours is adopt(ours)]
+    for _ in range(3000):  # more than MPI has room for at once: each must be freed with its parent
+        brief = MPI.COMM_SELF.Dup()
+        seen["freed"] = adopt(brief).size
+        brief.Free()
+    seen["refused"] = [refusal(adopt, "nothing"), refusal(adopt, MPI.COMM_NULL)]
     (Path(sys.argv[1]) / f"rank{world.rank}.json").write_text(json.dumps(seen))
+
+
+def refusal(action, value) -> str:
+    """Return the error with which a value is refused."""
+    try:
+        action(value)
+    except ValueError as error:
+        return f"{type(error).__name__}: {error}"
+    return "taken"
 
 
 if __name__ == "__main__":

@@ -18,3 +18,11 @@ def test_halves_and_selves(tmp_path):
     ]
     assert [rank["alone"] for rank in seen] == [[0, 1, [0]]] * 4
     assert [rank["pending"] for rank in seen] == ["ours"] * 4
+    assert [rank["adopted"] for rank in seen] == [[True, True, True]] * 4
+    assert [rank["freed"] for rank in seen] == [1] * 4
+    assert [rank["refused"] for rank in seen] == [
+        [
+            "InputError: comm is 'nothing'; wanted a communicator of mpi4py or of sfcpart.comm",
+            "InputError: a communicator without ranks or between groups; wanted one group of ranks",
+        ]
+    ] * 4

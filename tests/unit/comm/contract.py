@@ -334,6 +334,147 @@ def ranks_that_differ_in_form_all_hear_of_it(comm: Comm) -> Lines:
     ]
 
 
+# -- links ----------------------------------------------------------------------------------------
+
+
+def _ring(number: int, dtype: Any, trailing: tuple[int, ...], rank: int, turn: int) -> np.ndarray:
+    """Make what a rank sends to the next rank and the one after it in one turn."""
+    return made(dtype, 5, trailing, 10_000 * number + 100 * turn + rank)
+
+
+def _around(comm_rank: int, size: int) -> tuple[list[tuple[int, int, int]], ...]:
+    """Return stretches: rows 0-2 to the next rank, 1-4 to the one after (if they differ)."""
+    targets = {(comm_rank + 1) % size: (0, 3), (comm_rank + 2) % size: (1, 5)}
+    sources = {(comm_rank - 1) % size: (4, 7), (comm_rank - 2) % size: (0, 4)}
+    if size in (1, 2):  # one stretch a rank: the last written counts, on both sides
+        targets = {(comm_rank + 2) % size: (1, 5)}
+        sources = {(comm_rank - 2) % size: (0, 4)}
+    return (
+        [(rank, *rows) for rank, rows in targets.items()],
+        [(rank, *rows) for rank, rows in sources.items()],
+    )
+
+
+def _expect_ring(rank: int, size: int) -> Lines:
+    lines = []
+    for number, dtype, trailing in _forms():
+        for turn in range(2):
+            got = made(dtype, 8, trailing, 77)
+            far = _ring(number, dtype, trailing, (rank - 2) % size, turn)
+            near = _ring(number, dtype, trailing, (rank - 1) % size, turn)
+            got[0:4] = far[1:5]
+            if size > 2:
+                got[4:7] = near[0:3]
+            lines.append(shown(got))
+    return lines
+
+
+@scenario(_expect_ring)
+def links_move_rows_between_neighbours(comm: Comm) -> Lines:
+    lines = []
+    targets, sources = _around(comm.rank, comm.size)
+    for number, dtype, trailing in _forms():
+        sent, received = made(dtype, 5, trailing, 0), made(dtype, 8, trailing, 77)
+        link = comm.link(sent, received, targets=targets, sources=sources)
+        for turn in range(2):
+            sent[...] = _ring(number, dtype, trailing, comm.rank, turn)
+            link.start()
+            link.finish()
+            lines.append(shown(received))
+    return lines
+
+
+@scenario(
+    lambda rank, size: [
+        str([100 * ((rank - 1) % size) + k for k in range(3)]),
+        str([1000 + (rank - 1) % size] * 3),
+        str([size]),
+        str(list(range(size))),
+    ]
+)
+def links_on_their_way_do_not_mix(comm: Comm) -> Lines:
+    ahead, behind = (comm.rank + 1) % comm.size, (comm.rank - 1) % comm.size
+    here, there = {"targets": [(ahead, 0, 3)]}, {"sources": [(behind, 0, 3)]}
+    first, second = np.zeros(3, int), np.zeros(3, int)
+    one = comm.link(100 * comm.rank + np.arange(3), first, **here, **there)
+    two = comm.link(np.full(3, 1000 + comm.rank), second, **here, **there)
+    one.start()
+    two.start()
+    between = comm.allreduce(np.ones(1, int))
+    swapped = comm.alltoall([np.array([comm.rank])] * comm.size)
+    two.finish()
+    one.finish()
+    arrived = [int(array[0]) for array in swapped]
+    return [str(first.tolist()), str(second.tolist()), str(between.tolist()), str(arrived)]
+
+
+@scenario(lambda rank, size: [f"{200_003 * 7 if rank == 0 and size > 1 else 0} (3, 0)"])
+def one_sided_and_large_links(comm: Comm) -> Lines:
+    last = comm.size - 1
+    sends = last > 0 and comm.rank == last
+    gets = last > 0 and comm.rank == 0
+    received = np.zeros(200_003, np.int64)
+    link = comm.link(
+        np.full(200_003 if sends else 0, 7),
+        received,
+        targets=[(0, 0, 200_003)] if sends else [],
+        sources=[(last, 0, 200_003)] if gets else [],
+    )
+    link.start()
+    link.finish()
+    flat = np.zeros((3, 0))
+    nothing = comm.link(flat, flat, targets=[(last, 0, 3 * gets)], sources=[(0, 0, 3 * sends)])
+    nothing.start()
+    nothing.finish()
+    return [f"{received.sum()} {flat.shape}"]
+
+
+@scenario(
+    lambda rank, size: [
+        f"InputError: a stretch for rank {size}; ranks go from 0 to {size - 1}",
+        "InputError: rows 1 to 3 for rank 0 of a buffer of 2 rows",
+        "InputError: two stretches for rank 0; wanted one",
+        "InputError: the buffers hold <f8 rows of shape () and <i8 rows of shape (); "
+        "wanted one dtype and trailing shape",
+        "InputError: a buffer of <f8 rows of shape () is not C-contiguous in native byte order; "
+        "wanted one that rows can be sent from as they are",
+        "InputError: the buffer to receive into is read-only; wanted a writable one",
+        "InputError: a link is finished before it is started",
+        "InputError: a link is started twice; finish it before it is started again",
+    ]
+)
+def unfit_links_are_refused(comm: Comm) -> Lines:
+    two, frozen = np.zeros(2), np.zeros(2)
+    frozen.flags.writeable = False
+
+    def link(sent: np.ndarray = two, received: np.ndarray = two, **ends: Any) -> Any:
+        return comm.link(sent, received, **{"targets": [], "sources": [], **ends})
+
+    idle, twice = link(), link()
+    twice.start()
+    lines = [
+        attempted(lambda: link(targets=[(comm.size, 0, 1)])),
+        attempted(lambda: link(sources=[(0, 1, 3)])),
+        attempted(lambda: link(targets=[(0, 0, 1), (0, 1, 2)])),
+        attempted(lambda: link(received=np.zeros(2, int))),
+        attempted(lambda: link(sent=np.zeros(4)[::2])),
+        attempted(lambda: link(received=frozen)),
+        attempted(idle.finish),
+        attempted(twice.start),
+    ]
+    twice.finish()
+    return lines
+
+
+@scenario(lambda rank, size: ["RankError" if size > 1 and rank == 0 else "no error"])
+def fewer_rows_than_meant_are_noticed(comm: Comm) -> Lines:
+    meant = [(1, 0, 3)] if comm.rank == 0 and comm.size > 1 else []
+    sent = [(0, 0, 2)] if comm.rank == 1 else []
+    link = comm.link(np.zeros(3), np.zeros(3), targets=sent, sources=meant)
+    link.start()
+    return [attempted(link.finish).split(":")[0]]
+
+
 # -- values and errors ----------------------------------------------------------------------------
 
 
