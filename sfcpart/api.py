@@ -327,7 +327,8 @@ def write_split(
         Figures to write; measured with defaults if missing.
     formats : sequence of {"vtkhdf", "vtu", "same"}
         One VTKHDF file with ghost cells and exchange lists; VTU pieces with a PVTU; or the
-        input's own format with a `part` field (needs `source`).
+        input's own format with a `part` field (needs `source`): `parts` with the input's
+        extension, but `mesh.vtkhdf` for VTKHDF.
     layers, across : int, {"faces", "points"}
         Depth of the halo, and what it grows across.
     overwrite, picture, compress : bool

@@ -100,11 +100,10 @@ def _write_parts(
 ) -> None:
     """Write the parts in each format asked for."""
     if "same" in how.formats:
-        from sfcpart.files.meshes.meshio_write import write_with_meshio
+        from sfcpart.files.meshes.own_format import write_in_own_format
 
         assert source is not None
-        fields = {"part": partition.cell_part}
-        write_with_meshio(place / f"parts{source.suffix}", source, fields)
+        write_in_own_format(_own_place(place, source), source, {"part": partition.cell_part})
     if how.formats == ("same",):
         return
     halo = _halo(mesh, graph, partition, how)
@@ -123,6 +122,12 @@ def _write_parts(
             compress=how.compress,
             input_digest=digest,
         )
+
+
+def _own_place(place: Path, source: Path) -> Path:
+    """Name the copy of the input; `parts.vtkhdf` is the file a solver loads."""
+    suffix = source.suffix
+    return place / (f"mesh{suffix}" if suffix.lower() == ".vtkhdf" else f"parts{suffix}")
 
 
 def _halo(mesh: Mesh, graph: CellGraph | None, partition: Partition, how: Delivery) -> Halo:

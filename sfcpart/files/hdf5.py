@@ -19,7 +19,15 @@ if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
     from os import PathLike
 
-__all__ = ["check_stored", "create_hdf5", "is_hdf5", "read_hdf5", "read_text", "write_text"]
+__all__ = [
+    "check_stored",
+    "copy_hdf5",
+    "create_hdf5",
+    "is_hdf5",
+    "read_hdf5",
+    "read_text",
+    "write_text",
+]
 
 _SIGNATURE = b"\x89HDF\r\n\x1a\n"
 # A corrupt file shows itself in any of these, depending on which byte is wrong.
@@ -91,6 +99,29 @@ def create_hdf5(path: str | PathLike[str], *, track_order: bool = False) -> Iter
             raise FileError(
                 f"{place}: writing HDF5 failed: {_reason(sink.failure)}"
             ) from sink.failure
+
+
+@contextmanager
+def copy_hdf5(path: str | PathLike[str], source: str | PathLike[str]) -> Iterator[Any]:
+    """Create an HDF5 file with everything that another holds; yields the `h5py.File`, to add to.
+
+    Parameters
+    ----------
+    path : path
+        The file to create; not `source` itself.
+    source : path
+
+    Raises
+    ------
+    FileError
+        As `read_hdf5` of the source and `create_hdf5` of the copy.
+    """
+    with read_hdf5(source) as old, create_hdf5(path) as new:
+        for name, value in old.attrs.items():
+            new.attrs[name] = value
+        for name in old:
+            old.copy(name, new, name)
+        yield new
 
 
 def is_hdf5(path: str | PathLike[str]) -> bool:

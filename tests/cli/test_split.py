@@ -12,6 +12,8 @@ import numpy as np
 import pytest
 
 import sfcpart as api
+from sfcpart.files.meshes.faces_file import write_faces
+from sfcpart.mesh.refined import refined_box
 
 
 def test_split_writes_what_it_says_and_says_what_it_wrote(sfcpart, tmp_path):
@@ -66,6 +68,22 @@ def test_output_in_the_inputs_own_format_and_as_pieces(sfcpart, tmp_path):
     assert "parts.pvtu" in names
     back = api.read_mesh("parts/parts.vtu")
     assert back.cell_fields["part"].tolist() == np.load("parts/cell_part.npy").tolist()
+
+
+def test_own_format_of_vtkhdf_stands_beside_what_the_solver_loads(sfcpart, tmp_path):
+    line = "split meshes/kelvin_cells.vtkhdf -n 3 -o parts --format same --format vtkhdf"
+    code, _, err = sfcpart(line)
+    assert (code, err) == (0, "")
+    part = np.load("parts/cell_part.npy")
+    assert api.read_mesh("parts/mesh.vtkhdf").cell_fields["part"].tolist() == part.tolist()
+    assert api.read_part("parts", 2).n_owned == np.sum(part == 2)
+
+
+def test_own_format_of_a_file_of_faces(sfcpart, tmp_path):
+    write_faces(tmp_path / "a.h5", refined_box(4).to_mesh())
+    assert sfcpart("split a.h5 -n 4 -o parts --format same -q") == (0, "", "")
+    mesh = api.read_mesh("parts/parts.h5")
+    assert mesh.cell_fields["part"].tolist() == np.load("parts/cell_part.npy").tolist()
 
 
 def test_speeds_shift_the_work(sfcpart):

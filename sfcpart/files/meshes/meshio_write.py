@@ -1,12 +1,7 @@
-"""Add integer fields of the cells to a file in its own format, with everything else kept.
-
-The file is read again through meshio, gets the fields, is written beside, read back and
-compared, forced to disk and renamed: the target is complete or as it was before.
-"""
+"""Add integer fields of the cells to a mesh file through meshio, with everything else kept."""
 
 from __future__ import annotations
 
-import os
 from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
@@ -14,67 +9,30 @@ from typing import Any
 import numpy as np
 
 from sfcpart.dtypes import Array
-from sfcpart.errors import FileError, InputError, SfcpartError
+from sfcpart.errors import FileError, InputError
 from sfcpart.files.meshes.meshio_files import load_with_meshio, meshio_of_raw, save_with_meshio
-from sfcpart.files.meshes.read import file_format, read_mesh
 from sfcpart.mesh.kinds import kind_of
 
-__all__ = ["CARRIERS", "write_with_meshio"]
+__all__ = ["MESHIO_CARRIERS", "add_fields_with_meshio"]
 
-CARRIERS = ("vtu", "vtk", "gmsh", "xdmf", "tecplot")
+MESHIO_CARRIERS = ("vtu", "vtk", "gmsh", "xdmf", "tecplot")
 """Formats that can carry a field of the cells through meshio."""
 
 # meshio's writer of Gmsh 4.1 wants physical groups on every element; 2.2 does without.
 _WRITERS = {"gmsh": "gmsh22"}
 
 
-def write_with_meshio(
-    path: str | os.PathLike[str], mesh_path: str | os.PathLike[str], fields: Mapping[str, Array]
+def add_fields_with_meshio(
+    path: Path, source: Path, name: str, fields: Mapping[str, Array]
 ) -> None:
-    """Write a copy of a mesh file with fields added to its cells.
+    """Write a copy of a mesh file in format `name` with fields added; see `own_format`.
 
-    Parameters
-    ----------
-    path : path
-        The file to write, in the format of `mesh_path`; replaced if it exists.
-    mesh_path : path
-        The mesh that was read; it may be `path` itself.
-    fields : mapping of str to (n_cells,) integers
-        In the order of `read_mesh(mesh_path)`. Elements of lower dimension get -1.
-
-    Raises
-    ------
-    FileError
-        If the format cannot carry fields of cells (which can: `CARRIERS`), or reading or
-        writing fails; `path` is then as it was.
-    InputError
-        If a field has another number of rows than the mesh has cells.
-
-    Notes
-    -----
     Gmsh files are written in version 2.2 and store fields as reals; the numbers are the same.
-    Cost: reading twice, writing once.
     """
-    source, target = Path(mesh_path), Path(path)
-    name = next((name for name in file_format(source) if name in CARRIERS), "")
-    if not name:
-        raise FileError(
-            f"{source}: its format ({file_format(source)[0]}) cannot carry fields of cells; "
-            f"choose one that can: {', '.join(CARRIERS)} or vtkhdf"
-        )
     mesh = _load(source, name)
     for field_name, values in fields.items():
         mesh.cell_data[field_name] = _per_block(mesh, np.asarray(values), field_name)
-    beside = target.with_name(f".{target.stem}.{os.getpid()}{target.suffix}")
-    try:
-        save_with_meshio(beside, mesh, _WRITERS.get(name, name))
-        _check_same(beside, fields, source)
-        _force_to_disk(beside)
-        beside.replace(target)
-    except OSError as error:
-        raise _named(error, target) from error
-    finally:
-        beside.unlink(missing_ok=True)
+    save_with_meshio(path, mesh, _WRITERS.get(name, name))
 
 
 def _load(source: Path, name: str) -> Any:
@@ -108,29 +66,3 @@ def _per_block(mesh: Any, values: Array, field_name: str) -> list[Array]:
         pieces.append(own.astype(np.int32))
         at += size
     return pieces
-
-
-def _check_same(beside: Path, fields: Mapping[str, Array], source: Path) -> None:
-    """Read back what was written; a format that dropped a field is refused."""
-    try:
-        written = read_mesh(beside).cell_fields
-    except SfcpartError as error:
-        raise FileError(
-            f"{source}: its format cannot hold this mesh with fields: {error}"
-        ) from error
-    for name, values in fields.items():
-        if name not in written or not np.array_equal(written[name], values):
-            raise FileError(f"{source}: its format does not keep the field {name!r}; use vtu")
-
-
-def _force_to_disk(path: Path) -> None:
-    """Wait until a file is on the disk."""
-    with path.open("rb") as file:
-        os.fsync(file.fileno())
-
-
-def _named(error: OSError, target: Path) -> FileError:
-    """Pass our own errors, and give others the name of the file."""
-    if isinstance(error, FileError):
-        return error
-    return FileError(f"{target}: cannot be written: {error.strerror or error}")

@@ -23,9 +23,10 @@ from sfcpart.dtypes import COORDINATE, OFFSET, Array, Int64Array, IntArray, inde
 from sfcpart.errors import FileError, MeshError
 from sfcpart.files.hdf5 import check_stored, read_hdf5
 from sfcpart.files.meshes.raw import RawMesh, join_pieces
+from sfcpart.mesh.kinds import kind_tables
 from sfcpart.mesh.mesh import Polyhedra
 
-__all__ = ["read_vtkhdf", "vtkhdf_counts"]
+__all__ = ["read_vtkhdf", "vtkhdf_cell_rows", "vtkhdf_counts"]
 
 _BLOCK = 1 << 21  # ids converted at a time: 16 MB, small beside any mesh worth splitting
 
@@ -67,6 +68,23 @@ def vtkhdf_counts(path: str | PathLike[str]) -> tuple[int, int]:
     with read_hdf5(path) as file:
         extent = _extent(_grid(file, path), str(path))
         return sum(extent.n_cells), sum(extent.n_points)
+
+
+def vtkhdf_cell_rows(path: str | PathLike[str]) -> tuple[int, Int64Array]:
+    """Return how many rows a cell field of the file has, and the row of each cell of the mesh.
+
+    Ghosts, elements of lower dimension and other time steps have rows too, but are no cells.
+
+    Raises
+    ------
+    FileError
+        As for `read_vtkhdf`.
+    """
+    with read_hdf5(path) as file:
+        reader = _Reader(str(path), _grid(file, path))
+        n_rows = int(_dataset(reader.group, "Types", "u", str(path)).shape[0])
+        dim, first = reader.dimensions(), reader.extent.cell
+    return n_rows, first + np.flatnonzero(dim == dim.max(initial=0))
 
 
 @dataclass(frozen=True)
@@ -187,6 +205,13 @@ class _Reader:
             cell_fields=self._fields("CellData", extent.cell, n_cells),
             point_fields=self._fields("PointData", extent.point, n_points),
         )
+
+    def dimensions(self) -> Array:
+        """Return the dimension of each element of the step, -1 for ghosts."""
+        extent, n_cells = self.extent, sum(self.extent.n_cells)
+        dim = kind_tables().dim[self._rows("Types", extent.cell, n_cells, "u")]
+        ghost = self._fields("CellData", extent.cell, n_cells).get("vtkGhostType")
+        return dim if ghost is None else np.where(ghost & 1, -1, dim)
 
     def _rows(self, name: str, start: int, count: int, dtype_kinds: str) -> Array:
         """Read consecutive rows of a dataset."""

@@ -9,12 +9,11 @@ import meshio
 import numpy as np
 import pytest
 
-from sfcpart.errors import FileError, InputError, MeshError
+from sfcpart.errors import FileError, MeshError
 from sfcpart.files.meshes import limits, meshio_files
 from sfcpart.files.meshes.meshio_files import raw_of_meshio
-from sfcpart.files.meshes.meshio_write import write_with_meshio
 from sfcpart.files.meshes.read import read_mesh
-from tests.file_samples import tet_block, write_shell, write_tets, write_ugrid
+from tests.file_samples import tet_block, write_tets, write_ugrid
 
 FORMATS = {
     "gmsh": "a.msh",
@@ -278,45 +277,3 @@ def test_fields_of_several_blocks_of_gmsh_22_are_read(tmp_path):
     data = {"work": [np.arange(6.0), np.zeros(4)]}
     meshio.Mesh(corners, blocks, cell_data=data).write(path, file_format="gmsh22")
     assert read_mesh(path).cell_fields["work"].tolist() == list(range(6))
-
-
-@pytest.mark.parametrize("file_format", ["vtu", "vtk", "gmsh22", "xdmf"])
-def test_a_field_is_added_in_the_format_of_the_file(tmp_path, file_format):
-    source = tmp_path / FORMATS[file_format]
-    write_tets(source, file_format)
-    given = read_mesh(source)
-    target = tmp_path / f"parts{source.suffix}"
-    part = np.array([2, 0, 1, 1, 0, 2], np.int32)
-    write_with_meshio(target, source, {"part": part})
-    mesh = read_mesh(target)
-    assert mesh.cell_fields["part"].tolist() == part.tolist()
-    np.testing.assert_array_equal(mesh.indices, given.indices)
-    np.testing.assert_array_equal(mesh.points, given.points)
-    assert [g.name for g in mesh.boundary] == [g.name for g in given.boundary]
-    assert set(given.cell_fields) <= set(mesh.cell_fields)
-    assert {p.name for p in tmp_path.iterdir()} - {"a.h5"} == {source.name, target.name}
-
-
-def test_formats_that_cannot_carry_fields_are_refused(tmp_path):
-    source = tmp_path / "a.stl"
-    write_shell(source, "stl")
-    with pytest.raises(FileError, match=r"\(stl\) cannot carry fields of cells; choose"):
-        write_with_meshio(tmp_path / "b.stl", source, {"part": np.zeros(4, int)})
-    assert not (tmp_path / "b.stl").exists()
-
-
-def test_a_failed_write_leaves_the_old_file(tmp_path, monkeypatch):
-    source = tmp_path / "a.vtu"
-    write_tets(source, "vtu")
-    before = source.read_bytes()
-    with pytest.raises(InputError, match=r"wanted 6 integers"):
-        write_with_meshio(source, source, {"part": np.zeros(5, int)})
-
-    def full(*_args, **_options):
-        raise OSError(28, "No space left on device")
-
-    monkeypatch.setattr(meshio, "write", full)
-    with pytest.raises(FileError, match="No space left"):
-        write_with_meshio(source, source, {"part": np.zeros(6, int)})
-    assert source.read_bytes() == before
-    assert [p.name for p in tmp_path.iterdir()] == ["a.vtu"]
