@@ -21,7 +21,7 @@ from sfcpart.methods.line import Line
 from sfcpart.methods.problem import Problem
 from sfcpart.methods.together import Bundles
 
-__all__ = ["along_hilbert", "along_morton", "along_rows", "split_along"]
+__all__ = ["along_hilbert", "along_morton", "along_rows", "split_along", "unfit"]
 
 
 def split_along(problem: Problem, *, curve: Curve) -> Int32Array:
@@ -52,7 +52,7 @@ def split_along(problem: Problem, *, curve: Curve) -> Int32Array:
     -----
     O(n) for keys and order, O(P log n log w_max) for the chunks.
     """
-    problem.comm.check(_unfit(problem))
+    problem.comm.check(unfit(problem))
     place = curve_slice(problem.centers, curve=curve, comm=problem.comm)
     weight = None if problem.weight is None else place.gather(problem.weight)
     limited = None if problem.limit_weight is None else place.gather(problem.limit_weight)
@@ -155,7 +155,7 @@ def _summed(limit: Int64Array, n_chunks: int) -> Int64Array:
     return np.array(sums, np.int64)
 
 
-def _unfit(problem: Problem) -> InputError | None:
+def unfit(problem: Problem) -> InputError | None:
     """Return an error if speeds, levels or single cells do not fit the parts."""
     if problem.n_parts < 1:
         return PartitionError(f"{problem.n_parts} parts; wanted at least 1")

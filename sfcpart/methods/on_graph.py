@@ -17,9 +17,10 @@ from sfcpart.errors import PartitionError
 from sfcpart.methods.along_curve import along_hilbert
 from sfcpart.methods.cell_problem import CellProblem
 from sfcpart.methods.coarsen import WeightedGraph
-from sfcpart.methods.multilevel import Aim, divide
+from sfcpart.methods.search import best_of_many
 from sfcpart.methods.problem import Problem
 from sfcpart.methods.smooth import smooth
+from sfcpart.methods.vcycle import Aim
 
 __all__ = ["multilevel", "smoothed"]
 
@@ -115,7 +116,7 @@ def _nested(
     inside = len(speed) // sizes[0]
     summed = speed.reshape(sizes[0], inside).sum(axis=1)
     total = int(graph.vertex_weight.sum())
-    outer = divide(graph, mesh_aim(total, summed, tolerance, seed))
+    outer = best_of_many(graph, mesh_aim(total, summed, tolerance, seed))
     if len(sizes) == 1:
         return outer
     part = np.empty(graph.n, np.int32)

@@ -13,7 +13,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from sfcpart.dtypes import Int32Array, Int64Array
+from sfcpart.dtypes import Int32Array
 from sfcpart.kernels.flow import flow_pairs
 from sfcpart.kernels.label_moves import look_again, propose_moves, spread_active
 from sfcpart.kernels.local_search import search_from_seeds

@@ -8,6 +8,7 @@ from types import MappingProxyType
 
 from sfcpart.dtypes import Int32Array
 from sfcpart.methods.along_curve import along_hilbert, along_morton, along_rows
+from sfcpart.methods.bisect import coordinate, inertial, spectral
 from sfcpart.methods.on_graph import multilevel, smoothed
 from sfcpart.methods.problem import Problem
 
@@ -68,6 +69,24 @@ METHODS: Mapping[str, Method] = MappingProxyType(
                 run=multilevel,
                 needs_graph=True,
                 summary="multilevel partition of the cell graph; the least cut, the most time",
+            ),
+            Method(
+                name="coordinate",
+                run=coordinate,
+                needs_graph=False,
+                summary="recursive bisection across the longest side; a baseline",
+            ),
+            Method(
+                name="inertial",
+                run=inertial,
+                needs_graph=False,
+                summary="recursive bisection across the principal axis; a baseline",
+            ),
+            Method(
+                name="spectral",
+                run=spectral,
+                needs_graph=True,
+                summary="recursive bisection along Fiedler vectors of the cell graph; a baseline",
             ),
         )
     }

@@ -1,7 +1,7 @@
 """Smooth a partition: move its borders to where they cut fewer faces, within the balance.
 
 `smooth` improves any start on the flat graph: a round of short local searches, then flows between
-neighbouring parts, then pieces are joined. `improve` of `methods.multilevel` does the same through
+neighbouring parts, then pieces are joined. `improve` of `methods.vcycle` does the same through
 a hierarchy that respects the start: a smaller cut for four times the time.
 
 Measured (1.08e6 random Delaunay tets, 64 parts, 3 %, one thread): cut 0.623 of the Hilbert start
@@ -15,7 +15,7 @@ from sfcpart.dtypes import Int32Array
 from sfcpart.methods.balance import fill_empty_parts, join_pieces, rebalance
 from sfcpart.methods.coarsen import WeightedGraph
 from sfcpart.methods.labels import Labels, cut_of
-from sfcpart.methods.multilevel import Aim
+from sfcpart.methods.vcycle import Aim
 from sfcpart.methods.refine import flow_between, search_locally
 
 __all__ = ["smooth"]
