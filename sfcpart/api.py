@@ -9,6 +9,7 @@ sfcpart.write_split("parts", mesh, partition)
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from os import PathLike
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -30,6 +31,7 @@ if TYPE_CHECKING:
     from sfcpart.halo import Across
     from sfcpart.measure import Assessment, StepModel
     from sfcpart.measure.survey import Survey
+    from sfcpart.meter import Metered
     from sfcpart.weights import FaceWeight
 
 __all__ = [
@@ -210,6 +212,7 @@ def compare(
     methods: Sequence[str] | None = None,
     given: Mapping[str, Partition | ArrayLike] | None = None,
     steps: int = 10_000,
+    repeat: int = 1,
     step_model: StepModel | None = None,
     tolerance: float = 0.03,
     weights: Weights = None,
@@ -228,14 +231,16 @@ def compare(
     Parameters
     ----------
     mesh : Mesh
-        With faces: bare centres have no cut to compare.
+        Bare centres have no cut to compare; methods that need the cell graph refuse them.
     n_parts : int
     methods : sequence of str, optional
         All methods by default.
     given : mapping of str to Partition or (n_cells,) integers, optional
-        Partitions from elsewhere, each one more row.
+        Partitions from elsewhere into at most as many parts, each one more row.
     steps : int
         Length of the run for which a total time is predicted, the time to split included.
+    repeat : int
+        How often each split is timed; medians count.
     step_model : StepModel, optional
     tolerance, weights, speeds, limit_weights, limits, levels, together, pairs, periodic,
     face_weight, seed
@@ -249,7 +254,13 @@ def compare(
     Raises
     ------
     InputError, WeightError, PartitionError
-        If a method is unknown, or what was asked is malformed.
+        If a method is unknown, what was asked is malformed, or a given partition does not belong
+        to the mesh or has more parts.
+
+    Notes
+    -----
+    The methods run one after the other, compilation left out; the time to build the cell graph is
+    part of the time of each method that needs it.
 
     Examples
     --------
@@ -281,6 +292,8 @@ def compare(
         methods=methods,
         given={name: _as_partition(parts) for name, parts in (given or {}).items()},
         steps=steps,
+        repeat=repeat,
+        time_graph=lambda times: _time_graph(mesh, times),
         measure=lambda partition: assess(mesh, partition, step_model=step_model, **wish),
     )
 
@@ -360,6 +373,17 @@ def write_split(
         source=None if source is None else Path(source),
         options={} if options is None else options,
     )
+
+
+def _time_graph(mesh: Mesh, repeat: int) -> Metered | None:
+    """Build the cell graph as if for the first time, keep it, and return what it took."""
+    if mesh.points is None and mesh.faces is None:
+        return None
+    from sfcpart.meter import metered
+
+    graph, took = metered(lambda: cell_graph(replace(mesh)), repeat=repeat)
+    mesh.keep("graph", lambda: graph)
+    return took
 
 
 def graph_of(mesh: Mesh) -> CellGraph | None:

@@ -1,9 +1,14 @@
-"""Several ways to split one mesh, measured alike, side by side."""
+"""Several ways to split one mesh, measured alike, side by side.
+
+Each method runs alone, after a run on a few cells that loads what it needs; what is compiled is
+never timed. Methods that need the cell graph are charged its time, whether or not it was there.
+"""
 
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
+from math import isfinite
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -11,7 +16,7 @@ import numpy as np
 from sfcpart.errors import InputError, SfcpartError
 from sfcpart.graph import CellGraph
 from sfcpart.measure.columns import TOTAL_COLUMNS, Column
-from sfcpart.meter import metered
+from sfcpart.meter import Metered, metered
 from sfcpart.methods.problem import Problem
 from sfcpart.methods.registry import METHODS
 from sfcpart.partition import Partition
@@ -21,16 +26,17 @@ if TYPE_CHECKING:
 
 __all__ = ["COMPARED_COLUMNS", "ComparedSplit", "Comparison", "compare_methods"]
 
-_WARM_CELLS = 1_000
+_WARM_CELLS = 2_000
 
 COMPARED_COLUMNS: tuple[Column, ...] = (
     Column(
         "split_seconds",
         "split",
         "s",
-        "Time to split; with the cell graph if it needs one.",
+        "Time to split; with the cell graph if the method needs it.",
         "lower",
     ),
+    Column("graph_seconds", "graph", "s", "What of it went into the cell graph."),
     Column(
         "peak_bytes", "memory", "bytes", "Memory the split needed beyond mesh and graph.", "lower"
     ),
@@ -38,7 +44,8 @@ COMPARED_COLUMNS: tuple[Column, ...] = (
         "run_seconds",
         "run",
         "s",
-        "Predicted time of the whole run: time to split + steps x predicted step.",
+        "Predicted time of the whole run: time to split + steps x predicted step; a partition "
+        "from elsewhere took no time to split.",
         "lower",
         needs_faces=True,
     ),
@@ -58,8 +65,11 @@ class ComparedSplit:
     partition : Partition or None
     assessment : Assessment or None
     split_seconds : float or None
-        None for a partition from elsewhere.
+        With the cell graph if the method needs it; None for a partition from elsewhere.
+    graph_seconds : float or None
+        What of it went into the cell graph.
     peak_bytes : int or None
+        Beyond mesh and graph; None where the system cannot tell.
     failure : str
         Why there is no partition; empty if there is one.
     """
@@ -68,60 +78,65 @@ class ComparedSplit:
     partition: Partition | None = None
     assessment: Assessment | None = None
     split_seconds: float | None = None
+    graph_seconds: float | None = None
     peak_bytes: int | None = None
     failure: str = ""
+
+    def figures(self, steps: int) -> dict[str, Any]:
+        """Return the value of each of `COMPARED_COLUMNS`, None where it is unknown."""
+        known: dict[str, Any] = {} if self.assessment is None else dict(self.assessment.total)
+        step = known.get("step_seconds")
+        known["split_seconds"] = self.split_seconds
+        known["graph_seconds"] = self.graph_seconds
+        known["peak_bytes"] = self.peak_bytes
+        known["run_seconds"] = None if step is None else (self.split_seconds or 0.0) + steps * step
+        return {column.name: _plain(known.get(column.name)) for column in COMPARED_COLUMNS}
 
 
 @dataclass(frozen=True, eq=False)
 class Comparison:
-    """Rows in the order asked for.
+    """Rows in the order asked for, partitions from elsewhere last.
 
     Attributes
     ----------
     rows : tuple of ComparedSplit
     steps : int
         Length of the run behind `run_seconds`.
-    graph_seconds : float
-        Time to build the cell graph, shared by all rows; part of `split_seconds` of the methods
-        that need it.
+    graph_seconds : float or None
+        Time to build the cell graph, part of `split_seconds` of the methods that need it; None if
+        the mesh is known by its centres only.
+    graph_bytes : int or None
+        Memory that took.
     """
 
     rows: tuple[ComparedSplit, ...]
     steps: int
-    graph_seconds: float
+    graph_seconds: float | None
+    graph_bytes: int | None = None
 
     def figures(self) -> Iterator[dict[str, Any]]:
         """Yield name and figures of each row; None where a figure is unknown."""
         for row in self.rows:
-            known: Mapping[str, Any] = {} if row.assessment is None else row.assessment.total
-            step = known.get("step_seconds")
-            run = None if step is None else (row.split_seconds or 0.0) + self.steps * step
-            own = {
-                "split_seconds": row.split_seconds,
-                "peak_bytes": row.peak_bytes,
-                "run_seconds": run,
-            }
-            yield {
-                "name": row.name,
-                **{column.name: {**known, **own}.get(column.name) for column in COMPARED_COLUMNS},
-            }
+            yield {"name": row.name, **row.figures(self.steps)}
 
     def best(self) -> dict[str, list[int]]:
-        """Return for each figure that has a better end the rows that reach it (all, if tied)."""
+        """Return for each figure that has a better end the rows that reach it (all, if tied).
+
+        Figures that fewer than two rows have are left out.
+        """
         table = list(self.figures())
         found: dict[str, list[int]] = {}
         for column in COMPARED_COLUMNS:
             values = {k: row[column.name] for k, row in enumerate(table)}
-            values = {k: v for k, v in values.items() if v is not None and np.isfinite(v)}
+            values = {k: value for k, value in values.items() if value is not None}
             if not column.better or len(values) < 2:
                 continue
-            pick = min if column.better == "lower" else max
-            edge = pick(values.values())
+            edge = (min if column.better == "lower" else max)(values.values())
             found[column.name] = [k for k, value in values.items() if value == edge]
         return found
 
     def to_json_dict(self) -> dict[str, Any]:
-        """Return all rows with all figures, stable keys."""
+        """Return all rows with all figures as plain Python values, stable keys, strict JSON."""
         rows = [
             {**figures, "failure": row.failure or None}
             for row, figures in zip(self.rows, self.figures(), strict=True)
@@ -130,6 +145,7 @@ class Comparison:
         return {
             "steps": self.steps,
             "graph_seconds": self.graph_seconds,
+            "graph_bytes": self.graph_bytes,
             "rows": rows,
             "best": best,
         }
@@ -141,23 +157,37 @@ def compare_methods(
     methods: Sequence[str] | None,
     given: Mapping[str, Partition],
     steps: int,
+    repeat: int,
+    time_graph: Callable[[int], Metered | None],
     measure: Callable[[Partition], Assessment],
 ) -> Comparison:
-    """Run methods on one problem and measure their partitions, and given ones, alike."""
+    """Run methods on one problem and measure their partitions, and given ones, alike.
+
+    Parameters
+    ----------
+    problem : Problem
+    methods, given, steps, repeat
+        As for `sfcpart.compare`.
+    time_graph : callable
+        Builds the cell graph a number of times and returns what that took; None if there is none.
+    measure : callable
+        Assesses a partition.
+    """
     names = _known(methods)
-    clash = [name for name in given if name in names]
-    if clash:
-        raise InputError(f"a given partition is named {clash[0]!r} like a method; rename it")
-    if isinstance(steps, bool) or not isinstance(steps, int | np.integer) or steps < 1:
-        raise InputError(f"steps is {steps!r}; wanted a whole number, 1 or more")
-    _, graph_seconds, _ = metered(problem.graph)
-    rows = [_run(name, problem, graph_seconds=graph_seconds) for name in names]
-    rows += [ComparedSplit(name, partition=partition) for name, partition in given.items()]
+    steps, repeat = _whole(steps, "steps"), _whole(repeat, "repeat")
+    others = [_given_row(name, given[name], problem, taken=names) for name in given]
+    graph = time_graph(repeat)
+    rows = [_run(name, problem, repeat=repeat, graph=graph) for name in names]
     measured = (
         row if row.partition is None else replace(row, assessment=measure(row.partition))
-        for row in rows
+        for row in rows + others
     )
-    return Comparison(rows=tuple(measured), steps=int(steps), graph_seconds=graph_seconds)
+    return Comparison(
+        rows=tuple(measured),
+        steps=steps,
+        graph_seconds=None if graph is None else graph.seconds,
+        graph_bytes=None if graph is None else graph.peak_bytes,
+    )
 
 
 def _known(methods: Sequence[str] | None) -> list[str]:
@@ -171,38 +201,68 @@ def _known(methods: Sequence[str] | None) -> list[str]:
     return names
 
 
-def _run(name: str, problem: Problem, *, graph_seconds: float) -> ComparedSplit:
+def _whole(value: object, name: str) -> int:
+    """Return a whole number of at least 1."""
+    if isinstance(value, bool) or not isinstance(value, int | np.integer) or value < 1:
+        raise InputError(f"{name} is {value!r}; wanted a whole number, 1 or more")
+    return int(value)
+
+
+def _given_row(
+    name: str, partition: Partition, problem: Problem, *, taken: Sequence[str]
+) -> ComparedSplit:
+    """Check a partition from elsewhere before any time is spent; empty last parts are parts."""
+    n_cells, n_parts = len(problem.centers), problem.n_parts
+    if name in taken:
+        raise InputError(f"a given partition is named {name!r} like a method; rename it")
+    if partition.n_cells != n_cells:
+        raise InputError(
+            f"the given partition {name!r} has {partition.n_cells} cells, the mesh {n_cells}; "
+            "wanted the same"
+        )
+    if partition.n_parts > n_parts:
+        raise InputError(
+            f"the given partition {name!r} has {partition.n_parts} parts; the comparison is of "
+            f"{n_parts}: compare into {partition.n_parts} parts"
+        )
+    return ComparedSplit(name, partition=Partition.from_array(partition.cell_part, n_parts))
+
+
+def _run(name: str, problem: Problem, *, repeat: int, graph: Metered | None) -> ComparedSplit:
     """Run one method on a problem and measure it; a refusal becomes a row that says why."""
     method = METHODS[name]
     try:
         _warm_up(name, problem)
-        cell_part, seconds, peak = metered(lambda: method.run(problem))
+        cell_part, took = metered(lambda: method.run(problem), repeat=repeat)
+        partition = Partition.from_array(cell_part, problem.n_parts)
     except SfcpartError as error:
         return ComparedSplit(name, failure=str(error))
+    for_graph = graph.seconds if graph is not None and method.needs_graph else 0.0
     return ComparedSplit(
         name,
-        partition=Partition.from_array(cell_part, problem.n_parts),
-        split_seconds=seconds + (graph_seconds if method.needs_graph else 0.0),
-        peak_bytes=peak,
+        partition=partition,
+        split_seconds=took.seconds + for_graph,
+        graph_seconds=for_graph,
+        peak_bytes=took.peak_bytes,
     )
 
 
 def _warm_up(name: str, problem: Problem) -> None:
-    """Load (or compile) what a method needs on the first few cells, so that it is not timed."""
+    """Load what a method needs on the first cells: a run that compiles is timed a second time."""
     n = min(_WARM_CELLS, len(problem.centers))
     n_parts = min(problem.n_parts, max(1, n // 8))
-    graph = problem.graph() if METHODS[name].needs_graph else None
+    graph = _first_cells(problem.graph(), n) if METHODS[name].needs_graph else None
     small = replace(
         problem,
         centers=problem.centers[:n],
         n_parts=n_parts,
         part_speed=problem.part_speed[:n_parts],
         level_sizes=(n_parts,),
-        graph=lambda: _first_cells(graph, n) if graph is not None else problem.graph(),
+        graph=problem.graph if graph is None else lambda: graph,
         weight=None if problem.weight is None else problem.weight[:n],
-        limit_weight=None,
-        part_limit=None,
-        group=None,
+        limit_weight=None if problem.limit_weight is None else problem.limit_weight[:n],
+        part_limit=None if problem.part_limit is None else problem.part_limit[:n_parts],
+        group=None if problem.group is None else problem.group[:n],
     )
     try:
         METHODS[name].run(small)
@@ -223,3 +283,8 @@ def _first_cells(graph: CellGraph, n: int) -> CellGraph:
         boundary_count=graph.boundary_count[:n],
         boundary_measure=graph.boundary_measure[:n],
     )
+
+
+def _plain(value: Any) -> Any:
+    """Replace what is not a finite number by None."""
+    return None if value is None or not isfinite(value) else value

@@ -13,13 +13,15 @@ import sys
 from collections.abc import Callable
 from typing import Any, ParamSpec, TypeVar
 
-__all__ = ["COMPILED", "jit", "load_for_us_alone"]
+__all__ = ["COMPILED", "count_compiled", "jit", "load_for_us_alone"]
 
 P = ParamSpec("P")
 R = TypeVar("R")
 
 COMPILED: bool = os.environ.get("SFCPART_COMPILE", "1") != "0"
 """Whether kernels are compiled in this process."""
+
+_kernels: list[Any] = []
 
 
 def jit(function: Callable[P, R]) -> Callable[P, R]:
@@ -31,7 +33,13 @@ def jit(function: Callable[P, R]) -> Callable[P, R]:
     compiled: Callable[P, R] = njit(cache=True, nogil=True, fastmath=False, boundscheck=False)(
         function
     )
+    _kernels.append(compiled)
     return compiled
+
+
+def count_compiled() -> int:
+    """Count what was compiled, or loaded from disk, in this process: kernels times types."""
+    return sum(len(kernel.signatures) for kernel in _kernels)
 
 
 def load_for_us_alone() -> None:
