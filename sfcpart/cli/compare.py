@@ -84,11 +84,12 @@ def command(mesh: str, **given: Any) -> None:
     model = step_model(given)
     from sfcpart import api
     from sfcpart.cli.console import Stages, print_json
-    from sfcpart.cli.wishes import load_wish, read_mesh, shape_wish
+    from sfcpart.cli.inputs import read_mesh
+    from sfcpart.cli.wishes import load_wish, shape_wish
 
     doing = Stages(quiet=given["quiet"] or given["as_json"])
     with doing(f"reading {mesh}"):
-        loaded = read_mesh(mesh, given)
+        loaded = read_mesh(mesh, merge_points=given["merge_points"])
         others = {name: _parts(loaded, place) for name, place in given["given_parts"]}
     with doing("splitting and measuring"):
         comparison = api.compare(

@@ -1,4 +1,4 @@
-"""Read what options name besides the mesh: parts, speeds, pairs of cells."""
+"""Read what the command line names: the mesh, parts, speeds, pairs of cells."""
 
 from __future__ import annotations
 
@@ -14,7 +14,27 @@ if TYPE_CHECKING:
     from sfcpart.mesh.mesh import Mesh
     from sfcpart.partition import Partition
 
-__all__ = ["partition_from_field", "partition_from_path", "read_pairs", "read_speeds"]
+__all__ = [
+    "partition_from_field",
+    "partition_from_path",
+    "read_mesh",
+    "read_pairs",
+    "read_speeds",
+]
+
+
+def read_mesh(path: str, *, merge_points: float | None = None) -> Mesh:
+    """Read a mesh that there is memory to split, with near points merged if asked.
+
+    Where the file tells its size, that is settled before it is read.
+    """
+    from sfcpart import api
+    from sfcpart.memory import check_memory, memory_for_file, memory_for_mesh
+
+    check_memory(memory_for_file(path), path)
+    mesh = api.read_mesh(path)
+    check_memory(memory_for_mesh(mesh), path)
+    return mesh if merge_points is None else mesh.with_points_merged(merge_points)
 
 
 def partition_from_field(mesh: Mesh, name: str) -> Partition:

@@ -45,12 +45,11 @@ def command(
     prepare_process(threads)
     from sfcpart import api
     from sfcpart.cli.console import Stages, print_json
+    from sfcpart.cli.inputs import read_mesh
 
     doing = Stages(quiet=quiet or as_json)
     with doing(f"reading {mesh}"):
-        loaded = api.read_mesh(mesh)
-        if merge_points is not None:
-            loaded = loaded.with_points_merged(merge_points)
+        loaded = read_mesh(mesh, merge_points=merge_points)
     with doing("looking it over"):
         survey = api.inspect(loaded)
     if as_json:

@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING, Any
 from sfcpart import api
 from sfcpart.cli.console import Stages, print_json
 from sfcpart.cli.figures import headline, print_assessment
-from sfcpart.cli.wishes import load_wish, read_mesh, shape_wish
+from sfcpart.cli.inputs import read_mesh
+from sfcpart.cli.wishes import load_wish, shape_wish
 
 if TYPE_CHECKING:
     from sfcpart.measure.assessment import Assessment
@@ -40,7 +41,7 @@ class SplitJob:
 
             check_output_folder(given["output"], overwrite=given["overwrite"])
         with self.doing(f"reading {self.source}"):
-            self.mesh = read_mesh(self.source, given)
+            self.mesh = read_mesh(self.source, merge_points=given["merge_points"])
         with self.doing(f"splitting {self.mesh.n_cells:,} cells"):
             self._split()
         if given["output"] is not None:

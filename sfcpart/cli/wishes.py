@@ -3,21 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from typing import TYPE_CHECKING, Any, TypeVar
+from typing import Any, TypeVar
 
 import click
 
 from sfcpart.cli.options import LEVELS, LIMIT, PAIR, SPEEDS, Names, weight_option
-
-if TYPE_CHECKING:
-    from sfcpart.mesh.mesh import Mesh
 
 __all__ = [
     "METHOD",
     "MethodOption",
     "check_part_count",
     "load_wish",
-    "read_mesh",
     "shape_wish",
     "wish_options",
 ]
@@ -144,15 +140,6 @@ def check_part_count(given: dict[str, Any]) -> None:
         spelled = "x".join(map(str, levels))
         raise click.UsageError(f"--levels {spelled} makes {product} parts, --parts asks {n_parts}")
     given["n_parts"] = product
-
-
-def read_mesh(path: str, given: dict[str, Any]) -> Mesh:
-    """Read the mesh, with near points merged if asked."""
-    from sfcpart import api
-
-    mesh = api.read_mesh(path)
-    tolerance = given["merge_points"]
-    return mesh if tolerance is None else mesh.with_points_merged(tolerance)
 
 
 def load_wish(given: dict[str, Any]) -> dict[str, Any]:

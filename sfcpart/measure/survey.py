@@ -10,6 +10,7 @@ import numpy as np
 
 from sfcpart.dtypes import Array
 from sfcpart.graph import CellGraph, components
+from sfcpart.measure.memory import split_memory
 from sfcpart.mesh.check import (
     CellCheck,
     Offenders,
@@ -19,14 +20,11 @@ from sfcpart.mesh.check import (
     unused_points,
 )
 from sfcpart.mesh.cracks import Cracks, find_cracks
-from sfcpart.mesh.kinds import POLYGON, kind_tables
 from sfcpart.mesh.mesh import Mesh
 
-__all__ = ["FieldNote", "GroupNote", "Survey", "split_memory", "survey_mesh"]
+__all__ = ["FieldNote", "GroupNote", "Survey", "survey_mesh"]
 
 _MANY_ALONE = 0.01
-_PROCESS = 200_000_000
-"""Bytes of a process that has loaded everything and split a mesh of no size (measured: 190)."""
 
 
 @dataclass(frozen=True)
@@ -208,57 +206,6 @@ def _note_field(name: str, values: Array) -> FieldNote:
         return FieldNote(name, dtype, False, None, None, None)
     low, high, total = float(values.min()), float(values.max()), float(values.sum(dtype=float))
     return FieldNote(name, dtype, low >= 0 and total > 0, low, high, total)
-
-
-def split_memory(mesh: Mesh) -> int:
-    """Estimate the peak memory of splitting, measuring and writing a mesh.
-
-    Parameters
-    ----------
-    mesh : Mesh
-
-    Returns
-    -------
-    int
-        Bytes: the process itself, the mesh, and for each cell its centre and measure (8 bytes a
-        number), 8 for part and weight, and the larger of 48 (keys and their order) and 28 with
-        another 32 a face of it (the cell graph while it is made).
-
-    Notes
-    -----
-    Measured with `sfcpart split --parts 64` of VTKHDF files of 0.3 and 2 million cells: 312 bytes
-    a hexahedron where this formula says 325, 216 bytes a tetrahedron where it says 225.
-
-    Examples
-    --------
-    >>> small = Mesh.from_centers([[0.0, 0.0]])
-    >>> large = Mesh.from_centers([[0.0, 0.0]] * 1000)
-    >>> split_memory(large) - split_memory(small)
-    104895
-    """
-    held = [mesh.points, mesh.kind, mesh.indptr, mesh.indices, mesh.given_center]
-    held += [mesh.given_measure, *mesh.cell_fields.values(), *mesh.point_fields.values()]
-    n_faces = _count_cell_faces(mesh)
-    if mesh.polyhedra is not None:
-        faces = mesh.polyhedra
-        held += [faces.face_indptr, faces.face_indices, faces.cell_indptr, faces.cell_indices]
-    if mesh.faces is not None:
-        held += [mesh.faces.cell, mesh.faces.measure]
-    size = sum(array.nbytes for array in held if array is not None)
-    graph = 28 * mesh.n_cells + 32 * n_faces if n_faces else 0
-    each = 8 * (mesh.space_dim + 1) + 8
-    return _PROCESS + size + each * mesh.n_cells + max(48 * mesh.n_cells, graph)
-
-
-def _count_cell_faces(mesh: Mesh) -> int:
-    """Count the faces of all cells, shared ones from both sides."""
-    if mesh.faces is not None:
-        return 2 * len(mesh.faces.cell)
-    count = kind_tables().face_count.astype(np.int64)
-    total = int(np.bincount(mesh.kind, minlength=256) @ count)
-    if mesh.polyhedra is not None:
-        total += len(mesh.polyhedra.cell_indices)
-    return total + int(np.diff(mesh.indptr)[mesh.kind == POLYGON].sum())
 
 
 def _warnings(

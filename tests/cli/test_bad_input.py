@@ -157,6 +157,24 @@ def test_huge_weights_still_balance_or_are_refused(sfcpart):
     assert "imbalance 0 %" in ended.out
 
 
+@pytest.mark.parametrize("verb", ["split -n 2", "inspect", "compare -n 2"])
+def test_a_mesh_too_large_for_the_memory_is_refused_before_it_is_read(sfcpart, monkeypatch, verb):
+    monkeypatch.setattr("sfcpart.memory.memory_left", lambda: 1000)
+    monkeypatch.setattr("sfcpart.memory.resident_memory", lambda: 100_000_000)
+    monkeypatch.setattr("sfcpart.api.read_mesh", None)
+    ended = sfcpart(f"{verb} meshes/kelvin_cells.vtkhdf")
+    assert ended.code == 6
+    assert "a split needs about 0.2 GB of memory, 0.1 GB are there" in ended.err
+    assert ended.err.count("\n") == 1
+
+
+def test_other_formats_are_refused_once_their_size_is_known(sfcpart, monkeypatch):
+    monkeypatch.setattr("sfcpart.memory.memory_left", lambda: 1000)
+    monkeypatch.setattr("sfcpart.memory.resident_memory", lambda: 100_000_000)
+    ended = sfcpart("split meshes/turbine.vtu -n 2 -o parts")
+    assert (ended.code, Path("parts").exists()) == (6, False)
+
+
 def test_an_unreadable_file_is_named(sfcpart):
     shutil.copy("meshes/turbine.vtu", "a.vtu")
     Path("a.vtu").chmod(0)

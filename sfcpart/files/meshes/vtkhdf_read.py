@@ -15,7 +15,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 from os import PathLike
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 
@@ -26,7 +26,7 @@ from sfcpart.files.meshes.raw import RawMesh, join_pieces
 from sfcpart.mesh.kinds import kind_tables
 from sfcpart.mesh.mesh import Polyhedra
 
-__all__ = ["read_vtkhdf", "vtkhdf_cell_rows", "vtkhdf_counts"]
+__all__ = ["VtkhdfCounts", "read_vtkhdf", "vtkhdf_cell_rows", "vtkhdf_counts"]
 
 _BLOCK = 1 << 21  # ids converted at a time: 16 MB, small beside any mesh worth splitting
 
@@ -57,8 +57,28 @@ def read_vtkhdf(path: str | PathLike[str]) -> RawMesh:
     return join_pieces(raw, len(reader.extent.n_cells), str(path))
 
 
-def vtkhdf_counts(path: str | PathLike[str]) -> tuple[int, int]:
-    """Return (cells, points) of the step that would be read, ghosts included, without reading.
+class VtkhdfCounts(NamedTuple):
+    """What a file holds, ghosts included.
+
+    Attributes
+    ----------
+    n_cells, n_points : int
+    n_faces : int
+        Faces of all cells, shared ones from both sides: as many as a cell has points, 6 at most
+        (right for simplices, pyramids and hexahedra, a sixth too many for wedges), and those that
+        polyhedra list.
+    n_bytes : int
+        Of the arrays in memory once they are read.
+    """
+
+    n_cells: int
+    n_points: int
+    n_faces: int
+    n_bytes: int
+
+
+def vtkhdf_counts(path: str | PathLike[str]) -> VtkhdfCounts:
+    """Return the size of the step that would be read, without reading it.
 
     Raises
     ------
@@ -66,8 +86,7 @@ def vtkhdf_counts(path: str | PathLike[str]) -> tuple[int, int]:
         As for `read_vtkhdf`.
     """
     with read_hdf5(path) as file:
-        extent = _extent(_grid(file, path), str(path))
-        return sum(extent.n_cells), sum(extent.n_points)
+        return _Reader(str(path), _grid(file, path)).counts()
 
 
 def vtkhdf_cell_rows(path: str | PathLike[str]) -> tuple[int, Int64Array]:
@@ -206,6 +225,25 @@ class _Reader:
             point_fields=self._fields("PointData", extent.point, n_points),
         )
 
+    def counts(self) -> VtkhdfCounts:
+        """Count what `read` would return."""
+        n_cells, n_points, n_ids = map(
+            sum, (self.extent.n_cells, self.extent.n_points, self.extent.n_ids)
+        )
+        id_bytes = np.dtype(index_dtype(n_points)).itemsize
+        n_bytes = 24 * n_points + 9 * n_cells + id_bytes * n_ids
+        n_faces = min(n_ids, 6 * n_cells)
+        if "PolyhedronToFaces" in self.group:
+            links, face_ids = (
+                sum(self._part_counts(name)[0])
+                for name in ("NumberOfPolyhedronToFaceIds", "NumberOfFaceConnectivityIds")
+            )
+            n_faces += links
+            n_bytes += id_bytes * (links + face_ids) + 8 * (n_cells + links)
+        for where, n_rows in (("CellData", n_cells), ("PointData", n_points)):
+            n_bytes += n_rows * sum(map(_row_bytes, self.group.get(where, {}).values()))
+        return VtkhdfCounts(n_cells, n_points, n_faces, n_bytes)
+
     def dimensions(self) -> Array:
         """Return the dimension of each element of the step, -1 for ghosts."""
         extent, n_cells = self.extent, sum(self.extent.n_cells)
@@ -312,6 +350,14 @@ class _Reader:
                 at = _at_step(starts, name, self.extent.step, self.path)
             fields[name] = self._rows(f"{where}/{name}", at, n_rows, "biuf")
         return fields
+
+
+def _row_bytes(dataset: Any) -> int:
+    """Return the bytes of a row of a field of numbers, 0 for anything else."""
+    dtype = getattr(dataset, "dtype", None)
+    if dtype is None or dtype.kind not in "biuf":
+        return 0
+    return int(dtype.itemsize * np.prod(dataset.shape[1:], dtype=np.int64))
 
 
 def _blocks(count: int) -> Iterator[tuple[int, int]]:

@@ -9,7 +9,7 @@ import pytest
 
 from sfcpart.errors import MeshError
 from sfcpart.graph import cell_graph
-from sfcpart.measure.survey import split_memory, survey_mesh
+from sfcpart.measure.survey import survey_mesh
 from sfcpart.mesh.check import Offenders
 from sfcpart.mesh.mesh import BoundaryGroup, Mesh
 from tests.strategies import DEGENERATE, grid
@@ -92,9 +92,3 @@ def test_groups_are_listed_and_inverted_cells_warned_of():
     found = survey(Mesh.from_arrays(cube.points, {"hexahedron": rows}, boundary=[wall]))
     assert [(g.name, g.tag, g.n_elements) for g in found.boundary] == [("wall", 5, 1)]
     assert found.warnings == ("1 cell has a negative measure (1): they are inside out",)
-
-
-def test_the_memory_of_a_split_grows_with_the_mesh():
-    small, large = grid((4, 4, 4)), grid((8, 8, 8))
-    assert split_memory(large) > split_memory(small)
-    assert 300 < (split_memory(large) - split_memory(small)) / (512 - 64) < 400

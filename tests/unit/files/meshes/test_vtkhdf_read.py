@@ -56,7 +56,7 @@ def test_partitions_are_joined_and_ghosts_counted_once(path):
     assert (mesh.n_cells, mesh.n_points, mesh.indices.dtype) == (2, 12, np.int32)
     assert mesh.measures.tolist() == [1.0, 1.0]
     assert cell_graph(mesh).n_faces == 1
-    assert vtkhdf_counts(path) == (4, 24)
+    assert vtkhdf_counts(path)[:2] == (4, 24)
 
 
 def test_without_global_ids_points_of_partitions_stay_separate(path):
@@ -107,7 +107,7 @@ def test_last_time_step_is_read(path):
     mesh = read_mesh(path)
     assert mesh.measures.tolist() == [8.0]
     assert mesh.cell_fields["work"].tolist() == [7.0]
-    assert vtkhdf_counts(path) == (1, 8)
+    assert vtkhdf_counts(path)[:2] == (1, 8)
 
 
 @pytest.mark.parametrize(
