@@ -103,12 +103,14 @@ def split(
     seed : int
         The only source of randomness of the methods that use any.
     comm : Comm, optional
-        Reserved for meshes spread over ranks; this process alone by default.
+        Ranks that each hold a slice of the cells as `mesh` (and of whatever has a row a cell),
+        for methods along a curve; this process alone by default. `pairs`, `periodic` and texts as
+        groups need the whole mesh.
 
     Returns
     -------
     Partition
-        The same for any number of threads.
+        Of this rank's cells; the same for any number of threads and ranks.
 
     Raises
     ------

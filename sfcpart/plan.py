@@ -4,13 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from math import isfinite, prod
-from typing import TYPE_CHECKING, TypeAlias
+from typing import TYPE_CHECKING, Any, TypeAlias
 
 import numpy as np
 from numpy.typing import ArrayLike
 
 from sfcpart.dtypes import Array, FloatArray, Int64Array
-from sfcpart.errors import InputError, PartitionError, WeightError
+from sfcpart.errors import InputError, PartitionError, SfcpartError, WeightError
 from sfcpart.graph import cell_graph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.methods.problem import Problem
@@ -52,28 +52,41 @@ def plan_problem(
     seed: int,
     comm: Comm,
 ) -> Problem:
-    """Check what was asked and cast it into a `Problem`; see `sfcpart.split` for the meanings."""
-    n_parts = _whole(n_parts, "n_parts")
-    _check_part_count(n_parts, mesh.n_cells)
-    weight = weights_of(mesh, weights)
-    limit_weight, part_limit, limit_unit = _limits(
-        weights_of(mesh, limit_weights), limits, n_parts, mesh
-    )
+    """Check what was asked and cast it into a `Problem`; see `sfcpart.split` for the meanings.
+
+    With several ranks each holds a slice of the cells as its mesh, and of what has a row a cell;
+    what is wrong on one rank is raised on all.
+    """
+    n_cells = np.array([mesh.n_cells], np.int64)
+    total, first_gid = int(comm.allreduce(n_cells)[0]), int(comm.exscan(n_cells)[0])
+    wish: dict[str, Any] = {}
+    work: Array | None = None
+    second: Array | None = None
+    error = None
+    try:
+        n_parts = _whole(n_parts, "n_parts")
+        _check_part_count(n_parts, total)
+        work, second = weights_of(mesh, weights), _second_weight(mesh, limit_weights, limits)
+        wish = {
+            "part_speed": part_speeds(speeds, n_parts),
+            "tolerance": _tolerance(tolerance),
+            "level_sizes": _levels(levels, n_parts),
+            "group": _groups(mesh, together, pairs, periodic),
+            "face_weight": _face_weight(face_weight),
+            "seed": _whole(seed, "seed", least=0),
+        }
+    except SfcpartError as caught:
+        error = caught
+    comm.check(error)
+    whole: dict[str, Any] = {"comm": comm, "first_gid": first_gid}
     return Problem(
         centers=mesh.centers,
         n_parts=n_parts,
-        part_speed=part_speeds(speeds, n_parts),
-        comm=comm,
         graph=lambda: cell_graph(mesh),
-        weight=None if weight is None else quantise(weight, comm=comm).values,
-        tolerance=_tolerance(tolerance),
-        level_sizes=_levels(levels, n_parts),
-        limit_weight=limit_weight,
-        part_limit=part_limit,
-        limit_unit=limit_unit,
-        group=_groups(mesh, together, pairs, periodic),
-        face_weight=_face_weight(face_weight),
-        seed=_whole(seed, "seed", least=0),
+        weight=None if work is None else quantise(work, **whole).values,
+        **_limits(second, limits, n_parts, **whole),
+        **wish,
+        **whole,
     )
 
 
@@ -171,25 +184,34 @@ def _levels(levels: Sequence[int] | None, n_parts: int) -> tuple[int, ...]:
     return sizes
 
 
-def _limits(
-    weight: Array | None, limits: ArrayLike | None, n_parts: int, mesh: Mesh
-) -> tuple[Int64Array | None, Int64Array | None, float]:
-    """Return the quantised second weight, the most of it each part may hold, and their unit."""
+def _second_weight(mesh: Mesh, weights: Weights, limits: ArrayLike | None) -> Array | None:
+    """Return the second weight of each cell if it is limited, 1 each by default."""
+    weight = weights_of(mesh, weights)
+    if limits is None and weight is not None:
+        raise WeightError("a second weight was given without a limit; give both or none")
     if limits is None:
-        if weight is not None:
-            raise WeightError("a second weight was given without a limit; give both or none")
-        return None, None, 1.0
+        return None
+    return np.ones(mesh.n_cells, np.int64) if weight is None else weight
+
+
+def _limits(
+    weight: Array | None, limits: ArrayLike | None, n_parts: int, *, comm: Comm, first_gid: int
+) -> dict[str, Any]:
+    """Return the quantised second weight, the most of it each part may hold, and their unit."""
+    if weight is None:
+        return {}
     most = np.asarray(limits, np.float64)
     if most.shape not in ((), (1,), (n_parts,)):
         raise WeightError(
             f"limits have shape {most.shape}; wanted one number, or one for each of "
             f"the {n_parts} parts"
         )
-    second = quantise(
-        np.ones(mesh.n_cells, np.int64) if weight is None else weight, what="limited weight"
-    )
-    part_limit = quantise_limits(np.broadcast_to(most, (n_parts,)), second.exponent)
-    return second.values, part_limit, second.unit
+    second = quantise(weight, comm=comm, first_gid=first_gid, what="limited weight")
+    return {
+        "limit_weight": second.values,
+        "part_limit": quantise_limits(np.broadcast_to(most, (n_parts,)), second.exponent),
+        "limit_unit": second.unit,
+    }
 
 
 def _groups(
