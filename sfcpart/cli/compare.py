@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from sfcpart.cli.options import (
-    PAIR,
+    NAMED,
     mesh_argument,
     network_options,
     output_options,
@@ -26,24 +26,16 @@ __all__ = ["command"]
 HELP = """Split MESH in several ways and measure all alike.
 
 The best figure of each column is marked with *. A method that cannot do what was asked says why.
+Times leave compilation out and count the cell graph for methods that need it; memory is what the
+split takes beyond mesh and graph. JSON and CSV hold all figures (sfcpart figures explains them).
 
 \b
 Examples:
   sfcpart compare meshes/channel_mixed.vtu --parts 8
-  sfcpart compare meshes/channel_mixed.vtu -n 8 --method hilbert --method rows --weight work
-  sfcpart compare meshes/channel_mixed.vtu -n 5 --method hilbert --given mine:cell_part.npy --json
+  sfcpart compare meshes/channel_mixed.vtu -n 8 -m hilbert -m rows --weight work
+  sfcpart compare meshes/channel_section.msh -n 6 --picture splits.png --csv splits.csv
+  sfcpart compare meshes/channel_mixed.vtu -n 5 -m hilbert --given mine:cell_part.npy --json
 """
-COLUMNS = {
-    "imbalance": "imbal.",
-    "cut_faces": "cut",
-    "halo_cells": "halo",
-    "neighbours_max": "meets",
-    "n_split_parts": "broken",
-    "surface_ratio_mean": "surface",
-    "efficiency": "effic.",
-    "split_seconds": "split",
-    "peak_bytes": "memory",
-}
 
 
 @click.command("compare", help=HELP)
@@ -61,10 +53,11 @@ COLUMNS = {
 @click.option(
     "--given",
     "given_parts",
-    type=PAIR,
+    type=NAMED,
     multiple=True,
     metavar="NAME:FIELD|FILE",
-    help="A partition from elsewhere: a cell field of MESH, a file of integers or a folder.",
+    help="A partition from elsewhere as one more row: a cell field of MESH, a text or .npy file of "
+    "integers, or a folder that split wrote. Repeat for several.",
 )
 @click.option(
     "--steps",
@@ -73,16 +66,28 @@ COLUMNS = {
     show_default=True,
     help="Length of the run whose total time is predicted.",
 )
+@click.option(
+    "--repeat",
+    type=click.IntRange(min=1),
+    default=1,
+    show_default=True,
+    help="Split so often each way; the median time counts.",
+)
 @click.option("--csv", "csv_path", type=click.Path(), metavar="FILE", help="Write a row a method.")
+@click.option(
+    "--picture", type=click.Path(), metavar="FILE", help="Draw the splits side by side as PNG."
+)
 @wish_options
 @network_options
 @output_options
 def command(mesh: str, **given: Any) -> None:
-    """Read, split in each way, print."""
+    """Read, split in each way, write, print."""
     check_part_count(given)
+    _check_names(given)
     prepare_process(given["threads"])
     model = step_model(given)
     from sfcpart import api
+    from sfcpart.cli.compare_table import print_comparison
     from sfcpart.cli.console import Stages, print_json
     from sfcpart.cli.inputs import read_mesh
     from sfcpart.cli.wishes import load_wish, shape_wish
@@ -98,17 +103,29 @@ def command(mesh: str, **given: Any) -> None:
             methods=list(given["methods"]) or None,
             given=others,
             steps=given["steps"],
+            repeat=given["repeat"],
             step_model=model,
             **shape_wish(given),
             **load_wish(given),
         )
     if given["csv_path"]:
         _write_csv(given["csv_path"], comparison)
+    if given["picture"]:
+        with doing(f"drawing {given['picture']}"):
+            _draw(given["picture"], mesh, loaded, comparison)
     if given["as_json"]:
         print_json({"mesh": mesh, "n_parts": given["n_parts"], **comparison.to_json_dict()})
     elif not given["quiet"]:
         print(f"{mesh}: {loaded.n_cells:,} cells into {given['n_parts']:,} parts\n")
-        _print(comparison)
+        print_comparison(comparison)
+
+
+def _check_names(given: dict[str, Any]) -> None:
+    """Refuse two partitions of one name, before anything is loaded."""
+    names = [name for name, _ in given["given_parts"]]
+    twice = [name for k, name in enumerate(names) if name in names[:k]]
+    if twice:
+        raise click.UsageError(f"two partitions are named {twice[0]!r}; name each its own")
 
 
 def _parts(mesh: Mesh, place: str) -> Partition:
@@ -120,43 +137,24 @@ def _parts(mesh: Mesh, place: str) -> Partition:
     return partition_from_path(place, mesh.n_cells)
 
 
-def _print(comparison: Comparison) -> None:
-    """Print a row a method, the best figures marked; then what failed, and the quickest run."""
-    from sfcpart.cli.console import print_pairs, print_table
-    from sfcpart.cli.figures import seconds
+def _draw(path: str, name: str, mesh: Mesh, comparison: Comparison) -> None:
+    """Draw all partitions there are; say which methods gave none."""
+    from sfcpart.api import graph_of
+    from sfcpart.cli.outputs import new_file
+    from sfcpart.errors import InputError
+    from sfcpart.report.side_by_side import DrawnSplit, draw_side_by_side
 
-    best = comparison.best()
-    figures = list(comparison.figures())
-    rows = []
-    for k, (row, values) in enumerate(zip(comparison.rows, figures, strict=True)):
-        if not row.failure:
-            cells = [_cell(c, values[c], best=k in best.get(c, ())) for c in COLUMNS]
-            rows.append([row.name, *cells])
-    print_table(["method", *COLUMNS.values()], rows)
-    failed = [(row.name, row.failure) for row in comparison.rows if row.failure]
-    if failed:
-        print()
-        print_pairs(failed)
-    runs = best.get("run_seconds", [])
-    if runs:
-        names = " and ".join(comparison.rows[k].name for k in runs)
-        total = seconds(figures[runs[0]]["run_seconds"])
-        print(f"\nshortest predicted run of {comparison.steps:,} steps: {names}, {total}")
-
-
-def _cell(name: str, value: Any, *, best: bool) -> str:
-    """Write a figure, with a star if no other is better."""
-    from sfcpart.cli.figures import number, percent, seconds
-
-    if name in ("imbalance", "efficiency"):
-        text = percent(value)
-    elif name == "split_seconds":
-        text = seconds(value)
-    elif name == "peak_bytes":
-        text = "-" if value is None else f"{value / 1e6:,.0f} MB"
-    else:
-        text = number(value)
-    return f"{text}*" if best else f"{text} "
+    splits = [
+        DrawnSplit(row.name, row.partition, row.assessment.total)
+        for row in comparison.rows
+        if row.partition is not None and row.assessment is not None
+    ]
+    if not splits:
+        raise InputError(f"no method gave a split to draw: {comparison.rows[0].failure}")
+    failed = [row.name for row in comparison.rows if row.failure]
+    notes = [f"No split by: {', '.join(failed)}."] if failed else []
+    with new_file(path) as place:
+        draw_side_by_side(place, mesh, splits=splits, graph=graph_of(mesh), title=name, notes=notes)
 
 
 def _write_csv(path: str, comparison: Comparison) -> None:

@@ -18,6 +18,7 @@ else:
 __all__ = [
     "LEVELS",
     "LIMIT",
+    "NAMED",
     "PAIR",
     "SPEEDS",
     "Names",
@@ -106,6 +107,21 @@ class Pair(ParamType):
         return first, second
 
 
+class Named(ParamType):
+    """A name and what it stands for, joined by the first colon (paths may hold more of them)."""
+
+    name = "named"
+
+    def convert(self, value: Any, param: Any, ctx: Any) -> tuple[str, str]:
+        """Split at the first colon."""
+        if isinstance(value, tuple):
+            return value
+        first, _, rest = str(value).partition(":")
+        if not first or not rest:
+            self.fail(f"{value!r} is no name and thing joined by a colon", param, ctx)
+        return first, rest
+
+
 class Names(ParamType):
     """One of a table that is loaded only when a value is checked or completed."""
 
@@ -128,6 +144,7 @@ class Names(ParamType):
 
 
 LEVELS, SPEEDS, LIMIT, PAIR = Levels(), Speeds(), Limit(), Pair()
+NAMED = Named()
 
 
 def _networks() -> list[str]:

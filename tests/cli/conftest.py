@@ -41,7 +41,7 @@ def sfcpart(capsys, tmp_path, monkeypatch):
     if not COMPILED:  # plain Python visits cells and pixels one by one: give it fewer
         for name, value in {"COLUMNS": 12, "ROWS": 4, "ACROSS": 3}.items():
             monkeypatch.setattr(f"sfcpart.cli.demo.{name}", value)
-        monkeypatch.setattr("sfcpart.report.picture.FINE", 1)
+        monkeypatch.setattr("sfcpart.report.painting.FINE", 1)
 
     def call(line: str) -> Ended:
         from sfcpart.cli.run import run

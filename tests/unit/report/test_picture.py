@@ -24,7 +24,7 @@ WIDTH = 300
 def _coarser_without_compiler(monkeypatch):
     """Plain Python visits every pixel by itself: give it fewer of them."""
     if not COMPILED:
-        monkeypatch.setattr("sfcpart.report.picture.FINE", 1)
+        monkeypatch.setattr("sfcpart.report.painting.FINE", 1)
 
 
 def _strips(mesh: Mesh, n_parts: int) -> Partition:
