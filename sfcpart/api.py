@@ -326,6 +326,7 @@ def write_split(
     overwrite: bool = False,
     picture: bool = False,
     compress: bool = False,
+    title: str | None = None,
     source: str | PathLike[str] | None = None,
     options: Mapping[str, Any] | None = None,
 ) -> Path:
@@ -348,6 +349,8 @@ def write_split(
         Depth of the halo, and what it grows across.
     overwrite, picture, compress : bool
         Whether to replace an earlier result, to draw `parts.png`, to pack the VTKHDF file.
+    title : str, optional
+        First line of the picture; by default the name of `source`, or the number of parts.
     source : path, optional
         The mesh file; its digest goes into `summary.json`.
     options : mapping, optional
@@ -371,7 +374,7 @@ def write_split(
         partition,
         assessment=assess(mesh, partition) if assessment is None else assessment,
         graph=graph_of(mesh),
-        how=Delivery(tuple(formats), layers, across, overwrite, picture, compress),
+        how=Delivery(tuple(formats), layers, across, overwrite, picture, compress, title),
         source=None if source is None else Path(source),
         options={} if options is None else options,
     )

@@ -41,6 +41,7 @@ class Delivery:
     overwrite: bool
     picture: bool
     compress: bool
+    title: str | None = None
 
 
 def deliver(
@@ -63,7 +64,8 @@ def deliver(
         write_cell_part(place / "cell_part.npy", partition)
         write_part_table(place / "parts.csv", _columns(assessment))
         if how.picture:
-            _draw(place, mesh, partition, assessment=assessment, graph=graph, source=source)
+            title = how.title if how.title is not None else "" if source is None else source.name
+            _draw(place, mesh, partition, assessment=assessment, graph=graph, title=title)
         summary = _summary(mesh, assessment, source=source, digest=digest, options=options)
         write_summary(place / "summary.json", summary)
     return target
@@ -145,7 +147,7 @@ def _draw(
     *,
     assessment: Assessment,
     graph: CellGraph | None,
-    source: Path | None,
+    title: str,
 ) -> None:
     """Draw the split."""
     from sfcpart.report.picture import draw_split
@@ -155,7 +157,7 @@ def _draw(
         mesh,
         partition=partition,
         graph=graph,
-        title="" if source is None else source.name,
+        title=title,
         figures=assessment.total,
     )
 

@@ -70,7 +70,7 @@ def command(n_parts: int, output: str, threads: int | None, **how: Any) -> None:
         options = {"demo": "Skerry Channel", "n_parts": n_parts, "weights": ["work"]}
         api.write_split(
             output, mesh, partition, assessment=assessment, overwrite=True, picture=True,
-            options=options,
+            title=f"Skerry Channel, {n_parts:,} parts", options=options,
         )  # fmt: skip
     if how["as_json"]:
         print_json({"output": output, "options": options, **assessment.to_json_dict()})
