@@ -1,0 +1,15 @@
+"""Inside a running solver: split, halo exchange and migration over the arrays a rank holds.
+
+All arguments are rank-local, and a communicator is always an argument: one of mpi4py (kept apart
+by a duplicate made on first use) or one of `sfcpart.comm`. Nothing happens at import, and bulk
+data travels as bytes, never pickled. `sfcpart manual in_a_solver` has a complete example.
+"""
+
+from __future__ import annotations
+
+from sfcpart.parallel.halo import Exchange, Halo
+from sfcpart.parallel.lists import ExchangePlan
+from sfcpart.parallel.migrate import Ragged, migrate
+from sfcpart.parallel.split import split_local
+
+__all__ = ["Exchange", "ExchangePlan", "Halo", "Ragged", "migrate", "split_local"]

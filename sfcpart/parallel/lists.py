@@ -1,0 +1,160 @@
+"""Who sends which cells to whom, found from the cell numbers that each rank needs.
+
+The halo of a rank is grouped by owner, ascending, and sorted by `cell_gid` within an owner, so
+that what comes from one owner is one stretch of rows. The owner sends in that same order.
+
+Cost: a few exchanges with the ranks of the directory, sorts of the owned and the needed numbers.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from sfcpart.dtypes import OFFSET, Array, Int32Array, Int64Array
+from sfcpart.errors import InputError
+from sfcpart.parallel.directory import Directory, cut
+from sfcpart.parallel.gate import agreed, checked_gids, sorted_gids
+
+if TYPE_CHECKING:
+    from sfcpart.comm.base import Comm, Stretch
+
+__all__ = ["ExchangePlan"]
+
+
+@dataclass(frozen=True, eq=False)
+class ExchangePlan:
+    """The exchange lists of one rank (read-only).
+
+    Attributes
+    ----------
+    n_owned : int
+        Owned cells: local rows 0 to n_owned - 1, in the order of `cell_gid`.
+    halo_gid : (n_halo,) int64
+        Cells of others that are needed: local rows from n_owned on.
+    source : (n_sources,) int32, ascending
+        Ranks that own them.
+    source_indptr : (n_sources + 1,) int64
+        Rows of `halo_gid` that come from each source.
+    target : (n_targets,) int32, ascending
+        Ranks that need owned cells.
+    target_indptr : (n_targets + 1,) int64
+        Rows of `send` that go to each target.
+    send : (n_send,) int64
+        Local rows that are sent; by target, then cell number. A cell may go to several targets.
+    known_gid, known_row : (n_owned + n_halo,) int64
+        All local cells, ascending, and their local rows.
+    """
+
+    n_owned: int
+    halo_gid: Int64Array
+    source: Int32Array
+    source_indptr: Int64Array
+    target: Int32Array
+    target_indptr: Int64Array
+    send: Int64Array
+    known_gid: Int64Array
+    known_row: Int64Array
+
+    @classmethod
+    def of(cls, needed_gid: ArrayLike, *, cell_gid: ArrayLike, comm: Comm) -> ExchangePlan:
+        """Find owners and make the lists; all ranks together.
+
+        Parameters
+        ----------
+        needed_gid : (n,) integers
+            Cells this rank needs, in any order; owned ones, doubles and negatives are ignored.
+        cell_gid : (n_owned,) integers
+            Cells this rank owns; all ranks together own each cell once.
+        comm : Comm
+
+        Raises
+        ------
+        InputError
+            If cells are owned twice, or needed and owned by nobody.
+        """
+        owned = agreed(comm, lambda: checked_gids(cell_gid, "cell_gid"))
+        gid, row = agreed(comm, lambda: sorted_gids(owned))
+        needed = agreed(comm, lambda: _foreign(checked_gids(needed_gid, "needed_gid"), gid))
+        owner = Directory.of(gid, comm=comm).owners(needed)
+        halo = needed[np.argsort(owner, kind="stable")]
+        count = np.bincount(owner, minlength=comm.size)
+        wanted = comm.alltoall(cut(halo, _before(count)))
+        source, target = np.flatnonzero(count), np.flatnonzero([len(piece) for piece in wanted])
+        known = np.concatenate([owned, halo])
+        order = np.argsort(known, kind="stable")
+        plan = cls(
+            n_owned=len(owned),
+            halo_gid=halo,
+            source=source.astype(np.int32),
+            source_indptr=_before(count[source]),
+            target=target.astype(np.int32),
+            target_indptr=_before(np.array([len(wanted[rank]) for rank in target])),
+            send=row[np.searchsorted(gid, np.concatenate(wanted))],
+            known_gid=known[order],
+            known_row=order,
+        )
+        _freeze(plan)
+        return plan
+
+    @property
+    def n_halo(self) -> int:
+        """Number of cells of others that this rank needs."""
+        return len(self.halo_gid)
+
+    def local_rows(self, gid: ArrayLike) -> Int64Array:
+        """Return the local row of each cell number, of any shape; negatives give -1.
+
+        Raises
+        ------
+        InputError
+            If a cell is neither owned nor in the halo.
+        """
+        asked = np.asarray(gid)
+        flat = checked_gids(asked.reshape(-1), "gid")
+        at = np.searchsorted(self.known_gid, flat)
+        found = at < len(self.known_gid)
+        found[found] = self.known_gid[at[found]] == flat[found]
+        strange = np.flatnonzero(~found & (flat >= 0))
+        if len(strange):
+            raise InputError(
+                f"cell {flat[strange[0]]} is neither owned nor in the halo of this rank; "
+                "build the halo from all cells that are needed"
+            )
+        row = np.full(len(flat), -1, np.int64)
+        row[found] = self.known_row[at[found]]
+        return row.reshape(asked.shape)
+
+    def sources(self) -> list[Stretch]:
+        """Return the halo rows that come from each rank."""
+        return _stretches(self.source, self.source_indptr)
+
+    def targets(self) -> list[Stretch]:
+        """Return the rows of `send` that go to each rank."""
+        return _stretches(self.target, self.target_indptr)
+
+
+def _foreign(needed: Int64Array, owned: Int64Array) -> Int64Array:
+    """Return the needed cells that are not owned, ascending, each once."""
+    needed = np.unique(needed[needed >= 0])
+    return needed[~np.isin(needed, owned, assume_unique=True)]
+
+
+def _before(count: Array) -> Int64Array:
+    """Return the sums before each entry and the total."""
+    return np.concatenate(([0], np.cumsum(count))).astype(OFFSET)
+
+
+def _stretches(rank: Int32Array, indptr: Int64Array) -> list[Stretch]:
+    """Return (rank, first row, row after) of each."""
+    return list(zip(rank.tolist(), indptr[:-1].tolist(), indptr[1:].tolist(), strict=True))
+
+
+def _freeze(plan: ExchangePlan) -> None:
+    """Make the arrays of a plan read-only."""
+    for value in vars(plan).values():
+        if isinstance(value, np.ndarray):
+            value.flags.writeable = False

@@ -1,0 +1,237 @@
+"""Split cells that are spread over ranks, from their centres and weights alone."""
+
+from __future__ import annotations
+
+import zlib
+from collections.abc import Sequence
+from typing import TYPE_CHECKING, Any, NamedTuple, cast
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from sfcpart.comm import adopt
+from sfcpart.dtypes import Array, FloatArray, Int32Array, Int64Array
+from sfcpart.errors import InputError, WeightError
+from sfcpart.parallel.directory import Blocks, Directory, cut
+from sfcpart.parallel.gate import agreed, checked_gids, sorted_gids
+
+if TYPE_CHECKING:
+    from sfcpart.comm.base import Comm
+    from sfcpart.curve import CurveSlice
+    from sfcpart.graph import CellGraph
+
+__all__ = ["split_local"]
+
+
+class _Given(NamedTuple):
+    """What this rank gave, checked: its cells, and what all ranks share."""
+
+    centers: FloatArray
+    weight: Array | None
+    group: Int64Array | None
+    n_parts: int
+    part_speed: FloatArray
+    level_sizes: tuple[int, ...]
+
+
+def split_local(
+    centers: ArrayLike,
+    *,
+    comm: Any,
+    n_parts: int | None = None,
+    weights: ArrayLike | None = None,
+    speeds: ArrayLike | None = None,
+    levels: Sequence[int] | None = None,
+    together: ArrayLike | None = None,
+    cell_gid: ArrayLike | None = None,
+    method: str = "hilbert",
+) -> Int32Array:
+    """Divide the cells of all ranks into parts of equal work; all ranks together.
+
+    Parameters
+    ----------
+    centers : (n_local, dim) float64
+        Centres of this rank's cells, dim 1 to 3; (0, dim) for a rank without cells.
+    comm : mpi4py communicator, or Comm
+    n_parts : int, optional
+        Number of parts; by default one for each rank of `comm`.
+    weights : (n_local,) numbers, optional
+        Work of each cell, >= 0; 1 each by default. All ranks give them or none does.
+    speeds : (n_parts,) numbers, optional
+        Relative speed of each part's rank, > 0, alike on all ranks.
+    levels : sequence of int, optional
+        Nested levels such as (4, 16): nodes, then cores; their product is the number of parts.
+    together : (n_local,) integers, optional
+        Cells of all ranks with equal numbers stay in one part; negatives are free.
+    cell_gid : (n_local,) integers, optional
+        Global cell numbers. With them the answer does not depend on which rank holds which cell:
+        ties between coincident centres go by number. Without, they go by rank and local row.
+    method : str
+        A name of `sfcpart.methods.registry.METHODS` that needs no cell graph.
+
+    Returns
+    -------
+    (n_local,) int32
+        Part of each local cell. A part is empty only if there are fewer cells than parts.
+
+    Raises
+    ------
+    InputError, WeightError, PartitionError
+        If something is malformed or cannot be met. All ranks raise it alike.
+
+    Notes
+    -----
+    O(n_local log n) time; no rank holds more than its cells and as long a stretch of the curve
+    (with the "hilbert" method). A partition changes the order in which a solver sums; it says
+    nothing about whether a simulation is right.
+
+    Examples
+    --------
+    >>> from sfcpart.comm import run_ranks
+    >>> def act(comm):  # two ranks hold a row of eight cells, every second one
+    ...     centers = np.column_stack([np.arange(comm.rank, 8, 2), np.zeros(4)])
+    ...     return split_local(centers, comm=comm).tolist()
+    >>> run_ranks(2, act)
+    [[0, 0, 1, 1], [0, 0, 1, 1]]
+    """
+    comm = adopt(comm)
+    wanted = comm.size if n_parts is None else n_parts
+    given = agreed(comm, lambda: _checked(centers, weights, together, wanted, speeds, levels))
+    _refuse_differences(given, cell_gid is not None, method, comm)
+    run = agreed(comm, lambda: _method(method))
+    given = _quantised(given, comm)
+    if cell_gid is None:
+        return cast(Int32Array, run(_problem(given, comm)))
+    gids = agreed(comm, lambda: _one_a_cell(cell_gid, "cell_gid", len(given.centers)))
+    line = _by_number(checked_gids(gids, "cell_gid"), comm)
+    return cast(Int32Array, line.scatter(run(_problem(_gathered(given, line), comm))))
+
+
+def _problem(given: _Given, comm: Comm) -> Any:
+    """Return the problem of cells in the order in which ranks hold them."""
+    from sfcpart.methods.problem import Problem
+
+    return Problem(
+        centers=given.centers,
+        n_parts=given.n_parts,
+        part_speed=given.part_speed,
+        comm=comm,
+        graph=_no_graph,
+        first_gid=_first(given, comm),
+        weight=given.weight,
+        level_sizes=given.level_sizes,
+        group=given.group,
+    )
+
+
+def _quantised(given: _Given, comm: Comm) -> _Given:
+    """Turn the weights into integers, alike on all ranks."""
+    from sfcpart.weights import quantise
+
+    if given.weight is None:
+        return given
+    return given._replace(
+        weight=quantise(given.weight, comm=comm, first_gid=_first(given, comm)).values
+    )
+
+
+def _first(given: _Given, comm: Comm) -> int:
+    """Return the number of cells on lower ranks."""
+    return int(comm.exscan(np.array([len(given.centers)]))[0])
+
+
+def _by_number(cell_gid: Int64Array, comm: Comm) -> CurveSlice:
+    """Return the way of values to ranks that hold consecutive cell numbers, and back."""
+    from sfcpart.curve import CurveSlice
+
+    gid, row = agreed(comm, lambda: sorted_gids(cell_gid))
+    Directory.of(gid, comm=comm)  # refuses cells that two ranks hold
+    edge = Blocks.of(gid, comm=comm).edges(gid)
+    pieces = comm.alltoall(cut(gid, edge))
+    received = np.array([len(piece) for piece in pieces], np.int64)
+    return CurveSlice(comm, row, edge, received, np.argsort(np.concatenate(pieces), kind="stable"))
+
+
+def _gathered(given: _Given, line: CurveSlice) -> _Given:
+    """Bring what is given for each cell to the ranks that hold it by number."""
+    columns = [line.gather(np.ascontiguousarray(column)) for column in given.centers.T]
+    return given._replace(
+        centers=np.stack(columns, axis=1),
+        weight=None if given.weight is None else line.gather(given.weight),
+        group=None if given.group is None else line.gather(given.group),
+    )
+
+
+def _method(name: str) -> Any:
+    """Return a method that needs no cell graph."""
+    from sfcpart.methods.registry import METHODS
+
+    fit = [method.name for method in METHODS.values() if not method.needs_graph]
+    if name not in fit:
+        raise InputError(
+            f"method {name!r} is unknown or needs the cell graph; wanted one of {', '.join(fit)}"
+        )
+    return METHODS[name].run
+
+
+def _checked(
+    centers: ArrayLike,
+    weights: ArrayLike | None,
+    together: ArrayLike | None,
+    n_parts: object,
+    speeds: ArrayLike | None,
+    levels: Sequence[int] | None,
+) -> _Given:
+    """Return well-formed input."""
+    array = np.ascontiguousarray(centers, np.float64)
+    if array.ndim != 2 or not 1 <= array.shape[1] <= 3:
+        raise InputError(
+            f"centers has shape {array.shape}; wanted one row a cell, (n_local, dim), dim 1 to 3"
+        )
+    if isinstance(n_parts, bool) or not isinstance(n_parts, int | np.integer) or n_parts < 1:
+        raise InputError(f"n_parts is {n_parts!r}; wanted a whole number, 1 or more")
+    weight = None if weights is None else _one_a_cell(weights, "weights", len(array))
+    group = None if together is None else _one_a_cell(together, "together", len(array))
+    speed = np.ones(int(n_parts)) if speeds is None else np.asarray(speeds, np.float64)
+    sizes = () if levels is None else tuple(int(size) for size in levels)
+    return _Given(
+        array,
+        weight,
+        None if group is None else checked_gids(group, "together"),
+        int(n_parts),
+        speed,
+        sizes,
+    )
+
+
+def _one_a_cell(values: ArrayLike, what: str, n_local: int) -> Array:
+    """Return an array with one number a cell."""
+    array = np.asarray(values)
+    if array.shape != (n_local,):
+        raise WeightError(
+            f"{what} has shape {array.shape}; wanted one number for each of the {n_local} cells"
+        )
+    return array
+
+
+def _refuse_differences(given: _Given, numbered: bool, method: str, comm: Comm) -> None:
+    """Raise on all ranks if some rank wants something else than rank 0."""
+    spelled = (
+        f"{given.centers.shape[1]} axes, {given.n_parts} parts, levels {given.level_sizes}, "
+        f"weights {given.weight is not None}, together {given.group is not None}, "
+        f"cell_gid {numbered}, method {method!r}, "
+        f"{len(given.part_speed)} speeds of checksum {zlib.crc32(given.part_speed.tobytes()):08x}"
+    )
+    first = str(comm.bcast_object(spelled))
+    error = None
+    if spelled != first:
+        error = InputError(
+            f"rank {comm.rank} and rank 0 ask for different splits ({spelled[:200]} | "
+            f"{first[:200]}); wanted the same options on all ranks"
+        )
+    comm.check(error)
+
+
+def _no_graph() -> CellGraph:
+    """Say that there is no cell graph."""
+    raise InputError("split_local has no cell graph; use a method that needs none")
