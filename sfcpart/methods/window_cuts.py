@@ -1,0 +1,201 @@
+"""Move the cuts along a curve, within the allowed imbalance, to where they cut fewest faces.
+
+B. W. Kernighan's sequential dynamic programme (J. ACM 18:34 (1971), from memory), restricted to
+one window of positions around each plain cut: exact among all choices of one position from each
+window that keep every chunk within its capacity. The plain cuts are among them, so the cut never
+grows; and the pieces stay contiguous. Windows reach half-way to the neighbouring cuts at most.
+
+Cost: O(n) to find the rows inside the windows, O(width^2) a cut.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from sfcpart.dtypes import FloatArray, Int32Array, Int64Array, IntArray
+from sfcpart.kernels.chunks import caps
+from sfcpart.kernels.window_cuts import cut_windows
+
+__all__ = ["ItemLine", "least_cut_positions", "line_capacity"]
+
+WIDEST = 1024
+"""Positions of a window on either side of the plain cut at most."""
+REACH = 2.0
+"""Weight that a window covers on either side, in units of the excess that a chunk may have."""
+
+
+@dataclass(frozen=True, eq=False)
+class ItemLine:
+    """Items in a line and the cells that they stand for.
+
+    Attributes
+    ----------
+    item : (n_cells,) integers
+        Place in the line of each cell's item; cells of one item are never parted.
+    sums : (n_items + 1,) int64
+        Weight before each position.
+    limit_sums : (n_items + 1,) int64, or None
+        The same for a second weight.
+    """
+
+    item: IntArray
+    sums: Int64Array
+    limit_sums: Int64Array | None = None
+
+    @classmethod
+    def of(
+        cls, item: IntArray, weight: Int64Array | None = None, limit_weight: Int64Array | None = None
+    ) -> ItemLine:
+        """Add up the weights of cells (1 each by default) along the line."""
+        n = int(item.max(initial=-1)) + 1
+        sums = [
+            _sums_along(item, n, np.ones(len(item), np.int64) if weight is None else weight),
+            None if limit_weight is None else _sums_along(item, n, limit_weight),
+        ]
+        assert sums[0] is not None
+        return cls(item, sums[0], sums[1])
+
+
+def line_capacity(
+    line: ItemLine, cut: Int64Array, *, speed: FloatArray, tolerance: float
+) -> Int64Array:
+    """Return the most each chunk may weigh, (n_parts,) int64.
+
+    (1 + tolerance) fair shares, or what the bottleneck of the given cuts allows if that is more.
+
+    Parameters
+    ----------
+    line : ItemLine
+    cut : (n_parts + 1,) int64
+    speed : (n_parts,) float64
+    tolerance : float
+    """
+    share = line.sums[-1] * (speed / speed.sum())
+    bottleneck = float((np.diff(line.sums[cut]) / speed).max(initial=0.0))
+    kept = caps(bottleneck, speed.astype(np.float64), int(line.sums[-1]))
+    return np.maximum(np.floor((1.0 + tolerance) * share).astype(np.int64), kept)
+
+
+def least_cut_positions(
+    line: ItemLine,
+    cut: Int64Array,
+    *,
+    indptr: Int64Array,
+    indices: IntArray,
+    capacity: Int64Array,
+    edge_weight: Int64Array | None = None,
+    limit: Int64Array | None = None,
+    reach: float = REACH,
+) -> Int64Array:
+    """Return cuts with the least total cut that windows around the given ones allow.
+
+    Parameters
+    ----------
+    line : ItemLine
+    cut : (n_parts + 1,) int64
+        Strictly increasing, from 0 to the number of items.
+    indptr, indices : (n_cells + 1,) int64, (n_entries,) integers
+        The cell graph (symmetric).
+    capacity : (n_parts,) int64
+        The most each chunk may weigh; the given chunks must keep it.
+    edge_weight : (n_entries,) int64, optional
+        1 each by default.
+    limit : (n_parts,) int64, optional
+        The most limited weight of each chunk; the given chunks must keep it.
+    reach : float
+        Half-width of a window, in units of the excess weight its lighter chunk may have.
+
+    Returns
+    -------
+    (n_parts + 1,) int64
+        Strictly increasing. Among equal cuts, the positions nearest to the given ones, one after
+        another from the right.
+
+    Examples
+    --------
+    A path of six cells whose middle edge is heavy:
+
+    >>> line = ItemLine.of(np.arange(6))
+    >>> indptr, indices = np.array([0, 1, 3, 5, 7, 9, 10]), np.array([1, 0, 2, 1, 3, 2, 4, 3, 5, 4])
+    >>> weight = np.array([2, 2, 2, 2, 9, 9, 1, 1, 2, 2])
+    >>> least_cut_positions(
+    ...     line, np.array([0, 3, 6]), indptr=indptr, indices=indices,
+    ...     capacity=np.array([4, 4]), edge_weight=weight,
+    ... ).tolist()
+    [0, 4, 6]
+    """
+    if len(cut) < 3:
+        return cut
+    low, high = _windows(line, cut, capacity, reach)
+    width = high - low + 1
+    first_row = np.concatenate(([0], np.cumsum(width)[:-1])).astype(np.int64)
+    position = np.repeat(low - first_row, width) + np.arange(int(width.sum()))
+    row_ptr, place, weight = _rows_at(line.item, position, indptr, indices, edge_weight)
+    limited = line.limit_sums is not None and limit is not None
+    chosen = np.empty(len(cut), np.int64)
+    cut_windows(
+        low, high, cut.astype(np.int64), first_row, row_ptr, place, weight, line.sums[position],
+        capacity.astype(np.int64),
+        line.limit_sums[position] if limited else np.zeros(len(position), np.int64),
+        limit.astype(np.int64) if limited else np.zeros(len(capacity), np.int64),
+        np.empty(len(position), np.int64), np.zeros(len(position), np.int32),
+        np.empty(int(width.max()), np.int64), chosen,
+    )  # fmt: skip
+    return chosen
+
+
+def _sums_along(item: IntArray, n: int, weight: Int64Array) -> Int64Array:
+    """Return the weight before each position of the line."""
+    sums = np.zeros(n + 1, np.int64)
+    np.add.at(sums[1:], item, weight)
+    return np.cumsum(sums)
+
+
+def _windows(
+    line: ItemLine, cut: Int64Array, capacity: Int64Array, reach: float
+) -> tuple[Int64Array, Int64Array]:
+    """Return the first and last position of each window, the two ends included.
+
+    The excess is what a chunk may weigh beyond its part of all capacities.
+    """
+    sums, inner = line.sums, cut[1:-1]
+    share = int(sums[-1]) * (capacity / max(1.0, float(capacity.sum())))
+    excess = np.maximum(capacity - share, 0.0)
+    slack = reach * np.minimum(excess[:-1], excess[1:])
+    low = np.searchsorted(sums, sums[inner] - slack, "left")
+    high = np.searchsorted(sums, sums[inner] + slack, "right") - 1
+    half = (cut[:-1] + cut[1:]) // 2
+    low = np.minimum(np.maximum.reduce([low, inner - WIDEST, half[:-1] + 1]), inner)
+    high = np.maximum(np.minimum.reduce([high, inner + WIDEST, half[1:]]), inner)
+    ends = [int(cut[0])], [int(cut[-1])]
+    return (
+        np.concatenate([ends[0], low, ends[1]]).astype(np.int64),
+        np.concatenate([ends[0], high, ends[1]]).astype(np.int64),
+    )
+
+
+def _rows_at(
+    item: IntArray,
+    position: Int64Array,
+    indptr: Int64Array,
+    indices: IntArray,
+    edge_weight: Int64Array | None,
+) -> tuple[Int64Array, Int64Array, Int64Array]:
+    """Return the entries of the items at some positions (ascending), as CSR by position."""
+    n_items = int(item.max()) + 1
+    row_of = np.full(n_items + 1, -1, np.int64)
+    row_of[position] = np.arange(len(position))
+    cell = np.flatnonzero(row_of[item] >= 0)
+    row = row_of[item[cell]]
+    order = np.argsort(row, kind="stable")
+    cell, row = cell[order], row[order]
+    degree = (indptr[cell + 1] - indptr[cell]).astype(np.int64)
+    before = np.concatenate(([0], np.cumsum(degree)))
+    entry = np.repeat(indptr[cell] - before[:-1], degree) + np.arange(int(before[-1]))
+    # Cells of one position stand together: its entries end where its last cell's do.
+    row_ptr = before[np.searchsorted(row, np.arange(len(position) + 1))]
+    place = item[indices[entry]].astype(np.int64)
+    weight = np.ones(len(entry), np.int64) if edge_weight is None else edge_weight[entry]
+    return row_ptr, place, weight
