@@ -15,9 +15,23 @@ from sfcpart.dtypes import Array
 from sfcpart.kernels._jit import jit
 from sfcpart.kernels.heap import drop, put
 
-__all__ = ["bisect_blocks", "refine_pairs"]
+__all__ = ["bisect_blocks", "colour_pairs", "refine_pairs"]
 
 LOCKED = -2
+
+
+@jit
+def colour_pairs(pairs: Array, used: Array, colour: Array) -> None:
+    """Give each pair of parts, in order, the first colour that neither part has (`used`) yet."""
+    for i in range(len(pairs)):
+        a = pairs[i, 0]
+        b = pairs[i, 1]
+        c = 0
+        while used[a, c] or used[b, c]:
+            c += 1
+        used[a, c] = True
+        used[b, c] = True
+        colour[i] = c
 
 
 @jit

@@ -30,6 +30,7 @@ from sfcpart.methods.along_curve import unfit
 from sfcpart.methods.cell_problem import CellProblem
 from sfcpart.methods.fiedler import spectral_line
 from sfcpart.methods.problem import Problem
+from sfcpart.methods.together import number_items
 
 __all__ = ["coordinate", "inertial", "spectral"]
 
@@ -148,8 +149,7 @@ def _by_place(
     if group is None:
         items = _Items(axes.shape[1], weight, limit)
         return _bisect(problem, items, score_of(axes, weight))[mine]
-    item = _number_items(group)
-    n = int(item.max(initial=-1)) + 1
+    item, n = number_items(group)
     if n < problem.n_parts <= len(item):
         raise PartitionError(
             f"groups leave {n} items for {problem.n_parts} parts; "
@@ -159,17 +159,6 @@ def _by_place(
     items = _Items(n, _added(item, n, whole), None if limit is None else _added(item, n, limit))
     places = _mean_places(axes, item, items, whole)
     return _bisect(problem, items, score_of(places, items.weight))[item][mine]
-
-
-def _number_items(group: Int64Array) -> Int64Array:
-    """Number free cells and groups by their first cell."""
-    first = np.arange(len(group))
-    grouped = np.flatnonzero(group >= 0)
-    if len(grouped):
-        _, where, inverse = np.unique(group[grouped], return_index=True, return_inverse=True)
-        first[grouped] = grouped[where][inverse]
-    number: Int64Array = np.cumsum(first == np.arange(len(group))) - 1
-    return number[first]
 
 
 def _added(item: Int64Array, n: int, values: Int64Array) -> Int64Array:
@@ -195,6 +184,7 @@ def _mean_places(
 
 def _bisect(problem: Problem, items: _Items, score: Score) -> Int32Array:
     """Divide all items among all parts, two by two."""
+    _check_whole_limit(problem, items)
     part = np.zeros(items.n, np.int32)
     todo = [(np.arange(items.n), 0, problem.n_parts)]
     while todo:
@@ -206,6 +196,19 @@ def _bisect(problem: Problem, items: _Items, score: Score) -> Int32Array:
         first = _first_side(problem, items, members, (low, middle, high), score)
         todo += [(members[~first], middle, high), (members[first], low, middle)]
     return part
+
+
+def _check_whole_limit(problem: Problem, items: _Items) -> None:
+    """Refuse more of the limited weight than all parts together may hold."""
+    if problem.part_limit is None or items.limit_weight is None:
+        return
+    need, room = int(items.limit_weight.sum()), sum(map(int, problem.part_limit))
+    if need > room:
+        unit = problem.limit_unit
+        raise PartitionError(
+            f"the cells need {need * unit:.10g} in all, the {problem.n_parts} parts may hold "
+            f"{room * unit:.10g}; raise the limit or ask for more parts"
+        )
 
 
 def _middle(low: int, high: int, sizes: tuple[int, ...]) -> int:

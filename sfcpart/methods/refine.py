@@ -18,7 +18,7 @@ from sfcpart.kernels.flow import flow_pairs
 from sfcpart.kernels.label_moves import look_again, propose_moves, spread_active
 from sfcpart.kernels.local_search import search_from_seeds
 from sfcpart.kernels.threads import run_ranges
-from sfcpart.kernels.two_way import refine_pairs
+from sfcpart.kernels.two_way import colour_pairs, refine_pairs
 from sfcpart.methods.balance import rebalance
 from sfcpart.methods.labels import Labels, boundary_of, by_part, touching_pairs
 
@@ -106,15 +106,13 @@ def flow_between(labels: Labels, *, sweeps: int, depth: int, stretch: float) -> 
     stale = np.ones(k, np.bool_)
     total = 0
     for _ in range(sweeps):
-        boundary = boundary_of(labels)
-        pairs = touching_pairs(labels, boundary)
+        pairs = touching_pairs(labels, boundary_of(labels))
         pairs = pairs[stale[pairs].any(axis=1)]
         stale = np.zeros(k, np.bool_)
         before = total
         for turn, group in enumerate(_disjoint_groups(pairs, k)):
-            if turn % 4 == 3:  # what changed meanwhile is within the bands anyway
-                boundary = boundary_of(labels)
-            fringe, fringe_ptr = by_part(boundary, labels.part, k)
+            if turn % 4 == 0:  # what changes meanwhile is within the bands anyway
+                fringe, fringe_ptr = by_part(boundary_of(labels), labels.part, k)
             gains = np.zeros(len(group), np.int64)
             a, b = np.ascontiguousarray(group.T)
             run_ranges(
@@ -130,18 +128,13 @@ def flow_between(labels: Labels, *, sweeps: int, depth: int, stretch: float) -> 
 
 def _disjoint_groups(pairs: Int32Array, n_parts: int) -> list[Int32Array]:
     """Group pairs greedily, in order, so that no part occurs twice in a group."""
-    used: list[set[int]] = [set() for _ in range(n_parts)]
-    groups: list[list[tuple[int, int]]] = []
-    for a, b in pairs.tolist():
-        colour = 0
-        while colour in used[a] or colour in used[b]:
-            colour += 1
-        used[a].add(colour)
-        used[b].add(colour)
-        if colour == len(groups):
-            groups.append([])
-        groups[colour].append((a, b))
-    return [np.array(group, np.int32) for group in groups]
+    if len(pairs) == 0:
+        return []
+    most = 2 * int(np.bincount(pairs.ravel()).max())
+    colour = np.empty(len(pairs), np.int32)
+    colour_pairs(pairs, np.zeros((n_parts, most), np.bool_), colour)
+    order = np.argsort(colour, kind="stable")
+    return np.split(pairs[order], np.cumsum(np.bincount(colour))[:-1])
 
 
 def refine_between(labels: Labels, *, sweeps: int, patience: int, slack: int) -> int:
@@ -157,8 +150,9 @@ def refine_between(labels: Labels, *, sweeps: int, patience: int, slack: int) ->
         pairs = pairs[stale[pairs].any(axis=1)]
         stale = np.zeros(k, np.bool_)
         before = total
-        for group in _disjoint_groups(pairs, k):
-            fringe, fringe_ptr = by_part(boundary_of(labels), labels.part, k)
+        for turn, group in enumerate(_disjoint_groups(pairs, k)):
+            if turn % 4 == 0:  # passes find what changed next to what they move
+                fringe, fringe_ptr = by_part(boundary_of(labels), labels.part, k)
             gains = np.zeros(len(group), np.int64)
             a, b = np.ascontiguousarray(group.T)
             run_ranges(

@@ -17,9 +17,20 @@ import numpy as np
 from sfcpart.comm.base import Comm
 from sfcpart.dtypes import Array, BoolArray, Int32Array, Int64Array
 
-__all__ = ["Bundles"]
+__all__ = ["Bundles", "number_items"]
 
 _NONE = np.empty(0, np.int64)
+
+
+def number_items(group: Int64Array) -> tuple[Int64Array, int]:
+    """Number free cells and groups by their first cell; return the item of each and their count."""
+    first = np.arange(len(group))
+    grouped = np.flatnonzero(group >= 0)
+    if len(grouped):
+        _, where, inverse = np.unique(group[grouped], return_index=True, return_inverse=True)
+        first[grouped] = grouped[where][inverse]
+    number: Int64Array = np.cumsum(first == np.arange(len(group))) - 1
+    return number[first], int(number[-1]) + 1 if len(number) else 0
 
 
 @dataclass(frozen=True, eq=False)

@@ -23,7 +23,7 @@ from sfcpart.kernels.threads import run_ranges
 from sfcpart.kernels.two_way import bisect_blocks
 from sfcpart.methods.balance import fill_empty_parts, join_pieces, rebalance
 from sfcpart.methods.coarsen import Level, WeightedGraph, hierarchy
-from sfcpart.methods.labels import Labels, cut_of, loads_of
+from sfcpart.methods.labels import Labels, boundary_of, cut_of, loads_of
 from sfcpart.methods.refine import flow_between, refine_between, search_locally
 
 __all__ = ["Aim", "divide", "improve", "rank_of"]
@@ -34,8 +34,10 @@ SMALLEST = 200
 BLOCK = 100
 """A block is split when blocks have about as many vertices."""
 
-SMALL = 50_000
-"""Graphs up to this many vertices are refined at length: there it costs little."""
+SMALL = 200_000
+"""Graphs up to this many vertices are refined in up to `MANY` sweeps a level, larger ones in 1."""
+
+MANY = 5
 
 RELAX = 0.06
 """Excess that parts may have on coarse graphs, so that full parts can exchange vertices."""
@@ -98,6 +100,7 @@ def divide(graph: WeightedGraph, aim: Aim) -> Int32Array:
     if graph.n == 0 or aim.n_parts == 1:
         return np.zeros(graph.n, np.int32)
     levels = _levels(graph, np.zeros(graph.n, np.int32), aim)
+    sweeps = MANY if graph.n <= SMALL else 1
     part = np.zeros(levels[-1].graph.n, np.int32)
     blocks = [(0, aim.n_parts)]
     for depth in range(len(levels) - 1, -1, -1):
@@ -108,8 +111,8 @@ def divide(graph: WeightedGraph, aim: Aim) -> Int32Array:
         while len(blocks) < aim.n_parts and (last or n >= BLOCK * len(blocks)):
             blocks = _split_blocks(level.graph, part, blocks, aim)
             if len(blocks) < aim.n_parts:
-                _refine(level.graph, part, aim, blocks, finest=False)
-        _refine(level.graph, part, aim, blocks, finest=last)
+                _refine(level.graph, part, aim, blocks, finest=False, sweeps=sweeps)
+        _refine(level.graph, part, aim, blocks, finest=last, sweeps=sweeps)
         levels.pop()
     return part
 
@@ -127,12 +130,13 @@ def improve(
         _, both = np.unique(part.astype(np.int64) * aim.n_parts + other, return_inverse=True)
         label = both.astype(np.int32)
     levels = _levels(graph, label, aim)
+    sweeps = MANY if graph.n <= SMALL else 1
     part = _project(levels, part)
     for depth in range(len(levels) - 1, -1, -1):
         level = levels[depth]
         if level.coarse_of is not None:
             part = part[level.coarse_of]
-        _refine(level.graph, part, aim, None, finest=depth == 0)
+        _refine(level.graph, part, aim, None, finest=depth == 0, sweeps=sweeps)
         levels.pop()
     return part if rank_of(graph, part, aim) <= rank_of(graph, start, aim) else start
 
@@ -199,6 +203,7 @@ def _refine(
     blocks: list[tuple[int, int]] | None,
     *,
     finest: bool,
+    sweeps: int,
 ) -> None:
     """Refine one level in place; without blocks the labels are final parts and keep capacities."""
     heaviest = int(graph.vertex_weight.max())
@@ -207,11 +212,11 @@ def _refine(
         capacity = aim.of_blocks(blocks, heaviest) if blocks else aim.relaxed(heaviest)
     labels = Labels(graph, part, capacity)
     rebalance(labels)
-    tight = float((capacity - aim.share).max(initial=0.0)) < 4 * heaviest
-    small = graph.n <= SMALL
-    search_locally(labels, rounds=5 if small else 1, patience=15 if small else 6, seed=aim.seed)
-    flow_between(labels, sweeps=5 if small else 1, depth=3, stretch=4.0)
-    if tight or small:
+    search_locally(labels, rounds=sweeps, patience=6 if sweeps == 1 else 15, seed=aim.seed)
+    few = 8 * len(boundary_of(labels)) < graph.n  # then another sweep costs little
+    flow_between(labels, sweeps=max(sweeps, 2) if few else sweeps, depth=3, stretch=4.0)
+    tight = float((aim.capacity - aim.share).max(initial=0.0)) < 4 * heaviest
+    if sweeps > 1 or (tight and finest):
         refine_between(labels, sweeps=3, patience=200, slack=heaviest if tight else 0)
     if finest and (blocks is None or len(blocks) == aim.n_parts):
         join_pieces(labels)

@@ -46,7 +46,10 @@ class ItemLine:
 
     @classmethod
     def of(
-        cls, item: IntArray, weight: Int64Array | None = None, limit_weight: Int64Array | None = None
+        cls,
+        item: IntArray,
+        weight: Int64Array | None = None,
+        limit_weight: Int64Array | None = None,
     ) -> ItemLine:
         """Add up the weights of cells (1 each by default) along the line."""
         n = int(item.max(initial=-1)) + 1
