@@ -31,6 +31,7 @@ if TYPE_CHECKING:
     from sfcpart.halo import Across
     from sfcpart.measure import Assessment, StepModel
     from sfcpart.measure.survey import Survey
+    from sfcpart.methods.problem import Cuts
     from sfcpart.meter import Metered
     from sfcpart.weights import FaceWeight
 
@@ -58,6 +59,8 @@ def split(
     *,
     method: str = "hilbert",
     tolerance: float = 0.03,
+    cuts: Cuts = "balanced",
+    tolerance: float = 0.03,
     weights: Weights = None,
     speeds: ArrayLike | None = None,
     limit_weights: Weights = None,
@@ -81,7 +84,10 @@ def split(
         A name of `sfcpart.methods.registry.METHODS`.
     tolerance : float
         How far the heaviest part may exceed its fair share (0.03: 3 %) where a method can trade
-        balance for a smaller cut. Curve methods give the least heaviest part there is.
+        balance for a smaller cut.
+    cuts : {"balanced", "least"}
+        How methods along a curve choose their cuts: with the least heaviest part there is, or,
+        within `tolerance`, with few faces cut (which takes the cell graph). Others ignore it.
     weights : (n_cells,) numbers, or str, or list of str, optional
         Work of each cell: numbers >= 0, or specifications (see `sfcpart.weights`), multiplied.
         1 each by default.
@@ -137,6 +143,7 @@ def split(
         mesh,
         n_parts,
         tolerance=tolerance,
+        cuts=cuts,
         weights=weights,
         speeds=speeds,
         limit_weights=limit_weights,
@@ -303,6 +310,20 @@ def compare(
 def inspect(mesh: Mesh) -> Survey:
     """Look a mesh over: what it holds and what is wrong with it.
 
+    Parameters
+    ----------
+    mesh : Mesh
+
+    Returns
+    -------
+    Survey
+        Counts, sizes, pieces, boundary groups, fields, the memory of a split, and warnings; see
+        `sfcpart.measure.survey.Survey`.
+
+    Notes
+    -----
+    O(size of the mesh) and O(n log n) in the number of boundary points.
+
     Examples
     --------
     >>> import sfcpart
@@ -363,8 +384,25 @@ def write_split(
 
     Raises
     ------
+    InputError
+        If a format is unknown, or `source` is missing where it is needed.
     FileError
         If the folder is refused or cannot be written; nothing is left behind then.
+
+    Notes
+    -----
+    O(n_cells + halo) time; memory for blocks of about a million cells.
+
+    Examples
+    --------
+    >>> import tempfile
+    >>> import sfcpart
+    >>> from sfcpart.mesh.shapes import lattice
+    >>> mesh = lattice((4, 4)).to_mesh()
+    >>> with tempfile.TemporaryDirectory() as place:
+    ...     folder = sfcpart.write_split(f"{place}/parts", mesh, sfcpart.split(mesh, 2))
+    ...     sfcpart.read_part(folder, 1).n_owned
+    8
     """
     from sfcpart.deliver import Delivery, deliver
 

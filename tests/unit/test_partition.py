@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from itertools import permutations
+
 import numpy as np
 import pytest
 from hypothesis import given
@@ -118,3 +120,24 @@ def test_overlap_counts_shared_weight(cells):
 def test_overlap_wants_the_same_cells():
     with pytest.raises(PartitionError, match="2 and 3 cells"):
         Partition.from_array([0, 1]).overlap(Partition.from_array([0, 1, 0]))
+
+
+@given(
+    st.lists(st.tuples(st.integers(0, 3), st.integers(0, 3), st.integers(0, 9)), min_size=1),
+)
+def test_comparing_counts_what_moved_and_what_no_renaming_saves(cells):
+    mine, theirs, weight = (np.array(column) for column in zip(*cells, strict=True))
+    change = Partition.from_array(mine, 4).compare(Partition.from_array(theirs, 4), weight)
+    moved = [cell for cell, (p, q, _) in enumerate(cells) if p != q]
+    assert (change.n_moved, change.first_moved) == (len(moved), moved[0] if moved else -1)
+    assert change.moved_share == (weight[moved].sum() / weight.sum() if weight.any() else 0)
+    tried = (np.sum(mine != np.array(names)[theirs]) for names in permutations(range(4)))
+    assert change.n_moved_relabelled == min(tried)
+
+
+def test_comparing_partitions_with_other_numbers_of_parts():
+    one, other = Partition.from_array([0, 0, 1, 1, 2]), Partition.from_array([3, 3, 3, 0, 0], 9)
+    assert one.compare(other).n_moved_relabelled == 2
+    assert other.compare(one).n_moved_relabelled == 2
+    with pytest.raises(PartitionError, match="5 and 4 cells"):
+        one.compare(Partition.from_array([0, 0, 1, 1]))

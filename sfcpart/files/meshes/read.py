@@ -122,6 +122,16 @@ def read_mesh(path: str | PathLike[str]) -> Mesh:
     Notes
     -----
     Memory: the arrays of the mesh, and once more the arrays of one format (VTKHDF excepted).
+
+    Examples
+    --------
+    >>> import tempfile
+    >>> from sfcpart.files.meshes.faces_file import write_faces
+    >>> bar = Mesh.from_faces([[0, 1], [1, -1]], [2.0, 1.0], [[0, 0], [1, 0]], [1.0, 1.0])
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     write_faces(f"{folder}/bar.h5", bar)
+    ...     read_mesh(f"{folder}/bar.h5").n_cells
+    2
     """
     place = Path(path)
     formats = file_format(place)
@@ -248,7 +258,7 @@ def _hdf5_format(place: Path, by_name: tuple[str, ...]) -> str:
 
 
 def read_cell_values(path: str | PathLike[str], n_cells: int) -> Array:
-    """Read one number a cell: parts, weights, groups.
+    r"""Read one number a cell: parts, weights, groups.
 
     Parameters
     ----------
@@ -269,6 +279,14 @@ def read_cell_values(path: str | PathLike[str], n_cells: int) -> Array:
         If the file cannot be read or holds something else than numbers.
     InputError
         If the number of values is not the number of cells.
+
+    Examples
+    --------
+    >>> import tempfile
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     _ = Path(folder, "cell_part.txt").write_text("0\n0\n1  # the last cell\n")
+    ...     read_cell_values(Path(folder, "cell_part.txt"), 3)
+    array([0, 0, 1])
     """
     place = Path(path)
     head = _head(place)

@@ -93,12 +93,42 @@ class Part:
         return len(self.kind)
 
     def send_list(self, neighbour: int) -> IntArray:
-        """Return the local cells to send to a neighbour, in order."""
+        """Return the local cells to send to a neighbour, in order.
+
+        Parameters
+        ----------
+        neighbour : int
+            A part of `self.neighbour`.
+
+        Returns
+        -------
+        (n_sent,) int32 or int64
+
+        Raises
+        ------
+        InputError
+            If nothing is exchanged with that part.
+        """
         at = self._position(neighbour)
         return self.send[self.send_indptr[at] : self.send_indptr[at + 1]]
 
     def receive_list(self, neighbour: int) -> IntArray:
-        """Return the local cells to receive from a neighbour, in order."""
+        """Return the local cells to receive from a neighbour, in order.
+
+        Parameters
+        ----------
+        neighbour : int
+            A part of `self.neighbour`.
+
+        Returns
+        -------
+        (n_received,) int32 or int64
+
+        Raises
+        ------
+        InputError
+            If nothing is exchanged with that part.
+        """
         at = self._position(neighbour)
         return self.receive[self.receive_indptr[at] : self.receive_indptr[at + 1]]
 
@@ -138,6 +168,18 @@ def read_part(path: str | PathLike[str], part: int) -> Part:
     -----
     Only the part's rows are read. Any number of ranks may read one file at a time; start MPI
     before opening it.
+
+    Examples
+    --------
+    >>> import tempfile
+    >>> import sfcpart
+    >>> from sfcpart.mesh.shapes import lattice
+    >>> mesh = lattice((4, 1)).to_mesh()
+    >>> with tempfile.TemporaryDirectory() as place:
+    ...     folder = sfcpart.write_split(f"{place}/parts", mesh, sfcpart.split(mesh, 2))
+    ...     part = sfcpart.read_part(folder, 0)
+    >>> part.cell_gid.tolist(), part.send_list(1).tolist(), part.receive_list(1).tolist()
+    ([0, 1, 2], [1], [2])
     """
     if isinstance(part, bool) or not isinstance(part, int | np.integer):
         raise InputError(f"part is {part!r}; wanted a whole number")
