@@ -105,12 +105,16 @@ def _head(figure: Any, panel: Panel, center: float, top: int, share: float) -> N
 def _write(
     figure: Any, x: float, y: float, text: str, *, size: float, share: float = 0.98, **style: Any
 ) -> None:
-    """Write a line, in smaller letters if it is wider than its share of the sheet."""
+    """Write a line; if wider than its share of the sheet, in smaller letters, then cut off."""
     line = figure.text(x, y, text, fontsize=size, va="center", **style)
-    room = share * figure.get_figwidth() * DPI
+    room = 0.96 * share * figure.get_figwidth() * DPI
+    wide = line.get_window_extent().width
+    if wide <= room:
+        return
+    line.set_fontsize(max(SMALLEST_LETTER, size * room / wide))
     wide = line.get_window_extent().width
     if wide > room:
-        line.set_fontsize(max(SMALLEST_LETTER, size * room / wide))
+        line.set_text(f"{text[: max(1, int(len(text) * room / wide) - 2)]}\u2026")
 
 
 def _image(figure: Any, panel: Panel, room: tuple[float, float, float, float]) -> None:
