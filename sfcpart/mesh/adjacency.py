@@ -7,7 +7,7 @@ of equal smallest corner are then matched in chunks. Neither number shows in the
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, TypeAlias
+from typing import TypeAlias
 
 import numpy as np
 
@@ -24,11 +24,9 @@ from sfcpart.errors import MeshError
 from sfcpart.kernels import face_match, face_rows, faces
 from sfcpart.kernels.cells import CellArrays
 from sfcpart.kernels.threads import n_threads, run_ranges
-from sfcpart.mesh import build
+from sfcpart.mesh.cell_arrays import spell_out
 from sfcpart.mesh.kinds import MAX_CORNERS, POLYGON, POLYHEDRON, TETRA
-
-if TYPE_CHECKING:
-    from sfcpart.mesh.mesh import Mesh
+from sfcpart.mesh.mesh import Mesh
 
 __all__ = ["join_cells", "sort_faces"]
 
@@ -99,7 +97,7 @@ def join_cells(mesh: Mesh) -> Adjacency:
         If points or faces of cells number 2**30 or more.
     """
     _checked(mesh.n_points)
-    cells = build.spell_out(mesh.cell_arrays())
+    cells = spell_out(mesh.cell_arrays())
     slots = _number_slots(cells)
     face, order = _match(mesh, cells, slots)
     n = mesh.n_cells

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -20,12 +20,8 @@ from sfcpart.dtypes import (
 )
 from sfcpart.errors import MeshError
 from sfcpart.mesh.gate import Block, as_array, check_fields, check_indices, check_offsets, frozen
-from sfcpart.mesh.kinds import KINDS, POLYHEDRON, VERTEX, kind_tables
+from sfcpart.mesh.kinds import KINDS, POLYHEDRON, VERTEX
 from sfcpart.mesh.pieces import BoundaryGroup, Polyhedra
-
-if TYPE_CHECKING:
-    from sfcpart.kernels.cells import CellArrays
-    from sfcpart.mesh.mesh import Mesh
 
 
 def check_dim(dims: Sequence[int], n_columns: int) -> int:
@@ -187,60 +183,3 @@ def bare_cells(n_cells: int) -> dict[str, Any]:
         "indptr": frozen(np.zeros(n_cells + 1, OFFSET)),
         "indices": frozen(np.empty(0, np.int32)),
     }
-
-
-def cell_arrays(mesh: Mesh) -> CellArrays:
-    """Bundle the cells with the tables of kinds, as kernels take them."""
-    from sfcpart.kernels.cells import CellArrays
-
-    tables, faces = kind_tables(), mesh.polyhedra
-    none, one = frozen(np.empty(0, mesh.indices.dtype)), frozen(np.zeros(1, OFFSET))
-    return CellArrays(
-        mesh.kind,
-        mesh.indptr,
-        mesh.indices,
-        tables.n_corners,
-        tables.face_count,
-        tables.face_size,
-        tables.face_corner,
-        faces.cell_indptr if faces else one,
-        faces.cell_indices if faces else none,
-        faces.face_indptr if faces else one,
-        faces.face_indices if faces else none,
-    )
-
-
-def spell_out(cells: CellArrays) -> CellArrays:
-    """Write cells of kinds with faces of more than four corners (prisms) as polyhedra."""
-    wide = cells.face_size.max(axis=1)[cells.kind] > 4
-    if not wide.any():
-        return cells
-    size = np.diff(cells.poly_cell_indptr) if len(cells.poly_cell_indptr) > 1 else 0 * cells.kind
-    rows = [cells.poly_cell_indices]
-    flat, lengths = [cells.poly_face_indices], [np.diff(cells.poly_face_indptr)]
-    n_faces = len(cells.poly_face_indptr) - 1
-    count = np.where(wide, cells.face_count[cells.kind], size).astype(OFFSET)
-    owner = [np.repeat(np.arange(len(cells.kind)), size)]
-    for code in np.unique(cells.kind[wide]).tolist():
-        mine = np.flatnonzero(cells.kind == code)
-        for corner in KINDS[code].faces:
-            flat.append(cells.indices[cells.indptr[mine, None] + np.array(corner)].reshape(-1))
-            lengths.append(np.full(len(mine), len(corner)))
-            rows.append(np.arange(n_faces, n_faces + len(mine)))
-            owner.append(mine)
-            n_faces += len(mine)
-    by_cell = np.argsort(np.concatenate(owner), kind="stable")
-    dtype = cells.indices.dtype
-    return cells._replace(
-        kind=frozen(np.where(wide, POLYHEDRON, cells.kind).astype(KIND)),
-        poly_cell_indptr=frozen(np.concatenate([[0], np.cumsum(count)])),
-        poly_cell_indices=frozen(np.concatenate(rows)[by_cell].astype(dtype)),
-        poly_face_indptr=frozen(np.concatenate([[0], np.cumsum(np.concatenate(lengths))])),
-        poly_face_indices=frozen(np.concatenate(flat)),
-    )
-
-
-def most_corners(mesh: Mesh) -> int:
-    """Bound the points of a cell and the faces of a polyhedron."""
-    most = int(np.diff(mesh.indptr).max())
-    return max(most, int(np.diff(mesh.polyhedra.cell_indptr).max())) if mesh.polyhedra else most

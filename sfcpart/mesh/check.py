@@ -10,16 +10,13 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
 
 import numpy as np
 
 from sfcpart.dtypes import BoolArray, FloatArray
 from sfcpart.kernels.threads import run_ranges
 from sfcpart.mesh.kinds import KINDS
-
-if TYPE_CHECKING:
-    from sfcpart.mesh.mesh import Mesh
+from sfcpart.mesh.mesh import Mesh
 
 __all__ = [
     "CellCheck",
@@ -101,7 +98,6 @@ def count_kinds(mesh: Mesh) -> dict[str, int]:
 
     Examples
     --------
-    >>> from sfcpart.mesh.mesh import Mesh
     >>> points = [[0, 0], [1, 0], [1, 1], [0, 1], [2, 0]]
     >>> count_kinds(Mesh.from_arrays(points, {"quad": [[0, 1, 2, 3]], "triangle": [[1, 4, 2]]}))
     {'triangle': 1, 'quad': 1}
@@ -128,7 +124,6 @@ def check_cells(mesh: Mesh) -> CellCheck:
 
     Examples
     --------
-    >>> from sfcpart.mesh.mesh import Mesh
     >>> points = [[0, 0], [4, 0], [0, 3], [8, 0], [4, 3]]
     >>> mesh = Mesh.from_arrays(points, {"triangle": [[0, 1, 2], [0, 1, 3], [1, 4, 2]]})
     >>> check = check_cells(mesh)
@@ -209,7 +204,6 @@ def unused_points(mesh: Mesh) -> int:
 
     Examples
     --------
-    >>> from sfcpart.mesh.mesh import Mesh
     >>> unused_points(Mesh.from_arrays([[0, 0], [9, 9], [1, 0], [0, 1]], {"triangle": [[0, 2, 3]]}))
     1
     """
@@ -235,7 +229,6 @@ def default_tolerance(mesh: Mesh, shortest_edge: float | None) -> float:
 
     Examples
     --------
-    >>> from sfcpart.mesh.mesh import Mesh
     >>> mesh = Mesh.from_arrays([[0, 0], [3, 0], [0, 4]], {"triangle": [[0, 1, 2]]})
     >>> default_tolerance(mesh, 3.0)
     5e-09

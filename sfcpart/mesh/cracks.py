@@ -7,7 +7,6 @@ nothing to find. Cost: a sort of their points and a match of their faces.
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING
 
 import numpy as np
 
@@ -15,9 +14,7 @@ from sfcpart.dtypes import BoolArray, Int32Array, Int64Array
 from sfcpart.mesh import build
 from sfcpart.mesh.gate import frozen
 from sfcpart.mesh.merge import coincident_points
-
-if TYPE_CHECKING:
-    from sfcpart.mesh.mesh import Mesh
+from sfcpart.mesh.mesh import Mesh
 
 __all__ = ["Cracks", "find_cracks"]
 
@@ -58,7 +55,6 @@ def find_cracks(mesh: Mesh, boundary_count: Int32Array, tolerance: float) -> Cra
 
     Examples
     --------
-    >>> from sfcpart.mesh.mesh import Mesh
     >>> points = [[0, 0], [1, 0], [0, 1], [1, 0], [1, 1], [0, 1]]
     >>> mesh = Mesh.from_arrays(points, {"triangle": [[0, 1, 2], [3, 4, 5]]})
     >>> find_cracks(mesh, np.array([3, 3]), 1e-9)
@@ -86,7 +82,6 @@ def _points_of(mesh: Mesh, chosen: BoolArray) -> Int64Array:
 def _count_new_faces(mesh: Mesh, chosen: BoolArray, number: Int64Array) -> int:
     """Count the faces that the chosen cells share more of with their points renumbered."""
     from sfcpart.mesh.adjacency import join_cells
-    from sfcpart.mesh.mesh import Mesh
 
     indptr, indices = build.take_rows(mesh.indptr, mesh.indices, chosen)
     faces = build.cut_polyhedra(mesh.polyhedra, chosen)

@@ -12,22 +12,28 @@ import numpy as np
 
 from sfcpart.dtypes import COORDINATE, FloatArray
 from sfcpart.kernels.threads import run_ranges
-from sfcpart.mesh.build import most_corners
+from sfcpart.mesh.cell_arrays import most_corners
 from sfcpart.mesh.kinds import POLYHEDRON
 
 if TYPE_CHECKING:
-    from sfcpart.mesh.mesh import Mesh
+    from sfcpart.kernels.cells import CellArrays
 
 __all__ = ["centers_and_signed_measures"]
 
 
-def centers_and_signed_measures(mesh: Mesh) -> tuple[FloatArray, FloatArray]:
-    """Return the centroid and the signed measure of each cell of a mesh with points.
+def centers_and_signed_measures(
+    points: FloatArray, cells: CellArrays, *, dim: int, space_dim: int
+) -> tuple[FloatArray, FloatArray]:
+    """Return the centroid and the signed measure of each cell.
 
     Parameters
     ----------
-    mesh : Mesh
-        With points.
+    points : (n_points, 2) or (n_points, 3) float64
+    cells : CellArrays
+    dim : int
+        Dimension of the cells.
+    space_dim : int
+        Columns of the centres: 2 for cells in a plane of constant third coordinate.
 
     Returns
     -------
@@ -44,21 +50,23 @@ def centers_and_signed_measures(mesh: Mesh) -> tuple[FloatArray, FloatArray]:
     --------
     >>> from sfcpart.mesh.mesh import Mesh
     >>> mesh = Mesh.from_arrays([[0, 0], [3, 0], [0, 3]], {"triangle": [[0, 2, 1]]})
-    >>> centers, measures = centers_and_signed_measures(mesh)
+    >>> centers, measures = centers_and_signed_measures(
+    ...     mesh.points, mesh.cell_arrays(), dim=2, space_dim=2
+    ... )
     >>> centers.tolist(), measures.tolist()
     ([[1.0, 1.0]], [-4.5])
     """
     from sfcpart.kernels.cells import ring_geometry, solid_geometry
 
-    assert mesh.points is not None
-    centers = np.empty((mesh.n_cells, mesh.space_dim), COORDINATE)
-    measures = np.empty(mesh.n_cells, COORDINATE)
-    kernel = solid_geometry if mesh.dim == 3 else ring_geometry
-    shape = (mesh.points, mesh.cell_arrays(), most_corners(mesh), centers, measures)
-    run_ranges(kernel, mesh.n_cells, *shape)
-    if mesh.polyhedra is not None:
+    n_cells = len(cells.kind)
+    centers = np.empty((n_cells, space_dim), COORDINATE)
+    measures = np.empty(n_cells, COORDINATE)
+    kernel = solid_geometry if dim == 3 else ring_geometry
+    shape = (points, cells, most_corners(cells), centers, measures)
+    run_ranges(kernel, n_cells, *shape)
+    chosen = np.flatnonzero(cells.kind == POLYHEDRON)
+    if len(chosen):
         from sfcpart.kernels.polyhedra import polyhedron_geometry
 
-        chosen = np.flatnonzero(mesh.kind == POLYHEDRON)
         run_ranges(polyhedron_geometry, len(chosen), chosen, *shape, smallest=1024)
     return centers, measures

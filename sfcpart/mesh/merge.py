@@ -10,20 +10,17 @@ wide that many points share a stretch of the line, a k-d tree takes over.
 from __future__ import annotations
 
 from dataclasses import replace
-from types import MappingProxyType
-from typing import TYPE_CHECKING
+from typing import Any
 
 import numpy as np
 
 from sfcpart.dtypes import OFFSET, FloatArray, Int64Array, IntArray
 from sfcpart.errors import MeshError
+from sfcpart.mesh.arrays import MeshArrays
 from sfcpart.mesh.gate import frozen
-from sfcpart.mesh.pieces import BoundaryGroup, Polyhedra
+from sfcpart.mesh.pieces import Polyhedra
 
-if TYPE_CHECKING:
-    from sfcpart.mesh.mesh import Mesh
-
-__all__ = ["coincident_points", "merge_points"]
+__all__ = ["coincident_points", "with_new_numbers"]
 
 _SLANT = np.array([0.8506508, 0.4472136, 0.2763932])
 _WIDEST = 32
@@ -102,27 +99,14 @@ def _tree_pairs(points: FloatArray, tolerance: float) -> Int64Array:
     return pairs.astype(OFFSET, copy=False)
 
 
-def merge_points(mesh: Mesh, tolerance: float) -> Mesh:
-    """Return a mesh in which points that coincide are one (`Mesh.with_points_merged`)."""
-    if mesh.points is None:
-        raise MeshError("the mesh has no points to merge: it is known by faces or centres only")
-    lowest = coincident_points(mesh.points, tolerance)
-    kept = lowest == np.arange(len(lowest))
-    if kept.all():
-        return mesh
-    number = (np.cumsum(kept) - 1)[lowest]
-    fields = {name: frozen(values[kept]) for name, values in mesh.point_fields.items()}
-    return replace(
-        mesh,
-        points=frozen(mesh.points[kept]),
-        indices=_renumber(number, mesh.indices),
-        polyhedra=None if mesh.polyhedra is None else _renumber_faces(number, mesh.polyhedra),
-        point_fields=MappingProxyType(fields),
-        boundary=tuple(
-            BoundaryGroup(g.name, g.tag, g.kind, g.indptr, _renumber(number, g.indices))
-            for g in mesh.boundary
-        ),
-    )
+def with_new_numbers(number: Int64Array, mesh: MeshArrays) -> dict[str, Any]:
+    """Return what of a mesh lists points, with these numbers in place of theirs."""
+    groups = (replace(group, indices=_renumber(number, group.indices)) for group in mesh.boundary)
+    return {
+        "indices": _renumber(number, mesh.indices),
+        "polyhedra": None if mesh.polyhedra is None else _renumber_faces(number, mesh.polyhedra),
+        "boundary": tuple(groups),
+    }
 
 
 def _renumber(number: Int64Array, indices: IntArray) -> IntArray:

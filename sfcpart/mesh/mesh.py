@@ -1,17 +1,18 @@
-"""The mesh value: points, cells in file order, boundary groups and fields."""
+"""The mesh value: points, cells in file order, boundary groups and fields; ways to make one."""
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, replace
 from types import MappingProxyType
-from typing import TYPE_CHECKING, Any, TypeVar
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike
 
-from sfcpart.dtypes import Array, FloatArray, Int64Array, IntArray, KindArray
+from sfcpart.errors import MeshError
 from sfcpart.mesh import build
+from sfcpart.mesh.arrays import MeshArrays
 from sfcpart.mesh.gate import (
     as_array,
     check_fields,
@@ -23,20 +24,15 @@ from sfcpart.mesh.gate import (
     frozen,
     parse_blocks,
 )
-from sfcpart.mesh.kinds import KINDS, kind_tables
+from sfcpart.mesh.kinds import kind_tables
+from sfcpart.mesh.merge import coincident_points, with_new_numbers
 from sfcpart.mesh.pieces import BoundaryGroup, FaceList, Polyhedra
-
-if TYPE_CHECKING:
-    from sfcpart.kernels.cells import CellArrays
 
 __all__ = ["BoundaryGroup", "FaceList", "Mesh", "Polyhedra"]
 
-_EMPTY: Mapping[str, Any] = MappingProxyType({})
-T = TypeVar("T")
 
-
-@dataclass(frozen=True, eq=False)
-class Mesh:
+@dataclass(frozen=True, eq=False, repr=False)
+class Mesh(MeshArrays):
     """Cells of one dimension (2 or 3), in the file's own order, over read-only arrays.
 
     Attributes
@@ -57,19 +53,6 @@ class Mesh:
         Arrays of n_cells (n_points) rows.
     boundary : tuple of BoundaryGroup
     """
-
-    points: FloatArray | None
-    kind: KindArray
-    indptr: Int64Array
-    indices: IntArray
-    polyhedra: Polyhedra | None = None
-    faces: FaceList | None = None
-    given_center: FloatArray | None = None
-    given_measure: FloatArray | None = None
-    cell_fields: Mapping[str, Array] = field(default_factory=lambda: _EMPTY)
-    point_fields: Mapping[str, Array] = field(default_factory=lambda: _EMPTY)
-    boundary: tuple[BoundaryGroup, ...] = ()
-    _derived: dict[str, Any] = field(default_factory=dict, init=False, repr=False)
 
     @classmethod
     def from_arrays(
@@ -300,51 +283,6 @@ class Mesh:
             cell_fields=check_fields(cell_fields, len(center), "cell"),
         )
 
-    @property
-    def n_cells(self) -> int:
-        """Number of cells."""
-        return len(self.kind)
-
-    @property
-    def n_points(self) -> int:
-        """Number of points, 0 for meshes without."""
-        return 0 if self.points is None else len(self.points)
-
-    @property
-    def dim(self) -> int:
-        """Topological dimension of the cells: 2 or 3."""
-        if self.points is None:
-            return self.space_dim
-        return int(kind_tables().dim[self.kind[0]])
-
-    @property
-    def space_dim(self) -> int:
-        """Dimension of the centres: 2 for cells in the plane, a constant third column dropped."""
-        if self.given_center is not None:
-            return int(self.given_center.shape[1])
-        return self.keep("space_dim", self._find_space_dim)
-
-    @property
-    def centers(self) -> FloatArray:
-        """Centroids of the cells, (n_cells, space_dim) float64, computed on first use."""
-        if self.given_center is not None:
-            return self.given_center
-        return self.keep("geometry", self._find_geometry)[0]
-
-    @property
-    def signed_measures(self) -> FloatArray:
-        """Measures with the sign of the order of corners (`geometry`), (n_cells,) float64."""
-        if self.given_center is not None:
-            return self.measures
-        return self.keep("geometry", self._find_geometry)[1]
-
-    @property
-    def measures(self) -> FloatArray:
-        """Areas or volumes of the cells, (n_cells,) float64 >= 0; 1 each if not known."""
-        if self.given_measure is not None:
-            return self.given_measure
-        return self.keep("measures", self._find_measures)
-
     def with_cell_field(self, name: str, values: ArrayLike) -> Mesh:
         """Return the same mesh with a cell field added or replaced.
 
@@ -399,45 +337,16 @@ class Mesh:
         >>> mesh.with_points_merged(1e-9).indices.tolist()
         [0, 1, 2, 1, 3, 2]
         """
-        from sfcpart.mesh.merge import merge_points
-
-        return merge_points(self, tolerance)
-
-    def keep(self, name: str, make: Callable[[], T]) -> T:
-        """Return a derived value, made on first use and then kept."""
-        if name not in self._derived:
-            self._derived[name] = make()
-        value: T = self._derived[name]
-        return value
-
-    def cell_arrays(self) -> CellArrays:
-        """Return the cells as kernels take them (`sfcpart.kernels.cells.CellArrays`)."""
-        return self.keep("cell_arrays", lambda: build.cell_arrays(self))
-
-    def __repr__(self) -> str:
-        """Say what the mesh holds in one line."""
-        codes, counts = np.unique(self.kind, return_counts=True)
-        what = ", ".join(f"{n} {KINDS[int(k)].name}" for k, n in zip(codes, counts, strict=True))
-        return f"Mesh({what}; dim {self.dim} in {self.space_dim}-D; {self.n_points} points)"
-
-    def _find_space_dim(self) -> int:
-        """See whether plane cells lie in a plane of constant third coordinate."""
-        assert self.points is not None
-        if self.dim == 3 or self.points.shape[1] == 2:
-            return int(self.points.shape[1])
-        third = self.points[:, 2]
-        return 2 if third.min() == third.max() else 3
-
-    def _find_geometry(self) -> tuple[FloatArray, FloatArray]:
-        """Compute centroids and signed measures."""
-        from sfcpart.mesh.geometry import centers_and_signed_measures
-
-        centers, measures = centers_and_signed_measures(self)
-        return frozen(centers), frozen(measures)
-
-    def _find_measures(self) -> FloatArray:
-        """Drop the signs, without a copy where there are none."""
-        if self.given_center is not None:
-            return frozen(np.ones(self.n_cells))
-        signed = self.signed_measures
-        return signed if signed.min() >= 0 else frozen(np.abs(signed))
+        if self.points is None:
+            raise MeshError("the mesh has no points to merge: it is known by faces or centres only")
+        lowest = coincident_points(self.points, tolerance)
+        kept = lowest == np.arange(len(lowest))
+        if kept.all():
+            return self
+        fields = {name: frozen(values[kept]) for name, values in self.point_fields.items()}
+        return replace(
+            self,
+            points=frozen(self.points[kept]),
+            point_fields=MappingProxyType(fields),
+            **with_new_numbers((np.cumsum(kept) - 1)[lowest], self),
+        )

@@ -9,15 +9,13 @@ a level has at most one level difference to its neighbours.
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 import numpy as np
 
 from sfcpart.dtypes import Array, FloatArray, Int32Array, IntArray, index_dtype
 from sfcpart.errors import InputError
-
-if TYPE_CHECKING:
-    from sfcpart.mesh.mesh import Mesh
+from sfcpart.mesh.mesh import Mesh
 
 __all__ = ["FaceShape", "refined_box"]
 
@@ -49,8 +47,6 @@ class FaceShape:
 
     def to_mesh(self) -> Mesh:
         """Return the shape as a checked `Mesh` with the field "level"."""
-        from sfcpart.mesh.mesh import Mesh
-
         return Mesh.from_faces(
             self.face_cell,
             self.face_measure,

@@ -13,15 +13,13 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from itertools import permutations, product
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 import numpy as np
 
 from sfcpart.dtypes import COORDINATE, Array, BoolArray, FloatArray, IntArray, index_dtype
 from sfcpart.errors import InputError
-
-if TYPE_CHECKING:
-    from sfcpart.mesh.mesh import Mesh
+from sfcpart.mesh.mesh import BoundaryGroup, Mesh
 
 __all__ = ["Shape", "extrude", "jittered_tets", "lattice", "truncated_octahedra"]
 
@@ -56,8 +54,6 @@ class Shape:
 
     def to_mesh(self) -> Mesh:
         """Return the shape as a checked `Mesh`, boundary groups included."""
-        from sfcpart.mesh.mesh import Mesh
-
         return Mesh.from_arrays(
             self.points,
             dict(self.cells),
@@ -311,8 +307,6 @@ def _octahedron_faces() -> list[IntArray]:
 
 def _boundary_groups(groups: Mapping[str, IntArray]) -> tuple[Any, ...]:
     """Turn named blocks of lines, triangles or quads into boundary groups."""
-    from sfcpart.mesh.mesh import BoundaryGroup
-
     kinds = {1: 1, 2: 3, 3: 5, 4: 9}
     return tuple(
         BoundaryGroup(

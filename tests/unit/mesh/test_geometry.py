@@ -7,7 +7,6 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from sfcpart.mesh.geometry import centers_and_signed_measures
 from sfcpart.mesh.kinds import KINDS
 from sfcpart.mesh.mesh import Mesh
 from tests.oracles.faces import cell_faces, solid
@@ -45,7 +44,7 @@ def prism(n):
 def test_regular_solids(name):
     points = np.array(REGULAR[name], float)
     mesh = Mesh.from_arrays(points, {name: [np.arange(len(points))]})
-    centers, signed = centers_and_signed_measures(mesh)
+    centers, signed = mesh.centers, mesh.signed_measures
     assert signed[0] == pytest.approx(VOLUME[name], rel=1e-14)
     assert centers[0] == pytest.approx(CENTROID[name], rel=1e-14)
 
