@@ -31,8 +31,8 @@ if TYPE_CHECKING:
     from sfcpart.halo import Across
     from sfcpart.measure import Assessment, StepModel
     from sfcpart.measure.survey import Survey
-    from sfcpart.methods.problem import Cuts
     from sfcpart.meter import Metered
+    from sfcpart.methods.problem import Cuts
     from sfcpart.weights import FaceWeight
 
 __all__ = [
@@ -60,7 +60,6 @@ def split(
     method: str = "hilbert",
     tolerance: float = 0.03,
     cuts: Cuts = "balanced",
-    tolerance: float = 0.03,
     weights: Weights = None,
     speeds: ArrayLike | None = None,
     limit_weights: Weights = None,
@@ -224,6 +223,7 @@ def compare(
     repeat: int = 1,
     step_model: StepModel | None = None,
     tolerance: float = 0.03,
+    cuts: Cuts = "balanced",
     weights: Weights = None,
     speeds: ArrayLike | None = None,
     limit_weights: Weights = None,
@@ -251,7 +251,7 @@ def compare(
     repeat : int
         How often each split is timed; medians count.
     step_model : StepModel, optional
-    tolerance, weights, speeds, limit_weights, limits, levels, together, pairs, periodic,
+    tolerance, cuts, weights, speeds, limit_weights, limits, levels, together, pairs, periodic,
     face_weight, seed
         As for `split`, the same for all methods.
 
@@ -287,6 +287,7 @@ def compare(
         mesh,
         n_parts,
         tolerance=tolerance,
+        cuts=cuts,
         levels=levels,
         together=together,
         pairs=pairs,

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from math import isfinite, prod
-from typing import TYPE_CHECKING, Any, TypeAlias
+from typing import TYPE_CHECKING, Any, TypeAlias, get_args
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -13,7 +13,7 @@ from sfcpart.dtypes import Array, FloatArray, Int64Array
 from sfcpart.errors import InputError, PartitionError, SfcpartError, WeightError
 from sfcpart.graph import cell_graph
 from sfcpart.mesh.mesh import Mesh
-from sfcpart.methods.problem import Problem
+from sfcpart.methods.problem import Cuts, Problem
 from sfcpart.weights import (
     FACE_WEIGHTS,
     FaceWeight,
@@ -51,6 +51,7 @@ def plan_problem(
     face_weight: FaceWeight,
     seed: int,
     comm: Comm,
+    cuts: Cuts = "balanced",
 ) -> Problem:
     """Check what was asked and cast it into a `Problem`; see `sfcpart.split` for the meanings.
 
@@ -74,6 +75,7 @@ def plan_problem(
             "group": _groups(mesh, together, pairs, periodic),
             "face_weight": _face_weight(face_weight),
             "seed": _whole(seed, "seed", least=0),
+            "cuts": _cuts(cuts),
         }
     except SfcpartError as caught:
         error = caught
@@ -171,6 +173,13 @@ def _face_weight(face_weight: FaceWeight) -> FaceWeight:
     if face_weight not in FACE_WEIGHTS:
         raise InputError(f"face_weight is {face_weight!r}; wanted one of {', '.join(FACE_WEIGHTS)}")
     return face_weight
+
+
+def _cuts(cuts: Cuts) -> Cuts:
+    """Return a known wish for the cuts."""
+    if cuts not in get_args(Cuts):
+        raise InputError(f"cuts is {cuts!r}; wanted one of {', '.join(get_args(Cuts))}")
+    return cuts
 
 
 def _levels(levels: Sequence[int] | None, n_parts: int) -> tuple[int, ...]:

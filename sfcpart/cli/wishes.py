@@ -65,7 +65,15 @@ def wish_options(function: Function) -> Function:
             default=0.03,
             show_default=True,
             metavar="SHARE",
-            help="Imbalance that graph methods may use up for a smaller cut.",
+            help="Imbalance that graph methods, and --cuts least, may use up for a smaller cut.",
+        ),
+        click.option(
+            "--cuts",
+            type=click.Choice(["balanced", "least"]),
+            default="balanced",
+            show_default=True,
+            help="Where methods along a curve cut it: for the least heaviest part, or, within the "
+            "tolerance, to cut few faces.",
         ),
         weight_option,
         click.option(
@@ -161,6 +169,7 @@ def shape_wish(given: dict[str, Any]) -> dict[str, Any]:
 
     return {
         "tolerance": given["tolerance"],
+        "cuts": given["cuts"],
         "levels": given["levels"],
         "together": list(given["together"]) or None,
         "pairs": read_pairs(given["pairs"]),

@@ -3,7 +3,9 @@
 The order of the cells is that of `sfcpart.curve`; the chunks are those of `methods.chunks`. With
 nested levels the curve is first divided among the parts of the first level, each with the summed
 speed and limit of what it contains and with one item at least for each of its smallest parts, and
-each chunk then again. `tolerance` plays no role here: the least bottleneck is always given.
+each chunk then again. That gives the least bottleneck, and `tolerance` plays no role, unless
+`cuts` is "least": then the cuts move within the tolerance to where they cut fewest faces
+(`methods.window_cuts`).
 """
 
 from __future__ import annotations
@@ -20,12 +22,15 @@ from sfcpart.methods.chunks import cut_line
 from sfcpart.methods.line import Line
 from sfcpart.methods.problem import Problem
 from sfcpart.methods.together import Bundles
+from sfcpart.methods.window_cuts import with_least_cuts
 
 __all__ = ["along_hilbert", "along_morton", "along_rows", "split_along", "unfit"]
 
 
 def split_along(problem: Problem, *, curve: Curve) -> Int32Array:
     """Return the part of each local cell: chunks of the curve with least bottleneck.
+
+    Or with few faces cut, if the problem asks for it.
 
     Parameters
     ----------
@@ -50,8 +55,15 @@ def split_along(problem: Problem, *, curve: Curve) -> Int32Array:
 
     Notes
     -----
-    O(n) for keys and order, O(P log n log w_max) for the chunks.
+    O(n) for keys and order, O(P log n log w_max) for the chunks; see `methods.window_cuts` for
+    the least cut, for which every rank gathers the whole problem.
     """
+    part = _balanced(problem, curve=curve)
+    return part if problem.cuts == "balanced" else with_least_cuts(problem, part, curve=curve)
+
+
+def _balanced(problem: Problem, *, curve: Curve) -> Int32Array:
+    """Return the chunks with least bottleneck."""
     problem.comm.check(unfit(problem))
     place = curve_slice(problem.centers, curve=curve, comm=problem.comm)
     weight = None if problem.weight is None else place.gather(problem.weight)

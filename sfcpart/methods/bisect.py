@@ -314,7 +314,7 @@ def _longest_side(axes: FloatArray, weight: Int64Array | None) -> Score:
     """Cut by the coordinate of the longest side of the box; the first, if several are."""
 
     def score(members: Int64Array, share: float) -> FloatArray:
-        columns = [x[members] for x in axes]
+        columns: list[FloatArray] = [x[members] for x in axes]
         extent = [float(x.max()) / 2 - float(x.min()) / 2 for x in columns]
         return columns[int(np.argmax(extent))]
 
@@ -330,7 +330,10 @@ def _principal_axis(axes: FloatArray, weight: Int64Array | None) -> Score:
         size = max(float(np.abs(x - c).max()) for x, c in zip(columns, middle, strict=True))
         columns = [(x - c) / (size or 1.0) for x, c in zip(columns, middle, strict=True)]
         direction = _direction(columns, None if weight is None else weight[members])
-        return np.add.reduce([x * d for x, d in zip(columns, direction, strict=True) if d])
+        along = np.zeros(len(members))
+        for x, d in zip(columns, direction, strict=True):
+            along += x * d
+        return along
 
     return score
 

@@ -213,7 +213,7 @@ def _composed(steps: list[Level]) -> Int32Array:
 def _level(graph: WeightedGraph, coarse_of: Int32Array | None) -> _Level:
     """Turn a graph into floats; invert its Laplacian if it is the coarsest and small."""
     adjacency = _adjacency(graph)
-    degree = np.asarray(adjacency.sum(axis=1), np.float64)
+    degree: FloatArray = np.asarray(adjacency.sum(axis=1), np.float64)
     inverse = None
     if coarse_of is None and graph.n <= SMALLEST:
         inverse = np.linalg.pinv(np.diag(degree) - adjacency.toarray(), hermitian=True)
@@ -222,15 +222,15 @@ def _level(graph: WeightedGraph, coarse_of: Int32Array | None) -> _Level:
 
 def _ramp(n: int) -> FloatArray:
     """Start from the place of each vertex where a graph does not let itself be coarsened."""
-    return np.arange(n) - (n - 1) / 2
+    return np.arange(n, dtype=np.float64) - (n - 1) / 2
 
 
 def _dense(level: _Level) -> tuple[float, FloatArray]:
     """Solve L x = lambda M x for a few vertices."""
-    root = 1.0 / np.sqrt(level.mass)
+    root = np.asarray(1.0 / np.sqrt(level.mass), np.float64)
     laplacian = np.diag(level.degree) - level.adjacency.toarray()
     values, vectors = np.linalg.eigh(laplacian * root[:, None] * root)
-    return float(values[1]), vectors[:, 1] * root
+    return float(values[1]), np.asarray(vectors[:, 1] * root, np.float64)
 
 
 def _cycle(levels: list[_Level], right: FloatArray) -> FloatArray:
@@ -242,7 +242,8 @@ def _cycle(levels: list[_Level], right: FloatArray) -> FloatArray:
     if level.coarse_of is None:
         return x
     rest = right - level.laplacian(x)
-    x += OVER * _cycle(levels[1:], np.bincount(level.coarse_of, rest))[level.coarse_of]
+    coarse = np.bincount(level.coarse_of, rest).astype(np.float64, copy=False)
+    x += OVER * _cycle(levels[1:], coarse)[level.coarse_of]
     x += (right - level.laplacian(x)) * (DAMPING / level.degree)
     return x
 
@@ -257,7 +258,8 @@ def _improve(
     if not x.any():
         x = level.centered(_ramp(level.n))
     x /= np.sqrt((mass * x * x).sum())
-    lx, moves = level.laplacian(x), []
+    lx = level.laplacian(x)
+    moves: list[FloatArray] = []
     value = float((x * lx).sum())
     for step in range(steps):
         residual = lx - value * mass * x

@@ -4,13 +4,16 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass, field
+from typing import Literal
 
 from sfcpart.comm.base import Comm
 from sfcpart.dtypes import FloatArray, Int64Array
 from sfcpart.graph import CellGraph
 from sfcpart.weights import FaceWeight
 
-__all__ = ["Problem"]
+__all__ = ["Cuts", "Problem"]
+
+Cuts = Literal["balanced", "least"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -41,6 +44,9 @@ class Problem:
     face_weight : {"count", "measure"}
         What a method that cuts the cell graph lets a cut face cost, as integers:
         `face_weights(graph.data, by=problem.face_weight)` of `sfcpart.weights`.
+    cuts : {"balanced", "least"}
+        What methods along a curve do with `tolerance`: nothing (the least bottleneck), or move
+        their cuts to where they cut fewest faces. Other methods have no such cuts.
     seed : int
         The only source of randomness, hashed with the gid where used.
     graph : callable
@@ -64,3 +70,4 @@ class Problem:
     group: Int64Array | None = None
     face_weight: FaceWeight = "count"
     seed: int = 0
+    cuts: Cuts = "balanced"

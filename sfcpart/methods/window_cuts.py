@@ -14,15 +14,20 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from sfcpart.dtypes import FloatArray, Int32Array, Int64Array, IntArray
+from sfcpart.curve import Curve, curve_order
+from sfcpart.dtypes import Array, FloatArray, Int32Array, Int64Array, IntArray
+from sfcpart.errors import InputError
 from sfcpart.kernels.chunks import caps
 from sfcpart.kernels.window_cuts import cut_windows
+from sfcpart.methods.problem import Problem
+from sfcpart.methods.together import number_items
+from sfcpart.weights import face_weights
 
-__all__ = ["ItemLine", "least_cut_positions", "line_capacity"]
+__all__ = ["ItemLine", "least_cut_positions", "line_capacity", "with_least_cuts"]
 
-WIDEST = 1024
-"""Positions of a window on either side of the plain cut at most."""
-REACH = 2.0
+BUDGET = 10**8
+"""Pairs of positions looked at, or four times as many: windows are no wider than that allows."""
+REACH = 4.0
 """Weight that a window covers on either side, in units of the excess that a chunk may have."""
 
 
@@ -61,6 +66,68 @@ class ItemLine:
         return cls(item, sums[0], sums[1])
 
 
+def with_least_cuts(problem: Problem, cell_part: Int32Array, *, curve: Curve) -> Int32Array:
+    """Return chunks of a curve with their cuts moved to the least total cut.
+
+    Parameters
+    ----------
+    problem : Problem
+        Tolerance, speeds, groups and limits are kept; nested levels too, since each of their
+        chunks is a row of parts, and none of these outgrows its share by more than the tolerance.
+    cell_part : (n_local,) int32
+        The plain chunks.
+    curve : {"hilbert", "morton", "rows"}
+
+    Returns
+    -------
+    (n_local,) int32
+        Never cuts more faces than `cell_part`; no part is heavier than the tolerance allows, or
+        than the bottleneck of the plain chunks if that is more. The same for any number of ranks
+        and threads: every rank gathers the whole problem.
+
+    Raises
+    ------
+    InputError
+        If the cell graph has other cells than the problem.
+    """
+    part = _whole(problem, cell_part)
+    graph = problem.graph()
+    if graph.n_cells != len(part):
+        raise InputError(f"the cell graph has {graph.n_cells} cells, the problem {len(part)}")
+    order = curve_order(_whole(problem, problem.centers), curve=curve)
+    item = np.empty(len(part), np.int64)
+    item[order] = np.arange(len(part))
+    if problem.group is not None:
+        item[order] = number_items(_whole(problem, problem.group)[order])[0]
+    line = ItemLine.of(
+        item,
+        None if problem.weight is None else _whole(problem, problem.weight),
+        None if problem.limit_weight is None else _whole(problem, problem.limit_weight),
+    )
+    item_part = np.empty(len(line.sums) - 1, np.int32)
+    item_part[item] = part
+    cut = np.searchsorted(item_part, np.arange(problem.n_parts + 1)).astype(np.int64)
+    if not np.all(np.diff(cut) > 0):  # fewer cells than parts
+        return cell_part
+    speed, tolerance = problem.part_speed, problem.tolerance
+    cut = least_cut_positions(
+        line,
+        cut,
+        indptr=graph.indptr,
+        indices=graph.indices,
+        capacity=line_capacity(line, cut, speed=speed, tolerance=tolerance),
+        edge_weight=face_weights(graph.data, by=problem.face_weight),
+        limit=problem.part_limit,
+    )
+    mine = slice(problem.first_gid, problem.first_gid + len(problem.centers))
+    return np.searchsorted(cut[1:-1], item[mine], side="right").astype(np.int32)
+
+
+def _whole(problem: Problem, values: Array) -> Array:
+    """Join the ranks' slices."""
+    return np.concatenate(problem.comm.allgather(values))
+
+
 def line_capacity(
     line: ItemLine, cut: Int64Array, *, speed: FloatArray, tolerance: float
 ) -> Int64Array:
@@ -78,7 +145,8 @@ def line_capacity(
     share = line.sums[-1] * (speed / speed.sum())
     bottleneck = float((np.diff(line.sums[cut]) / speed).max(initial=0.0))
     kept = caps(bottleneck, speed.astype(np.float64), int(line.sums[-1]))
-    return np.maximum(np.floor((1.0 + tolerance) * share).astype(np.int64), kept)
+    allowed: Int64Array = np.floor((1.0 + tolerance) * share).astype(np.int64)
+    return np.asarray(np.maximum(allowed, kept), np.int64)
 
 
 def least_cut_positions(
@@ -136,13 +204,16 @@ def least_cut_positions(
     first_row = np.concatenate(([0], np.cumsum(width)[:-1])).astype(np.int64)
     position = np.repeat(low - first_row, width) + np.arange(int(width.sum()))
     row_ptr, place, weight = _rows_at(line.item, position, indptr, indices, edge_weight)
-    limited = line.limit_sums is not None and limit is not None
+    limit_sums = np.zeros(len(position), np.int64)
+    if line.limit_sums is not None and limit is not None:
+        limit_sums = line.limit_sums[position]
+    else:
+        limit = np.zeros(len(capacity), np.int64)
     chosen = np.empty(len(cut), np.int64)
     cut_windows(
         low, high, cut.astype(np.int64), first_row, row_ptr, place, weight, line.sums[position],
         capacity.astype(np.int64),
-        line.limit_sums[position] if limited else np.zeros(len(position), np.int64),
-        limit.astype(np.int64) if limited else np.zeros(len(capacity), np.int64),
+        limit_sums, limit.astype(np.int64),
         np.empty(len(position), np.int64), np.zeros(len(position), np.int32),
         np.empty(int(width.max()), np.int64), chosen,
     )  # fmt: skip
@@ -153,7 +224,8 @@ def _sums_along(item: IntArray, n: int, weight: Int64Array) -> Int64Array:
     """Return the weight before each position of the line."""
     sums = np.zeros(n + 1, np.int64)
     np.add.at(sums[1:], item, weight)
-    return np.cumsum(sums)
+    np.cumsum(sums, out=sums)
+    return sums
 
 
 def _windows(
@@ -170,8 +242,9 @@ def _windows(
     low = np.searchsorted(sums, sums[inner] - slack, "left")
     high = np.searchsorted(sums, sums[inner] + slack, "right") - 1
     half = (cut[:-1] + cut[1:]) // 2
-    low = np.minimum(np.maximum.reduce([low, inner - WIDEST, half[:-1] + 1]), inner)
-    high = np.maximum(np.minimum.reduce([high, inner + WIDEST, half[1:]]), inner)
+    widest = max(64, int((BUDGET / len(cut)) ** 0.5))
+    low = np.minimum(np.maximum.reduce([low, inner - widest, half[:-1] + 1]), inner)
+    high = np.maximum(np.minimum.reduce([high, inner + widest, half[1:]]), inner)
     ends = [int(cut[0])], [int(cut[-1])]
     return (
         np.concatenate([ends[0], low, ends[1]]).astype(np.int64),
