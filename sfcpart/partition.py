@@ -72,6 +72,10 @@ class Partition:
         n_parts : int, optional
             Number of parts; by default one more than the largest part.
 
+        Returns
+        -------
+        Partition
+
         Raises
         ------
         PartitionError
@@ -111,7 +115,13 @@ class Partition:
         return len(self.cell_part)
 
     def part_size(self) -> Int64Array:
-        """Return the number of cells of each part, (n_parts,) int64."""
+        """Return the number of cells of each part, (n_parts,) int64.
+
+        Examples
+        --------
+        >>> Partition.from_array([0, 2, 2], 4).part_size().tolist()
+        [1, 0, 2, 0]
+        """
         return np.bincount(self.cell_part, minlength=self.n_parts).astype(np.int64)
 
     def relabel(self, new_label: ArrayLike) -> Partition:
@@ -121,6 +131,10 @@ class Partition:
         ----------
         new_label : (n_parts,) integers
             A permutation of 0..n_parts-1.
+
+        Returns
+        -------
+        Partition
 
         Raises
         ------
@@ -142,7 +156,22 @@ class Partition:
         return Partition.from_array(label.astype(PART)[self.cell_part], self.n_parts)
 
     def equals(self, other: Partition) -> bool:
-        """Tell whether two partitions agree cell by cell and in their number of parts."""
+        """Tell whether two partitions agree cell by cell and in their number of parts.
+
+        Parameters
+        ----------
+        other : Partition
+
+        Returns
+        -------
+        bool
+
+        Examples
+        --------
+        >>> one = Partition.from_array([0, 1])
+        >>> one.equals(Partition.from_array([0, 1])), one.equals(Partition.from_array([0, 1], 3))
+        (True, False)
+        """
         return self.n_parts == other.n_parts and np.array_equal(self.cell_part, other.cell_part)
 
     def compare(self, other: Partition, weights: ArrayLike | None = None) -> Change:

@@ -52,6 +52,14 @@ class Mesh(MeshArrays):
     cell_fields, point_fields : mapping of str to array
         Arrays of n_cells (n_points) rows.
     boundary : tuple of BoundaryGroup
+
+    Examples
+    --------
+    >>> mesh = Mesh.from_arrays([[0, 0], [2, 0], [2, 1], [0, 1]], {"quad": [[0, 1, 2, 3]]})
+    >>> mesh
+    Mesh(1 quad; dim 2 in 2-D; 4 points)
+    >>> mesh.centers.tolist(), mesh.measures.tolist()
+    ([[1.0, 0.5]], [2.0])
     """
 
     @classmethod
@@ -290,6 +298,11 @@ class Mesh(MeshArrays):
         ----------
         name : str
         values : (n_cells, ...) array
+
+        Returns
+        -------
+        Mesh
+            What is derived already, such as centres and the cell graph, goes along.
 
         Raises
         ------

@@ -3,10 +3,14 @@
 from __future__ import annotations
 
 import ast
+import inspect
+import re
 import tomllib
+from collections.abc import Callable
 from pathlib import Path
 
 import sfcpart
+import sfcpart.api
 
 PACKAGE = Path(sfcpart.__file__).parent
 
@@ -42,6 +46,33 @@ def test_kernels_take_the_threads_of_one_pool():
         or (isinstance(node, ast.keyword) and node.arg in words)
     ]
     assert used == []
+
+
+def public_calls() -> dict[str, Callable]:
+    """Return what scripts outside call: public functions and methods of public classes."""
+    public = {name: getattr(sfcpart, name) for name in sfcpart.__all__}
+    for kind in (*[c for c in public.values() if inspect.isclass(c)], sfcpart.api.Part):
+        for name in vars(kind):
+            if name[0] != "_" and callable(getattr(kind, name)):
+                public[f"{kind.__name__}.{name}"] = getattr(kind, name)
+    return {name: call for name, call in public.items() if callable(call)}
+
+
+def test_public_calls_are_documented_the_same_way():
+    # numpydoc: what goes in, what comes out, what is raised, an example that runs as a doctest.
+    lacking = []
+    for name, call in public_calls().items():
+        text = inspect.getdoc(call) or ""
+        given = [p for p in inspect.signature(call).parameters if p not in ("self", "cls")]
+        lacking += [f"{name}: parameter {p}" for p in given if p not in text]
+        wanted = ["Examples"]
+        if not inspect.isclass(call):
+            wanted += ["Parameters"] if given else []
+            source = inspect.getsource(call)
+            wanted += ["Returns"] if re.search(r"^ {4,8}return \S", source, re.M) and given else []
+            wanted += ["Raises"] if re.search(r"^ +raise ", source, re.M) else []
+        lacking += [f"{name}: {head}" for head in wanted if f"{head}\n---" not in text]
+    assert lacking == []
 
 
 def test_the_package_is_typed_and_of_the_version_it_is_built_as(root):

@@ -108,6 +108,10 @@ class Part:
         ------
         InputError
             If nothing is exchanged with that part.
+
+        Examples
+        --------
+        See `read_part`.
         """
         at = self._position(neighbour)
         return self.send[self.send_indptr[at] : self.send_indptr[at + 1]]
@@ -128,6 +132,10 @@ class Part:
         ------
         InputError
             If nothing is exchanged with that part.
+
+        Examples
+        --------
+        See `read_part`.
         """
         at = self._position(neighbour)
         return self.receive[self.receive_indptr[at] : self.receive_indptr[at + 1]]
