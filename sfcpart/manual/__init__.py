@@ -10,6 +10,7 @@ __all__ = ["PAGES", "read_page"]
 
 PAGES: dict[str, str] = {
     "figures": "every figure of a report: unit, meaning, bounds, the model of a step",
+    "in_a_solver": "splitting, halo exchange and migration inside a running solver, with a program",
     "parts_file": "the file of parts, for those who write a solver's reader",
     "reading": "which mesh files are read, how, and what is refused",
 }

@@ -1,8 +1,9 @@
 """Start MPI jobs from a test process that never imports mpi4py.
 
 `run_job(module, size, folder)` starts `mpiexec -n SIZE python -m MODULE FOLDER` with a time limit
-and returns when it has ended; what the ranks saw, they wrote into the folder. A job that fails,
-or hangs and is killed with all its processes, raises with what it printed.
+and returns when it has ended; what the ranks saw, they wrote into the folder. `run_script(path,
+size)` does the same for a user's script, in its own folder. A job that fails, or hangs and is
+killed with all its processes, raises with what it printed.
 """
 
 from __future__ import annotations
@@ -14,7 +15,9 @@ import subprocess
 import sys
 from pathlib import Path
 
-__all__ = ["MpiJobError", "mpiexec", "run_job"]
+import sfcpart
+
+__all__ = ["MpiJobError", "mpiexec", "run_job", "run_script"]
 
 ROOT = Path(__file__).resolve().parents[2]
 
@@ -34,11 +37,31 @@ def mpiexec() -> str:
 
 def run_job(module: str, size: int, folder: Path, *, timeout: float = 120.0) -> None:
     """Run one module on `size` ranks with the folder as its argument; raise if it does not end."""
-    command = [mpiexec(), "-n", str(size), sys.executable, "-m", module, str(folder)]
+    # `python -m tests.mpi...` is found from the root
+    _run(["-m", module, str(folder)], size, cwd=ROOT, what=module, timeout=timeout)
+
+
+def run_script(path: Path, size: int, *, timeout: float = 120.0) -> str:
+    """Run a script on `size` ranks in the folder it lies in; return what it printed."""
+    # from that folder, the package that is tested here is found by its path
+    package = {"PYTHONPATH": str(Path(sfcpart.__file__).parents[1])}
+    return _run([path.name], size, cwd=path.parent, what=path.name, timeout=timeout, more=package)
+
+
+def _run(
+    arguments: list[str],
+    size: int,
+    *,
+    cwd: Path,
+    what: str,
+    timeout: float,
+    more: dict[str, str] | None = None,
+) -> str:
+    """Run Python on `size` ranks; return what all printed."""
     job = subprocess.Popen(
-        command,
-        cwd=ROOT,  # `python -m tests.mpi...` is found from here
-        env=_environment(),
+        [mpiexec(), "-n", str(size), sys.executable, *arguments],
+        cwd=cwd,
+        env={**_environment(), **(more or {})},
         stdin=subprocess.DEVNULL,
         stdout=subprocess.PIPE,
         stderr=subprocess.STDOUT,
@@ -50,9 +73,10 @@ def run_job(module: str, size: int, folder: Path, *, timeout: float = 120.0) -> 
     except subprocess.TimeoutExpired:
         _kill(job)
         printed, _ = job.communicate()
-        raise MpiJobError(f"{size} ranks of {module} ran over {timeout:g} s:\n{printed}") from None
+        raise MpiJobError(f"{size} ranks of {what} ran over {timeout:g} s:\n{printed}") from None
     if job.returncode != 0:
-        raise MpiJobError(f"{size} ranks of {module} ended with {job.returncode}:\n{printed}")
+        raise MpiJobError(f"{size} ranks of {what} ended with {job.returncode}:\n{printed}")
+    return printed
 
 
 def _environment() -> dict[str, str]:

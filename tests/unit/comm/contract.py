@@ -466,13 +466,16 @@ def unfit_links_are_refused(comm: Comm) -> Lines:
     return lines
 
 
-@scenario(lambda rank, size: ["RankError" if size > 1 and rank == 0 else "no error"])
-def fewer_rows_than_meant_are_noticed(comm: Comm) -> Lines:
-    meant = [(1, 0, 3)] if comm.rank == 0 and comm.size > 1 else []
-    sent = [(0, 0, 2)] if comm.rank == 1 else []
-    link = comm.link(np.zeros(3), np.zeros(3), targets=sent, sources=meant)
-    link.start()
-    return [attempted(link.finish).split(":")[0]]
+@scenario(lambda rank, size: ["RankError" if size > 1 and rank == 0 else "no error"] * 2)
+def fewer_or_more_rows_than_meant_are_noticed(comm: Comm) -> Lines:
+    lines = []
+    for n_meant, n_sent in ((3, 2), (2, 3)):
+        meant = [(1, 0, n_meant)] if comm.rank == 0 and comm.size > 1 else []
+        sent = [(0, 0, n_sent)] if comm.rank == 1 else []
+        link = comm.link(np.zeros(3), np.zeros(3), targets=sent, sources=meant)
+        link.start()
+        lines.append(attempted(link.finish).split(":")[0])
+    return lines
 
 
 # -- values and errors ----------------------------------------------------------------------------
