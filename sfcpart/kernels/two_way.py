@@ -380,11 +380,15 @@ def refine_pairs(
     for i in range(start, stop):
         a = left[i]
         b = right[i]
-        m_a = fringe_ptr[a + 1] - fringe_ptr[a]
-        m = m_a + fringe_ptr[b + 1] - fringe_ptr[b]
-        members = np.empty(m, np.int32)
-        for x in range(m):
-            members[x] = fringe[fringe_ptr[a] + x] if x < m_a else fringe[fringe_ptr[b] + x - m_a]
+        members = np.empty(
+            fringe_ptr[a + 1] - fringe_ptr[a] + fringe_ptr[b + 1] - fringe_ptr[b], np.int32
+        )
+        m = 0
+        for p in (a, b):
+            for x in range(fringe_ptr[p], fringe_ptr[p + 1]):
+                if part[fringe[x]] == a or part[fringe[x]] == b:  # others left meanwhile
+                    members[m] = fringe[x]
+                    m += 1
         for _ in range(10):
             fall_over, fall = refine_once(
                 a, b, members, m, indptr, indices, edge_weight, vertex_weight, part, load,

@@ -17,7 +17,7 @@ from sfcpart.graph import CellGraph
 from sfcpart.methods.coarsen import WeightedGraph, contract
 from sfcpart.methods.problem import Problem
 
-__all__ = ["CellProblem", "permuted"]
+__all__ = ["CellProblem", "limits_kept", "permuted"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -31,6 +31,8 @@ class CellProblem:
     item_of : (n_cells,) int32
         Item of each cell.
     limit_weight : (n_items,) int64 or None
+    center : (n_items, dim) float64
+        Centre of each item's first cell.
     slice : slice
         This rank's cells.
     """
@@ -38,11 +40,12 @@ class CellProblem:
     graph: WeightedGraph
     item_of: Int32Array
     limit_weight: Int64Array | None
+    center: FloatArray
     slice: slice
 
     @classmethod
-    def of(cls, problem: Problem) -> CellProblem:
-        """Gather, order and contract a problem.
+    def of(cls, problem: Problem, *, with_graph: bool = True) -> CellProblem:
+        """Gather, order and contract a problem; without the graph no edges are known.
 
         Raises
         ------
@@ -53,20 +56,22 @@ class CellProblem:
         """
         centers = _whole(problem, problem.centers)
         n = len(centers)
-        cells = problem.graph()
-        if cells.n_cells != n:
-            raise InputError(f"the cell graph has {cells.n_cells} cells, the problem {n}")
         weight = np.ones(n, np.int64) if problem.weight is None else _whole(problem, problem.weight)
         order = curve_order(centers)
         place = np.empty(n, np.int32)
         place[order] = np.arange(n, dtype=np.int32)
-        graph = permuted(counted(cells, weight), order, place)
+        graph = _faceless(weight[order])
+        if with_graph:
+            cells = problem.graph()
+            if cells.n_cells != n:
+                raise InputError(f"the cell graph has {cells.n_cells} cells, the problem {n}")
+            graph = permuted(counted(cells, weight), order, place)
         limit = None
         if problem.limit_weight is not None:
             limit = _whole(problem, problem.limit_weight)[order]
         mine = slice(problem.first_gid, problem.first_gid + len(problem.centers))
         if problem.group is None:
-            return cls(graph, place, limit, mine)
+            return cls(graph, place, limit, centers[order], mine)
         item, n_items = _items(_whole(problem, problem.group)[order])
         if n_items < problem.n_parts <= n:
             raise PartitionError(
@@ -77,7 +82,9 @@ class CellProblem:
             item_limit = np.zeros(n_items, np.int64)
             np.add.at(item_limit, item, limit)
             limit = item_limit
-        return cls(contract(graph, item, n_items), item[place], limit, mine)
+        first = np.unique(item, return_index=True)[1]
+        graph = contract(graph, item, n_items)
+        return cls(graph, item[place], limit, centers[order[first]], mine)
 
     def spread(self, item_part: Int32Array) -> Int32Array:
         """Return the part of each of this rank's cells."""
@@ -88,6 +95,21 @@ class CellProblem:
         part = np.empty(self.graph.n, np.int32)
         part[self.item_of] = cell_part
         return part
+
+
+def limits_kept(problem: Problem, cells: CellProblem, part: Int32Array) -> bool:
+    """Whether no part holds more of the limited weight than it may."""
+    if cells.limit_weight is None or problem.part_limit is None:
+        return True
+    held = np.zeros(problem.n_parts, np.int64)
+    np.add.at(held, part, cells.limit_weight)
+    return bool(np.all(held <= problem.part_limit))
+
+
+def _faceless(weight: Int64Array) -> WeightedGraph:
+    """Return a graph without edges."""
+    none = np.zeros(0, np.int64)
+    return WeightedGraph(np.zeros(len(weight) + 1, np.int64), none.astype(np.int32), none, weight)
 
 
 def counted(cells: CellGraph, weight: Int64Array) -> WeightedGraph:

@@ -15,7 +15,7 @@ import numpy as np
 from sfcpart.dtypes import Array, FloatArray, Int32Array, Int64Array
 from sfcpart.errors import PartitionError
 from sfcpart.methods.along_curve import along_hilbert
-from sfcpart.methods.cell_problem import CellProblem
+from sfcpart.methods.cell_problem import CellProblem, limits_kept
 from sfcpart.methods.coarsen import WeightedGraph
 from sfcpart.methods.search import best_of_many
 from sfcpart.methods.problem import Problem
@@ -59,9 +59,9 @@ def multilevel(problem: Problem) -> Int32Array:
         return _nested(graph, problem.part_speed, sizes, problem.seed, tolerance)
 
     part = solve(cells.graph, problem.tolerance)
-    if not _keeps_limits(problem, cells, part):
+    if not limits_kept(problem, cells, part):
         part = solve(_both_weights(problem, cells), 0.0)
-        if not _keeps_limits(problem, cells, part):
+        if not limits_kept(problem, cells, part):
             return along_hilbert(problem)
     return cells.spread(part)
 
@@ -98,7 +98,7 @@ def smoothed(problem: Problem) -> Int32Array:
     weight = int(graph.vertex_weight.sum())
     aim = mesh_aim(weight, problem.part_speed, problem.tolerance, problem.seed)
     better = smooth(graph, part, aim)
-    return cells.spread(better) if _keeps_limits(problem, cells, better) else start
+    return cells.spread(better) if limits_kept(problem, cells, better) else start
 
 
 def mesh_aim(total: int, speed: FloatArray, tolerance: float, seed: int) -> Aim:
@@ -153,15 +153,6 @@ def _cut_off(graph: WeightedGraph, label: Int32Array) -> WeightedGraph:
     count = np.bincount(row[keep], minlength=graph.n)
     indptr = np.concatenate([[0], np.cumsum(count)]).astype(np.int64)
     return WeightedGraph(indptr, graph.indices[keep], graph.edge_weight[keep], graph.vertex_weight)
-
-
-def _keeps_limits(problem: Problem, cells: CellProblem, part: Int32Array) -> bool:
-    """Whether no part holds more of the limited weight than it may."""
-    if cells.limit_weight is None or problem.part_limit is None:
-        return True
-    held = np.zeros(problem.n_parts, np.int64)
-    np.add.at(held, part, cells.limit_weight)
-    return bool(np.all(held <= problem.part_limit))
 
 
 def _both_weights(problem: Problem, cells: CellProblem) -> WeightedGraph:
