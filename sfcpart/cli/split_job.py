@@ -42,18 +42,24 @@ class SplitJob:
             check_output_folder(given["output"], overwrite=given["overwrite"])
         with self.doing(f"reading {self.source}"):
             self.mesh = read_mesh(self.source, merge_points=given["merge_points"])
+        load = load_wish(given)
         with self.doing(f"splitting {self.mesh.n_cells:,} cells"):
-            self._split()
+            self._split(load)
+        with self.doing(f"measuring {self.partition.n_parts:,} parts"):
+            self._measure(load)
         if given["output"] is not None:
             with self.doing(f"writing {given['output']}"):
                 self._write()
 
-    def _split(self) -> None:
-        """Split and measure with the same weights, speeds and limits."""
-        given, load = self.options, load_wish(self.options)
+    def _split(self, load: dict[str, Any]) -> None:
+        """Split with the weights, speeds and limits of `load`."""
+        given = self.options
         self.partition = api.split(
             self.mesh, given["n_parts"], method=given["method"], **shape_wish(given), **load
         )
+
+    def _measure(self, load: dict[str, Any]) -> None:
+        """Measure with the same."""
         self.assessment = api.assess(self.mesh, self.partition, step_model=self.step_model, **load)
 
     def _write(self) -> None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import re
 import signal
 import subprocess
 import sys
@@ -173,6 +174,8 @@ def test_a_terminal_sees_stages_and_a_pipe_does_not():
     assert child.wait(300) == 0
     assert b"reading" in seen
     assert b"splitting" in seen
+    assert b"measuring" in seen
+    assert re.search(rb"\d:\d\d:\d\d", seen)  # for how long
     assert "reading" not in out
     assert "\x1b" not in out
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import assume, given
 from hypothesis import strategies as st
 
 from sfcpart.comm import SerialComm, run_ranks
@@ -115,6 +115,27 @@ def test_levels_are_nested_and_each_is_balanced():
     for node in range(4):
         load = np.bincount(part[outer == node] % 16, weights=weight[outer == node])
         assert load.max() <= load.mean() + 50
+
+
+@given(centers=dyadic_clouds(max_size=16), data=st.data())
+def test_each_level_has_the_least_bottleneck_with_weights_and_speeds(centers, data):
+    # Weights and speeds so alike that every chunk of the first level has cells for two parts.
+    n = len(centers)
+    assume(n >= 10)
+    weight = np.array(data.draw(st.lists(st.integers(4, 6), min_size=n, max_size=n)), np.int64)
+    speed = np.array(data.draw(st.lists(st.sampled_from([1.0, 1.5]), min_size=4, max_size=4)))
+    part = split(centers, 4, weight=weight, part_speed=speed, level_sizes=(2, 2))
+    order = curve_order(centers)
+    outer, pair_speed = part[order] // 2, speed.reshape(2, 2)
+    load = np.bincount(outer, weights=weight[order])
+    assert (load / pair_speed.sum(axis=1)).max() == least_bottleneck(
+        weight[order], pair_speed.sum(axis=1)
+    )
+    for chunk in (0, 1):
+        inside = order[outer == chunk]
+        load = np.bincount(part[inside] % 2, weights=weight[inside])
+        best = least_bottleneck(weight[inside], pair_speed[chunk])
+        assert (load / pair_speed[chunk]).max() == best
 
 
 def test_levels_leave_an_item_for_each_smallest_part():
