@@ -1,0 +1,180 @@
+"""All ways to split, measured alike: the tables of "Which method, and why" in DEVELOPERS.md.
+
+    python tools/bench/compare_methods.py reference   # random Delaunay tets, 64 parts, 3 %
+    python tools/bench/compare_methods.py layers      # stretched wall layers, mixed cells
+    python tools/bench/compare_methods.py cells       # doubling cells at fixed parts
+    python tools/bench/compare_methods.py parts       # 16 to 4096 parts of one mesh
+
+`reference`: Delaunay tetrahedra of 160,000 points of `numpy.random.default_rng(0)` (1.08e6 cells).
+`layers`: the Skerry Channel with hexahedra at the bed (aspect ratio printed) below wedges, faces
+counted and then weighed by measure. `cells`, `parts`: jittered lattices of tets; seconds without
+the cell graph, cut, memory. Cuts are multiples of that along the Hilbert curve; times (medians of
+`--repeat` runs in one process, nothing compiled in them, the cell graph included where it is
+needed) multiples of the time to build the cell graph; memory is bytes a cell beyond mesh and graph.
+Tables are Markdown. Targets are printed with what was reached.
+"""
+
+from __future__ import annotations
+
+import argparse
+import os
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+
+import sfcpart
+from sfcpart.comparison import Comparison
+from sfcpart.kernels.threads import n_threads
+from sfcpart.mesh.channel import channel_section
+from sfcpart.mesh.mesh import Mesh
+from sfcpart.mesh.shapes import extrude, jittered_tets
+from sfcpart.methods.registry import METHODS
+
+SLOW = ("spectral",)  # timed once
+TOLERANCE = 0.03
+
+
+def reference(n_points: int) -> Mesh:
+    """Make the reference mesh."""
+    from scipy.spatial import Delaunay
+
+    points = np.random.default_rng(0).random((n_points, 3))
+    return Mesh.from_arrays(points, {"tetra": Delaunay(points).simplices.astype(np.int32)})
+
+
+def wall_layers(n_along: int) -> tuple[Mesh, float]:
+    """Make the channel with 24 thin layers at its bed; return it and its largest aspect ratio."""
+    n_layers, growth = 24, 1.5
+    section = channel_section(n_along, n_along // 8, n_layers=n_layers, growth=growth)
+    across = np.linspace(0.0, 12.0, max(2, n_along * 3 // 10) + 1)
+    thinnest = 0.8 * (growth - 1) / (growth**n_layers - 1)
+    return extrude(section, across).to_mesh(), 40.0 / n_along / thinnest
+
+
+def compared(
+    mesh: Mesh, n_parts: int, methods: Sequence[str], repeat: int, **wish: Any
+) -> dict[str, dict[str, Any]]:
+    """Compare the quick methods with repetition, the slow ones without; a row of figures each."""
+    rows: dict[str, dict[str, Any]] = {}
+    for slow in (False, True):
+        names = [name for name in methods if (name in SLOW) == slow]
+        if not names:
+            continue
+        found: Comparison = sfcpart.compare(
+            mesh, n_parts, methods=names, tolerance=TOLERANCE, repeat=1 if slow else repeat, **wish
+        )
+        for row, figures in zip(found.rows, found.figures(), strict=True):
+            if row.failure:
+                print(f"{row.name}: {row.failure}")
+                continue
+            rows[row.name] = {**figures, "graph": found.graph_seconds, "n_cells": mesh.n_cells}
+    return {name: rows[name] for name in methods if name in rows}
+
+
+def table(rows: dict[str, dict[str, Any]], *, base: dict[str, Any]) -> None:
+    """Print a table of all methods, beside a base."""
+    heads = ("cut faces", "cut measure", "halo", "imbalance", "parts in pieces", "meet", "time")
+    print(f"| method | {' | '.join(heads)} | bytes a cell |\n|---|{'---:|' * (len(heads) + 1)}")
+    for name, row in rows.items():
+        memory = "" if row["peak_bytes"] is None else f"{row['peak_bytes'] / row['n_cells']:.0f}"
+        print(
+            f"| `{name}` | {row['cut_faces'] / base['cut_faces']:.3f} | "
+            f"{row['cut_measure'] / base['cut_measure']:.3f} | "
+            f"{row['halo_cells'] / base['halo_cells']:.3f} | {100 * row['imbalance']:.2f} % | "
+            f"{row['n_split_parts']} | {row['neighbours_max']} | "
+            f"{row['split_seconds'] / row['graph']:.2f} | {memory} |"
+        )
+
+
+def show_reference(methods: Sequence[str], repeat: int, size: int) -> None:
+    """Table of the reference mesh, and the targets of the two graph methods."""
+    mesh = reference(size)
+    rows = compared(mesh, 64, methods, repeat)
+    base = rows["hilbert"]
+    print(f"{mesh.n_cells:,} tets, 64 parts, {100 * TOLERANCE:g} %: Hilbert cuts ", end="")
+    print(f"{base['cut_faces']:,} faces; the cell graph takes {base['graph']:.2f} s\n")
+    table(rows, base=base)
+    if {"smoothed", "multilevel"} <= set(rows):
+        deep, flat = rows["multilevel"], rows["smoothed"]
+        cuts = [row["cut_faces"] / base["cut_faces"] for row in (deep, flat)]
+        print(f"\nmultilevel: cut {cuts[0]:.3f} (target 0.58) in ", end="")
+        print(f"{deep['split_seconds'] / deep['graph']:.1f} graph times (target 10)")
+        print(f"smoothed: cut {cuts[1]:.3f} (target 0.64) in ", end="")
+        print(f"{flat['split_seconds'] / deep['split_seconds']:.2f} of its time (target 0.33)")
+
+
+def show_layers(methods: Sequence[str], repeat: int, size: int) -> None:
+    """Tables of the stretched mesh, faces counted and weighed."""
+    mesh, aspect = wall_layers(size)
+    weighing = [name for name in methods if name in ("smoothed", "multilevel", "spectral")]
+    rows = compared(mesh, 64, methods, repeat)
+    print(f"{mesh.n_cells:,} hexahedra and wedges, aspect ratio {aspect:,.0f}, 64 parts; ", end="")
+    print(f"Hilbert cuts {rows['hilbert']['cut_faces']:,} faces\n")
+    table(rows, base=rows["hilbert"])
+    print("\nfaces weighed by their measure:\n")
+    table(compared(mesh, 64, weighing, repeat, face_weight="measure"), base=rows["hilbert"])
+
+
+def show_cells(methods: Sequence[str], repeat: int, size: int) -> None:
+    """Growth of time with the number of cells, for 64 parts."""
+    print(f"| cells | {' | '.join(methods)} |\n|---:|{'---:|' * len(methods)}")
+    for step in range(4):
+        mesh = jittered_tets((round((size * 2**step / 6) ** (1 / 3)),) * 3).to_mesh()
+        rows = compared(mesh, 64, methods, repeat)
+        growth_row(f"{mesh.n_cells:,}", rows, methods)
+
+
+def show_parts(methods: Sequence[str], repeat: int, size: int) -> None:
+    """Growth of time with the number of parts, for one mesh."""
+    mesh = jittered_tets((round((size / 6) ** (1 / 3)),) * 3).to_mesh()
+    print(f"{mesh.n_cells:,} tets\n")
+    print(f"| parts | {' | '.join(methods)} |\n|---:|{'---:|' * len(methods)}")
+    for n_parts in (16, 64, 256, 1024, 4096):
+        growth_row(f"{n_parts:,}", compared(mesh, n_parts, methods, repeat), methods)
+
+
+def growth_row(head: str, rows: dict[str, dict[str, Any]], methods: Sequence[str]) -> None:
+    """Print seconds, cut as a multiple of the Hilbert cut, and bytes a cell of each method."""
+    cells = []
+    for name in methods:
+        row = rows.get(name)
+        if row is None:
+            cells.append("refused")
+            continue
+        cut = row["cut_faces"] / rows["hilbert"]["cut_faces"]
+        memory = (
+            "" if row["peak_bytes"] is None else f", {row['peak_bytes'] / row['n_cells']:.0f} B"
+        )
+        alone = row["split_seconds"] - row["graph_seconds"]
+        cells.append(f"{alone:.2f} s, {cut:.2f}{memory}")
+    print(f"| {head} | {' | '.join(cells)} |", flush=True)
+
+
+WHAT = {
+    "reference": (show_reference, 160_000, tuple(METHODS)),
+    "layers": (show_layers, 130, tuple(METHODS)),
+    "cells": (show_cells, 250_000, ("hilbert", "smoothed", "multilevel", "coordinate")),
+    "parts": (show_parts, 500_000, ("hilbert", "smoothed", "multilevel", "coordinate")),
+}
+
+
+def main() -> None:
+    parser = argparse.ArgumentParser(
+        description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter
+    )
+    parser.add_argument("what", choices=WHAT)
+    parser.add_argument("--repeat", type=int, default=3)
+    parser.add_argument("--size", type=int, help="points, columns along the channel, or cells")
+    parser.add_argument("--methods", nargs="+", choices=METHODS, metavar="NAME")
+    asked = parser.parse_args()
+    show, size, methods = WHAT[asked.what]
+    chosen = asked.methods or methods
+    if "hilbert" not in chosen:
+        chosen = ("hilbert", *chosen)
+    print(f"{n_threads()} threads, load {os.getloadavg()[0]:.1f}, repeat {asked.repeat}\n")
+    show(chosen, asked.repeat, asked.size or size)
+
+
+if __name__ == "__main__":
+    main()
