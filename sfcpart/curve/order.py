@@ -1,0 +1,176 @@
+"""The order along the curve, over ranks: a sort of the keys, deeper keys where keys are shared."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from itertools import pairwise
+from typing import cast
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from sfcpart.comm import SerialComm
+from sfcpart.comm.base import Comm
+from sfcpart.curve.frame import Curve, Frame
+from sfcpart.dtypes import GID, KEY, Array, Int64Array, IntArray, index_dtype
+from sfcpart.kernels.radix import put_rows, sorting, survey, take_rows
+
+__all__ = ["CurveSlice", "curve_order", "curve_slice"]
+
+
+def curve_order(
+    centers: ArrayLike, *, curve: Curve = "hilbert", comm: Comm | None = None
+) -> Int64Array:
+    """Return the cells in the order in which the curve meets their centres.
+
+    Parameters
+    ----------
+    centers : (n, dim) float64
+    curve : {"hilbert", "morton", "rows"}
+    comm : Comm, optional
+        Ranks that hold consecutive slices of the cells.
+
+    Returns
+    -------
+    (n,) int64
+        Cell numbers by key, deeper key, cell number; with several ranks, the (global) numbers of
+        this rank's slice of the curve.
+
+    Raises
+    ------
+    InputError
+        As `curve_keys`.
+
+    Examples
+    --------
+    >>> curve_order([[0.0, 0.0], [1.0, 1.0], [1.0, 0.0], [0.0, 1.0]]).tolist()
+    [0, 3, 1, 2]
+    """
+    comm = comm or SerialComm()
+    line = curve_slice(centers, curve=curve, comm=comm)
+    first = comm.exscan(np.array([len(line.order)], GID))[0]
+    return cast(Int64Array, line.forward(line.order + first))
+
+
+@dataclass(frozen=True, eq=False)
+class CurveSlice:
+    """A rank's stretch of the curve, and the way there and back for values of cells.
+
+    Attributes
+    ----------
+    comm : Comm
+    order : (n_local,) int32 or int64
+        Local cells by key.
+    edge : (size + 1,) int64
+        `order[edge[r]:edge[r + 1]]` went to rank r.
+    received : (size,) int64
+        Cells that came from each rank.
+    merge : (n_slice,) int32 or int64, or None
+        Curve order of what was received; None if it came in order.
+    """
+
+    comm: Comm
+    order: IntArray
+    edge: Int64Array
+    received: Int64Array
+    merge: IntArray | None
+
+    def __len__(self) -> int:
+        """Return the number of cells on this stretch."""
+        return int(self.received.sum())
+
+    def gather(self, values: Array) -> Array:
+        """Bring one value a local cell to the curve: (n_local,) -> (n_slice,) in curve order."""
+        return self.forward(take_rows(values, self.order))
+
+    def forward(self, values: Array) -> Array:
+        """Bring values that are in local curve order already to the curve."""
+        came = _join(self.comm.alltoall(_cut(values, self.edge)))
+        return came if self.merge is None else take_rows(came, self.merge)
+
+    def scatter(self, values: Array) -> Array:
+        """Bring one value a place on the curve home: (n_slice,) -> (n_local,) in cell order."""
+        sent = values if self.merge is None else put_rows(values, self.merge)
+        edge = np.concatenate(([0], np.cumsum(self.received)))
+        return put_rows(_join(self.comm.alltoall(_cut(sent, edge))), self.order)
+
+
+def curve_slice(centers: ArrayLike, *, curve: Curve = "hilbert", comm: Comm) -> CurveSlice:
+    """Sort the centres of all ranks along the curve; each rank gets one stretch of it.
+
+    Stretches are cut at keys, so that centres that share a key share a rank, as evenly as that
+    allows. Each rank holds its own cells and its stretch, nothing longer.
+
+    Parameters
+    ----------
+    centers : (n_local, dim) float64
+        Ranks hold consecutive slices of the cells.
+    curve : {"hilbert", "morton", "rows"}
+    comm : Comm
+
+    Notes
+    -----
+    One local sort, 63 small reductions, one exchange, and one merge.
+    """
+    frame = Frame.of(centers, curve, comm)
+    key = frame.keys()
+    order, key = sorting(key)
+    if order is None:
+        order = np.arange(len(key), dtype=index_dtype(len(key)))
+    edge = _even_edges(key, comm)
+    pieces = comm.alltoall(_cut(key, edge))
+    received = np.array([len(piece) for piece in pieces], np.int64)
+    merge, key = sorting(_join(pieces))
+    line = CurveSlice(comm, order, edge, received, merge)
+    n_same = np.array([survey(key).n_equal], np.int64)
+    return _untie(line, key, frame) if comm.allreduce(n_same)[0] else line
+
+
+def _even_edges(key: Int64Array, comm: Comm) -> Int64Array:
+    """Cut the sorted local keys where the keys of all ranks fall into `size` even stretches."""
+    total = int(comm.allreduce(np.array([len(key)], np.int64))[0])
+    wanted = np.array([total * r // comm.size for r in range(1, comm.size)], np.int64)
+    low, high = np.zeros_like(wanted), np.full_like(wanted, np.iinfo(KEY).max)
+    while np.any(low < high):  # the same on all ranks
+        middle = low + (high - low) // 2
+        below = comm.allreduce(np.searchsorted(key, middle, side="left").astype(np.int64))
+        enough = below >= wanted
+        high = np.where(enough, middle, high)
+        low = np.where(enough, low, middle + 1)
+    inner = np.searchsorted(key, low, side="left")
+    return np.concatenate(([0], inner, [len(key)])).astype(np.int64)
+
+
+def _untie(line: CurveSlice, key: Int64Array, frame: Frame) -> CurveSlice:
+    """Order the centres that share a key by their deeper keys, asked from their home ranks."""
+    same = key[1:] == key[:-1]
+    tied = (
+        np.flatnonzero(np.append(same, False) | np.append(False, same))
+        if len(key)
+        else np.empty(0, np.int64)
+    )
+    came = np.arange(len(key)) if line.merge is None else line.merge.astype(np.int64)
+    start = np.cumsum(line.received) - line.received
+    asked = came[tied]
+    home = np.searchsorted(start + line.received, asked, side="right")
+    by_home = np.argsort(home, kind="stable")
+    count = np.bincount(home, minlength=line.comm.size)
+    place = (asked - start[home])[by_home]
+    wanted = line.comm.alltoall(_cut(place, np.concatenate(([0], np.cumsum(count)))))
+    deep = [frame.deeper_keys(line.order[line.edge[r] + rows]) for r, rows in enumerate(wanted)]
+    answer = np.empty(len(tied), KEY)
+    answer[by_home] = _join(line.comm.alltoall(deep))
+    came[tied] = came[tied[np.lexsort((answer, key[tied]))]]
+    came = came.astype(index_dtype(len(came)))
+    return CurveSlice(line.comm, line.order, line.edge, line.received, came)
+
+
+def _cut(array: Array, edge: Int64Array) -> list[Array]:
+    """Cut an array into one piece for each rank."""
+    return [array[start:stop] for start, stop in pairwise(edge)]
+
+
+def _join(pieces: Sequence[Array]) -> Array:
+    """Put the pieces of all ranks together; a single one is not copied."""
+    return pieces[0] if len(pieces) == 1 else np.concatenate(pieces)
