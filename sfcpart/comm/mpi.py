@@ -16,7 +16,7 @@ from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from functools import lru_cache
 from itertools import pairwise
-from typing import Any
+from typing import Any, ClassVar
 
 import numpy as np
 from mpi4py import MPI
@@ -233,8 +233,8 @@ class _MpiLink:
             if self._has_bytes((rank, lo, hi))
         ]
         self._statuses = [MPI.Status() for _ in self._requests]
-        self._started = False
-        weakref.finalize(self, _free, [*self._requests, row])
+        self._flight = _Flight([*self._requests, row])
+        weakref.finalize(self, self._flight.free)
 
     def _has_bytes(self, stretch: Stretch) -> bool:
         """Tell whether a message is needed."""
@@ -242,18 +242,18 @@ class _MpiLink:
 
     def start(self) -> None:
         """Send what the buffer holds now."""
-        if self._started:
+        if self._flight.started:
             raise InputError("a link is started twice; finish it before it is started again")
-        self._started = True
+        self._flight.started = True
         MPI.Prequest.Startall(self._requests)
 
     def finish(self) -> None:
         """Wait for all messages."""
-        if not self._started:
+        if not self._flight.started:
             raise InputError("a link is finished before it is started")
-        self._started = False
         try:
             MPI.Request.Waitall(self._requests, self._statuses)
+            self._flight.started = False
         except MPI.Exception as error:
             raise RankError(f"an exchange with neighbours failed: {error}") from error
         for (rank, lo, hi), status in zip(self._sources, self._statuses, strict=False):
@@ -264,11 +264,23 @@ class _MpiLink:
                 )
 
 
-def _free(handles: list[Any]) -> None:
-    """Free MPI's side of a link."""
-    if not MPI.Is_finalized():
-        for handle in handles:
-            handle.Free()
+class _Flight:
+    """MPI's side of a link: its handles, which hold on to the buffers, and whether it is used."""
+
+    abandoned: ClassVar[list[list[Any]]] = []
+    """Handles of links that were dropped before they finished: MPI may still write to buffers."""
+
+    def __init__(self, handles: list[Any]) -> None:
+        self.handles = handles
+        self.started = False
+
+    def free(self) -> None:
+        """Free the handles, unless messages are on their way."""
+        if self.started:
+            self.abandoned.append(self.handles)
+        elif not MPI.Is_finalized():
+            for handle in self.handles:
+                handle.Free()
 
 
 def _committed_row(array: Array) -> MPI.Datatype:

@@ -478,6 +478,23 @@ def fewer_or_more_rows_than_meant_are_noticed(comm: Comm) -> Lines:
     return lines
 
 
+@scenario(lambda rank, size: [str([turn + (rank - 1) % size for turn in range(3)])])
+def links_may_be_dropped_on_their_way(comm: Comm) -> Lines:
+    seen = []
+    for turn in range(3):
+        received = np.zeros(100_000, int)
+        ends = {
+            "targets": [((comm.rank + 1) % comm.size, 0, 100_000)],
+            "sources": [((comm.rank - 1) % comm.size, 0, 100_000)],
+        }
+        comm.link(np.full(100_000, -1), np.zeros(100_000, int), **ends).start()
+        link = comm.link(np.full(100_000, comm.rank + turn), received, **ends)
+        link.start()
+        link.finish()
+        seen.append(int(received[-1]))
+    return [str(seen)]
+
+
 # -- values and errors ----------------------------------------------------------------------------
 
 
