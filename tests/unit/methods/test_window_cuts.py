@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from itertools import product
+from itertools import pairwise, product
 
 import numpy as np
 import pytest
@@ -64,7 +64,7 @@ def test_least_of_all_contiguous_splits(case, tolerance, limited):
         line, cut, capacity=capacity, limit=limit, reach=1e9, **arrays(matrix)
     )
     half = (cut[:-1] + cut[1:]) // 2  # how far a window can reach
-    windows = [range(a + 1, b + 1) for a, b in zip(half[:-1], half[1:], strict=True)]
+    windows = [range(a + 1, b + 1) for a, b in pairwise(half)]
     allowed = [
         (0, *inner, n)
         for inner in product(*windows)
@@ -166,9 +166,8 @@ def test_few_cells_and_wrong_wishes():
     assert_partition(one, mesh, 1)
     with pytest.raises(InputError, match="cuts is 'best'; wanted one of balanced, least"):
         sfcpart.split(mesh, 2, cuts="best")
-    foreign = CellGraph(
-        *(np.zeros(k, t) for k, t in ((1, int), (0, int), (0, float), (0, "i4"), (0, float)))
-    )
+    none = np.zeros(0)
+    foreign = CellGraph(np.zeros(1, int), none.astype(int), none, none.astype(np.int32), none)
     short = Problem(mesh.centers, 2, np.ones(2), SerialComm(), lambda: foreign, cuts="least")
     with pytest.raises(InputError, match="the cell graph has 0 cells, the problem 3"):
         METHODS["hilbert"].run(short)
