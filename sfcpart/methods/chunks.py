@@ -16,15 +16,17 @@ Cost: about log2(w_max) probes of O(P log n) each.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 import numpy as np
 
-from sfcpart.dtypes import BoolArray, FloatArray, Int64Array
+from sfcpart.dtypes import FloatArray, Int64Array
 from sfcpart.errors import PartitionError
 from sfcpart.kernels import chunks as kernel
+from sfcpart.methods.chunk_bounds import Bounds
 from sfcpart.methods.fair import fair_positions
 from sfcpart.methods.line import Line
+from sfcpart.methods.probe_state import ProbeState
 
 __all__ = ["cut_line"]
 
@@ -69,36 +71,6 @@ def cut_line(
 
 
 @dataclass(eq=False)
-class _State:
-    """What a probe knows beyond a stretch: intervals of good positions by part, and brackets."""
-
-    ptr: Int64Array
-    rows: Int64Array
-    brackets: FloatArray
-
-    def pack(self) -> Int64Array:
-        """Return everything in one array."""
-        parts = ([len(self.rows)], self.brackets.view(np.int64), self.ptr, self.rows.ravel())
-        return np.concatenate(parts).astype(np.int64)
-
-    @staticmethod
-    def unpack(packed: Int64Array, n_parts: int, count: int) -> list[_State]:
-        """Take `count` states apart."""
-        states = []
-        for _ in range(count):
-            at = 3 + n_parts + 2
-            stop = at + 4 * int(packed[0])
-            rows = packed[at:stop].reshape(-1, 4)
-            states.append(_State(packed[3:at], rows, packed[1:3].copy().view(np.float64)))
-            packed = packed[stop:]
-        return states
-
-    def good_start(self, begin: int) -> bool:
-        """Tell whether the whole line can be divided from `begin`."""
-        return bool(np.any(self.rows[self.ptr[0] : self.ptr[1], 0] == begin))
-
-
-@dataclass(eq=False)
 class _Task:
     """One range of a line to divide, with what all probes share."""
 
@@ -109,9 +81,7 @@ class _Task:
     limit: Int64Array
     least: int
     edge_sums: Int64Array
-    lowest: float = 0.0
-    widest: float = 0.0
-    heavy: Int64Array = field(default_factory=lambda: np.empty(0, np.int64))
+    bounds: Bounds
 
     @classmethod
     def of(
@@ -126,71 +96,20 @@ class _Task:
         """Find the bounds of the bottleneck and the items that may be too heavy for a part."""
         most = np.full(len(speed), _UNLIMITED) if limit is None else limit
         sums = line.sums_at(np.array([begin, end], np.int64))
-        task = cls(line, begin, end, speed, most, least, sums)
-        task._bound()
-        return task
+        weight = int(sums[1, 0] - sums[0, 0])
+        bounds = Bounds.of(line, begin, end, speed=speed, limit=most, least=least, weight=weight)
+        return cls(line, begin, end, speed, most, least, sums, bounds)
 
     @property
     def weight(self) -> int:
         """Weight of all items of the range."""
         return int(self.edge_sums[1, 0] - self.edge_sums[0, 0])
 
-    def _bound(self) -> None:
-        """Set a lower bound of the bottleneck, the heaviest item, and the heavy windows.
-
-        B >= W / sum(speed), w_max / max(speed), lightest window / min(speed); rounding is kept
-        below.
-        """
-        if self.begin == self.end:
-            return
-        heaviest, widest, lightest, most = self._extremes()
-        slowest, fastest = float(self.speed.min()), float(self.speed.max())
-        share = self.weight / float(self.speed.sum()) * (1 - 1e-9)
-        if slowest == fastest:  # loads are integers
-            share = -(-self.weight // len(self.speed)) / slowest
-        self.lowest = max(share, heaviest / fastest, lightest / slowest)
-        if lightest > self.weight:  # fewer items than `least`: no division at all
-            self.lowest = self.weight / slowest
-        self.widest = heaviest / slowest
-        smallest = int(kernel.caps(self.lowest, self.speed, max(self.weight, 1)).min())
-        if self.least and (widest > smallest or most > int(self.limit.min())):
-            self.heavy = self._heavy_windows(smallest)
-
-    def _extremes(self) -> tuple[int, int, int, int]:
-        """Return heaviest item, heaviest and lightest window, and most limited window."""
-        line, width = self.line, max(1, self.least)
-        found = np.array([0, 0, -_UNLIMITED, 0], np.int64)
-        for _, weight, limited in line.windows(self.begin, self.end, width):
-            if len(weight):
-                found[1:3] = np.maximum(found[1:3], [weight.max(), -weight.min()])
-            if len(limited):
-                found[3] = max(found[3], limited.max())
-        if width > 1 and len(line.total):
-            for _, weight, _ in line.windows(self.begin, self.end, 1):
-                found[0] = max(found[0], weight.max())
-        found[0] = found[0] if width > 1 else found[1]
-        heaviest, widest, lightest, most = (int(x) for x in line.comm.allreduce(found, "max"))
-        if not len(line.total):
-            return 1, width, self.least, most
-        return heaviest, widest, -lightest if self.least else 0, most
-
-    def _heavy_windows(self, smallest: int) -> Int64Array:
-        """Return this rank's positions whose next `least` items may be too much for a part."""
-        places = [np.empty(0, np.int64)]
-        for start, weight, limited in self.line.windows(self.begin, self.end, self.least):
-            is_heavy: BoolArray = np.zeros(max(len(weight), len(limited)), np.bool_)
-            if len(weight):
-                is_heavy |= weight > smallest
-            if len(limited):
-                is_heavy |= limited > int(self.limit.min())
-            places.append(np.flatnonzero(is_heavy) + start)
-        return np.concatenate(places)
-
     def least_bottleneck(self) -> float:
         """Return the least bottleneck that some division keeps."""
-        low, high = self.lowest, np.inf
+        low, high = self.bounds.lowest, np.inf
         top = max(self.weight / float(self.speed.min()), low)
-        ladder = [low, low + self.widest, min(low + 8 * self.widest, top), top]
+        ladder = [low, low + self.bounds.widest, min(low + 8 * self.bounds.widest, top), top]
         n_tries = min(self.line.comm.size, 8)
         while low < high:
             if ladder:
@@ -216,7 +135,7 @@ class _Task:
         holds = (offset[:-1] < self.end) & (offset[1:] > self.begin) & (offset[:-1] < offset[1:])
         return [int(r) for r in np.flatnonzero(holds)[::-1]]
 
-    def _first_states(self, count: int) -> list[_State]:
+    def _first_states(self, count: int) -> list[ProbeState]:
         """Return what is known beyond the end: the line may end there."""
         n_parts = len(self.speed)
         at_end = np.array([[self.end, self.end, *self.edge_sums[1]]], np.int64)
@@ -226,9 +145,9 @@ class _Task:
             ptr = np.arange(n_parts + 2)
             at_end = np.repeat(at_end, n_parts + 1, axis=0)
         brackets = np.array([np.inf, 0.0])
-        return [_State(ptr, at_end, brackets.copy()) for _ in range(count)]
+        return [ProbeState(ptr, at_end, brackets.copy()) for _ in range(count)]
 
-    def _probe(self, bottlenecks: list[float]) -> list[_State]:
+    def _probe(self, bottlenecks: list[float]) -> list[ProbeState]:
         """Sweep the range from its end for each bottleneck; every rank gets the last states."""
         states = self._first_states(len(bottlenecks))
         for rank in self._ranks():
@@ -237,7 +156,7 @@ class _Task:
                 swept = zip(bottlenecks, states, strict=True)
                 packed = np.concatenate([self._sweep(b, state)[0].pack() for b, state in swept])
             packed = self.line.comm.bcast(packed, root=rank)
-            states = _State.unpack(packed, len(self.speed), len(bottlenecks))
+            states = ProbeState.unpack(packed, len(self.speed), len(bottlenecks))
         return states
 
     def _caps(self, bottleneck: float) -> Int64Array:
@@ -250,7 +169,9 @@ class _Task:
             [*self.line.own_part(self.begin, self.end), self.line.first, self.least], np.int64
         )
 
-    def _sweep(self, bottleneck: float, came: _State) -> tuple[_State, Int64Array, Int64Array]:
+    def _sweep(
+        self, bottleneck: float, came: ProbeState
+    ) -> tuple[ProbeState, Int64Array, Int64Array]:
         """Sweep this rank's stretch; return what the lower ranks need, and the own intervals."""
         n_parts = len(self.speed)
         own_ptr = np.zeros(n_parts + 2, np.int64)
@@ -260,7 +181,8 @@ class _Task:
             brackets = came.brackets.copy()
             n_own = kernel.sweep_back(
                 self._span(), self.line.total, self.line.limit, self._caps(bottleneck),
-                self.limit, self.speed, self.heavy, came.ptr, came.rows, brackets, own_ptr, own,
+                self.limit, self.speed, self.bounds.heavy, came.ptr, came.rows, brackets,
+                own_ptr, own,
             )  # fmt: skip
             capacity *= 4
         out = np.empty((n_own + len(came.rows), 4), np.int64)
@@ -269,7 +191,7 @@ class _Task:
             self._span(), self.line.total, self.line.limit,
             came.ptr, came.rows, own_ptr, own, ptr, out,
         )  # fmt: skip
-        return _State(ptr, out[:n_out], brackets), own_ptr, own
+        return ProbeState(ptr, out[:n_out], brackets), own_ptr, own
 
     def place_cuts(self, bottleneck: float) -> Int64Array:
         """Return cuts that keep the bottleneck, each as near to its fair position as it can."""
@@ -281,7 +203,7 @@ class _Task:
             if rank == comm.rank:
                 state, own_ptr, own = self._sweep(bottleneck, state)
                 packed = state.pack()
-            state = _State.unpack(comm.bcast(packed, root=rank), n_parts, 1)[0]
+            state = ProbeState.unpack(comm.bcast(packed, root=rank), n_parts, 1)[0]
         stretch = (self._span(), self.line.total, self.line.limit, self._caps(bottleneck),
                    self.limit, own_ptr, own)  # fmt: skip
         wanted = fair_positions(
