@@ -142,7 +142,7 @@ def shed_excess(
         )  # fmt: skip
         if to >= 0:
             w = vertex_weight[v]
-            size = put(heap, spot, key, v, gain * w if gain > 0 else (gain * 1024) // w, size)
+            size = put(heap, spot, key, v, gain * 256 if gain > 0 else (gain * 256) // w, size)
     n_moves = 0
     while size > 0:
         v = heap[0]
@@ -158,7 +158,7 @@ def shed_excess(
             size = drop(heap, spot, key, v, size)
             continue
         w = vertex_weight[v]
-        rank = gain * w if gain > 0 else (gain * 1024) // w
+        rank = gain * 256 if gain > 0 else (gain * 256) // w
         if rank < key[v]:
             size = put(heap, spot, key, v, rank, size)
             if heap[0] != v:
@@ -181,5 +181,5 @@ def shed_excess(
             )  # fmt: skip
             if dest >= 0:
                 w = vertex_weight[u]
-                size = put(heap, spot, key, u, gain * w if gain > 0 else (gain * 1024) // w, size)
+                size = put(heap, spot, key, u, gain * 256 if gain > 0 else (gain * 256) // w, size)
     return n_moves

@@ -21,6 +21,10 @@ BITS = 20
 """Fractional edge weights keep this many bits of the largest."""
 
 MOST = 1 << 60
+"""Largest sum of vertex weights: four times it still fits an int64."""
+
+MOST_EDGES = 1 << 53
+"""Largest sum of edge weights: losses times 256 still fit."""
 
 
 def graph_of_matrix(adjacency: Any, vertex_weight: ArrayLike | None) -> WeightedGraph:
@@ -33,17 +37,18 @@ def graph_of_matrix(adjacency: Any, vertex_weight: ArrayLike | None) -> Weighted
     """
     from scipy.sparse import csr_array, issparse
 
+    given: Any = adjacency
     if isinstance(adjacency, CellGraph):
         indices = adjacency.indices.astype(np.int32, copy=False)
         weight = _vertex_weight(vertex_weight, adjacency.n_cells)
         return WeightedGraph(adjacency.indptr, indices, np.ones(len(indices), np.int64), weight)
-    if not issparse(adjacency):
+    if not isinstance(given, csr_array) and not issparse(adjacency):
         raise InputError(
             f"adjacency is {type(adjacency).__name__}; wanted a sparse matrix or array of scipy"
         )
-    if adjacency.ndim != 2 or adjacency.shape[0] != adjacency.shape[1]:
-        raise InputError(f"adjacency has shape {adjacency.shape}; wanted a square matrix")
-    matrix = csr_array(adjacency)
+    if given.ndim != 2 or given.shape[0] != given.shape[1]:
+        raise InputError(f"adjacency has shape {given.shape}; wanted a square matrix")
+    matrix: Any = csr_array(given)
     matrix = csr_array(
         (_edge_weight(matrix.data), matrix.indices, matrix.indptr), shape=matrix.shape, copy=True
     )
@@ -74,8 +79,8 @@ def _edge_weight(data: Array) -> Int64Array:
     if np.any(data < 0):
         bad = int(np.flatnonzero(data < 0)[0])
         raise WeightError(f"edge weight {bad} is {data[bad]}; wanted numbers >= 0")
-    if float(weight.sum(dtype=np.float64)) > MOST:
-        raise WeightError("edge weights sum to more than 2^60; divide them by a common factor")
+    if float(weight.sum(dtype=np.float64)) > MOST_EDGES:
+        raise WeightError("edge weights sum to more than 2^53; divide them by a common factor")
     return weight
 
 

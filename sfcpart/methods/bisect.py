@@ -19,7 +19,6 @@ Measured (1.08e6 random Delaunay tets, 64 parts, two cores): see `coordinate`, `
 
 from __future__ import annotations
 
-import warnings
 from collections.abc import Callable
 from dataclasses import dataclass
 

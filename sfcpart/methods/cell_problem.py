@@ -11,11 +11,12 @@ from dataclasses import dataclass
 import numpy as np
 
 from sfcpart.curve import curve_order
-from sfcpart.dtypes import FloatArray, Int32Array, Int64Array
+from sfcpart.dtypes import Array, Int32Array, Int64Array
 from sfcpart.errors import InputError, PartitionError
 from sfcpart.graph import CellGraph
 from sfcpart.methods.coarsen import WeightedGraph, contract
 from sfcpart.methods.problem import Problem
+from sfcpart.weights import face_weights
 
 __all__ = ["CellProblem", "limits_kept", "permuted"]
 
@@ -27,12 +28,11 @@ class CellProblem:
     Attributes
     ----------
     graph : WeightedGraph
-        Items in curve order (of their first cells); edge weights count faces.
+        Items in curve order (of their first cells); edges weigh what
+        `face_weight` asks for.
     item_of : (n_cells,) int32
         Item of each cell.
     limit_weight : (n_items,) int64 or None
-    center : (n_items, dim) float64
-        Centre of each item's first cell.
     slice : slice
         This rank's cells.
     """
@@ -40,12 +40,11 @@ class CellProblem:
     graph: WeightedGraph
     item_of: Int32Array
     limit_weight: Int64Array | None
-    center: FloatArray
     slice: slice
 
     @classmethod
-    def of(cls, problem: Problem, *, with_graph: bool = True) -> CellProblem:
-        """Gather, order and contract a problem; without the graph no edges are known.
+    def of(cls, problem: Problem) -> CellProblem:
+        """Gather, order and contract a problem.
 
         Raises
         ------
@@ -60,18 +59,16 @@ class CellProblem:
         order = curve_order(centers)
         place = np.empty(n, np.int32)
         place[order] = np.arange(n, dtype=np.int32)
-        graph = _faceless(weight[order])
-        if with_graph:
-            cells = problem.graph()
-            if cells.n_cells != n:
-                raise InputError(f"the cell graph has {cells.n_cells} cells, the problem {n}")
-            graph = permuted(counted(cells, weight), order, place)
+        cells = problem.graph()
+        if cells.n_cells != n:
+            raise InputError(f"the cell graph has {cells.n_cells} cells, the problem {n}")
+        graph = permuted(_weighted(cells, weight, problem), order, place)
         limit = None
         if problem.limit_weight is not None:
             limit = _whole(problem, problem.limit_weight)[order]
         mine = slice(problem.first_gid, problem.first_gid + len(problem.centers))
         if problem.group is None:
-            return cls(graph, place, limit, centers[order], mine)
+            return cls(graph, place, limit, mine)
         item, n_items = _items(_whole(problem, problem.group)[order])
         if n_items < problem.n_parts <= n:
             raise PartitionError(
@@ -82,9 +79,7 @@ class CellProblem:
             item_limit = np.zeros(n_items, np.int64)
             np.add.at(item_limit, item, limit)
             limit = item_limit
-        first = np.unique(item, return_index=True)[1]
-        graph = contract(graph, item, n_items)
-        return cls(graph, item[place], limit, centers[order[first]], mine)
+        return cls(contract(graph, item, n_items), item[place], limit, mine)
 
     def spread(self, item_part: Int32Array) -> Int32Array:
         """Return the part of each of this rank's cells."""
@@ -106,16 +101,11 @@ def limits_kept(problem: Problem, cells: CellProblem, part: Int32Array) -> bool:
     return bool(np.all(held <= problem.part_limit))
 
 
-def _faceless(weight: Int64Array) -> WeightedGraph:
-    """Return a graph without edges."""
-    none = np.zeros(0, np.int64)
-    return WeightedGraph(np.zeros(len(weight) + 1, np.int64), none.astype(np.int32), none, weight)
-
-
-def counted(cells: CellGraph, weight: Int64Array) -> WeightedGraph:
-    """Return the cell graph with weight 1 for each face."""
+def _weighted(cells: CellGraph, weight: Int64Array, problem: Problem) -> WeightedGraph:
+    """Return the cell graph with integer weights of faces as the problem wants them."""
     indices = cells.indices.astype(np.int32, copy=False)
-    return WeightedGraph(cells.indptr, indices, np.ones(len(indices), np.int64), weight)
+    faces = face_weights(cells.data, by=problem.face_weight)
+    return WeightedGraph(cells.indptr, indices, np.maximum(faces, 1), weight)
 
 
 def permuted(graph: WeightedGraph, order: Int64Array, place: Int32Array) -> WeightedGraph:
@@ -128,7 +118,7 @@ def permuted(graph: WeightedGraph, order: Int64Array, place: Int32Array) -> Weig
     )
 
 
-def _whole(problem: Problem, values: FloatArray | Int64Array) -> FloatArray | Int64Array:
+def _whole(problem: Problem, values: Array) -> Array:
     """Join the ranks' slices."""
     return np.concatenate(problem.comm.allgather(values))
 

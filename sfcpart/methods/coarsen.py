@@ -73,7 +73,7 @@ def hierarchy(
     seed : int
         Breaks ties between equally heavy edges.
     """
-    levels = []
+    levels: list[Level] = []
     while graph.n > smallest:
         coarse_of, n_coarse = coarsen(graph, label, heaviest=heaviest, seed=seed + len(levels))
         if n_coarse > 0.95 * graph.n:

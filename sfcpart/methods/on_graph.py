@@ -1,14 +1,14 @@
 """The graph methods as ways to split a mesh: speeds, groups, limits and nested levels included.
 
-Edge weights count faces. Groups are contracted to single vertices first. A limit on a second
-weight is first left alone; if the parts break it, the larger of both weights (each relative to its
-capacity) is balanced instead; if that fails too, the split along the Hilbert curve is given,
-which keeps the limits or says that they cannot be kept.
+Edges count faces, or weigh their quantised measures (`face_weight`). Groups are contracted to
+single vertices first. A limit on a second weight is first left alone; if the parts break it, the
+larger of both weights (each relative to its capacity) is balanced instead; if that fails too, the
+split along the Hilbert curve is given, which keeps the limits or says that they cannot be kept.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from dataclasses import replace
 
 import numpy as np
 
@@ -17,15 +17,12 @@ from sfcpart.errors import PartitionError
 from sfcpart.methods.along_curve import along_hilbert
 from sfcpart.methods.cell_problem import CellProblem, limits_kept
 from sfcpart.methods.coarsen import WeightedGraph
-from sfcpart.methods.search import best_of_many
 from sfcpart.methods.problem import Problem
+from sfcpart.methods.search import best_of_many
 from sfcpart.methods.smooth import smooth
 from sfcpart.methods.vcycle import Aim
 
 __all__ = ["multilevel", "smoothed"]
-
-Solve = Callable[[WeightedGraph, FloatArray], Int32Array]
-"""A graph and the speeds of its parts -> parts."""
 
 
 def multilevel(problem: Problem) -> Int32Array:
@@ -103,10 +100,9 @@ def smoothed(problem: Problem) -> Int32Array:
 
 def mesh_aim(total: int, speed: FloatArray, tolerance: float, seed: int) -> Aim:
     """Aim at shares by speed; capacities are (1 + tolerance) shares, or whole shares rounded up."""
-    share = total * (speed / speed.sum())
-    whole = np.ceil(share - 1e-9 * np.maximum(share, 1.0))
-    capacity = np.maximum(np.floor((1.0 + tolerance) * share), whole).astype(np.int64)
-    return Aim(share, capacity, seed)
+    exact = Aim.of(total, speed, 0.0, seed)
+    most = np.floor((1.0 + tolerance) * exact.share).astype(np.int64)
+    return replace(exact, capacity=np.maximum(most, exact.capacity))
 
 
 def _nested(

@@ -142,7 +142,7 @@ def refine_between(labels: Labels, *, sweeps: int, patience: int, slack: int) ->
 
     On the way a part may exceed its capacity by `slack`, so that full parts can swap vertices.
     """
-    n, k = labels.graph.n, len(labels.capacity)
+    k = len(labels.capacity)
     stale = np.ones(k, np.bool_)
     total = 0
     for _ in range(sweeps):

@@ -15,8 +15,8 @@ from sfcpart.dtypes import Int32Array
 from sfcpart.methods.balance import fill_empty_parts, join_pieces, rebalance
 from sfcpart.methods.coarsen import WeightedGraph
 from sfcpart.methods.labels import Labels, cut_of
-from sfcpart.methods.vcycle import Aim
 from sfcpart.methods.refine import flow_between, search_locally
+from sfcpart.methods.vcycle import Aim
 
 __all__ = ["smooth"]
 

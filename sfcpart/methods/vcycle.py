@@ -15,6 +15,7 @@ partitions by coarsening inside both, Sanders, Schulz, ALENEX 2012 (all from mem
 from __future__ import annotations
 
 from dataclasses import dataclass
+
 import numpy as np
 
 from sfcpart.dtypes import FloatArray, Int32Array, Int64Array
@@ -64,8 +65,11 @@ class Aim:
     def of(cls, total: int, speed: FloatArray, tolerance: float, seed: int = 0) -> Aim:
         """Divide a total weight by speeds: at most (1 + tolerance) of the share, rounded up."""
         share = total * (speed / speed.sum())
-        whole = np.ceil(share - 1e-9 * np.maximum(share, 1.0))
-        capacity = np.maximum(np.floor((1.0 + tolerance) * whole + 1e-9), whole).astype(np.int64)
+        whole = np.ceil(share - 1e-12 * share).astype(np.int64)
+        if np.all(speed == speed[0]):
+            whole[:] = -(-total // len(speed))
+        most = np.floor((1.0 + tolerance) * whole + 1e-9).astype(np.int64)
+        capacity = np.maximum(most, whole)
         return cls(share, capacity, seed)
 
     @property
