@@ -7,9 +7,10 @@ data travels as bytes, never pickled. `sfcpart manual in_a_solver` has a complet
 
 from __future__ import annotations
 
+from sfcpart.parallel.columns import Ragged
 from sfcpart.parallel.halo import Exchange, Halo
 from sfcpart.parallel.lists import ExchangePlan
-from sfcpart.parallel.migrate import Ragged, migrate
+from sfcpart.parallel.migrate import migrate
 from sfcpart.parallel.split import split_local
 
 __all__ = ["Exchange", "ExchangePlan", "Halo", "Ragged", "migrate", "split_local"]

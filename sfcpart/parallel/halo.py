@@ -19,7 +19,7 @@ from numpy.typing import ArrayLike
 from sfcpart.comm import adopt
 from sfcpart.dtypes import Array, Int64Array
 from sfcpart.errors import InputError
-from sfcpart.parallel.gate import agreed, checked_gids
+from sfcpart.parallel.gate import agreed, checked_faces, checked_graph
 from sfcpart.parallel.lists import ExchangePlan
 
 if TYPE_CHECKING:
@@ -125,7 +125,7 @@ class Halo:
         O(n log n) for n local cells and entries; messages of 8 bytes a cell and 12 a halo cell.
         """
         comm = adopt(comm)
-        needed = agreed(comm, lambda: _checked_graph(indptr, indices, cell_gid))
+        needed = agreed(comm, lambda: checked_graph(indptr, indices, cell_gid))
         return cls(comm, ExchangePlan.of(needed, cell_gid=cell_gid, comm=comm))
 
     @classmethod
@@ -146,7 +146,7 @@ class Halo:
             As `from_graph`, or if a face touches no cell of this rank.
         """
         comm = adopt(comm)
-        needed = agreed(comm, lambda: _checked_faces(face_cell_gid, cell_gid))
+        needed = agreed(comm, lambda: checked_faces(face_cell_gid, cell_gid))
         return cls(comm, ExchangePlan.of(needed, cell_gid=cell_gid, comm=comm))
 
     @classmethod
@@ -309,37 +309,3 @@ def _pack(array: Array, rows: Int64Array, out: Array) -> None:
         np.take(array, rows, axis=0, out=out, mode="clip")  # "raise" would copy once more
     else:
         out[...] = array[rows]
-
-
-def _checked_graph(indptr: ArrayLike, indices: ArrayLike, cell_gid: ArrayLike) -> Int64Array:
-    """Return the neighbours of a well-formed relation."""
-    n_owned = len(checked_gids(cell_gid, "cell_gid"))
-    ptr, neighbours = checked_gids(indptr, "indptr"), checked_gids(indices, "indices")
-    if len(ptr) != n_owned + 1:
-        raise InputError(
-            f"indptr has {len(ptr)} entries for {n_owned} owned cells; wanted {n_owned + 1}"
-        )
-    if ptr[0] != 0 or ptr[-1] != len(neighbours) or np.any(ptr[1:] < ptr[:-1]):
-        raise InputError(
-            f"indptr goes from {ptr[0]} to {ptr[-1]} for {len(neighbours)} indices; "
-            "wanted it to rise from 0 to their number"
-        )
-    return neighbours
-
-
-def _checked_faces(face_cell_gid: ArrayLike, cell_gid: ArrayLike) -> Int64Array:
-    """Return the cells of faces, each of which touches an owned cell."""
-    pairs = np.asarray(face_cell_gid)
-    if pairs.size == 0:
-        return np.empty(0, np.int64)
-    if pairs.ndim != 2 or pairs.shape[1] != 2:
-        raise InputError(f"face_cell_gid has shape {pairs.shape}; wanted (n_faces, 2)")
-    cells = checked_gids(pairs.reshape(-1), "face_cell_gid")
-    strange = ~np.isin(cells, checked_gids(cell_gid, "cell_gid")).reshape(-1, 2).any(axis=1)
-    if strange.any():
-        face = int(np.flatnonzero(strange)[0])
-        raise InputError(
-            f"face {face} joins cells {pairs[face, 0]} and {pairs[face, 1]}, none of which this "
-            "rank owns; wanted faces of owned cells only"
-        )
-    return cells

@@ -28,10 +28,13 @@ class _Given(NamedTuple):
 
     centers: FloatArray
     weight: Array | None
+    limit_weight: Array | None
     group: Int64Array | None
     n_parts: int
     part_speed: FloatArray
+    part_limit: Array | None
     level_sizes: tuple[int, ...]
+    limit_unit: float = 1.0
 
 
 def split_local(
@@ -41,6 +44,8 @@ def split_local(
     n_parts: int | None = None,
     weights: ArrayLike | None = None,
     speeds: ArrayLike | None = None,
+    limit_weights: ArrayLike | None = None,
+    limits: ArrayLike | None = None,
     levels: Sequence[int] | None = None,
     together: ArrayLike | None = None,
     cell_gid: ArrayLike | None = None,
@@ -59,6 +64,9 @@ def split_local(
         Work of each cell, >= 0; 1 each by default. All ranks give them or none does.
     speeds : (n_parts,) numbers, optional
         Relative speed of each part's rank, > 0, alike on all ranks.
+    limit_weights, limits : optional
+        A second weight of each local cell (1 each by default) and the most of it that a part may
+        hold, one number or one a part, alike on all ranks: memory, for instance.
     levels : sequence of int, optional
         Nested levels such as (4, 16): nodes, then cores; their product is the number of parts.
     together : (n_local,) integers, optional
@@ -96,7 +104,10 @@ def split_local(
     """
     comm = adopt(comm)
     wanted = comm.size if n_parts is None else n_parts
-    given = agreed(comm, lambda: _checked(centers, weights, together, wanted, speeds, levels))
+    given = agreed(
+        comm,
+        lambda: _checked(centers, weights, limit_weights, together, wanted, speeds, limits, levels),
+    )
     _refuse_differences(given, cell_gid is not None, method, comm)
     run = agreed(comm, lambda: _method(method))
     given = _quantised(given, comm)
@@ -120,19 +131,25 @@ def _problem(given: _Given, comm: Comm) -> Any:
         first_gid=_first(given, comm),
         weight=given.weight,
         level_sizes=given.level_sizes,
+        limit_weight=given.limit_weight,
+        part_limit=given.part_limit,
+        limit_unit=given.limit_unit,
         group=given.group,
     )
 
 
 def _quantised(given: _Given, comm: Comm) -> _Given:
-    """Turn the weights into integers, alike on all ranks."""
-    from sfcpart.weights import quantise
+    """Turn weights and limits into integers, alike on all ranks."""
+    from sfcpart.weights import quantise, quantise_limits
 
-    if given.weight is None:
+    whole: dict[str, Any] = {"comm": comm, "first_gid": _first(given, comm)}
+    if given.weight is not None:
+        given = given._replace(weight=quantise(given.weight, **whole).values)
+    if given.part_limit is None or given.limit_weight is None:
         return given
-    return given._replace(
-        weight=quantise(given.weight, comm=comm, first_gid=_first(given, comm)).values
-    )
+    second = quantise(given.limit_weight, **whole, what="limited weight")
+    limit = quantise_limits(given.part_limit, second.exponent)
+    return given._replace(limit_weight=second.values, part_limit=limit, limit_unit=second.unit)
 
 
 def _first(given: _Given, comm: Comm) -> int:
@@ -157,9 +174,15 @@ def _gathered(given: _Given, line: CurveSlice) -> _Given:
     columns = [line.gather(np.ascontiguousarray(column)) for column in given.centers.T]
     return given._replace(
         centers=np.stack(columns, axis=1),
-        weight=None if given.weight is None else line.gather(given.weight),
-        group=None if given.group is None else line.gather(given.group),
+        weight=_along(line, given.weight),
+        limit_weight=_along(line, given.limit_weight),
+        group=_along(line, given.group),
     )
+
+
+def _along(line: CurveSlice, values: Array | None) -> Array | None:
+    """Bring one value a cell, if there is one, to the ranks that hold it by number."""
+    return None if values is None else line.gather(values)
 
 
 def _method(name: str) -> Any:
@@ -177,9 +200,11 @@ def _method(name: str) -> Any:
 def _checked(
     centers: ArrayLike,
     weights: ArrayLike | None,
+    limit_weights: ArrayLike | None,
     together: ArrayLike | None,
     n_parts: object,
     speeds: ArrayLike | None,
+    limits: ArrayLike | None,
     levels: Sequence[int] | None,
 ) -> _Given:
     """Return well-formed input."""
@@ -190,18 +215,42 @@ def _checked(
         )
     if isinstance(n_parts, bool) or not isinstance(n_parts, int | np.integer) or n_parts < 1:
         raise InputError(f"n_parts is {n_parts!r}; wanted a whole number, 1 or more")
-    weight = None if weights is None else _one_a_cell(weights, "weights", len(array))
-    group = None if together is None else _one_a_cell(together, "together", len(array))
-    speed = np.ones(int(n_parts)) if speeds is None else np.asarray(speeds, np.float64)
-    sizes = () if levels is None else tuple(int(size) for size in levels)
+    n_parts, n_local = int(n_parts), len(array)
+    group = None if together is None else _one_a_cell(together, "together", n_local)
     return _Given(
-        array,
-        weight,
-        None if group is None else checked_gids(group, "together"),
-        int(n_parts),
-        speed,
-        sizes,
+        centers=array,
+        weight=None if weights is None else _one_a_cell(weights, "weights", n_local),
+        limit_weight=_second_weight(limit_weights, limits, n_local),
+        group=None if group is None else checked_gids(group, "together"),
+        n_parts=n_parts,
+        part_speed=np.ones(n_parts) if speeds is None else np.asarray(speeds, np.float64),
+        part_limit=None if limits is None else _one_a_part(limits, n_parts),
+        level_sizes=() if levels is None else tuple(int(size) for size in levels),
     )
+
+
+def _second_weight(
+    limit_weights: ArrayLike | None, limits: ArrayLike | None, n_local: int
+) -> Array | None:
+    """Return the limited weight of each cell, None where nothing is limited."""
+    if limits is None:
+        if limit_weights is not None:
+            raise WeightError("limit_weights without limits; give both, or limits alone")
+        return None
+    if limit_weights is None:
+        return np.ones(n_local, np.int64)
+    return _one_a_cell(limit_weights, "limit_weights", n_local)
+
+
+def _one_a_part(limits: ArrayLike, n_parts: int) -> FloatArray:
+    """Return the limit of each part."""
+    most = np.asarray(limits, np.float64)
+    if most.shape not in ((), (1,), (n_parts,)):
+        raise WeightError(
+            f"limits has shape {most.shape}; wanted one number, or one for each of the "
+            f"{n_parts} parts"
+        )
+    return np.broadcast_to(most, (n_parts,))
 
 
 def _one_a_cell(values: ArrayLike, what: str, n_local: int) -> Array:
@@ -216,11 +265,12 @@ def _one_a_cell(values: ArrayLike, what: str, n_local: int) -> Array:
 
 def _refuse_differences(given: _Given, numbered: bool, method: str, comm: Comm) -> None:
     """Raise on all ranks if some rank wants something else than rank 0."""
+    flags = {name: getattr(given, name) is not None for name in ("weight", "limit_weight", "group")}
+    limit = np.empty(0) if given.part_limit is None else given.part_limit
+    shared = zlib.crc32(np.concatenate([given.part_speed, limit]).tobytes())
     spelled = (
         f"{given.centers.shape[1]} axes, {given.n_parts} parts, levels {given.level_sizes}, "
-        f"weights {given.weight is not None}, together {given.group is not None}, "
-        f"cell_gid {numbered}, method {method!r}, "
-        f"{len(given.part_speed)} speeds of checksum {zlib.crc32(given.part_speed.tobytes()):08x}"
+        f"{flags}, cell_gid {numbered}, method {method!r}, speeds and limits {shared:08x}"
     )
     first = str(comm.bcast_object(spelled))
     error = None

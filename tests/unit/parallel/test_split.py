@@ -69,11 +69,12 @@ def test_without_numbers_ranks_hold_consecutive_slices(cloud):
         assert_partition(partition, len(centers), size, weights=weights)
 
 
-def test_speeds_levels_and_groups_are_kept():
+def test_speeds_levels_limits_and_groups_are_kept():
     n = 600
     rng = np.random.default_rng(3)
+    size = rng.random(n)
     centers, group = rng.random((n, 3)), np.where(rng.random(n) < 0.1, rng.integers(0, 9, n), -1)
-    wish = {"speeds": [1, 1, 2, 4], "levels": [2, 2]}
+    wish = {"speeds": [1, 1, 2, 4], "levels": [2, 2], "limits": [20.0, 200, 200, 250]}
 
     def act(comm):
         mine = slice(comm.rank, n, comm.size)
@@ -82,6 +83,7 @@ def test_speeds_levels_and_groups_are_kept():
             comm=comm,
             n_parts=4,
             together=group[mine],
+            limit_weights=size[mine],
             cell_gid=np.arange(n)[mine],
             **wish,
         )
@@ -90,9 +92,10 @@ def test_speeds_levels_and_groups_are_kept():
     for rank, part in enumerate(run_ranks(3, act)):
         cell_part[rank::3] = part
     mesh = sfcpart.Mesh.from_centers(centers)
-    wanted = sfcpart.split(mesh, 4, together=group, **wish)
+    wanted = sfcpart.split(mesh, 4, together=group, limit_weights=size, **wish)
     assert cell_part.tolist() == wanted.cell_part.tolist()
-    assert np.bincount(cell_part)[3] > 250  # the fast part has the most
+    assert np.argmax(np.bincount(cell_part)) == 3  # the fast part has the most
+    assert np.bincount(cell_part, size)[0] <= 20.0 < size.sum() / 8  # less than its fair share
 
 
 def test_no_rank_needs_cells():
@@ -114,6 +117,10 @@ def test_no_rank_needs_cells():
         ({"weights": [1.0, -2.0]}, WeightError, "cell 3 has weight -2.0"),
         ({"weights": None}, InputError, "different splits"),
         ({"together": [1, 2]}, InputError, "different splits"),
+        ({"limits": 3}, InputError, "different splits"),
+        ({"limits": [1, 2, 3]}, WeightError, r"limits has shape \(3,\)"),
+        ({"limit_weights": [1, 2]}, WeightError, "limit_weights without limits"),
+        ({"speeds": [1, 2]}, InputError, "different splits"),
         ({"method": "multilevel"}, InputError, "different splits"),
         ({"cell_gid": [0, 1]}, InputError, "ranks 0 and 1 both own cell 0"),
         ({"cell_gid": [2]}, WeightError, r"cell_gid has shape \(1,\)"),
@@ -139,6 +146,8 @@ def test_what_no_rank_can_have_is_refused():
         split_local(np.eye(3), comm=SerialComm(), n_parts=3, levels=[2, 2])
     with pytest.raises(WeightError, match="2 speeds for 3 parts"):
         split_local(np.eye(3), comm=SerialComm(), n_parts=3, speeds=[1, 2])
+    with pytest.raises(PartitionError, match="limit"):
+        split_local(np.eye(3), comm=SerialComm(), n_parts=2, limits=1)
     with pytest.raises(WeightError, match="all 3 weights are zero"):
         split_local(np.eye(3), comm=SerialComm(), weights=np.zeros(3))
     with pytest.raises(InputError, match="comm is None; wanted a communicator of mpi4py"):
