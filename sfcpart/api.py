@@ -18,7 +18,8 @@ from numpy.typing import ArrayLike
 
 from sfcpart.curve import curve_keys, curve_order
 from sfcpart.errors import InputError
-from sfcpart.files.meshes.read import read_cell_values, read_mesh
+from sfcpart.files.meshes.cell_values import read_cell_values
+from sfcpart.files.meshes.read import read_mesh
 from sfcpart.files.parts.part import Part, read_part
 from sfcpart.graph import CellGraph, cell_graph
 from sfcpart.mesh.mesh import Mesh

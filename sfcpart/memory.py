@@ -45,7 +45,7 @@ def memory_for_file(path: str | PathLike[str]) -> int | None:
     Traceback (most recent call last):
     sfcpart.errors.FileError: no/such.vtkhdf: cannot be read: No such file or directory
     """
-    from sfcpart.files.meshes.read import file_format
+    from sfcpart.files.meshes.formats import file_format
 
     if file_format(path)[0] != "vtkhdf":
         return None

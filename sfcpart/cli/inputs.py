@@ -53,7 +53,7 @@ def partition_from_path(path: str, n_cells: int) -> Partition:
 
     place = Path(path)
     if not place.is_dir():
-        from sfcpart.files.meshes.read import read_cell_values
+        from sfcpart.files.meshes.cell_values import read_cell_values
 
         return Partition.from_array(read_cell_values(place, n_cells))
     cell_part, n_parts = _owners(place, n_cells)
@@ -86,7 +86,7 @@ def read_speeds(speeds: Any, n_parts: int) -> Array | None:
         return None
     if isinstance(speeds, list):
         return np.array(speeds)
-    from sfcpart.files.meshes.read import read_cell_values
+    from sfcpart.files.meshes.cell_values import read_cell_values
 
     return read_cell_values(speeds, n_parts).astype(float)
 

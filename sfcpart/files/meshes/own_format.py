@@ -18,8 +18,9 @@ import numpy as np
 from sfcpart.dtypes import PART, Array, Int64Array
 from sfcpart.errors import FileError, InputError, SfcpartError
 from sfcpart.files.hdf5 import copy_hdf5
+from sfcpart.files.meshes.formats import file_format
 from sfcpart.files.meshes.meshio_write import MESHIO_CARRIERS, add_fields_with_meshio
-from sfcpart.files.meshes.read import file_format, read_mesh
+from sfcpart.files.meshes.read import read_mesh
 from sfcpart.files.meshes.vtkhdf_read import vtkhdf_cell_rows
 
 __all__ = ["CARRIERS", "write_in_own_format"]

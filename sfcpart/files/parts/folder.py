@@ -130,7 +130,7 @@ def _check_free(target: Path, *, overwrite: bool) -> None:
         return
     if not overwrite:
         raise FileError(
-            f"{target}: holds something already ({held[0]}); give another folder, or ask to "
+            f"{target}: holds something already ({_seen(held)}); give another folder, or ask to "
             "overwrite"
         )
     foreign = _foreign(target)
@@ -139,6 +139,11 @@ def _check_free(target: Path, *, overwrite: bool) -> None:
             f"{target}: will not be overwritten, because {foreign}; move it away or give "
             "another folder"
         )
+
+
+def _seen(names: list[str]) -> str:
+    """Return the first name that a listing shows, else the first hidden one."""
+    return next((name for name in names if not name.startswith(".")), names[0])
 
 
 def _foreign(folder: Path) -> str | None:

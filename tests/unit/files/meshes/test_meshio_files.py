@@ -11,7 +11,7 @@ import pytest
 
 from sfcpart.errors import FileError, MeshError
 from sfcpart.files.meshes import limits, meshio_files
-from sfcpart.files.meshes.meshio_files import raw_of_meshio
+from sfcpart.files.meshes.meshio_blocks import raw_of_meshio
 from sfcpart.files.meshes.read import read_mesh
 from tests.file_samples import tet_block, write_tets, write_ugrid
 

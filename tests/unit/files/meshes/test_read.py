@@ -9,7 +9,9 @@ import pytest
 
 from sfcpart.errors import FileError, InputError, MeshError
 from sfcpart.files.meshes import meshio_files
-from sfcpart.files.meshes.read import EXTENSIONS, file_format, read_cell_values, read_mesh
+from sfcpart.files.meshes.cell_values import read_cell_values
+from sfcpart.files.meshes.formats import EXTENSIONS, file_format
+from sfcpart.files.meshes.read import read_mesh
 from tests.file_samples import SU2, write_shell, write_tets
 
 
