@@ -22,7 +22,8 @@ from mesh_files import write_meshio, write_vtkhdf
 from sfcpart.files.meshes.faces_file import write_faces
 from sfcpart.mesh.channel import channel_section, channel_water
 from sfcpart.mesh.refined import FaceShape, refined_box
-from sfcpart.mesh.shapes import Shape, jittered_tets, lattice
+from sfcpart.mesh.shape import Shape
+from sfcpart.mesh.shapes import jittered_tets, lattice
 
 
 def tets(n_cells: int) -> Shape:

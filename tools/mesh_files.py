@@ -8,7 +8,7 @@ import h5py
 import meshio
 import numpy as np
 
-from sfcpart.mesh.shapes import Shape
+from sfcpart.mesh.shape import Shape
 
 KINDS = {"triangle": 5, "quad": 9, "tetra": 10, "hexahedron": 12, "wedge": 13, "pyramid": 14}
 KINDS_MSH = {"triangle": 2, "quad": 3}

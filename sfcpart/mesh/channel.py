@@ -15,14 +15,8 @@ import numpy as np
 
 from sfcpart.dtypes import Array, BoolArray, FloatArray, IntArray
 from sfcpart.errors import InputError
-from sfcpart.mesh.shapes import (
-    Shape,
-    box_corners,
-    extrude,
-    grid_points,
-    kuhn_tets,
-    with_used_points,
-)
+from sfcpart.mesh.shape import Shape, extrude, with_used_points
+from sfcpart.mesh.shapes import box_corners, grid_points, kuhn_tets
 
 __all__ = [
     "channel_mixed",

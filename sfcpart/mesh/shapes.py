@@ -1,4 +1,4 @@
-"""Building blocks for meshes made by rule: lattices, tets, extrusions, space-filling polyhedra.
+"""Building blocks for meshes made by rule: lattices, tets, space-filling polyhedra.
 
 Everything is numpy over index arithmetic, so that 10^7 cells take a second or two. The Skerry
 Channel, the invented scenario of all examples, is put together from these in
@@ -10,70 +10,26 @@ combinatorial lemmas in topology, IBM J. Res. Dev. 4:518, 1960), recalled from m
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from collections.abc import Sequence
 from itertools import permutations, product
-from typing import Any
 
 import numpy as np
 
-from sfcpart.dtypes import COORDINATE, Array, BoolArray, FloatArray, IntArray, index_dtype
+from sfcpart.dtypes import COORDINATE, Array, FloatArray, IntArray, index_dtype
 from sfcpart.errors import InputError
-from sfcpart.mesh.mesh import BoundaryGroup, Mesh
+from sfcpart.mesh.shape import Shape
 
-__all__ = ["Shape", "extrude", "jittered_tets", "lattice", "truncated_octahedra"]
+__all__ = [
+    "box_corners",
+    "grid_points",
+    "jittered_tets",
+    "kuhn_tets",
+    "lattice",
+    "truncated_octahedra",
+]
 
 LARGEST_JITTER = 1.0 / 6.0
 """Below this no tet of a jittered lattice can turn over (diagonal dominance of its edges)."""
-
-
-@dataclass(frozen=True, eq=False)
-class Shape:
-    """A mesh made by rule, as plain arrays.
-
-    Attributes
-    ----------
-    points : (n_points, 2 or 3) float64
-    cells : mapping of str to (n, k) int32 or int64
-        Blocks by meshio's cell names, in order; "polyhedron" holds a list of lists of faces.
-    cell_fields : mapping of str to (n_cells,) array
-        In the order of the blocks.
-    boundary : mapping of str to (n, k) array
-        Named groups of elements one dimension lower.
-    """
-
-    points: FloatArray
-    cells: Mapping[str, Any]
-    cell_fields: Mapping[str, Array] = field(default_factory=dict)
-    boundary: Mapping[str, IntArray] = field(default_factory=dict)
-
-    @property
-    def n_cells(self) -> int:
-        """Number of cells of all blocks."""
-        return sum(len(block) for block in self.cells.values())
-
-    def to_mesh(self) -> Mesh:
-        """Return the shape as a checked `Mesh`, boundary groups included."""
-        return Mesh.from_arrays(
-            self.points,
-            dict(self.cells),
-            cell_fields=dict(self.cell_fields),
-            boundary=_boundary_groups(self.boundary),
-        )
-
-    def with_shuffled_cells(self, seed: int) -> Shape:
-        """Return the shape with the cells of each block in random order: the worst input order."""
-        random = np.random.default_rng(seed)
-        cells: dict[str, Any] = {}
-        orders, start = [], 0
-        for name, block in self.cells.items():
-            order = random.permutation(len(block))
-            cells[name] = _picked(block, order)
-            orders.append(order + start)
-            start += len(block)
-        order = np.concatenate(orders)
-        fields = {name: array[order] for name, array in self.cell_fields.items()}
-        return replace(self, cells=cells, cell_fields=fields)
 
 
 def lattice(counts: Sequence[int], *, size: Sequence[float] | None = None) -> Shape:
@@ -140,40 +96,6 @@ def jittered_tets(counts: Sequence[int], *, jitter: float = 0.15, seed: int = 0)
     inner += np.random.default_rng(seed).uniform(-jitter, jitter, inner.shape)
     tets = box_corners(numbers)[:, kuhn_tets()].reshape(-1, 4)
     return Shape(points=points, cells={"tetra": tets})
-
-
-def extrude(shape: Shape, heights: Iterable[float]) -> Shape:
-    """Sweep a 2-D shape along a third axis: triangles become wedges, quads hexahedra.
-
-    Parameters
-    ----------
-    shape : Shape
-        Triangles and quads in two dimensions.
-    heights : m + 1 increasing floats
-        Third coordinate of the copies of the points; m layers of cells between them.
-
-    Returns
-    -------
-    Shape
-        The layers of a cell follow each other closely: all of layer 0 of a block, then layer 1.
-        Boundary groups of lines become groups of quads; fields are repeated.
-    """
-    levels = np.asarray(list(heights), COORDINATE)
-    n_flat, n_layers = len(shape.points), len(levels) - 1
-    points = np.empty((len(levels), n_flat, 3))
-    points[:, :, :2] = shape.points
-    points[:, :, 2] = levels[:, None]
-    dtype = index_dtype(n_flat * len(levels))
-    step: Array = (np.arange(n_layers, dtype=dtype) * n_flat)[:, None, None]
-    names = {"triangle": "wedge", "quad": "hexahedron"}
-    cells = {names[name]: _swept(block, step, n_flat) for name, block in shape.cells.items()}
-    sides = {name: _swept_lines(lines, step, n_flat) for name, lines in shape.boundary.items()}
-    return Shape(
-        points=points.reshape(-1, 3),
-        cells=cells,
-        cell_fields=_repeated_fields(shape, n_layers),
-        boundary=sides,
-    )
 
 
 def truncated_octahedra(counts: Sequence[int]) -> Shape:
@@ -243,50 +165,12 @@ def kuhn_tets() -> IntArray:
     return np.array(tets, np.int32)
 
 
-def with_used_points(shape: Shape) -> Shape:
-    """Return the shape without the points that no cell uses (no polyhedra)."""
-    used: BoolArray = np.zeros(len(shape.points), bool)
-    for block in shape.cells.values():
-        used[block] = True
-    new: Any = (np.cumsum(used) - 1).astype(index_dtype(len(used)))
-    cells = {name: new[block] for name, block in shape.cells.items()}
-    sides = {name: new[block] for name, block in shape.boundary.items()}
-    return replace(shape, points=shape.points[used], cells=cells, boundary=sides)
-
-
-def _picked(block: Any, order: Array) -> Any:
-    """Return the rows of an array, or the items of a list, in the given order."""
-    return block[order] if isinstance(block, np.ndarray) else [block[i] for i in order]
-
-
 def _checked_counts(counts: Sequence[int]) -> tuple[int, ...]:
     """Accept two or three counts of at least 1."""
     numbers = tuple(int(n) for n in counts)
     if len(numbers) not in (2, 3) or min(numbers) < 1:
         raise InputError(f"counts is {numbers}; wanted two or three numbers of at least 1")
     return numbers
-
-
-def _swept(block: IntArray, step: Array, n_flat: int) -> IntArray:
-    """Join each flat cell to its copy one layer up, for all layers; wedges begin at the top."""
-    pair = [block + n_flat, block] if block.shape[1] == 3 else [block, block + n_flat]
-    both = np.concatenate(pair, axis=1).astype(step.dtype)
-    return (both[None] + step).reshape(-1, both.shape[1])
-
-
-def _swept_lines(lines: IntArray, step: Array, n_flat: int) -> IntArray:
-    """Sweep boundary lines to quads, going round each of them."""
-    both = np.concatenate([lines, lines[:, ::-1] + n_flat], axis=1).astype(step.dtype)
-    return (both[None] + step).reshape(-1, 4)
-
-
-def _repeated_fields(shape: Shape, n_layers: int) -> dict[str, Array]:
-    """Repeat cell fields for every layer, block by block."""
-    ends = np.cumsum([len(block) for block in shape.cells.values()])[:-1]
-    return {
-        name: np.concatenate([np.tile(piece, n_layers) for piece in np.split(array, ends)])
-        for name, array in shape.cell_fields.items()
-    }
 
 
 def _octahedron_faces() -> list[IntArray]:
@@ -303,18 +187,3 @@ def _octahedron_faces() -> list[IntArray]:
         away = face - face.mean(axis=0)
         faces.append(face[np.argsort(np.arctan2(away @ up / np.linalg.norm(normal), away @ side))])
     return faces
-
-
-def _boundary_groups(groups: Mapping[str, IntArray]) -> tuple[Any, ...]:
-    """Turn named blocks of lines, triangles or quads into boundary groups."""
-    kinds = {1: 1, 2: 3, 3: 5, 4: 9}
-    return tuple(
-        BoundaryGroup(
-            name=name,
-            tag=tag,
-            kind=np.full(len(block), kinds[block.shape[1]], np.uint8),
-            indptr=np.arange(len(block) + 1, dtype=np.int64) * block.shape[1],
-            indices=np.ascontiguousarray(block).ravel(),
-        )
-        for tag, (name, block) in enumerate(groups.items(), start=1)
-    )

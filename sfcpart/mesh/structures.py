@@ -11,7 +11,8 @@ import numpy as np
 
 from sfcpart.dtypes import IntArray
 from sfcpart.errors import InputError
-from sfcpart.mesh.shapes import Shape, extrude, lattice, with_used_points
+from sfcpart.mesh.shape import Shape, extrude, with_used_points
+from sfcpart.mesh.shapes import lattice
 
 __all__ = ["channel_with_rotor", "pier_shell"]
 

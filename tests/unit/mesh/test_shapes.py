@@ -16,7 +16,8 @@ from sfcpart.mesh.channel import (
     section_area,
 )
 from sfcpart.mesh.refined import refined_box
-from sfcpart.mesh.shapes import Shape, extrude, jittered_tets, lattice, truncated_octahedra
+from sfcpart.mesh.shape import Shape, extrude
+from sfcpart.mesh.shapes import jittered_tets, lattice, truncated_octahedra
 from sfcpart.mesh.structures import channel_with_rotor, pier_shell
 
 # Faces of each 3-D cell, written down here again from the VTK file-format document's figures.
