@@ -16,6 +16,7 @@ import pytest
 
 from sfcpart.errors import FileError, MeshError
 from sfcpart.files.parts import folder as folder_module
+from sfcpart.files.parts import replacing
 from sfcpart.files.parts.folder import MANIFEST, check_output_folder, output_folder
 
 
@@ -70,7 +71,7 @@ def test_a_full_folder_is_refused_unless_told(tmp_path):
 
 
 def test_overwriting_without_exchange_in_one_step(tmp_path, monkeypatch):
-    monkeypatch.setattr(folder_module, "_exchanged", lambda one, other: False)
+    monkeypatch.setattr(replacing, "_exchanged", lambda one, other: False)
     write(tmp_path / "parts", "old")
     write(tmp_path / "parts", "new", overwrite=True)
     assert contents(tmp_path / "parts") == complete("new")
