@@ -12,6 +12,7 @@ from typing import NamedTuple
 import pytest
 
 from sfcpart.kernels._jit import COMPILED
+from sfcpart.methods.registry import METHODS
 
 ROOT = Path(__file__).resolve().parents[2]
 MESHES = ROOT / "meshes"
@@ -42,6 +43,9 @@ def sfcpart(capsys, tmp_path, monkeypatch):
         for name, value in {"COLUMNS": 12, "ROWS": 4, "ACROSS": 3}.items():
             monkeypatch.setattr(f"sfcpart.cli.demo.{name}", value)
         monkeypatch.setattr("sfcpart.report.painting.FINE", 1)
+        slow = ("multilevel", "spectral")  # minutes for the sample meshes
+        quick = {name: method for name, method in METHODS.items() if name not in slow}
+        monkeypatch.setattr("sfcpart.comparison.METHODS", quick)
 
     def call(line: str) -> Ended:
         from sfcpart.cli.run import run

@@ -7,17 +7,19 @@
 
 `reference`: Delaunay tetrahedra of 160,000 points of `numpy.random.default_rng(0)` (1.08e6 cells).
 `layers`: the Skerry Channel with hexahedra at the bed (aspect ratio printed) below wedges, faces
-counted and then weighed by measure. `cells`, `parts`: jittered lattices of tets; seconds without
-the cell graph, cut, memory. Cuts are multiples of that along the Hilbert curve; times (medians of
-`--repeat` runs in one process, nothing compiled in them, the cell graph included where it is
-needed) multiples of the time to build the cell graph; memory is bytes a cell beyond mesh and graph.
-Tables are Markdown. Targets are printed with what was reached.
+counted and then weighed by measure. Cuts are multiples of that along the Hilbert curve; times
+(medians of `--repeat` runs in one process, nothing compiled in them, the cell graph included where
+it is needed) multiples of the time to build the cell graph; memory is bytes a cell beyond mesh and
+graph. `cells`, `parts`: jittered lattices of tets; seconds and, in brackets, processor seconds of
+all threads (which say more where other work shares the cores), both without the cell graph; cut;
+memory. Tables are Markdown. Targets are printed with what was reached.
 """
 
 from __future__ import annotations
 
 import argparse
 import os
+import time
 from collections.abc import Sequence
 from typing import Any
 
@@ -25,11 +27,14 @@ import numpy as np
 
 import sfcpart
 from sfcpart.comparison import Comparison
+from sfcpart.graph import cell_graph
 from sfcpart.kernels.threads import n_threads
+from sfcpart.measure import assess_partition
 from sfcpart.mesh.channel import channel_section
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.mesh.shape import extrude
 from sfcpart.mesh.shapes import jittered_tets
+from sfcpart.meter import metered
 from sfcpart.methods.registry import METHODS
 
 SLOW = ("spectral",)  # timed once
@@ -124,38 +129,48 @@ def show_layers(methods: Sequence[str], repeat: int, size: int) -> None:
 
 
 def show_cells(methods: Sequence[str], repeat: int, size: int) -> None:
-    """Growth of time with the number of cells, for 64 parts."""
-    print(f"| cells | {' | '.join(methods)} |\n|---:|{'---:|' * len(methods)}")
+    """Growth with the number of cells, for 64 parts."""
+    growth_head("cells", methods)
     for step in range(4):
-            side = round((size * 2**step / 6) ** (1 / 3)) | 1  # odd: parts are no neat blocks
+        side = round((size * 2**step / 6) ** (1 / 3)) | 1  # odd: parts are no neat blocks
         mesh = jittered_tets((side,) * 3).to_mesh()
-        rows = compared(mesh, 64, methods, repeat)
-        growth_row(f"{mesh.n_cells:,}", rows, methods)
+        growth_row(f"{mesh.n_cells:,}", mesh, 64, methods, repeat)
 
 
 def show_parts(methods: Sequence[str], repeat: int, size: int) -> None:
-    """Growth of time with the number of parts, for one mesh."""
+    """Growth with the number of parts, for one mesh."""
     mesh = jittered_tets((round((size / 6) ** (1 / 3)) | 1,) * 3).to_mesh()
     print(f"{mesh.n_cells:,} tets\n")
-    print(f"| parts | {' | '.join(methods)} |\n|---:|{'---:|' * len(methods)}")
+    growth_head("parts", methods)
     for n_parts in (16, 64, 256, 1024, 4096):
-        growth_row(f"{n_parts:,}", compared(mesh, n_parts, methods, repeat), methods)
+        growth_row(f"{n_parts:,}", mesh, n_parts, methods, repeat)
 
 
-def growth_row(head: str, rows: dict[str, dict[str, Any]], methods: Sequence[str]) -> None:
-    """Print seconds, cut as a multiple of the Hilbert cut, and bytes a cell of each method."""
-    cells = []
+def growth_head(what: str, methods: Sequence[str]) -> None:
+    """Print the head of a table of growth, once every method has run on a small mesh."""
+    small = jittered_tets((9, 9, 9)).to_mesh()
     for name in methods:
-        row = rows.get(name)
-        if row is None:
-            cells.append("refused")
-            continue
-        cut = row["cut_faces"] / rows["hilbert"]["cut_faces"]
-        memory = (
-            "" if row["peak_bytes"] is None else f", {row['peak_bytes'] / row['n_cells']:.0f} B"
+        sfcpart.split(small, 8, method=name, tolerance=TOLERANCE)
+    print(f"| {what} | {' | '.join(methods)} |\n|---:|{'---:|' * len(methods)}")
+
+
+def growth_row(head: str, mesh: Mesh, n_parts: int, methods: Sequence[str], repeat: int) -> None:
+    """Print wall and processor seconds without the graph, cut beside Hilbert's, bytes a cell."""
+    graph = cell_graph(mesh)
+    cells, base = [], 0.0
+    for name in methods:
+        began = time.process_time()
+        partition, took = metered(
+            lambda name=name: sfcpart.split(mesh, n_parts, method=name, tolerance=TOLERANCE),
+            repeat=repeat,
         )
-        alone = row["split_seconds"] - row["graph_seconds"]
-        cells.append(f"{alone:.2f} s, {cut:.2f}{memory}")
+        processor = (time.process_time() - began) / repeat
+        cut = assess_partition(mesh, graph, partition).total["cut_faces"]
+        base = base or float(cut or 1)
+        memory = "" if took.peak_bytes is None else f", {took.peak_bytes / mesh.n_cells:.0f} B"
+        cells.append(
+            f"{took.seconds:.2f} s ({processor:.2f}), {float(cut or 0) / base:.2f}{memory}"
+        )
     print(f"| {head} | {' | '.join(cells)} |", flush=True)
 
 
