@@ -4,8 +4,16 @@ B. W. Kernighan's sequential dynamic programme (J. ACM 18:34 (1971), from memory
 one window of positions around each plain cut: exact among all choices of one position from each
 window that keep every chunk within its capacity. The plain cuts are among them, so the cut never
 grows; and the pieces stay contiguous. Windows reach half-way to the neighbouring cuts at most.
+Where they hold more pairs of positions than `BUDGET` allows, only every s-th position is tried
+first and then all of them near the ones found: no longer exact, still never worse.
 
-Cost: O(n) to find the rows inside the windows, O(width^2) a cut.
+Cost: O(n) to find the rows inside the windows, O(width^2) a cut, bounded by `BUDGET` in all.
+
+Measured (1.08e6 random Delaunay tets, 3 %, Hilbert): 0.957, 0.938, 0.870 and 0.928 of the plain cut
+for 4, 16, 64 and 1000 parts; 0.05 to 0.65 s of processor time beyond the plain split and the cell
+graph. 64^3 lattice: 0.961, 1, 0.936 and 0.922 for 7, 64, 100 and 1000 parts (64 cubes are optimal
+as they are). The heaviest part then uses up the tolerance, and the cell graph is needed, which
+takes several times as long as the plain split: hence a wish (`cuts="least"`), not the default.
 """
 
 from __future__ import annotations
@@ -26,7 +34,9 @@ from sfcpart.weights import face_weights
 __all__ = ["ItemLine", "least_cut_positions", "line_capacity", "with_least_cuts"]
 
 BUDGET = 10**8
-"""Pairs of positions looked at, or four times as many: windows are no wider than that allows."""
+"""A quarter of the pairs of positions that are looked at: windows have to fit."""
+SMALLEST = 64
+"""Positions on either side that a window may always have."""
 REACH = 4.0
 """Weight that a window covers on either side, in units of the excess that a chunk may have."""
 
@@ -64,6 +74,14 @@ class ItemLine:
         ]
         assert sums[0] is not None
         return cls(item, sums[0], sums[1])
+
+    def only(self, position: Int64Array) -> ItemLine:
+        """Keep some positions (ascending, the ends among them): items between them become one."""
+        block = np.zeros(len(self.sums), np.int64)
+        block[position[1:]] = 1
+        np.cumsum(block, out=block)
+        second = None if self.limit_sums is None else self.limit_sums[position]
+        return ItemLine(block[self.item], self.sums[position], second)
 
 
 def with_least_cuts(problem: Problem, cell_part: Int32Array, *, curve: Curve) -> Int32Array:
@@ -199,11 +217,46 @@ def least_cut_positions(
     """
     if len(cut) < 3:
         return cut
-    low, high = _windows(line, cut, capacity, reach)
+    edges = _Edges(indptr, indices, edge_weight)
+    widest = max(SMALLEST, int((BUDGET / len(cut)) ** 0.5))
+    low, high = _windows(line, cut, capacity, reach, widest=len(line.sums))
+    stride = -(-int(np.maximum(cut - low, high - cut).max()) // widest)
+    if stride > 1:  # first among every stride-th position, then among all near those found
+        tried = np.zeros(len(line.sums), np.bool_)
+        tried[:-1:stride] = tried[cut] = True
+        position = np.flatnonzero(tried)
+        coarse = line.only(position)
+        start = np.searchsorted(position, cut).astype(np.int64)
+        low, high = _windows(coarse, start, capacity, reach, widest=widest)
+        cut = position[_choose(coarse, start, (low, high), edges, capacity, limit)]
+        widest = max(SMALLEST, 2 * stride)
+    low, high = _windows(line, cut, capacity, reach, widest=widest)
+    return _choose(line, cut, (low, high), edges, capacity, limit)
+
+
+@dataclass(frozen=True, eq=False)
+class _Edges:
+    """The cell graph, perhaps weighted."""
+
+    indptr: Int64Array
+    indices: IntArray
+    weight: Int64Array | None
+
+
+def _choose(
+    line: ItemLine,
+    cut: Int64Array,
+    windows: tuple[Int64Array, Int64Array],
+    edges: _Edges,
+    capacity: Int64Array,
+    limit: Int64Array | None,
+) -> Int64Array:
+    """Choose the best position of each window."""
+    low, high = windows
     width = high - low + 1
     first_row = np.concatenate(([0], np.cumsum(width)[:-1])).astype(np.int64)
     position = np.repeat(low - first_row, width) + np.arange(int(width.sum()))
-    row_ptr, place, weight = _rows_at(line.item, position, indptr, indices, edge_weight)
+    row_ptr, place, weight = _rows_at(line.item, position, edges)
     limit_sums = np.zeros(len(position), np.int64)
     if line.limit_sums is not None and limit is not None:
         limit_sums = line.limit_sums[position]
@@ -212,8 +265,7 @@ def least_cut_positions(
     chosen = np.empty(len(cut), np.int64)
     cut_windows(
         low, high, cut.astype(np.int64), first_row, row_ptr, place, weight, line.sums[position],
-        capacity.astype(np.int64),
-        limit_sums, limit.astype(np.int64),
+        capacity.astype(np.int64), limit_sums, limit.astype(np.int64),
         np.empty(len(position), np.int64), np.zeros(len(position), np.int32),
         np.empty(int(width.max()), np.int64), chosen,
     )  # fmt: skip
@@ -229,7 +281,7 @@ def _sums_along(item: IntArray, n: int, weight: Int64Array) -> Int64Array:
 
 
 def _windows(
-    line: ItemLine, cut: Int64Array, capacity: Int64Array, reach: float
+    line: ItemLine, cut: Int64Array, capacity: Int64Array, reach: float, *, widest: int
 ) -> tuple[Int64Array, Int64Array]:
     """Return the first and last position of each window, the two ends included.
 
@@ -242,7 +294,6 @@ def _windows(
     low = np.searchsorted(sums, sums[inner] - slack, "left")
     high = np.searchsorted(sums, sums[inner] + slack, "right") - 1
     half = (cut[:-1] + cut[1:]) // 2
-    widest = max(64, int((BUDGET / len(cut)) ** 0.5))
     low = np.minimum(np.maximum.reduce([low, inner - widest, half[:-1] + 1]), inner)
     high = np.maximum(np.minimum.reduce([high, inner + widest, half[1:]]), inner)
     ends = [int(cut[0])], [int(cut[-1])]
@@ -253,11 +304,7 @@ def _windows(
 
 
 def _rows_at(
-    item: IntArray,
-    position: Int64Array,
-    indptr: Int64Array,
-    indices: IntArray,
-    edge_weight: Int64Array | None,
+    item: IntArray, position: Int64Array, edges: _Edges
 ) -> tuple[Int64Array, Int64Array, Int64Array]:
     """Return the entries of the items at some positions (ascending), as CSR by position."""
     n_items = int(item.max()) + 1
@@ -267,11 +314,12 @@ def _rows_at(
     row = row_of[item[cell]]
     order = np.argsort(row, kind="stable")
     cell, row = cell[order], row[order]
-    degree = (indptr[cell + 1] - indptr[cell]).astype(np.int64)
+    first = edges.indptr[cell]
+    degree = (edges.indptr[cell + 1] - first).astype(np.int64)
     before = np.concatenate(([0], np.cumsum(degree)))
-    entry = np.repeat(indptr[cell] - before[:-1], degree) + np.arange(int(before[-1]))
+    entry = np.repeat(first - before[:-1], degree) + np.arange(int(before[-1]))
     # Cells of one position stand together: its entries end where its last cell's do.
     row_ptr = before[np.searchsorted(row, np.arange(len(position) + 1))]
-    place = item[indices[entry]].astype(np.int64)
-    weight = np.ones(len(entry), np.int64) if edge_weight is None else edge_weight[entry]
+    place = item[edges.indices[entry]].astype(np.int64)
+    weight = np.ones(len(entry), np.int64) if edges.weight is None else edges.weight[entry]
     return row_ptr, place, weight

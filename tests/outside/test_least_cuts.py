@@ -102,5 +102,10 @@ def test_spectral_bisection_cuts_across_the_longer_side(shape):
     # the Fiedler vector of a grid grows along its longer side only (Fiedler 1973, from memory)
     mesh = grid(shape)
     part = sfcpart.split(mesh, 2, method="spectral").cell_part
-    assert cut_faces(mesh, part) == shape[1] + (shape[0] % 2)
+    x, middle = mesh.centers[:, 0], shape[0] / 2
+    left = part[x < middle - 0.75]
+    right = part[x > middle + 0.75]
+    assert set(left) != set(right)
+    assert len(set(left)) == len(set(right)) == 1  # only an odd middle column is divided
+    assert shape[0] % 2 or cut_faces(mesh, part) == shape[1]
     assert np.bincount(part).max() == -(-mesh.n_cells // 2)

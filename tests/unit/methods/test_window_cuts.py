@@ -14,6 +14,7 @@ import sfcpart
 from sfcpart.comm import SerialComm, run_ranks
 from sfcpart.errors import InputError
 from sfcpart.graph import CellGraph, cell_graph
+from sfcpart.methods import window_cuts
 from sfcpart.methods.problem import Problem
 from sfcpart.methods.registry import METHODS
 from sfcpart.methods.window_cuts import ItemLine, least_cut_positions, line_capacity
@@ -131,6 +132,23 @@ def test_wishes_are_kept_and_the_cut_never_grows(curve, face_weight):
         fair = weight.sum() / speed.sum()
         assert load.max() <= max(bottleneck, (1 + tolerance) * fair) * (1 + 1e-12)
     assert cut(moved) < cut(plain)
+
+
+@pytest.mark.parametrize("budget", [1, 500, 5000])
+def test_windows_too_wide_are_tried_in_strides(budget, monkeypatch):
+    mesh = grid((16, 14, 5))
+    plain = sfcpart.split(mesh, 6)
+    exact = sfcpart.split(mesh, 6, cuts="least", tolerance=0.2)
+    monkeypatch.setattr(window_cuts, "BUDGET", budget)
+    monkeypatch.setattr(window_cuts, "SMALLEST", 3)
+    graph = cell_graph(mesh)
+    row = np.repeat(np.arange(mesh.n_cells), np.diff(graph.indptr))
+    found = sfcpart.split(mesh, 6, cuts="least", tolerance=0.2)
+    cut = [
+        int((p.cell_part[row] != p.cell_part[graph.indices]).sum()) for p in (exact, found, plain)
+    ]
+    assert cut[0] <= cut[1] < cut[2]
+    assert_partition(found, mesh, 6, bottleneck=1.2 * mesh.n_cells / 6)
 
 
 def test_chunks_stay_contiguous():
