@@ -4,15 +4,18 @@
     python tools/bench/compare_methods.py layers      # stretched wall layers, mixed cells
     python tools/bench/compare_methods.py cells       # doubling cells at fixed parts
     python tools/bench/compare_methods.py parts       # 16 to 4096 parts of one mesh
+    python tools/bench/compare_methods.py tolerance   # balance against cut, in predicted steps
 
 `reference`: Delaunay tetrahedra of 160,000 points of `numpy.random.default_rng(0)` (1.08e6 cells).
 `layers`: the Skerry Channel with hexahedra at the bed (aspect ratio printed) below wedges, faces
 counted and then weighed by measure. Cuts are multiples of that along the Hilbert curve; times
 (medians of `--repeat` runs in one process, nothing compiled in them, the cell graph included where
 it is needed) multiples of the time to build the cell graph; memory is bytes a cell beyond mesh and
-graph. `cells`, `parts`: jittered lattices of tets; seconds and, in brackets, processor seconds of
-all threads (which say more where other work shares the cores), both without the cell graph; cut;
-memory. Tables are Markdown. Targets are printed with what was reached.
+graph; `step` is the predicted time of a step. `tolerance`: the reference mesh again, imbalance, cut
+and predicted steps on a slow and a fast network, beside Hilbert's. `cells`, `parts`: jittered
+lattices of tets; seconds and, in brackets, processor seconds of all threads (which say more where
+other work shares the cores), both without the cell graph; cut; memory. Tables are Markdown.
+Targets are printed with what was reached.
 """
 
 from __future__ import annotations
@@ -29,7 +32,7 @@ import sfcpart
 from sfcpart.comparison import Comparison
 from sfcpart.graph import cell_graph
 from sfcpart.kernels.threads import n_threads
-from sfcpart.measure import assess_partition
+from sfcpart.measure import StepModel, assess_partition
 from sfcpart.mesh.channel import channel_section
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.mesh.shape import extrude
@@ -80,7 +83,16 @@ def compared(
 
 def table(rows: dict[str, dict[str, Any]], *, base: dict[str, Any]) -> None:
     """Print a table of all methods, beside a base."""
-    heads = ("cut faces", "cut measure", "halo", "imbalance", "parts in pieces", "meet", "time")
+    heads = (
+        "cut faces",
+        "cut measure",
+        "halo",
+        "imbalance",
+        "parts in pieces",
+        "meet",
+        "step",
+        "time",
+    )
     print(f"| method | {' | '.join(heads)} | bytes a cell |\n|---|{'---:|' * (len(heads) + 1)}")
     for name, row in rows.items():
         memory = "" if row["peak_bytes"] is None else f"{row['peak_bytes'] / row['n_cells']:.0f}"
@@ -89,6 +101,7 @@ def table(rows: dict[str, dict[str, Any]], *, base: dict[str, Any]) -> None:
             f"{row['cut_measure'] / base['cut_measure']:.3f} | "
             f"{row['halo_cells'] / base['halo_cells']:.3f} | {100 * row['imbalance']:.2f} % | "
             f"{row['n_split_parts']} | {row['neighbours_max']} | "
+            f"{row['step_seconds'] / base['step_seconds']:.3f} | "
             f"{row['split_seconds'] / row['graph']:.2f} | {memory} |"
         )
 
@@ -126,6 +139,32 @@ def show_layers(methods: Sequence[str], repeat: int, size: int) -> None:
     table(rows, base=rows["hilbert"])
     print("\nfaces weighed by their measure:\n")
     table(compared(mesh, 64, weighing, repeat, face_weight="measure"), base=rows["hilbert"])
+
+
+def show_tolerance(methods: Sequence[str], repeat: int, size: int) -> None:
+    """Table of what balance costs in cut and gains in steps."""
+    mesh = reference(size)
+    graph = cell_graph(mesh)
+    models = [StepModel.from_preset(name) for name in ("gigabit-ethernet", "infiniband-edr")]
+    print("| method | tolerance | imbalance | cut | step, gigabit | step, EDR |")
+    print("|---|---:|---:|---:|---:|---:|")
+    base: list[dict[str, Any]] = []
+    for name in methods:
+        for tolerance in (0.0, 0.003, 0.01, 0.03) if METHODS[name].needs_graph else (0.0,):
+            partition = sfcpart.split(mesh, 64, method=name, tolerance=tolerance)
+            found = [
+                dict(assess_partition(mesh, graph, partition, step_model=model).total)
+                for model in models
+            ]
+            base = base or found
+            steps = [
+                a["step_seconds"] / b["step_seconds"] for a, b in zip(found, base, strict=True)
+            ]
+            cut = found[0]["cut_faces"] / base[0]["cut_faces"]
+            print(
+                f"| `{name}` | {100 * tolerance:g} % | {100 * found[0]['imbalance']:.2f} % | "
+                f"{cut:.3f} | {steps[0]:.4f} | {steps[1]:.4f} |"
+            )
 
 
 def show_cells(methods: Sequence[str], repeat: int, size: int) -> None:
@@ -177,6 +216,7 @@ def growth_row(head: str, mesh: Mesh, n_parts: int, methods: Sequence[str], repe
 WHAT = {
     "reference": (show_reference, 160_000, tuple(METHODS)),
     "layers": (show_layers, 130, tuple(METHODS)),
+    "tolerance": (show_tolerance, 160_000, ("hilbert", "coordinate", "smoothed", "multilevel")),
     "cells": (show_cells, 250_000, ("hilbert", "smoothed", "multilevel", "coordinate")),
     "parts": (show_parts, 500_000, ("hilbert", "smoothed", "multilevel", "coordinate")),
 }
