@@ -16,6 +16,8 @@ if TYPE_CHECKING:
 
 __all__ = ["Change", "Partition"]
 
+_MANY, _MANY_A_CELL = 1_000_000, 10  # more parts than this are a slip, such as a field of ids
+
 
 @dataclass(frozen=True)
 class Change:
@@ -79,7 +81,8 @@ class Partition:
         Raises
         ------
         PartitionError
-            If the array is not one row of integers, or a part is out of range.
+            If the array is not one row of integers, a part is out of range, or parts are numbered
+            far beyond the cells and `n_parts` does not say that this is meant.
 
         Examples
         --------
@@ -101,6 +104,11 @@ class Partition:
             bad = int(np.flatnonzero((array < 0) | (array >= count))[0])
             raise PartitionError(
                 f"cell {bad} is in part {array[bad]}; parts go from 0 to {count - 1}"
+            )
+        if n_parts is None and count > max(_MANY, _MANY_A_CELL * len(array)):
+            raise PartitionError(
+                f"cell {int(array.argmax())} of {len(array)} is in part {highest}; number the "
+                "parts from 0 without gaps, or state n_parts"
             )
         if count > np.iinfo(PART).max:
             raise PartitionError(f"n_parts is {count}; at most {np.iinfo(PART).max} can be held")
@@ -276,6 +284,10 @@ def _most_kept(shared: csr_array) -> int:
 
 def _whole_numbers(array: Array) -> Array:
     """Accept floats that are whole numbers (a field read from a file); refuse the rest."""
-    if array.dtype.kind != "f" or not np.all(np.isfinite(array)) or np.any(array != np.rint(array)):
+    if array.dtype.kind != "f":
         raise PartitionError(f"cell_part holds {array.dtype} values; wanted whole numbers")
+    odd = ~np.isfinite(array) | (np.abs(array) > 2.0**53) | (array != np.rint(array))
+    if odd.any():
+        cell = int(np.argmax(odd))
+        raise PartitionError(f"cell {cell} is in part {array[cell]}; wanted whole numbers")
     return array.astype(np.int64)

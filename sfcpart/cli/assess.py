@@ -125,12 +125,13 @@ def _draw(path: str, name: str, mesh: Mesh, partition: Partition, assessment: An
 def _report(mesh: str, assessment: Any, *, as_json: bool, quiet: bool) -> None:
     """Print the figures."""
     from sfcpart.cli.console import print_json
-    from sfcpart.cli.figures import headline, print_assessment
+    from sfcpart.cli.figures import counted, headline, print_assessment
 
     if as_json:
         print_json({"mesh": mesh, **assessment.to_json_dict()})
     elif not quiet:
         total = assessment.total
-        print(f"{mesh}: {total['n_cells']:,} cells in {total['n_parts']:,} parts: ", end="")
+        cells, parts = counted(total["n_cells"], "cell"), counted(total["n_parts"], "part")
+        print(f"{mesh}: {cells} in {parts}: ", end="")
         print(f"{headline(assessment)}\n")
         print_assessment(assessment)

@@ -7,9 +7,11 @@ from typing import TYPE_CHECKING, Any
 from sfcpart.cli.console import print_pairs, print_table
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping
+
     from sfcpart.measure.assessment import Assessment
 
-__all__ = ["headline", "number", "percent", "print_assessment"]
+__all__ = ["counted", "headline", "number", "percent", "print_assessment"]
 
 MOST_PARTS = 12
 _PART_HEADS = {
@@ -39,9 +41,16 @@ def number(value: float | None) -> str:
     return f"{value:,.0f}" if abs(value) >= 1000 else f"{value:.3g}"
 
 
+def counted(count: float | None, what: str) -> str:
+    """Write a count with its noun: 1 cell, 2,784 cells."""
+    return f"{number(count)} {what}{'' if count == 1 else 's'}"
+
+
 def percent(share: float | None) -> str:
     """Write a share in per cent."""
-    return "-" if share is None else f"{100 * share:.3g} %"
+    if share is None:
+        return "-"
+    return f"{100 * share:.3g} %" if share < 10 else f"{number(100.0 * share)} %"
 
 
 def seconds(value: float | None) -> str:
@@ -100,7 +109,7 @@ def _totals(assessment: Assessment) -> list[tuple[str, str]]:
     """Return names and texts of the totals, what is unknown left out."""
     total = assessment.total
     rows = [
-        ("parts", f"{number(total['n_parts'])} of {number(total['n_cells'])} cells"),
+        ("parts", f"{number(total['n_parts'])} of {counted(total['n_cells'], 'cell')}"),
         (
             "imbalance",
             f"{percent(total['imbalance'])} (least possible "
@@ -129,7 +138,8 @@ def _face_totals(assessment: Assessment) -> list[tuple[str, str]]:
     mean = number(total["neighbours_mean"])
     pieces = "every part in one piece"
     if total["n_split_parts"]:
-        pieces = f"in several pieces: part {_listed(assessment.split_parts.tolist())}"
+        plural = "parts" if total["n_split_parts"] > 1 else "part"
+        pieces = f"in several pieces: {plural} {_listed(assessment.split_parts.tolist())}"
     model = assessment.step_model
     step = f"{seconds(total['step_seconds'])}, of which {percent(total['exchange_share'])}"
     return [
@@ -138,14 +148,9 @@ def _face_totals(assessment: Assessment) -> list[tuple[str, str]]:
             "halo",
             f"{number(total['halo_cells'])} cells, at most {number(total['halo_cells_max'])} a "
             f"part; neighbours {mean} on average, {number(total['neighbours_max'])} at most; "
-            f"smallest interface {number(total['smallest_interface'])} faces",
+            f"smallest interface {counted(total['smallest_interface'], 'face')}",
         ),
-        (
-            "shape",
-            f"surface {number(total['surface_ratio_mean'])} times the least on average, "
-            f"{number(total['surface_ratio_max'])} at worst; stretch at most "
-            f"{number(total['stretch_max'])}",
-        ),
+        ("shape", _shape(total)),
         ("pieces", pieces),
         (
             "step",
@@ -153,6 +158,17 @@ def _face_totals(assessment: Assessment) -> list[tuple[str, str]]:
             f"{percent(total['efficiency'])} (model, network {model.network.name})",
         ),
     ]
+
+
+def _shape(total: Mapping[str, Any]) -> str:
+    """Tell how round the parts are; surfaces in 3-D have no least surface to compare with."""
+    stretch = f"stretch at most {number(total['stretch_max'])}"
+    if total["surface_ratio_mean"] is None:
+        return stretch
+    return (
+        f"surface {number(total['surface_ratio_mean'])} times the least on average, "
+        f"{number(total['surface_ratio_max'])} at worst; {stretch}"
+    )
 
 
 def _listed(parts: list[int]) -> str:

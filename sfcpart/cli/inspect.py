@@ -61,10 +61,11 @@ def command(
 def _print(mesh: str, survey: Survey) -> None:
     """Print the line, the facts, the fields, the faults."""
     from sfcpart.cli.console import print_pairs, print_table
+    from sfcpart.cli.figures import counted
 
     faults = len(survey.warnings)
     found = "nothing to complain about" if not faults else f"{faults} remark{'s'[: faults - 1]}"
-    print(f"{mesh}: {survey.n_cells:,} cells in {survey.dim}-D, {found}\n")
+    print(f"{mesh}: {counted(survey.n_cells, 'cell')} in {survey.dim}-D, {found}\n")
     print_pairs(_facts(survey))
     if survey.fields:
         print()
@@ -90,7 +91,7 @@ def _facts(survey: Survey) -> list[tuple[str, str]]:
         ("box", box),
         (
             "size",
-            f"{measure['sum']:.10g} in all; a cell {number(measure['smallest'])} to "
+            f"{_size(measure['sum'])} in all; a cell {number(measure['smallest'])} to "
             f"{number(measure['largest'])}, median {number(measure['median'])}",
         ),
     ]
@@ -102,6 +103,11 @@ def _facts(survey: Survey) -> list[tuple[str, str]]:
     rows += _faces(survey)
     rows.append(("memory", f"a split will need about {survey.split_memory / 1e9:.2g} GB"))
     return rows
+
+
+def _size(total: float) -> str:
+    """Write the size of a mesh to seven digits: it may have to agree with a drawing."""
+    return f"{total:,.7g}"
 
 
 def _faces(survey: Survey) -> list[tuple[str, str]]:

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 from sfcpart import api
 from sfcpart.cli.console import Stages, print_json
-from sfcpart.cli.figures import headline, print_assessment
+from sfcpart.cli.figures import counted, headline, print_assessment
 from sfcpart.cli.inputs import read_mesh
 from sfcpart.cli.wishes import load_wish, shape_wish
 
@@ -96,7 +96,8 @@ class SplitJob:
             return
         n_cells, n_parts = self.mesh.n_cells, self.partition.n_parts
         print(
-            f"{self.source}: {n_cells:,} cells into {n_parts:,} parts by {self.options['method']}"
+            f"{self.source}: {counted(n_cells, 'cell')} into {counted(n_parts, 'part')} by "
+            f"{self.options['method']}"
         )
         print(f"{headline(self.assessment)}\n")
         print_assessment(self.assessment)

@@ -184,9 +184,9 @@ def _column(part: Mapping[str, Array | None], name: str) -> Array:
 
 
 def _excess(load: Array) -> float | None:
-    """Return the largest load - 1."""
+    """Return the largest load - 1, which rounding cannot bring below 0."""
     worst = _worst(load)
-    return None if worst is None else worst - 1.0
+    return None if worst is None else max(worst - 1.0, 0.0)
 
 
 def _worst(values: Array) -> float | None:

@@ -218,28 +218,28 @@ def _warnings(
     """Say in a sentence each what may be wrong."""
     found = []
     if cells.no_measure.count:
-        found.append(_about(cells.no_measure, "no area or volume", "they weigh nothing by measure"))
+        found.append(_about(cells.no_measure, "no area or volume", "no weight by measure"))
     if cells.collapsed.count:
-        found.append(_about(cells.collapsed, "an edge of no length", "some of their faces vanish"))
+        found.append(_about(cells.collapsed, "an edge of no length", "faces vanish there"))
     if cells.all_turned:
         kinds = ", ".join(cells.all_turned)
         found.append(f"every {kinds} is inside out: the file orders corners in another way")
     elif cells.inverted.count:
-        found.append(_about(cells.inverted, "a negative measure", "they are inside out"))
+        found.append(_about(cells.inverted, "a negative measure", "inside out"))
     if cracks is not None and cracks.n_faces:
         found.append(
             f"{cracks.n_points} points coincide within {cracks.tolerance:.3g} and keep "
             f"{cracks.n_faces} pairs of faces apart: merge points to close the cracks"
         )
     if alone is not None and mesh.n_cells > 1 and alone.count:
-        text = _about(alone, "no neighbour", "they share no face with another cell")
+        text = _about(alone, "no neighbour", "no face is shared with another cell")
         if alone.count > _MANY_ALONE * mesh.n_cells:
             text += "; are points merged, and are these the cells that were written?"
             text += " (some readers turn quadratic cells into broken linear ones)"
         found.append(text)
     if sizes is not None and len(sizes) > 1:
         found.append(
-            f"the mesh is in {len(sizes)} unconnected pieces; the largest has {sizes[0]} cells"
+            f"the mesh is in {len(sizes):,} unconnected pieces; the largest has {sizes[0]:,} cells"
         )
     return found
 
@@ -248,4 +248,4 @@ def _about(cells: Offenders, what: str, so: str) -> str:
     """Name the first of some cells."""
     few = ", ".join(map(str, cells.first[:3])) + (", ..." if cells.count > 3 else "")
     plural = "cells have" if cells.count > 1 else "cell has"
-    return f"{cells.count} {plural} {what} ({few}): {so}"
+    return f"{cells.count:,} {plural} {what} ({few}): {so}"

@@ -173,7 +173,8 @@ def _evaluate(
         spec = parse_weights(spec)
     product = _term_weights(mesh, spec.terms[0], graph)
     for term in spec.terms[1:]:
-        product = product * np.asarray(_term_weights(mesh, term, graph), np.float64)
+        with np.errstate(over="ignore", invalid="ignore"):  # refused later, naming the cell
+            product = product * np.asarray(_term_weights(mesh, term, graph), np.float64)
     return product
 
 
@@ -181,7 +182,8 @@ def _parse_term(piece: str, text: str) -> _Term:
     """Read one factor."""
     piece = piece.strip()
     if not piece:
-        raise WeightError(f"weights {text!r}: a factor is missing beside '*'")
+        wanted = "a factor is missing beside '*'" if text.strip() else "wanted a field or a table"
+        raise WeightError(f"weights {text!r}: {wanted}")
     if "=" not in piece:
         try:
             return _Term(number=_number(piece, text))

@@ -15,6 +15,10 @@ ROOT = Path(__file__).resolve().parents[2]
 MESH = str(ROOT / "meshes" / "channel_mixed.vtu")
 
 
+# a suite that a shell runs in the background inherits that interrupts are ignored
+INTERRUPTIBLE = "import signal\nsignal.signal(signal.SIGINT, signal.default_int_handler)\n"
+
+
 def _start(code: str, *arguments: str, **how) -> subprocess.Popen:
     environment = {**os.environ, "PYTHONPATH": str(ROOT)}
     return subprocess.Popen(
@@ -25,7 +29,7 @@ def _start(code: str, *arguments: str, **how) -> subprocess.Popen:
 def _break(where: str, what: str) -> str:
     """Return a program that runs the command line with one function failing."""
     return (
-        f"import sys\nimport sfcpart.api as api\ndef fail(*a, **k):\n    {what}\n"
+        f"{INTERRUPTIBLE}import sys\nimport sfcpart.api as api\ndef fail(*a, **k):\n    {what}\n"
         f"api.{where} = fail\nfrom sfcpart.cli import main\nmain(sys.argv[1:])\n"
     )
 
@@ -46,7 +50,7 @@ def test_interrupted_work_ends_with_one_line_and_130(tmp_path):
     assert child.stdout.readline() == "here\n"
     child.send_signal(signal.SIGINT)
     code, out, err = _end(child)
-    assert code == 130
+    assert code == 130, err
     assert out == ""
     assert err.splitlines()[-1] == "sfcpart: interrupted; nothing was left half-written"
     assert "Traceback" not in err

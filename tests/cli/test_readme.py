@@ -38,7 +38,8 @@ def test_the_two_commands_of_a_fresh_machine_come_first():
     assert README[:first].count("\n\n") <= 2  # one title, one paragraph
 
 
-def test_every_command_runs(sfcpart):
+def test_every_command_runs_after_the_python_example_in_one_folder(sfcpart):
+    exec(compile(blocks("python")[0], "README.md", "exec"), {})
     lines = [line for line in command_lines() if line.startswith("sfcpart ")]
     assert len(lines) >= 6
     for line in lines:

@@ -208,7 +208,7 @@ def test_parsed_once_used_often(mesh):
     [
         ("work", "no cell field 'work'; the mesh has 'a.b', 'cost', 'gmsh:physical', 'half'"),
         ("cost *", "a factor is missing beside"),
-        ("", "a factor is missing"),
+        ("", "wanted a field or a table"),
         ("tetra=1,hexahedron=2", "no weight for kind of cell triangle, quad; add it, or other="),
         ("triangle=1,brick=2", "'brick' is no kind of cell"),
         ("triangle=one", "'one' is no number"),

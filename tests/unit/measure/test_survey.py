@@ -91,4 +91,4 @@ def test_groups_are_listed_and_inverted_cells_warned_of():
     wall = BoundaryGroup("wall", 5, np.array([9], np.uint8), np.array([0, 4]), np.arange(4))
     found = survey(Mesh.from_arrays(cube.points, {"hexahedron": rows}, boundary=[wall]))
     assert [(g.name, g.tag, g.n_elements) for g in found.boundary] == [("wall", 5, 1)]
-    assert found.warnings == ("1 cell has a negative measure (1): they are inside out",)
+    assert found.warnings == ("1 cell has a negative measure (1): inside out",)
