@@ -16,6 +16,7 @@ from typing import TYPE_CHECKING, Any
 
 from numpy.typing import ArrayLike
 
+from sfcpart.comm import SerialComm
 from sfcpart.curve import curve_keys, curve_order
 from sfcpart.errors import InputError
 from sfcpart.files.meshes.cell_values import read_cell_values
@@ -154,7 +155,7 @@ def split(
         periodic=periodic,
         face_weight=face_weight,
         seed=seed,
-        comm=_alone() if comm is None else comm,
+        comm=comm or SerialComm(),
     )
     return Partition.from_array(METHODS[method].run(problem), problem.n_parts)
 
@@ -295,7 +296,7 @@ def compare(
         periodic=periodic,
         face_weight=face_weight,
         seed=seed,
-        comm=_alone(),
+        comm=SerialComm(),
         **wish,
     )
     return compare_methods(
@@ -441,10 +442,3 @@ def graph_of(mesh: Mesh) -> CellGraph | None:
 def _as_partition(parts: Partition | ArrayLike) -> Partition:
     """Return a partition, whether given as one or as an array."""
     return parts if isinstance(parts, Partition) else Partition.from_array(parts)
-
-
-def _alone() -> Comm:
-    """Return the communicator of this process."""
-    from sfcpart.comm import SerialComm
-
-    return SerialComm()

@@ -14,6 +14,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
+from sfcpart.comm import SerialComm
 from sfcpart.comm.base import Comm
 from sfcpart.dtypes import WEIGHT, Array, FloatArray, Int64Array
 from sfcpart.errors import WeightError
@@ -82,10 +83,7 @@ def quantise(
     >>> halves.unit * halves.values
     array([0.5 , 0.25])
     """
-    if comm is None:
-        from sfcpart.comm import SerialComm
-
-        comm = SerialComm()
+    comm = comm or SerialComm()
     error, array = None, np.empty(0)
     try:
         array = _checked(np.asarray(weights), first_gid, what)

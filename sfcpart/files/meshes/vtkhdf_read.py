@@ -21,8 +21,9 @@ import numpy as np
 
 from sfcpart.dtypes import COORDINATE, OFFSET, Array, Int64Array, IntArray, index_dtype
 from sfcpart.errors import FileError, MeshError
-from sfcpart.files.hdf5 import check_stored, read_hdf5
+from sfcpart.files.hdf5 import read_hdf5
 from sfcpart.files.meshes.raw import RawMesh, join_pieces
+from sfcpart.files.meshes.vtkhdf_extent import at_step, dataset_of, extent_of, grid_of, numbers_of
 from sfcpart.mesh.kinds import kind_tables
 from sfcpart.mesh.mesh import Polyhedra
 
@@ -52,7 +53,7 @@ def read_vtkhdf(path: str | PathLike[str]) -> RawMesh:
         If a partition names points it does not have.
     """
     with read_hdf5(path) as file:
-        reader = _Reader(str(path), _grid(file, path))
+        reader = _Reader(str(path), grid_of(file, path))
         raw = reader.read()
     return join_pieces(raw, len(reader.extent.n_cells), str(path))
 
@@ -86,7 +87,7 @@ def vtkhdf_counts(path: str | PathLike[str]) -> VtkhdfCounts:
         As for `read_vtkhdf`.
     """
     with read_hdf5(path) as file:
-        return _Reader(str(path), _grid(file, path)).counts()
+        return _Reader(str(path), grid_of(file, path)).counts()
 
 
 def vtkhdf_cell_rows(path: str | PathLike[str]) -> tuple[int, Int64Array]:
@@ -100,100 +101,10 @@ def vtkhdf_cell_rows(path: str | PathLike[str]) -> tuple[int, Int64Array]:
         As for `read_vtkhdf`.
     """
     with read_hdf5(path) as file:
-        reader = _Reader(str(path), _grid(file, path))
-        n_rows = int(_dataset(reader.group, "Types", "u", str(path)).shape[0])
+        reader = _Reader(str(path), grid_of(file, path))
+        n_rows = int(dataset_of(reader.group, "Types", "u", str(path)).shape[0])
         dim, first = reader.dimensions(), reader.extent.cell
     return n_rows, first + np.flatnonzero(dim == dim.max(initial=0))
-
-
-@dataclass(frozen=True)
-class _Extent:
-    """Which rows of the datasets belong to the step that is read."""
-
-    step: int  # -1 without time steps
-    first_part: int
-    n_points: list[int]
-    n_cells: list[int]
-    n_ids: list[int]
-    point: int
-    cell: int
-    id: int
-
-
-def _grid(file: Any, path: str | PathLike[str]) -> Any:
-    """Return the group of the grid; say what else the file is if it is no unstructured grid."""
-    if "VTKHDF" not in file:
-        inside = ", ".join(list(file)[:8]) or "nothing"
-        raise FileError(f"{path}: is HDF5, but has no group VTKHDF (it has {inside})")
-    group = file["VTKHDF"]
-    found = group.attrs.get("Type", b"")
-    kind = found.decode("ascii", "replace") if isinstance(found, bytes) else str(found)
-    if kind != "UnstructuredGrid":
-        raise FileError(
-            f"{path}: is VTKHDF of type {kind or 'unknown'}; wanted UnstructuredGrid "
-            f"(save the mesh as one unstructured grid)"
-        )
-    version = np.asarray(group.attrs.get("Version", [0, 0])).reshape(-1)
-    if len(version) < 1 or version[0] not in (1, 2):
-        raise FileError(f"{path}: is VTKHDF version {version.tolist()}; wanted version 1 or 2")
-    return group
-
-
-def _extent(group: Any, path: str) -> _Extent:
-    """Find the parts and first rows of the last time step, or of the whole file."""
-    counts = [
-        _numbers(group, name, path)
-        for name in ("NumberOfPoints", "NumberOfCells", "NumberOfConnectivityIds")
-    ]
-    if len({len(count) for count in counts}) != 1:
-        raise FileError(f"{path}: the counts of points, cells and ids differ in number of parts")
-    if "Steps" not in group:
-        whole = [count.tolist() for count in counts]
-        return _Extent(-1, 0, whole[0], whole[1], whole[2], 0, 0, 0)
-    steps = group["Steps"]
-    step = int(steps.attrs["NSteps"]) - 1
-    if step < 0:
-        raise FileError(f"{path}: holds no time steps")
-    at = {name: _at_step(steps, name, step, path) for name in _STEP_STARTS}
-    first = at["PartOffsets"]
-    n_parts = len(counts[0]) - first
-    if "NumberOfParts" in steps:
-        n_parts = _at_step(steps, "NumberOfParts", step, path)
-    if first < 0 or n_parts < 0 or first + n_parts > len(counts[0]):
-        raise FileError(f"{path}: the last time step has parts {first} to {first + n_parts - 1}")
-    own = [count[first : first + n_parts].tolist() for count in counts]
-    starts = (at["PointOffsets"], at["CellOffsets"], at["ConnectivityIdOffsets"])
-    return _Extent(step, first, own[0], own[1], own[2], *starts)
-
-
-_STEP_STARTS = ("PartOffsets", "PointOffsets", "CellOffsets", "ConnectivityIdOffsets")
-
-
-def _at_step(steps: Any, name: str, step: int, path: str) -> int:
-    """Return the entry of one time step of a dataset of `Steps`."""
-    values = np.asarray(steps[name][()]).reshape(-1)
-    if step >= len(values) or values[step] < 0:
-        raise FileError(f"{path}: Steps/{name} has no entry for time step {step}")
-    return int(values[step])
-
-
-def _numbers(group: Any, name: str, path: str) -> Int64Array:
-    """Read a small dataset of counts."""
-    counts = np.asarray(_dataset(group, name, "iu", path)[()]).reshape(-1)
-    if np.any(counts < 0):
-        raise FileError(f"{path}: {name} holds {counts.min()}; counts cannot be negative")
-    return counts.astype(np.int64)
-
-
-def _dataset(group: Any, name: str, dtype_kinds: str, path: str) -> Any:
-    """Return a dataset that must be there and hold numbers of some sort."""
-    if name not in group or not hasattr(group[name], "dtype"):
-        raise FileError(f"{path}: VTKHDF/{name} is missing; the file is no complete mesh")
-    dataset = group[name]
-    if dataset.dtype.kind not in dtype_kinds:
-        raise FileError(f"{path}: VTKHDF/{name} holds {dataset.dtype}; wanted numbers")
-    check_stored(dataset, path)
-    return dataset
 
 
 @dataclass
@@ -204,7 +115,7 @@ class _Reader:
     group: Any
 
     def __post_init__(self) -> None:
-        self.extent = _extent(self.group, self.path)
+        self.extent = extent_of(self.group, self.path)
 
     def read(self) -> RawMesh:
         """Read everything of the step."""
@@ -253,7 +164,7 @@ class _Reader:
 
     def _rows(self, name: str, start: int, count: int, dtype_kinds: str) -> Array:
         """Read consecutive rows of a dataset."""
-        dataset = _dataset(self.group, name, dtype_kinds, self.path)
+        dataset = dataset_of(self.group, name, dtype_kinds, self.path)
         self._check_length(name, dataset, start + count)
         return np.asarray(dataset[start : start + count])
 
@@ -267,7 +178,7 @@ class _Reader:
 
     def _ids(self, name: str, start: int, counts: list[int], bounds: list[int]) -> IntArray:
         """Read ids that are local to each part and make them ids of the joined parts."""
-        dataset = _dataset(self.group, name, "iu", self.path)
+        dataset = dataset_of(self.group, name, "iu", self.path)
         self._check_length(name, dataset, start + sum(counts))
         joined = np.empty(sum(counts), index_dtype(sum(bounds)))
         done, shift = 0, 0
@@ -291,7 +202,7 @@ class _Reader:
 
     def _indptr(self, name: str, start: int, rows: list[int], totals: list[int]) -> Int64Array:
         """Read the offsets of each part (they restart at 0) and chain them."""
-        dataset = _dataset(self.group, name, "iu", self.path)
+        dataset = dataset_of(self.group, name, "iu", self.path)
         self._check_length(name, dataset, start + sum(rows) + len(rows))
         indptr = np.zeros(sum(rows) + 1, OFFSET)
         done, shift = 0, 0
@@ -330,7 +241,7 @@ class _Reader:
 
     def _part_counts(self, name: str) -> tuple[list[int], int]:
         """Return counts of the step's parts, and the sum of those before them."""
-        counts = _numbers(self.group, name, self.path)
+        counts = numbers_of(self.group, name, self.path)
         first, n_parts = self.extent.first_part, len(self.extent.n_cells)
         if len(counts) < first + n_parts:
             raise FileError(f"{self.path}: VTKHDF/{name} has {len(counts)} entries; too few")
@@ -347,7 +258,7 @@ class _Reader:
             at = start
             if self.extent.step >= 0 and name in self.group["Steps"].get(f"{where}Offsets", {}):
                 starts = self.group["Steps"][f"{where}Offsets"]
-                at = _at_step(starts, name, self.extent.step, self.path)
+                at = at_step(starts, name, self.extent.step, self.path)
             fields[name] = self._rows(f"{where}/{name}", at, n_rows, "biuf")
         return fields
 
