@@ -48,6 +48,13 @@ def test_kernels_take_the_threads_of_one_pool():
     assert used == []
 
 
+def test_the_developers_page_names_every_room(root):
+    page = (root / "DEVELOPERS.md").read_text()
+    rooms = {f"{place.name}/" for place in PACKAGE.iterdir() if (place / "__init__.py").exists()}
+    rooms |= {place.name for place in PACKAGE.glob("*.py") if place.name != "__init__.py"}
+    assert [room for room in sorted(rooms) if f"`{room}`" not in page] == []
+
+
 def public_calls() -> dict[str, Callable]:
     """Return what scripts outside call: public functions and methods of public classes."""
     public = {name: getattr(sfcpart, name) for name in sfcpart.__all__}
