@@ -17,8 +17,8 @@ __all__ = ["accept_mutual", "pair_leftovers", "point_at_best"]
 @jit
 def edge_hash(u: int, v: int, seed: int) -> int:
     """Mix two vertex numbers and a seed into 31 bits, alike for (u, v) and (v, u)."""
-    low = min(u, v)
-    high = max(u, v)
+    low = int(min(u, v))
+    high = int(max(u, v))
     mixed = (low * 73856093 + high * 19349663 + seed * 83492791) & 0x7FFFFFFF
     mixed = ((mixed ^ (mixed >> 15)) * 0x2C1B3C6D) & 0x7FFFFFFF
     mixed = ((mixed ^ (mixed >> 12)) * 0x297A2D39) & 0x7FFFFFFF

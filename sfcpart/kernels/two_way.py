@@ -305,7 +305,7 @@ def bisect_blocks(
             total += vertex_weight[members[x]]
         best_over = -1
         best_cut = -1
-        mixed = (a * 7919 + b * 104729 + seed * 15485863) & 0x7FFFFFFF
+        mixed = (int(a) * 7919 + int(b) * 104729 + seed * 15485863) & 0x7FFFFFFF
         for turn in range(tries):
             if m == 0:
                 break

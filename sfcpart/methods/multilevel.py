@@ -81,7 +81,9 @@ def split_graph(
         raise InputError(f"tolerance is {tolerance!r}; wanted a number >= 0, such as 0.03")
     if isinstance(starts, bool) or not isinstance(starts, int | np.integer) or starts < 1:
         raise InputError(f"starts is {starts!r}; wanted a whole number, at least 1")
+    if isinstance(seed, bool) or not isinstance(seed, int | np.integer) or seed < 0:
+        raise InputError(f"seed is {seed!r}; wanted a whole number >= 0")
     walked, place = in_walk_order(graph)
     total = int(graph.vertex_weight.sum())
-    aim = Aim.of(total, np.ones(int(n_parts)), float(tolerance), int(seed))
+    aim = Aim.of(total, np.ones(int(n_parts)), float(tolerance), int(seed) % (1 << 31))
     return best_of_many(walked, aim, starts=int(starts))[place]

@@ -17,6 +17,7 @@ from sfcpart.errors import PartitionError
 from sfcpart.methods.along_curve import along_hilbert
 from sfcpart.methods.cell_problem import CellProblem, limits_kept
 from sfcpart.methods.coarsen import WeightedGraph
+from sfcpart.methods.labels import cut_of
 from sfcpart.methods.problem import Problem
 from sfcpart.methods.search import best_of_many
 from sfcpart.methods.smooth import smooth
@@ -35,8 +36,9 @@ def multilevel(problem: Problem) -> Int32Array:
     Returns
     -------
     (n_local,) int32
-        On a connected mesh every part is in one piece, unless balance or groups forbid it. The
-        same for any number of ranks and threads; every rank computes all of it.
+        On a connected mesh every part is in one piece, unless balance or groups forbid it. Never
+        cuts more than the `hilbert` method. The same for any number of ranks and threads; every
+        rank computes all of it.
 
     Raises
     ------
@@ -60,6 +62,9 @@ def multilevel(problem: Problem) -> Int32Array:
         part = solve(_both_weights(problem, cells), 0.0)
         if not limits_kept(problem, cells, part):
             return along_hilbert(problem)
+    start = cells.gather(np.concatenate(problem.comm.allgather(along_hilbert(problem))))
+    if cut_of(cells.graph, start) < cut_of(cells.graph, part):  # cubes of a full grid, for instance
+        return smoothed(problem)
     return cells.spread(part)
 
 

@@ -44,13 +44,23 @@ def bisect_along(
         if high - low == 1 or len(members) == 0:
             part[members] = low
             continue
-        mid = (low + high + 1) // 2
-        fraction = float(share[low:mid].sum() / share[low:high].sum())
+        mid = low + _left_parts(high - low)
+        whole = float(share[low:high].sum())
+        equal = (mid - low) / (high - low)
+        fraction = float(share[low:mid].sum()) / whole if whole > 0 else equal
         order = order_of(members, fraction)
         at = cut_by_weight(weight[order], fraction, n_left=mid - low, n_right=high - mid)
         blocks.append((mid, high, np.sort(order[at:])))
         blocks.append((low, mid, np.sort(order[:at])))
     return part
+
+
+def _left_parts(n_parts: int) -> int:
+    """Return how many parts go left: nearly half, but whole thirds or fifths where there are."""
+    for divisor in (2, 3, 5):
+        if n_parts % divisor == 0:
+            return n_parts // divisor * ((divisor + 1) // 2)
+    return (n_parts + 1) // 2
 
 
 def cut_by_weight(weight: Int64Array, fraction: float, *, n_left: int, n_right: int) -> int:
