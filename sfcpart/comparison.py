@@ -15,7 +15,7 @@ import numpy as np
 
 from sfcpart.errors import InputError, SfcpartError
 from sfcpart.graph import CellGraph
-from sfcpart.measure.columns import TOTAL_COLUMNS, Column
+from sfcpart.measure.columns import RUN_COLUMNS, TOTAL_COLUMNS, Column
 from sfcpart.meter import Metered, metered
 from sfcpart.methods.problem import Problem
 from sfcpart.methods.registry import METHODS
@@ -28,29 +28,7 @@ __all__ = ["COMPARED_COLUMNS", "ComparedSplit", "Comparison", "compare_methods"]
 
 _WARM_CELLS = 2_000
 
-COMPARED_COLUMNS: tuple[Column, ...] = (
-    Column(
-        "split_seconds",
-        "split",
-        "s",
-        "Time to split; with the cell graph if the method needs it.",
-        "lower",
-    ),
-    Column("graph_seconds", "graph", "s", "What of it went into the cell graph."),
-    Column(
-        "peak_bytes", "memory", "bytes", "Memory the split needed beyond mesh and graph.", "lower"
-    ),
-    Column(
-        "run_seconds",
-        "run",
-        "s",
-        "Predicted time of the whole run: time to split + steps x predicted step; a partition "
-        "from elsewhere took no time to split.",
-        "lower",
-        needs_faces=True,
-    ),
-    *TOTAL_COLUMNS,
-)
+COMPARED_COLUMNS: tuple[Column, ...] = (*RUN_COLUMNS, *TOTAL_COLUMNS)
 """Every figure of a row, in table order."""
 
 

@@ -24,13 +24,13 @@ def command(names: tuple[str, ...], as_json: bool) -> None:
     from dataclasses import asdict
 
     from sfcpart.cli.console import print_json, print_pairs
-    from sfcpart.measure.columns import PART_COLUMNS, TOTAL_COLUMNS
+    from sfcpart.measure.columns import PART_COLUMNS, RUN_COLUMNS, TOTAL_COLUMNS
 
-    known = {column.name for column in (*PART_COLUMNS, *TOTAL_COLUMNS)}
+    known = {column.name for column in (*PART_COLUMNS, *TOTAL_COLUMNS, *RUN_COLUMNS)}
     unknown = [name for name in names if name not in known]
     if unknown:
         raise click.UsageError(f"there is no figure {unknown[0]!r}; all: sfcpart figures")
-    tables = {"part": PART_COLUMNS, "total": TOTAL_COLUMNS}
+    tables = {"part": PART_COLUMNS, "total": TOTAL_COLUMNS, "run": RUN_COLUMNS}
     chosen = {
         table: [column for column in columns if not names or column.name in names]
         for table, columns in tables.items()
@@ -38,7 +38,7 @@ def command(names: tuple[str, ...], as_json: bool) -> None:
     if as_json:
         print_json({table: [asdict(c) for c in columns] for table, columns in chosen.items()})
         return
-    titles = {"part": "Of each part", "total": "In total"}
+    titles = {"part": "Of each part", "total": "In total", "run": "Of a way to split (compare)"}
     shown = [(titles[table], columns) for table, columns in chosen.items() if columns]
     for k, (title, columns) in enumerate(shown):
         if k:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from sfcpart.measure import LEAVES_OUT, NETWORKS, PART_COLUMNS, TOTAL_COLUMNS, StepModel
-from sfcpart.measure.columns import markdown_table
+from sfcpart.measure.columns import RUN_COLUMNS, markdown_table
 
 HEAD = """# The figures of a partition
 
@@ -51,6 +51,8 @@ Left out: {"; ".join(LEAVES_OUT)}."""
         markdown_table(PART_COLUMNS),
         "## In total",
         markdown_table(TOTAL_COLUMNS),
+        "## Of a way to split\n\n`sfcpart compare` adds to the totals:",
+        markdown_table(RUN_COLUMNS),
         BOUNDS,
         model,
     ]

@@ -9,7 +9,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Literal
 
-__all__ = ["PART_COLUMNS", "TOTAL_COLUMNS", "Column", "markdown_table"]
+__all__ = ["PART_COLUMNS", "RUN_COLUMNS", "TOTAL_COLUMNS", "Column", "markdown_table"]
 
 
 @dataclass(frozen=True)
@@ -256,6 +256,25 @@ TOTAL_COLUMNS: tuple[Column, ...] = (
     ),
 )
 """Figures of the whole partition, in table order."""
+
+RUN_COLUMNS: tuple[Column, ...] = (
+    _lower(
+        "split_seconds",
+        "split",
+        "s",
+        "Time to split, compilation left out; with the cell graph if the method needs it.",
+    ),
+    Column("graph_seconds", "graph", "s", "What of it went into the cell graph."),
+    _lower("peak_bytes", "memory", "bytes", "Memory the split needed beyond mesh and graph."),
+    _face_lower(
+        "run_seconds",
+        "run",
+        "s",
+        "Predicted time of a run: time to split + steps x predicted step; a partition from "
+        "elsewhere took no time to split.",
+    ),
+)
+"""Figures of a way to split, known to a comparison only, in table order."""
 
 
 def markdown_table(columns: tuple[Column, ...]) -> str:

@@ -160,3 +160,10 @@ def test_what_is_refused(sfcpart, tmp_path, options, code, words):
     assert ended.code == code, ended.err
     assert words in ended.err
     assert sorted(tmp_path.iterdir()) == before
+
+
+def test_figures_explains_what_compare_adds(sfcpart):
+    listed = json.loads(sfcpart("figures --json").out)
+    names = [column["name"] for table in ("run", "total") for column in listed[table]]
+    assert names == [column.name for column in COMPARED_COLUMNS]
+    assert sfcpart("figures run_seconds").out.startswith("Of a way to split (compare)\nrun_seconds")
