@@ -25,6 +25,12 @@ class Ragged(NamedTuple):
     ----------
     indptr : (n_local + 1,) int64
     data : (n_entries, ...) array
+
+    Examples
+    --------
+    >>> faces = Ragged(np.array([0, 2, 3]), np.array([7, 8, 9]))
+    >>> faces.data[faces.indptr[0] : faces.indptr[1]].tolist()
+    [7, 8]
     """
 
     indptr: Int64Array

@@ -41,7 +41,22 @@ class _Lane:
 
 
 class Exchange:
-    """An exchange on its way (`Halo.start`, `Halo.start_back`)."""
+    """An exchange on its way (`Halo.start`, `Halo.start_back`).
+
+    Parameters
+    ----------
+    lane : buffers of the rows on their way, which nobody else uses meanwhile
+    land : callable
+        Puts what came where it belongs.
+
+    Examples
+    --------
+    >>> from sfcpart.comm import SerialComm
+    >>> halo = Halo.from_cells([], cell_gid=[0, 1], comm=SerialComm())
+    >>> coming = halo.start(np.zeros(2))  # compute what needs no halo; then
+    >>> coming.finish().shape
+    (0,)
+    """
 
     def __init__(self, lane: _Lane, land: Callable[[_Lane], Array]) -> None:
         self._lane: _Lane | None = lane
@@ -49,7 +64,12 @@ class Exchange:
         lane.link.start()
 
     def finish(self) -> Array:
-        """Wait for the neighbours' rows and put them where they belong; return those rows.
+        """Wait for the neighbours' rows and put them where they belong.
+
+        Returns
+        -------
+        array
+            What `Halo.exchange` or `Halo.add_back` returns.
 
         Raises
         ------
@@ -57,6 +77,13 @@ class Exchange:
             If it is called a second time.
         RankError
             If a neighbour sent rows of another form.
+
+        Examples
+        --------
+        >>> from sfcpart.comm import SerialComm
+        >>> halo = Halo.from_cells([], cell_gid=[0, 1], comm=SerialComm())
+        >>> halo.start_back(np.ones(2)).finish().tolist()
+        [1.0, 1.0]
         """
         if self._lane is None:
             raise InputError("an exchange is finished twice; start it again first")
@@ -97,7 +124,7 @@ class Halo:
 
     comm: Comm
     plan: ExchangePlan
-    _idle: dict[_Form, list[_Lane]] = field(default_factory=dict, repr=False)
+    _idle: dict[_Form, list[_Lane]] = field(default_factory=dict, init=False, repr=False)
 
     @classmethod
     def from_graph(
@@ -114,6 +141,10 @@ class Halo:
             Global numbers of the owned cells, in local order; any ownership.
         comm : mpi4py communicator, or Comm
 
+        Returns
+        -------
+        Halo
+
         Raises
         ------
         InputError
@@ -122,7 +153,16 @@ class Halo:
 
         Notes
         -----
-        O(n log n) for n local cells and entries; messages of 8 bytes a cell and 12 a halo cell.
+        O(n log n) for n local cells and entries; messages of 8 bytes a cell and 20 a halo cell.
+
+        Examples
+        --------
+        >>> from sfcpart.comm import run_ranks
+        >>> def act(comm):  # a ring of three cells, one a rank
+        ...     beside = [(comm.rank - 1) % 3, (comm.rank + 1) % 3]
+        ...     return Halo.from_graph([0, 2], beside, cell_gid=[comm.rank], comm=comm)
+        >>> [halo.halo_gid.tolist() for halo in run_ranks(3, act)]
+        [[1, 2], [0, 2], [0, 1]]
         """
         comm = adopt(comm)
         needed = agreed(comm, lambda: checked_graph(indptr, indices, cell_gid))
@@ -140,10 +180,23 @@ class Halo:
         cell_gid, comm
             As for `from_graph`.
 
+        Returns
+        -------
+        Halo
+
         Raises
         ------
         InputError
             As `from_graph`, or if a face touches no cell of this rank.
+
+        Examples
+        --------
+        >>> from sfcpart.comm import run_ranks
+        >>> def act(comm):  # one face, held by rank 0 alone, which then adds flows back
+        ...     faces = [[0, 1]][comm.rank :]
+        ...     return Halo.from_faces(faces, cell_gid=[comm.rank], comm=comm).n_halo
+        >>> run_ranks(2, act)
+        [1, 0]
         """
         comm = adopt(comm)
         needed = agreed(comm, lambda: checked_faces(face_cell_gid, cell_gid))
@@ -151,7 +204,33 @@ class Halo:
 
     @classmethod
     def from_cells(cls, needed_gid: ArrayLike, *, cell_gid: ArrayLike, comm: Any) -> Halo:
-        """Make the halo of given cells, for wider stencils: see `ExchangePlan.of`."""
+        """Make the halo of given cells, for wider stencils.
+
+        Parameters
+        ----------
+        needed_gid : (n,) integers
+            Cells this rank needs, in any order; owned ones, doubles and negatives are ignored.
+        cell_gid, comm
+            As for `from_graph`.
+
+        Returns
+        -------
+        Halo
+
+        Raises
+        ------
+        InputError
+            As `from_graph`.
+
+        Examples
+        --------
+        >>> from sfcpart.comm import run_ranks
+        >>> def act(comm):
+        ...     cell_gid = [comm.rank, 3 - comm.rank]
+        ...     return Halo.from_cells([3, 2, 0, 3], cell_gid=cell_gid, comm=comm)
+        >>> [halo.halo_gid.tolist() for halo in run_ranks(2, act)]
+        [[2], [0, 3]]
+        """
         comm = adopt(comm)
         return cls(comm, ExchangePlan.of(needed_gid, cell_gid=cell_gid, comm=comm))
 
@@ -171,12 +250,29 @@ class Halo:
         return self.plan.halo_gid
 
     def local_rows(self, gid: ArrayLike) -> Int64Array:
-        """Return the local row of each global cell number: owned first, then halo; -1 for < 0.
+        """Return local rows: owned cells first, then the halo.
+
+        Parameters
+        ----------
+        gid : integers of any shape
+            Global cell numbers.
+
+        Returns
+        -------
+        int64 of that shape
+            -1 for negatives.
 
         Raises
         ------
         InputError
             If a cell is neither owned nor in the halo.
+
+        Examples
+        --------
+        >>> from sfcpart.comm import SerialComm
+        >>> halo = Halo.from_cells([], cell_gid=[7, 5], comm=SerialComm())
+        >>> halo.local_rows([5, 7, -1]).tolist()
+        [1, 0, -1]
         """
         return self.plan.local_rows(gid)
 
@@ -199,6 +295,19 @@ class Halo:
             If the array has another number of rows, holds objects, or cannot be written to.
         RankError
             If a neighbour sent rows of another form.
+
+        Notes
+        -----
+        One copy of the rows sent and received, and one message to and from each neighbour.
+
+        Examples
+        --------
+        >>> from sfcpart.comm import run_ranks
+        >>> def act(comm):
+        ...     halo = Halo.from_cells([0, 1], cell_gid=[comm.rank], comm=comm)
+        ...     return halo.exchange(np.array([[10.0 * comm.rank, 1.0]])).tolist()
+        >>> run_ranks(2, act)
+        [[[10.0, 1.0]], [[0.0, 1.0]]]
         """
         return self.start(array).finish()
 
@@ -207,6 +316,28 @@ class Halo:
 
         The owned rows are copied before it returns: they may change while the exchange is on its
         way. Halo rows are written by `finish`. Several exchanges may be on their way at once.
+
+        Parameters
+        ----------
+        array
+            As for `exchange`.
+
+        Returns
+        -------
+        Exchange
+
+        Examples
+        --------
+        >>> from sfcpart.comm import run_ranks
+        >>> def act(comm):
+        ...     halo = Halo.from_cells([0, 1], cell_gid=[comm.rank], comm=comm)
+        ...     array = np.array([comm.rank, -1])
+        ...     coming = halo.start(array)
+        ...     array[0] += 5  # inner cells, meanwhile
+        ...     coming.finish()
+        ...     return array.tolist()
+        >>> run_ranks(2, act)
+        [[5, 1], [6, 0]]
         """
         whole = self._checked(array, needs_halo=False)
         lane = self._lane("forward", array)
@@ -244,11 +375,42 @@ class Halo:
         ------
         InputError, RankError
             As for `exchange`, or if the rows cannot be added.
+
+        Examples
+        --------
+        >>> from sfcpart.comm import run_ranks
+        >>> def act(comm):  # each rank finds 3 for the cell of the other
+        ...     halo = Halo.from_cells([0, 1], cell_gid=[comm.rank], comm=comm)
+        ...     return halo.add_back(np.array([comm.rank, 3])).tolist()
+        >>> run_ranks(2, act)
+        [[3], [4]]
         """
         return self.start_back(array).finish()
 
     def start_back(self, array: Array) -> Exchange:
-        """Start what `add_back` does: halo rows are zero when it returns, `finish` adds."""
+        """Start what `add_back` does: halo rows are zero when it returns, `finish` adds.
+
+        Parameters
+        ----------
+        array
+            As for `add_back`.
+
+        Returns
+        -------
+        Exchange
+
+        Raises
+        ------
+        InputError
+            As for `add_back`.
+
+        Examples
+        --------
+        >>> from sfcpart.comm import SerialComm
+        >>> halo = Halo.from_cells([], cell_gid=[0], comm=SerialComm())
+        >>> halo.start_back(np.array([2.5])).finish().tolist()
+        [2.5]
+        """
         self._checked(array, needs_halo=True)
         if array.dtype.kind not in "iufc":
             raise InputError(f"{array.dtype} rows to add; wanted integers, floats or complex")

@@ -47,6 +47,16 @@ class ExchangePlan:
         Local rows that are sent; by target, then cell number. A cell may go to several targets.
     known_gid, known_row : (n_owned + n_halo,) int64
         All local cells, ascending, and their local rows.
+
+    Examples
+    --------
+    >>> from sfcpart.comm import run_ranks
+    >>> def act(comm):  # each rank owns two of four cells; rank 1 needs one of rank 0
+    ...     needed = [[], [1]][comm.rank]
+    ...     return ExchangePlan.of(needed, cell_gid=2 * comm.rank + np.arange(2), comm=comm)
+    >>> first, second = run_ranks(2, act)
+    >>> first.targets(), first.send.tolist(), second.sources(), second.halo_gid.tolist()
+    ([(1, 0, 1)], [1], [(0, 0, 1)], [1])
     """
 
     n_owned: int
@@ -71,10 +81,20 @@ class ExchangePlan:
             Cells this rank owns; all ranks together own each cell once.
         comm : Comm
 
+        Returns
+        -------
+        ExchangePlan
+
         Raises
         ------
         InputError
             If cells are owned twice, or needed and owned by nobody.
+
+        Examples
+        --------
+        >>> from sfcpart.comm import SerialComm
+        >>> ExchangePlan.of([3, -1], cell_gid=[3, 4], comm=SerialComm()).n_halo
+        0
         """
         owned = agreed(comm, lambda: checked_gids(cell_gid, "cell_gid"))
         gid, row = agreed(comm, lambda: sorted_gids(owned))
@@ -108,10 +128,25 @@ class ExchangePlan:
     def local_rows(self, gid: ArrayLike) -> Int64Array:
         """Return the local row of each cell number, of any shape; negatives give -1.
 
+        Parameters
+        ----------
+        gid : integers of any shape
+
+        Returns
+        -------
+        int64 of that shape
+
         Raises
         ------
         InputError
             If a cell is neither owned nor in the halo.
+
+        Examples
+        --------
+        >>> from sfcpart.comm import SerialComm
+        >>> plan = ExchangePlan.of([], cell_gid=[3, 1], comm=SerialComm())
+        >>> plan.local_rows([[1, -1], [3, 1]]).tolist()
+        [[1, -1], [0, 1]]
         """
         asked = np.asarray(gid)
         flat = checked_gids(asked.reshape(-1), "gid")
@@ -129,11 +164,25 @@ class ExchangePlan:
         return row.reshape(asked.shape)
 
     def sources(self) -> list[Stretch]:
-        """Return the halo rows that come from each rank."""
+        """Return (rank, first row, row after) of the halo rows that come from each source.
+
+        Examples
+        --------
+        >>> from sfcpart.comm import SerialComm
+        >>> ExchangePlan.of([], cell_gid=[3, 1], comm=SerialComm()).sources()
+        []
+        """
         return _stretches(self.source, self.source_indptr)
 
     def targets(self) -> list[Stretch]:
-        """Return the rows of `send` that go to each rank."""
+        """Return (rank, first row, row after) of the rows of `send` that go to each target.
+
+        Examples
+        --------
+        >>> from sfcpart.comm import SerialComm
+        >>> ExchangePlan.of([], cell_gid=[3, 1], comm=SerialComm()).targets()
+        []
+        """
         return _stretches(self.target, self.target_indptr)
 
 

@@ -11,6 +11,7 @@ from pathlib import Path
 
 import sfcpart
 import sfcpart.api
+import sfcpart.parallel
 
 PACKAGE = Path(sfcpart.__file__).parent
 
@@ -58,6 +59,7 @@ def test_the_developers_page_names_every_room(root):
 def public_calls() -> dict[str, Callable]:
     """Return what scripts outside call: public functions and methods of public classes."""
     public = {name: getattr(sfcpart, name) for name in sfcpart.__all__}
+    public |= {name: getattr(sfcpart.parallel, name) for name in sfcpart.parallel.__all__}
     for kind in (*[c for c in public.values() if inspect.isclass(c)], sfcpart.api.Part):
         for name in vars(kind):
             if name[0] != "_" and callable(getattr(kind, name)):
