@@ -96,6 +96,15 @@ def test_speeds_shift_the_work(sfcpart):
     assert again["part"]["cells"] == told["part"]["cells"]
 
 
+def test_least_cuts_use_the_tolerance_up(sfcpart):
+    command = "split meshes/channel_mixed.vtu -n 7 --json --tolerance 0.05"
+    plain, least = (
+        json.loads(sfcpart(f"{command} {more}")[1])["total"] for more in ("", "--cuts least")
+    )
+    assert least["cut_faces"] < plain["cut_faces"]
+    assert plain["imbalance"] < least["imbalance"] <= 0.05
+
+
 def test_cells_kept_together_stay_together(sfcpart):
     Path("pairs.txt").write_text("0 2783\n5 1000\n")
     sfcpart("split meshes/channel_mixed.vtu -n 5 --pairs pairs.txt --together row -o parts -q")
