@@ -20,6 +20,9 @@ __all__ = ["check_memory", "memory_for_file", "memory_for_mesh", "memory_left", 
 
 _PROC = Path("/proc")
 _GROUPS = Path("/sys/fs/cgroup")
+_SURE = 0.85
+"""Share of an estimate needed for sure: measured peaks (300 000 hexahedra, as many tets) were
+0.87 and 0.90 of it."""
 
 
 def memory_for_file(path: str | PathLike[str]) -> int | None:
@@ -88,7 +91,7 @@ def check_memory(needed: int | None, what: str) -> None:
     if needed is None or left is None:
         return
     there = left + resident_memory()
-    if needed > there:
+    if _SURE * needed > there:
         raise InsufficientMemoryError(
             f"{what}: a split needs about {needed / 1e9:.2g} GB of memory, {there / 1e9:.2g} GB "
             "are there; close other programs or use a larger machine"

@@ -70,9 +70,9 @@ def test_other_systems_refuse_nothing(machine):
 
 def test_what_the_process_holds_already_is_not_asked_for_again(machine):
     machine(proc__meminfo=FREE, proc__self__status="VmRSS: 400 kB\n")
-    memory.check_memory(1000 * 1024, "a")
+    memory.check_memory(1150 * 1024, "a")  # estimates are a little high
     with pytest.raises(InsufficientMemoryError, match="a: a split needs about"):
-        memory.check_memory(1001 * 1024, "a")
+        memory.check_memory(1200 * 1024, "a")
     memory.check_memory(None, "a")
 
 
