@@ -5,6 +5,7 @@ from __future__ import annotations
 import csv
 import json
 import re
+from itertools import pairwise
 from pathlib import Path
 
 import meshio
@@ -116,18 +117,31 @@ def test_cells_kept_together_stay_together(sfcpart):
         assert len(np.unique(part[row == value])) == 1
 
 
-def test_periodic_groups_stay_together(sfcpart):
-    sfcpart("split meshes/channel_section.msh -n 4 --periodic inflow:outflow -o parts -q")
+def cells_behind(mesh, name: str) -> np.ndarray:
+    """Return the cell behind each edge of a boundary group, from the lowest edge to the highest."""
+    group = next(group for group in mesh.boundary if group.name == name)
+    rows = [set(mesh.indices[a:b].tolist()) for a, b in pairwise(mesh.indptr)]
+    edges = group.indices.reshape(-1, 2)
+    height = mesh.points[edges, 1].mean(axis=1)
+    return np.array(
+        [
+            next(cell for cell, points in enumerate(rows) if points.issuperset(edge))
+            for edge in edges[np.argsort(height)].tolist()
+        ]
+    )
+
+
+@pytest.mark.parametrize("weight", ["", "--weight triangle=1,quad=40"])
+def test_periodic_groups_stay_together(sfcpart, weight):
+    line = "split meshes/channel_section.msh -n 4 --periodic inflow:outflow -o parts -q"
+    assert sfcpart(f"{line} {weight}") == (0, "", "")
     mesh = api.read_mesh("meshes/channel_section.msh")
     part = np.load("parts/cell_part.npy")
-    x = mesh.centers[:, 0]
-    y = mesh.centers[:, 1].round(6)
-    quads = np.flatnonzero(mesh.kind == 9)
-    left = quads[x[quads] < 1.0]
-    right = quads[x[quads] > 39.0]
-    assert len(left) == len(right) == 6
-    left, right = left[np.argsort(y[left])], right[np.argsort(y[right])]
-    assert part[left].tolist() == part[right].tolist()
+    inflow, outflow = cells_behind(mesh, "inflow"), cells_behind(mesh, "outflow")
+    assert len(inflow) == len(outflow) == 14
+    assert part[inflow].tolist() == part[outflow].tolist()
+    alone = api.split(mesh, 4).cell_part  # without being asked they are apart
+    assert alone[inflow].tolist() != alone[outflow].tolist()
 
 
 @pytest.mark.parametrize("across", ["faces", "points"])
