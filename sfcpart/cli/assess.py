@@ -81,9 +81,9 @@ def command(mesh: str, parts: str | None, **given: Any) -> None:
             limit_weights=second,
             limits=most,
         )
-    if given["csv_path"]:
+    if given["csv_path"] is not None:
         _write_csv(given["csv_path"], assessment)
-    if given["picture"]:
+    if given["picture"] is not None:
         with doing("drawing"):
             _draw(given["picture"], mesh, loaded, partition, assessment)
     _report(mesh, assessment, as_json=given["as_json"], quiet=given["quiet"])

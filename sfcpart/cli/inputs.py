@@ -56,6 +56,8 @@ def partition_from_path(path: str, n_cells: int) -> Partition:
         from sfcpart.files.meshes.cell_values import read_cell_values
 
         return Partition.from_array(read_cell_values(place, n_cells))
+    if not (place / "parts.vtkhdf").exists() and (place / "cell_part.npy").exists():
+        return partition_from_path(str(place / "cell_part.npy"), n_cells)
     cell_part, n_parts = _owners(place, n_cells)
     return Partition.from_array(cell_part, n_parts)
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import io
 import os
 import sys
 import warnings
@@ -26,6 +27,7 @@ def run(arguments: Sequence[str]) -> int:
     if _COMPLETE in os.environ:
         return _complete(os.environ[_COMPLETE])
     warnings.showwarning = _show_warning
+    _print_any_name()
     try:
         with sfcpart.make_context(PROGRAM, list(arguments)) as context:
             sfcpart.invoke(context)
@@ -41,6 +43,12 @@ def run(arguments: Sequence[str]) -> int:
             raise
         return _say(_one_line(error), code_of(error))
     return 0
+
+
+def _print_any_name() -> None:
+    """Let the output carry names that its encoding cannot, with escapes in their place."""
+    if isinstance(sys.stdout, io.TextIOWrapper):
+        sys.stdout.reconfigure(errors="backslashreplace")
 
 
 def _one_line(error: Exception) -> str:

@@ -8,12 +8,14 @@ and count as inverted where they turn against most of their kind (common practic
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
 
 from sfcpart.dtypes import BoolArray, FloatArray
+from sfcpart.errors import MeshError
 from sfcpart.kernels.threads import run_ranges
 from sfcpart.mesh.kinds import KINDS
 from sfcpart.mesh.mesh import Mesh
@@ -118,6 +120,11 @@ def check_cells(mesh: Mesh) -> CellCheck:
     -------
     CellCheck
 
+    Raises
+    ------
+    MeshError
+        If a cell is so large that its size overflows.
+
     Notes
     -----
     O(edges of cells), threaded; 33 bytes a cell beside the mesh's own geometry.
@@ -136,6 +143,7 @@ def check_cells(mesh: Mesh) -> CellCheck:
         empty = Offenders.of(measure == 0)
         return CellCheck(empty, none, none, (), _ranges(measure), None, -1, None, None)
     shortest, longest = _edges(mesh)
+    _check_finite(measure, longest)
     flat = measure <= _NO_MEASURE * longest**mesh.dim
     inverted, turned = _inverted(mesh, flat)
     sound = shortest > 0
@@ -178,6 +186,16 @@ def _inverted(mesh: Mesh, flat: BoolArray) -> tuple[BoolArray, tuple[str, ...]]:
         elif total and against == total:
             turned.append(KINDS[code].name)
     return negative, tuple(turned)
+
+
+def _check_finite(measure: FloatArray, longest: FloatArray) -> None:
+    """Refuse cells whose size is beyond the numbers."""
+    beyond = ~(np.isfinite(measure) & np.isfinite(longest))
+    if beyond.any():
+        raise MeshError(
+            f"cell {int(np.argmax(beyond))} is too large to be measured: its edges or its size "
+            "exceed 1e308; scale the mesh down"
+        )
 
 
 def _ranges(values: FloatArray) -> dict[str, float]:
@@ -234,5 +252,5 @@ def default_tolerance(mesh: Mesh, shortest_edge: float | None) -> float:
     5e-09
     """
     assert mesh.points is not None
-    diagonal = float(np.linalg.norm(mesh.points.max(axis=0) - mesh.points.min(axis=0)))
+    diagonal = math.hypot(*(mesh.points.max(axis=0) - mesh.points.min(axis=0)).tolist())
     return min(1e-9 * diagonal, 0.1 * (shortest_edge if shortest_edge else np.inf))

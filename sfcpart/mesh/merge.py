@@ -14,13 +14,13 @@ from typing import Any
 
 import numpy as np
 
-from sfcpart.dtypes import OFFSET, FloatArray, Int64Array, IntArray
+from sfcpart.dtypes import OFFSET, BoolArray, FloatArray, Int64Array, IntArray
 from sfcpart.errors import MeshError
 from sfcpart.mesh.arrays import MeshArrays
 from sfcpart.mesh.gate import frozen
 from sfcpart.mesh.pieces import Polyhedra
 
-__all__ = ["coincident_points", "with_new_numbers"]
+__all__ = ["check_still_cells", "coincident_points", "with_new_numbers"]
 
 _SLANT = np.array([0.8506508, 0.4472136, 0.2763932])
 _WIDEST = 32
@@ -97,6 +97,23 @@ def _tree_pairs(points: FloatArray, tolerance: float) -> Int64Array:
 
     pairs: Int64Array = cKDTree(points).query_pairs(tolerance, output_type="ndarray")
     return pairs.astype(OFFSET, copy=False)
+
+
+def check_still_cells(mesh: MeshArrays, lowest: Int64Array, tolerance: float) -> None:
+    """Refuse a tolerance so wide that all points of a cell become one."""
+    lost = _single(lowest[mesh.indices], mesh.indptr) & ~_single(mesh.indices, mesh.indptr)
+    if lost.any():
+        raise MeshError(
+            f"a tolerance of {tolerance:g} makes cell {int(np.argmax(lost))} a single point; "
+            "stay well below the shortest edge"
+        )
+
+
+def _single(indices: IntArray, indptr: Int64Array) -> BoolArray:
+    """Tell which cells list one point only."""
+    starts = indptr[:-1]
+    single: BoolArray = np.minimum.reduceat(indices, starts) == np.maximum.reduceat(indices, starts)
+    return single
 
 
 def with_new_numbers(number: Int64Array, mesh: MeshArrays) -> dict[str, Any]:

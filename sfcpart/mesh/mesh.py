@@ -25,7 +25,7 @@ from sfcpart.mesh.gate import (
     parse_blocks,
 )
 from sfcpart.mesh.kinds import kind_tables
-from sfcpart.mesh.merge import coincident_points, with_new_numbers
+from sfcpart.mesh.merge import check_still_cells, coincident_points, with_new_numbers
 from sfcpart.mesh.pieces import BoundaryGroup, FaceList, Polyhedra
 
 __all__ = ["BoundaryGroup", "FaceList", "Mesh", "Polyhedra"]
@@ -337,7 +337,8 @@ class Mesh(MeshArrays):
         Raises
         ------
         MeshError
-            If the mesh has no points, or the tolerance is negative or not finite.
+            If the mesh has no points, the tolerance is negative or not finite, or so wide that
+            it makes a cell a single point.
 
         Notes
         -----
@@ -356,6 +357,7 @@ class Mesh(MeshArrays):
         kept = lowest == np.arange(len(lowest))
         if kept.all():
             return self
+        check_still_cells(self, lowest, tolerance)
         fields = {name: frozen(values[kept]) for name, values in self.point_fields.items()}
         return replace(
             self,

@@ -106,7 +106,8 @@ def _write(
     figure: Any, x: float, y: float, text: str, *, size: float, share: float = 0.98, **style: Any
 ) -> None:
     """Write a line; if wider than its share of the sheet, in smaller letters, then cut off."""
-    line = figure.text(x, y, text, fontsize=size, va="center", **style)
+    text = text.encode("utf-8", "replace").decode()  # file names may be no UTF-8, or hold $
+    line = figure.text(x, y, text, fontsize=size, va="center", parse_math=False, **style)
     room = 0.96 * share * figure.get_figwidth() * DPI
     wide = line.get_window_extent().width
     if wide <= room:

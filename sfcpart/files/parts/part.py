@@ -15,6 +15,7 @@ import numpy as np
 from sfcpart.dtypes import Array, FloatArray, Int32Array, Int64Array, IntArray, KindArray
 from sfcpart.errors import FileError, InputError
 from sfcpart.files.hdf5 import read_hdf5
+from sfcpart.files.parts.folder import MANIFEST
 from sfcpart.files.parts.lists import PartBoundary, PartLists, read_lists
 from sfcpart.files.parts.part_rows import PartRows, freeze, lists_fit, mesh_fits
 from sfcpart.mesh.mesh import Polyhedra
@@ -192,7 +193,7 @@ def read_part(path: str | PathLike[str], part: int) -> Part:
     place = Path(path)
     if place.is_dir():
         if not (place / FILE_NAME).exists():
-            raise FileError(f"{place}: holds no {FILE_NAME}; wanted a folder that a split wrote")
+            raise FileError(f"{place}: holds no {FILE_NAME}; {_instead(place)}")
         place = place / FILE_NAME
     with read_hdf5(place) as file:
         lists = read_lists(file, int(part))
@@ -200,6 +201,13 @@ def read_part(path: str | PathLike[str], part: int) -> Part:
             raise FileError(f"{place}: holds exchange lists but no mesh; wanted {FILE_NAME}")
         arrays = PartRows(file["VTKHDF"], int(part)).read()
         return _checked(place, int(part), lists, arrays)
+
+
+def _instead(folder: Path) -> str:
+    """Say what to do about a folder without meshes for a solver."""
+    if (folder / MANIFEST).exists():
+        return "split again with the format vtkhdf (besides others, if wanted)"
+    return "wanted a folder that a split wrote"
 
 
 def _checked(place: Path, part: int, lists: PartLists, arrays: dict[str, Any]) -> Part:

@@ -101,7 +101,12 @@ def json_text(value: Any) -> str:
       ]
     }
     """
-    return json.dumps(_plain(value), indent=2, allow_nan=False, ensure_ascii=False) + "\n"
+    plain = _plain(value)
+    text = json.dumps(plain, indent=2, allow_nan=False, ensure_ascii=False) + "\n"
+    if text.isascii() or not any("\ud800" <= letter <= "\udfff" for letter in text):
+        return text
+    # a file name that is no UTF-8 holds lone surrogates, which only escapes can carry
+    return json.dumps(plain, indent=2, allow_nan=False) + "\n"
 
 
 def _plain(value: Any) -> Any:
