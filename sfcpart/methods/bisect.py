@@ -13,9 +13,10 @@ first cell (spectral: by their place on the Hilbert curve), so the answer is the
 number of threads. These methods do not share their work among ranks yet: every rank gathers the
 whole problem and computes all of it, so the answer is the same for any number of ranks too.
 
-Measured (1.08e6 random Delaunay tets, 64 equal parts, where the Hilbert curve cuts 92,427 faces):
-coordinate 80,426 in 0.2 s, inertial 88,726 in 0.4 s (with weights, which need sorting, 1.2 s both),
-spectral 72,867 in 16.5 s of processor time. 4096 parts: 0.5 s and 1.2 s. Where the eigenvalue is
+Measured (tools/bench/classics.py: 1.08e6 random Delaunay tets, 64 parts, processor time; the
+Hilbert curve cuts 89,381 faces in 0.1 s): coordinate 79,409 in 0.25 s, inertial 88,661 in 0.26 s
+(with weights, which need sorting, 1.2 s both), spectral 76,558 in 17.6 s. 4096 parts: 0.6 s and
+1.2 s. Where the eigenvalue is
 multiple (cubes, squares) the Fiedler vector may lie askew: on a 24^3 lattice spectral bisection
 cuts 886 faces for two parts, the others 576.
 """

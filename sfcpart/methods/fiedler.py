@@ -104,8 +104,9 @@ def spectral_line(graph: WeightedGraph, members: Int64Array, share: float) -> Ar
     Notes
     -----
     The vector is known to 10^-4 (see `fiedler_vector`), from 10,000 vertices on to 0.1 only.
-    Measured (1.08e6 random Delaunay tets, 64 parts): the bisection cuts 76,668 faces at 10^-3,
-    76,301 at 10^-2, 76,793 at 0.03 and 72,867 at 0.1, there in 16.5 s of processor time.
+    Measured (other 1.08e6 random Delaunay tets than the bench's, 64 parts): the bisection cuts
+    76,668 faces at 10^-3, 76,301 at 10^-2, 76,793 at 0.03 and 72,867 at 0.1, so more accuracy
+    only costs time (92 s, 39 s on the clock, and 16.5 s of processor time at 0.1).
     """
     inner = _inside(graph, members)
     count, label = _components(inner)
