@@ -11,9 +11,10 @@ Cost: O(n) to find the rows inside the windows, O(width^2) a cut, bounded by `BU
 
 Measured (tools/bench/classics.py: 1.08e6 random Delaunay tets, 3 %, Hilbert): 0.961, 0.940, 0.888
 and 0.930 of the plain cut for 4, 16, 64 and 1000 parts; 0.3 to 0.65 s of processor time beyond the
-plain split and the cell graph. 64^3 lattice: 0.961, 1, 0.936 and 0.922 for 7, 64, 100 and 1000 parts (64 cubes are optimal
-as they are). The heaviest part then uses up the tolerance, and the cell graph is needed, which
-takes several times as long as the plain split: hence a wish (`cuts="least"`), not the default.
+plain split and the cell graph. 64^3 lattice: 0.961, 1, 0.936 and 0.922 for 7, 64, 100 and 1000
+parts (64 cubes are optimal as they are). The heaviest part then uses up the tolerance, and the cell
+graph is needed, which takes several times as long as the plain split: hence a wish
+(`cuts="least"`), not the default.
 """
 
 from __future__ import annotations
