@@ -102,15 +102,7 @@ def weights_of(mesh: Mesh, weights: Weights) -> Array | None:
     """
     if weights is None:
         return None
-    if isinstance(weights, str) or _are_texts(weights):
-        return cell_weights(mesh, weights, graph=lambda: cell_graph(mesh))
-    array = np.asarray(weights)
-    if array.shape != (mesh.n_cells,):
-        raise WeightError(
-            f"weights have shape {array.shape}; wanted one number for each of the "
-            f"{mesh.n_cells} cells"
-        )
-    return array
+    return cell_weights(mesh, weights, graph=lambda: cell_graph(mesh))
 
 
 def part_speeds(speeds: ArrayLike | None, n_parts: int) -> FloatArray:

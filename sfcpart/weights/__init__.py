@@ -9,6 +9,7 @@
 
 from __future__ import annotations
 
+from sfcpart.weights.cells import cell_weights
 from sfcpart.weights.faces import FACE_WEIGHTS, FaceWeight, face_weights
 from sfcpart.weights.groups import (
     groups_from_boundaries,
@@ -17,7 +18,7 @@ from sfcpart.weights.groups import (
     join_groups,
 )
 from sfcpart.weights.quantise import Quantised, quantise, quantise_limits
-from sfcpart.weights.spec import WeightSpec, cell_weights, parse_weights
+from sfcpart.weights.spec import WeightSpec, parse_weights
 
 __all__ = [
     "FACE_WEIGHTS",

@@ -1,4 +1,4 @@
-"""Weights of cells from a specification: fields, tables, faces, and products of these.
+"""Specifications of weights: fields, tables, faces, and products of these.
 
 The spelling, as on the command line (spaces around signs are allowed):
 
@@ -13,34 +13,23 @@ The spelling, as on the command line (spaces around signs are allowed):
 
 A field whose name holds one of `*=,` can stand alone, not in a product. A `:` in a name is allowed:
 in `gmsh:physical:1=2` the field is "gmsh:physical".
-
-Cost: O(n) a term; `cell=..,face=..` needs the cell graph.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
 
-import numpy as np
-from numpy.typing import ArrayLike
-
-from sfcpart.dtypes import Array, FloatArray
 from sfcpart.errors import WeightError
 from sfcpart.mesh.kinds import KINDS
-from sfcpart.mesh.mesh import Mesh
 
-if TYPE_CHECKING:
-    from sfcpart.graph import CellGraph
+__all__ = ["OTHER", "Term", "WeightSpec", "parse_weights"]
 
-__all__ = ["WeightSpec", "cell_weights", "parse_weights"]
-
-_OTHER = "other"
+OTHER = "other"
+"""Stands in a table for whatever the table does not list."""
 
 
 @dataclass(frozen=True)
-class _Term:
+class Term:
     """One factor: a field, a table (by kind, or by region of a field), faces, or a number.
 
     Exactly one of `number`, `table` and a bare `field` is what counts; a table with a field is by
@@ -50,6 +39,12 @@ class _Term:
     field: str | None = None
     table: tuple[tuple[str, float], ...] = ()
     number: float | None = None
+
+    @property
+    def is_mix(self) -> bool:
+        """Whether a table is so much a cell and so much a face."""
+        names = {name for name, _ in self.table}
+        return self.field is None and bool(names) and names <= {"cell", "face"}
 
 
 @dataclass(frozen=True)
@@ -64,12 +59,12 @@ class WeightSpec:
     """
 
     text: str
-    terms: tuple[_Term, ...]
+    terms: tuple[Term, ...]
 
     @property
     def needs_graph(self) -> bool:
         """Whether faces are counted."""
-        return any(_is_mix(term) for term in self.terms)
+        return any(term.is_mix for term in self.terms)
 
 
 def parse_weights(text: str) -> WeightSpec:
@@ -96,89 +91,7 @@ def parse_weights(text: str) -> WeightSpec:
     return WeightSpec(text, tuple(_parse_term(piece, text) for piece in text.split("*")))
 
 
-def cell_weights(
-    mesh: Mesh,
-    spec: str | WeightSpec | ArrayLike | Sequence[str | WeightSpec],
-    *,
-    graph: CellGraph | Callable[[], CellGraph] | None = None,
-) -> Array:
-    """Return the weight of every cell.
-
-    Parameters
-    ----------
-    mesh : Mesh
-    spec : str, WeightSpec, sequence of these, or (n_cells,) numbers
-        A sequence of specifications is multiplied. Numbers are only checked for their shape.
-    graph : CellGraph, or a function that returns one, optional
-        Needed where faces are counted.
-
-    Returns
-    -------
-    (n_cells,) float64, or the field's own type for a single field
-        Not yet checked for sign (`quantise` does).
-
-    Raises
-    ------
-    WeightError
-        If a field, kind or region is missing (those present are listed), or a field has not one
-        number a cell.
-
-    Examples
-    --------
-    >>> mesh = Mesh.from_arrays(
-    ...     [[0, 0], [2, 0], [2, 1], [0, 1], [3, 0]],
-    ...     {"quad": [[0, 1, 2, 3]], "triangle": [[1, 4, 2]]},
-    ...     cell_fields={"zone": [7, 8]},
-    ... )
-    >>> cell_weights(mesh, "quad=3, triangle=1 * zone:8=10, other=1").tolist()
-    [3.0, 10.0]
-    """
-    if isinstance(spec, str) and spec in mesh.cell_fields:
-        return _field(mesh, spec)
-    specs = [spec] if isinstance(spec, (str, WeightSpec)) else spec
-    if not _all_texts(specs):
-        return _given(specs, mesh.n_cells)
-    product: Array | None = None
-    for one in specs:  # type: ignore[union-attr]  # texts, as just checked
-        factor = _evaluate(mesh, one, graph)  # type: ignore[arg-type]
-        product = factor if product is None else product * factor
-    assert product is not None
-    return product
-
-
-def _all_texts(specs: object) -> bool:
-    """Tell a non-empty sequence of specifications from numbers."""
-    return (
-        isinstance(specs, Sequence)
-        and len(specs) > 0
-        and all(isinstance(one, (str, WeightSpec)) for one in specs)
-    )
-
-
-def _given(weights: object, n_cells: int) -> Array:
-    """Return weights given as numbers."""
-    array = np.asarray(weights)
-    if array.shape != (n_cells,):
-        raise WeightError(f"weights have shape {array.shape}; wanted one a cell, ({n_cells},)")
-    return array
-
-
-def _evaluate(
-    mesh: Mesh, spec: str | WeightSpec, graph: CellGraph | Callable[[], CellGraph] | None
-) -> Array:
-    """Return the product of the terms of one specification."""
-    if isinstance(spec, str):
-        if spec in mesh.cell_fields:
-            return _field(mesh, spec)
-        spec = parse_weights(spec)
-    product = _term_weights(mesh, spec.terms[0], graph)
-    for term in spec.terms[1:]:
-        with np.errstate(over="ignore", invalid="ignore"):  # refused later, naming the cell
-            product = product * np.asarray(_term_weights(mesh, term, graph), np.float64)
-    return product
-
-
-def _parse_term(piece: str, text: str) -> _Term:
+def _parse_term(piece: str, text: str) -> Term:
     """Read one factor."""
     piece = piece.strip()
     if not piece:
@@ -186,19 +99,19 @@ def _parse_term(piece: str, text: str) -> _Term:
         raise WeightError(f"weights {text!r}: {wanted}")
     if "=" not in piece:
         try:
-            return _Term(number=_number(piece, text))
+            return Term(number=_number(piece, text))
         except WeightError:
-            return _Term(field=piece)
+            return Term(field=piece)
     head, _, _ = piece.partition("=")
     name, colon, _ = head.rpartition(":")
     entries = piece[len(name) + 1 :] if colon else piece
     table = dict(_entry(entry, text) for entry in entries.split(","))
-    term = _Term(field=name.strip() if colon else None, table=tuple(table.items()))
+    term = Term(field=name.strip() if colon else None, table=tuple(table.items()))
     if term.field == "":
         raise WeightError(f"weights {text!r}: a field is missing before ':'")
     if len(table) != entries.count(",") + 1:
         raise WeightError(f"weights {text!r}: a name is given twice in {piece!r}")
-    if term.field is None and not _is_mix(term):
+    if term.field is None and not term.is_mix:
         _check_kinds(term, text)
     return term
 
@@ -219,106 +132,12 @@ def _number(value: str, text: str) -> float:
         raise WeightError(f"weights {text!r}: {value!r} is no number") from None
 
 
-def _is_mix(term: _Term) -> bool:
-    """Tell whether a table is so much a cell and so much a face."""
-    names = {name for name, _ in term.table}
-    return term.field is None and bool(names) and names <= {"cell", "face"}
-
-
-def _check_kinds(term: _Term, text: str) -> None:
+def _check_kinds(term: Term, text: str) -> None:
     """Refuse tables whose names are no kinds of cells."""
-    known = {kind.name for kind in KINDS.values()} | {_OTHER}
+    known = {kind.name for kind in KINDS.values()} | {OTHER}
     for name, _ in term.table:
         if name not in known:
             raise WeightError(
                 f"weights {text!r}: {name!r} is no kind of cell (tetra, hexahedron, ...); write "
                 f"FIELD:{name}=... for a value of a cell field, cell=..,face=.. for costs by face"
             )
-
-
-def _term_weights(
-    mesh: Mesh, term: _Term, graph: CellGraph | Callable[[], CellGraph] | None
-) -> Array:
-    """Return the weights one factor gives."""
-    if term.number is not None:
-        return np.full(mesh.n_cells, term.number)
-    if _is_mix(term):
-        return _face_weights(dict(term.table), graph)
-    if term.field is None:
-        return _kind_weights(mesh, dict(term.table))
-    if term.table:
-        return _region_weights(mesh, term.field, dict(term.table))
-    return _field(mesh, term.field)
-
-
-def _field(mesh: Mesh, name: str, *, kinds: str = "biuf") -> Array:
-    """Return a cell field with one number a cell."""
-    if name not in mesh.cell_fields:
-        known = ", ".join(sorted(map(repr, mesh.cell_fields))) or "none"
-        raise WeightError(f"there is no cell field {name!r}; the mesh has {known}")
-    array = np.asarray(mesh.cell_fields[name])
-    if array.ndim == 2 and array.shape[1] == 1:
-        array = array[:, 0]
-    if array.ndim != 1 or array.dtype.kind not in kinds:
-        raise WeightError(
-            f"cell field {name!r} has shape {array.shape} and type {array.dtype}; "
-            "wanted one number a cell"
-        )
-    return array
-
-
-def _face_weights(
-    table: Mapping[str, float], graph: CellGraph | Callable[[], CellGraph] | None
-) -> FloatArray:
-    """Return cost of the cell plus cost of each of its faces, inner and outer."""
-    if graph is None:
-        raise WeightError("weights by face need the cell graph")
-    faces = graph() if callable(graph) else graph
-    count = np.diff(faces.indptr) + faces.boundary_count
-    return np.asarray(table.get("cell", 0.0) + table.get("face", 0.0) * count, np.float64)
-
-
-def _kind_weights(mesh: Mesh, table: Mapping[str, float]) -> FloatArray:
-    """Return the weight of each cell's kind."""
-    by_code = np.full(256, table.get(_OTHER, np.nan))
-    for code, kind in KINDS.items():
-        if kind.name in table:
-            by_code[code] = table[kind.name]
-    weight = by_code[mesh.kind]
-    _refuse_missing(
-        weight, table, [KINDS[code].name for code in np.unique(mesh.kind).tolist()], "kind of cell"
-    )
-    return np.asarray(weight)
-
-
-def _region_weights(mesh: Mesh, name: str, table: Mapping[str, float]) -> FloatArray:
-    """Return the weight of each cell's value in a field."""
-    values, place = np.unique(_field(mesh, name, kinds="biufUS"), return_inverse=True)
-    labels = [_label(value, name) for value in values]
-    weight = np.array([table.get(label, table.get(_OTHER, np.nan)) for label in labels])
-    _refuse_missing(weight, table, labels, f"value of cell field {name!r}")
-    return np.asarray(weight[place], np.float64)
-
-
-def _label(value: object, name: str) -> str:
-    """Return a value of a region field as it is written in a table."""
-    if isinstance(value, bytes):
-        return value.decode(errors="replace")
-    if isinstance(value, (float, np.floating)):
-        if value != np.floor(value):
-            raise WeightError(
-                f"cell field {name!r} holds {value}; regions are whole numbers or text"
-            )
-        return str(int(value))
-    return str(int(value)) if isinstance(value, (bool, np.bool_)) else str(value)
-
-
-def _refuse_missing(
-    weight: Array, table: Mapping[str, float], present: Sequence[str], what: str
-) -> None:
-    """Raise an error for kinds or regions that the table leaves out."""
-    missing = [label for label in present if label not in table]
-    if not missing or _OTHER in table or not np.isnan(weight).any():
-        return
-    shown = ", ".join(missing[:8]) + (", ..." if len(missing) > 8 else "")
-    raise WeightError(f"no weight for {what} {shown}; add it, or other=NUMBER for all the rest")
