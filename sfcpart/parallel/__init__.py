@@ -8,7 +8,8 @@ data travels as bytes, never pickled. `sfcpart manual in_a_solver` has a complet
 from __future__ import annotations
 
 from sfcpart.parallel.columns import Ragged
-from sfcpart.parallel.halo import Exchange, Halo
+from sfcpart.parallel.exchange import Exchange
+from sfcpart.parallel.halo import Halo
 from sfcpart.parallel.lists import ExchangePlan
 from sfcpart.parallel.migrate import migrate
 from sfcpart.parallel.split import split_local

@@ -9,9 +9,8 @@ Cost of an exchange: one copy of the rows sent, one of the rows received, a mess
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass, field
-from typing import TYPE_CHECKING, Any, Literal, TypeAlias
+from typing import TYPE_CHECKING, Any, TypeAlias
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -19,77 +18,16 @@ from numpy.typing import ArrayLike
 from sfcpart.comm import adopt
 from sfcpart.dtypes import Array, Int64Array
 from sfcpart.errors import InputError
+from sfcpart.parallel.exchange import Exchange, Lane, Way, open_lane, pack
 from sfcpart.parallel.gate import agreed, checked_faces, checked_graph
 from sfcpart.parallel.lists import ExchangePlan
 
 if TYPE_CHECKING:
-    from sfcpart.comm.base import Comm, Link
+    from sfcpart.comm.base import Comm
 
-__all__ = ["Exchange", "Halo"]
+__all__ = ["Halo"]
 
-_Way: TypeAlias = Literal["forward", "back"]
-_Form: TypeAlias = tuple[_Way, Any, tuple[int, ...]]
-
-
-@dataclass(frozen=True, eq=False)
-class _Lane:
-    """Buffers and link of the exchanges of one form; one exchange at a time may use it."""
-
-    sent: Array
-    received: Array
-    link: Link
-
-
-class Exchange:
-    """An exchange on its way (`Halo.start`, `Halo.start_back`).
-
-    Parameters
-    ----------
-    lane : buffers of the rows on their way, which nobody else uses meanwhile
-    land : callable
-        Puts what came where it belongs.
-
-    Examples
-    --------
-    >>> from sfcpart.comm import SerialComm
-    >>> halo = Halo.from_cells([], cell_gid=[0, 1], comm=SerialComm())
-    >>> coming = halo.start(np.zeros(2))  # compute what needs no halo; then
-    >>> coming.finish().shape
-    (0,)
-    """
-
-    def __init__(self, lane: _Lane, land: Callable[[_Lane], Array]) -> None:
-        self._lane: _Lane | None = lane
-        self._land = land
-        lane.link.start()
-
-    def finish(self) -> Array:
-        """Wait for the neighbours' rows and put them where they belong.
-
-        Returns
-        -------
-        array
-            What `Halo.exchange` or `Halo.add_back` returns.
-
-        Raises
-        ------
-        InputError
-            If it is called a second time.
-        RankError
-            If a neighbour sent rows of another form.
-
-        Examples
-        --------
-        >>> from sfcpart.comm import SerialComm
-        >>> halo = Halo.from_cells([], cell_gid=[0, 1], comm=SerialComm())
-        >>> halo.start_back(np.ones(2)).finish().tolist()
-        [1.0, 1.0]
-        """
-        if self._lane is None:
-            raise InputError("an exchange is finished twice; start it again first")
-        lane, self._lane = self._lane, None
-        lane.link.finish()
-        return self._land(lane)
+_Form: TypeAlias = tuple[Way, Any, tuple[int, ...]]
 
 
 @dataclass(frozen=True, eq=False)
@@ -124,7 +62,7 @@ class Halo:
 
     comm: Comm
     plan: ExchangePlan
-    _idle: dict[_Form, list[_Lane]] = field(default_factory=dict, init=False, repr=False)
+    _idle: dict[_Form, list[Lane]] = field(default_factory=dict, init=False, repr=False)
 
     @classmethod
     def from_graph(
@@ -341,10 +279,10 @@ class Halo:
         """
         whole = self._checked(array, needs_halo=False)
         lane = self._lane("forward", array)
-        _pack(array, self.plan.send, lane.sent)
+        pack(array, self.plan.send, lane.sent)
         form = self._form("forward", array)
 
-        def land(lane: _Lane) -> Array:
+        def land(lane: Lane) -> Array:
             if whole:
                 array[self.n_owned :] = lane.received
                 halo_rows = array[self.n_owned :]
@@ -419,7 +357,7 @@ class Halo:
         array[self.n_owned :] = 0
         form = self._form("back", array)
 
-        def land(lane: _Lane) -> Array:
+        def land(lane: Lane) -> Array:
             for _, lo, hi in self.plan.targets():  # within one, no row occurs twice
                 array[self.plan.send[lo:hi]] += lane.received[lo:hi]
             self._idle[form].append(lane)
@@ -445,29 +383,13 @@ class Halo:
             raise InputError("the array is read-only; wanted one whose halo rows can be filled")
         return is_whole
 
-    def _form(self, way: _Way, array: Array) -> _Form:
+    def _form(self, way: Way, array: Array) -> _Form:
         """Return what must agree for a lane to be used again."""
         return way, array.dtype, array.shape[1:]
 
-    def _lane(self, way: _Way, array: Array) -> _Lane:
+    def _lane(self, way: Way, array: Array) -> Lane:
         """Take an idle lane for the rows of an array, or make one."""
         idle = self._idle.setdefault(self._form(way, array), [])
         if idle:
             return idle.pop()
-        dtype, trailing = array.dtype.newbyteorder("="), array.shape[1:]
-        at_targets = np.empty((len(self.plan.send), *trailing), dtype)
-        at_sources = np.empty((self.n_halo, *trailing), dtype)
-        send, halo = self.plan.targets(), self.plan.sources()
-        if way == "forward":
-            link = self.comm.link(at_targets, at_sources, targets=send, sources=halo)
-            return _Lane(at_targets, at_sources, link)
-        link = self.comm.link(at_sources, at_targets, targets=halo, sources=send)
-        return _Lane(at_sources, at_targets, link)
-
-
-def _pack(array: Array, rows: Int64Array, out: Array) -> None:
-    """Copy some rows into a buffer."""
-    if array.flags.c_contiguous and array.dtype == out.dtype:
-        np.take(array, rows, axis=0, out=out, mode="clip")  # "raise" would copy once more
-    else:
-        out[...] = array[rows]
+        return open_lane(way, array, plan=self.plan, comm=self.comm)
