@@ -47,8 +47,7 @@ class Frame:
         except InputError as caught:
             error = caught
         comm.check(error)
-        with np.errstate(invalid="ignore"):  # in plain Python an infinite coordinate would warn
-            bounds = np.array(run_ranges(hilbert.bounds_range, len(array), array))
+        bounds = np.array(run_ranges(hilbert.bounds_range, len(array), array))
         first_gid = int(comm.exscan(np.array([len(array)], GID))[0])
         comm.check(_not_finite(array, first_gid) if np.isnan(bounds).any() else None)
         bounds = np.stack([bounds[:, 0].min(axis=0), bounds[:, 1].max(axis=0)])

@@ -14,6 +14,10 @@ from concurrent.futures import ThreadPoolExecutor
 from functools import lru_cache
 from typing import Any
 
+import numpy as np
+
+from sfcpart.kernels._jit import COMPILED
+
 __all__ = ["n_threads", "ranges", "run_ranges"]
 
 
@@ -33,11 +37,23 @@ def ranges(n: int, *, smallest: int = 16_384) -> list[tuple[int, int]]:
 
 def run_ranges(kernel: Callable[..., Any], n: int, *args: Any, smallest: int = 16_384) -> list[Any]:
     """Call `kernel(start, stop, *args)` for each range of `range(n)`; results in range order."""
+    if not COMPILED:
+        kernel = _quiet(kernel)
     pieces = ranges(n, smallest=smallest)
     if len(pieces) == 1:
         return [kernel(0, n, *args)]
     futures = [_pool(len(pieces)).submit(kernel, lo, hi, *args) for lo, hi in pieces]
     return [future.result() for future in futures]
+
+
+def _quiet(kernel: Callable[..., Any]) -> Callable[..., Any]:
+    """Let a plain Python kernel compute with infinities without a word, as a compiled one does."""
+
+    def call(*args: Any) -> Any:
+        with np.errstate(all="ignore"):
+            return kernel(*args)
+
+    return call
 
 
 @lru_cache(maxsize=4)

@@ -4,12 +4,14 @@ from __future__ import annotations
 
 import os
 import threading
+import warnings
 
 import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from sfcpart.kernels.hilbert import bounds_range
 from sfcpart.kernels.threads import n_threads, ranges, run_ranges
 
 
@@ -64,3 +66,13 @@ def test_an_error_in_a_range_reaches_the_caller(monkeypatch):
 
     with pytest.raises(ZeroDivisionError, match="second range"):
         run_ranges(kernel, 20, smallest=10)
+
+
+@pytest.mark.parametrize("n", [3, 100_000])
+def test_infinities_in_a_kernel_are_not_talked_about(n):
+    # Compiled kernels never warn; plain Python ones would, and warnings are errors here.
+    array = np.full((n, 2), np.inf)
+    with warnings.catch_warnings():
+        warnings.simplefilter("error")
+        bounds = run_ranges(bounds_range, n, array)
+    assert np.isnan(bounds).all()
