@@ -15,6 +15,9 @@ from sfcpart.kernels.heap import drop, put
 
 __all__ = ["search_from_seeds"]
 
+HUB = 1000
+"""Vertices of higher degree move as seeds only: looking at them after every move costs too much."""
+
 
 @jit
 def best_move(
@@ -125,7 +128,7 @@ def search_from_seeds(
                 n_moves = 0
             for j in range(indptr[v], indptr[v + 1]):
                 u = indices[j]
-                if done[u]:
+                if done[u] or indptr[u + 1] - indptr[u] > HUB:
                     continue
                 gain, to = best_move(
                     u, indptr, indices, edge_weight, vertex_weight[u], part, room, link, near

@@ -80,8 +80,8 @@ def splits_part(
             if last == 0:
                 queue[0] = u
                 last = 1
-    if wanted == 0:  # the last of its part
-        return True
+    if wanted == 0:  # a piece of its own
+        return False
     met = 1
     mark[queue[0]] = 2
     mark[v] = 2

@@ -62,6 +62,7 @@ def join_pieces(labels: Labels, *, rounds: int = 4) -> None:
     disconnected graph) stay.
     """
     n = labels.graph.n
+    before, overload = labels.part.copy(), labels.overload
     piece, queue = np.empty(n, np.int32), np.empty(n, np.int32)
     indptr, indices, *_ = labels.rows
     for turn in range(rounds):
@@ -78,6 +79,8 @@ def join_pieces(labels: Labels, *, rounds: int = 4) -> None:
             rebalance(labels, reach=100 << turn)
         elif moved == 0:
             break
+    if labels.overload > overload:  # a star, for instance: pieces cannot be had in balance
+        labels.restore(before)
 
 
 def _main_pieces(labels: Labels, piece: Int32Array, count: int) -> np.ndarray:

@@ -15,6 +15,7 @@ import numpy as np
 
 from sfcpart.dtypes import Array, Int32Array
 from sfcpart.methods.coarsen import WeightedGraph
+from sfcpart.methods.labels import cut_of
 from sfcpart.methods.sweep import bisect_along, far_differences, least_cut
 from sfcpart.methods.vcycle import Aim, divide, improve, rank_of
 
@@ -44,8 +45,11 @@ def best_of_many(
         return np.zeros(graph.n, np.int32)
     work = len(graph.indices) + graph.n
     runs = int(np.clip(BUDGET // work, 1, MOST_RUNS)) * starts
+    found = [divide(graph, aim)]
+    if 8 * cut_of(graph, found[0]) > graph.edge_weight.sum():  # much is cut: long borders cost
+        runs = max(starts, runs // 8)
     size = runs if runs < 4 else max(starts, runs // 4)
-    found = [divide(graph, _reseeded(aim, i)) for i in range(size)]
+    found += [divide(graph, _reseeded(aim, i)) for i in range(1, size)]
     if runs >= 4:
         found.append(_swept(graph, aim, directions))
     ranked = [(rank_of(graph, part, aim), part) for part in found]
