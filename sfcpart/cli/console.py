@@ -55,7 +55,10 @@ def print_pairs(rows: list[tuple[str, str]], *, title: str = "") -> None:
 
 
 def print_table(heads: list[str], rows: list[list[str]], *, title: str = "") -> None:
-    """Print a table of numbers, aligned to the right but for its first column."""
+    """Print a table of numbers, aligned to the right but for its first column.
+
+    No number is ever cut short: on a narrow terminal the lines are longer than it is wide.
+    """
     from rich.table import Table
 
     table = Table(box=None, pad_edge=False, padding=(0, 1, 0, 0), header_style="bold")
@@ -63,7 +66,15 @@ def print_table(heads: list[str], rows: list[list[str]], *, title: str = "") -> 
         table.add_column(head, justify="right" if k else "left", no_wrap=True)
     for row in rows:
         table.add_row(*map(_plain, row))
-    _print(title, table)
+    _print(title, table, least_width=_natural_width(heads, rows))
+
+
+def _natural_width(heads: list[str], rows: list[list[str]]) -> int:
+    """Return how wide a table must be to show all of its texts."""
+    from rich.cells import cell_len
+
+    columns = zip(heads, *rows, strict=True)
+    return sum(max(map(cell_len, column)) + 1 for column in columns)
 
 
 def _plain(text: str) -> Any:
@@ -73,11 +84,12 @@ def _plain(text: str) -> Any:
     return Text(text)
 
 
-def _print(title: str, table: Any) -> None:
+def _print(title: str, table: Any, *, least_width: int = 0) -> None:
     """Print a table under its title, without blanks at line ends."""
     from rich.text import Text
 
     out = console()
+    out.width = max(out.width, least_width)
     if title:
         out.print(Text(title, style="bold"))
     if sys.stdout.isatty():
@@ -93,7 +105,8 @@ class Stages:
 
     def __init__(self, *, quiet: bool) -> None:
         self.quiet = quiet
-        self.live = not quiet and sys.stderr.isatty()
+        # a dumb terminal cannot redraw a line
+        self.live = not quiet and sys.stderr.isatty() and os.environ.get("TERM") != "dumb"
         if not quiet and not _is_compiled():
             note("first run: compiling (up to 20 s, once)")
 

@@ -106,8 +106,8 @@ def _facts(survey: Survey) -> list[tuple[str, str]]:
 
 
 def _size(total: float) -> str:
-    """Write the size of a mesh to seven digits: it may have to agree with a drawing."""
-    return f"{total:,.7g}"
+    """Write the size of a mesh in full, as it may have to agree with a drawing."""
+    return f"{total:,.10g}"
 
 
 def _faces(survey: Survey) -> list[tuple[str, str]]:

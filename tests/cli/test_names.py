@@ -58,5 +58,5 @@ def test_a_tolerance_that_swallows_cells_is_refused(sfcpart):
 def test_cells_too_large_to_be_measured_are_refused(size):
     points = size * np.array([[0, 0], [1, 0], [0, 1], [1e-200, 1e-200], [0, 2e-200]])
     mesh = api.Mesh.from_arrays(points, {"triangle": [[0, 3, 4], [0, 1, 2]]})
-    with pytest.raises(MeshError, match="cell 1 is too large to be measured"):
+    with pytest.raises(MeshError, match=r"cell \d is too large to be measured"):
         api.inspect(mesh)

@@ -64,3 +64,14 @@ def test_products_that_overflow_are_refused_in_one_line(sfcpart):
     code, _, err = sfcpart(f"split meshes/channel_mixed.vtu -n 2 -w {wide}*{wide}")
     assert code == 3
     assert err == "sfcpart: error: cell 864 has weight inf; wanted finite numbers >= 0\n"
+
+
+def test_no_number_and_no_name_is_cut_short(sfcpart):
+    name = "a_field_with_a_name_that_is_much_too_long_for_a_terminal_of_eighty_columns_in_width"
+    mesh = meshio.read("meshes/pier_shell.vtk")
+    cells = [np.ones(len(block.data)) for block in mesh.cells]
+    meshio.Mesh(mesh.points, mesh.cells, cell_data={name: cells}).write("long.vtk")
+    out = sfcpart("inspect long.vtk").out
+    assert "\u2026" not in out
+    row = next(line for line in out.splitlines() if line.startswith(name))
+    assert row.split()[1:] == ["float64", "1", "1", f"{sum(map(len, cells)):,}", "yes"]
