@@ -15,7 +15,7 @@ FaceWeight: TypeAlias = Literal["count", "measure"]
 
 FACE_WEIGHTS: tuple[FaceWeight, ...] = ("count", "measure")
 
-_BITS = 40
+_BITS = 20  # a face 10^6 times smaller than the largest costs as good as nothing
 
 
 def face_weights(measure: FloatArray, *, by: FaceWeight) -> Int64Array:
@@ -27,7 +27,7 @@ def face_weights(measure: FloatArray, *, by: FaceWeight) -> Int64Array:
         `CellGraph.data`: face measures >= 0, alike in both directions.
     by : {"count", "measure"}
         1 each; or in proportion to the measure, at least 1, such that all sum up to 2**53 at most
-        and the largest is below 2**40.
+        and the largest is at most 2**20.
 
     Raises
     ------

@@ -22,7 +22,7 @@ def test_weights_are_in_proportion_and_their_sum_is_exact(values):
     assert weight.min() >= 1
     assert sum(weight.tolist()) <= 2**53
     if measure.max() > 0:
-        bits = min(40, 52 - len(values).bit_length())
+        bits = min(20, 52 - len(values).bit_length())
         assert weight.max() >= 2 ** (bits - 1)
         share = measure / measure.max()
         assert np.all(np.abs(weight / weight.max() - share) <= 2.0 ** (2 - bits))
