@@ -33,7 +33,7 @@ SMALLEST = 200
 """Vertices of the coarsest graph."""
 
 BLOCK = 100
-"""A block is split when blocks have about as many vertices."""
+"""A block is split when blocks have about as many vertices (twice as many on large graphs)."""
 
 SMALL = 200_000
 """Graphs up to this many vertices are refined in up to `MANY` sweeps a level, larger ones in 1."""
@@ -105,6 +105,7 @@ def divide(graph: WeightedGraph, aim: Aim) -> Int32Array:
         return np.zeros(graph.n, np.int32)
     levels = _levels(graph, np.zeros(graph.n, np.int32), aim)
     sweeps = MANY if graph.n <= SMALL else 1
+    block = BLOCK if sweeps > 1 else 2 * BLOCK
     part = np.zeros(levels[-1].graph.n, np.int32)
     blocks = [(0, aim.n_parts)]
     for depth in range(len(levels) - 1, -1, -1):
@@ -112,7 +113,7 @@ def divide(graph: WeightedGraph, aim: Aim) -> Int32Array:
         if level.coarse_of is not None:
             part = part[level.coarse_of]
         n, last = level.graph.n, depth == 0
-        while len(blocks) < aim.n_parts and (last or n >= BLOCK * len(blocks)):
+        while len(blocks) < aim.n_parts and (last or n >= block * len(blocks)):
             blocks = _split_blocks(level.graph, part, blocks, aim)
             if len(blocks) < aim.n_parts:
                 _refine(level.graph, part, aim, blocks, finest=False, sweeps=sweeps)
