@@ -22,6 +22,7 @@ __all__ = [
     "PAIR",
     "SPEEDS",
     "Names",
+    "adding",
     "mesh_argument",
     "network_options",
     "output_options",
@@ -154,77 +155,81 @@ def _networks() -> list[str]:
     return list(NETWORKS)
 
 
+def adding(*options: Callable[[Any], Any]) -> Callable[[Function], Function]:
+    """Return a decorator that adds several options to a command, shown in this order."""
+
+    def add(function: Function) -> Function:
+        for option in reversed(options):
+            function = option(function)
+        return function
+
+    return add
+
+
 def mesh_argument(function: Function) -> Function:
     """Add the argument MESH."""
     return click.argument("mesh", type=click.Path())(function)
 
 
-def output_options(function: Function) -> Function:
-    """Add --json and --quiet."""
-    function = click.option(
+output_options = adding(
+    click.option("--json", "as_json", is_flag=True, help="Print JSON and nothing else."),
+    click.option(
         "-q", "--quiet", is_flag=True, help="Print no figures and no progress; errors still are."
-    )(function)
-    return click.option("--json", "as_json", is_flag=True, help="Print JSON and nothing else.")(
-        function
-    )
+    ),
+)
+"""Adds --json and --quiet."""
 
 
-def weight_option(function: Function) -> Function:
-    """Add --weight."""
-    return click.option(
-        "-w",
-        "--weight",
-        "weights",
-        multiple=True,
-        metavar="SPEC",
-        help="Work of each cell; several multiply. A cell field (work), a table by kind of cell "
-        "(tetra=1,other=2) or by region (zone:1=1,2=4,other=1), a mix of cells and faces "
-        "(cell=1,face=0.25), products (work*tetra=1,other=2).",
-    )(function)
+weight_option = click.option(
+    "-w",
+    "--weight",
+    "weights",
+    multiple=True,
+    metavar="SPEC",
+    help="Work of each cell; several multiply. A cell field (work), a table by kind of cell "
+    "(tetra=1,other=2) or by region (zone:1=1,2=4,other=1), a mix of cells and faces "
+    "(cell=1,face=0.25), products (work*tetra=1,other=2).",
+)
 
 
-def network_options(function: Function) -> Function:
-    """Add the numbers of the step model."""
-    options = (
-        click.option(
-            "--network",
-            type=Names("network", _networks),
-            metavar="NAME",
-            default="infiniband-edr",
-            show_default=True,
-            help="Network of the predicted step time: gigabit-ethernet, infiniband-fdr, "
-            "infiniband-edr, infiniband-hdr, infiniband-ndr, shared-memory.",
-        ),
-        click.option("--latency", type=float, metavar="S", help="Own seconds a message."),
-        click.option("--bandwidth", type=float, metavar="B/S", help="Own bytes a second."),
-        click.option(
-            "--cell-seconds",
-            type=float,
-            metavar="S",
-            default=1e-6,
-            show_default=True,
-            help="Work of a mean cell in one step.",
-        ),
-        click.option(
-            "--bytes-per-halo-cell",
-            type=float,
-            metavar="B",
-            default=40.0,
-            show_default=True,
-            help="Bytes sent for a halo cell in one exchange.",
-        ),
-        click.option(
-            "--exchanges",
-            type=float,
-            metavar="N",
-            default=5.0,
-            show_default=True,
-            help="Halo exchanges in one step.",
-        ),
-    )
-    for option in reversed(options):
-        function = option(function)
-    return function
+network_options = adding(
+    click.option(
+        "--network",
+        type=Names("network", _networks),
+        metavar="NAME",
+        default="infiniband-edr",
+        show_default=True,
+        help="Network of the predicted step time: gigabit-ethernet, infiniband-fdr, "
+        "infiniband-edr, infiniband-hdr, infiniband-ndr, shared-memory.",
+    ),
+    click.option("--latency", type=float, metavar="S", help="Own seconds a message."),
+    click.option("--bandwidth", type=float, metavar="B/S", help="Own bytes a second."),
+    click.option(
+        "--cell-seconds",
+        type=float,
+        metavar="S",
+        default=1e-6,
+        show_default=True,
+        help="Work of a mean cell in one step.",
+    ),
+    click.option(
+        "--bytes-per-halo-cell",
+        type=float,
+        metavar="B",
+        default=40.0,
+        show_default=True,
+        help="Bytes sent for a halo cell in one exchange.",
+    ),
+    click.option(
+        "--exchanges",
+        type=float,
+        metavar="N",
+        default=5.0,
+        show_default=True,
+        help="Halo exchanges in one step.",
+    ),
+)
+"""Adds the numbers of the step model."""
 
 
 def step_model(given: dict[str, Any]) -> StepModel:

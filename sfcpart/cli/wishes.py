@@ -2,12 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from typing import Any, TypeVar
+from typing import Any
 
 import click
 
-from sfcpart.cli.options import LEVELS, LIMIT, PAIR, SPEEDS, Names, weight_option
+from sfcpart.cli.options import LEVELS, LIMIT, PAIR, SPEEDS, Names, adding, weight_option
 
 __all__ = [
     "METHOD",
@@ -17,8 +16,6 @@ __all__ = [
     "shape_wish",
     "wish_options",
 ]
-
-Function = TypeVar("Function", bound=Callable[..., Any])
 
 
 def _methods() -> list[str]:
@@ -42,98 +39,92 @@ class MethodOption(click.Option):
         return record[0], record[1].replace("NAMES", ", ".join(_methods()))
 
 
-def wish_options(function: Function) -> Function:
-    """Add what may be wished of the parts."""
-    options = (
-        click.option(
-            "-n",
-            "--parts",
-            "n_parts",
-            type=click.IntRange(min=1),
-            metavar="N",
-            help="Number of parts.",
-        ),
-        click.option(
-            "--levels",
-            type=LEVELS,
-            metavar="AxB",
-            help="Nested parts, such as 4x16: nodes, then cores.",
-        ),
-        click.option(
-            "--tolerance",
-            type=float,
-            default=0.03,
-            show_default=True,
-            metavar="SHARE",
-            help="Imbalance that graph methods, and --cuts least, may use up for a smaller cut.",
-        ),
-        click.option(
-            "--cuts",
-            type=click.Choice(["balanced", "least"]),
-            default="balanced",
-            show_default=True,
-            help="Where methods along a curve cut it: for the least heaviest part, or, within the "
-            "tolerance, to cut few faces.",
-        ),
-        weight_option,
-        click.option(
-            "--speeds",
-            type=SPEEDS,
-            metavar="LIST|FILE",
-            help="Relative speed of each part: 48*1,16*0.5 or a file of numbers.",
-        ),
-        click.option(
-            "--limit",
-            type=LIMIT,
-            metavar="SPEC:MOST",
-            help="A second weight of each cell, spelled like --weight, and the most of it that a "
-            "part may hold: memory:300, or 1:5000 for cells. One number, or one for each part.",
-        ),
-        click.option(
-            "--together",
-            multiple=True,
-            metavar="FIELD",
-            help="Never part cells with equal FIELD >= 0.",
-        ),
-        click.option(
-            "--pairs",
-            type=click.Path(),
-            metavar="FILE",
-            help="Never part the two cells in each line of FILE (text or .npy, cells from 0).",
-        ),
-        click.option(
-            "--periodic",
-            type=PAIR,
-            multiple=True,
-            metavar="A:B",
-            help="Never part the cells on either side of two boundary groups.",
-        ),
-        click.option(
-            "--face-weight",
-            type=click.Choice(["count", "measure"]),
-            default="count",
-            show_default=True,
-            help="What graph methods keep small: how many faces are cut, or how much they measure.",
-        ),
-        click.option(
-            "--seed", type=int, default=0, show_default=True, help="Start of random choices."
-        ),
-        click.option(
-            "--merge-points",
-            type=float,
-            metavar="TOL",
-            help="Merge points nearer than TOL first: closes cracks between blocks.",
-        ),
-        click.option(
-            "--threads",
-            type=click.IntRange(min=1),
-            metavar="T",
-            help="Threads to use (default: all allowed).",
-        ),
-    )
-    for option in reversed(options):
-        function = option(function)
-    return function
+wish_options = adding(
+    click.option(
+        "-n",
+        "--parts",
+        "n_parts",
+        type=click.IntRange(min=1),
+        metavar="N",
+        help="Number of parts.",
+    ),
+    click.option(
+        "--levels",
+        type=LEVELS,
+        metavar="AxB",
+        help="Nested parts, such as 4x16: nodes, then cores.",
+    ),
+    click.option(
+        "--tolerance",
+        type=float,
+        default=0.03,
+        show_default=True,
+        metavar="SHARE",
+        help="Imbalance that graph methods, and --cuts least, may use up for a smaller cut.",
+    ),
+    click.option(
+        "--cuts",
+        type=click.Choice(["balanced", "least"]),
+        default="balanced",
+        show_default=True,
+        help="Where methods along a curve cut it: for the least heaviest part, or, within the "
+        "tolerance, to cut few faces.",
+    ),
+    weight_option,
+    click.option(
+        "--speeds",
+        type=SPEEDS,
+        metavar="LIST|FILE",
+        help="Relative speed of each part: 48*1,16*0.5 or a file of numbers.",
+    ),
+    click.option(
+        "--limit",
+        type=LIMIT,
+        metavar="SPEC:MOST",
+        help="A second weight of each cell, spelled like --weight, and the most of it that a "
+        "part may hold: memory:300, or 1:5000 for cells. One number, or one for each part.",
+    ),
+    click.option(
+        "--together",
+        multiple=True,
+        metavar="FIELD",
+        help="Never part cells with equal FIELD >= 0.",
+    ),
+    click.option(
+        "--pairs",
+        type=click.Path(),
+        metavar="FILE",
+        help="Never part the two cells in each line of FILE (text or .npy, cells from 0).",
+    ),
+    click.option(
+        "--periodic",
+        type=PAIR,
+        multiple=True,
+        metavar="A:B",
+        help="Never part the cells on either side of two boundary groups.",
+    ),
+    click.option(
+        "--face-weight",
+        type=click.Choice(["count", "measure"]),
+        default="count",
+        show_default=True,
+        help="What graph methods keep small: how many faces are cut, or how much they measure.",
+    ),
+    click.option("--seed", type=int, default=0, show_default=True, help="Start of random choices."),
+    click.option(
+        "--merge-points",
+        type=float,
+        metavar="TOL",
+        help="Merge points nearer than TOL first: closes cracks between blocks.",
+    ),
+    click.option(
+        "--threads",
+        type=click.IntRange(min=1),
+        metavar="T",
+        help="Threads to use (default: all allowed).",
+    ),
+)
+"""Adds what may be wished of the parts."""
 
 
 def check_part_count(given: dict[str, Any]) -> None:

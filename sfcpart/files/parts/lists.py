@@ -163,15 +163,7 @@ def read_lists(file: Any, part: int) -> PartLists:
     FileError
         If the file has no lists, was written by a newer sfcpart, or has no such part.
     """
-    if GROUP not in file:
-        raise FileError(f"{file.filename}: has no group /{GROUP}; wanted a file that sfcpart wrote")
-    group = file[GROUP]
-    version = int(group.attrs["format_version"])
-    if version > FORMAT_VERSION:
-        raise FileError(
-            f"{file.filename}: its lists have format {version} and this sfcpart reads up to "
-            f"{FORMAT_VERSION}; use a newer sfcpart"
-        )
+    group = _group_of_lists(file)
     n_parts = int(group.attrs["n_parts"])
     if not 0 <= part < n_parts:
         raise FileError(
@@ -202,6 +194,19 @@ def read_lists(file: Any, part: int) -> PartLists:
         send=group["send"][send_indptr[0] : send_indptr[-1]],
         boundary=tuple(_read_groups(group, part)),
     )
+
+
+def _group_of_lists(file: Any) -> Any:
+    """Return the group of the lists, of a format that is known."""
+    if GROUP not in file:
+        raise FileError(f"{file.filename}: has no group /{GROUP}; wanted a file that sfcpart wrote")
+    version = int(file[GROUP].attrs["format_version"])
+    if version > FORMAT_VERSION:
+        raise FileError(
+            f"{file.filename}: its lists have format {version} and this sfcpart reads up to "
+            f"{FORMAT_VERSION}; use a newer sfcpart"
+        )
+    return file[GROUP]
 
 
 def write_groups(file: Any, groups: Iterable[GroupByPart]) -> None:
