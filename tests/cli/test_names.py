@@ -7,6 +7,7 @@ import os
 import shutil
 from pathlib import Path
 
+import meshio
 import numpy as np
 import pytest
 
@@ -38,6 +39,16 @@ def test_a_folder_of_pieces_can_be_assessed_but_not_loaded_by_a_solver(sfcpart):
     Path("bare").mkdir()
     with pytest.raises(FileError, match="wanted a folder that a split wrote"):
         api.read_part("bare", 0)
+
+
+def test_a_msh_file_that_is_not_gmsh_is_told_apart(sfcpart):
+    points = np.array([[0, 0, 0], [1, 0, 0], [1, 1, 0], [0, 1, 0]], float)
+    mesh = meshio.Mesh(points, {"triangle": np.array([[0, 1, 2], [0, 2, 3]])})
+    mesh.write("two.msh", file_format="ansys")
+    assert sfcpart("split two.msh -n 2").code == 0
+    code, _, err = sfcpart("split two.msh -n 2 -o parts --format same")
+    assert code == 4
+    assert "its format (ansys) cannot carry fields of cells; write vtkhdf or vtu instead" in err
 
 
 def test_an_empty_name_is_no_file_to_write(sfcpart):

@@ -66,6 +66,7 @@ _SIGNATURES: tuple[tuple[str, re.Pattern[bytes]], ...] = (
     ("hdf5", re.compile(rb"\x89HDF\r\n\x1a\n")),
     ("vtk", re.compile(rb"# vtk DataFile Version")),
     ("gmsh", re.compile(rb"\s*\$(MeshFormat|Comments)\s")),
+    ("ansys", re.compile(rb"\s*\([01]\s+\"")),
     ("ply", re.compile(rb"ply\r?\n")),
     ("medit", re.compile(rb"\s*MeshVersionFormatted\s")),
     ("off", re.compile(rb"OFF\s")),
