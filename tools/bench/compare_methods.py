@@ -142,29 +142,31 @@ def show_layers(methods: Sequence[str], repeat: int, size: int) -> None:
 
 
 def show_tolerance(methods: Sequence[str], repeat: int, size: int) -> None:
-    """Table of what balance costs in cut and gains in steps."""
+    """Table of what balance costs in cut and gains in steps, for large and for small parts."""
     mesh = reference(size)
     graph = cell_graph(mesh)
     models = [StepModel.from_preset(name) for name in ("gigabit-ethernet", "infiniband-edr")]
-    print("| method | tolerance | imbalance | cut | step, gigabit | step, EDR |")
-    print("|---|---:|---:|---:|---:|---:|")
-    base: list[dict[str, Any]] = []
-    for name in methods:
-        for tolerance in (0.0, 0.003, 0.01, 0.03) if METHODS[name].needs_graph else (0.0,):
-            partition = sfcpart.split(mesh, 64, method=name, tolerance=tolerance)
-            found = [
-                dict(assess_partition(mesh, graph, partition, step_model=model).total)
-                for model in models
-            ]
-            base = base or found
-            steps = [
-                a["step_seconds"] / b["step_seconds"] for a, b in zip(found, base, strict=True)
-            ]
-            cut = found[0]["cut_faces"] / base[0]["cut_faces"]
-            print(
-                f"| `{name}` | {100 * tolerance:g} % | {100 * found[0]['imbalance']:.2f} % | "
-                f"{cut:.3f} | {steps[0]:.4f} | {steps[1]:.4f} |"
-            )
+    print("| parts | method | tolerance | imbalance | cut | step, gigabit | step, EDR |")
+    print("|---:|---|---:|---:|---:|---:|---:|")
+    for n_parts in (64, 1024):
+        base: list[dict[str, Any]] = []
+        for name in methods:
+            for tolerance in (0.0, 0.003, 0.01, 0.03) if METHODS[name].needs_graph else (0.0,):
+                partition = sfcpart.split(mesh, n_parts, method=name, tolerance=tolerance)
+                found = [
+                    dict(assess_partition(mesh, graph, partition, step_model=model).total)
+                    for model in models
+                ]
+                base = base or found
+                print(f"| {n_parts:,} | `{name}` | {100 * tolerance:g} % | {beside(found, base)} |")
+
+
+def beside(found: Sequence[dict[str, Any]], base: Sequence[dict[str, Any]]) -> str:
+    """Write imbalance, cut and steps of a split beside a base, for each network."""
+    steps = [a["step_seconds"] / b["step_seconds"] for a, b in zip(found, base, strict=True)]
+    cut = found[0]["cut_faces"] / base[0]["cut_faces"]
+    ratios = " | ".join(f"{step:.3f}" for step in steps)
+    return f"{100 * found[0]['imbalance']:.2f} % | {cut:.3f} | {ratios}"
 
 
 def show_cells(methods: Sequence[str], repeat: int, size: int) -> None:
