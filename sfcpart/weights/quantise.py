@@ -199,5 +199,5 @@ def _vanishing(
     cell = int(comm.allreduce(place, "min")[0])
     return WeightError(
         f"cell {cell} has a {what} so huge that all others vanish beside it; "
-        "the sum of the others is large enough to keep a cell alone"
+        "as much as the sum of the others is enough to keep a cell alone"
     )
