@@ -1,7 +1,7 @@
 """The cell graph: which cells share a face, and how large that face is.
 
 Faces are matched by the set of their distinct corners, exactly: a counting sort by smallest
-corner, then a sort of the few faces of each bucket (`sfcpart.kernels.faces`). O(faces) in time
+corner, then a sort of the few faces of each bucket (`sfcpart.kernels.mesh.faces`). O(faces) in time
 while few faces share their smallest corner, and little more where many do; deterministic for any
 number of threads.
 """

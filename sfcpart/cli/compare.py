@@ -91,8 +91,10 @@ def command(mesh: str, **given: Any) -> None:
     from sfcpart.cli.console import Stages, print_json
     from sfcpart.cli.inputs import read_mesh
     from sfcpart.cli.wishes import load_wish, shape_wish
+    from sfcpart.methods.registry import METHODS
 
-    doing = Stages(quiet=given["quiet"] or given["as_json"])
+    quiet = given["quiet"] or given["as_json"]
+    doing = Stages(quiet=quiet, methods=given["methods"] or list(METHODS))
     with doing(f"reading {mesh}"):
         loaded = read_mesh(mesh, merge_points=given["merge_points"])
         others = {name: _parts(loaded, place) for name, place in given["given_parts"]}

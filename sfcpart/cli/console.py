@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import os
 import sys
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -103,12 +103,13 @@ def _print(title: str, table: Any, *, least_width: int = 0) -> None:
 class Stages:
     """Tells a person at a terminal what is being done and for how long; silent elsewhere."""
 
-    def __init__(self, *, quiet: bool) -> None:
+    def __init__(self, *, quiet: bool, methods: Sequence[str] = ("hilbert",)) -> None:
         self.quiet = quiet
         # a dumb terminal cannot redraw a line
         self.live = not quiet and sys.stderr.isatty() and os.environ.get("TERM") != "dumb"
-        if not quiet and not _is_compiled():
-            note("first run: compiling (up to 20 s, once)")
+        cold = [] if quiet else [room for room in _rooms(methods) if not _is_compiled(room)]
+        if cold:
+            note(f"first run: compiling (up to {20 * len(cold)} s, once)")
 
     @contextmanager
     def __call__(self, text: str) -> Iterator[None]:
@@ -124,28 +125,37 @@ class Stages:
             yield
 
 
-def _is_compiled() -> bool:
-    """Tell whether compiled kernels of this installation are on disk, or none will be needed."""
+def _rooms(methods: Sequence[str]) -> list[str]:
+    """Name the rooms of kernels that methods use."""
+    from sfcpart.methods.registry import METHODS
+
+    known = [METHODS[name] for name in methods if name in METHODS]
+    return ["curve", "graph"] if any(method.needs_graph for method in known) else ["curve"]
+
+
+def _is_compiled(room: str) -> bool:
+    """Tell whether compiled kernels of a room are on disk, or none will be needed."""
     if os.environ.get("SFCPART_COMPILE") == "0":
         return True
     import sfcpart
 
     kernels = Path(sfcpart.__file__).parent / "kernels"
-    return any(_is_fresh(index, kernels) for index in _compiled_files(kernels))
+    sources = {source.stem: source for source in (kernels / room).glob("*.py")}
+    return any(_is_fresh(index, sources) for index in _compiled_files(kernels, room))
 
 
-def _is_fresh(index: Path, kernels: Path) -> bool:
+def _is_fresh(index: Path, sources: dict[str, Path]) -> bool:
     """Tell whether an index is newer than its kernel: an update leaves old ones behind."""
-    source = kernels / f"{index.name.split('.')[0]}.py"
-    return source.is_file() and index.stat().st_mtime >= source.stat().st_mtime
+    source = sources.get(index.name.split(".")[0])
+    return source is not None and index.stat().st_mtime >= source.stat().st_mtime
 
 
-def _compiled_files(kernels: Path) -> list[Path]:
+def _compiled_files(kernels: Path, room: str) -> list[Path]:
     """List the indexes of compiled kernels, where numba's documentation says that they go."""
     if os.environ.get("NUMBA_CACHE_DIR"):
         return list(Path(os.environ["NUMBA_CACHE_DIR"]).rglob("*.nbi"))
-    here = list((kernels / "__pycache__").glob("*.nbi"))
+    here = list((kernels / room / "__pycache__").glob("*.nbi"))
     if here or os.access(kernels, os.W_OK):
         return here
     caches = os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache"
-    return list(Path(caches, "numba").glob("kernels_*/*.nbi"))
+    return list(Path(caches, "numba").glob(f"{room}_*/*.nbi"))

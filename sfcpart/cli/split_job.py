@@ -31,7 +31,7 @@ class SplitJob:
         self.step_model = step_model
         self.formats = options.pop("formats") or ("vtkhdf",)
         self.source = options.pop("mesh")
-        self.doing = Stages(quiet=quiet)
+        self.doing = Stages(quiet=quiet, methods=[options["method"]])
 
     def run(self) -> None:
         """Do the work; an output folder that cannot be used is refused before it."""

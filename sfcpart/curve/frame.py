@@ -14,7 +14,7 @@ from numpy.typing import ArrayLike
 from sfcpart.comm.base import Comm
 from sfcpart.dtypes import COORDINATE, GID, KEY, FloatArray, Int64Array, IntArray
 from sfcpart.errors import InputError
-from sfcpart.kernels import hilbert
+from sfcpart.kernels.curve import hilbert
 from sfcpart.kernels.threads import run_ranges
 
 __all__ = ["CURVES", "Curve", "Frame"]

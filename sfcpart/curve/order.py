@@ -14,7 +14,7 @@ from sfcpart.comm import SerialComm
 from sfcpart.comm.base import Comm
 from sfcpart.curve.frame import Curve, Frame
 from sfcpart.dtypes import GID, KEY, Array, Int64Array, IntArray, index_dtype
-from sfcpart.kernels.radix import put_rows, sorting, survey, take_rows
+from sfcpart.kernels.curve.radix import put_rows, sorting, survey, take_rows
 
 __all__ = ["CurveSlice", "curve_order", "curve_slice"]
 

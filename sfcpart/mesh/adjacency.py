@@ -21,8 +21,8 @@ from sfcpart.dtypes import (
     index_dtype,
 )
 from sfcpart.errors import MeshError
-from sfcpart.kernels import face_match, face_rows, faces
-from sfcpart.kernels.cells import CellArrays
+from sfcpart.kernels.mesh import face_match, face_rows, faces
+from sfcpart.kernels.mesh.cells import CellArrays
 from sfcpart.kernels.threads import n_threads, run_ranges
 from sfcpart.mesh.cell_arrays import spell_out
 from sfcpart.mesh.kinds import MAX_CORNERS, POLYGON, POLYHEDRON, TETRA
@@ -115,7 +115,7 @@ def join_cells(mesh: Mesh) -> Adjacency:
 
 
 def _match(mesh: Mesh, cells: CellArrays, slots: _Slots) -> tuple[Int64Array, Int32Array]:
-    """Return mate and measure of each slot, and the slots by bucket (`kernels/faces.py`)."""
+    """Return mate and measure of each slot, and the slots by bucket (`kernels/mesh/faces.py`)."""
     n_blocks = max(1, min(n_threads(), _MOST_BLOCKS, mesh.n_cells // 16_384))
     bounds = np.linspace(0, mesh.n_cells, n_blocks + 1).astype(OFFSET)
     count = np.zeros((n_blocks, mesh.n_points), np.int32)

@@ -17,7 +17,7 @@ from sfcpart.mesh.kinds import KINDS, kind_tables
 from sfcpart.mesh.pieces import BoundaryGroup, FaceList, Polyhedra
 
 if TYPE_CHECKING:
-    from sfcpart.kernels.cells import CellArrays
+    from sfcpart.kernels.mesh.cells import CellArrays
 
 __all__ = ["MeshArrays"]
 
@@ -95,7 +95,7 @@ class MeshArrays:
         return value
 
     def cell_arrays(self) -> CellArrays:
-        """Return the cells as kernels take them (`sfcpart.kernels.cells.CellArrays`)."""
+        """Return the cells as kernels take them (`sfcpart.kernels.mesh.cells.CellArrays`)."""
         cells = (self.kind, self.indptr, self.indices, self.polyhedra)
         return self.keep("cell_arrays", lambda: bundle(*cells))
 

@@ -12,7 +12,7 @@ from sfcpart.mesh.kinds import KINDS, POLYHEDRON, kind_tables
 from sfcpart.mesh.pieces import Polyhedra
 
 if TYPE_CHECKING:
-    from sfcpart.kernels.cells import CellArrays
+    from sfcpart.kernels.mesh.cells import CellArrays
 
 __all__ = ["bundle", "most_corners", "spell_out"]
 
@@ -21,7 +21,7 @@ def bundle(
     kind: KindArray, indptr: Int64Array, indices: IntArray, faces: Polyhedra | None
 ) -> CellArrays:
     """Bundle the cells with the tables of kinds."""
-    from sfcpart.kernels.cells import CellArrays
+    from sfcpart.kernels.mesh.cells import CellArrays
 
     tables = kind_tables()
     none, one = frozen(np.empty(0, indices.dtype)), frozen(np.zeros(1, OFFSET))

@@ -167,7 +167,7 @@ def check_cells(mesh: Mesh) -> CellCheck:
 
 def _edges(mesh: Mesh) -> tuple[FloatArray, FloatArray]:
     """Measure the shortest and longest edge of each cell."""
-    from sfcpart.kernels.edges import edge_lengths
+    from sfcpart.kernels.mesh.edges import edge_lengths
 
     shortest, longest = np.empty(mesh.n_cells), np.empty(mesh.n_cells)
     run_ranges(edge_lengths, mesh.n_cells, mesh.points, mesh.cell_arrays(), shortest, longest)

@@ -16,7 +16,7 @@ from sfcpart.mesh.cell_arrays import most_corners
 from sfcpart.mesh.kinds import POLYHEDRON
 
 if TYPE_CHECKING:
-    from sfcpart.kernels.cells import CellArrays
+    from sfcpart.kernels.mesh.cells import CellArrays
 
 __all__ = ["centers_and_signed_measures"]
 
@@ -56,7 +56,7 @@ def centers_and_signed_measures(
     >>> centers.tolist(), measures.tolist()
     ([[1.0, 1.0]], [-4.5])
     """
-    from sfcpart.kernels.cells import ring_geometry, solid_geometry
+    from sfcpart.kernels.mesh.cells import ring_geometry, solid_geometry
 
     n_cells = len(cells.kind)
     centers = np.empty((n_cells, space_dim), COORDINATE)
@@ -66,7 +66,7 @@ def centers_and_signed_measures(
     run_ranges(kernel, n_cells, *shape)
     chosen = np.flatnonzero(cells.kind == POLYHEDRON)
     if len(chosen):
-        from sfcpart.kernels.polyhedra import polyhedron_geometry
+        from sfcpart.kernels.mesh.polyhedra import polyhedron_geometry
 
         run_ranges(polyhedron_geometry, len(chosen), chosen, *shape, smallest=1024)
     return centers, measures

@@ -7,9 +7,9 @@ from dataclasses import dataclass
 from types import MappingProxyType
 
 from sfcpart.dtypes import Int32Array
-from sfcpart.methods.along_curve import along_hilbert, along_morton, along_rows
-from sfcpart.methods.bisect import coordinate, inertial, spectral
-from sfcpart.methods.on_graph import multilevel, smoothed
+from sfcpart.methods.bisection.bisect import coordinate, inertial, spectral
+from sfcpart.methods.curve.along_curve import along_hilbert, along_morton, along_rows
+from sfcpart.methods.graph.on_graph import multilevel, smoothed
 from sfcpart.methods.problem import Problem
 
 __all__ = ["METHODS", "Method"]

@@ -146,8 +146,10 @@ def test_first_run_says_that_it_compiles(tmp_path, monkeypatch, capsys):
     console.Stages(quiet=False)
     assert capsys.readouterr().err == "sfcpart: first run: compiling (up to 20 s, once)\n"
     console.Stages(quiet=True)
-    (tmp_path / "kernels").mkdir()
-    index = tmp_path / "kernels" / "cells.count-1.py311.nbi"
+    console.Stages(quiet=False, methods=["multilevel"])
+    assert "up to 40 s" in capsys.readouterr().err
+    (tmp_path / "curve_0").mkdir()
+    index = tmp_path / "curve_0" / "hilbert.count-1.py311.nbi"
     index.touch()
     console.Stages(quiet=False)
     assert capsys.readouterr().err == ""

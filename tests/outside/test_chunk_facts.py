@@ -10,8 +10,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from sfcpart.comm import SerialComm
-from sfcpart.methods.chunks import cut_line
-from sfcpart.methods.line import Line
+from sfcpart.methods.curve.chunks import cut_line
+from sfcpart.methods.curve.line import Line
 from sfcpart.methods.problem import Problem
 from sfcpart.methods.registry import METHODS
 from tests.oracles.chunks import bottleneck_of, lattice_cut, least_bottleneck

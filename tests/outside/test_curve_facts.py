@@ -9,7 +9,7 @@ import pytest
 from scipy.sparse.csgraph import connected_components
 
 from sfcpart.curve import curve_keys, curve_order
-from sfcpart.kernels.hilbert import BITS, skilling_index
+from sfcpart.kernels.curve.hilbert import BITS, skilling_index
 from tests.oracles.lattices import lattice_graph
 
 

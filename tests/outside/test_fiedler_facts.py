@@ -15,8 +15,8 @@ from scipy.sparse import csr_array
 from scipy.sparse.csgraph import laplacian
 from scipy.sparse.linalg import eigsh
 
-from sfcpart.methods.coarsen import WeightedGraph
-from sfcpart.methods.fiedler import fiedler_vector, spectral_line
+from sfcpart.methods.bisection.fiedler import fiedler_vector, spectral_line
+from sfcpart.methods.graph.coarsen import WeightedGraph
 
 
 def weighted(graph: nx.Graph) -> WeightedGraph:

@@ -10,7 +10,7 @@ import pytest
 from scipy.optimize import Bounds, LinearConstraint, milp
 from scipy.sparse import coo_array, csr_array, lil_array
 
-from sfcpart.methods.multilevel import split_graph
+from sfcpart.methods.graph.multilevel import split_graph
 
 
 def cut(matrix, part) -> int:

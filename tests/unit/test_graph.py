@@ -253,7 +253,7 @@ def test_given_faces_are_sorted_into_rows(n, seed):
 
 
 def test_more_faces_than_can_be_numbered_are_refused(monkeypatch):
-    from sfcpart.kernels import faces
+    from sfcpart.kernels.mesh import faces
 
     monkeypatch.setattr(faces, "ID_LIMIT", 24)
     assert cell_graph(grid((2, 1, 1))).n_faces == 1

@@ -1,6 +1,6 @@
 """Bisection and least cuts along a curve: cut, imbalance, time on the reference mesh.
 
-The figures in `methods/bisect.py` and `methods/window_cuts.py` come from here:
+The figures in `methods/bisection/bisect.py` and `methods/curve/window_cuts.py` come from here:
 
     python tools/bench/classics.py [POINTS]
 

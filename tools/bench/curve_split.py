@@ -21,7 +21,7 @@ import numpy as np
 
 from sfcpart.comm import SerialComm
 from sfcpart.curve import curve_keys, curve_order
-from sfcpart.kernels.radix import stable_order
+from sfcpart.kernels.curve.radix import stable_order
 from sfcpart.kernels.threads import n_threads, run_ranges
 from sfcpart.methods.problem import Problem
 from sfcpart.methods.registry import METHODS

@@ -116,7 +116,7 @@ def _cells_of(
     group: BoundaryGroup, relation: tuple[Int64Array, Int64Array], mesh: Mesh
 ) -> Int64Array:
     """Return up to two cells that hold each element, (n, 2), -1 where there is none."""
-    from sfcpart.kernels.elements import cells_with_points
+    from sfcpart.kernels.mesh.elements import cells_with_points
 
     found = np.full((len(group.kind), 2), -1, np.int64)
     rows = (group.indptr, group.indices, *relation, mesh.indptr, mesh.indices)

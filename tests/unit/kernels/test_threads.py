@@ -11,7 +11,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from sfcpart.kernels.hilbert import bounds_range
+from sfcpart.kernels.curve.hilbert import bounds_range
 from sfcpart.kernels.threads import n_threads, ranges, run_ranges
 
 

@@ -1,0 +1,1 @@
+"""Loops over keys and places on a curve."""

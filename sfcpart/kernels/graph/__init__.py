@@ -1,0 +1,1 @@
+"""Loops over vertices and edges of a graph with parts."""

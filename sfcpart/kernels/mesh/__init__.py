@@ -1,0 +1,1 @@
+"""Loops over cells and their faces."""

@@ -1,0 +1,1 @@
+"""Halving again and again: by coordinates, inertia, or the spectrum of the graph."""

@@ -1,0 +1,1 @@
+"""Contiguous chunks of a curve."""

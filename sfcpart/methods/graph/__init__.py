@@ -1,0 +1,1 @@
+"""Splitting and refining on the cell graph, or any graph."""
