@@ -5,6 +5,7 @@
     python tools/bench/compare_methods.py cells       # doubling cells at fixed parts
     python tools/bench/compare_methods.py parts       # 16 to 4096 parts of one mesh
     python tools/bench/compare_methods.py tolerance   # balance against cut, in predicted steps
+    python tools/bench/compare_methods.py starts      # smoothing of other starts than the curve
 
 `reference`: Delaunay tetrahedra of 160,000 points of `numpy.random.default_rng(0)` (1.08e6 cells).
 `layers`: the Skerry Channel with hexahedra at the bed (aspect ratio printed) below wedges, faces
@@ -38,7 +39,11 @@ from sfcpart.mesh.mesh import Mesh
 from sfcpart.mesh.shape import extrude
 from sfcpart.mesh.shapes import jittered_tets
 from sfcpart.meter import metered
+from sfcpart.methods.graph.coarsen import WeightedGraph
+from sfcpart.methods.graph.smooth import smooth
+from sfcpart.methods.graph.vcycle import Aim
 from sfcpart.methods.registry import METHODS
+from sfcpart.partition import Partition
 
 SLOW = ("spectral",)  # timed once
 TOLERANCE = 0.03
@@ -169,6 +174,34 @@ def beside(found: Sequence[dict[str, Any]], base: Sequence[dict[str, Any]]) -> s
     return f"{100 * found[0]['imbalance']:.2f} % | {cut:.3f} | {ratios}"
 
 
+def show_starts(methods: Sequence[str], repeat: int, size: int) -> None:
+    """Table of what smoothing makes of different starts, on the reference mesh and wall layers."""
+    sfcpart.split(jittered_tets((9, 9, 9)).to_mesh(), 8, method="smoothed")  # compiles
+    print("| mesh | start | its cut | smoothed | imbalance | parts in pieces | processor seconds |")
+    print("|---|---|---:|---:|---:|---:|---:|")
+    for label, mesh in (("tets", reference(size)), ("layers", wall_layers(130)[0])):
+        graph, base = cell_graph(mesh), 0.0
+        vertices = WeightedGraph(
+            graph.indptr,
+            graph.indices.astype(np.int32),
+            np.ones(len(graph.indices), np.int64),
+            np.ones(mesh.n_cells, np.int64),
+        )
+        aim = Aim.of(mesh.n_cells, np.ones(64), TOLERANCE)
+        for name in methods:
+            start = sfcpart.split(mesh, 64, method=name)
+            began = time.process_time()
+            better = Partition.from_array(smooth(vertices, start.cell_part.copy(), aim), 64)
+            took = time.process_time() - began
+            cut = float(assess_partition(mesh, graph, start).total["cut_faces"] or 0)
+            total = dict(assess_partition(mesh, graph, better).total)
+            base = base or cut
+            print(
+                f"| {label} | `{name}` | {cut / base:.3f} | {total['cut_faces'] / base:.3f} | "
+                f"{100 * total['imbalance']:.2f} % | {total['n_split_parts']} | {took:.2f} |"
+            )
+
+
 def show_cells(methods: Sequence[str], repeat: int, size: int) -> None:
     """Growth with the number of cells, for 64 parts."""
     growth_head("cells", methods)
@@ -219,6 +252,7 @@ WHAT = {
     "reference": (show_reference, 160_000, tuple(METHODS)),
     "layers": (show_layers, 130, tuple(METHODS)),
     "tolerance": (show_tolerance, 160_000, ("hilbert", "coordinate", "smoothed", "multilevel")),
+    "starts": (show_starts, 160_000, ("hilbert", "coordinate", "inertial")),
     "cells": (show_cells, 250_000, ("hilbert", "smoothed", "multilevel", "coordinate")),
     "parts": (show_parts, 500_000, ("hilbert", "smoothed", "multilevel", "coordinate")),
 }
