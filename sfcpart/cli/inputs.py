@@ -28,11 +28,11 @@ def read_mesh(path: str, *, merge_points: float | None = None) -> Mesh:
 
     Where the file tells its size, that is settled before it is read.
     """
-    from sfcpart import api
+    from sfcpart.files.meshes import read  # not the api, which loads kernels
     from sfcpart.memory import check_memory, memory_for_file, memory_for_mesh
 
     check_memory(memory_for_file(path), path)
-    mesh = api.read_mesh(path)
+    mesh = read.read_mesh(path)
     check_memory(memory_for_mesh(mesh), path)
     return mesh if merge_points is None else mesh.with_points_merged(merge_points)
 

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from sfcpart import api
 from sfcpart.cli.console import Stages, print_json
 from sfcpart.cli.figures import counted, headline, print_assessment
 from sfcpart.cli.inputs import read_mesh
@@ -53,6 +52,8 @@ class SplitJob:
 
     def _split(self, load: dict[str, Any]) -> None:
         """Split with the weights, speeds and limits of `load`."""
+        from sfcpart import api
+
         given = self.options
         self.partition = api.split(
             self.mesh, given["n_parts"], method=given["method"], **shape_wish(given), **load
@@ -60,10 +61,14 @@ class SplitJob:
 
     def _measure(self, load: dict[str, Any]) -> None:
         """Measure with the same."""
+        from sfcpart import api
+
         self.assessment = api.assess(self.mesh, self.partition, step_model=self.step_model, **load)
 
     def _write(self) -> None:
         """Write the folder."""
+        from sfcpart import api
+
         given = self.options
         api.write_split(
             given["output"],

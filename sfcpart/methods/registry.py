@@ -1,16 +1,19 @@
-"""The ways to split, by name: every one is a function from a problem to parts."""
+"""The ways to split, by name: every one is a function from a problem to parts.
+
+The function is imported on first use: the table alone loads no kernel.
+"""
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
+from importlib import import_module
 from types import MappingProxyType
+from typing import TYPE_CHECKING, cast
 
-from sfcpart.dtypes import Int32Array
-from sfcpart.methods.bisection.bisect import coordinate, inertial, spectral
-from sfcpart.methods.curve.along_curve import along_hilbert, along_morton, along_rows
-from sfcpart.methods.graph.on_graph import multilevel, smoothed
-from sfcpart.methods.problem import Problem
+if TYPE_CHECKING:
+    from sfcpart.dtypes import Int32Array
+    from sfcpart.methods.problem import Problem
 
 __all__ = ["METHODS", "Method"]
 
@@ -22,8 +25,8 @@ class Method:
     Attributes
     ----------
     name : str
-    run : callable
-        `run(problem)` returns the part of each local cell, (n_local,) int32.
+    home : str
+        Module under `sfcpart.methods` and function, as "room.module:function".
     needs_graph : bool
         Whether it asks for the cell graph.
     summary : str
@@ -31,9 +34,15 @@ class Method:
     """
 
     name: str
-    run: Callable[[Problem], Int32Array]
+    home: str
     needs_graph: bool
     summary: str
+
+    def run(self, problem: Problem) -> Int32Array:
+        """Return the part of each local cell, (n_local,) int32."""
+        module, _, function = self.home.partition(":")
+        split = getattr(import_module(f"sfcpart.methods.{module}"), function)
+        return cast("Int32Array", split(problem))
 
 
 METHODS: Mapping[str, Method] = MappingProxyType(
@@ -42,49 +51,49 @@ METHODS: Mapping[str, Method] = MappingProxyType(
         for method in (
             Method(
                 name="hilbert",
-                run=along_hilbert,
+                home="curve.along_curve:along_hilbert",
                 needs_graph=False,
                 summary="contiguous chunks of the Hilbert curve, least bottleneck",
             ),
             Method(
                 name="morton",
-                run=along_morton,
+                home="curve.along_curve:along_morton",
                 needs_graph=False,
                 summary="contiguous chunks of the Morton (Z-order) curve; a baseline",
             ),
             Method(
                 name="rows",
-                run=along_rows,
+                home="curve.along_curve:along_rows",
                 needs_graph=False,
                 summary="strips of cells row after row; a baseline",
             ),
             Method(
                 name="smoothed",
-                run=smoothed,
+                home="graph.on_graph:smoothed",
                 needs_graph=True,
                 summary="chunks of the Hilbert curve, borders moved to where they cut less",
             ),
             Method(
                 name="multilevel",
-                run=multilevel,
+                home="graph.on_graph:multilevel",
                 needs_graph=True,
                 summary="multilevel partition of the cell graph; the least cut, the most time",
             ),
             Method(
                 name="coordinate",
-                run=coordinate,
+                home="bisection.bisect:coordinate",
                 needs_graph=False,
                 summary="recursive bisection across the longest side; a baseline",
             ),
             Method(
                 name="inertial",
-                run=inertial,
+                home="bisection.bisect:inertial",
                 needs_graph=False,
                 summary="recursive bisection across the principal axis; a baseline",
             ),
             Method(
                 name="spectral",
-                run=spectral,
+                home="bisection.bisect:spectral",
                 needs_graph=True,
                 summary="recursive bisection along Fiedler vectors of the cell graph; a baseline",
             ),

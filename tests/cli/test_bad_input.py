@@ -161,7 +161,7 @@ def test_huge_weights_still_balance_or_are_refused(sfcpart):
 def test_a_mesh_too_large_for_the_memory_is_refused_before_it_is_read(sfcpart, monkeypatch, verb):
     monkeypatch.setattr("sfcpart.memory.memory_left", lambda: 1000)
     monkeypatch.setattr("sfcpart.memory.resident_memory", lambda: 100_000_000)
-    monkeypatch.setattr("sfcpart.api.read_mesh", None)
+    monkeypatch.setattr("sfcpart.files.meshes.read.read_mesh", None)
     ended = sfcpart(f"{verb} meshes/kelvin_cells.vtkhdf")
     assert ended.code == 6
     assert "a split needs about 0.2 GB of memory, 0.1 GB are there" in ended.err

@@ -125,15 +125,15 @@ def test_a_full_disk_is_said_in_one_line(tmp_path):
 def test_notes_of_the_library_become_single_lines(sfcpart, monkeypatch):
     import warnings
 
-    from sfcpart import api
+    from sfcpart.files.meshes import read
 
-    whole = api.read_mesh
+    whole = read.read_mesh
 
     def noisy(path):
         warnings.warn("the file is\nodd", stacklevel=2)
         return whole(path)
 
-    monkeypatch.setattr(api, "read_mesh", noisy)
+    monkeypatch.setattr(read, "read_mesh", noisy)
     ended = sfcpart("split meshes/turbine.vtu -n 2 -q")
     assert (ended.code, ended.err) == (0, "sfcpart: note: the file is odd\n")
 
