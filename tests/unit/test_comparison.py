@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from collections.abc import Callable
 from types import MappingProxyType
 
 import numpy as np
@@ -11,11 +12,13 @@ import pytest
 import sfcpart
 from sfcpart import comparison as module
 from sfcpart.comparison import COMPARED_COLUMNS, Comparison
+from sfcpart.dtypes import Int32Array
 from sfcpart.errors import InputError, PartitionError, WeightError
 from sfcpart.kernels._jit import COMPILED
 from sfcpart.measure.columns import TOTAL_COLUMNS
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.mesh.shapes import jittered_tets, lattice
+from sfcpart.methods.problem import Problem
 from sfcpart.methods.registry import METHODS, Method
 from sfcpart.partition import Partition
 from tests.assertions import assert_partition
@@ -25,8 +28,19 @@ def _strict(value: object) -> object:
     return json.loads(json.dumps(value, allow_nan=False))
 
 
-def _quick(name: str, run, *, needs_graph: bool = False) -> Method:
-    return Method(name=name, run=run, needs_graph=needs_graph, summary="for a test")
+class _Quick(Method):
+    """A method made here, without a home."""
+
+    def __init__(self, name: str, split: Callable[[Problem], Int32Array], needs_graph: bool):
+        super().__init__(name=name, home="", needs_graph=needs_graph, summary="for a test")
+        object.__setattr__(self, "split", split)
+
+    def run(self, problem: Problem) -> Int32Array:
+        return self.split(problem)
+
+
+def _quick(name: str, split, *, needs_graph: bool = False) -> Method:
+    return _Quick(name, split, needs_graph)
 
 
 @pytest.fixture
