@@ -23,6 +23,7 @@ if TYPE_CHECKING:
         split,
         write_split,
     )
+    from sfcpart.methods.graph.multilevel import split_graph
 
 __version__ = "0.1.0"
 
@@ -38,6 +39,7 @@ _PUBLIC = {
     "read_mesh": "sfcpart.api",
     "read_part": "sfcpart.api",
     "split": "sfcpart.api",
+    "split_graph": "sfcpart.methods.graph.multilevel",
     "write_split": "sfcpart.api",
 }
 
@@ -49,6 +51,7 @@ __all__ = [  # noqa: RUF022 - in the order a user meets them
     "curve_keys",
     "curve_order",
     "split",
+    "split_graph",
     "Partition",
     "assess",
     "compare",

@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from functools import partial
 from math import isfinite, prod
 from typing import TYPE_CHECKING, Any, TypeAlias, get_args
 
 import numpy as np
 from numpy.typing import ArrayLike
 
+from sfcpart.curve import Curve, CurveSlice, curve_slice, mesh_slice
 from sfcpart.dtypes import Array, FloatArray, Int64Array
 from sfcpart.errors import InputError, PartitionError, SfcpartError, WeightError
 from sfcpart.graph import cell_graph
@@ -85,11 +87,19 @@ def plan_problem(
         centers=mesh.centers,
         n_parts=n_parts,
         graph=lambda: cell_graph(mesh),
+        place=partial(_place, mesh),
         weight=None if work is None else quantise(work, **whole).values,
         **_limits(second, limits, n_parts, **whole),
         **wish,
         **whole,
     )
+
+
+def _place(mesh: Mesh, centers: FloatArray, *, curve: Curve, comm: Comm) -> CurveSlice:
+    """Return the curve through centres; that of the mesh's own is kept on the mesh."""
+    if centers is mesh.centers:
+        return mesh_slice(mesh, curve=curve, comm=comm)
+    return curve_slice(centers, curve=curve, comm=comm)
 
 
 def weights_of(mesh: Mesh, weights: Weights) -> Array | None:

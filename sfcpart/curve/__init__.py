@@ -21,6 +21,14 @@ from __future__ import annotations
 
 from sfcpart.curve.frame import CURVES, Curve
 from sfcpart.curve.keys import curve_keys
-from sfcpart.curve.order import CurveSlice, curve_order, curve_slice
+from sfcpart.curve.order import CurveSlice, curve_order, curve_slice, mesh_slice
 
-__all__ = ["CURVES", "Curve", "CurveSlice", "curve_keys", "curve_order", "curve_slice"]
+__all__ = [
+    "CURVES",
+    "Curve",
+    "CurveSlice",
+    "curve_keys",
+    "curve_order",
+    "curve_slice",
+    "mesh_slice",
+]

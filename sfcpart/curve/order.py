@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import pairwise
-from typing import cast
+from typing import TYPE_CHECKING, cast
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -16,7 +16,10 @@ from sfcpart.curve.frame import Curve, Frame
 from sfcpart.dtypes import GID, KEY, Array, Int64Array, IntArray, index_dtype
 from sfcpart.kernels.curve.radix import put_rows, sorting, survey, take_rows
 
-__all__ = ["CurveSlice", "curve_order", "curve_slice"]
+if TYPE_CHECKING:
+    from sfcpart.mesh.mesh import Mesh
+
+__all__ = ["CurveSlice", "curve_order", "curve_slice", "mesh_slice"]
 
 
 def curve_order(
@@ -125,6 +128,16 @@ def curve_slice(centers: ArrayLike, *, curve: Curve = "hilbert", comm: Comm) -> 
     line = CurveSlice(comm, order, edge, received, merge)
     n_same = np.array([survey(key).n_equal], np.int64)
     return _untie(line, key, frame) if comm.allreduce(n_same)[0] else line
+
+
+def mesh_slice(mesh: Mesh, *, curve: Curve = "hilbert", comm: Comm) -> CurveSlice:
+    """Return the stretch of the curve through the cell centres of a mesh, kept on the mesh.
+
+    Splitting and writing the parts need the same order; it is found once. Keeps 4 bytes a cell (8
+    from 2^31 cells on).
+    """
+    name = f"slice of the curve {curve}, rank {comm.rank} of {comm.size}"
+    return mesh.keep(name, lambda: curve_slice(mesh.centers, curve=curve, comm=comm))
 
 
 def _even_edges(key: Int64Array, comm: Comm) -> Int64Array:

@@ -6,7 +6,8 @@ from typing import TYPE_CHECKING, TypeAlias
 
 import numpy as np
 
-from sfcpart.curve import curve_order
+from sfcpart.comm import SerialComm
+from sfcpart.curve import mesh_slice
 from sfcpart.dtypes import OFFSET, PART, Array, Int32Array, Int64Array, IntArray, index_dtype
 from sfcpart.errors import InputError, MeshError, PartitionError
 from sfcpart.halo.lists import Across, Halo
@@ -104,7 +105,8 @@ def _checked_order(mesh: Mesh | None, partition: Partition, order: IntArray | No
     if order is None:
         if mesh is None:
             raise InputError("neither mesh nor order is given; wanted one of them for the order")
-        order = curve_order(mesh.centers)
+        cells = np.arange(mesh.n_cells, dtype=index_dtype(mesh.n_cells))
+        order = mesh_slice(mesh, comm=SerialComm()).gather(cells)
     order = np.asarray(order)
     if order.shape != (n_cells,) or order.dtype.kind not in "iu":
         raise InputError(

@@ -7,6 +7,7 @@ from dataclasses import dataclass, field
 from typing import Literal
 
 from sfcpart.comm.base import Comm
+from sfcpart.curve import CurveSlice, curve_slice
 from sfcpart.dtypes import FloatArray, Int64Array
 from sfcpart.graph import CellGraph
 from sfcpart.weights import FaceWeight
@@ -53,6 +54,9 @@ class Problem:
         Returns the cell graph (built on first call); methods without need never call it.
     comm : Comm
         The ranks that split together.
+    place : callable
+        `place(centers, curve=, comm=)` returns the curve through centres, `curve_slice` or one
+        that knows the curve of these centres already.
     """
 
     centers: FloatArray
@@ -71,3 +75,4 @@ class Problem:
     face_weight: FaceWeight = "count"
     seed: int = 0
     cuts: Cuts = "balanced"
+    place: Callable[..., CurveSlice] = curve_slice

@@ -15,7 +15,7 @@ from typing import cast
 
 import numpy as np
 
-from sfcpart.curve import Curve, curve_slice
+from sfcpart.curve import Curve
 from sfcpart.dtypes import PART, Int32Array, Int64Array
 from sfcpart.errors import InputError, PartitionError, WeightError
 from sfcpart.methods.curve.chunks import cut_line
@@ -65,7 +65,7 @@ def split_along(problem: Problem, *, curve: Curve) -> Int32Array:
 def _balanced(problem: Problem, *, curve: Curve) -> Int32Array:
     """Return the chunks with least bottleneck."""
     problem.comm.check(unfit(problem))
-    place = curve_slice(problem.centers, curve=curve, comm=problem.comm)
+    place = problem.place(problem.centers, curve=curve, comm=problem.comm)
     weight = None if problem.weight is None else place.gather(problem.weight)
     limited = None if problem.limit_weight is None else place.gather(problem.limit_weight)
     if problem.group is None:
