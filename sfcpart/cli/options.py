@@ -241,9 +241,9 @@ def step_model(given: dict[str, Any]) -> StepModel:
 
 
 def prepare_process(threads: int | None) -> None:
-    """Fix the number of threads, and start to load the compiler."""
+    """Fix the number of threads, and load the compiler before anything else needs it."""
     if threads is not None:
         os.environ["SFCPART_THREADS"] = str(threads)
-    from sfcpart.kernels._jit import load_meanwhile
+    from sfcpart.kernels._jit import load_for_us_alone
 
-    load_meanwhile()
+    load_for_us_alone()
