@@ -11,12 +11,14 @@ import lzma
 import warnings
 import zlib
 from dataclasses import dataclass
+from itertools import accumulate
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from sfcpart.dtypes import Array
 from sfcpart.errors import FileError
+from sfcpart.kernels.threads import run_ranges
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -126,21 +128,25 @@ class ArrayDecoder:
     def _inflate(
         self, packed: bytes | memoryview, sizes: list[int], block: int, total: int
     ) -> bytearray:
-        """Unpack the blocks one after the other."""
+        """Unpack the blocks, several threads at once: zlib and lzma let go of the interpreter."""
         out = bytearray(total)
-        read = written = 0
-        for size in sizes:
-            part = packed[read : read + size]
-            most = min(block, total - written)
-            piece = (
-                zlib.decompressobj().decompress(part, max(most, 1))
-                if self.compressor == "vtkZLibDataCompressor"
-                else lzma.LZMADecompressor().decompress(part, max(most, 1))
-            )
-            if len(piece) != most:
-                raise FileError(f"a block has {len(piece)} bytes; wanted {most}")
-            out[written : written + most] = piece
-            read, written = read + size, written + most
+        room = memoryview(out)
+        place = [0, *accumulate(sizes)]
+
+        def unpack(start: int, stop: int) -> None:
+            for k in range(start, stop):
+                most = min(block, total - k * block)
+                part = packed[place[k] : place[k + 1]]
+                piece = (
+                    zlib.decompressobj().decompress(part, max(most, 1))
+                    if self.compressor == "vtkZLibDataCompressor"
+                    else lzma.LZMADecompressor().decompress(part, max(most, 1))
+                )
+                if len(piece) != most:
+                    raise FileError(f"a block has {len(piece)} bytes; wanted {most}")
+                room[k * block : k * block + most] = piece
+
+        run_ranges(unpack, len(sizes), smallest=16)
         return out
 
 
