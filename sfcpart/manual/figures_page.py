@@ -10,7 +10,10 @@ HEAD = """# The figures of a partition
 `sfcpart assess`, `parts.csv`, `summary.json` and `Assessment` use the same keys. They are stable:
 a key may be added, none is renamed or removed. A figure that cannot be known is empty in CSV and
 null in JSON. A partition changes the order in which a solver sums its cells; none of these figures
-says whether a simulation is right."""
+says whether a simulation is right.
+
+Periodic and coupled pairs that are kept together are no faces of the mesh: they count in neither
+cut nor halo, and a part may hold both ends of the mesh in pieces of its own."""
 
 BOUNDS = """## Lower bounds
 

@@ -4,7 +4,7 @@ Coordinate: across the longest side of the box of the centres (M. J. Berger, S. 
 Trans. Comput. C-36:570 (1987)). Inertial: across the principal axis of the centres as masses
 (H. D. Simon, Comput. Syst. Eng. 2:135 (1991)). Spectral: along the Fiedler vector of the cell
 graph (A. Pothen, H. D. Simon, K.-P. Liou, SIAM J. Matrix Anal. Appl. 11:430 (1990)); see
-`methods.fiedler`. Sources from memory.
+`methods.bisection.fiedler`. Sources from memory.
 
 Any number of parts: m parts become m // 2 and the rest, with weight in proportion to their speeds;
 the cut is where the more loaded side is loaded least. Nested levels are bisected one after
@@ -117,7 +117,7 @@ def spectral(problem: Problem) -> Int32Array:
     Notes
     -----
     Edges count faces. Components lie in a row; only the one that the cut falls into is cut along
-    its Fiedler vector, which is known to the accuracy that `methods.fiedler` states.
+    its Fiedler vector, which is known to the accuracy that `methods.bisection.fiedler` states.
     """
     problem.comm.check(unfit(problem))
     cells = CellProblem.of(problem)

@@ -1,6 +1,6 @@
 """The Fiedler vector of a graph: the eigenvector of its Laplacian's second smallest eigenvalue.
 
-Coarse to fine: the graph is coarsened by matching (`methods.coarsen`) to at most 48 vertices,
+Coarse to fine: the graph is coarsened by matching (`methods.graph.coarsen`) to at most 48 vertices,
 whose eigenvectors are dense (LAPACK). On every finer level the vector is carried over and improved
 by locally optimal conjugate gradients (A. V. Knyazev, SIAM J. Sci. Comput. 23:517 (2001), a block
 of one vector; from memory) on L x = lambda M x, M counting the vertices merged, with a multigrid

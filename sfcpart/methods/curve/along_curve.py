@@ -1,11 +1,11 @@
 """Split along a curve: contiguous, weighted chunks of the curve order with least bottleneck.
 
-The order of the cells is that of `sfcpart.curve`; the chunks are those of `methods.chunks`. With
-nested levels the curve is first divided among the parts of the first level, each with the summed
+The order of the cells is that of `sfcpart.curve`; the chunks are those of `methods.curve.chunks`.
+With nested levels the curve is first divided among the parts of the first level, each with the summed
 speed and limit of what it contains and with one item at least for each of its smallest parts, and
 each chunk then again. That gives the least bottleneck, and `tolerance` plays no role, unless
 `cuts` is "least": then the cuts move within the tolerance to where they cut fewest faces
-(`methods.window_cuts`).
+(`methods.curve.window_cuts`).
 """
 
 from __future__ import annotations
@@ -55,8 +55,8 @@ def split_along(problem: Problem, *, curve: Curve) -> Int32Array:
 
     Notes
     -----
-    O(n) for keys and order, O(P log n log w_max) for the chunks; see `methods.window_cuts` for
-    the least cut, for which every rank gathers the whole problem.
+    O(n) for keys and order, O(P log n log w_max) for the chunks; see `methods.curve.window_cuts`
+    for the least cut, for which every rank gathers the whole problem.
     """
     part = _balanced(problem, curve=curve)
     return part if problem.cuts == "balanced" else with_least_cuts(problem, part, curve=curve)

@@ -49,7 +49,7 @@ def multilevel(problem: Problem) -> Int32Array:
 
     Notes
     -----
-    O(n) for bounded degrees; see `methods.multilevel`.
+    O(n) for bounded degrees; see `methods.graph.multilevel`.
     """
     cells = CellProblem.of(problem)
     sizes = problem.level_sizes or (problem.n_parts,)

@@ -1,8 +1,8 @@
 """Smooth a partition: move its borders to where they cut fewer faces, within the balance.
 
 `smooth` improves any start on the flat graph: a round of short local searches, then flows between
-neighbouring parts, then pieces are joined. `improve` of `methods.vcycle` does the same through
-a hierarchy that respects the start: a smaller cut for four times the time.
+neighbouring parts, then pieces are joined. `improve` of `methods.graph.vcycle` does the same
+through a hierarchy that respects the start: a smaller cut for four times the time.
 
 Measured (1.08e6 random Delaunay tets, 64 parts, 3 %, one thread): cut 0.623 of the Hilbert start
 in 1.0 s, with two sweeps 0.596 in 1.45 s; `improve` 0.572 in 5.3 s, `divide` 0.572 in 4.2 s. Label
