@@ -1,10 +1,10 @@
 """Split along a curve: contiguous, weighted chunks of the curve order with least bottleneck.
 
 The order of the cells is that of `sfcpart.curve`; the chunks are those of `methods.curve.chunks`.
-With nested levels the curve is first divided among the parts of the first level, each with the summed
-speed and limit of what it contains and with one item at least for each of its smallest parts, and
-each chunk then again. That gives the least bottleneck, and `tolerance` plays no role, unless
-`cuts` is "least": then the cuts move within the tolerance to where they cut fewest faces
+With nested levels the curve is first divided among the parts of the first level, each with the
+summed speed and limit of what it contains and with one item at least for each of its smallest
+parts, and each chunk then again. That gives the least bottleneck, and `tolerance` plays no role,
+unless `cuts` is "least": then the cuts move within the tolerance to where they cut fewest faces
 (`methods.curve.window_cuts`).
 """
 
