@@ -1,9 +1,9 @@
 """Make big meshes by rule, to a path given.
 
-    python tools/make_big.py tets 1000000 /tmp/tets.vtu
-    python tools/make_big.py hexes 10000000 /tmp/hexes.vtkhdf
-    python tools/make_big.py layers 5000000 /tmp/layers.vtkhdf --shuffle 1
-    python tools/make_big.py refined 10000000 /tmp/refined.h5
+    python tools/make_big.py tets 1000000 tets.vtu
+    python tools/make_big.py hexes 10000000 hexes.vtkhdf
+    python tools/make_big.py layers 5000000 layers.vtkhdf --shuffle 1
+    python tools/make_big.py refined 10000000 refined.h5
 
 What: `tets` (jittered lattice, six tets a cube), `hexes` (cubes), `layers` (the Skerry Channel
 swept from its section: hexahedra at the bed, wedges above), `section` (that section, 2-D),

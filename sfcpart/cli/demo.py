@@ -18,7 +18,7 @@ half as much again as those in free water, those in the wake of a turbine a quar
 \b
 Examples:
   sfcpart demo
-  sfcpart demo --parts 64 -o /tmp/channel
+  sfcpart demo --parts 64 -o channel
 """
 NEXT = """
 Next:
