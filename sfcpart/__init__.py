@@ -30,17 +30,17 @@ __version__ = "0.1.0"
 _PUBLIC = {
     "Mesh": "sfcpart.mesh.mesh",
     "Partition": "sfcpart.partition",
-    "assess": "sfcpart.api",
-    "cell_graph": "sfcpart.api",
-    "compare": "sfcpart.api",
-    "curve_keys": "sfcpart.api",
-    "curve_order": "sfcpart.api",
-    "inspect": "sfcpart.api",
-    "read_mesh": "sfcpart.api",
-    "read_part": "sfcpart.api",
-    "split": "sfcpart.api",
+    "assess": "sfcpart.api.judge",
+    "cell_graph": "sfcpart.graph",
+    "compare": "sfcpart.api.judge",
+    "curve_keys": "sfcpart.curve",
+    "curve_order": "sfcpart.curve",
+    "inspect": "sfcpart.api.judge",
+    "read_mesh": "sfcpart.files.meshes.read",
+    "read_part": "sfcpart.files.parts.part",
+    "split": "sfcpart.api.divide",
     "split_graph": "sfcpart.methods.graph.multilevel",
-    "write_split": "sfcpart.api",
+    "write_split": "sfcpart.api.write",
 }
 
 __all__ = [  # noqa: RUF022 - in the order a user meets them
