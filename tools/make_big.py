@@ -17,6 +17,7 @@ from __future__ import annotations
 import argparse
 from pathlib import Path
 
+import meshio
 from mesh_files import write_meshio, write_vtkhdf
 
 from sfcpart.files.meshes.faces_file import write_faces
@@ -70,7 +71,10 @@ def main() -> None:
     elif asked.path.suffix == ".vtkhdf":
         write_vtkhdf(asked.path, shape)
     else:
-        write_meshio(asked.path, shape)
+        try:
+            write_meshio(asked.path, shape)
+        except meshio.ReadError as unknown:  # so meshio calls an ending it cannot write
+            parser.error(str(unknown))
     print(f"{asked.path}: {shape.n_cells} cells")
 
 
