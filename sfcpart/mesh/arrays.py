@@ -57,7 +57,7 @@ class MeshArrays:
         """Topological dimension of the cells: 2 or 3."""
         if self.points is None:
             return self.space_dim
-        return int(kind_tables().dim[self.kind[0]])
+        return self.keep("dim", lambda: int(kind_tables().dim[self.kind[0]]))
 
     @property
     def space_dim(self) -> int:
@@ -126,4 +126,4 @@ class MeshArrays:
         if self.given_center is not None:
             return frozen(np.ones(self.n_cells))
         signed = self.signed_measures
-        return signed if signed.min() >= 0 else frozen(np.abs(signed))
+        return signed if signed.min(initial=0.0) >= 0 else frozen(np.abs(signed))

@@ -42,7 +42,7 @@ def bundle(
 
 def most_corners(cells: CellArrays) -> int:
     """Bound the points of a cell and the faces of a polyhedron."""
-    most = int(np.diff(cells.indptr).max())
+    most = int(np.diff(cells.indptr).max(initial=0))
     return max(most, int(np.diff(cells.poly_cell_indptr).max(initial=0)))
 
 
