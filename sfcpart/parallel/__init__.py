@@ -8,10 +8,10 @@ data travels as bytes, never pickled. `sfcpart manual in_a_solver` has a complet
 from __future__ import annotations
 
 from sfcpart.parallel.columns import Ragged
-from sfcpart.parallel.exchange import Exchange
 from sfcpart.parallel.halo import Halo
-from sfcpart.parallel.lists import ExchangePlan
 from sfcpart.parallel.migrate import migrate
 from sfcpart.parallel.split import split_local
+from sfcpart.slices.exchange import Exchange
+from sfcpart.slices.lists import ExchangePlan
 
 __all__ = ["Exchange", "ExchangePlan", "Halo", "Ragged", "migrate", "split_local"]

@@ -18,9 +18,10 @@ from numpy.typing import ArrayLike
 from sfcpart.comm import adopt
 from sfcpart.dtypes import Array, Int64Array
 from sfcpart.errors import InputError
-from sfcpart.parallel.exchange import Exchange, Lane, Way, open_lane, pack
-from sfcpart.parallel.gate import agreed, checked_faces, checked_graph
-from sfcpart.parallel.lists import ExchangePlan
+from sfcpart.parallel.gate import checked_faces, checked_graph
+from sfcpart.slices.exchange import Exchange, Lane, Way, open_lane, pack
+from sfcpart.slices.gate import agreed
+from sfcpart.slices.lists import ExchangePlan
 
 if TYPE_CHECKING:
     from sfcpart.comm.base import Comm

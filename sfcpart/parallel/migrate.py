@@ -24,7 +24,7 @@ from numpy.typing import ArrayLike
 from sfcpart.comm import adopt
 from sfcpart.dtypes import OFFSET, Array, Int64Array
 from sfcpart.parallel.columns import Ragged, check_bound, checked_columns, refuse_differences
-from sfcpart.parallel.gate import agreed
+from sfcpart.slices.gate import agreed
 
 if TYPE_CHECKING:
     from sfcpart.comm.base import Comm, Stretch

@@ -12,8 +12,8 @@ from numpy.typing import ArrayLike
 from sfcpart.comm import adopt
 from sfcpart.dtypes import Array, FloatArray, Int32Array, Int64Array
 from sfcpart.errors import InputError, WeightError
-from sfcpart.parallel.directory import Blocks, Directory, cut
-from sfcpart.parallel.gate import agreed, checked_gids, sorted_gids
+from sfcpart.slices.directory import Blocks, Directory, cut
+from sfcpart.slices.gate import agreed, checked_gids, sorted_gids
 
 if TYPE_CHECKING:
     from sfcpart.comm.base import Comm

@@ -142,7 +142,7 @@ def test_no_rank_holds_more_than_its_block_of_the_directory():
     n, size = 4000, 4
 
     def act(comm):
-        from sfcpart.parallel.directory import Directory
+        from sfcpart.slices.directory import Directory
 
         mine = np.arange(comm.rank, n, size)
         held = Directory.of(mine, comm=comm)

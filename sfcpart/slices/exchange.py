@@ -13,7 +13,7 @@ from sfcpart.errors import InputError
 
 if TYPE_CHECKING:
     from sfcpart.comm.base import Comm, Link
-    from sfcpart.parallel.lists import ExchangePlan
+    from sfcpart.slices.lists import ExchangeLists
 
 __all__ = ["Exchange", "Lane", "Way", "open_lane", "pack"]
 
@@ -83,7 +83,7 @@ class Exchange:
         return self._land(lane)
 
 
-def open_lane(way: Way, array: Array, *, plan: ExchangePlan, comm: Comm) -> Lane:
+def open_lane(way: Way, array: Array, *, plan: ExchangeLists, comm: Comm) -> Lane:
     """Make the buffers and the link for rows like those of an array."""
     dtype, trailing = array.dtype.newbyteorder("="), array.shape[1:]
     at_targets = np.empty((len(plan.send), *trailing), dtype)
