@@ -12,14 +12,16 @@ whoever writes to the result has given the argument away.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from typing import Any, Literal, Protocol, TypeAlias
 
-from sfcpart.dtypes import Array
+from sfcpart.dtypes import Array, Int64Array
 
-__all__ = ["Comm", "Link", "Reduction", "Stretch"]
+__all__ = ["Comm", "Direction", "Link", "Reduction", "Stretch"]
 
 Reduction = Literal["sum", "min", "max"]
+Direction = Literal["first", "last"]
+"""The rank at which a relay ends."""
 Stretch: TypeAlias = tuple[int, int, int]
 """A rank with the first row of a buffer that goes to it or comes from it, and the row after."""
 
@@ -89,6 +91,19 @@ class Comm(Protocol):
         several links may be on their way at once, and collectives may be called meanwhile.
         """
 
+    def relay(
+        self, array: Int64Array, step: Callable[[Int64Array], Int64Array], *, towards: Direction
+    ) -> Int64Array:
+        """Hand an array from rank to rank, each of which makes of it what the next one gets.
+
+        The rank furthest from the one named by `towards` calls `step(array)`, its neighbour `step`
+        with what that returned, and so on; every rank returns what the last one made. A rank takes
+        part in one message in, one out and one broadcast, whatever the number of ranks; only the
+        time grows with it. Arrays are int64 of one axis, of any length; `step` calls no collective
+        and may change what it gets, but for the very first array. If it raises on a rank, no
+        further rank is asked, and all raise that error.
+        """
+
     def bcast_object(self, value: Any, root: int = 0) -> Any:
         """Return the root's small picklable value on every rank (never bulk data)."""
 
@@ -98,5 +113,6 @@ class Comm(Protocol):
         Every rank passes its error or None. If some rank has one, every rank raises the lowest
         failing rank's: same class, same text (a `RankError` that quotes it if it cannot travel).
         Ranks that fail alike need no rank in the text; call it at the end of each stage that can
-        fail on one rank alone.
+        fail on one rank alone. Where only some ranks failed, the error's attribute `on_rank` is
+        the lowest of them, else -1; what ends the job tells it (`sfcpart.comm.ending`).
         """

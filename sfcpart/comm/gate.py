@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import pickle
 from collections.abc import Sequence
+from contextlib import suppress
 
 import numpy as np
 
 from sfcpart.comm.base import Stretch
-from sfcpart.dtypes import Array
+from sfcpart.dtypes import Array, Int64Array
 from sfcpart.errors import InputError, RankError
 
 __all__ = [
@@ -20,6 +21,7 @@ __all__ = [
     "parcel",
     "raise_parcel",
     "reducible",
+    "relayed",
     "rooted",
     "row_form",
     "same_rows",
@@ -91,6 +93,13 @@ def row_form(array: Array) -> str:
     return f"{dtype.descr if dtype.names else dtype.str} rows of shape {array.shape[1:]}"
 
 
+def relayed(array: Int64Array) -> Int64Array:
+    """Return an array that can be handed on; refuse what is not int64 of one axis."""
+    if not isinstance(array, np.ndarray) or array.dtype != np.int64 or array.ndim != 1:
+        raise InputError(f"{array!r} to hand on; wanted an int64 array of one axis")
+    return np.ascontiguousarray(array)
+
+
 def rooted(array: Array | None, *, root: int, rank: int) -> Array | None:
     """Return the root's array, movable, and None on the other ranks."""
     if rank != root:
@@ -150,9 +159,16 @@ def parcel(error: BaseException, rank: int) -> bytes:
     return pickle.dumps(RankError(text))
 
 
-def raise_parcel(packed: bytes, own: BaseException | None) -> None:
-    """Raise the error in a parcel: this rank's own object if it is the same, for its traceback."""
+def raise_parcel(packed: bytes, own: BaseException | None, *, rank: int) -> None:
+    """Raise the error in a parcel: this rank's own object if it is the same, for its traceback.
+
+    `rank` is the one that failed, -1 if all did.
+    """
     error: BaseException = pickle.loads(packed)
     if own is not None and type(own) is type(error) and str(own) == str(error):
-        raise own
+        error, own = own, None
+    with suppress(AttributeError, TypeError):  # a foreign class may refuse
+        error.on_rank = rank  # type: ignore[attr-defined]
+    if own is None:
+        raise error
     raise error from own

@@ -2,22 +2,23 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from typing import Any
 
 import numpy as np
 
-from sfcpart.comm.base import Reduction, Stretch
+from sfcpart.comm.base import Direction, Reduction, Stretch
 from sfcpart.comm.gate import (
     check_root,
     movable,
     reducible,
+    relayed,
     rooted,
     same_rows,
     summable,
 )
 from sfcpart.comm.staged import StagedLink
-from sfcpart.dtypes import Array
+from sfcpart.dtypes import Array, Int64Array
 
 __all__ = ["SerialComm"]
 
@@ -81,6 +82,12 @@ class SerialComm:
     ) -> StagedLink:
         """Set up an exchange between two buffers."""
         return StagedLink(self, sent, received, targets=targets, sources=sources)
+
+    def relay(
+        self, array: Int64Array, step: Callable[[Int64Array], Int64Array], *, towards: Direction
+    ) -> Int64Array:
+        """Return what the one step makes."""
+        return relayed(step(relayed(array)))
 
     def bcast_object(self, value: Any, root: int = 0) -> Any:
         """Return the value itself."""

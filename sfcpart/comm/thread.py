@@ -1,9 +1,8 @@
-"""Ranks as threads of one process: a barrier and a slot for each rank.
+"""Ranks as threads of one process (`sfcpart.comm.room` is where they meet).
 
 `run_ranks` makes property tests of distributed code fast and hang-free: a rank that fails, that
 returns early or that calls another collective than the rest breaks the barrier, and every rank
-gets an error instead of waiting for ever. Each collective costs two barriers; arrays are copied,
-as they would be between processes.
+gets an error instead of waiting for ever. Arrays are copied, as they would be between processes.
 """
 
 from __future__ import annotations
@@ -12,25 +11,26 @@ import pickle
 import threading
 import time
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
 from typing import Any, TypeVar
 
 import numpy as np
 
-from sfcpart.comm.base import Reduction, Stretch
+from sfcpart.comm.base import Direction, Reduction, Stretch
 from sfcpart.comm.gate import (
     check_root,
     movable,
     parcel,
     raise_parcel,
     reducible,
+    relayed,
     rooted,
     row_form,
     same_rows,
     summable,
 )
+from sfcpart.comm.room import Call, Room, RoomBrokenError
 from sfcpart.comm.staged import StagedLink
-from sfcpart.dtypes import Array
+from sfcpart.dtypes import Array, Int64Array
 from sfcpart.errors import InputError, RankError
 
 __all__ = ["ThreadComm", "run_ranks"]
@@ -38,102 +38,10 @@ __all__ = ["ThreadComm", "run_ranks"]
 T = TypeVar("T")
 
 
-class _RoomBrokenError(RankError):
-    """Follows from the failure of another rank."""
-
-
-@dataclass
-class _Call:
-    """What one rank asked for: the collective with what must agree, and the value it brought."""
-
-    name: str
-    agree: tuple[Any, ...]
-    value: Any
-
-    def __str__(self) -> str:
-        return f"{self.name}({', '.join(map(str, self.agree))})"
-
-
-class _Barrier:
-    """A barrier that lets through all who met, even if it is broken before they have left.
-
-    (`threading.Barrier` fails those still leaving; which error a run ends with would then be
-    left to chance.)
-    """
-
-    def __init__(self, size: int, timeout: float) -> None:
-        self._size = size
-        self._timeout = timeout
-        self._changed = threading.Condition()
-        self._waiting = 0
-        self._round = 0
-        self._broken = False
-
-    def wait(self) -> bool:
-        """Wait for all; tell whether they came, or the barrier is broken or ran out of time."""
-        with self._changed:
-            if self._broken:
-                return False
-            mine = self._round
-            self._waiting += 1
-            if self._waiting == self._size:
-                self._waiting = 0
-                self._round += 1
-                self._changed.notify_all()
-            self._changed.wait_for(lambda: self._round != mine or self._broken, self._timeout)
-            if self._round == mine:
-                self.abort()
-            return self._round != mine
-
-    def abort(self) -> None:
-        """Break the barrier: whoever waits, or will wait, is told."""
-        with self._changed:  # a condition's lock is re-entrant
-            self._broken = True
-            self._changed.notify_all()
-
-
-class _Room:
-    """Where the ranks meet: one barrier, one slot a rank."""
-
-    def __init__(self, size: int, timeout: float) -> None:
-        self.size = size
-        self.timeout = timeout
-        self.barrier = _Barrier(size, timeout)
-        self.slots: list[_Call] = [_Call("", (), None)] * size
-
-    def wait(self, rank: int) -> None:
-        """Wait for all ranks; an error if one of them will not come."""
-        if not self.barrier.wait():
-            raise _RoomBrokenError(
-                f"rank {rank} waited for the others in vain: "
-                f"a rank failed, or took more than {self.timeout:g} s"
-            )
-
-    def meet(self, rank: int, call: _Call, take: Callable[[list[Any]], T]) -> T:
-        """Put a call into this rank's slot; when all are there, `take` from the values."""
-        self.slots[rank] = call
-        self.wait(rank)
-        try:
-            self._agree(rank)
-            return take([other.value for other in self.slots])
-        finally:
-            self.wait(rank)  # nobody changes an array or a slot before all have read
-
-    def _agree(self, rank: int) -> None:
-        """Raise on all ranks if they did not all call the same collective alike."""
-        first = self.slots[0]
-        for other, call in enumerate(self.slots):
-            if (call.name, call.agree) != (first.name, first.agree):
-                raise RankError(
-                    f"collectives do not match: rank 0 called {first}, rank {other} {call}; "
-                    "every rank must call the same ones in the same order"
-                )
-
-
 class ThreadComm:
     """One rank of `run_ranks` (`sfcpart.comm.base.Comm` has the contract)."""
 
-    def __init__(self, room: _Room, rank: int) -> None:
+    def __init__(self, room: Room, rank: int) -> None:
         self._room = room
         self._rank = rank
 
@@ -151,7 +59,7 @@ class ThreadComm:
         self, name: str, agree: tuple[Any, ...], value: Any, take: Callable[[list[Any]], T]
     ) -> T:
         """Meet the other ranks in one collective."""
-        return self._room.meet(self._rank, _Call(name, agree, value), take)
+        return self._room.meet(self._rank, Call(name, agree, value), take)
 
     def barrier(self) -> None:
         """Return once every rank has arrived."""
@@ -215,6 +123,30 @@ class ThreadComm:
         """Set up an exchange between two buffers."""
         return StagedLink(self, sent, received, targets=targets, sources=sources)
 
+    def relay(
+        self, array: Int64Array, step: Callable[[Int64Array], Int64Array], *, towards: Direction
+    ) -> Int64Array:
+        """Hand an array from rank to rank, each of which makes of it what the next one gets."""
+        array = relayed(array)
+        order = 1 if towards == "last" else -1
+        steps = self._meet("relay", (towards,), step, lambda steps: steps[::order])
+        made = array
+        packed = None
+        if self._rank == 0:  # one thread does it for all, who wait meanwhile
+            for place, each in enumerate(steps):
+                try:
+                    made = relayed(each(made))
+                except Exception as error:
+                    failed = range(self.size)[::order][place]
+                    packed = (parcel(error, failed), failed)
+                    break
+        first, packed = self._meet(
+            "relay", (towards, "done"), (made, packed), lambda values: values[0]
+        )
+        if packed is not None:
+            raise_parcel(packed[0], None, rank=packed[1])
+        return np.array(first)
+
     def bcast_object(self, value: Any, root: int = 0) -> Any:
         """Return the root's small picklable value on every rank."""
         check_root(root, self.size)
@@ -226,11 +158,11 @@ class ThreadComm:
     def check(self, error: BaseException | None) -> None:
         """Turn an error of any rank into the same error on all."""
         packed = None if error is None else parcel(error, self._rank)
-        first = self._meet(
-            "check", (), packed, lambda values: next((v for v in values if v is not None), None)
-        )
-        if first is not None:
-            raise_parcel(first, error)
+        values = self._meet("check", (), packed, list)
+        failed = [rank for rank, value in enumerate(values) if value is not None]
+        if failed:
+            rank = -1 if len(failed) == self.size else failed[0]
+            raise_parcel(values[failed[0]], error, rank=rank)
 
 
 def run_ranks(size: int, function: Callable[[ThreadComm], T], *, timeout: float = 60.0) -> list[T]:
@@ -268,7 +200,7 @@ def run_ranks(size: int, function: Callable[[ThreadComm], T], *, timeout: float 
     """
     if size < 1:
         raise InputError(f"{size} ranks; wanted at least 1")
-    room = _Room(size, timeout)
+    room = Room(size, timeout)
     ranks = [_Rank(room, rank, function) for rank in range(size)]
     for rank in ranks:
         rank.start()
@@ -286,7 +218,7 @@ def run_ranks(size: int, function: Callable[[ThreadComm], T], *, timeout: float 
 class _Rank(threading.Thread):
     """The thread of one rank: its result or its error."""
 
-    def __init__(self, room: _Room, rank: int, function: Callable[[ThreadComm], Any]) -> None:
+    def __init__(self, room: Room, rank: int, function: Callable[[ThreadComm], Any]) -> None:
         super().__init__(name=f"rank {rank}", daemon=True)
         self.room = room
         self.comm = ThreadComm(room, rank)
@@ -307,7 +239,7 @@ class _Rank(threading.Thread):
 def _raise_first(ranks: list[_Rank], timeout: float) -> None:
     """Raise the lowest rank's error that does not merely follow from another's failure."""
     errors = [rank.error for rank in ranks if rank.error is not None]
-    own = [error for error in errors if not isinstance(error, _RoomBrokenError)]
+    own = [error for error in errors if not isinstance(error, RoomBrokenError)]
     if own:
         raise own[0]
     late = [rank.comm.rank for rank in ranks if rank.is_alive()]

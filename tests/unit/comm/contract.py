@@ -541,3 +541,65 @@ def errors_become_collective(comm: Comm) -> Lines:
         None,
     ]
     return [attempted(lambda error=error: comm.check(error)) for error in errors]  # type: ignore[misc]
+
+
+@scenario(lambda rank, size: ["-1"] + ([str(size - 1)] if size > 1 else []))
+def errors_tell_where_they_were_found(comm: Comm) -> Lines:
+    lines = []
+    for failing in (True, comm.rank == comm.size - 1):
+        try:
+            comm.check(MeshError("no cell") if failing else None)
+        except MeshError as error:
+            lines.append(str(getattr(error, "on_rank", -1)))
+    return lines[: comm.size]  # a rank that is alone has nobody to tell
+
+
+# -- relays ---------------------------------------------------------------------------------------
+
+
+@scenario(
+    lambda rank, size: [
+        str([*range(size), size]),
+        str([*range(size)[::-1], size]),
+        str([0]),
+    ]
+)
+def arrays_are_handed_on(comm: Comm) -> Lines:
+    none = np.empty(0, np.int64)
+    seen = []
+    for towards in ("last", "first"):
+        seen.append(comm.relay(none, lambda came: np.append(came, comm.rank), towards=towards))
+        seen[-1] = np.append(seen[-1], comm.size)  # the result is this rank's own
+        seen[-1][-1] = comm.size
+    last = comm.relay(np.arange(3), lambda came: came[: max(1, len(came) - 1)] * 0, towards="last")
+    return [str(array.tolist()) for array in [*seen, last[:1]]]
+
+
+def _expect_broken_relay(rank: int, size: int) -> Lines:
+    failing = size // 2
+    return [
+        f"WeightError: weight {failing}",
+        f"{failing}" if size > 1 else "0",
+        f"[{failing}]",
+        "InputError: array([1.]) to hand on; wanted an int64 array of one axis",
+    ]
+
+
+@scenario(_expect_broken_relay)
+def a_relay_that_breaks_breaks_for_all(comm: Comm) -> Lines:
+    asked: list[int] = []
+
+    def step(came: np.ndarray) -> np.ndarray:
+        asked.append(comm.rank)
+        if comm.rank == comm.size // 2:
+            raise WeightError(f"weight {comm.rank}")
+        return came
+
+    lines = []
+    try:
+        comm.relay(np.arange(2), step, towards="last")
+    except WeightError as error:
+        lines = [f"WeightError: {error}", str(getattr(error, "on_rank", 0))]
+    last = comm.allreduce(np.array(max(asked, default=-1)), "max")
+    unfit = attempted(lambda: comm.relay(np.arange(1), lambda came: np.ones(1), towards="first"))
+    return [*lines, f"[{last}]", unfit]
