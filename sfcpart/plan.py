@@ -16,10 +16,12 @@ from sfcpart.errors import InputError, PartitionError, SfcpartError, WeightError
 from sfcpart.graph import cell_graph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.methods.problem import Cuts, Problem
+from sfcpart.slices.mesh_slice import MeshSlice
 from sfcpart.weights import (
     FACE_WEIGHTS,
     FaceWeight,
     cell_weights,
+    counts_faces,
     groups_from_boundaries,
     groups_from_field,
     groups_from_pairs,
@@ -31,14 +33,28 @@ from sfcpart.weights import (
 if TYPE_CHECKING:
     from sfcpart.comm.base import Comm
 
-__all__ = ["Weights", "part_speeds", "plan_problem", "weights_of"]
+__all__ = ["Weights", "held_of", "part_speeds", "plan_problem", "weights_of"]
 
 Weights: TypeAlias = ArrayLike | str | Sequence[str] | None
 """One number a cell, or one or more specifications whose values are multiplied."""
 
 
+def held_of(mesh: Mesh | MeshSlice, comm: Comm | None = None) -> MeshSlice:
+    """Return a mesh as what this rank holds of it (collective if there are several ranks).
+
+    A mesh with a communicator is this rank's slice of the cells, of which nothing else is known:
+    neighbours on other ranks least of all.
+    """
+    if isinstance(mesh, MeshSlice):
+        return mesh
+    if comm is None:
+        return MeshSlice.whole(mesh)
+    counts = np.concatenate(comm.allgather(np.array([mesh.n_cells], np.int64)))
+    return MeshSlice(mesh, comm, np.concatenate(([0], np.cumsum(counts))), mesh.n_points)
+
+
 def plan_problem(
-    mesh: Mesh,
+    mesh: Mesh | MeshSlice,
     n_parts: int,
     *,
     tolerance: float,
@@ -52,24 +68,25 @@ def plan_problem(
     periodic: Sequence[tuple[str, str]],
     face_weight: FaceWeight,
     seed: int,
-    comm: Comm,
+    comm: Comm | None = None,
     cuts: Cuts = "balanced",
 ) -> Problem:
     """Check what was asked and cast it into a `Problem`; see `sfcpart.split` for the meanings.
 
-    With several ranks each holds a slice of the cells as its mesh, and of what has a row a cell;
-    what is wrong on one rank is raised on all.
+    With several ranks each holds a slice of the cells, and of what has a row a cell; what is
+    wrong on one rank is raised on all.
     """
-    n_cells = np.array([mesh.n_cells], np.int64)
-    total, first_gid = int(comm.allreduce(n_cells)[0]), int(comm.exscan(n_cells)[0])
+    held = held_of(mesh, comm)
+    comm, mesh = held.comm, held.mesh
     wish: dict[str, Any] = {}
-    work: Array | None = None
     second: Array | None = None
+    work = weights_of(held, weights)
+    limited = weights_of(held, limit_weights)
     error = None
     try:
         n_parts = _whole(n_parts, "n_parts")
-        _check_part_count(n_parts, total)
-        work, second = weights_of(mesh, weights), _second_weight(mesh, limit_weights, limits)
+        _check_part_count(n_parts, held.n_cells)
+        second = _second_weight(held, limited, limits)
         wish = {
             "part_speed": part_speeds(speeds, n_parts),
             "tolerance": _tolerance(tolerance),
@@ -82,7 +99,7 @@ def plan_problem(
     except SfcpartError as caught:
         error = caught
     comm.check(error)
-    whole: dict[str, Any] = {"comm": comm, "first_gid": first_gid}
+    whole: dict[str, Any] = {"comm": comm, "first_gid": held.first_gid}
     return Problem(
         centers=mesh.centers,
         n_parts=n_parts,
@@ -102,17 +119,25 @@ def _place(mesh: Mesh, centers: FloatArray, *, curve: Curve, comm: Comm) -> Curv
     return curve_slice(centers, curve=curve, comm=comm)
 
 
-def weights_of(mesh: Mesh, weights: Weights) -> Array | None:
-    """Return one number a cell, or None for 1 each.
+def weights_of(mesh: Mesh | MeshSlice, weights: Weights) -> Array | None:
+    """Return one number for each cell held here, or None for 1 each (collective).
 
     Raises
     ------
     WeightError
-        If the array has another length, or a specification cannot be met.
+        If the array has another length, or a specification cannot be met; on all ranks alike.
     """
     if weights is None:
         return None
-    return cell_weights(mesh, weights, graph=lambda: cell_graph(mesh))
+    held = held_of(mesh)
+    graph = cell_graph(held.mesh) if counts_faces(weights, held.mesh) else None
+    error, found = None, None
+    try:
+        found = cell_weights(held.mesh, weights, graph=graph)
+    except SfcpartError as caught:
+        error = caught
+    held.comm.check(error)
+    return found
 
 
 def part_speeds(speeds: ArrayLike | None, n_parts: int) -> FloatArray:
@@ -195,14 +220,13 @@ def _levels(levels: Sequence[int] | None, n_parts: int) -> tuple[int, ...]:
     return sizes
 
 
-def _second_weight(mesh: Mesh, weights: Weights, limits: ArrayLike | None) -> Array | None:
+def _second_weight(held: MeshSlice, weight: Array | None, limits: ArrayLike | None) -> Array | None:
     """Return the second weight of each cell if it is limited, 1 each by default."""
-    weight = weights_of(mesh, weights)
     if limits is None and weight is not None:
         raise WeightError("a second weight was given without a limit; give both or none")
     if limits is None:
         return None
-    return np.ones(mesh.n_cells, np.int64) if weight is None else weight
+    return np.ones(held.n_local, np.int64) if weight is None else weight
 
 
 def _limits(

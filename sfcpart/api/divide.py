@@ -7,11 +7,11 @@ from typing import TYPE_CHECKING
 
 from numpy.typing import ArrayLike
 
-from sfcpart.comm import SerialComm
 from sfcpart.errors import InputError
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
 from sfcpart.plan import Weights, plan_problem
+from sfcpart.slices.mesh_slice import MeshSlice
 
 if TYPE_CHECKING:
     from sfcpart.comm.base import Comm
@@ -22,7 +22,7 @@ __all__ = ["split"]
 
 
 def split(
-    mesh: Mesh,
+    mesh: Mesh | MeshSlice,
     n_parts: int,
     *,
     method: str = "hilbert",
@@ -44,7 +44,8 @@ def split(
 
     Parameters
     ----------
-    mesh : Mesh
+    mesh : Mesh, or MeshSlice
+        A slice is split together with those of the other ranks (`sfcpart.read_slice`).
     n_parts : int
         Number of parts, 1 <= n_parts <= n_cells. No part is empty.
     method : str
@@ -77,8 +78,8 @@ def split(
         The only source of randomness of the methods that use any.
     comm : Comm, optional
         Ranks that each hold a slice of the cells as `mesh` (and of whatever has a row a cell),
-        for methods along a curve; this process alone by default. `pairs`, `periodic` and texts as
-        groups need the whole mesh.
+        for methods along a curve; those of a `MeshSlice`, or this process alone, by default.
+        `pairs` and `periodic` need a whole mesh or a `MeshSlice`.
 
     Returns
     -------
@@ -102,6 +103,7 @@ def split(
     >>> sfcpart.split(mesh, 4).part_size().tolist()
     [4, 4, 4, 4]
     """
+    from sfcpart.methods.on_one_rank import run_method
     from sfcpart.methods.registry import METHODS
 
     if method not in METHODS:
@@ -121,6 +123,6 @@ def split(
         periodic=periodic,
         face_weight=face_weight,
         seed=seed,
-        comm=comm or SerialComm(),
+        comm=comm,
     )
-    return Partition.from_array(METHODS[method].run(problem), problem.n_parts)
+    return Partition.from_array(run_method(METHODS[method], problem), problem.n_parts)

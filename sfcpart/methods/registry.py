@@ -31,12 +31,15 @@ class Method:
         Whether it asks for the cell graph.
     summary : str
         One line for help texts.
+    by_slices : bool
+        Whether ranks need no more than their slices of the cells; otherwise rank 0 splits.
     """
 
     name: str
     home: str
     needs_graph: bool
     summary: str
+    by_slices: bool = False
 
     def run(self, problem: Problem) -> Int32Array:
         """Return the part of each local cell, (n_local,) int32."""
@@ -54,18 +57,21 @@ METHODS: Mapping[str, Method] = MappingProxyType(
                 home="curve.along_curve:along_hilbert",
                 needs_graph=False,
                 summary="contiguous chunks of the Hilbert curve, least bottleneck",
+                by_slices=True,
             ),
             Method(
                 name="morton",
                 home="curve.along_curve:along_morton",
                 needs_graph=False,
                 summary="contiguous chunks of the Morton (Z-order) curve; a baseline",
+                by_slices=True,
             ),
             Method(
                 name="rows",
                 home="curve.along_curve:along_rows",
                 needs_graph=False,
                 summary="strips of cells row after row; a baseline",
+                by_slices=True,
             ),
             Method(
                 name="smoothed",

@@ -13,7 +13,16 @@ import numpy as np
 from sfcpart.comm.base import Comm
 from sfcpart.dtypes import GID, Array, Int64Array, IntArray, index_dtype
 
-__all__ = ["Dealing", "ask_rows", "block_bounds", "compact", "dealing", "owner_of"]
+__all__ = [
+    "Dealing",
+    "ask_rows",
+    "block_bounds",
+    "compact",
+    "dealing",
+    "gather_rows",
+    "hand_out_rows",
+    "owner_of",
+]
 
 _WINDOW = 4  # numbers looked up in a table of at most so many times their count
 
@@ -126,6 +135,35 @@ def ask_rows(comm: Comm, rows: Array, *, first: Int64Array, gid: Array) -> Array
     way = dealing(comm, owner_of(gid, first))
     wanted = way.forward(np.asarray(gid, GID)) - first[comm.rank]
     return way.back(rows[wanted])
+
+
+def gather_rows(comm: Comm, rows: Array) -> Array:
+    """Bring the rows of all ranks to rank 0, in rank order; the others get none (collective).
+
+    Examples
+    --------
+    >>> from sfcpart.comm import run_ranks
+    >>> run_ranks(2, lambda comm: gather_rows(comm, np.array([comm.rank])).tolist())
+    [[0, 1], []]
+    """
+    return _joined(comm.alltoall([rows, *[rows[:0]] * (comm.size - 1)]))
+
+
+def hand_out_rows(comm: Comm, rows: Array, *, n_local: int) -> Array:
+    """Give every rank its `n_local` of the rows that rank 0 has, in rank order (collective).
+
+    Examples
+    --------
+    >>> from sfcpart.comm import run_ranks
+    >>> run_ranks(2, lambda comm: hand_out_rows(
+    ...     comm, np.arange(3 * (comm.rank == 0)), n_local=comm.rank + 1).tolist())
+    [[0], [1, 2]]
+    """
+    counts = np.concatenate(comm.allgather(np.array([n_local], np.int64)))
+    edge = np.concatenate(([0], np.cumsum(counts)))
+    if comm.rank:
+        return comm.alltoall([rows[:0]] * comm.size)[0]
+    return comm.alltoall([rows[a:b] for a, b in pairwise(edge)])[0]
 
 
 def compact(ids: IntArray) -> tuple[Int64Array, IntArray]:

@@ -9,7 +9,7 @@
 
 from __future__ import annotations
 
-from sfcpart.weights.cells import cell_weights
+from sfcpart.weights.cells import cell_weights, counts_faces
 from sfcpart.weights.faces import FACE_WEIGHTS, FaceWeight, face_weights
 from sfcpart.weights.groups import (
     groups_from_boundaries,
@@ -26,6 +26,7 @@ __all__ = [
     "Quantised",
     "WeightSpec",
     "cell_weights",
+    "counts_faces",
     "face_weights",
     "groups_from_boundaries",
     "groups_from_field",

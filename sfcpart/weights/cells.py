@@ -20,7 +20,7 @@ from sfcpart.weights.spec import OTHER, Term, WeightSpec, parse_weights
 if TYPE_CHECKING:
     from sfcpart.graph import CellGraph
 
-__all__ = ["cell_weights"]
+__all__ = ["cell_weights", "counts_faces"]
 
 
 def cell_weights(
@@ -71,6 +71,42 @@ def cell_weights(
         product = factor if product is None else product * factor
     assert product is not None
     return product
+
+
+def counts_faces(
+    spec: str | WeightSpec | ArrayLike | Sequence[str | WeightSpec], mesh: Mesh
+) -> bool:
+    """Tell whether a specification counts faces, so that it needs the cell graph.
+
+    Parameters
+    ----------
+    spec : str, WeightSpec, sequence of these, or (n_cells,) numbers
+    mesh : Mesh
+        A text that names one of its fields is no more than that.
+
+    Examples
+    --------
+    >>> mesh = Mesh.from_centers([[0.0, 0.5]])
+    >>> counts_faces("cell=1,face=2", mesh), counts_faces("vertex=2", mesh)
+    (True, False)
+    """
+    specs = [spec] if isinstance(spec, (str, WeightSpec)) else spec
+    if not _all_texts(specs):
+        return False
+    texts: Sequence[str | WeightSpec] = specs  # type: ignore[assignment]  # as just checked
+    return any(term.is_mix for one in texts for term in _terms(one, mesh))
+
+
+def _terms(spec: str | WeightSpec, mesh: Mesh) -> tuple[Term, ...]:
+    """Return the factors of one specification, none of a field or of what is refused later."""
+    if isinstance(spec, WeightSpec):
+        return spec.terms
+    if spec in mesh.cell_fields:
+        return ()
+    try:
+        return parse_weights(spec).terms
+    except WeightError:
+        return ()
 
 
 def _all_texts(specs: object) -> bool:
