@@ -28,7 +28,7 @@ from sfcpart.errors import FileError, InputError, MeshError
 from sfcpart.files.hdf5 import check_stored, create_hdf5, read_hdf5
 from sfcpart.mesh.mesh import Mesh
 
-__all__ = ["read_faces", "write_faces"]
+__all__ = ["faces_of", "put_faces", "read_faces", "write_faces"]
 
 _LAYOUT = 1
 _GROUP = "faces_mesh"
@@ -54,16 +54,21 @@ def read_faces(path: str | PathLike[str]) -> Mesh:
         If cells, measures or centres are wrong; the message starts with the path.
     """
     with read_hdf5(path) as file:
-        if _GROUP not in file:
-            raise FileError(f"{path}: has no group {_GROUP}")
-        group = file[_GROUP]
-        if group.attrs.get("layout") != _LAYOUT:
-            raise FileError(
-                f"{path}: {_GROUP} has layout {group.attrs.get('layout')}; wanted {_LAYOUT}"
-            )
-        fields = group.get("cell_fields", {})
-        arrays = [_array(group, name, path) for name in _DATASETS]
-        cell_fields = {name: _array(fields, name, path) for name in fields}
+        return faces_of(file, path)
+
+
+def faces_of(place: Any, path: str | PathLike[str]) -> Mesh:
+    """Read the mesh in the group `faces_mesh` of an open HDF5 file or of a group in it."""
+    if _GROUP not in place:
+        raise FileError(f"{path}: has no group {_GROUP}")
+    group = place[_GROUP]
+    if group.attrs.get("layout") != _LAYOUT:
+        raise FileError(
+            f"{path}: {_GROUP} has layout {group.attrs.get('layout')}; wanted {_LAYOUT}"
+        )
+    fields = group.get("cell_fields", {})
+    arrays = [_array(group, name, path) for name in _DATASETS]
+    cell_fields = {name: _array(fields, name, path) for name in fields}
     try:
         return Mesh.from_faces(*arrays, cell_fields=cell_fields)
     except MeshError as error:
@@ -99,13 +104,24 @@ def write_faces(path: str | PathLike[str], mesh: Mesh) -> None:
     FileError
         If the file cannot be written.
     """
+    _given_by_faces(mesh)
+    with create_hdf5(path) as file:
+        put_faces(file, mesh)
+
+
+def put_faces(place: Any, mesh: Mesh) -> None:
+    """Write the group `faces_mesh` into an open HDF5 file or a group in it."""
+    arrays = _given_by_faces(mesh)
+    group = place.create_group(_GROUP)
+    group.attrs["layout"] = _LAYOUT
+    for name, array in zip(_DATASETS, arrays, strict=True):
+        group.create_dataset(name, data=array)
+    for name, values in mesh.cell_fields.items():
+        group.create_dataset(f"cell_fields/{name}", data=values)
+
+
+def _given_by_faces(mesh: Mesh) -> tuple[Array, Array, Array, Array]:
+    """Return the arrays of a mesh given by faces, or refuse another."""
     if mesh.faces is None or mesh.given_center is None or mesh.given_measure is None:
         raise InputError("the mesh is not given by faces; write_faces wants Mesh.from_faces")
-    with create_hdf5(path) as file:
-        group = file.create_group(_GROUP)
-        group.attrs["layout"] = _LAYOUT
-        arrays = (mesh.faces.cell, mesh.faces.measure, mesh.given_center, mesh.given_measure)
-        for name, array in zip(_DATASETS, arrays, strict=True):
-            group.create_dataset(name, data=array)
-        for name, values in mesh.cell_fields.items():
-            group.create_dataset(f"cell_fields/{name}", data=values)
+    return mesh.faces.cell, mesh.faces.measure, mesh.given_center, mesh.given_measure
