@@ -13,6 +13,7 @@ import click
 
 from sfcpart.cli.exits import code_of
 from sfcpart.cli.verbs import PROGRAM, sfcpart
+from sfcpart.launcher import launched
 
 __all__ = ["run"]
 
@@ -29,20 +30,40 @@ def run(arguments: Sequence[str]) -> int:
     warnings.showwarning = _show_warning
     _print_any_name()
     try:
+        _meet_the_other_ranks()
         with sfcpart.make_context(PROGRAM, list(arguments)) as context:
             sfcpart.invoke(context)
         sys.stdout.flush()
     except click.exceptions.Exit as leave:
         return _flushed(leave.exit_code)
-    except (KeyboardInterrupt, click.Abort):
-        return _say("interrupted; nothing was left half-written", 130)
+    except (KeyboardInterrupt, click.Abort) as error:
+        return _end(error, "interrupted; nothing was left half-written", 130)
     except BrokenPipeError:
         return _forget_output()
     except Exception as error:
         if os.environ.get("SFCPART_DEBUG", "0") not in ("", "0"):
             raise
-        return _say(_one_line(error), code_of(error))
+        return _end(error, _one_line(error), code_of(error))
     return 0
+
+
+def _meet_the_other_ranks() -> None:
+    """Start MPI where a launcher did, so that a rank that fails early can tell the others."""
+    if launched():
+        from sfcpart.comm.mpi.ending import prepare
+
+        prepare()
+
+
+def _end(error: BaseException, text: str, code: int) -> int:
+    """Tell an error once, however many ranks there are; return the code or end the job."""
+    if not launched():
+        return _say(text, code)
+    from sfcpart.comm.ending import end_rank
+
+    codes = [code]
+    end_rank(error, text=text, code=code, say=lambda line: codes.append(_say(line, code)))
+    return codes[-1]
 
 
 def _print_any_name() -> None:

@@ -2,21 +2,27 @@
 
 from __future__ import annotations
 
-import os
 from functools import lru_cache
 from typing import TYPE_CHECKING, Any, cast
 
+from sfcpart.comm.ending import ending_together, removed_on_abort
 from sfcpart.comm.serial import SerialComm
 from sfcpart.comm.thread import ThreadComm, run_ranks
 from sfcpart.errors import InputError
+from sfcpart.launcher import launched
 
 if TYPE_CHECKING:
     from sfcpart.comm.base import Comm
 
-__all__ = ["SerialComm", "ThreadComm", "adopt", "run_ranks", "world"]
-
-_LAUNCHER_MARKS = ("PMI_RANK", "PMIX_RANK", "OMPI_COMM_WORLD_RANK", "MV2_COMM_WORLD_RANK")
-"""What MPI launchers put into the environment of each process they start."""
+__all__ = [
+    "SerialComm",
+    "ThreadComm",
+    "adopt",
+    "ending_together",
+    "removed_on_abort",
+    "run_ranks",
+    "world",
+]
 
 
 @lru_cache(maxsize=1)
@@ -36,7 +42,7 @@ def world() -> Comm:
     >>> world().size
     1
     """
-    if any(mark in os.environ for mark in _LAUNCHER_MARKS):
+    if launched():
         from sfcpart.comm.mpi import MpiComm
 
         return MpiComm()

@@ -7,6 +7,7 @@ data travels as bytes, never pickled. `sfcpart manual in_a_solver` has a complet
 
 from __future__ import annotations
 
+from sfcpart.comm.ending import ending_together
 from sfcpart.parallel.columns import Ragged
 from sfcpart.parallel.halo import Halo
 from sfcpart.parallel.migrate import migrate
@@ -14,4 +15,12 @@ from sfcpart.parallel.split import split_local
 from sfcpart.slices.exchange import Exchange
 from sfcpart.slices.lists import ExchangePlan
 
-__all__ = ["Exchange", "ExchangePlan", "Halo", "Ragged", "migrate", "split_local"]
+__all__ = [
+    "Exchange",
+    "ExchangePlan",
+    "Halo",
+    "Ragged",
+    "ending_together",
+    "migrate",
+    "split_local",
+]
