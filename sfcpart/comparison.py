@@ -1,7 +1,7 @@
 """Several ways to split one mesh, measured alike, side by side.
 
 Each method runs alone, after a run on a few cells that loads what it needs; what is compiled is
-never timed. Methods that need the cell graph are charged its time, whether or not it was there.
+never timed. Methods that use the cell graph are charged its time, whether or not it was there.
 """
 
 from __future__ import annotations
@@ -217,7 +217,7 @@ def _run(name: str, problem: Problem, *, repeat: int, graph: Metered | None) -> 
         partition = Partition.from_array(cell_part, problem.n_parts)
     except SfcpartError as error:
         return ComparedSplit(name, failure=str(error))
-    for_graph = graph.seconds if graph is not None and method.needs_graph else 0.0
+    for_graph = graph.seconds if graph is not None and method.uses_graph(problem) else 0.0
     return ComparedSplit(
         name,
         partition=partition,
@@ -231,7 +231,7 @@ def _warm_up(name: str, problem: Problem) -> None:
     """Load what a method needs on the first cells: a run that compiles is timed a second time."""
     n = min(_WARM_CELLS, len(problem.centers))
     n_parts = min(problem.n_parts, max(1, n // 8))
-    graph = _first_cells(problem.graph(), n) if METHODS[name].needs_graph else None
+    graph = _first_cells(problem.graph(), n) if METHODS[name].uses_graph(problem) else None
     small = replace(
         problem,
         centers=problem.centers[:n],

@@ -41,6 +41,10 @@ class Method:
     summary: str
     by_slices: bool = False
 
+    def uses_graph(self, problem: Problem) -> bool:
+        """Tell whether a run on this problem asks for the cell graph."""
+        return self.needs_graph or (problem.cuts == "least" and self.home.startswith("curve."))
+
     def run(self, problem: Problem) -> Int32Array:
         """Return the part of each local cell, (n_local,) int32."""
         module, _, function = self.home.partition(":")

@@ -165,6 +165,15 @@ def test_the_time_of_the_graph_counts_even_if_it_was_there(with_methods):
     assert b.split_seconds >= found.graph_seconds
 
 
+def test_cuts_moved_along_a_curve_are_charged_the_graph():
+    mesh = lattice((8, 8)).to_mesh()
+    plain, moved = (
+        sfcpart.compare(mesh, 4, methods=["hilbert"], cuts=cuts) for cuts in ("balanced", "least")
+    )
+    assert plain.rows[0].graph_seconds == 0
+    assert moved.rows[0].graph_seconds == moved.graph_seconds > 0
+
+
 def test_given_partitions_keep_their_place_and_their_empty_parts():
     mesh = lattice((4, 4)).to_mesh()
     halves = np.arange(16) // 8
