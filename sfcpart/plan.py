@@ -105,7 +105,7 @@ def plan_problem(
         n_parts=n_parts,
         graph=lambda: cell_graph(mesh),
         place=partial(_place, mesh),
-        weight=None if work is None else quantise(work, **whole).values,
+        **_work(work, **whole),
         **_limits(second, limits, n_parts, **whole),
         **wish,
         **whole,
@@ -227,6 +227,14 @@ def _second_weight(held: MeshSlice, weight: Array | None, limits: ArrayLike | No
     if limits is None:
         return None
     return np.ones(held.n_local, np.int64) if weight is None else weight
+
+
+def _work(weight: Array | None, *, comm: Comm, first_gid: int) -> dict[str, Any]:
+    """Return the quantised work of each cell and its unit, nothing if all weigh 1."""
+    if weight is None:
+        return {}
+    work = quantise(weight, comm=comm, first_gid=first_gid)
+    return {"weight": work.values, "weight_unit": work.unit}
 
 
 def _limits(

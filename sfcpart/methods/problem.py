@@ -29,6 +29,8 @@ class Problem:
         Global number of this rank's first cell: slices are contiguous in file order.
     weight : (n_local,) int64 or None
         Quantised work of each cell; None means 1 each.
+    weight_unit : float
+        What the integer 1 of it stands for; only reports need it.
     part_speed : (n_parts,) float64
         Relative speed of each part, > 0; all ones by default.
     tolerance : float
@@ -66,6 +68,7 @@ class Problem:
     graph: Callable[[], CellGraph]
     first_gid: int = 0
     weight: Int64Array | None = None
+    weight_unit: float = 1.0
     tolerance: float = 0.03
     level_sizes: tuple[int, ...] = field(default=())
     limit_weight: Int64Array | None = None
