@@ -13,8 +13,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from sfcpart.dtypes import OFFSET, Array, FloatArray, Int32Array, Int64Array, IntArray
-from sfcpart.errors import MeshError
+from sfcpart.dtypes import OFFSET, FloatArray, Int32Array, Int64Array, IntArray
 
 if TYPE_CHECKING:
     from sfcpart.mesh.mesh import Mesh
@@ -157,21 +156,11 @@ def components(graph: CellGraph) -> tuple[int, Int32Array]:
 
 
 def _build(mesh: Mesh) -> CellGraph:
-    """Choose by what the mesh is made of."""
-    from sfcpart.mesh.adjacency import join_cells, sort_faces
+    """Take the arrays of the slice that is the whole mesh."""
+    from sfcpart.slices.graph_slice import graph_slice
+    from sfcpart.slices.mesh_slice import MeshSlice
 
-    if mesh.faces is not None:
-        return _graph(*sort_faces(mesh))
-    if mesh.points is None:
-        raise MeshError(
-            "the mesh is known by its cell centres only, which tell no faces; "
-            "wanted cells with points, or faces (Mesh.from_faces)"
-        )
-    return _graph(*join_cells(mesh))
-
-
-def _graph(*arrays: Array) -> CellGraph:
-    """Freeze the arrays."""
-    for array in arrays:
-        array.flags.writeable = False
-    return CellGraph(*arrays)
+    rows = graph_slice(MeshSlice.whole(mesh))
+    return CellGraph(
+        rows.indptr, rows.indices, rows.data, rows.boundary_count, rows.boundary_measure
+    )

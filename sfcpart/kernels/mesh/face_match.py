@@ -234,6 +234,7 @@ def _join(
         s = tail[at] & _LOW
         cell = s // stride if stride > 0 else np.int64(slot_cell[s])
         face[s, 0] = -2
+        measure[s, 1] = size  # of all: on another rank there may be one more cell
         if cell != last:
             order[lo + i + n] = s
             n += 1
@@ -242,10 +243,8 @@ def _join(
     if n == 2:
         t = np.int64(order[lo + i + 1])
         face[s, 0], face[t, 0] = t, s
-        measure[s, 1], measure[t, 1] = size, size
     elif n > 2:
         for at in range(n):
             s = np.int64(order[lo + i + at])
             face[s, 0] = -3 - (lo + i)
-            measure[s, 1] = size
         order[lo + i + n - 1] = ~s
