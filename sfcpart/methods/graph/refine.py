@@ -1,4 +1,4 @@
-"""Better labels on one graph under part capacities: label moves, local searches, flows.
+"""Better labels on one graph under part capacities: local searches, flows.
 
 None of them ends with a larger cut than it started with unless the start broke a capacity, and
 none breaks a capacity the start kept.
@@ -15,70 +15,15 @@ import numpy as np
 
 from sfcpart.dtypes import Int32Array
 from sfcpart.kernels.graph.flow import flow_pairs
-from sfcpart.kernels.graph.label_moves import look_again, propose_moves, spread_active
 from sfcpart.kernels.graph.local_search import search_from_seeds
 from sfcpart.kernels.graph.two_way import colour_pairs, refine_pairs
 from sfcpart.kernels.threads import run_ranges
-from sfcpart.methods.graph.balance import rebalance
 from sfcpart.methods.graph.labels import Labels, boundary_of, by_part, touching_pairs
 
-__all__ = ["flow_between", "move_labels", "refine_between", "search_locally"]
+__all__ = ["flow_between", "refine_between", "search_locally"]
 
 MOST = 20_000
 """Vertices a side of a band between two parts."""
-
-
-def move_labels(labels: Labels, *, boldness: int = 64, patience: int = 12) -> int:
-    """Improve by data-parallel label moves; return the final cut."""
-    graph, part = labels.graph, labels.part
-    n, n_parts = graph.n, len(labels.capacity)
-    active = boundary_of(labels)
-    wish = np.full(n, -1, np.int32)
-    wish_gain = np.empty(n, np.int64)
-    locked = np.zeros(n, np.bool_)
-    seen = np.zeros(n, np.bool_)
-    rows = (graph.indptr, graph.indices, graph.edge_weight)
-    best = part.copy()
-    best_cut = -1
-    best_over = 0
-    idle = 0
-    while True:
-        outward = sum(
-            run_ranges(
-                propose_moves, len(active), active, *rows, part, n_parts, locked, boldness,
-                wish, wish_gain, smallest=4096,
-            )
-        )  # fmt: skip
-        cut, over = outward // 2, labels.overload
-        if best_cut < 0 or over < best_over or (over == best_over and cut < best_cut):
-            if best_cut < 0 or over < best_over or cut < 0.999 * best_cut:
-                idle = 0
-            best_cut, best_over = cut, over
-            best[:] = part
-        idle += 1
-        if idle > patience or len(active) == 0:
-            break
-        stands = np.zeros(len(active), np.bool_)
-        run_ranges(
-            look_again, len(active), active, *rows, part, wish, wish_gain, stands, smallest=4096
-        )
-        moved = active[stands]
-        locked[active] = False
-        locked[moved] = True
-        wish_of = wish[moved]
-        np.subtract.at(labels.load, part[moved], graph.vertex_weight[moved])
-        np.add.at(labels.load, wish_of, graph.vertex_weight[moved])
-        part[moved] = wish_of
-        wish[active] = -1
-        if labels.overload > 0:
-            before = part.copy()
-            rebalance(labels)
-            shed = np.flatnonzero(before != part).astype(np.int32)
-            moved = np.concatenate([moved, shed])
-        out = np.empty(n, np.int32)
-        active = out[: spread_active(active, moved, graph.indptr, graph.indices, part, seen, out)]
-    labels.restore(best)
-    return best_cut
 
 
 def search_locally(labels: Labels, *, rounds: int, patience: int, seed: int) -> int:

@@ -16,7 +16,7 @@ from sfcpart.methods.graph.balance import join_pieces, rebalance
 from sfcpart.methods.graph.coarsen import contract, hierarchy
 from sfcpart.methods.graph.labels import Labels, boundary_of, cut_of
 from sfcpart.methods.graph.multilevel import split_graph
-from sfcpart.methods.graph.refine import flow_between, move_labels, refine_between, search_locally
+from sfcpart.methods.graph.refine import flow_between, refine_between, search_locally
 from sfcpart.methods.graph.smooth import smooth
 from sfcpart.methods.graph.vcycle import Aim, divide, improve
 
@@ -80,7 +80,6 @@ def test_perfect_balance_is_kept_with_unit_weights(drawn, n_parts):
 
 
 REFINERS = {
-    "label moves": move_labels,
     "local search": lambda labels: search_locally(labels, rounds=3, patience=10, seed=1),
     "flows": lambda labels: flow_between(labels, sweeps=3, depth=4, stretch=8.0),
     "pairs": lambda labels: refine_between(labels, sweeps=3, patience=50, slack=2),
