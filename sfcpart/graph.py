@@ -11,9 +11,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-import numpy as np
-
-from sfcpart.dtypes import OFFSET, FloatArray, Int32Array, Int64Array, IntArray
+from sfcpart.dtypes import FloatArray, Int32Array, Int64Array, IntArray
 
 if TYPE_CHECKING:
     from sfcpart.mesh.mesh import Mesh
@@ -135,7 +133,7 @@ def components(graph: CellGraph) -> tuple[int, Int32Array]:
 
     Notes
     -----
-    O(cells + faces), by scipy.sparse.csgraph.
+    O(cells + faces) (`sfcpart.slices.pieces`).
 
     Examples
     --------
@@ -145,14 +143,10 @@ def components(graph: CellGraph) -> tuple[int, Int32Array]:
     >>> count, label.tolist()
     (2, [0, 1, 0])
     """
-    from scipy.sparse.csgraph import connected_components
+    from sfcpart.slices.graph_slice import GraphSlice
+    from sfcpart.slices.pieces import number_pieces
 
-    count, label = connected_components(graph.to_scipy(), directed=False)
-    first = np.full(count, graph.n_cells, OFFSET)
-    np.minimum.at(first, label, np.arange(graph.n_cells))
-    rank = np.empty(count, np.int32)
-    rank[np.argsort(first)] = np.arange(count, dtype=np.int32)
-    return int(count), rank[label]
+    return number_pieces(GraphSlice.whole(graph))
 
 
 def _build(mesh: Mesh) -> CellGraph:

@@ -1,9 +1,8 @@
-"""Loops behind the figures of a partition: cut faces, sums of parts, pairs of parts, pieces.
+"""Loops behind the figures of a partition: cut faces, sums of parts, pairs of parts.
 
-`count_cuts` and `count_off_lattice` stream over ranges of cells; `join_inside` joins cells of one
-range, `join_across` the rest. Sums per part are taken in cell order by one pass (`sum_parts`), so
-that a float sum cannot depend on the number of threads. Every kernel is linear in cells plus
-entries of the cell graph.
+`count_cuts` and `count_off_lattice` stream over ranges of cells. Sums per part are taken in cell
+order by one pass (`sum_parts`), so that a float sum cannot depend on the number of threads. Every
+kernel is linear in cells plus entries of the cell graph.
 """
 
 from __future__ import annotations
@@ -16,10 +15,7 @@ from sfcpart.kernels._jit import jit
 __all__ = [
     "count_cuts",
     "count_off_lattice",
-    "count_pieces",
     "find_pairs",
-    "join_across",
-    "join_inside",
     "sum_parts",
 ]
 
@@ -133,87 +129,6 @@ def find_pairs(
             if is_new_cell:
                 pair_cells[slot[q]] += 1
     return pair_part[:n_pairs], pair_other[:n_pairs], pair_faces[:n_pairs], pair_cells[:n_pairs]
-
-
-@jit
-def join_inside(
-    start: int,
-    stop: int,
-    indptr: Int64Array,
-    indices: IntArray,
-    cell_part: Int32Array,
-    parent: Int32Array,
-) -> None:
-    """Join neighbours of one part that both lie in the range (union by lowest cell, halving)."""
-    for i in range(start, stop):
-        parent[i] = i
-        part = cell_part[i]
-        a = i
-        for entry in range(indptr[i], indptr[i + 1]):
-            j = indices[entry]
-            if j < start or j >= i or cell_part[j] != part:
-                continue
-            b = parent[j]
-            while parent[b] != b:
-                parent[b] = parent[parent[b]]
-                b = parent[b]
-            if b < a:
-                parent[a] = b
-                a = b
-            elif a < b:
-                parent[b] = a
-
-
-@jit
-def join_across(
-    range_starts: Int64Array,
-    indptr: Int64Array,
-    indices: IntArray,
-    cell_part: Int32Array,
-    parent: Int32Array,
-) -> None:
-    """Join neighbours of one part that lie in different ranges (the last range ends the list)."""
-    for r in range(1, len(range_starts) - 1):
-        start = range_starts[r]
-        for i in range(start, range_starts[r + 1]):
-            part = cell_part[i]
-            for entry in range(indptr[i], indptr[i + 1]):
-                j = indices[entry]
-                if j >= start or cell_part[j] != part:
-                    continue
-                a = parent[i]
-                while parent[a] != a:
-                    parent[a] = parent[parent[a]]
-                    a = parent[a]
-                b = parent[j]
-                while parent[b] != b:
-                    parent[b] = parent[parent[b]]
-                    b = parent[b]
-                if a < b:
-                    parent[b] = a
-                elif b < a:
-                    parent[a] = b
-
-
-@jit
-def count_pieces(
-    cell_part: Int32Array, parent: Int32Array, n_parts: int
-) -> tuple[Int64Array, Int64Array]:
-    """Count the pieces of each part and the cells of its largest piece; flattens `parent`."""
-    size = np.zeros(len(parent), np.int32)
-    for i in range(len(parent)):
-        # Parents have lower numbers, so that the parent's own root is already final.
-        root = parent[parent[i]]
-        parent[i] = root
-        size[root] += 1
-    pieces = np.zeros(n_parts, np.int64)
-    largest = np.zeros(n_parts, np.int64)
-    for i in range(len(parent)):
-        if parent[i] == i:
-            part = cell_part[i]
-            pieces[part] += 1
-            largest[part] = max(largest[part], size[i])
-    return pieces, largest
 
 
 @jit

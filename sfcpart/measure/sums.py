@@ -15,17 +15,16 @@ from sfcpart.dtypes import FloatArray, Int32Array, Int64Array
 from sfcpart.graph import CellGraph
 from sfcpart.kernels.measure import (
     count_cuts,
-    count_pieces,
-    join_across,
-    join_inside,
     sum_parts,
 )
-from sfcpart.kernels.threads import ranges, run_ranges
+from sfcpart.kernels.threads import run_ranges
 from sfcpart.measure.gate import Given, frozen
 from sfcpart.measure.pairs import PartPairs
 from sfcpart.measure.shape import has_measures
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
+from sfcpart.slices.graph_slice import GraphSlice
+from sfcpart.slices.pieces import find_pieces
 
 __all__ = ["CellSums", "FaceSums", "sum_cells"]
 
@@ -129,10 +128,9 @@ def _face_sums(
 
 def _pieces(graph: CellGraph, cell_part: Int32Array, n_parts: int) -> tuple[Int64Array, Int64Array]:
     """Count connected components inside each part, and the cells of the largest."""
-    indptr, indices = graph.indptr, graph.indices
-    parent = np.empty(graph.n_cells, np.int32)
-    run_ranges(join_inside, graph.n_cells, indptr, indices, cell_part, parent)
-    starts = [start for start, _ in ranges(graph.n_cells)]
-    range_starts = np.array([*starts, graph.n_cells], np.int64)
-    join_across(range_starts, indptr, indices, cell_part, parent)
-    return count_pieces(cell_part, parent, n_parts)
+    pieces, largest = np.zeros((2, n_parts), np.int64)
+    found = find_pieces(GraphSlice.whole(graph), cell_part)
+    cell, size = found.counted(GraphSlice.whole(graph))
+    np.add.at(pieces, cell_part[cell], 1)
+    np.maximum.at(largest, cell_part[cell], size)
+    return pieces, largest
