@@ -21,7 +21,7 @@ from __future__ import annotations
 
 from sfcpart.curve.frame import CURVES, Curve
 from sfcpart.curve.keys import curve_keys
-from sfcpart.curve.order import CurveSlice, curve_order, curve_slice, mesh_slice
+from sfcpart.curve.order import CurveSlice, curve_order, curve_slice, key_slice, mesh_slice
 
 __all__ = [
     "CURVES",
@@ -30,5 +30,6 @@ __all__ = [
     "curve_keys",
     "curve_order",
     "curve_slice",
+    "key_slice",
     "mesh_slice",
 ]

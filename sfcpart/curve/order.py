@@ -19,7 +19,7 @@ from sfcpart.kernels.curve.radix import put_rows, sorting, survey, take_rows
 if TYPE_CHECKING:
     from sfcpart.mesh.mesh import Mesh
 
-__all__ = ["CurveSlice", "curve_order", "curve_slice", "mesh_slice"]
+__all__ = ["CurveSlice", "curve_order", "curve_slice", "key_slice", "mesh_slice"]
 
 
 def curve_order(
@@ -117,17 +117,25 @@ def curve_slice(centers: ArrayLike, *, curve: Curve = "hilbert", comm: Comm) -> 
     One local sort, 63 small reductions, one exchange, and one merge.
     """
     frame = Frame.of(centers, curve, comm)
-    key = frame.keys()
-    order, key = sorting(key)
-    if order is None:
-        order = np.arange(len(key), dtype=index_dtype(len(key)))
-    edge = _even_edges(key, comm)
-    pieces = comm.alltoall(_cut(key, edge))
-    received = np.array([len(piece) for piece in pieces], np.int64)
-    merge, key = sorting(_join(pieces))
-    line = CurveSlice(comm, order, edge, received, merge)
+    line, key = _by_key(frame.keys(), comm)
     n_same = np.array([survey(key).n_equal], np.int64)
     return _untie(line, key, frame) if comm.allreduce(n_same)[0] else line
+
+
+def key_slice(key: Int64Array, *, comm: Comm) -> CurveSlice:
+    """Sort cells by keys of the caller's own, no two alike; each rank gets one stretch.
+
+    Parameters
+    ----------
+    key : (n_local,) int64
+        Distinct over all ranks, >= 0.
+    comm : Comm
+
+    Notes
+    -----
+    As `curve_slice`.
+    """
+    return _by_key(key, comm)[0]
 
 
 def mesh_slice(mesh: Mesh, *, curve: Curve = "hilbert", comm: Comm) -> CurveSlice:
@@ -138,6 +146,18 @@ def mesh_slice(mesh: Mesh, *, curve: Curve = "hilbert", comm: Comm) -> CurveSlic
     """
     name = f"slice of the curve {curve}, rank {comm.rank} of {comm.size}"
     return mesh.keep(name, lambda: curve_slice(mesh.centers, curve=curve, comm=comm))
+
+
+def _by_key(key: Int64Array, comm: Comm) -> tuple[CurveSlice, Int64Array]:
+    """Sort by key over all ranks; return the slice, and the keys of this rank's stretch."""
+    order, key = sorting(key)
+    if order is None:
+        order = np.arange(len(key), dtype=index_dtype(len(key)))
+    edge = _even_edges(key, comm)
+    pieces = comm.alltoall(_cut(key, edge))
+    received = np.array([len(piece) for piece in pieces], np.int64)
+    merge, key = sorting(_join(pieces))
+    return CurveSlice(comm, order, edge, received, merge), key
 
 
 def _even_edges(key: Int64Array, comm: Comm) -> Int64Array:

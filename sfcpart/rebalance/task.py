@@ -1,0 +1,87 @@
+"""What a way to split again is given: one frozen value."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from functools import cached_property
+
+import numpy as np
+
+from sfcpart.dtypes import Int32Array, Int64Array
+from sfcpart.measure.step_model import StepModel
+from sfcpart.methods.problem import Problem
+from sfcpart.rebalance.caps import part_caps
+from sfcpart.rebalance.migration import CELL_BYTES, Migration
+from sfcpart.rebalance.relabel import Keep
+
+__all__ = ["Task"]
+
+
+@dataclass(frozen=True, eq=False)
+class Task:
+    """A mesh to divide again (arrays are this rank's slice of the cells).
+
+    Attributes
+    ----------
+    problem : Problem
+        The new mesh with its new weights, and everything else that a split is asked for.
+    home_part : (n_local,) int32
+        Old part that holds each cell, 0 <= part < n_old_parts.
+    n_old_parts : int
+    method : str
+        What splits from scratch, and which curve cuts are shifted along if it is one.
+    keep : {"total", "busiest"}
+        What a relabelling keeps small; see `sfcpart.rebalance.relabel`.
+    steps : int
+        Steps of the solver until the next split.
+    cell_bytes : float
+        Bytes that a moving cell takes along.
+    step_model : StepModel
+        Prices moving, and exchanging in each step.
+    """
+
+    problem: Problem
+    home_part: Int32Array
+    n_old_parts: int
+    method: str = "hilbert"
+    keep: Keep = "total"
+    steps: int = 1000
+    cell_bytes: float = CELL_BYTES
+    step_model: StepModel = field(default_factory=StepModel)
+
+    @cached_property
+    def total(self) -> int:
+        """Quantised weight of all cells of all ranks."""
+        problem = self.problem
+        weight = problem.weight
+        own = len(problem.centers) if weight is None else int(weight.sum())
+        return int(problem.comm.allreduce(np.array([own], np.int64))[0])
+
+    @property
+    def most(self) -> Int64Array:
+        """The most each part may weigh, (n_parts,) int64."""
+        return part_caps(self.total, self.problem.part_speed, self.problem.tolerance)
+
+    @property
+    def kind(self) -> Int64Array:
+        """Number of the speed and limit of each part: parts of one number may trade names."""
+        problem = self.problem
+        limit = problem.part_limit
+        rows = [problem.part_speed] if limit is None else [problem.part_speed, limit]
+        _, number = np.unique(np.stack(rows, axis=1), axis=0, return_inverse=True)
+        return number.reshape(-1).astype(np.int64)
+
+    def migration(self, cell_part: Int32Array) -> Migration:
+        """Return what a new split moves."""
+        return Migration.of(
+            self.home_part,
+            cell_part,
+            n_old_parts=self.n_old_parts,
+            n_parts=self.problem.n_parts,
+            most=self.most,
+            weight=self.problem.weight,
+            unit=self.problem.weight_unit,
+            cell_bytes=self.cell_bytes,
+            network=self.step_model.network,
+            comm=self.problem.comm,
+        )
