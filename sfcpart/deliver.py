@@ -1,4 +1,4 @@
-"""Write what a split leaves behind into one folder: parts, lists, tables, summary, picture."""
+"""Write what a split leaves behind into one folder: parts, lists, tables, summary, report."""
 
 from __future__ import annotations
 
@@ -42,6 +42,7 @@ class Delivery:
     picture: bool
     compress: bool
     title: str | None = None
+    report: bool = False
 
 
 def deliver(
@@ -63,9 +64,19 @@ def deliver(
         _write_parts(place, mesh, partition, graph=graph, how=how, source=source, digest=digest)
         write_cell_part(place / "cell_part.npy", partition)
         write_part_table(place / "parts.csv", _columns(assessment))
+        title = how.title if how.title is not None else "" if source is None else source.name
         if how.picture:
-            title = how.title if how.title is not None else "" if source is None else source.name
             _draw(place, mesh, partition, assessment=assessment, graph=graph, title=title)
+        if how.report:
+            _report(
+                place / "report.html",
+                mesh,
+                partition,
+                assessment=assessment,
+                graph=graph,
+                title=title,
+                options=options,
+            )
         summary = _summary(mesh, assessment, source=source, digest=digest, options=options)
         write_summary(place / "summary.json", summary)
     return target
@@ -160,6 +171,31 @@ def _draw(
         title=title,
         figures=assessment.total,
     )
+
+
+def _report(
+    path: Path,
+    mesh: Mesh,
+    partition: Partition,
+    *,
+    assessment: Assessment,
+    graph: CellGraph | None,
+    title: str,
+    options: Mapping[str, Any],
+) -> None:
+    """Write the report page."""
+    from sfcpart.report.page import split_page, write_page
+
+    page = split_page(
+        mesh,
+        partition,
+        assessment=assessment,
+        graph=graph,
+        title=title,
+        levels=options.get("levels"),
+        options=options,
+    )
+    write_page(path, page)
 
 
 def _columns(assessment: Assessment) -> dict[str, Array]:

@@ -29,6 +29,7 @@ def write_split(
     across: Across = "faces",
     overwrite: bool = False,
     picture: bool = False,
+    report: bool = False,
     compress: bool = False,
     title: str | None = None,
     source: str | PathLike[str] | None = None,
@@ -51,10 +52,11 @@ def write_split(
         extension, but `mesh.vtkhdf` for VTKHDF.
     layers, across : int, {"faces", "points"}
         Depth of the halo, and what it grows across.
-    overwrite, picture, compress : bool
-        Whether to replace an earlier result, to draw `parts.png`, to pack the VTKHDF file.
+    overwrite, picture, report, compress : bool
+        Whether to replace an earlier result, to draw `parts.png`, to write the page `report.html`,
+        to pack the VTKHDF file.
     title : str, optional
-        First line of the picture; by default the name of `source`, or the number of parts.
+        First line of picture and page; by default the name of `source`, or the number of parts.
     source : path, optional
         The mesh file; its digest goes into `summary.json`.
     options : mapping, optional
@@ -95,7 +97,7 @@ def write_split(
         partition,
         assessment=assess(mesh, partition) if assessment is None else assessment,
         graph=graph_of(mesh),
-        how=Delivery(tuple(formats), layers, across, overwrite, picture, compress, title),
+        how=Delivery(tuple(formats), layers, across, overwrite, picture, compress, title, report),
         source=None if source is None else Path(source),
         options={} if options is None else options,
     )

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import click
@@ -33,7 +34,7 @@ Examples:
   sfcpart assess meshes/turbine.vtu --field body
   sfcpart assess meshes/pier_shell.vtk --field sheet --json
   sfcpart assess meshes/channel_mixed.vtu parts
-  sfcpart assess meshes/channel_mixed.vtu cell_part.npy --csv parts.csv --picture parts.png
+  sfcpart assess meshes/channel_mixed.vtu cell_part.npy --csv parts.csv --report report.html
 """
 
 
@@ -53,6 +54,7 @@ Examples:
 )
 @click.option("--csv", "csv_path", type=click.Path(), metavar="FILE", help="Write a row a part.")
 @click.option("--picture", type=click.Path(), metavar="FILE", help="Write a picture (PNG).")
+@click.option("--report", type=click.Path(), metavar="FILE", help="Write a report page (HTML).")
 @click.option("--threads", type=int, metavar="T", help="Threads to use (default: all allowed).")
 @network_options
 @output_options
@@ -86,6 +88,9 @@ def command(mesh: str, parts: str | None, **given: Any) -> None:
     if given["picture"] is not None:
         with doing("drawing"):
             _draw(given["picture"], mesh, loaded, partition, assessment)
+    if given["report"] is not None:
+        with doing(f"writing {given['report']}"):
+            _write_page(given["report"], mesh, loaded, partition, assessment)
     _report(mesh, assessment, as_json=given["as_json"], quiet=given["quiet"])
 
 
@@ -122,16 +127,31 @@ def _draw(path: str, name: str, mesh: Mesh, partition: Partition, assessment: An
         draw_split(place, mesh, partition=partition, graph=graph, title=name, figures=figures)
 
 
+def _write_page(path: str, name: str, mesh: Mesh, partition: Partition, assessment: Any) -> None:
+    """Write the report page."""
+    from sfcpart.api import graph_of
+    from sfcpart.cli.outputs import new_file
+    from sfcpart.report.page import split_page, write_page
+
+    page = split_page(
+        mesh, partition, assessment=assessment, graph=graph_of(mesh), title=Path(name).name
+    )
+    with new_file(path) as place:
+        write_page(place, page)
+
+
 def _report(mesh: str, assessment: Any, *, as_json: bool, quiet: bool) -> None:
     """Print the figures."""
     from sfcpart.cli.console import print_json
-    from sfcpart.cli.figures import counted, headline, print_assessment
+    from sfcpart.cli.figures import print_assessment, print_verdict
+    from sfcpart.report.numbers import counted
+    from sfcpart.report.verdict import judge
 
     if as_json:
         print_json({"mesh": mesh, **assessment.to_json_dict()})
     elif not quiet:
         total = assessment.total
         cells, parts = counted(total["n_cells"], "cell"), counted(total["n_parts"], "part")
-        print(f"{mesh}: {cells} in {parts}: ", end="")
-        print(f"{headline(assessment)}\n")
+        print(f"{mesh}: {cells} in {parts}")
+        print_verdict(judge(assessment))
         print_assessment(assessment)

@@ -6,30 +6,12 @@ from collections.abc import Callable, Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 from sfcpart.cli.console import console, print_pairs, print_table
-from sfcpart.cli.figures import number, percent, seconds
+from sfcpart.report.numbers import amount, duration, number, percent, seconds
 
 if TYPE_CHECKING:
     from sfcpart.comparison import Comparison
 
 __all__ = ["print_comparison"]
-
-
-def _bytes(value: int | None) -> str:
-    """Write an amount of memory with the unit that suits it."""
-    if value is None:
-        return "-"
-    for unit, size in (("GB", 1e9), ("MB", 1e6)):
-        if value >= size:
-            return f"{value / size:.3g} {unit}"
-    return f"{value / 1e3:.0f} kB"
-
-
-def _long(value: float | None) -> str:
-    """Write a long time."""
-    for unit, size in (("d", 86_400.0), ("h", 3_600.0), ("min", 60.0)):
-        if value is not None and value >= 2 * size:
-            return f"{value / size:.3g} {unit}"
-    return seconds(value)
 
 
 HEADS: dict[str, tuple[str, Callable[[Any], str]]] = {
@@ -43,8 +25,8 @@ HEADS: dict[str, tuple[str, Callable[[Any], str]]] = {
     "surface_ratio_mean": ("surface", number),
     "efficiency": ("effic.", percent),
     "split_seconds": ("split", seconds),
-    "peak_bytes": ("memory", _bytes),
-    "run_seconds": ("run", _long),
+    "peak_bytes": ("memory", amount),
+    "run_seconds": ("run", duration),
 }
 """Heading of each column and how it is written, in table order."""
 
@@ -135,7 +117,7 @@ def _explained(
         said.append(("run", text + (f" (none for {', '.join(own)})" if own else "")))
     if best.get("run_seconds"):
         names = " and ".join(comparison.rows[k].name for k in best["run_seconds"])
-        total = _long(figures[best["run_seconds"][0]]["run_seconds"])
+        total = duration(figures[best["run_seconds"][0]]["run_seconds"])
         said.append(("shortest", f"predicted run of {comparison.steps:,} steps: {names}, {total}"))
     if left_out:
         heads = ", ".join(dict.fromkeys(HEADS[name][0].strip("/.") for name in left_out))

@@ -22,12 +22,14 @@ Examples:
 """
 NEXT = """
 Next:
+  open {folder}/report.html in a browser: figures, charts, the parts to turn and pull apart
   look at {folder}/parts.png
   open {folder}/parts.vtkhdf in a viewer of VTKHDF files, coloured by `part`
   sfcpart inspect YOUR_MESH                        what is in your mesh?
   sfcpart split YOUR_MESH --parts 64 -o parts      the same for your mesh
   in your solver, rank r:  sfcpart.read_part("{folder}", r)
 A partition changes the order of summation and says nothing about whether a simulation is right."""
+WRITTEN = ("parts.vtkhdf", "parts.csv", "summary.json", "parts.png", "report.html")
 COLUMNS, ROWS, ACROSS = 100, 20, 20
 
 
@@ -57,8 +59,9 @@ def command(n_parts: int, output: str, threads: int | None, **how: Any) -> None:
     prepare_process(threads)
     from sfcpart import api
     from sfcpart.cli.console import Stages, print_json
-    from sfcpart.cli.figures import headline, print_assessment
+    from sfcpart.cli.figures import print_assessment, print_verdict
     from sfcpart.mesh.channel import channel_water
+    from sfcpart.report.verdict import judge
 
     doing = Stages(quiet=how["quiet"] or how["as_json"])
     with doing("making the Skerry Channel"):
@@ -70,13 +73,13 @@ def command(n_parts: int, output: str, threads: int | None, **how: Any) -> None:
         options = {"demo": "Skerry Channel", "n_parts": n_parts, "weights": ["work"]}
         api.write_split(
             output, mesh, partition, assessment=assessment, overwrite=True, picture=True,
-            title=f"Skerry Channel, {n_parts:,} parts", options=options,
+            report=True, title=f"Skerry Channel, {n_parts:,} parts", options=options,
         )  # fmt: skip
     if how["as_json"]:
         print_json({"output": output, "options": options, **assessment.to_json_dict()})
     elif not how["quiet"]:
         print(f"Skerry Channel: {mesh.n_cells:,} cells into {n_parts:,} parts by hilbert")
-        print(f"{headline(assessment)}\n")
+        print_verdict(judge(assessment))
         print_assessment(assessment)
-        print(f"\nwritten to {output}: parts.vtkhdf, parts.csv, summary.json, parts.png")
+        print(f"\nwritten to {output}: {', '.join(WRITTEN)}")
         print(NEXT.format(folder=output))

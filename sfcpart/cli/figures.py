@@ -4,14 +4,16 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from sfcpart.cli.console import print_pairs, print_table
+from sfcpart.cli.console import console, print_pairs, print_table
+from sfcpart.report.numbers import counted, number, percent, seconds
+from sfcpart.report.verdict import listed
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
 
     from sfcpart.measure.assessment import Assessment
 
-__all__ = ["counted", "headline", "number", "percent", "print_assessment"]
+__all__ = ["counted", "number", "percent", "print_assessment", "print_verdict"]
 
 MOST_PARTS = 12
 _PART_HEADS = {
@@ -30,48 +32,14 @@ _PART_HEADS = {
 }
 
 
-def number(value: float | None) -> str:
-    """Write a number for people: whole ones in full, others to three digits, none as a dash."""
-    if value is None:
-        return "-"
-    if isinstance(value, int):
-        return f"{value:,}"
-    if value and not 1e-3 <= abs(value) < 1e6:
-        return f"{value:.2e}"
-    return f"{value:,.0f}" if abs(value) >= 1000 else f"{value:.3g}"
+def print_verdict(sentences: Sequence[str]) -> None:
+    """Print the verdict, the words of the report page, and an empty line."""
+    from rich.text import Text
 
-
-def counted(count: float | None, what: str) -> str:
-    """Write a count with its noun: 1 cell, 2,784 cells."""
-    return f"{number(count)} {what}{'' if count == 1 else 's'}"
-
-
-def percent(share: float | None) -> str:
-    """Write a share in per cent."""
-    if share is None:
-        return "-"
-    return f"{100 * share:.3g} %" if share < 10 else f"{number(100.0 * share)} %"
-
-
-def seconds(value: float | None) -> str:
-    """Write a time with the unit that suits it."""
-    if value is None:
-        return "-"
-    for unit, size in (("s", 1.0), ("ms", 1e-3), ("us", 1e-6)):
-        if value >= size:
-            return f"{value / size:.3g} {unit}"
-    return f"{value:.3g} s"
-
-
-def headline(assessment: Assessment) -> str:
-    """Say in half a line how good a partition is."""
-    total = assessment.total
-    words = [f"imbalance {percent(total['imbalance'])}"]
-    if total["cut_faces"] is not None:
-        words.append(f"{number(total['cut_faces'])} faces cut ({percent(total['cut_share'])})")
-    if total["efficiency"] is not None:
-        words.append(f"efficiency {percent(total['efficiency'])}")
-    return ", ".join(words)
+    out = console()
+    with out.capture() as captured:
+        out.print(Text(" ".join(sentences)), soft_wrap=False)
+    print("\n".join(line.rstrip() for line in captured.get().splitlines()), end="\n\n")
 
 
 def print_assessment(assessment: Assessment) -> None:
@@ -120,7 +88,7 @@ def _totals(assessment: Assessment) -> list[tuple[str, str]]:
     if total["limit_share"] is not None:
         rows.append(("limit", f"the fullest part holds {percent(total['limit_share'])} of it"))
     if total["n_empty_parts"]:
-        rows.append(("empty parts", _listed(assessment.empty_parts.tolist())))
+        rows.append(("empty parts", listed(assessment.empty_parts.tolist())))
     if total["cut_faces"] is not None:
         rows += _face_totals(assessment)
     return rows
@@ -139,7 +107,7 @@ def _face_totals(assessment: Assessment) -> list[tuple[str, str]]:
     pieces = "every part in one piece"
     if total["n_split_parts"]:
         plural = "parts" if total["n_split_parts"] > 1 else "part"
-        pieces = f"in several pieces: {plural} {_listed(assessment.split_parts.tolist())}"
+        pieces = f"in several pieces: {plural} {listed(assessment.split_parts.tolist())}"
     model = assessment.step_model
     step = f"{seconds(total['step_seconds'])}, of which {percent(total['exchange_share'])}"
     return [
@@ -169,9 +137,3 @@ def _shape(total: Mapping[str, Any]) -> str:
         f"surface {number(total['surface_ratio_mean'])} times the least on average, "
         f"{number(total['surface_ratio_max'])} at worst; {stretch}"
     )
-
-
-def _listed(parts: list[int]) -> str:
-    """List parts, the first few if there are many."""
-    text = ", ".join(map(str, parts[:10]))
-    return text if len(parts) <= 10 else f"{text} and {len(parts) - 10} more"

@@ -25,7 +25,7 @@ printed and nothing is written.
 \b
 Examples:
   sfcpart split meshes/channel_mixed.vtu --parts 8 -o parts
-  sfcpart split meshes/channel_section.msh -n 4 -o parts --periodic inflow:outflow --picture
+  sfcpart split meshes/channel_section.msh -n 4 -o parts --periodic inflow:outflow --report
   sfcpart split meshes/channel_mixed.vtu --levels 2x4 -o parts --weight work
   sfcpart split meshes/channel_mixed.vtu -n 4 --speeds 2*1,2*0.5 --format vtu -o parts
   sfcpart split meshes/channel_mixed.vtu -n 8 --limit memory:300 --json
@@ -35,6 +35,7 @@ Written to DIR:
   parts.vtkhdf   all parts, ghost cells marked, global ids, exchange lists for the solver
   parts.csv      figures of each part
   summary.json   versions, options, digest of the input, all figures
+  report.html    with --report: a page to look at, offline, complete in itself
 
 A partition changes the order of summation, hence the last digits of a parallel run; it says
 nothing about whether a simulation is right.
@@ -78,6 +79,7 @@ nothing about whether a simulation is right.
     help="What the halo goes across.",
 )
 @click.option("--picture", is_flag=True, help="Write parts.png as well.")
+@click.option("--report", is_flag=True, help="Write the page report.html as well.")
 @network_options
 @output_options
 def command(**given: Any) -> None:
@@ -98,7 +100,7 @@ def _check_output(given: dict[str, Any]) -> None:
     """Refuse options for output without a place for it, before anything is loaded."""
     if given["output"] is not None:
         return
-    for name in ("overwrite", "picture", "formats"):
+    for name in ("overwrite", "picture", "report", "formats"):
         if given[name]:
             spelled = "format" if name == "formats" else name
             raise click.UsageError(f"--{spelled} needs a folder to write to: give -o DIR")

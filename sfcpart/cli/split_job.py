@@ -5,9 +5,11 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 from sfcpart.cli.console import Stages, print_json
-from sfcpart.cli.figures import counted, headline, print_assessment
+from sfcpart.cli.figures import print_assessment, print_verdict
 from sfcpart.cli.inputs import read_mesh
 from sfcpart.cli.wishes import load_wish, shape_wish
+from sfcpart.report.numbers import counted
+from sfcpart.report.verdict import judge
 
 if TYPE_CHECKING:
     from sfcpart.measure.assessment import Assessment
@@ -80,13 +82,14 @@ class SplitJob:
             across=given["across"],
             overwrite=given["overwrite"],
             picture=given["picture"],
+            report=given["report"],
             source=self.source,
             options=self._told_options(),
         )
 
     def _told_options(self) -> dict[str, Any]:
         """Return the options as they go into the summary."""
-        left_out = ("output", "overwrite", "picture")
+        left_out = ("output", "overwrite", "picture", "report")
         told = {k: v for k, v in self.options.items() if k not in left_out and v not in (None, ())}
         return told | {"formats": list(self.formats)}
 
@@ -104,7 +107,7 @@ class SplitJob:
             f"{self.source}: {counted(n_cells, 'cell')} into {counted(n_parts, 'part')} by "
             f"{self.options['method']}"
         )
-        print(f"{headline(self.assessment)}\n")
+        print_verdict(judge(self.assessment))
         print_assessment(self.assessment)
         if output is not None:
             print(f"\nwritten to {output}: {', '.join(self._files())}")

@@ -183,7 +183,8 @@ def test_assess_measures_with_the_same_weights_speeds_and_limits(sfcpart):
 def test_assess_writes_csv_and_picture(sfcpart, tmp_path):
     code, out, _ = sfcpart("assess meshes/turbine.vtu --field body --csv a.csv --picture a.png")
     assert code == 0
-    assert out.startswith("meshes/turbine.vtu: 1,008 cells in 2 parts: imbalance 90.5 %")
+    assert out.startswith("meshes/turbine.vtu: 1,008 cells in 2 parts\nThe work is unevenly shared")
+    assert "carries 90.5 % more than its fair share" in " ".join(out.split())
     rows = list(csv.DictReader((tmp_path / "a.csv").open()))
     assert [row["cells"] for row in rows] == ["960", "48"]
     assert (tmp_path / "a.png").read_bytes()[:4] == b"\x89PNG"

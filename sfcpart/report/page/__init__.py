@@ -1,0 +1,33 @@
+"""Report pages: one HTML file each, complete in itself.
+
+A page is a value (`Page`) made by one of the builders here and written by `write_page`. Its content
+is `content`, its looks are `templates/`, `style.css` and `scripts/`, the libraries it carries
+`libraries/` (packed by tools/page/).
+"""
+
+from sfcpart.report.page.content import (
+    Axis,
+    Chart,
+    ColumnHead,
+    Figure,
+    MatrixPlot,
+    Page,
+    Series,
+    TablePlot,
+)
+from sfcpart.report.page.split import split_page
+from sfcpart.report.page.write import render_page, write_page
+
+__all__ = [
+    "Axis",
+    "Chart",
+    "ColumnHead",
+    "Figure",
+    "MatrixPlot",
+    "Page",
+    "Series",
+    "TablePlot",
+    "render_page",
+    "split_page",
+    "write_page",
+]
