@@ -13,6 +13,7 @@ from numpy.typing import ArrayLike
 from sfcpart.curve import Curve, CurveSlice, curve_slice, mesh_slice
 from sfcpart.dtypes import Array, FloatArray, Int64Array
 from sfcpart.errors import InputError, PartitionError, SfcpartError, WeightError
+from sfcpart.files.weights_file import is_cost_file, read_costs
 from sfcpart.graph import cell_graph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.methods.problem import Cuts, Problem
@@ -20,6 +21,7 @@ from sfcpart.slices.mesh_slice import MeshSlice
 from sfcpart.weights import (
     FACE_WEIGHTS,
     FaceWeight,
+    WeightSpec,
     cell_weights,
     counts_faces,
     groups_from_boundaries,
@@ -35,8 +37,8 @@ if TYPE_CHECKING:
 
 __all__ = ["Weights", "held_of", "part_speeds", "plan_problem", "weights_of"]
 
-Weights: TypeAlias = ArrayLike | str | Sequence[str] | None
-"""One number a cell, or one or more specifications whose values are multiplied."""
+Weights: TypeAlias = ArrayLike | str | WeightSpec | Sequence[str | WeightSpec] | None
+"""One number a cell, or one or more specifications (or files of costs) that are multiplied."""
 
 
 def held_of(mesh: Mesh | MeshSlice, comm: Comm | None = None) -> MeshSlice:
@@ -130,10 +132,29 @@ def weights_of(mesh: Mesh | MeshSlice, weights: Weights) -> Array | None:
     if weights is None:
         return None
     held = held_of(mesh)
+    weights = _with_costs_read(weights, held)
     graph = cell_graph(held.mesh) if counts_faces(weights, held.mesh) else None
     error, found = None, None
     try:
         found = cell_weights(held.mesh, weights, graph=graph)
+    except SfcpartError as caught:
+        error = caught
+    held.comm.check(error)
+    return found
+
+
+def _with_costs_read(weights: Any, held: MeshSlice) -> Any:
+    """Put what files of costs hold in place of their names (collective)."""
+    texts = [weights] if isinstance(weights, str) else weights
+    specs: list[Any] = list(texts) if isinstance(texts, list | tuple) else []
+    fields = held.mesh.cell_fields
+    files = [isinstance(s, str) and is_cost_file(s) and s not in fields for s in specs]
+    if not any(files):
+        return weights
+    error, found = None, []
+    try:
+        for spec, is_file in zip(specs, files, strict=True):
+            found.append(read_costs(spec.strip()).spec if is_file else spec)
     except SfcpartError as caught:
         error = caught
     held.comm.check(error)

@@ -61,7 +61,7 @@ def cell_weights(
     [3.0, 10.0]
     """
     if isinstance(spec, str) and spec in mesh.cell_fields:
-        return _field(mesh, spec)
+        return field_values(mesh, spec)
     specs = [spec] if isinstance(spec, (str, WeightSpec)) else spec
     if not _all_texts(specs):
         return _given(specs, mesh.n_cells)
@@ -94,7 +94,7 @@ def counts_faces(
     if not _all_texts(specs):
         return False
     texts: Sequence[str | WeightSpec] = specs  # type: ignore[assignment]  # as just checked
-    return any(term.is_mix for one in texts for term in _terms(one, mesh))
+    return any(term.counts_faces for one in texts for term in _terms(one, mesh))
 
 
 def _terms(spec: str | WeightSpec, mesh: Mesh) -> tuple[Term, ...]:
@@ -132,7 +132,7 @@ def _evaluate(
     """Return the product of the terms of one specification."""
     if isinstance(spec, str):
         if spec in mesh.cell_fields:
-            return _field(mesh, spec)
+            return field_values(mesh, spec)
         spec = parse_weights(spec)
     product = _term_weights(mesh, spec.terms[0], graph)
     for term in spec.terms[1:]:
@@ -147,16 +147,26 @@ def _term_weights(
     """Return the weights one factor gives."""
     if term.number is not None:
         return np.full(mesh.n_cells, term.number)
+    if term.addends:
+        return _sum(mesh, term, graph)
     if term.is_mix:
         return _face_weights(dict(term.table), graph)
     if term.field is None:
         return _kind_weights(mesh, dict(term.table))
     if term.table:
         return _region_weights(mesh, term.field, dict(term.table))
-    return _field(mesh, term.field)
+    return field_values(mesh, term.field)
 
 
-def _field(mesh: Mesh, name: str, *, kinds: str = "biuf") -> Array:
+def _sum(mesh: Mesh, term: Term, graph: CellGraph | Callable[[], CellGraph] | None) -> FloatArray:
+    """Return the weights that several terms add up to."""
+    total = np.zeros(mesh.n_cells)
+    for factor, inner in term.addends:
+        total += factor * np.asarray(_term_weights(mesh, inner, graph), np.float64)
+    return total
+
+
+def field_values(mesh: Mesh, name: str, *, kinds: str = "biuf") -> Array:
     """Return a cell field with one number a cell."""
     if name not in mesh.cell_fields:
         known = ", ".join(sorted(map(repr, mesh.cell_fields))) or "none"
@@ -198,14 +208,14 @@ def _kind_weights(mesh: Mesh, table: Mapping[str, float]) -> FloatArray:
 
 def _region_weights(mesh: Mesh, name: str, table: Mapping[str, float]) -> FloatArray:
     """Return the weight of each cell's value in a field."""
-    values, place = np.unique(_field(mesh, name, kinds="biufUS"), return_inverse=True)
-    labels = [_label(value, name) for value in values]
+    values, place = np.unique(field_values(mesh, name, kinds="biufUS"), return_inverse=True)
+    labels = [region_label(value, name) for value in values]
     weight = np.array([table.get(label, table.get(OTHER, np.nan)) for label in labels])
     _refuse_missing(weight, table, labels, f"value of cell field {name!r}")
     return np.asarray(weight[place], np.float64)
 
 
-def _label(value: object, name: str) -> str:
+def region_label(value: object, name: str) -> str:
     """Return a value of a region field as it is written in a table."""
     if isinstance(value, bytes):
         return value.decode(errors="replace")

@@ -21,6 +21,7 @@ from numpy.typing import ArrayLike
 from sfcpart.dtypes import BoolArray, FloatArray, Int64Array
 from sfcpart.errors import InputError, WeightError
 from sfcpart.weights.measured import Measured, Rows, gather_rows
+from sfcpart.weights.spec import WeightSpec, costs_spec
 
 __all__ = ["Speeds", "WeightFit", "fit_weights"]
 
@@ -73,6 +74,22 @@ class WeightFit:
     n_rows: int
     n_steps: int
     notes: tuple[str, ...] = field(default=())
+
+    def to_weights(self) -> WeightSpec:
+        """Return the costs as a specification of weights, which every call takes.
+
+        Raises
+        ------
+        WeightError
+            If a class is none that cells can have.
+
+        Examples
+        --------
+        >>> fit_weights([2.0, 4.0], {"cell": [10, 20]}).to_weights().needs_graph
+        True
+        """
+        cost = dict(zip(self.classes, self.cost.tolist(), strict=True))
+        return costs_spec(cost, text="the fit")
 
     def to_json_dict(self) -> dict[str, Any]:
         """Return all figures as plain Python values (NaN is for the writer to replace).
