@@ -149,8 +149,11 @@ def check_polyhedra(faces: Polyhedra | None, kind: Array, n_points: int) -> Poly
     )
 
 
-def check_face_cells(face_cell: ArrayLike, n_cells: int) -> IntArray:
-    """Check the two cells of each face; the absent cell goes second."""
+def check_face_cells(face_cell: ArrayLike, n_cells: int, *, first: int = 0) -> IntArray:
+    """Check the two cells of each face; the absent cell goes second.
+
+    `first` is the number of the first face, for messages.
+    """
     pair = as_array(face_cell, "face_cell")
     if pair.size == 0:
         pair = np.empty((0, 2), index_dtype(n_cells))
@@ -163,7 +166,7 @@ def check_face_cells(face_cell: ArrayLike, n_cells: int) -> IntArray:
     if wrong.any():
         bad = int(np.argmax(wrong))
         raise MeshError(
-            f"face {bad} joins cells {pair[bad].tolist()}; wanted two of the cells 0 to "
+            f"face {first + bad} joins cells {pair[bad].tolist()}; wanted two of the cells 0 to "
             f"{n_cells - 1}, or -1 as the second on the boundary"
         )
     pair = pair.astype(index_dtype(n_cells), copy=False)
@@ -175,11 +178,16 @@ def check_face_cells(face_cell: ArrayLike, n_cells: int) -> IntArray:
 
 def bare_cells(n_cells: int) -> dict[str, Any]:
     """Return the cell arrays of a mesh without points."""
-    if not n_cells:
-        raise MeshError("the mesh has no cells; wanted at least one cell centre")
+    check_some_cells(n_cells)
     return {
         "points": None,
         "kind": frozen(np.full(n_cells, VERTEX, KIND)),
         "indptr": frozen(np.zeros(n_cells + 1, OFFSET)),
         "indices": frozen(np.empty(0, np.int32)),
     }
+
+
+def check_some_cells(n_cells: int) -> None:
+    """Refuse a mesh without cells."""
+    if not n_cells:
+        raise MeshError("the mesh has no cells; wanted at least one cell centre")

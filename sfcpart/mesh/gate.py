@@ -70,8 +70,11 @@ def as_array(values: ArrayLike, what: str) -> Array:
     return array.astype(array.dtype.newbyteorder("="), copy=False)
 
 
-def check_positions(positions: ArrayLike, what: str) -> FloatArray:
-    """Check finite coordinates in 2 or 3 columns; `what` names a row in messages ("point")."""
+def check_positions(positions: ArrayLike, what: str, *, first: int = 0) -> FloatArray:
+    """Check finite coordinates in 2 or 3 columns.
+
+    `what` names a row in messages ("point"), `first` is the number of the first.
+    """
     array = as_array(positions, f"{what} coordinates")
     if array.dtype.kind not in "fiu":
         raise MeshError(f"{what} coordinates have dtype {array.dtype}; wanted real numbers")
@@ -82,14 +85,14 @@ def check_positions(positions: ArrayLike, what: str) -> FloatArray:
     if array.size and not (np.isfinite(array.min()) and np.isfinite(array.max())):
         bad = int(np.flatnonzero(~np.isfinite(array).all(axis=1))[0])
         raise MeshError(
-            f"{what} {bad} has coordinates {array[bad].tolist()}; wanted finite numbers: "
+            f"{what} {first + bad} has coordinates {array[bad].tolist()}; wanted finite numbers: "
             f"repair or remove that {what}"
         )
     return frozen(array)
 
 
-def check_sizes(sizes: ArrayLike, n_rows: int, what: str) -> FloatArray:
-    """Check measures: one finite number >= 0 a row."""
+def check_sizes(sizes: ArrayLike, n_rows: int, what: str, *, first: int = 0) -> FloatArray:
+    """Check measures: one finite number >= 0 a row; `first` is the number of the first."""
     array = as_array(sizes, f"measures of {what}s")
     if array.shape != (n_rows,) or array.dtype.kind not in "fiu":
         raise MeshError(
@@ -99,7 +102,9 @@ def check_sizes(sizes: ArrayLike, n_rows: int, what: str) -> FloatArray:
     array = array.astype(COORDINATE, copy=False)
     if array.size and not (array.min() >= 0 and np.isfinite(array.max())):
         bad = int(np.flatnonzero(~(np.isfinite(array) & (array >= 0)))[0])
-        raise MeshError(f"{what} {bad} has measure {array[bad]}; wanted finite numbers >= 0")
+        raise MeshError(
+            f"{what} {first + bad} has measure {array[bad]}; wanted finite numbers >= 0"
+        )
     return frozen(array)
 
 
@@ -134,8 +139,11 @@ def check_indices(flat: Array, n: int, what: str, indptr: Int64Array) -> IntArra
     return flat.astype(index_dtype(n), copy=False)
 
 
-def check_kinds(kind: ArrayLike, indptr: Int64Array) -> KindArray:
-    """Check that codes are known and each cell has as many points as its kind."""
+def check_kinds(kind: ArrayLike, indptr: Int64Array, *, first: int = 0) -> KindArray:
+    """Check that codes are known and each cell has as many points as its kind.
+
+    `first` is the number of the first cell, for messages.
+    """
     codes = as_array(kind, "kinds")
     if codes.ndim != 1 or codes.dtype.kind not in "iu":
         raise MeshError(f"kinds have shape {codes.shape}, dtype {codes.dtype}; wanted VTK codes")
@@ -146,7 +154,7 @@ def check_kinds(kind: ArrayLike, indptr: Int64Array) -> KindArray:
     if unknown.any():
         bad = int(np.flatnonzero(unknown)[0])
         raise MeshError(
-            f"cell {bad} has VTK type {np.asarray(kind)[bad]}, which is not known; "
+            f"cell {first + bad} has VTK type {np.asarray(kind)[bad]}, which is not known; "
             f"known are {', '.join(map(str, KINDS))}"
         )
     width = np.diff(indptr)
@@ -157,7 +165,7 @@ def check_kinds(kind: ArrayLike, indptr: Int64Array) -> KindArray:
     if wrong.any():
         bad = int(np.flatnonzero(wrong)[0])
         name, many = KINDS[int(codes[bad])].name, wanted[bad] or f"at least {least[codes[bad]]}"
-        raise MeshError(f"cell {bad} ({name}) has {width[bad]} points; wanted {many}")
+        raise MeshError(f"cell {first + bad} ({name}) has {width[bad]} points; wanted {many}")
     return frozen(codes)
 
 

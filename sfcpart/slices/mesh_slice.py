@@ -23,7 +23,7 @@ from sfcpart.mesh.gate import frozen
 from sfcpart.mesh.mesh import BoundaryGroup, FaceList, Mesh, Polyhedra
 from sfcpart.slices.routing import block_bounds, compact
 
-__all__ = ["GroupRows", "MeshSlice", "cut_mesh", "rows_of_mesh", "scatter_mesh"]
+__all__ = ["GroupRows", "MeshSlice", "assemble_slice", "cut_mesh", "scatter_mesh"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -172,7 +172,7 @@ def cut_mesh(mesh: Mesh, comm: Comm, *, rank_first: ArrayLike | None = None) -> 
     [[0], [1, 2]]
     """
     first = _checked_bounds(rank_first, mesh.n_cells, comm.size)
-    return _unpacked(_packed(mesh, first, comm.rank), _about(mesh), first, comm)
+    return assemble_slice(_packed(mesh, first, comm.rank), _about(mesh), first, comm)
 
 
 def scatter_mesh(
@@ -226,7 +226,7 @@ def scatter_mesh(
             came = _sent_from_root(packed.get(name), rank, comm)
             if comm.rank == rank:
                 mine[name] = came
-    return _unpacked(mine, about, first, comm)
+    return assemble_slice(mine, about, first, comm)
 
 
 def _sent_from_root(array: Array | None, rank: int, comm: Comm) -> Array:
@@ -286,13 +286,11 @@ def _pack_points(mesh: Mesh, lo: int, hi: int, packed: dict[str, Array]) -> None
     from sfcpart.slices.elements import elements_of_cells
 
     assert mesh.points is not None
-    entries, indptr = rows_of_mesh(mesh.indptr, mesh.indices, lo, hi)
+    entries, indptr = _rows_of(mesh.indptr, mesh.indices, lo, hi)
     faces = mesh.polyhedra
     face_points = np.empty(0, entries.dtype)
     if faces is not None:
-        rows, packed["poly_cell_indptr"] = rows_of_mesh(
-            faces.cell_indptr, faces.cell_indices, lo, hi
-        )
+        rows, packed["poly_cell_indptr"] = _rows_of(faces.cell_indptr, faces.cell_indices, lo, hi)
         used, packed["poly_cell_indices"] = compact(rows)
         size = np.diff(faces.face_indptr)[used]
         packed["poly_face_indptr"] = np.concatenate(([0], np.cumsum(size))).astype(OFFSET)
@@ -308,17 +306,37 @@ def _pack_points(mesh: Mesh, lo: int, hi: int, packed: dict[str, Array]) -> None
         packed.update({f"group:{k}:{name}": array for name, array in rows_held.items()})
 
 
-def rows_of_mesh(
+def _rows_of(
     indptr: Int64Array, indices: IntArray, lo: int, hi: int
 ) -> tuple[IntArray, Int64Array]:
     """Return the entries of rows `lo` to `hi - 1` of a CSR relation and their offsets from 0."""
     return indices[indptr[lo] : indptr[hi]], indptr[lo : hi + 1] - indptr[lo]
 
 
-def _unpacked(
+def assemble_slice(
     packed: dict[str, Array], about: dict[str, Any], first: Int64Array, comm: Comm
 ) -> MeshSlice:
-    """Make the slice of packed arrays."""
+    """Make a slice of its arrays, checked by who made them.
+
+    Parameters
+    ----------
+    packed : dict of str to array
+        "kind", "indptr", "indices", "points", "point_gid", "given_center", "given_measure",
+        "face_cell" and "face_measure", "poly_face_indptr" and the other three of `Polyhedra`,
+        "cell:NAME" and "point:NAME" for fields, and for the k-th boundary group
+        "group:k:kind", ":indptr", ":indices", ":element_gid" and ":cell_gid"; what does not occur
+        is left out, on all ranks alike.
+    about : dict
+        "n_points", "dim", "space_dim" of the whole mesh, and "groups": name, tag and number of
+        elements of each.
+    first : (size + 1,) int64
+        First cell of every rank.
+    comm : Comm
+
+    Returns
+    -------
+    MeshSlice
+    """
     held = {name: frozen(array) for name, array in packed.items()}
     point_gid = held.get("point_gid")
     none = np.zeros(len(held["kind"]) + 1, OFFSET)

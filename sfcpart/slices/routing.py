@@ -11,10 +11,11 @@ from itertools import pairwise
 import numpy as np
 
 from sfcpart.comm.base import Comm
-from sfcpart.dtypes import GID, Array, Int64Array, IntArray, index_dtype
+from sfcpart.dtypes import GID, OFFSET, Array, Int64Array, IntArray, index_dtype
 
 __all__ = [
     "Dealing",
+    "ask_ragged",
     "ask_rows",
     "block_bounds",
     "compact",
@@ -22,8 +23,10 @@ __all__ = [
     "gather_rows",
     "hand_out_rows",
     "owner_of",
+    "take_ragged",
 ]
 
+_STRETCH = 1 << 17
 _WINDOW = 4  # numbers looked up in a table of at most so many times their count
 
 
@@ -82,6 +85,26 @@ class Dealing:
         sent = rows if self.order is None else rows[self.order]
         return _joined(self.comm.alltoall([sent[a:b] for a, b in pairwise(self.edge)]))
 
+    def forward_ragged(self, indptr: Int64Array, data: Array) -> tuple[Int64Array, Array]:
+        """Send rows of different lengths (CSR) to their ranks."""
+        if self.order is not None:
+            indptr, data = take_ragged(indptr, data, self.order)
+        came = self.comm.alltoall([data[indptr[a] : indptr[b]] for a, b in pairwise(self.edge)])
+        size = self.comm.alltoall([np.diff(indptr[a : b + 1]) for a, b in pairwise(self.edge)])
+        return _offsets(_joined(size)), _joined(came)
+
+    def back_ragged(self, indptr: Int64Array, data: Array) -> tuple[Int64Array, Array]:
+        """Send rows of different lengths made for those that came back to where these are from."""
+        edge = np.concatenate(([0], np.cumsum(self.received)))
+        came = self.comm.alltoall([data[indptr[a] : indptr[b]] for a, b in pairwise(edge)])
+        size = self.comm.alltoall([np.diff(indptr[a : b + 1]) for a, b in pairwise(edge)])
+        offset, rows = _offsets(_joined(size)), _joined(came)
+        if self.order is None:
+            return offset, rows
+        home = np.empty_like(self.order)
+        home[self.order] = np.arange(len(home))
+        return take_ragged(offset, rows, home)
+
     def back(self, rows: Array) -> Array:
         """Send rows made for those that came back to where these are from, in their order."""
         edge = np.concatenate(([0], np.cumsum(self.received)))
@@ -135,6 +158,59 @@ def ask_rows(comm: Comm, rows: Array, *, first: Int64Array, gid: Array) -> Array
     way = dealing(comm, owner_of(gid, first))
     wanted = way.forward(np.asarray(gid, GID)) - first[comm.rank]
     return way.back(rows[wanted])
+
+
+def ask_ragged(
+    comm: Comm, indptr: Int64Array, data: Array, *, first: Int64Array, gid: Array
+) -> tuple[Int64Array, Array]:
+    """Return rows of different lengths by number from the ranks that hold them (collective).
+
+    Parameters
+    ----------
+    comm : Comm
+    indptr, data : CSR
+        This rank's block.
+    first : (size + 1,) int64
+        Bounds of the blocks.
+    gid : (n,) integers
+        Rows wanted, in any order.
+
+    Examples
+    --------
+    >>> from sfcpart.comm import SerialComm
+    >>> offset, found = ask_ragged(SerialComm(), np.array([0, 2, 3]), np.array([5, 6, 7]),
+    ...                            first=np.array([0, 2]), gid=np.array([1, 0]))
+    >>> offset.tolist(), found.tolist()
+    ([0, 1, 3], [7, 5, 6])
+    """
+    way = dealing(comm, owner_of(gid, first))
+    wanted = way.forward(np.asarray(gid, GID)) - first[comm.rank]
+    return way.back_ragged(*take_ragged(indptr, data, wanted))
+
+
+def take_ragged(indptr: Int64Array, data: Array, rows: IntArray) -> tuple[Int64Array, Array]:
+    """Return some rows of a CSR relation, in the order given.
+
+    Examples
+    --------
+    >>> [a.tolist() for a in take_ragged(np.array([0, 1, 3]), np.array([5, 6, 7]), np.array([1]))]
+    [[0, 2], [6, 7]]
+    """
+    first = int(indptr[0])
+    n_rows, n_entries = len(indptr) - 1, int(indptr[-1]) - first
+    width = n_entries // n_rows if n_rows else 0
+    if n_entries == width * n_rows and np.all(np.diff(indptr) == width):
+        table = data[first : first + n_entries].reshape(n_rows, width, *data.shape[1:])
+        found = table[rows].reshape(-1, *data.shape[1:])
+        return np.arange(len(rows) + 1, dtype=OFFSET) * width, found
+    offset = _offsets(indptr[rows + 1] - indptr[rows])
+    out = np.empty((int(offset[-1]), *data.shape[1:]), data.dtype)
+    for a in range(0, len(rows), _STRETCH):  # the numbers of the entries take 8 bytes each
+        some = rows[a : a + _STRETCH]
+        size = indptr[some + 1] - indptr[some]
+        shift = np.repeat(indptr[some] - (np.cumsum(size) - size), size)
+        out[offset[a] : offset[a + len(some)]] = data[shift + np.arange(len(shift))]
+    return offset, out
 
 
 def gather_rows(comm: Comm, rows: Array) -> Array:
@@ -196,6 +272,11 @@ def compact(ids: IntArray) -> tuple[Int64Array, IntArray]:
     table = np.empty(span, index_dtype(len(gid)))
     table[gid] = np.arange(len(gid), dtype=table.dtype)
     return gid + low, table[shifted]
+
+
+def _offsets(size: Array) -> Int64Array:
+    """Return where rows of these sizes begin, and where the last ends."""
+    return np.concatenate(([0], np.cumsum(size))).astype(OFFSET, copy=False)
 
 
 def _joined(pieces: list[Array]) -> Array:

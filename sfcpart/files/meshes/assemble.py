@@ -19,7 +19,7 @@ from sfcpart.mesh.gate import check_indices, check_kinds, check_offsets, frozen
 from sfcpart.mesh.kinds import KINDS, kind_tables
 from sfcpart.mesh.mesh import BoundaryGroup, Mesh
 
-__all__ = ["TAG_FIELDS", "build_mesh"]
+__all__ = ["TAG_FIELDS", "as_numbers", "build_mesh", "element_dimension", "tag_label"]
 
 TAG_FIELDS = (
     "gmsh:physical",
@@ -59,7 +59,7 @@ def build_mesh(raw: RawMesh, source: str) -> Mesh:
 
 def _build(raw: RawMesh) -> Mesh:
     """Make the mesh, with messages that do not name the file yet."""
-    dimension = _element_dimension(raw.kind)
+    dimension = element_dimension(raw.kind)
     fields = _cell_fields(raw, dimension)
     is_cell = dimension == dimension.max()
     groups: tuple[BoundaryGroup, ...] = ()
@@ -81,7 +81,7 @@ def _build(raw: RawMesh) -> Mesh:
     )
 
 
-def _element_dimension(kind: Array) -> Array:
+def element_dimension(kind: Array) -> Array:
     """Return the dimension of every element; refuse kinds nobody here knows, and no cells."""
     if not len(kind):
         raise MeshError("holds no cells")
@@ -160,7 +160,7 @@ def _groups_by_tag(
     raw: RawMesh, mask: BoolArray, dim: int, fields: Mapping[str, Array]
 ) -> list[BoundaryGroup]:
     """Group elements of one dimension by the most telling integer field of the file."""
-    label = next((name for name in TAG_FIELDS if _is_tag(fields.get(name))), None)
+    label = tag_label(fields)
     if label is None:
         return [_group(raw, mask, ("points", "lines", "surfaces")[dim], -1)]
     tags = fields[label]
@@ -169,6 +169,11 @@ def _groups_by_tag(
         name = raw.names.get((dim, tag), f"{label}={tag}")
         groups.append(_group(raw, mask & (tags == tag), name, tag))
     return groups
+
+
+def tag_label(fields: Mapping[str, Array]) -> str | None:
+    """Return the most telling field of integers that tells groups apart, if there is one."""
+    return next((name for name in TAG_FIELDS if _is_tag(fields.get(name))), None)
 
 
 def _is_tag(values: Array | None) -> bool:
@@ -195,10 +200,15 @@ def _with_distinct_names(groups: Sequence[BoundaryGroup]) -> list[BoundaryGroup]
 
 
 def _numbers(values: Array, n_rows: int) -> Array | None:
-    """Return a field in native byte order, one column flat; None if it holds no numbers."""
+    """Return a field as `as_numbers` does; None if it holds no numbers."""
     array = np.asarray(values)
     if array.dtype.kind not in "biuf" or len(array) != n_rows:
         return None
-    if array.ndim > 1 and array.size == n_rows:
-        array = array.reshape(n_rows)
+    return as_numbers(array)
+
+
+def as_numbers(array: Array) -> Array:
+    """Return a field in native byte order, one column flat."""
+    if array.ndim > 1 and np.prod(array.shape[1:]) == 1:
+        array = array.reshape(len(array))
     return array.astype(array.dtype.newbyteorder("="), copy=False)

@@ -28,7 +28,15 @@ from sfcpart.errors import FileError, InputError, MeshError
 from sfcpart.files.hdf5 import check_stored, create_hdf5, read_hdf5
 from sfcpart.mesh.mesh import Mesh
 
-__all__ = ["faces_of", "put_faces", "read_faces", "write_faces"]
+__all__ = [
+    "DATASETS",
+    "checked_group",
+    "faces_of",
+    "put_faces",
+    "read_faces",
+    "stored_numbers",
+    "write_faces",
+]
 
 _LAYOUT = 1
 _GROUP = "faces_mesh"
@@ -59,15 +67,9 @@ def read_faces(path: str | PathLike[str]) -> Mesh:
 
 def faces_of(place: Any, path: str | PathLike[str]) -> Mesh:
     """Read the mesh in the group `faces_mesh` of an open HDF5 file or of a group in it."""
-    if _GROUP not in place:
-        raise FileError(f"{path}: has no group {_GROUP}")
-    group = place[_GROUP]
-    if group.attrs.get("layout") != _LAYOUT:
-        raise FileError(
-            f"{path}: {_GROUP} has layout {group.attrs.get('layout')}; wanted {_LAYOUT}"
-        )
+    group = checked_group(place, path)
     fields = group.get("cell_fields", {})
-    arrays = [_array(group, name, path) for name in _DATASETS]
+    arrays = [_array(group, name, path) for name in DATASETS]
     cell_fields = {name: _array(fields, name, path) for name in fields}
     try:
         return Mesh.from_faces(*arrays, cell_fields=cell_fields)
@@ -75,16 +77,33 @@ def faces_of(place: Any, path: str | PathLike[str]) -> Mesh:
         raise MeshError(f"{path}: {error}") from error
 
 
-_DATASETS = ("face_cell", "face_measure", "cell_center", "cell_measure")
+def checked_group(place: Any, path: str | PathLike[str]) -> Any:
+    """Return the group of the mesh, which must have the layout that is known."""
+    if _GROUP not in place:
+        raise FileError(f"{path}: has no group {_GROUP}")
+    group = place[_GROUP]
+    if group.attrs.get("layout") != _LAYOUT:
+        raise FileError(
+            f"{path}: {_GROUP} has layout {group.attrs.get('layout')}; wanted {_LAYOUT}"
+        )
+    return group
+
+
+DATASETS = ("face_cell", "face_measure", "cell_center", "cell_measure")
 
 
 def _array(group: Any, name: str, path: str | PathLike[str]) -> Array:
     """Read one dataset of numbers."""
+    return np.asarray(stored_numbers(group, name, path)[()])
+
+
+def stored_numbers(group: Any, name: str, path: str | PathLike[str]) -> Any:
+    """Return a dataset, which must hold numbers."""
     dtype = getattr(group.get(name), "dtype", None)
     if dtype is None or dtype.kind not in "biuf":
         raise FileError(f"{path}: {_GROUP}/{name} is {dtype or 'missing'}; wanted numbers")
-    check_stored(group[name], path)
-    return np.asarray(group[name][()])
+    checkstored_numbers(group[name], path)
+    return group[name]
 
 
 def write_faces(path: str | PathLike[str], mesh: Mesh) -> None:
@@ -114,7 +133,7 @@ def put_faces(place: Any, mesh: Mesh) -> None:
     arrays = _given_by_faces(mesh)
     group = place.create_group(_GROUP)
     group.attrs["layout"] = _LAYOUT
-    for name, array in zip(_DATASETS, arrays, strict=True):
+    for name, array in zip(DATASETS, arrays, strict=True):
         group.create_dataset(name, data=array)
     for name, values in mesh.cell_fields.items():
         group.create_dataset(f"cell_fields/{name}", data=values)
