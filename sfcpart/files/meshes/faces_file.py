@@ -102,7 +102,7 @@ def stored_numbers(group: Any, name: str, path: str | PathLike[str]) -> Any:
     dtype = getattr(group.get(name), "dtype", None)
     if dtype is None or dtype.kind not in "biuf":
         raise FileError(f"{path}: {_GROUP}/{name} is {dtype or 'missing'}; wanted numbers")
-    checkstored_numbers(group[name], path)
+    check_stored(group[name], path)
     return group[name]
 
 

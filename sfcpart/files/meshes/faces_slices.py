@@ -81,11 +81,9 @@ def _rows_read(
     fields = group.get("cell_fields", {})
     try:
         check_some_cells(int(first[-1]))
-        pair, area = (
-            np.asarray(stored_numbers(group, n, path)[face_lo:face_hi]) for n in DATASETS[:2]
-        )
-        center, size = (np.asarray(stored_numbers(group, n, path)[lo:hi]) for n in DATASETS[2:])
-        rows = {name: np.asarray(stored_numbers(fields, name, path)[lo:hi]) for name in fields}
+        pair, area = (stored_numbers(group, n, path)[face_lo:face_hi] for n in DATASETS[:2])
+        center, size = (stored_numbers(group, n, path)[lo:hi] for n in DATASETS[2:])
+        rows = {name: stored_numbers(fields, name, path)[lo:hi] for name in fields}
         return {
             "kind": np.full(hi - lo, VERTEX, KIND),
             "face_cell": check_face_cells(pair, int(first[-1]), first=face_lo),
