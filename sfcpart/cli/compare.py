@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import click
@@ -33,7 +34,7 @@ split takes beyond mesh and graph. JSON and CSV hold all figures (sfcpart figure
 Examples:
   sfcpart compare meshes/channel_mixed.vtu --parts 8
   sfcpart compare meshes/channel_mixed.vtu -n 8 -m hilbert -m rows --weight work
-  sfcpart compare meshes/channel_section.msh -n 6 --picture splits.png --csv splits.csv
+  sfcpart compare meshes/channel_section.msh -n 6 --report methods.html --csv splits.csv
   sfcpart compare meshes/channel_mixed.vtu -n 5 -m hilbert --given mine:cell_part.npy --json
 """
 
@@ -77,6 +78,7 @@ Examples:
 @click.option(
     "--picture", type=click.Path(), metavar="FILE", help="Draw the splits side by side as PNG."
 )
+@click.option("--report", type=click.Path(), metavar="FILE", help="Write a report page (HTML).")
 @wish_options
 @network_options
 @output_options
@@ -89,9 +91,11 @@ def command(mesh: str, **given: Any) -> None:
     from sfcpart import api
     from sfcpart.cli.compare_table import print_comparison
     from sfcpart.cli.console import Stages, print_json
+    from sfcpart.cli.figures import print_verdict
     from sfcpart.cli.inputs import read_mesh
     from sfcpart.cli.wishes import load_wish, shape_wish
     from sfcpart.methods.registry import METHODS
+    from sfcpart.report.verdict import judge_comparison
 
     quiet = given["quiet"] or given["as_json"]
     doing = Stages(quiet=quiet, methods=given["methods"] or list(METHODS))
@@ -115,10 +119,14 @@ def command(mesh: str, **given: Any) -> None:
     if given["picture"]:
         with doing(f"drawing {given['picture']}"):
             _draw(given["picture"], mesh, loaded, comparison)
+    if given["report"]:
+        with doing(f"writing {given['report']}"):
+            _write_page(given["report"], mesh, loaded, comparison)
     if given["as_json"]:
         print_json({"mesh": mesh, "n_parts": given["n_parts"], **comparison.to_json_dict()})
     elif not given["quiet"]:
-        print(f"{mesh}: {loaded.n_cells:,} cells into {given['n_parts']:,} parts\n")
+        print(f"{mesh}: {loaded.n_cells:,} cells into {given['n_parts']:,} parts")
+        print_verdict(judge_comparison(comparison))
         print_comparison(comparison)
 
 
@@ -157,6 +165,16 @@ def _draw(path: str, name: str, mesh: Mesh, comparison: Comparison) -> None:
     notes = [f"No split by: {', '.join(failed)}."] if failed else []
     with new_file(path) as place:
         draw_side_by_side(place, mesh, splits=splits, graph=graph_of(mesh), title=name, notes=notes)
+
+
+def _write_page(path: str, name: str, mesh: Mesh, comparison: Comparison) -> None:
+    """Write the report page."""
+    from sfcpart.cli.outputs import new_file
+    from sfcpart.report.page import compare_page, write_page
+
+    page = compare_page(comparison, title=Path(name).name, n_cells=mesh.n_cells)
+    with new_file(path) as place:
+        write_page(place, page)
 
 
 def _write_csv(path: str, comparison: Comparison) -> None:

@@ -117,7 +117,7 @@ def judge_comparison(comparison: Comparison) -> tuple[str, str]:
     first = f"Over {comparison.steps:,} steps {best['name']} is predicted to finish first"
     first += f", {percent(gain)} before {worst['name']}." if worst is not best else "."
     least = min(known, key=lambda row: row["cut_faces"])
-    second = f"{least['name']} cuts the fewest faces, {number(least['cut_faces'])}"
+    second = f"The fewest faces are cut by {least['name']}, {number(least['cut_faces'])}"
     if least is best:
         return first, f"It also cuts the fewest faces, {number(least['cut_faces'])}."
     return first, f"{second}; {best['name']} cuts {number(best['cut_faces'])}."

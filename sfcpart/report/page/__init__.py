@@ -5,6 +5,7 @@ is `content`, its looks are `templates/`, `style.css` and `scripts/`, the librar
 `libraries/` (packed by tools/page/).
 """
 
+from sfcpart.report.page.compare import compare_page
 from sfcpart.report.page.content import (
     Axis,
     Chart,
@@ -27,6 +28,7 @@ __all__ = [
     "Page",
     "Series",
     "TablePlot",
+    "compare_page",
     "render_page",
     "split_page",
     "write_page",

@@ -17,6 +17,7 @@ __all__ = [
     "Chart",
     "ColumnHead",
     "Figure",
+    "Form",
     "MatrixPlot",
     "Page",
     "Section",
@@ -26,6 +27,10 @@ __all__ = [
 ]
 
 Mark: TypeAlias = Literal["line", "dot", "bar", "tick", "step", "rule"]
+Form: TypeAlias = Literal[
+    "whole", "ratio", "percent", "seconds", "duration", "bytes", "plain", "text"
+]
+"""How numbers are written."""
 
 
 @dataclass(frozen=True)
@@ -56,12 +61,12 @@ class Figure:
 class Axis:
     """An axis of a chart: label with the unit, linear or logarithmic, and the least span shown.
 
-    `percent` writes shares as per cent. `least` and `most` are always within what is shown.
+    `form` says how numbers are written; `least` and `most` are always within what is shown.
     """
 
     label: str
     kind: Literal["linear", "log"] = "linear"
-    percent: bool = False
+    form: Form = "plain"
     least: float | None = None
     most: float | None = None
 
@@ -137,7 +142,7 @@ class ColumnHead:
     title: str
     unit: str = ""
     meaning: str = ""
-    form: Literal["whole", "ratio", "percent", "seconds", "bytes", "plain", "text"] = "plain"
+    form: Form = "plain"
     shown: bool = True
 
 

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, Literal
+from typing import TYPE_CHECKING
 
 import numpy as np
 
 from sfcpart.measure.columns import PART_COLUMNS, Column
-from sfcpart.report.page.content import ColumnHead, TablePlot
+from sfcpart.report.page.content import ColumnHead, Form, TablePlot
 
 if TYPE_CHECKING:
     from sfcpart.measure.assessment import Assessment
@@ -23,7 +23,6 @@ _SHARES = frozenset({"limit_share", "imbalance", "imbalance_unweighted", "cut_sh
     "exchange_share",
     "efficiency",
 }
-Form = Literal["whole", "ratio", "percent", "seconds", "bytes", "plain", "text"]
 
 
 def parts_table(assessment: Assessment) -> TablePlot:

@@ -181,7 +181,7 @@ def load_chart(assessment: Assessment) -> Chart:
         "How far each part is from its fair share of the work (speeds of ranks accounted for), "
         "most loaded first. The step takes as long as the leftmost bar." + few,
         x=Axis("parts, most loaded first"),
-        y=Axis("above fair share", percent=True, least=-span, most=span),
+        y=Axis("above fair share", form="percent", least=-span, most=span),
         series=[
             Series("by weight", "bar", place, load[order] - 1, names),
             Series("by number of cells", "tick", place, cells[order] - 1, names, colour=1),

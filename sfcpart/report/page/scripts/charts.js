@@ -31,16 +31,17 @@ function chartLegend(series) {
 function plotted(section, width, index) {
   const charts = sfcpartCharts;
   const narrow = width < 520;
-  const marks = [charts.gridY({ stroke: tone("grid"), strokeOpacity: 1 })];
+  const marks = [charts.gridY({ stroke: tone("grid"), strokeOpacity: 1, ticks: 5 })];
   for (const one of section.series) marks.push(...markOf(one, section));
   const figure = charts.plot({
     width,
     height: section.height,
-    marginLeft: 56,
+    marginLeft: 60,
     marginRight: 16,
     marginBottom: 38,
     marginTop: 30,
     style: { fontSize: "12px", color: tone("soft"), fontFamily: "inherit" },
+    inset: section.series.some((one) => one.named) ? 24 : 0,
     x: axisOf(section.x, narrow ? 5 : 10, section.series, "x"),
     y: axisOf(section.y, 5, section.series, "y"),
     marks,
@@ -60,7 +61,7 @@ function plotted(section, width, index) {
 
 function axisOf(axis, ticks, series, side) {
   const shown = { label: axis.label, type: axis.kind, ticks, labelArrow: "none", line: side === "x" };
-  if (axis.percent) shown.tickFormat = (value) => `${threeDigits.format(100 * value)} %`;
+  if (axis.form !== "plain") shown.tickFormat = (value) => written(value, axis.form);
   const values = series.flatMap((one) => (one.mark === "rule" && side === "x" ? [] : one[side]));
   const there = values.filter((value) => value !== null);
   if (axis.kind === "linear") {
@@ -70,11 +71,11 @@ function axisOf(axis, ticks, series, side) {
     const wide = side === "x" && series.some((one) => one.mark === "bar" || one.mark === "tick");
     shown.domain = wide ? [low - 0.6, high + 0.6] : [low, high];
     shown.nice = side === "y";
-    if (there.every(Number.isInteger) && !axis.percent) {
+    if (there.every(Number.isInteger) && axis.form === "plain") {
       shown.tickFormat = (value) => (Number.isInteger(value) ? wholeNumber.format(value) : "");
     }
   } else {
-    shown.tickFormat = (value) => threeDigits.format(value);
+    if (axis.form === "plain") shown.tickFormat = (value) => threeDigits.format(value);
     shown.ticks = Math.min(ticks, 6);
   }
   return shown;
@@ -85,7 +86,7 @@ function markOf(one, section) {
   const colour = tone(`mark-${one.colour % 7}`);
   const points = one.y.map((y, k) => ({ x: one.x[k] ?? 0, y, name: one.label[k] ?? one.name }));
   const title = (point) =>
-    `${point.name}\n${section.y.label}: ${written(point.y, section.y.percent ? "percent" : "")}`;
+    `${point.name}\n${section.y.label}: ${written(point.y, section.y.form)}`;
   const told = charts.tip(
     points,
     charts.pointerX({ x: "x", y: "y", title, fill: tone("sheet"), stroke: tone("line") }),

@@ -41,6 +41,9 @@ function written(value, form) {
   if (form === "ratio") return threePlaces.format(value);
   if (form === "percent") return `${threeDigits.format(100 * value)} %`;
   if (form === "seconds") return withUnit(value, [["s", 1], ["ms", 1e-3], ["µs", 1e-6]]);
+  if (form === "duration") {
+    return Math.abs(value) < 120 ? written(value, "seconds") : withUnit(value, [["d", 86400], ["h", 3600], ["min", 60]]);
+  }
   if (form === "bytes") return withUnit(value, [["GB", 1e9], ["MB", 1e6], ["kB", 1e3]]);
   if (value !== 0 && (Math.abs(value) < 1e-3 || Math.abs(value) >= 1e6)) {
     return value.toExponential(2);
@@ -49,6 +52,7 @@ function written(value, form) {
 }
 
 function withUnit(value, units) {
+  if (value === 0) return `0 ${units[0][0] === "s" ? "s" : units[units.length - 1][0]}`;
   const found = units.find(([, size]) => Math.abs(value) >= size) ?? units[units.length - 1];
   return `${threeDigits.format(value / found[1])} ${found[0]}`;
 }

@@ -118,6 +118,13 @@ class SparseMatrix {
   drawDiagonal() {
     const { context } = this;
     const n = this.section.size;
+    const side = this.at(1, "x") - this.at(0, "x");
+    if (side > 3) {
+      context.fillStyle = tone("grid");
+      const gap = side > 7 ? 1 : 0;
+      for (let k = 0; k < n; k += 1) context.fillRect(this.at(k, "x"), this.at(k, "y"), side - gap, side - gap);
+      return;
+    }
     context.strokeStyle = tone("grid");
     context.lineWidth = Math.max(1, this.at(1, "x") - this.at(0, "x"));
     context.beginPath();

@@ -128,7 +128,7 @@ class DataTable {
 
   headCell(column) {
     const sorted = column.key === this.key;
-    const unit = column.unit && column.form !== "seconds" && column.form !== "bytes" && column.unit !== column.title
+    const unit = column.unit && !["seconds", "duration", "bytes"].includes(column.form) && column.unit !== column.title
       ? [make("small", {}, column.unit)] : [];
     return make(
       "th",

@@ -70,7 +70,9 @@ class PartsView {
     const { scene } = this.section;
     const position = unpacked(scene.position, Uint16Array);
     const index = unpacked(scene.index, scene.wide ? Uint32Array : Uint16Array);
-    const Material = this.flat ? three.MeshBasicMaterial : three.MeshLambertMaterial;
+    const look = { side: three.DoubleSide };
+    const material = () =>
+      this.flat ? new three.MeshBasicMaterial(look) : new three.MeshLambertMaterial({ ...look, flatShading: true });
     this.group = new three.Group();
     this.meshes = [];
     let [point, corner] = [0, 0];
@@ -82,7 +84,7 @@ class PartsView {
       const geometry = new three.BufferGeometry();
       geometry.setAttribute("position", new three.BufferAttribute(new Float32Array(places), 3));
       geometry.setIndex(new three.BufferAttribute(corners.slice(), 1));
-      const mesh = new three.Mesh(geometry, new Material({ side: three.DoubleSide, flatShading: !this.flat }));
+      const mesh = new three.Mesh(geometry, material());
       mesh.userData = { part, middle: middleOf(places) };
       this.meshes.push(mesh);
       this.group.add(mesh);
