@@ -2,7 +2,7 @@
 
 `run_job(module, size, folder)` starts `mpiexec -n SIZE python -m MODULE FOLDER` with a time limit
 and returns when it has ended; what the ranks saw, they wrote into the folder. `run_script(path,
-size)` does the same for a user's script, in its own folder. A job that fails, or hangs and is
+size, ...)` does the same for a user's script, in its own folder. A job that fails, or hangs and is
 killed with all its processes, raises with what it printed.
 """
 
@@ -41,11 +41,18 @@ def run_job(module: str, size: int, folder: Path, *, timeout: float = 120.0) -> 
     _run(["-m", module, str(folder)], size, cwd=ROOT, what=module, timeout=timeout)
 
 
-def run_script(path: Path, size: int, *, timeout: float = 120.0) -> str:
+def run_script(path: Path, size: int, *arguments: str, timeout: float = 120.0) -> str:
     """Run a script on `size` ranks in the folder it lies in; return what it printed."""
     # from that folder, the package that is tested here is found by its path
     package = {"PYTHONPATH": str(Path(sfcpart.__file__).parents[1])}
-    return _run([path.name], size, cwd=path.parent, what=path.name, timeout=timeout, more=package)
+    return _run(
+        [path.name, *arguments],
+        size,
+        cwd=path.parent,
+        what=path.name,
+        timeout=timeout,
+        more=package,
+    )
 
 
 def _run(
