@@ -5,11 +5,13 @@ The public names are loaded on first use: `import sfcpart` starts no MPI and com
 
 from __future__ import annotations
 
+import sys
 from importlib import import_module
+from types import ModuleType
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from sfcpart.api import (
+    from sfcpart.api import (  # type: ignore[no-redef] - the verb `rebalance` goes before the room
         Mesh,
         Partition,
         assess,
@@ -20,6 +22,7 @@ if TYPE_CHECKING:
         inspect,
         read_mesh,
         read_part,
+        rebalance,
         split,
         write_split,
     )
@@ -38,6 +41,7 @@ _PUBLIC = {
     "inspect": "sfcpart.api.judge",
     "read_mesh": "sfcpart.files.meshes.read",
     "read_part": "sfcpart.files.parts.part",
+    "rebalance": "sfcpart.api.rebalance",
     "split": "sfcpart.api.divide",
     "split_graph": "sfcpart.methods.graph.multilevel",
     "write_split": "sfcpart.api.write",
@@ -57,6 +61,7 @@ __all__ = [  # noqa: RUF022 - in the order a user meets them
     "compare",
     "write_split",
     "read_part",
+    "rebalance",
     "__version__",
 ]
 
@@ -73,3 +78,19 @@ def __getattr__(name: str) -> Any:
 def __dir__() -> list[str]:
     """List the public names."""
     return sorted(__all__)
+
+
+class _Package(ModuleType):
+    """The package: its verb `rebalance` has the name of a room, which must not hide it."""
+
+    @property
+    def rebalance(self) -> Any:
+        """Return the verb."""
+        return __getattr__("rebalance")
+
+    @rebalance.setter
+    def rebalance(self, room: ModuleType) -> None:
+        """Do without the room, which Python hangs here when it is first imported."""
+
+
+sys.modules[__name__].__class__ = _Package

@@ -8,6 +8,7 @@ sfcpart.write_split("parts", mesh, partition)
 
 from sfcpart.api.divide import split
 from sfcpart.api.judge import assess, compare, graph_of, inspect
+from sfcpart.api.rebalance import rebalance
 from sfcpart.api.write import write_split
 from sfcpart.curve import curve_keys, curve_order
 from sfcpart.files.meshes.cell_values import read_cell_values
@@ -31,6 +32,7 @@ __all__ = [
     "read_cell_values",
     "read_mesh",
     "read_part",
+    "rebalance",
     "split",
     "write_split",
 ]

@@ -1,0 +1,73 @@
+"""Smooth from the old split, with a price on every cell that leaves its home.
+
+The cost is cut x a + moved bytes x b: a face cut costs, in each of the steps until the next
+re-split, a halo cell in every exchange, sent and received at once; a moved cell costs its bytes
+once. Both go over the same network, so a moved cell costs
+
+    cell_bytes / (steps * exchanges * bytes_per_halo_cell)
+
+cut faces. Overfull parts first hand cells on to neighbours with room, then borders move to where
+cut and price together are least (`sfcpart.methods.smoothing`).
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+
+from sfcpart.dtypes import Int32Array, Int64Array
+from sfcpart.errors import PartitionError
+from sfcpart.methods.smoothing.cell_items import CellItems
+from sfcpart.methods.smoothing.smooth import smooth_slice
+from sfcpart.rebalance.task import Task
+
+__all__ = ["priced_smoothing"]
+
+FACE = 256
+"""What a cut face costs as an integer, so that prices below one face are not lost."""
+_DEAREST = 64.0
+"""The most a moved cell is charged, in faces: a cell has fewer."""
+
+
+def priced_smoothing(task: Task) -> Int32Array:
+    """Return the new part of each local cell, (n_local,) int32.
+
+    Parameters
+    ----------
+    task : Task
+        With as many new parts as old ones.
+
+    Raises
+    ------
+    PartitionError
+        If the number of parts changes, or limits are not kept.
+    """
+    problem = task.problem
+    if task.n_old_parts != problem.n_parts:
+        raise PartitionError(
+            f"{task.n_old_parts} parts cannot be smoothed into {problem.n_parts}; "
+            "re-split another way (shift, scratch)"
+        )
+    items = CellItems.of(problem)
+    home = items.gather(task.home_part)
+    graph = items.graph
+    graph = replace(graph, edge_weight=graph.edge_weight * FACE)
+    price = np.full(graph.n, round(cell_price(task) * FACE), np.int64)
+    return items.spread(smooth_slice(graph, home, task.most, home_part=home, home_price=price))
+
+
+def cell_price(task: Task) -> float:
+    """Return what moving a cell costs, in cut faces."""
+    model = task.step_model
+    a_face = task.steps * model.exchanges * model.bytes_per_halo_cell
+    return min(_DEAREST, task.cell_bytes / a_face) if a_face > 0 else _DEAREST
+
+
+def limits_kept(task: Task, items: CellItems, part: Int32Array) -> bool:
+    """Tell whether no part holds more of the second weight than it may."""
+    limit = task.problem.part_limit
+    if limit is None or items.limit_weight is None:
+        return True
+    held: Int64Array = items.graph.sum_by(part, items.limit_weight, task.problem.n_parts)
+    return bool(np.all(held <= limit))
