@@ -5,8 +5,7 @@ on either side: source and sink. How much of the band is used follows from the r
 have. Which vertices a least cut leaves on either side does not depend on the order of the rows, so
 neither does the answer depend on who sent them.
 
-Sources: maximum flow by shortest augmenting paths, Dinic 1970; flow-based refinement of
-partitions, Sanders, Schulz, ESA 2011 (both from memory).
+Source: flow-based refinement of partitions, Sanders, Schulz, ESA 2011 (from memory).
 """
 
 from __future__ import annotations
@@ -15,7 +14,16 @@ import numpy as np
 
 from sfcpart.dtypes import Array
 from sfcpart.kernels._jit import jit
-from sfcpart.kernels.graph.flow import mark_sink_side, push_flow
+from sfcpart.kernels.graph.cut_trees import (
+    HEAD,
+    N_COLUMNS,
+    SINK,
+    SOURCE,
+    TREE,
+    TWIN,
+    push_flow,
+)
+from sfcpart.kernels.graph.flow import PUSHES
 
 __all__ = ["place_borders"]
 
@@ -67,8 +75,8 @@ def choose_rows(
 @jit
 def join_rows(
     n: int, first: int, row_at: Array, row_first: Array, row_note: Array, entry_to: Array,
-    entry_weight: Array, local: Array, chosen: Array, ptr: Array, arc_to: Array, twin: Array,
-    left: Array, source: Array, sink: Array, fill: Array,
+    entry_weight: Array, local: Array, chosen: Array, ptr: Array, arc: Array, left: Array,
+    source: Array, sink: Array, fill: Array,
 ) -> int:  # fmt: skip
     """Write the arcs between chosen rows (each with its twin) and the links to either side.
 
@@ -110,10 +118,10 @@ def join_rows(
             y = fill[h]
             fill[i] += 1
             fill[h] += 1
-            arc_to[x] = h
-            arc_to[y] = i
-            twin[x] = y
-            twin[y] = x
+            arc[x, HEAD] = h
+            arc[y, HEAD] = i
+            arc[x, TWIN] = y
+            arc[y, TWIN] = x
             left[x] = entry_weight[e]
             left[y] = entry_weight[e]
     return border
@@ -155,16 +163,14 @@ def place_borders(
     held = np.zeros((2, n_places), np.int64)
     local = np.empty(longest, np.int32)
     chosen = np.empty(longest, np.int32)
-    level = np.empty(longest, np.int32)
-    queue = np.empty(longest, np.int32)
-    path = np.empty(longest, np.int64)
-    arc = np.empty(longest, np.int64)
+    node = np.empty((longest, N_COLUMNS), np.int32)
+    waiting = np.empty(longest, np.int32)
+    orphans = np.empty(longest, np.int32)
     fill = np.empty(longest, np.int64)
     ptr = np.empty(longest + 1, np.int64)
     source = np.empty(longest, np.int64)
     sink = np.empty(longest, np.int64)
-    arc_to = np.empty(widest, np.int32)
-    twin = np.empty(widest, np.int64)
+    arc = np.empty((widest, 2), np.int32)
     left = np.empty(widest, np.int64)
     for i in range(start, stop):
         first = row_ptr[i]
@@ -186,16 +192,19 @@ def place_borders(
             )  # fmt: skip
             border = join_rows(
                 n, first, row_at, row_first, row_note, entry_to, entry_weight, local, chosen, ptr,
-                arc_to, twin, left, source, sink, fill,
+                arc, left, source, sink, fill,
             )  # fmt: skip
-            value = push_flow(n, ptr, arc_to, twin, left, source, sink, level, queue, arc, path)
-            mark_sink_side(n, ptr, arc_to, twin, left, sink, level, queue)
+            value = push_flow(
+                n, ptr, fill, arc, left, source, sink, node, waiting, orphans, PUSHES * n
+            )
+            if value < 0:
+                break
             small = load_a  # load of a if it keeps only the source's side; or all but the sink's
             large = load_a
             for x in range(n):
                 r = row_at[first + chosen[x]]
-                small += row_weight[r] * ((level[x] >= 0) - ((row_note[r] & 1) == 0))
-                large += row_weight[r] * ((level[x] != -2) - ((row_note[r] & 1) == 0))
+                small += row_weight[r] * ((node[x, TREE] == SOURCE) - ((row_note[r] & 1) == 0))
+                large += row_weight[r] * ((node[x, TREE] != SINK) - ((row_note[r] & 1) == 0))
             small_fits = small <= most_a and total - small <= most_b
             large_fits = large <= most_a and total - large <= most_b
             if small_fits or large_fits:
@@ -207,7 +216,7 @@ def place_borders(
                 now = abs((most_a - load_a) - (most_b - load[i, 1]))
                 if value < border or (value == border and skew < now):
                     for x in range(n):
-                        to_a = level[x] >= 0 or (use_large and level[x] == -1)
+                        to_a = node[x, TREE] == SOURCE or (use_large and node[x, TREE] != SINK)
                         side[row_at[first + chosen[x]]] = 0 if to_a else 1
                     load[i, 0] = large if use_large else small
                     load[i, 1] = total - load[i, 0]
