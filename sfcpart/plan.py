@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from functools import partial
 from math import isfinite, prod
-from typing import TYPE_CHECKING, Any, TypeAlias, get_args
+from typing import TYPE_CHECKING, Any, TypeAlias, cast, get_args
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -14,9 +14,10 @@ from sfcpart.curve import Curve, CurveSlice, curve_slice, mesh_slice
 from sfcpart.dtypes import Array, FloatArray, Int64Array
 from sfcpart.errors import InputError, PartitionError, SfcpartError, WeightError
 from sfcpart.files.weights_file import is_cost_file, read_costs
-from sfcpart.graph import cell_graph
+from sfcpart.graph import CellGraph, cell_graph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.methods.problem import Cuts, Problem
+from sfcpart.slices.graph_slice import graph_slice
 from sfcpart.slices.mesh_slice import MeshSlice
 from sfcpart.weights import (
     FACE_WEIGHTS,
@@ -78,7 +79,7 @@ def plan_problem(
     With several ranks each holds a slice of the cells, and of what has a row a cell; what is
     wrong on one rank is raised on all.
     """
-    held = held_of(mesh, comm)
+    given, held = mesh, held_of(mesh, comm)
     comm, mesh = held.comm, held.mesh
     wish: dict[str, Any] = {}
     second: Array | None = None
@@ -105,13 +106,25 @@ def plan_problem(
     return Problem(
         centers=mesh.centers,
         n_parts=n_parts,
-        graph=lambda: cell_graph(mesh),
+        graph=lambda: _graph_of(given, held),
         place=partial(_place, mesh),
         **_work(work, **whole),
         **_limits(second, limits, n_parts, **whole),
         **wish,
         **whole,
     )
+
+
+def _graph_of(given: Mesh | MeshSlice, held: MeshSlice) -> CellGraph:
+    """Return the cell graph of the cells here (collective); that of a slice is a `GraphSlice`."""
+    error = None
+    if held.groups is None and held.n_local != held.n_cells:
+        error = InputError(
+            "the cell graph of a mesh with `comm` is not known across ranks; give the slices of "
+            "a mesh instead (sfcpart.read_slice)"
+        )
+    held.comm.check(error)
+    return cell_graph(given) if isinstance(given, Mesh) else cast(CellGraph, graph_slice(given))
 
 
 def _place(mesh: Mesh, centers: FloatArray, *, curve: Curve, comm: Comm) -> CurveSlice:
@@ -133,7 +146,7 @@ def weights_of(mesh: Mesh | MeshSlice, weights: Weights) -> Array | None:
         return None
     held = held_of(mesh)
     weights = _with_costs_read(weights, held)
-    graph = cell_graph(held.mesh) if counts_faces(weights, held.mesh) else None
+    graph = _graph_of(mesh, held) if counts_faces(weights, held.mesh) else None
     error, found = None, None
     try:
         found = cell_weights(held.mesh, weights, graph=graph)

@@ -13,13 +13,15 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from sfcpart.comm import SerialComm
-from sfcpart.dtypes import GID, OFFSET, PART, Int32Array, Int64Array, IntArray, index_dtype
+from sfcpart.dtypes import OFFSET, PART, Int32Array, Int64Array, index_dtype
 from sfcpart.errors import SfcpartError
 from sfcpart.graph import CellGraph
 from sfcpart.methods.problem import Cuts, Problem
+from sfcpart.slices.graph_slice import GraphSlice
 from sfcpart.slices.routing import gather_rows, hand_out_rows
 
 if TYPE_CHECKING:
+    from sfcpart.comm.base import Comm
     from sfcpart.methods.registry import Method
 
 __all__ = ["run_method", "splits_by_slices"]
@@ -61,8 +63,7 @@ def run_method(method: Method, problem: Problem) -> Int32Array:
     """
     if splits_by_slices(method, problem.cuts):
         return method.run(problem)
-    needs_graph = method.needs_graph or problem.cuts == "least"
-    whole = _gathered(problem, needs_graph=needs_graph)
+    whole = _gathered(problem, needs_graph=method.uses_graph(problem))
     error, part = None, np.empty(0, PART)
     try:
         if problem.comm.rank == 0:
@@ -80,7 +81,7 @@ def _gathered(problem: Problem, *, needs_graph: bool) -> Problem:
     def all_of(values: Int64Array | None) -> Int64Array | None:
         return None if values is None else gather_rows(comm, values)
 
-    graph = _gathered_graph(problem.graph(), problem) if needs_graph else None
+    graph = _gathered_graph(problem.graph(), comm) if needs_graph else None
     return replace(
         problem,
         centers=gather_rows(comm, problem.centers),
@@ -93,16 +94,13 @@ def _gathered(problem: Problem, *, needs_graph: bool) -> Problem:
     )
 
 
-def _gathered_graph(graph: CellGraph, problem: Problem) -> CellGraph:
+def _gathered_graph(graph: CellGraph | GraphSlice, comm: Comm) -> CellGraph:
     """Bring the rows of the cell graph to rank 0, with neighbours by their global numbers."""
-    comm = problem.comm
-    ghost_gid = getattr(graph, "ghost_gid", None)
-    indices: IntArray = graph.indices
-    if ghost_gid is not None:
-        own = np.arange(problem.first_gid, problem.first_gid + graph.n_cells, dtype=GID)
-        indices = np.concatenate([own, ghost_gid])[indices]
+    if isinstance(graph, CellGraph):
+        return graph
     size = gather_rows(comm, np.diff(graph.indptr))
-    rows = [gather_rows(comm, array) for array in (indices, graph.data)]
+    numbers = graph.gid_of(graph.indices).astype(index_dtype(graph.n_cells), copy=False)
+    rows = [gather_rows(comm, array) for array in (numbers, graph.data)]
     boundary = [gather_rows(comm, a) for a in (graph.boundary_count, graph.boundary_measure)]
     indptr = np.concatenate(([0], np.cumsum(size))).astype(OFFSET)
-    return CellGraph(indptr, rows[0].astype(index_dtype(len(size)), copy=False), rows[1], *boundary)
+    return CellGraph(indptr, rows[0], rows[1], *boundary)

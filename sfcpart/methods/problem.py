@@ -53,7 +53,8 @@ class Problem:
     seed : int
         The only source of randomness, hashed with the gid where used.
     graph : callable
-        Returns the cell graph (built on first call); methods without need never call it.
+        Returns the cell graph (built on first call, collective); methods without need never call
+        it. Where ranks hold slices of a mesh it is a `GraphSlice`, whose rows are alike.
     comm : Comm
         The ranks that split together.
     place : callable
