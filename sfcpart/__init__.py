@@ -11,19 +11,29 @@ from types import ModuleType
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from sfcpart.api import (  # type: ignore[no-redef] - the verb `rebalance` goes before the room
+    from sfcpart.api import (  # type: ignore[no-redef]  # the verb `rebalance` hides the room
+        Frame,
         Mesh,
         Partition,
+        RebalanceClock,
+        ResplitCost,
         assess,
         cell_graph,
+        class_counts,
         compare,
         curve_keys,
         curve_order,
+        fit_weights,
         inspect,
         read_mesh,
+        read_moves,
         read_part,
+        read_series,
         rebalance,
+        replay,
         split,
+        write_costs,
+        write_rebalance,
         write_split,
     )
     from sfcpart.methods.graph.multilevel import split_graph
@@ -31,19 +41,29 @@ if TYPE_CHECKING:
 __version__ = "0.1.0"
 
 _PUBLIC = {
+    "Frame": "sfcpart.files.series.frame",
     "Mesh": "sfcpart.mesh.mesh",
     "Partition": "sfcpart.partition",
+    "RebalanceClock": "sfcpart.rebalance.clock",
+    "ResplitCost": "sfcpart.rebalance.timetable",
     "assess": "sfcpart.api.judge",
     "cell_graph": "sfcpart.graph",
+    "class_counts": "sfcpart.api.costs",
     "compare": "sfcpart.api.judge",
     "curve_keys": "sfcpart.curve",
     "curve_order": "sfcpart.curve",
+    "fit_weights": "sfcpart.weights.fit",
     "inspect": "sfcpart.api.judge",
     "read_mesh": "sfcpart.files.meshes.read",
+    "read_moves": "sfcpart.files.parts.moves",
     "read_part": "sfcpart.files.parts.part",
+    "read_series": "sfcpart.files.series.read",
     "rebalance": "sfcpart.api.rebalance",
+    "replay": "sfcpart.api.replay",
     "split": "sfcpart.api.divide",
     "split_graph": "sfcpart.methods.graph.multilevel",
+    "write_costs": "sfcpart.api.costs",
+    "write_rebalance": "sfcpart.api.rebalance",
     "write_split": "sfcpart.api.write",
 }
 
@@ -62,6 +82,16 @@ __all__ = [  # noqa: RUF022 - in the order a user meets them
     "write_split",
     "read_part",
     "rebalance",
+    "write_rebalance",
+    "read_moves",
+    "class_counts",
+    "fit_weights",
+    "write_costs",
+    "RebalanceClock",
+    "Frame",
+    "read_series",
+    "ResplitCost",
+    "replay",
     "__version__",
 ]
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from numpy.typing import ArrayLike
 
@@ -149,7 +149,12 @@ def compare(
     """
     from sfcpart.comparison import compare_methods
 
-    wish = {"weights": weights, "speeds": speeds, "limit_weights": limit_weights, "limits": limits}
+    wish: dict[str, Any] = {
+        "weights": weights,
+        "speeds": speeds,
+        "limit_weights": limit_weights,
+        "limits": limits,
+    }
     problem = plan_problem(
         mesh,
         n_parts,

@@ -16,6 +16,11 @@ VERBS: dict[str, tuple[str, str]] = {
     "split": ("sfcpart.cli.split", "Divide a mesh into parts and write what a solver loads."),
     "assess": ("sfcpart.cli.assess", "Measure a partition, wherever it comes from."),
     "compare": ("sfcpart.cli.compare", "Split a mesh in several ways and measure all alike."),
+    "fit-weights": (
+        "sfcpart.cli.fit_weights",
+        "Fit what cells cost to the seconds that ranks took.",
+    ),
+    "replay": ("sfcpart.cli.replay", "Replay a run in which the work moves under several rules."),
     "inspect": ("sfcpart.cli.inspect", "Say what a mesh file holds, and what is wrong with it."),
     "demo": ("sfcpart.cli.demo", "Split an invented tidal channel; needs no file."),
     "figures": ("sfcpart.cli.figures_verb", "Explain every figure of a partition."),
