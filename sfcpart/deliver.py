@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import platform
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from os import PathLike
 from pathlib import Path
@@ -55,8 +55,12 @@ def deliver(
     how: Delivery,
     source: Path | None,
     options: Mapping[str, Any],
+    more: Callable[[Path], Mapping[str, Any]] = lambda place: {},
 ) -> Path:
-    """Write the folder and return where it is."""
+    """Write the folder and return where it is.
+
+    `more` writes further files into the folder and returns what the summary tells about them.
+    """
     _check_formats(how.formats, source)
     target = check_output_folder(folder, overwrite=how.overwrite)
     digest = "" if source is None else file_digest(source)
@@ -78,7 +82,7 @@ def deliver(
                 options=options,
             )
         summary = _summary(mesh, assessment, source=source, digest=digest, options=options)
-        write_summary(place / "summary.json", summary)
+        write_summary(place / "summary.json", {**summary, **more(place)})
     return target
 
 

@@ -20,7 +20,6 @@ from sfcpart.cli.wishes import METHOD, MethodOption, check_part_count, wish_opti
 if TYPE_CHECKING:
     from sfcpart.comparison import Comparison
     from sfcpart.mesh.mesh import Mesh
-    from sfcpart.partition import Partition
 
 __all__ = ["command"]
 
@@ -92,7 +91,7 @@ def command(mesh: str, **given: Any) -> None:
     from sfcpart.cli.compare_table import print_comparison
     from sfcpart.cli.console import Stages, print_json
     from sfcpart.cli.figures import print_verdict
-    from sfcpart.cli.inputs import read_mesh
+    from sfcpart.cli.inputs import partition_from_place, read_mesh
     from sfcpart.cli.wishes import load_wish, shape_wish
     from sfcpart.methods.registry import METHODS
     from sfcpart.report.verdict import judge_comparison
@@ -101,7 +100,10 @@ def command(mesh: str, **given: Any) -> None:
     doing = Stages(quiet=quiet, methods=given["methods"] or list(METHODS))
     with doing(f"reading {mesh}"):
         loaded = read_mesh(mesh, merge_points=given["merge_points"])
-        others = {name: _parts(loaded, place) for name, place in given["given_parts"]}
+        others = {
+            name: partition_from_place(loaded.cell_fields, place, loaded.n_cells)
+            for name, place in given["given_parts"]
+        }
     with doing("splitting and measuring"):
         comparison = api.compare(
             loaded,
@@ -136,15 +138,6 @@ def _check_names(given: dict[str, Any]) -> None:
     twice = [name for k, name in enumerate(names) if name in names[:k]]
     if twice:
         raise click.UsageError(f"two partitions are named {twice[0]!r}; name each its own")
-
-
-def _parts(mesh: Mesh, place: str) -> Partition:
-    """Take a partition from a cell field, or else from a path."""
-    from sfcpart.cli.inputs import partition_from_field, partition_from_path
-
-    if place in mesh.cell_fields:
-        return partition_from_field(mesh, place)
-    return partition_from_path(place, mesh.n_cells)
 
 
 def _draw(path: str, name: str, mesh: Mesh, comparison: Comparison) -> None:

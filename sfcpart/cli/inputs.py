@@ -10,6 +10,8 @@ import numpy as np
 from sfcpart.errors import FileError, InputError, PartitionError
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping
+
     from sfcpart.dtypes import Array, IntArray
     from sfcpart.mesh.mesh import Mesh
     from sfcpart.partition import Partition
@@ -17,7 +19,9 @@ if TYPE_CHECKING:
 __all__ = [
     "partition_from_field",
     "partition_from_path",
+    "partition_from_place",
     "read_mesh",
+    "read_numbers",
     "read_pairs",
     "read_speeds",
 ]
@@ -60,6 +64,35 @@ def partition_from_path(path: str, n_cells: int) -> Partition:
         return partition_from_path(str(place / "cell_part.npy"), n_cells)
     cell_part, n_parts = _owners(place, n_cells)
     return Partition.from_array(cell_part, n_parts)
+
+
+def partition_from_place(fields: Mapping[str, Array], place: str, n_cells: int | None) -> Partition:
+    """Return the partition that a cell field of this name holds, or else a path.
+
+    Parameters
+    ----------
+    fields : mapping of str to array
+    place : str
+    n_cells : int or None
+        None: of a mesh that is not at hand, however many cells it has.
+    """
+    from sfcpart.partition import Partition
+
+    if place in fields:
+        return Partition.from_array(fields[place])
+    if n_cells is not None:
+        return partition_from_path(place, n_cells)
+    path = Path(place)
+    return Partition.from_array(
+        read_numbers(str(path / "cell_part.npy" if path.is_dir() else path))
+    )
+
+
+def read_numbers(path: str, count: int | None = None) -> Array:
+    """Return the numbers in a text or .npy file, however many if no count is given."""
+    from sfcpart.files.meshes.cell_values import read_cell_values
+
+    return read_cell_values(path, count)
 
 
 def _owners(folder: Path, n_cells: int) -> tuple[Array, int]:

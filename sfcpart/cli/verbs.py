@@ -21,6 +21,10 @@ VERBS: dict[str, tuple[str, str]] = {
         "Fit what cells cost to the seconds that ranks took.",
     ),
     "replay": ("sfcpart.cli.replay", "Replay a run in which the work moves under several rules."),
+    "rebalance": (
+        "sfcpart.cli.rebalance",
+        "Split again when the work has moved; does it pay?",
+    ),
     "inspect": ("sfcpart.cli.inspect", "Say what a mesh file holds, and what is wrong with it."),
     "demo": ("sfcpart.cli.demo", "Split an invented tidal channel; needs no file."),
     "figures": ("sfcpart.cli.figures_verb", "Explain every figure of a partition."),

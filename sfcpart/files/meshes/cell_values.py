@@ -14,7 +14,7 @@ from sfcpart.files.meshes.formats import head_of, told
 __all__ = ["read_cell_values"]
 
 
-def read_cell_values(path: str | PathLike[str], n_cells: int) -> Array:
+def read_cell_values(path: str | PathLike[str], n_cells: int | None) -> Array:
     r"""Read one number a cell: parts, weights, groups.
 
     Parameters
@@ -22,8 +22,8 @@ def read_cell_values(path: str | PathLike[str], n_cells: int) -> Array:
     path : path
         `.npy` (one row of numbers), or text: one number a line, `#` begins a comment; a `.csv`
         may begin with a line of heading.
-    n_cells : int
-        How many numbers there must be.
+    n_cells : int or None
+        How many numbers there must be; None: any number of them.
 
     Returns
     -------
@@ -53,10 +53,13 @@ def read_cell_values(path: str | PathLike[str], n_cells: int) -> Array:
         raise
     except OSError as error:
         raise FileError(f"{place}: cannot be read: {told(error)}") from error
+    if values.ndim == 1 and n_cells is None:
+        return values
     if values.shape != (n_cells,):
+        wanted = "one row of them" if n_cells is None else str(n_cells)
         raise InputError(
             f"{place}: holds {'x'.join(map(str, values.shape))} values; "
-            f"wanted {n_cells}, one a cell, in the mesh's order"
+            f"wanted {wanted}, one a cell, in the mesh's order"
         )
     return values
 
