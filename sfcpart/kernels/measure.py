@@ -1,15 +1,15 @@
 """Loops behind the figures of a partition: cut faces, sums of parts, pairs of parts.
 
-`count_cuts` and `count_off_lattice` stream over ranges of cells. Sums per part are taken in cell
-order by one pass (`sum_parts`), so that a float sum cannot depend on the number of threads. Every
-kernel is linear in cells plus entries of the cell graph.
+All but `find_pairs` stream over ranges of cells. Sums per part are whole numbers (`sum_parts`), so
+that they cannot depend on the number of threads. Every kernel is linear in cells plus entries of
+the cell graph.
 """
 
 from __future__ import annotations
 
 import numpy as np
 
-from sfcpart.dtypes import BoolArray, FloatArray, Int32Array, Int64Array, IntArray
+from sfcpart.dtypes import FloatArray, Int32Array, Int64Array, IntArray
 from sfcpart.kernels._jit import jit
 
 __all__ = [
@@ -46,36 +46,45 @@ def count_cuts(
 
 @jit
 def sum_parts(
+    start: int,
+    stop: int,
+    bounds: Int64Array,
     cell_part: Int32Array,
-    n_parts: int,
     values: tuple[FloatArray, ...],
+    factor: FloatArray,
+    low_unit: float,
     counts: tuple[Int32Array, ...],
     centers: FloatArray,
-) -> tuple[Int64Array, FloatArray, Int64Array, FloatArray, FloatArray]:
-    """Sum values and counts of the cells of each part in cell order; box their centres.
+    total: Int64Array,
+    low: FloatArray,
+    high: FloatArray,
+) -> None:
+    """Sum values and counts of the cells of each part; box their centres.
 
-    An empty array among them stands for one that is not known; its sums are 0.
+    Block r takes cells bounds[r]..bounds[r+1] and adds to row r of the results. `total` has for
+    each part the cells, the counts, and two words of each value (`sfcpart.slices.fixed`): units of
+    1 / factor, and the rest in units finer by `low_unit`. An empty array among values and counts
+    stands for one that is not known; its sums stay as they are.
     """
     n_axes = centers.shape[1]
-    n_cells = np.zeros(n_parts, np.int64)
-    value_sum = np.zeros((n_parts, len(values)))
-    count_sum = np.zeros((n_parts, len(counts)), np.int64)
-    low = np.full((n_parts, n_axes), np.inf)
-    high = np.full((n_parts, n_axes), -np.inf)
-    for i in range(len(cell_part)):
-        part = cell_part[i]
-        n_cells[part] += 1
-        for k in range(len(values)):
-            if len(values[k]) > 0:
-                value_sum[part, k] += values[k][i]
-        for k in range(len(counts)):
-            if len(counts[k]) > 0:
-                count_sum[part, k] += counts[k][i]
-        for k in range(n_axes):
-            x = centers[i, k]
-            low[part, k] = min(low[part, k], x)
-            high[part, k] = max(high[part, k], x)
-    return n_cells, value_sum, count_sum, low, high
+    n_counts = len(counts)
+    for r in range(start, stop):
+        for i in range(bounds[r], bounds[r + 1]):
+            part = cell_part[i]
+            total[r, part, 0] += 1
+            for k in range(n_counts):
+                if len(counts[k]) > 0:
+                    total[r, part, 1 + k] += counts[k][i]
+            for k in range(len(values)):
+                if len(values[k]) > 0:
+                    scaled = values[k][i] * factor[k]
+                    word = np.int64(scaled)
+                    total[r, part, 1 + n_counts + 2 * k] += word
+                    total[r, part, 2 + n_counts + 2 * k] += np.int64((scaled - word) * low_unit)
+            for k in range(n_axes):
+                x = centers[i, k]
+                low[r, part, k] = min(low[r, part, k], x)
+                high[r, part, k] = max(high[r, part, k], x)
 
 
 @jit
@@ -142,24 +151,24 @@ def count_off_lattice(
     spacing: float,
     tolerance: float,
     sides: Int64Array,
-    is_taken: BoolArray,
+    site: Int64Array,
 ) -> int:
-    """Mark the sites of a range of cells; count what does not fit a lattice.
+    """Write the sites of a range of cells; count what does not fit a lattice.
 
     Counted are cells off the sites, and entries that do not join two sites one step apart along
-    one axis, or join them again. Ranges may mark the same site: they write the same byte.
+    one axis, or join them again.
     """
     n_bad = 0
     scale = 1.0 / spacing  # 18 divisions a cube would take as long as the rest
     for i in range(start, stop):
-        site = 0
+        place = np.int64(0)
         for k in range(len(sides)):
             steps = (centers[i, k] - origin[k]) * scale
             nearest = np.rint(steps)
             if abs(steps - nearest) > tolerance * max(1.0, steps):
                 n_bad += 1
-            site = site * sides[k] + min(max(int(nearest), 0), sides[k] - 1)
-        is_taken[site] = True
+            place = place * sides[k] + min(max(np.int64(nearest), 0), sides[k] - 1)
+        site[i] = place
         for entry in range(indptr[i], indptr[i + 1]):
             j = indices[entry]
             apart = 0.0

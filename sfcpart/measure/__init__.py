@@ -10,7 +10,7 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from sfcpart.measure.assess import assess_partition
+    from sfcpart.measure.assess import assess_partition, assess_slice
     from sfcpart.measure.assessment import Assessment
     from sfcpart.measure.columns import PART_COLUMNS, TOTAL_COLUMNS, Column
     from sfcpart.measure.pairs import PartPairs
@@ -28,6 +28,7 @@ __all__ = [
     "PartPairs",
     "StepModel",
     "assess_partition",
+    "assess_slice",
 ]
 
 _HOME = {
@@ -37,6 +38,7 @@ _HOME = {
     "TOTAL_COLUMNS": "columns",
     "PartPairs": "pairs",
     "assess_partition": "assess",
+    "assess_slice": "assess",
 }
 
 

@@ -12,6 +12,7 @@ from types import MappingProxyType
 import numpy as np
 from numpy.typing import ArrayLike
 
+from sfcpart.comm.base import Comm
 from sfcpart.dtypes import BoolArray, FloatArray, Int32Array
 from sfcpart.graph import CellGraph
 from sfcpart.measure.assessment import Assessment, Number
@@ -24,8 +25,10 @@ from sfcpart.measure.step_model import StepModel, StepTime
 from sfcpart.measure.sums import CellSums, sum_cells
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
+from sfcpart.slices.graph_slice import GraphSlice
+from sfcpart.slices.mesh_slice import MeshSlice
 
-__all__ = ["assess_partition"]
+__all__ = ["assess_partition", "assess_slice"]
 
 
 def assess_partition(
@@ -74,10 +77,76 @@ def assess_partition(
 
     Notes
     -----
-    O(n_cells + entries + pairs of parts log pairs); the same bits for any number of threads.
+    O(n_cells + entries + pairs of parts log pairs); the same bits for any number of threads, and
+    for any number of ranks (`assess_slice`).
+    """
+    return assess_slice(
+        MeshSlice.whole(mesh),
+        None if graph is None else GraphSlice.whole(cast_graph(graph)),
+        partition,
+        weights=weights,
+        speeds=speeds,
+        step_model=step_model,
+        limit_weights=limit_weights,
+        limits=limits,
+    )
+
+
+def assess_slice(
+    held: MeshSlice,
+    graph: GraphSlice | None,
+    partition: Partition,
+    *,
+    weights: ArrayLike | None = None,
+    speeds: ArrayLike | None = None,
+    step_model: StepModel | None = None,
+    limit_weights: ArrayLike | None = None,
+    limits: ArrayLike | None = None,
+) -> Assessment:
+    """Measure a partition of a mesh that lies on many ranks (collective).
+
+    Parameters
+    ----------
+    held, graph : MeshSlice, GraphSlice or None
+        What this rank holds of mesh and graph.
+    partition : Partition
+        Part of each cell of this rank; the number of parts is that of all ranks.
+    weights, limit_weights : (n_local,) numbers >= 0, optional
+        Of the cells of this rank.
+    speeds, step_model, limits
+        As for `assess_partition`, the same on all ranks.
+
+    Returns
+    -------
+    Assessment
+        The same bits on every rank for any number of ranks; `pairs` on rank 0 only.
+
+    Raises
+    ------
+    PartitionError, WeightError, InputError
+        On all ranks alike, as `assess_partition`.
+
+    Notes
+    -----
+    Reductions of less than 250 bytes a part, no array longer than parts or this rank's cells but
+    the pairs of parts that meet, on rank 0 (28 bytes each). See `sums`, `pairs` and
+    `sfcpart.slices.pieces` for what is sent.
+
+    Examples
+    --------
+    >>> from sfcpart.comm import run_ranks
+    >>> from sfcpart.slices.graph_slice import graph_slice
+    >>> from sfcpart.slices.mesh_slice import cut_mesh
+    >>> row = Mesh.from_faces([[0, 1], [1, 2]], [1, 1], [[0, 0], [1, 0], [2, 0]], [1, 1, 1])
+    >>> def act(comm):
+    ...     held = cut_mesh(row, comm)
+    ...     half = Partition.from_array([[0], [0, 1]][comm.rank], 2)
+    ...     return assess_slice(held, graph_slice(held), half).total["cut_faces"]
+    >>> run_ranks(2, act)
+    [1, 1]
     """
     given = check_given(
-        mesh,
+        held,
         graph,
         partition,
         weights=weights,
@@ -85,17 +154,24 @@ def assess_partition(
         limit_weights=limit_weights,
         limits=limits,
     )
-    graph = None if graph is None else cast_graph(graph)
     model = StepModel() if step_model is None else step_model
-    sums = sum_cells(mesh, graph, partition, given)
-    time = _step_time(sums, given, model)
-    used_axes = flat_axes(mesh)
-    flat_dim = None if used_axes is None else mesh.dim
-    part = part_figures(sums, given, stretch=_stretch(sums, mesh), flat_dim=flat_dim, time=time)
+    sums = sum_cells(held, graph, partition.cell_part, partition.n_parts, given)
+    return _assessment(held, graph, sums, given, model)
+
+
+def _assessment(
+    held: MeshSlice, graph: GraphSlice | None, sums: CellSums, given: Given, model: StepModel
+) -> Assessment:
+    """Turn sums into figures."""
+    time = _step_time(sums, given, model, held.comm)
+    flat_dim = None if flat_axes(held) is None else held.mesh.dim
+    stretch = _stretch(sums, held.mesh)
+    part = part_figures(sums, given, stretch=stretch, flat_dim=flat_dim, time=time, comm=held.comm)
     total: dict[str, Number] = dict.fromkeys(column.name for column in TOTAL_COLUMNS)
-    total |= total_figures(part, given, time=time)
+    total |= total_figures(part, sums, given, time=time)
     if graph is not None and sums.faces is not None:
-        total |= cut_figures(mesh, graph, part=part, total=total)
+        n_faces = sums.faces.n_faces
+        total |= cut_figures(held, graph, part=part, total=total, n_faces=n_faces)
     for column in part.values():
         if column is not None:
             column.flags.writeable = False
@@ -104,18 +180,20 @@ def assess_partition(
         total=MappingProxyType(total),
         empty_parts=_which(sums.cells == 0),
         split_parts=_which(np.zeros(0, bool) if sums.faces is None else sums.faces.pieces > 1),
-        pairs=None if sums.faces is None else sums.faces.pairs,
+        pairs=None if sums.faces is None else sums.faces.pairs.gathered(held.comm),
         step_model=model,
     )
 
 
-def _step_time(sums: CellSums, given: Given, model: StepModel) -> StepTime | None:
+def _step_time(sums: CellSums, given: Given, model: StepModel, comm: Comm) -> StepTime | None:
     """Predict one step where the exchanges are known."""
     if sums.faces is None:
         return None
-    return model.predict(
-        sums.weight, sums.faces.pairs, speed=given.speed, n_cells=int(sums.cells.sum())
-    )
+    # each part's messages are added by the rank that owns it; the others have 0
+    exchange = model.exchange_seconds(sums.faces.pairs, len(sums.cells))
+    exchange = comm.allreduce(exchange, "max")
+    n_cells = int(sums.cells.sum())
+    return model.predict_from(sums.weight, exchange, speed=given.speed, n_cells=n_cells)
 
 
 def _stretch(sums: CellSums, mesh: Mesh) -> FloatArray:

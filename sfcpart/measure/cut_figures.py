@@ -12,13 +12,14 @@ from collections.abc import Mapping
 
 import numpy as np
 
-from sfcpart.dtypes import Array
-from sfcpart.graph import CellGraph
+from sfcpart.dtypes import Array, BoolArray
 from sfcpart.measure.assessment import Number
 from sfcpart.measure.bounds import least_cut_measure, least_lattice_cut
 from sfcpart.measure.lattice import Lattice, find_lattice
 from sfcpart.measure.shape import flat_axes, has_measures
 from sfcpart.mesh.mesh import Mesh
+from sfcpart.slices.graph_slice import GraphSlice
+from sfcpart.slices.mesh_slice import MeshSlice
 
 __all__ = ["cut_figures"]
 
@@ -27,33 +28,37 @@ _SLACK = 1e-9
 
 
 def cut_figures(
-    mesh: Mesh,
-    graph: CellGraph,
+    held: MeshSlice,
+    graph: GraphSlice,
     *,
     part: Mapping[str, Array | None],
     total: Mapping[str, Number],
+    n_faces: int,
 ) -> dict[str, Number]:
-    """Return the totals that compare the cut with all faces and with the least possible.
+    """Return the totals that compare the cut with all faces and with the least (collective).
 
     Parameters
     ----------
-    mesh, graph : Mesh, CellGraph
+    held, graph : MeshSlice, GraphSlice
     part : mapping of str to array
-        Columns by part: "cells", "measure".
+        Columns by part: "cells", "measure", "boundary_measure".
     total : mapping of str to number
         "cut_faces" and "cut_measure".
+    n_faces : int
+        Faces between two cells.
     """
     cut_faces, cut_measure = float(total["cut_faces"] or 0), float(total["cut_measure"] or 0)
     figures: dict[str, Number] = {
-        "n_faces": graph.n_faces,
-        "cut_share": _ratio(cut_faces, graph.n_faces),
+        "n_faces": n_faces,
+        "cut_share": _ratio(cut_faces, n_faces),
     }
-    lattice = _lattice(mesh, graph)
+    axes = flat_axes(held)
+    lattice = _lattice(held.mesh, graph, axes)
     if lattice is not None:
         least = _least_faces(lattice, part)
         figures |= {"least_cut_faces": least, "cut_faces_ratio": _ratio(cut_faces, least)}
     bound = max(
-        _continuous_bound(mesh, graph, part),
+        0.0 if axes is None else _continuous_bound(held.mesh, part),
         0.0 if lattice is None else _least_faces(lattice, part) * lattice.face_measure,
     )
     if 0 < bound <= cut_measure * (1 + _SLACK):
@@ -61,9 +66,8 @@ def cut_figures(
     return figures
 
 
-def _lattice(mesh: Mesh, graph: CellGraph) -> Lattice | None:
+def _lattice(mesh: Mesh, graph: GraphSlice, axes: BoolArray | None) -> Lattice | None:
     """Look for a lattice in a planar or solid mesh."""
-    axes = flat_axes(mesh)
     if axes is None or not has_measures(mesh):
         return None
     centers = mesh.centers if axes.all() else np.ascontiguousarray(mesh.centers[:, axes])
@@ -79,13 +83,12 @@ def _least_faces(lattice: Lattice, part: Mapping[str, Array | None]) -> int:
     )
 
 
-def _continuous_bound(mesh: Mesh, graph: CellGraph, part: Mapping[str, Array | None]) -> float:
-    """Return the isoperimetric bound on the cut measure, 0 where it does not apply."""
-    measure = part["measure"]
-    if mesh.points is None or measure is None or flat_axes(mesh) is None:
+def _continuous_bound(mesh: Mesh, part: Mapping[str, Array | None]) -> float:
+    """Return the isoperimetric bound on the cut measure of a flat mesh, 0 if there is none."""
+    measure, boundary = part["measure"], part["boundary_measure"]
+    if mesh.points is None or measure is None or boundary is None:
         return 0.0
-    boundary = float(graph.boundary_measure.sum())
-    return least_cut_measure(measure, dim=mesh.dim, boundary_measure=boundary)
+    return least_cut_measure(measure, dim=mesh.dim, boundary_measure=float(boundary.sum()))
 
 
 def _ratio(above: float, below: float) -> float | None:

@@ -9,11 +9,13 @@ from collections.abc import Mapping
 
 import numpy as np
 
+from sfcpart.comm.base import Comm
 from sfcpart.dtypes import Array, FloatArray, Int64Array
 from sfcpart.measure.assessment import Number
 from sfcpart.measure.bounds import least_imbalance, least_surface_measure
 from sfcpart.measure.columns import PART_COLUMNS
 from sfcpart.measure.gate import Given
+from sfcpart.measure.pairs import PartPairs
 from sfcpart.measure.step_model import StepTime
 from sfcpart.measure.sums import CellSums, FaceSums
 
@@ -27,8 +29,9 @@ def part_figures(
     stretch: FloatArray,
     flat_dim: int | None,
     time: StepTime | None,
+    comm: Comm,
 ) -> dict[str, Array | None]:
-    """Return the column of every name in `PART_COLUMNS`.
+    """Return the column of every name in `PART_COLUMNS` (collective).
 
     `flat_dim` is the dimension of a planar or solid mesh, None for curved surfaces.
     """
@@ -49,26 +52,23 @@ def part_figures(
             "limit_share": sums.limit_weight / given.part_limit,
         }
     if sums.faces is not None:
-        part |= _face_columns(sums, sums.faces, flat_dim)
+        part |= _face_columns(sums, sums.faces, flat_dim, comm)
     if time is not None:
         part["step_seconds"] = time.work + time.exchange
     return part
 
 
-def _face_columns(sums: CellSums, faces: FaceSums, flat_dim: int | None) -> dict[str, Array]:
+def _face_columns(
+    sums: CellSums, faces: FaceSums, flat_dim: int | None, comm: Comm
+) -> dict[str, Array]:
     """Return the columns that need faces."""
-    n_parts = len(sums.cells)
-    pairs = faces.pairs
     surface = faces.cut_measure + faces.boundary_measure
     columns = {
         "cut_faces": faces.cut_faces,
         "cut_measure": faces.cut_measure,
         "boundary_faces": faces.boundary_faces,
         "boundary_measure": faces.boundary_measure,
-        "halo_cells": _whole_sums(pairs.part, pairs.received_cells, n_parts),
-        "sent_cells": _whole_sums(pairs.part, pairs.sent_cells, n_parts),
-        "neighbours": np.bincount(pairs.part, minlength=n_parts).astype(np.int64),
-        "smallest_interface": _smallest_interface(pairs.part, pairs.faces, n_parts),
+        **_pair_columns(faces.pairs, len(sums.cells), comm),
         "pieces": faces.pieces,
         "stray_cells": sums.cells - faces.largest_piece,
         "surface": surface,
@@ -82,6 +82,20 @@ def _face_columns(sums: CellSums, faces: FaceSums, flat_dim: int | None) -> dict
     return columns
 
 
+def _pair_columns(pairs: PartPairs, n_parts: int, comm: Comm) -> dict[str, Array]:
+    """Return the columns that follow from pairs; each rank has those of its parts."""
+    whole = np.stack(
+        [
+            _whole_sums(pairs.part, pairs.received_cells, n_parts),
+            _whole_sums(pairs.part, pairs.sent_cells, n_parts),
+            np.bincount(pairs.part, minlength=n_parts),
+            _smallest_interface(pairs.part, pairs.faces, n_parts),
+        ]
+    )
+    names = ("halo_cells", "sent_cells", "neighbours", "smallest_interface")
+    return dict(zip(names, comm.allreduce(whole), strict=True))
+
+
 def _load(weight: FloatArray, speed: FloatArray) -> FloatArray:
     """Return the weight of each part over the fair share of its speed (NaN if all weigh 0)."""
     return _ratio(weight, speed * (weight.sum() / speed.sum()))
@@ -90,7 +104,8 @@ def _load(weight: FloatArray, speed: FloatArray) -> FloatArray:
 def _ratio(above: Array, below: Array) -> FloatArray:
     """Divide, NaN where the divisor is not positive."""
     ratio = np.full(len(above), np.nan)
-    np.divide(above, below, out=ratio, where=below > 0)
+    with np.errstate(invalid="ignore"):  # of infinite measures
+        np.divide(above, below, out=ratio, where=below > 0)
     return ratio
 
 
@@ -110,7 +125,7 @@ def _smallest_interface(part: Array, faces: Int64Array, n_parts: int) -> Int64Ar
 
 
 def total_figures(
-    part: Mapping[str, Array | None], given: Given, *, time: StepTime | None
+    part: Mapping[str, Array | None], sums: CellSums, given: Given, *, time: StepTime | None
 ) -> dict[str, Number]:
     """Return the totals that follow from the columns; bounds on the cut come on top."""
     cells = _column(part, "cells")
@@ -125,7 +140,7 @@ def total_figures(
         "n_empty_parts": int((cells == 0).sum()),
         "stretch_max": _worst(_column(part, "stretch")),
     }
-    total |= _least_imbalances(given, int(cells.sum()), float(_column(part, "weight").sum()))
+    total |= _least_imbalances(sums, given, float(_column(part, "weight").sum()))
     if part["cut_faces"] is not None:
         total |= _face_totals(part)
     if time is not None:
@@ -164,14 +179,13 @@ def _face_totals(part: Mapping[str, Array | None]) -> dict[str, Number]:
     return total
 
 
-def _least_imbalances(given: Given, n_cells: int, weight: float) -> dict[str, Number]:
+def _least_imbalances(sums: CellSums, given: Given, weight: float) -> dict[str, Number]:
     """Return how well the cells could be balanced over these ranks."""
+    n_cells = int(sums.cells.sum())
     equal = least_imbalance(n_cells, given.speed, heaviest=1.0, is_equal=True)
     if given.weight is None:
         return {"least_imbalance": equal, "least_imbalance_unweighted": equal}
-    heaviest = float(given.weight.max())
-    is_equal = bool((given.weight == heaviest).all())
-    least = least_imbalance(weight, given.speed, heaviest=heaviest, is_equal=is_equal)
+    least = least_imbalance(weight, given.speed, heaviest=sums.heaviest, is_equal=sums.is_equal)
     known = least if weight > 0 else None
     return {"least_imbalance": known, "least_imbalance_unweighted": equal}
 

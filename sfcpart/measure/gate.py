@@ -3,16 +3,19 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from math import isfinite
 from typing import TypeVar
 
 import numpy as np
 from numpy.typing import ArrayLike
 
 from sfcpart.dtypes import Array, FloatArray
-from sfcpart.errors import InputError, PartitionError, WeightError
+from sfcpart.errors import InputError, PartitionError, SfcpartError, WeightError
 from sfcpart.graph import CellGraph
-from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
+from sfcpart.slices.fixed import fixed_sum, largest_values
+from sfcpart.slices.graph_slice import GraphSlice
+from sfcpart.slices.mesh_slice import MeshSlice
 
 __all__ = ["Given", "cast_graph", "check_given", "frozen"]
 
@@ -60,8 +63,8 @@ def cast_graph(graph: CellGraph) -> CellGraph:
 
 
 def check_given(
-    mesh: Mesh,
-    graph: CellGraph | None,
+    held: MeshSlice,
+    graph: GraphSlice | None,
     partition: Partition,
     *,
     weights: ArrayLike | None,
@@ -69,45 +72,68 @@ def check_given(
     limit_weights: ArrayLike | None,
     limits: ArrayLike | None,
 ) -> Given:
-    """Check that everything belongs together, and cast it."""
-    n_cells, n_parts = mesh.n_cells, partition.n_parts
-    if partition.n_cells != n_cells:
+    """Check that everything belongs together, and cast it (collective)."""
+    comm, n_parts, found, error = held.comm, partition.n_parts, None, None
+    try:
+        _check_counts(held, graph, partition)
+        if (limit_weights is None) != (limits is None):
+            missing = "limits" if limits is None else "limit_weights"
+            raise WeightError(f"{missing} missing: a limit needs both limit_weights and limits")
+        found = Given(
+            weight=_cell_values("weights", weights, held),
+            speed=_speeds(speeds, n_parts),
+            limit_weight=_cell_values("limit_weights", limit_weights, held),
+            part_limit=None if limits is None else _part_values("limits", limits, n_parts),
+        )
+    except SfcpartError as caught:
+        error = caught
+    comm.check(error)
+    assert found is not None
+    for name, values in (("weights", found.weight), ("limit_weights", found.limit_weight)):
+        if values is not None:
+            _check_total(name, values, held)
+    return found
+
+
+def _check_counts(held: MeshSlice, graph: GraphSlice | None, partition: Partition) -> None:
+    """Refuse a partition or a graph of other cells."""
+    if partition.n_cells != held.n_local:
         raise PartitionError(
-            f"the partition has {partition.n_cells} cells, the mesh {n_cells}; "
+            f"the partition has {partition.n_cells} cells, the mesh {held.n_local}; "
             "wanted one part for each cell of the mesh"
         )
-    if graph is not None and graph.n_cells != n_cells:
+    if graph is not None and graph.n_local != held.n_local:
         raise InputError(
-            f"the cell graph has {graph.n_cells} cells, the mesh {n_cells}; wanted its own graph"
+            f"the cell graph has {graph.n_local} cells, the mesh {held.n_local}; "
+            "wanted its own graph"
         )
-    if (limit_weights is None) != (limits is None):
-        missing = "limits" if limits is None else "limit_weights"
-        raise WeightError(f"{missing} missing: a limit needs both limit_weights and limits")
-    return Given(
-        weight=_cell_values("weights", weights, n_cells),
-        speed=_speeds(speeds, n_parts),
-        limit_weight=_cell_values("limit_weights", limit_weights, n_cells),
-        part_limit=None if limits is None else _part_values("limits", limits, n_parts),
-    )
 
 
-def _cell_values(name: str, values: ArrayLike | None, n_cells: int) -> FloatArray | None:
-    """Cast one non-negative finite number for each cell."""
+def _cell_values(name: str, values: ArrayLike | None, held: MeshSlice) -> FloatArray | None:
+    """Cast one non-negative finite number for each cell of this rank."""
     if values is None:
         return None
-    array = _numbers(name, values)
-    if array.shape != (n_cells,):
-        raise WeightError(f"{name} has shape {array.shape}; wanted one number a cell, ({n_cells},)")
-    _refuse(name, array, ~(np.isfinite(array) & (array >= 0)), "finite numbers, at least 0")
-    with np.errstate(over="ignore"):
-        total = float(array.sum())
-    if not np.isfinite(total):
-        largest = int(np.argmax(array))
-        raise WeightError(
-            f"{name} add up to more than a float64 holds (largest: {name}[{largest}] = "
-            f"{array[largest]:g}); divide them all by a common number"
-        )
+    array, n = _numbers(name, values), held.n_local
+    if array.shape != (n,):
+        raise WeightError(f"{name} has shape {array.shape}; wanted one number a cell, ({n},)")
+    is_bad = ~(np.isfinite(array) & (array >= 0))
+    _refuse(name, array, is_bad, "finite numbers, at least 0", first=held.first_gid)
     return array
+
+
+def _check_total(name: str, values: FloatArray, held: MeshSlice) -> None:
+    """Refuse values whose sum is beyond the numbers."""
+    (largest,) = largest_values([values], held.comm)
+    if isfinite(largest * held.n_cells):
+        return
+    if not isfinite(fixed_sum(values, n_values=held.n_cells, comm=held.comm)):
+        at = np.flatnonzero(values == largest)
+        mine = held.first_gid + int(at[0]) if len(at) else held.n_cells
+        cell = int(held.comm.allreduce(np.array([mine], np.int64), "min")[0])
+        raise WeightError(
+            f"{name} add up to more than a float64 holds (largest: {name}[{cell}] = "
+            f"{largest:g}); divide them all by a common number"
+        )
 
 
 def _part_values(name: str, values: ArrayLike, n_parts: int) -> FloatArray:
@@ -138,8 +164,8 @@ def _numbers(name: str, values: ArrayLike) -> FloatArray:
     return np.asarray(array, dtype=np.float64, order="C")
 
 
-def _refuse(name: str, array: FloatArray, is_bad: Array, wanted: str) -> None:
-    """Name the first offender."""
+def _refuse(name: str, array: FloatArray, is_bad: Array, wanted: str, *, first: int = 0) -> None:
+    """Name the first offender; `first` is the number of the first row."""
     if is_bad.any():
-        first = int(np.flatnonzero(is_bad)[0])
-        raise WeightError(f"{name}[{first}] is {array[first]}; wanted {wanted}")
+        row = int(np.flatnonzero(is_bad)[0])
+        raise WeightError(f"{name}[{first + row}] is {array[row]}; wanted {wanted}")

@@ -7,10 +7,12 @@ from __future__ import annotations
 
 import numpy as np
 
+from sfcpart.comm.base import Comm
 from sfcpart.dtypes import BoolArray, FloatArray, Int64Array
 from sfcpart.mesh.mesh import Mesh
+from sfcpart.slices.mesh_slice import MeshSlice
 
-__all__ = ["flat_axes", "has_measures", "part_stretch"]
+__all__ = ["extent_of", "flat_axes", "has_measures", "part_stretch"]
 
 _FLAT = 1e-12
 """Extent over largest extent below which an axis counts as constant."""
@@ -21,8 +23,8 @@ def has_measures(mesh: Mesh) -> bool:
     return mesh.points is not None or mesh.given_measure is not None
 
 
-def flat_axes(mesh: Mesh) -> BoolArray | None:
-    """Tell which axes a planar or solid mesh uses.
+def flat_axes(held: MeshSlice) -> BoolArray | None:
+    """Tell which axes a planar or solid mesh uses (collective).
 
     Returns
     -------
@@ -30,12 +32,18 @@ def flat_axes(mesh: Mesh) -> BoolArray | None:
         As many axes as the mesh has dimensions; None for a curved or tilted surface, on which a
         part may have less surface than the disc of its measure.
     """
+    mesh = held.mesh
     if mesh.dim == mesh.space_dim:
         return np.ones(mesh.dim, np.bool_)
-    place = mesh.centers if mesh.points is None else mesh.points
-    extent = place.max(axis=0) - place.min(axis=0)
-    is_used: BoolArray = extent > _FLAT * extent.max()
+    low, high = extent_of(mesh.centers if mesh.points is None else mesh.points, held.comm)
+    is_used: BoolArray = high - low > _FLAT * (high - low).max()
     return is_used if int(is_used.sum()) == mesh.dim else None
+
+
+def extent_of(places: FloatArray, comm: Comm) -> tuple[FloatArray, FloatArray]:
+    """Return the corners of the box around places of all ranks (collective)."""
+    low = comm.allreduce(places.min(axis=0, initial=np.inf), "min")
+    return low, comm.allreduce(places.max(axis=0, initial=-np.inf), "max")
 
 
 def part_stretch(

@@ -204,18 +204,24 @@ class StepModel:
         n_cells : int
             Number of cells.
         """
+        exchange = self.exchange_seconds(pairs, len(part_weight))
+        return self.predict_from(part_weight, exchange, speed=speed, n_cells=n_cells)
+
+    def predict_from(
+        self, part_weight: FloatArray, exchange: FloatArray, *, speed: FloatArray, n_cells: int
+    ) -> StepTime:
+        """Predict one step from the seconds that each part spends on messages."""
         alone = self.cell_seconds * n_cells
         weight = float(part_weight.sum())
         relative = part_weight / weight if weight > 0 else np.zeros_like(part_weight)
         work = alone * relative / (speed / speed.mean())
-        exchange = self._exchange_seconds(pairs, len(part_weight))
         slowest = int(np.argmax(work + exchange))
         total = float(work[slowest] + exchange[slowest])
         speed_up = alone / total if total > 0 else float("nan")
         share = float(exchange[slowest]) / total if total > 0 else 0.0
         return StepTime(work, exchange, total, share, speed_up, speed_up / len(part_weight))
 
-    def _exchange_seconds(self, pairs: PartPairs, n_parts: int) -> FloatArray:
+    def exchange_seconds(self, pairs: PartPairs, n_parts: int) -> FloatArray:
         """Add Hockney's time of the messages of each part."""
         cells = np.maximum(pairs.sent_cells, pairs.received_cells)
         seconds = self.network.latency + cells * (self.bytes_per_halo_cell / self.network.bandwidth)

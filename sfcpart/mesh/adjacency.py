@@ -149,7 +149,7 @@ def join_cells(mesh: Mesh) -> Adjacency:
     MeshError
         If points or faces of cells number 2**30 or more.
     """
-    return join_matched(match_cells(mesh, on_rim=np.zeros(0, np.bool_)))
+    return join_matched(match_cells(mesh, on_rim=np.zeros(0, np.bool_), all_tetra=True))
 
 
 def join_matched(matching: Matching) -> Adjacency:
@@ -168,7 +168,7 @@ def join_matched(matching: Matching) -> Adjacency:
     return (indptr, indices, data, boundary_count, boundary_measure)
 
 
-def match_cells(mesh: Mesh, *, on_rim: BoolArray) -> Matching:
+def match_cells(mesh: Mesh, *, on_rim: BoolArray, all_tetra: bool) -> Matching:
     """Find mate and measure of each face of each cell.
 
     Parameters
@@ -177,6 +177,9 @@ def match_cells(mesh: Mesh, *, on_rim: BoolArray) -> Matching:
         With points.
     on_rim : (n_points,) bool, or empty
         Faces with all their corners among these are remembered.
+    all_tetra : bool
+        Whether the whole mesh may be tetrahedra, of which this is a slice: they have a way of
+        their own, with another order of the faces of a cell.
     """
     _checked(mesh.n_points)
     cells = spell_out(mesh.cell_arrays())
@@ -185,7 +188,7 @@ def match_cells(mesh: Mesh, *, on_rim: BoolArray) -> Matching:
     bounds = np.linspace(0, mesh.n_cells, n_blocks + 1).astype(OFFSET)
     count = np.zeros((n_blocks, mesh.n_points), np.int32)
     face = np.empty((slots.count, 2), np.int64)
-    _list(mesh, cells, slots, bounds, face, count)
+    _list(mesh, cells, slots, bounds, face, count, all_tetra=all_tetra)
     rim = _rim_faces(face, cells, on_rim)
     bucket = np.empty(mesh.n_points + 1, np.int32)
     largest = face_match.place_buckets(count, bucket)
@@ -250,9 +253,11 @@ def _list(
     bounds: Int64Array,
     face: Int64Array,
     count: Int32Array,
+    *,
+    all_tetra: bool,
 ) -> None:
     """List the faces of all cells; tetrahedra have a way of their own."""
-    if slots.stride == 4 and mesh.kind[0] == TETRA:
+    if all_tetra and slots.stride == 4 and mesh.kind[0] == TETRA:
         tetra = mesh.indices.reshape(-1, 4)
         run_ranges(faces.list_tetra_faces, len(count), bounds, tetra, face, count, smallest=1)
         return

@@ -28,6 +28,7 @@ from sfcpart.dtypes import (
 )
 from sfcpart.errors import MeshError
 from sfcpart.kernels.threads import run_ranges
+from sfcpart.mesh.kinds import TETRA
 from sfcpart.slices.exchange import Lane, open_lane, pack
 from sfcpart.slices.lists import ExchangeLists
 from sfcpart.slices.mesh_slice import MeshSlice
@@ -236,8 +237,10 @@ def _from_points(held: MeshSlice) -> tuple[tuple[Array, ...], Int64Array]:
     from sfcpart.slices.meeting import FaceRows, meet_faces, shared_points
 
     shared, error, matching = shared_points(held), None, None
+    is_tetra = np.array([bool((held.mesh.kind == TETRA).all())])
+    all_tetra = bool(held.comm.allreduce(is_tetra, "min")[0])
     try:
-        matching = match_cells(held.mesh, on_rim=shared)
+        matching = match_cells(held.mesh, on_rim=shared, all_tetra=all_tetra)
     except MeshError as caught:
         error = caught
     held.comm.check(error)

@@ -16,6 +16,7 @@ from sfcpart.measure.lattice import find_lattice
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.mesh.shapes import jittered_tets, lattice
 from sfcpart.partition import Partition
+from sfcpart.slices.graph_slice import GraphSlice
 from tests.oracles.figures import figures_by_sets
 from tests.strategies import small_meshes
 
@@ -76,7 +77,7 @@ def test_lattices_are_recognised_whatever_the_order_of_cells(counts, size):
     ((name, cells),) = shape.cells.items()
     order = np.random.default_rng(0).permutation(len(cells))
     mesh = Mesh.from_arrays(shape.points, {name: cells[order]})
-    found = find_lattice(mesh.centers, mesh.measures, cell_graph(mesh))
+    found = find_lattice(mesh.centers, mesh.measures, GraphSlice.whole(cell_graph(mesh)))
     long = tuple(n for n in counts if n > 1)
     assert found is not None
     assert (found.dim, found.sides) == (len(long), long)
@@ -87,7 +88,7 @@ def test_a_lattice_with_a_hole_has_no_full_box():
     shape = lattice((5, 5))
     cells = np.delete(shape.cells["quad"], 12, axis=0)
     mesh = Mesh.from_arrays(shape.points, {"quad": cells})
-    found = find_lattice(mesh.centers, mesh.measures, cell_graph(mesh))
+    found = find_lattice(mesh.centers, mesh.measures, GraphSlice.whole(cell_graph(mesh)))
     assert (found.dim, found.sides, found.boundary_faces) == (2, None, 24)
 
 
@@ -102,7 +103,7 @@ def test_a_lattice_with_a_hole_has_no_full_box():
 def test_what_is_nearly_a_lattice_is_none(spoil):
     shape = lattice((5, 5))
     mesh = Mesh.from_arrays(spoil(shape.points), {"quad": shape.cells["quad"]})
-    assert find_lattice(mesh.centers, mesh.measures, cell_graph(mesh)) is None
+    assert find_lattice(mesh.centers, mesh.measures, GraphSlice.whole(cell_graph(mesh))) is None
 
 
 def test_two_sheets_on_the_same_sites_are_no_lattice():
@@ -110,7 +111,7 @@ def test_two_sheets_on_the_same_sites_are_no_lattice():
     twice = np.concatenate([shape.points, shape.points])
     cells = np.concatenate([shape.cells["quad"], shape.cells["quad"] + len(shape.points)])
     mesh = Mesh.from_arrays(twice, {"quad": cells})
-    assert find_lattice(mesh.centers, mesh.measures, cell_graph(mesh)) is None
+    assert find_lattice(mesh.centers, mesh.measures, GraphSlice.whole(cell_graph(mesh))) is None
 
 
 def test_a_bound_above_the_cut_at_hand_is_dropped():
@@ -142,4 +143,4 @@ def test_two_squares_that_meet_at_both_ends_are_no_lattice():
     # A ring of two: each has its upper and lower side on the boundary, the others joined twice.
     faces = [[0, 1], [1, 0], [0, -1], [0, -1], [1, -1], [1, -1]]
     mesh = Mesh.from_faces(faces, np.ones(6), [[0.0, 0.0], [1.0, 0.0]], np.ones(2))
-    assert find_lattice(mesh.centers, mesh.measures, cell_graph(mesh)) is None
+    assert find_lattice(mesh.centers, mesh.measures, GraphSlice.whole(cell_graph(mesh))) is None
