@@ -32,6 +32,8 @@ __all__ = ["Every", "Forecast", "Never", "Regret", "Rule", "StopAtRise", "Thresh
 
 _MOST_PATIENCE = 64.0
 _SPIKE = 4.0  # times the usual change from step to step: more must be seen twice
+_GRAVE = 4.0  # times the cost of a re-split: a step that lost so much more need not be seen twice
+_FADE = 0.95
 _LEVEL, _TREND, _CHANGE = 0.5, 0.3, 0.2  # how much the newest step counts
 
 
@@ -147,13 +149,15 @@ class StopAtRise:
 class Forecast:
     """Level and trend of a loss, smoothed twice (C. C. Holt, 1957, from memory); late steps cut.
 
-    A straight line is followed exactly from its second step on.
+    A straight line is followed exactly from its second step on. For the first step after a
+    re-split the trend is that from the first to the second step of re-splits before.
     """
 
     level: float = 0.0
     trend: float = 0.0
     change: float = 0.0
     count: int = 0
+    first_trend: float = 0.0
     _raw: tuple[float, float] = (0.0, 0.0)
 
     @property
@@ -161,18 +165,24 @@ class Forecast:
         """Return the loss expected of the next step."""
         return self.level + self.trend
 
-    def add(self, loss: float) -> float:
-        """Take a step in; return its loss, cut back if it is a late step by itself."""
+    def add(self, loss: float, *, grave: float) -> float:
+        """Take a step in; return its loss, cut back if it is a late step by itself.
+
+        A jump by more than `grave` is believed at once.
+        """
         cut = loss
         if self.count >= 2:
-            cut = min(loss, max(self._raw) + _SPIKE * self.change)
+            usual = max(self._raw) + _SPIKE * self.change
+            cut = loss if loss > max(self._raw) + grave else min(loss, usual)
             expected = self.next
             self.level = expected + _LEVEL * (cut - expected)
             self.trend += _LEVEL * _TREND * (cut - expected)
         elif self.count == 1:
+            share = _LEVEL if self.first_trend else 1.0
+            self.first_trend += share * (cut - self.level - self.first_trend)
             self.level, self.trend = cut, cut - self.level
         else:
-            self.level = cut
+            self.level, self.trend = cut, max(0.0, self.first_trend)
         if self.count:
             share = _CHANGE if self.change else 1.0
             self.change += share * (abs(cut - self._raw[1]) - self.change)
@@ -180,8 +190,9 @@ class Forecast:
         return cut
 
     def anew(self) -> Forecast:
-        """Begin after a re-split: only how much steps usually change is kept."""
-        return Forecast(change=self.change)
+        """Begin after a re-split; what is known of first trends fades while it is not seen."""
+        kept = self.first_trend * (_FADE if self.count < 2 else 1.0)
+        return Forecast(change=self.change, first_trend=kept)
 
 
 @dataclass
@@ -218,7 +229,7 @@ class Regret:
 
     def after_step(self, slowest: float, mean: float) -> bool:
         """Add the step to both sums and compare."""
-        loss = self._forecast.add(slowest - mean)
+        loss = self._forecast.add(slowest - mean, grave=_GRAVE * self.cost)
         self._sums.append(self._sums[-1] + loss)
         self._recent = (*self._recent[-2:], loss)
         self._fresh = min(self._fresh, sum(self._recent) / len(self._recent))

@@ -68,7 +68,7 @@ def read_frames(path: str | PathLike[str], *, mesh: Mesh | None = None) -> Itera
         for name in sorted(group):
             place = group[name]
             own = "faces_mesh" in place
-            mesh = faces_of(place, f"{path}: {name}") if own else mesh
+            mesh = faces_of(place, path) if own else mesh
             if mesh is None:
                 raise FileError(f"{path}: {name} has no faces_mesh; give the mesh beside the file")
             values = {key: _values(place, key, path) for key in ("weight", "parent", "speed")}
