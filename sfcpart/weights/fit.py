@@ -30,6 +30,7 @@ Speeds: TypeAlias = Literal["auto", "fit", "alike"]
 _SAME = 1e-9  # of the largest singular value: below, a direction counts as absent
 _SWEEPS = 60
 _SETTLED = 1e-12
+_NOTHING = 1e-10  # a cost that makes out less than this of every row is rounding
 _CHANCE = 1e-3  # speeds are fitted if less likely than this by chance
 _VAGUE = 0.95  # correlation above which two costs are said to go together
 
@@ -205,6 +206,7 @@ def _settle(rows: Rows, *, with_speeds: bool) -> _State:
         if np.abs(cost - before).max() <= _SETTLED * cost.max():
             break
     relative = rows.count / (speed[rows.rank] * predicted)[:, None]
+    cost = np.where(cost * relative.max(axis=0) > _NOTHING, cost, 0.0)
     design = _between(relative, rows) if with_speeds else relative
     return _State(cost, speed, design, rows.seconds / predicted - 1.0, with_speeds)
 
