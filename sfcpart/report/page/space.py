@@ -9,7 +9,7 @@ import numpy as np
 
 from sfcpart.dtypes import Array
 from sfcpart.report.page.content import ViewPlot
-from sfcpart.report.page.scene import Shape, pack_scene, thin_triangles
+from sfcpart.report.page.scene import MOST_TRIANGLES, Shape, pack_scene, thin_triangles
 from sfcpart.report.page.still import still_picture
 from sfcpart.report.painting import colours_of
 from sfcpart.report.views import split_views
@@ -38,7 +38,7 @@ def view_section(
 ) -> ViewPlot:
     """Return the parts to draw, what to colour them by, and the picture for print."""
     triangles = split_views(mesh, partition, graph)[-1].triangles
-    shape = thin_triangles(triangles, partition.cell_part)
+    shape = thin_triangles(triangles, partition.cell_part, most=MOST_TRIANGLES)
     colours = colours_of(partition, graph)
     flat = mesh.space_dim == 2
     values = {"load": np.asarray(assessment.part["load"], np.float64)}

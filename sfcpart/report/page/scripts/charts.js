@@ -52,9 +52,9 @@ function plotted(section, width, index) {
     figure.setAttribute("aria-describedby", `summary-${index}`);
   }
   // Numbers of axes are not labels of their own for those who listen.
-  for (const group of figure.querySelectorAll("g[aria-label]")) group.removeAttribute("aria-label");
-  for (const group of figure.querySelectorAll("g[aria-description]")) {
-    group.removeAttribute("aria-description");
+  for (const inner of figure.querySelectorAll("[aria-label], [aria-description]")) {
+    inner.removeAttribute("aria-label");
+    inner.removeAttribute("aria-description");
   }
   return figure;
 }

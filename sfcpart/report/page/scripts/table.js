@@ -37,7 +37,7 @@ class DataTable {
         ...(more ? [this.columnsButton] : []), copy, this.told,
       ),
       make(
-        "div", { class: "scroll", tabindex: "0", role: "region", "aria-label": section.title },
+        "div", { class: "scroll", tabindex: "0", role: "region", "aria-label": `${section.title}: rows` },
         make("table", {}, title, this.head, this.rows),
       ),
       make("p", {}, this.moreButton),
