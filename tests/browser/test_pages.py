@@ -152,7 +152,7 @@ def test_the_view_draws_parts_in_their_colours(reader, pages, kind, n_colours):
     image = drawn(reader, VIEW)
     solid = image[image[..., 3] == 255]
     assert len(solid) > 0.1 * image[..., 3].size
-    hues, count = np.unique(solid[:, :3] // 64, axis=0, return_counts=True)
+    _, count = np.unique(solid[:, :3] // 64, axis=0, return_counts=True)
     assert np.sum(count > 0.01 * len(solid)) >= n_colours
     assert not reader.find("section.view .still").is_displayed()
 

@@ -27,7 +27,7 @@ __all__ = ["MOST_TRIANGLES", "Shape", "pack_scene", "thin_triangles"]
 MOST_TRIANGLES = 120_000
 FINEST = 16  # bits of a coordinate
 FIRST = 0.6  # steps of the first lattice tried, times the root of the triangles allowed
-COARSEST = 8  # steps
+COARSEST = 2  # steps
 
 
 @dataclass(frozen=True, eq=False)

@@ -128,7 +128,8 @@ def test_a_page_replaces_a_file_and_an_error_names_it(tmp_path):
 
 
 def test_every_degenerate_mesh_has_a_page(degenerate):
-    mesh, parts = degenerate.mesh, sfcpart.Partition.from_array(degenerate.cell_part)
+    mesh = degenerate.mesh
+    parts = sfcpart.split(mesh, degenerate.n_parts)
     data = data_of(render_page(page_of(mesh, parts)))
     assert data["sections"][0]["kind"] == "view"
     assert sum(data["sections"][0]["scene"]["triangles"]) > 0
