@@ -10,7 +10,7 @@ Source: common practice, no source.
 
 from __future__ import annotations
 
-from sfcpart.halo.build import build_halo
+from sfcpart.halo.build import build_halo, build_halo_slice
 from sfcpart.halo.lists import Across, Halo
 
-__all__ = ["Across", "Halo", "build_halo"]
+__all__ = ["Across", "Halo", "build_halo", "build_halo_slice"]

@@ -2,25 +2,27 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, TypeAlias
+from typing import TYPE_CHECKING
 
 import numpy as np
 
 from sfcpart.comm import SerialComm
-from sfcpart.curve import mesh_slice
-from sfcpart.dtypes import OFFSET, PART, Array, Int32Array, Int64Array, IntArray, index_dtype
+from sfcpart.curve import CurveSlice, mesh_slice
+from sfcpart.dtypes import IntArray, index_dtype
 from sfcpart.errors import InputError, MeshError, PartitionError
+from sfcpart.halo.arrange import arranged
 from sfcpart.halo.lists import Across, Halo
-from sfcpart.kernels.threads import run_ranges
+from sfcpart.halo.reach import Lists, no_lists, over_faces, over_points
+from sfcpart.partition import Partition
+from sfcpart.slices.gate import agreed
+from sfcpart.slices.graph_slice import GraphSlice
+from sfcpart.slices.mesh_slice import MeshSlice
 
 if TYPE_CHECKING:
     from sfcpart.graph import CellGraph
     from sfcpart.mesh.mesh import Mesh
-    from sfcpart.partition import Partition
 
-__all__ = ["build_halo"]
-
-_Lists: TypeAlias = tuple[Int64Array, Int32Array]
+__all__ = ["build_halo", "build_halo_slice"]
 
 
 def build_halo(
@@ -81,14 +83,97 @@ def build_halo(
     ([2], [0])
     """
     _check_options(layers, across)
-    order = _checked_order(mesh, partition, order)
-    if layers == 0:
-        lists = _no_lists(partition.n_cells)
-    elif across == "faces":
-        lists = _across_faces(graph, partition, layers)
+    n_cells = partition.n_cells
+    if order is None and mesh is None:
+        raise InputError("neither mesh nor order is given; wanted one of them for the order")
+    line = None if order is None else _line_of(_checked_order(order, n_cells))
+    if line is None:
+        assert mesh is not None
+        line = mesh_slice(mesh, comm=SerialComm())
+    if layers and across == "faces":
+        lists = _across_faces(None if graph is None else GraphSlice.whole(graph), partition, layers)
+    elif layers:
+        lists = _across_points(None if mesh is None else MeshSlice.whole(mesh), partition, layers)
     else:
-        lists = _across_points(mesh, partition, layers)
-    return _arranged(order, partition, lists, layers=layers, across=across)
+        lists = no_lists(n_cells)
+    first = np.array([0, n_cells], np.int64)
+    return arranged(line, partition, lists, rank_first=first, layers=layers, across=across)
+
+
+def build_halo_slice(
+    held: MeshSlice,
+    graph: GraphSlice | None,
+    partition: Partition,
+    *,
+    layers: int = 1,
+    across: Across = "faces",
+) -> Halo:
+    """Build the exchange lists of the parts that this rank owns (collective).
+
+    Parameters
+    ----------
+    held : MeshSlice
+    graph : GraphSlice or None
+        Needed across faces.
+    partition : Partition
+        Part of each cell of this rank; the number of parts is that of all ranks.
+    layers, across
+        As for `build_halo`.
+
+    Returns
+    -------
+    Halo
+        Of parts `first_part` to `first_part + n_parts - 1`: parts are owned in blocks of
+        consecutive numbers (`sfcpart.slices.routing.block_bounds(n_parts, size)`). Rank after
+        rank these are the rows of `build_halo` of the whole mesh.
+
+    Raises
+    ------
+    InputError, MeshError, PartitionError
+        On all ranks alike, as `build_halo`.
+
+    Notes
+    -----
+    O(layers x entries of the slice + cells and halo of the parts owned); 24 bytes a part.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> from sfcpart.comm import run_ranks
+    >>> from sfcpart.mesh.mesh import Mesh
+    >>> from sfcpart.slices.graph_slice import graph_slice
+    >>> from sfcpart.slices.mesh_slice import cut_mesh
+    >>> row = Mesh.from_faces([[0, 1], [1, 2]], [1, 1], [[0, 0], [1, 0], [2, 0]], [1, 1, 1])
+    >>> def act(comm):
+    ...     held = cut_mesh(row, comm)
+    ...     half = Partition.from_array([[0], [0, 1]][comm.rank], 2)
+    ...     halo = build_halo_slice(held, graph_slice(held), half)
+    ...     return halo.first_part, halo.owned.tolist(), halo.halo.tolist()
+    >>> run_ranks(2, act)
+    [(0, [0, 1], [2]), (1, [2], [1])]
+    """
+    agreed(held.comm, lambda: _check_slice(held, graph, partition, layers, across))
+    line = mesh_slice(held.mesh, comm=held.comm)
+    if layers and across == "faces":
+        lists = _across_faces(graph, partition, layers)
+    elif layers:
+        lists = _across_points(held, partition, layers)
+    else:
+        lists = no_lists(held.n_local)
+    first = held.rank_first
+    return arranged(line, partition, lists, rank_first=first, layers=layers, across=across)
+
+
+def _check_slice(
+    held: MeshSlice, graph: GraphSlice | None, partition: Partition, layers: int, across: str
+) -> None:
+    """Refuse on each rank what does not fit."""
+    _check_options(layers, across)
+    if layers and across == "faces":
+        _check_faces(graph, partition)
+    elif layers:
+        _check_points(held, partition)
+    _check_count(partition, held.n_local, "mesh")
 
 
 def _check_options(layers: int, across: str) -> None:
@@ -99,14 +184,8 @@ def _check_options(layers: int, across: str) -> None:
         raise InputError(f'across is {across!r}; wanted "faces" or "points"')
 
 
-def _checked_order(mesh: Mesh | None, partition: Partition, order: IntArray | None) -> IntArray:
+def _checked_order(order: IntArray, n_cells: int) -> IntArray:
     """Return the curve order as a permutation of the cells in the narrowest dtype."""
-    n_cells = partition.n_cells
-    if order is None:
-        if mesh is None:
-            raise InputError("neither mesh nor order is given; wanted one of them for the order")
-        cells = np.arange(mesh.n_cells, dtype=index_dtype(mesh.n_cells))
-        order = mesh_slice(mesh, comm=SerialComm()).gather(cells)
     order = np.asarray(order)
     if order.shape != (n_cells,) or order.dtype.kind not in "iu":
         raise InputError(
@@ -125,143 +204,42 @@ def _all_met(order: IntArray) -> bool:
     return bool(met.all())
 
 
-def _across_faces(graph: CellGraph | None, partition: Partition, layers: int) -> _Lists:
+def _line_of(order: IntArray) -> CurveSlice:
+    """Return a curve that meets the cells in a given order."""
+    edge, received = np.array([0, len(order)]), np.array([len(order)])
+    return CurveSlice(SerialComm(), order, edge, received, None)
+
+
+def _across_faces(graph: GraphSlice | None, partition: Partition, layers: int) -> Lists:
     """Return per cell the foreign parts within `layers` faces."""
+    return over_faces(_check_faces(graph, partition), partition.cell_part, layers)
+
+
+def _check_faces(graph: GraphSlice | None, partition: Partition) -> GraphSlice:
+    """Refuse a missing graph, or that of other cells."""
     if graph is None:
         raise InputError("graph is missing; wanted the cell graph for a halo across faces")
-    if graph.n_cells != partition.n_cells:
-        raise PartitionError(
-            f"the partition has {partition.n_cells} cells and the graph {graph.n_cells}; "
-            "wanted one part a cell"
-        )
-    part = partition.cell_part
-    lists = _no_lists(partition.n_cells)
-    for _ in range(layers):
-        lists = _spread(graph.indptr, graph.indices, part, part, lists)
-    return lists
+    _check_count(partition, graph.n_local, "graph")
+    return graph
 
 
-def _across_points(mesh: Mesh | None, partition: Partition, layers: int) -> _Lists:
+def _across_points(held: MeshSlice | None, partition: Partition, layers: int) -> Lists:
     """Return per cell the foreign parts within `layers` steps over shared points."""
-    if mesh is None or mesh.points is None:
+    return over_points(_check_points(held, partition), partition.cell_part, layers)
+
+
+def _check_points(held: MeshSlice | None, partition: Partition) -> MeshSlice:
+    """Refuse a mesh without points, or one of other cells."""
+    if held is None or held.mesh.points is None:
         raise MeshError('the mesh has no points; use across="faces", or a mesh with points')
-    n_cells, n_points = len(mesh.kind), len(mesh.points)
+    _check_count(partition, held.n_local, "mesh")
+    return held
+
+
+def _check_count(partition: Partition, n_cells: int, what: str) -> None:
+    """Refuse a partition of other cells."""
     if n_cells != partition.n_cells:
         raise PartitionError(
-            f"the partition has {partition.n_cells} cells and the mesh {n_cells}; "
+            f"the partition has {partition.n_cells} cells and the {what} {n_cells}; "
             "wanted one part a cell"
         )
-    point_indptr, point_cell = _cells_of_points(mesh.indptr, mesh.indices, n_points)
-    part = partition.cell_part
-    no_part = np.full(n_points, -1, PART)
-    lists = _no_lists(n_cells)
-    for _ in range(layers):
-        at_point = _spread(point_indptr, point_cell, no_part, part, lists)
-        lists = _spread(mesh.indptr, mesh.indices, part, no_part, at_point)
-    return lists
-
-
-def _cells_of_points(
-    indptr: Int64Array, indices: IntArray, n_points: int
-) -> tuple[Int64Array, IntArray]:
-    """Turn "points of each cell" into "cells of each point"."""
-    from sfcpart.kernels.halo import rows_of_columns
-
-    point_indptr = np.zeros(n_points + 1, OFFSET)
-    point_cell = np.empty(len(indices), index_dtype(len(indptr) - 1))
-    rows_of_columns(indptr, indices, point_indptr, point_cell)
-    return point_indptr, point_cell
-
-
-def _no_lists(n_rows: int) -> _Lists:
-    """Return a list of no parts for each row."""
-    return np.zeros(n_rows + 1, OFFSET), np.empty(0, PART)
-
-
-def _spread(
-    indptr: Int64Array,
-    indices: IntArray,
-    row_part: Int32Array,
-    column_part: Int32Array,
-    lists: _Lists,
-) -> _Lists:
-    """Collect, per row, the parts at its columns and those that already reach them."""
-    from sfcpart.kernels.halo import reach
-
-    n_rows = len(indptr) - 1
-    to_indptr = np.zeros(n_rows + 1, OFFSET)
-    relation = (indptr, indices, row_part, column_part, *lists)
-    nothing = np.empty(0, PART)
-    capacity = 64
-    while max(run_ranges(reach, n_rows, *relation, to_indptr, nothing, capacity)) > capacity:
-        capacity *= 4
-    np.cumsum(to_indptr, out=to_indptr)
-    to_part = np.empty(int(to_indptr[-1]), PART)
-    if len(to_part):
-        run_ranges(reach, n_rows, *relation, to_indptr, to_part, capacity)
-    return to_indptr, to_part
-
-
-def _arranged(
-    order: IntArray, partition: Partition, lists: _Lists, *, layers: int, across: Across
-) -> Halo:
-    """Group the cells, sort the pairs of part and cell into the lists of both sides, freeze."""
-    from sfcpart.kernels.halo import arrange
-
-    n_parts, n_pairs = partition.n_parts, len(lists[1])
-    owned_indptr, halo_indptr, sent_indptr = np.zeros((3, n_parts + 1), OFFSET)
-    owned, owner = np.empty_like(order), np.empty(n_pairs, PART)
-    halo, send = np.empty(n_pairs, order.dtype), np.empty(n_pairs, order.dtype)
-    cells = (order, partition.cell_part, owned_indptr, owned)
-    arrange(*cells, *lists, halo_indptr, halo, owner, sent_indptr, send)
-    neighbour_indptr, neighbour, receive_indptr = _runs(halo_indptr, owner)
-    send_indptr = _send_rows(neighbour_indptr, neighbour, receive_indptr)
-    _freeze(owned_indptr, owned, halo_indptr, halo, neighbour_indptr, neighbour)
-    _freeze(receive_indptr, send_indptr, send)
-    return Halo(
-        n_parts=n_parts,
-        layers=int(layers),
-        across=across,
-        owned_indptr=owned_indptr,
-        owned=owned,
-        halo_indptr=halo_indptr,
-        halo=halo,
-        neighbour_indptr=neighbour_indptr,
-        neighbour=neighbour,
-        receive_indptr=receive_indptr,
-        send_indptr=send_indptr,
-        send=send,
-    )
-
-
-def _runs(halo_indptr: Int64Array, owner: Int32Array) -> tuple[Int64Array, Int32Array, Int64Array]:
-    """Find the runs of one owner within each part's halo: its neighbours and their rows."""
-    n_halo = len(owner)
-    starts = np.zeros(n_halo + 1, np.bool_)
-    starts[1:-1] = owner[1:] != owner[:-1]
-    starts[halo_indptr] = True
-    receive_indptr = np.flatnonzero(starts).astype(OFFSET)
-    neighbour_indptr = np.searchsorted(receive_indptr, halo_indptr).astype(OFFSET)
-    if n_halo == 0:
-        return neighbour_indptr, owner, np.zeros(1, OFFSET)
-    return neighbour_indptr, owner[receive_indptr[:-1]], receive_indptr
-
-
-def _send_rows(
-    neighbour_indptr: Int64Array, neighbour: Int32Array, receive_indptr: Int64Array
-) -> Int64Array:
-    """Return the rows each pair sends: the length of the mirrored pair's receive list.
-
-    Pairs are sorted by (part, neighbour), so the mirrored ones follow from a stable sort by
-    neighbour.
-    """
-    mirror = np.argsort(neighbour, kind="stable")
-    rows = np.zeros(len(neighbour) + 1, OFFSET)
-    np.cumsum(np.diff(receive_indptr)[mirror], out=rows[1:])
-    return rows
-
-
-def _freeze(*arrays: Array) -> None:
-    """Make arrays read-only."""
-    for array in arrays:
-        array.flags.writeable = False

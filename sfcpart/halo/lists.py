@@ -29,6 +29,9 @@ class Halo:
     Attributes
     ----------
     n_parts : int
+        Parts whose lists these are: all of the partition, or those that a rank owns, from
+        `first_part` on. CSR by part is by part less `first_part`; what names parts and cells does
+        so by their numbers in the whole mesh.
     layers : int
     across : "faces" or "points"
     owned_indptr : (n_parts + 1,) int64
@@ -45,6 +48,8 @@ class Halo:
     send_indptr : (n_pairs + 1,) int64
     send : (n_halo,) int32 or int64
         Local numbers of the owned cells that each pair sends.
+    first_part : int
+        The lowest of these parts.
     """
 
     n_parts: int
@@ -59,23 +64,24 @@ class Halo:
     receive_indptr: Int64Array
     send_indptr: Int64Array
     send: IntArray
+    first_part: int = 0
 
     @property
     def n_cells(self) -> int:
-        """Number of cells of the mesh."""
+        """Number of cells of these parts."""
         return len(self.owned)
 
     def owned_cells(self, part: int) -> IntArray:
         """Return the cells part `part` owns, in local order."""
-        return self.owned[self.owned_indptr[part] : self.owned_indptr[part + 1]]
+        return self.owned[self._row(self.owned_indptr, part)]
 
     def halo_cells(self, part: int) -> IntArray:
         """Return the foreign cells part `part` needs, in local order."""
-        return self.halo[self.halo_indptr[part] : self.halo_indptr[part + 1]]
+        return self.halo[self._row(self.halo_indptr, part)]
 
     def neighbours(self, part: int) -> Int32Array:
         """Return the parts that part `part` exchanges with, ascending."""
-        return self.neighbour[self.neighbour_indptr[part] : self.neighbour_indptr[part + 1]]
+        return self.neighbour[self._row(self.neighbour_indptr, part)]
 
     def send_list(self, part: int, to: int) -> IntArray:
         """Return the local numbers of the cells that `part` sends to `to`, in order."""
@@ -85,13 +91,18 @@ class Halo:
     def receive_list(self, part: int, source: int) -> Int64Array:
         """Return the local numbers of the cells that `part` receives from `source`, in order."""
         pair = self._pair(part, source)
-        offset = self.owned_indptr[part + 1] - self.owned_indptr[part] - self.halo_indptr[part]
+        offset = len(self.owned_cells(part)) - self.halo_indptr[part - self.first_part]
         first, last = self.receive_indptr[pair : pair + 2]
         return np.arange(first + offset, last + offset, dtype=np.int64)
 
+    def _row(self, indptr: Int64Array, part: int) -> slice:
+        """Return where the row of a part stands."""
+        row = part - self.first_part
+        return slice(int(indptr[row]), int(indptr[row + 1]))
+
     def _pair(self, part: int, other: int) -> int:
         """Return the pair of `part` with its neighbour `other`."""
-        first = int(self.neighbour_indptr[part])
+        first = int(self.neighbour_indptr[part - self.first_part])
         near = self.neighbours(part)
         at = int(np.searchsorted(near, other))
         if at == len(near) or near[at] != other:

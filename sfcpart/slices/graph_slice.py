@@ -32,6 +32,7 @@ from sfcpart.mesh.kinds import TETRA
 from sfcpart.slices.exchange import Lane, open_lane, pack
 from sfcpart.slices.lists import ExchangeLists
 from sfcpart.slices.mesh_slice import MeshSlice
+from sfcpart.slices.routing import take_ragged
 
 if TYPE_CHECKING:
     from sfcpart.graph import CellGraph
@@ -156,6 +157,29 @@ class GraphSlice:
         lane.link.start()
         lane.link.finish()
         return lane.received.copy()
+
+    def fetch_ragged(self, indptr: Int64Array, data: Array) -> tuple[Int64Array, Array]:
+        """Return rows of different lengths (CSR over owned cells) of the ghosts (collective).
+
+        Examples
+        --------
+        >>> from sfcpart.comm import run_ranks
+        >>> from sfcpart.mesh.mesh import Mesh
+        >>> from sfcpart.slices.mesh_slice import cut_mesh
+        >>> pair = Mesh.from_faces([[0, 1]], [1.0], [[0, 0], [1, 0]], [1, 1])
+        >>> def act(comm):
+        ...     graph = graph_slice(cut_mesh(pair, comm))
+        ...     return graph.fetch_ragged(np.array([0, 2]), np.array([comm.rank] * 2))[1].tolist()
+        >>> run_ranks(2, act)
+        [[1, 1], [0, 0]]
+        """
+        size = self.fetch(np.diff(indptr))
+        start, sent = take_ragged(indptr, data, self.lists.send)
+        rows = [sent[:0]] * self.comm.size
+        for rank, lo, hi in self.lists.targets():
+            rows[rank] = sent[start[lo] : start[hi]]
+        came = np.concatenate(self.comm.alltoall(rows))
+        return np.concatenate(([0], np.cumsum(size))).astype(OFFSET), came
 
     def extend(self, values: Array) -> Array:
         """Return the rows of owned cells and ghosts, (n_local + n_ghost, ...) (collective).

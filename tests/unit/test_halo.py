@@ -2,18 +2,20 @@
 
 from __future__ import annotations
 
-from types import SimpleNamespace
-
 import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
 from sfcpart.errors import InputError, MeshError, PartitionError
-from sfcpart.graph import CellGraph
-from sfcpart.halo import build_halo
+from sfcpart.graph import CellGraph, cell_graph
+from sfcpart.halo import build_halo, build_halo_slice
+from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
+from sfcpart.slices.graph_slice import graph_slice
+from sfcpart.slices.routing import block_bounds
 from tests.oracles.halo import exchange, halo_sets, near_over_faces, near_over_points
+from tests.sliced import all_bounds, bounds, on_slices
 from tests.strategies import grid, small_meshes
 
 
@@ -186,7 +188,7 @@ def test_missing_or_foreign_relations_are_named():
         build_halo(None, graph_of([], 3), halves, order=order)
     with pytest.raises(PartitionError, match="2 cells and the mesh 4"):
         build_halo(grid((2, 2)), None, halves, order=order, across="points")
-    bare = SimpleNamespace(points=None)
+    bare = Mesh.from_centers([[0.0, 0.0], [1.0, 0.0]])
     with pytest.raises(MeshError, match="no points"):
         build_halo(bare, None, halves, order=order, across="points")
 
@@ -196,3 +198,85 @@ def test_parts_that_do_not_meet_are_told():
     halo = build_halo(None, graph, Partition.from_array([0, 1, 2]), order=np.arange(3))
     with pytest.raises(InputError, match=r"parts 0 and 2 exchange nothing.*\[1\]"):
         halo.send_list(0, 2)
+
+
+ARRAYS = ("owned", "halo", "neighbour", "send")
+OFFSETS = ("owned_indptr", "halo_indptr", "neighbour_indptr", "receive_indptr", "send_indptr")
+
+
+def assert_same_over_slices(mesh, partition, first, **options):
+    """Assert that the lists of all ranks, one after the other, are those of the whole mesh."""
+    graph = cell_graph(mesh) if mesh.points is not None or mesh.faces is not None else None
+    whole = build_halo(mesh, graph, partition, **options)
+
+    def act(held):
+        mine = partition.cell_part[held.first_gid : held.first_gid + held.n_local]
+        rows = None if graph is None else graph_slice(held)
+        part = Partition.from_array(mine, partition.n_parts)
+        return build_halo_slice(held, rows, part, **options)
+
+    found = on_slices(mesh, first, act)
+    size = len(found)
+    assert [halo.first_part for halo in found] == block_bounds(whole.n_parts, size)[:-1].tolist()
+    assert sum(halo.n_parts for halo in found) == whole.n_parts
+    for name in ARRAYS:
+        joined = np.concatenate([getattr(halo, name) for halo in found])
+        assert joined.dtype == getattr(whole, name).dtype
+        assert joined.tolist() == getattr(whole, name).tolist(), name
+    for name in OFFSETS:
+        rows = np.concatenate([np.diff(getattr(halo, name)) for halo in found])
+        assert rows.tolist() == np.diff(getattr(whole, name)).tolist(), name
+    for halo in found:
+        for part in range(halo.first_part, halo.first_part + halo.n_parts):
+            assert halo.owned_cells(part).tolist() == whole.owned_cells(part).tolist()
+            assert halo.neighbours(part).tolist() == whole.neighbours(part).tolist()
+            for other in halo.neighbours(part).tolist():
+                assert halo.send_list(part, other).tolist() == whole.send_list(part, other).tolist()
+                assert np.array_equal(
+                    halo.receive_list(part, other), whole.receive_list(part, other)
+                )
+
+
+@st.composite
+def sliced_cases(draw):
+    mesh = draw(small_meshes())
+    n_parts = draw(st.integers(1, mesh.n_cells + 2))
+    part = draw(st.lists(st.integers(0, n_parts - 1), min_size=mesh.n_cells, max_size=mesh.n_cells))
+    options = {
+        "layers": draw(st.integers(0, 3)),
+        "across": draw(st.sampled_from(["faces", "points"])),
+    }
+    return mesh, Partition.from_array(part, n_parts), draw(bounds(mesh.n_cells)), options
+
+
+@given(sliced_cases())
+def test_slices_give_the_lists_of_the_whole(case):
+    *where, options = case
+    assert_same_over_slices(*where, **options)
+
+
+def test_slices_of_degenerate_meshes(degenerate):
+    mesh, n_parts = degenerate.mesh, degenerate.n_parts
+    partition = Partition.from_array(np.arange(mesh.n_cells) * n_parts // mesh.n_cells, n_parts)
+    for first in all_bounds(mesh.n_cells):
+        if mesh.points is not None:
+            assert_same_over_slices(mesh, partition, first, layers=2, across="points")
+        layers = int(mesh.points is not None or mesh.faces is not None)
+        assert_same_over_slices(mesh, partition, first, layers=layers)
+
+
+def test_an_error_of_one_rank_is_raised_on_all():
+    mesh = grid((4, 2))
+
+    def act(held, **options):
+        short = Partition.from_array([0] * (held.n_local - held.comm.rank), 2)
+        return build_halo_slice(held, graph_slice(held), short, **options)
+
+    for options, text in (
+        ({}, "3 cells and the graph 4"),
+        ({"across": "points"}, "3 cells and the mesh 4"),
+        ({"layers": 0}, "3 cells and the mesh 4"),
+        ({"layers": -1}, "whole number"),
+    ):
+        with pytest.raises((PartitionError, InputError), match=text):
+            on_slices(mesh, [0, 4, 8], lambda held, options=options: act(held, **options))
