@@ -8,24 +8,28 @@ while a file is open (it is cut short, a chunk is corrupt, the disk is full) lea
 from __future__ import annotations
 
 import errno
+import math
 import os
 from contextlib import contextmanager
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Literal
 
 from sfcpart.errors import FileError, SfcpartError
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Iterator
+    from collections.abc import Callable, Iterable, Iterator
     from os import PathLike
 
 __all__ = [
     "check_stored",
     "copy_hdf5",
     "create_hdf5",
+    "extend_hdf5",
     "is_hdf5",
+    "pack_hdf5",
     "read_hdf5",
     "read_text",
+    "reserve_rows",
     "write_text",
 ]
 
@@ -80,25 +84,109 @@ def create_hdf5(path: str | PathLike[str], *, track_order: bool = False) -> Iter
     FileError
         If the file cannot be created, or writing fails (disk full, quota).
     """
-    place = Path(path)
+    with _written(Path(path), "w", track_order=track_order) as file:
+        yield file
+
+
+@contextmanager
+def extend_hdf5(path: str | PathLike[str]) -> Iterator[Any]:
+    """Open an HDF5 file that `create_hdf5` made, to add to it; yields the `h5py.File`.
+
+    Raises
+    ------
+    FileError
+        As `create_hdf5`.
+    """
+    with _written(Path(path), "r+") as file:
+        yield file
+
+
+@contextmanager
+def _written(place: Path, mode: str, **options: Any) -> Iterator[Any]:
+    """Open a file to write to, and raise what went wrong once it is closed."""
     import h5py
 
     try:
-        sink = _PatientSink(place)
+        sink = _PatientSink(place, "w+b" if mode == "w" else "r+b")
     except OSError as error:
         raise FileError(f"{place}: cannot be created: {_reason(error)}") from error
     try:
-        with (
-            _mapped(place, "writing", _WRITE_FAILURES),
-            h5py.File(sink, "w", track_order=track_order) as file,
-        ):
+        with _mapped(place, "writing", _WRITE_FAILURES), h5py.File(sink, mode, **options) as file:
             yield file
     finally:
         sink.close()
         if sink.failure is not None:
-            raise FileError(
-                f"{place}: writing HDF5 failed: {_reason(sink.failure)}"
-            ) from sink.failure
+            raise _not_written(place, sink.failure) from sink.failure
+
+
+def reserve_rows(group: Any, name: str, shape: tuple[int, ...], dtype: Any) -> tuple[Any, int]:
+    """Create a dataset whose rows lie one behind the other in the file, and are written later.
+
+    Parameters
+    ----------
+    group : h5py.Group
+    name : str
+    shape : tuple of int
+    dtype : dtype
+
+    Returns
+    -------
+    dataset : h5py.Dataset
+    offset : int
+        Where its first byte lies in the file; -1 without rows.
+    """
+    import h5py
+
+    plist = h5py.h5p.create(h5py.h5p.DATASET_CREATE)
+    plist.set_alloc_time(h5py.h5d.ALLOC_TIME_EARLY)
+    plist.set_fill_time(h5py.h5d.FILL_TIME_NEVER)
+    dataset = group.create_dataset(name, shape=shape, dtype=dtype, dcpl=plist)
+    offset = dataset.id.get_offset()
+    return dataset, -1 if offset is None else int(offset)
+
+
+def pack_hdf5(path: str | PathLike[str], names: Iterable[str], *, chunk_bytes: int) -> None:
+    """Write a file again with some datasets packed by gzip and shuffle; in stretches of rows.
+
+    Parameters
+    ----------
+    path : path
+        Replaced in the end.
+    names : iterable of str
+        Datasets to pack, each with at least one row.
+    chunk_bytes : int
+        About the size of a chunk.
+
+    Raises
+    ------
+    FileError
+        As `read_hdf5` and `create_hdf5`.
+    """
+    beside = Path(path).with_name(f"{Path(path).name}.packed")
+    chosen = frozenset(names)
+    with read_hdf5(path) as old, create_hdf5(beside) as new:
+        old.visititems(lambda name, item: _copy_item(name, item, new, chosen, chunk_bytes))
+    beside.replace(path)
+
+
+def _copy_item(name: str, item: Any, new: Any, chosen: frozenset[str], chunk_bytes: int) -> None:
+    """Copy one group or dataset with its attributes, packed if it is chosen."""
+    if not hasattr(item, "shape"):
+        made = new.create_group(name)
+    else:
+        options: dict[str, Any] = {}
+        row_bytes = max(1, item.dtype.itemsize * math.prod(item.shape[1:]))
+        n_rows = item.shape[0] if item.shape else 1
+        rows = max(1, min(n_rows, chunk_bytes // row_bytes))
+        if name in chosen:
+            options = {"chunks": (rows, *item.shape[1:]), "compression": "gzip"}
+            options |= {"compression_opts": 1, "shuffle": True}
+        made = new.create_dataset(name, shape=item.shape, dtype=item.dtype, **options)
+        for at in range(0, n_rows, rows):
+            made[at : at + rows] = item[at : at + rows]
+    for key in item.attrs:
+        kind = item.attrs.get_id(key)
+        made.attrs.create(key, item.attrs[key], shape=kind.shape, dtype=kind.dtype)
 
 
 @contextmanager
@@ -194,9 +282,9 @@ class _PatientSink:
     slower: large slices come in one call (40 MB: 0.02 s).
     """
 
-    def __init__(self, place: Path) -> None:
-        self._file = place.open("w+b", buffering=0)
-        self._end = 0
+    def __init__(self, place: Path, mode: Literal["w+b", "r+b"]) -> None:
+        self._file = place.open(mode, buffering=0)
+        self._end = self._file.seek(0, os.SEEK_END)
         self.failure: OSError | None = None
 
     def seek(self, offset: int, whence: int = os.SEEK_SET) -> int:
@@ -249,6 +337,11 @@ class _PatientSink:
                 act()
             except OSError as error:
                 self.failure = error
+
+
+def _not_written(place: Path, error: OSError) -> FileError:
+    """Say in one line why rows could not be written."""
+    return FileError(f"{place}: writing HDF5 failed: {_reason(error)}")
 
 
 def _check_readable(place: Path) -> None:

@@ -68,6 +68,8 @@ class MeshSlice:
         Global number of each local point, ascending; None: all, local and global are the same.
     groups : tuple of GroupRows, or None
         One for each of `mesh.boundary`; None for a whole mesh, which has them as they are.
+    face_gid : (n_faces of mesh.polyhedra,) int64 or None
+        Number of each face of the polyhedra in the whole mesh, ascending; None: all.
 
     Examples
     --------
@@ -83,6 +85,7 @@ class MeshSlice:
     n_points: int
     point_gid: Int64Array | None = None
     groups: tuple[GroupRows, ...] | None = None
+    face_gid: Int64Array | None = None
 
     @classmethod
     def whole(cls, mesh: Mesh) -> MeshSlice:
@@ -292,6 +295,7 @@ def _pack_points(mesh: Mesh, lo: int, hi: int, packed: dict[str, Array]) -> None
     if faces is not None:
         rows, packed["poly_cell_indptr"] = _rows_of(faces.cell_indptr, faces.cell_indices, lo, hi)
         used, packed["poly_cell_indices"] = compact(rows)
+        packed["poly_face_gid"] = used
         size = np.diff(faces.face_indptr)[used]
         packed["poly_face_indptr"] = np.concatenate(([0], np.cumsum(size))).astype(OFFSET)
         within = np.arange(int(size.sum())) - np.repeat(packed["poly_face_indptr"][:-1], size)
@@ -322,8 +326,8 @@ def assemble_slice(
     ----------
     packed : dict of str to array
         "kind", "indptr", "indices", "points", "point_gid", "given_center", "given_measure",
-        "face_cell" and "face_measure", "poly_face_indptr" and the other three of `Polyhedra`,
-        "cell:NAME" and "point:NAME" for fields, and for the k-th boundary group
+        "face_cell" and "face_measure", "poly_face_gid", "poly_face_indptr" and the other three of
+        `Polyhedra`, "cell:NAME" and "point:NAME" for fields, and for the k-th boundary group
         "group:k:kind", ":indptr", ":indices", ":element_gid" and ":cell_gid"; what does not occur
         is left out, on all ranks alike.
     about : dict
@@ -357,7 +361,8 @@ def assemble_slice(
     mesh.keep("dim", lambda: about["dim"])
     mesh.keep("space_dim", lambda: about["space_dim"])
     rows = tuple(rows for _, rows in groups)
-    return MeshSlice(mesh, comm, first, about["n_points"], point_gid, rows)
+    face_gid = held.get("poly_face_gid")
+    return MeshSlice(mesh, comm, first, about["n_points"], point_gid, rows, face_gid)
 
 
 def _fields(held: Mapping[str, Array], prefix: str) -> Mapping[str, Array]:

@@ -172,6 +172,7 @@ def _packed_cells(
     solid = comm.allreduce(has_solids, "max")[0] and cells.faces is not None
     if solid and face_rows is not None and cells.faces is not None:
         used, packed["poly_cell_indices"] = compact(cells.faces)
+        packed["poly_face_gid"] = used
         assert cells.face_indptr is not None
         packed["poly_cell_indptr"] = cells.face_indptr
         indptr, data, bounds = face_rows

@@ -3,36 +3,42 @@
 What: an element (a wall face, an inlet edge) goes to every part that owns a cell holding all of
 its points. Faces have at most two such cells; for smaller elements (a line in 3-D) the two
 lowest cells count. Elements no cell holds go nowhere.
+How: ranks that hold the cells know their elements (`sfcpart.slices.elements`) and send them to the
+ranks that write the parts.
 Cost: O(entries of the cells) once, then O(elements).
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from sfcpart.dtypes import OFFSET, Array, Int64Array, IntArray, index_dtype
-from sfcpart.kernels.threads import run_ranges
+from sfcpart.dtypes import GID, OFFSET, Array, Int64Array, IntArray
+from sfcpart.mesh.mesh import BoundaryGroup
+from sfcpart.slices.elements import cells_of_elements
+from sfcpart.slices.mesh_slice import MeshSlice
+from sfcpart.slices.routing import ask_rows, block_bounds, dealing, owner_of, take_ragged
 
 if TYPE_CHECKING:
+    from sfcpart.files.parts.supply import Supply
     from sfcpart.halo import Halo
-    from sfcpart.mesh.mesh import BoundaryGroup, Mesh
 
 __all__ = ["GroupByPart", "groups_by_part"]
 
 
 @dataclass(frozen=True, eq=False)
 class GroupByPart:
-    """The elements of one boundary group, part after part.
+    """The elements of one boundary group at the parts of a rank, part after part.
 
     Attributes
     ----------
     name : str
     tag : int
-    part_indptr : (n_parts + 1,) int64
+    part_indptr : (k + 1,) int64
         Rows of each part.
     element : (n_rows,) int64
         Number of the element in the unsplit group.
@@ -42,6 +48,8 @@ class GroupByPart:
     indptr : (n_rows + 1,) int64
     points : (sum,) int32 or int64
         Local points of each element.
+    n_points : int
+        Points of the unsplit mesh.
     """
 
     name: str
@@ -52,107 +60,120 @@ class GroupByPart:
     kind: Array
     indptr: Int64Array
     points: IntArray
+    n_points: int
 
 
-def groups_by_part(mesh: Mesh, halo: Halo, point_gid: list[IntArray]) -> Iterator[GroupByPart]:
-    """Yield each boundary group of a mesh, its elements sorted by part.
+def groups_by_part(
+    held: MeshSlice, supply: Supply, halo: Halo, point_gid: Sequence[Int64Array]
+) -> Iterator[GroupByPart]:
+    """Yield each boundary group of a mesh, its elements sorted by part (collective).
 
     Parameters
     ----------
-    mesh : Mesh
+    held : MeshSlice
         With points (a mesh without has no boundary groups).
+    supply : Supply
+        Of it.
     halo : Halo
-    point_gid : list of (n_points of the part,) integers
-        Global numbers of the local points of each part.
+        Of this rank's parts.
+    point_gid : sequence of (n_points of the part,) integers
+        Global numbers of the local points of each of them.
     """
-    if not mesh.boundary or mesh.points is None:
+    if not held.mesh.boundary or held.mesh.points is None:
         return
-    local_cell, owner = _local_cells(halo)
-    relation = _cells_at_points(mesh)
-    for group in mesh.boundary:
-        cells = _cells_of(group, relation, mesh)
-        element, cell = _one_row_a_part(cells, owner)
-        order = np.argsort(owner[cell], kind="stable")
-        element, cell = element[order], cell[order]
-        counts = np.bincount(owner[cell], minlength=halo.n_parts)
-        part_indptr = np.concatenate([[0], np.cumsum(counts)]).astype(OFFSET)
-        indptr, points = _rows(group, element)
-        yield GroupByPart(
-            name=group.name,
-            tag=group.tag,
-            part_indptr=part_indptr,
-            element=element,
-            cell=local_cell[cell],
-            kind=group.kind[element],
-            indptr=indptr,
-            points=_localised(points, indptr[part_indptr], point_gid, mesh.n_points),
-        )
+    first_part = int(block_bounds(halo.n_parts, held.comm.size)[held.comm.rank])
+    local = _Numbers.of(halo, point_gid, first_part)
+    for group, element_gid, cells in _elements_held(held):
+        rows = _sent_to_parts(held, supply, group, element_gid, cells, halo.n_parts)
+        yield local.of_group(group, rows, held.n_points)
 
 
-def _local_cells(halo: Halo) -> tuple[IntArray, IntArray]:
-    """Return the local number and the owner of every cell."""
-    sizes = np.diff(halo.owned_indptr)
-    number = np.empty(halo.n_cells, halo.owned.dtype)
-    number[halo.owned] = np.arange(halo.n_cells) - np.repeat(halo.owned_indptr[:-1], sizes)
-    owner = np.empty(halo.n_cells, np.int32)
-    owner[halo.owned] = np.repeat(np.arange(halo.n_parts), sizes)
-    return number, owner
+def _elements_held(held: MeshSlice) -> list[tuple[BoundaryGroup, Int64Array, Int64Array]]:
+    """Return each group with the numbers of its elements here, and their cells."""
+    boundary = held.mesh.boundary
+    if held.groups is not None:
+        pairs = zip(boundary, held.groups, strict=True)
+        return [(group, rows.element_gid, rows.cell_gid) for group, rows in pairs]
+    found = zip(boundary, cells_of_elements(held.mesh), strict=True)
+    return [(group, np.arange(len(group.kind), dtype=GID), cells) for group, cells in found]
 
 
-def _cells_at_points(mesh: Mesh) -> tuple[Int64Array, Int64Array]:
-    """Return the cells at each point that a boundary element uses, ascending (CSR)."""
-    used = np.zeros(mesh.n_points, np.bool_)
-    for group in mesh.boundary:
-        used[group.indices] = True
-    entry = np.flatnonzero(used[mesh.indices])
-    cell = np.searchsorted(mesh.indptr, entry, side="right") - 1
-    point = mesh.indices[entry]
-    counts = np.bincount(point, minlength=mesh.n_points)
-    indptr = np.concatenate([[0], np.cumsum(counts)]).astype(OFFSET)
-    return indptr, cell[np.argsort(point, kind="stable")].astype(np.int64)
+@dataclass(frozen=True, eq=False)
+class _Rows:
+    """Elements at cells of parts, by part and number; points and cells by global number."""
+
+    part: Int64Array
+    element: Int64Array
+    cell: Int64Array
+    kind: Array
+    indptr: Int64Array
+    points: Int64Array
 
 
-def _cells_of(
-    group: BoundaryGroup, relation: tuple[Int64Array, Int64Array], mesh: Mesh
-) -> Int64Array:
-    """Return up to two cells that hold each element, (n, 2), -1 where there is none."""
-    from sfcpart.kernels.mesh.elements import cells_with_points
-
-    found = np.full((len(group.kind), 2), -1, np.int64)
-    rows = (group.indptr, group.indices, *relation, mesh.indptr, mesh.indices)
-    run_ranges(cells_with_points, len(found), *rows, found)
-    return found
-
-
-def _one_row_a_part(cells: Int64Array, owner: IntArray) -> tuple[Int64Array, Int64Array]:
-    """Return element and cell for every part that owns one of an element's cells."""
+def _sent_to_parts(
+    held: MeshSlice,
+    supply: Supply,
+    group: BoundaryGroup,
+    element_gid: Int64Array,
+    cells: Int64Array,
+    n_parts: int,
+) -> _Rows:
+    """Send every element to the writers of the parts that own one of its cells."""
     first, second = cells.T
-    other = (second >= 0) & (owner[second] != owner[first])
-    has = np.flatnonzero(first >= 0)
-    also = np.flatnonzero(other)
-    element = np.concatenate([has, also])
-    cell = np.concatenate([first[has], second[also]])
-    order = np.argsort(element, kind="stable")
-    return element[order], cell[order]
+    known = np.where(cells >= 0, cells, 0)
+    parts = ask_rows(held.comm, supply.part, first=held.rank_first, gid=known.reshape(-1))
+    part = parts.reshape(cells.shape).astype(GID)
+    lo, hi = held.first_gid, held.first_gid + held.n_local
+    mine = np.flatnonzero((first >= lo) & (first < hi))
+    also = np.flatnonzero((second >= lo) & (second < hi) & (part[:, 0] != part[:, 1]))
+    row = np.concatenate([mine, also])
+    part_of = np.concatenate([part[mine, 0], part[also, 1]])
+    cell = np.concatenate([first[mine], second[also]])
+    way = dealing(held.comm, owner_of(part_of, block_bounds(n_parts, held.comm.size)))
+    points = np.asarray(held.global_points(group.indices), GID)
+    indptr, points = way.forward_ragged(*take_ragged(group.indptr, points, row))
+    came = [way.forward(rows) for rows in (part_of, element_gid[row], cell, group.kind[row])]
+    order = np.lexsort((came[1], came[0]))
+    indptr, points = take_ragged(indptr, points, order)
+    part_of, element, cell, kind = (rows[order] for rows in came)
+    return _Rows(part_of, element, cell, kind, indptr, points)
 
 
-def _rows(group: BoundaryGroup, element: Int64Array) -> tuple[Int64Array, IntArray]:
-    """Return the points of some elements of a group as CSR."""
-    sizes = np.diff(group.indptr)[element]
-    indptr = np.concatenate([[0], np.cumsum(sizes)]).astype(OFFSET)
-    within = np.arange(indptr[-1]) - np.repeat(indptr[:-1], sizes)
-    return indptr, group.indices[np.repeat(group.indptr[element], sizes) + within]
+@dataclass(frozen=True, eq=False)
+class _Numbers:
+    """Local numbers of the cells and points of each part of a rank."""
+
+    first_part: int
+    owned: list[tuple[Int64Array, Int64Array]]
+    points: list[tuple[Int64Array, Int64Array]]
+
+    @classmethod
+    def of(cls, halo: Halo, point_gid: Sequence[Int64Array], first_part: int) -> _Numbers:
+        """Sort the numbers of each part, to be looked up."""
+        owned = [halo.owned[a:b] for a, b in pairwise(halo.owned_indptr)]
+        return cls(first_part, list(map(_sorted, owned)), list(map(_sorted, point_gid)))
+
+    def of_group(self, group: BoundaryGroup, rows: _Rows, n_points: int) -> GroupByPart:
+        """Replace global numbers by the local ones of each part."""
+        n_parts = len(self.points)
+        parts = self.first_part + np.arange(n_parts + 1)
+        part_indptr = np.searchsorted(rows.part, parts).astype(OFFSET)
+        cell, points = np.empty(len(rows.cell), GID), np.empty(len(rows.points), GID)
+        for k in range(n_parts):
+            some = slice(part_indptr[k], part_indptr[k + 1])
+            entries = slice(rows.indptr[some.start], rows.indptr[some.stop])
+            cell[some] = _looked_up(rows.cell[some], *self.owned[k])
+            points[entries] = _looked_up(rows.points[entries], *self.points[k])
+        about, tables = (group.name, group.tag, part_indptr), (rows.kind, rows.indptr)
+        return GroupByPart(*about, rows.element, cell, *tables, points, n_points)
 
 
-def _localised(
-    points: IntArray, part_rows: Int64Array, point_gid: list[IntArray], n_points: int
-) -> IntArray:
-    """Replace global points by the local ones of each part."""
-    local = np.empty(n_points, index_dtype(n_points))
-    found = np.empty(len(points), local.dtype)
-    for part, gid in enumerate(point_gid):
-        rows = slice(part_rows[part], part_rows[part + 1])
-        if rows.start < rows.stop:
-            local[gid] = np.arange(len(gid))
-            found[rows] = local[points[rows]]
-    return found
+def _sorted(gid: IntArray) -> tuple[Int64Array, Int64Array]:
+    """Return numbers in ascending order, and where each of them was."""
+    order = np.argsort(gid, kind="stable")
+    return gid[order], order
+
+
+def _looked_up(wanted: Int64Array, gid: Int64Array, place: Int64Array) -> Int64Array:
+    """Return the places of some numbers."""
+    return place[np.searchsorted(gid, wanted)]

@@ -6,9 +6,9 @@ from collections.abc import Mapping
 
 import numpy as np
 
-from sfcpart.dtypes import Array, IntArray
+from sfcpart.dtypes import Array
 
-__all__ = ["file_dtype", "gathered", "writable_fields"]
+__all__ = ["as_written", "file_dtype", "writable_fields"]
 
 _INPUT_IDS = {"GlobalCellIds": "InputCellIds", "GlobalPointIds": "InputPointIds"}
 
@@ -40,11 +40,10 @@ def _input_ids(fields: Mapping[str, Array]) -> dict[str, Array]:
     return {kept: fields[name] for name, kept in _INPUT_IDS.items() if name in fields}
 
 
-def gathered(field: Array, rows: IntArray) -> Array:
+def as_written(values: Array) -> Array:
     """Return rows of a field as a table of numbers that the file formats know."""
-    values = field[rows]
     if values.ndim > 2:
-        values = values.reshape(len(values), -1)
+        values = values.reshape(len(values), int(np.prod(values.shape[1:])))
     return np.ascontiguousarray(values, file_dtype(values.dtype))
 
 

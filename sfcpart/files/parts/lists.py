@@ -24,43 +24,37 @@ Datasets (P parts, K pairs of a part and a neighbour):
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from itertools import pairwise
+from pathlib import Path
+from typing import TYPE_CHECKING, Any, NamedTuple
 
 import numpy as np
 
-from sfcpart.dtypes import Array, Int32Array, Int64Array, IntArray
+from sfcpart.dtypes import KIND, OFFSET, Array, Int32Array, Int64Array, IntArray, index_dtype
 from sfcpart.errors import FileError
-from sfcpart.files.hdf5 import create_hdf5, read_text, write_text
+from sfcpart.files.hdf5 import read_text, write_text
+from sfcpart.files.parts.turns import SharedHdf5, Table
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable, Iterator
+    from collections.abc import Iterator, Sequence
     from os import PathLike
 
+    from sfcpart.comm.base import Comm
     from sfcpart.files.parts.boundary import GroupByPart
     from sfcpart.halo import Halo
 
 __all__ = [
     "FORMAT_VERSION",
     "GROUP",
+    "ListWriter",
     "PartBoundary",
     "PartLists",
     "read_lists",
-    "write_groups",
     "write_list_file",
-    "write_lists",
 ]
 
 GROUP = "sfcpart"
 FORMAT_VERSION = 1
-_ARRAYS = (
-    "owned_indptr",
-    "halo_indptr",
-    "neighbour_indptr",
-    "neighbour",
-    "receive_indptr",
-    "send_indptr",
-    "send",
-)
 
 
 @dataclass(frozen=True, eq=False)
@@ -109,50 +103,146 @@ class PartLists:
     boundary: tuple[PartBoundary, ...]
 
 
-def write_lists(file: Any, halo: Halo, *, input_digest: str = "") -> None:
-    """Write the group `/sfcpart` into an open HDF5 file.
+class ListWriter:
+    """Writes the group `/sfcpart`: laid out by rank 0, filled by the ranks that own parts.
 
     Parameters
     ----------
-    file : h5py.File
+    shared : SharedHdf5
     halo : Halo
-    input_digest : str, optional
-        Text that identifies the mesh that was split.
+        Of this rank's parts.
+    groups : sequence of GroupByPart
+        Likewise.
+    with_cells : bool
+        Whether the cells of the parts are listed as well.
     """
-    group = file.create_group(GROUP)
-    group.attrs["format_version"] = FORMAT_VERSION
-    group.attrs["n_parts"] = halo.n_parts
-    group.attrs["n_cells"] = halo.n_cells
-    group.attrs["layers"] = halo.layers
-    write_text(group, "across", halo.across)
-    write_text(group, "input_digest", input_digest)
-    for name in _ARRAYS:
-        group.create_dataset(name, data=getattr(halo, name))
+
+    def __init__(
+        self,
+        shared: SharedHdf5,
+        halo: Halo,
+        groups: Sequence[GroupByPart],
+        *,
+        with_cells: bool = False,
+    ) -> None:
+        self.shared, self.halo, self.groups = shared, halo, groups
+        self.arrays: dict[str, _Stretch] = {}
+        comm, n_cells = shared.comm, self._n_cells()
+        self._indptr("owned_indptr", halo.owned_indptr)
+        self._indptr("halo_indptr", halo.halo_indptr)
+        self._indptr("neighbour_indptr", halo.neighbour_indptr)
+        self._rows("neighbour", halo.neighbour, np.int32)
+        self._indptr("receive_indptr", halo.receive_indptr)
+        self._indptr("send_indptr", halo.send_indptr)
+        self._rows("send", halo.send, index_dtype(n_cells))
+        for number, rows in enumerate(groups):
+            self._group(f"boundary/{number}", rows, n_cells)
+        if with_cells:
+            self._rows("cell_gid", _cells_by_part(halo), index_dtype(n_cells))
+        self.n_cells = n_cells
+        starts = [len(stretch.rows) for stretch in self.arrays.values()]
+        counts = np.array(comm.allgather(np.array(starts, np.int64)))
+        self.first = dict(zip(self.arrays, counts[: comm.rank].sum(axis=0).tolist(), strict=True))
+        self.total = dict(zip(self.arrays, counts.sum(axis=0).tolist(), strict=True))
+
+    def _n_cells(self) -> int:
+        """Return the number of all cells."""
+        owned = np.array([len(self.halo.owned)], np.int64)
+        return int(self.shared.comm.allreduce(owned)[0])
+
+    def _rows(self, name: str, rows: Array, dtype: Any) -> None:
+        """Plan rows that follow those of the rank before."""
+        self.arrays[name] = _Stretch(rows, np.dtype(dtype))
+
+    def _indptr(self, name: str, indptr: Int64Array) -> None:
+        """Plan offsets, which go on from those of the rank before; rank 0 writes the first."""
+        before = self.shared.comm.exscan(indptr[-1:])
+        own = indptr + before if self.shared.comm.rank == 0 else indptr[1:] + before
+        self._rows(name, own, OFFSET)
+
+    def _group(self, place: str, rows: GroupByPart, n_cells: int) -> None:
+        """Plan one boundary group."""
+        self._indptr(f"{place}/part_indptr", rows.part_indptr)
+        self._rows(f"{place}/element", rows.element, OFFSET)
+        self._rows(f"{place}/cell", rows.cell, index_dtype(n_cells))
+        self._rows(f"{place}/kind", rows.kind, KIND)
+        self._indptr(f"{place}/indptr", rows.indptr)
+        self._rows(f"{place}/points", rows.points, index_dtype(rows.n_points))
+
+    def tables(self) -> list[Table]:
+        """Return the datasets to be laid out."""
+        return [
+            Table(f"{GROUP}/{name}", self.total[name], stretch.dtype)
+            for name, stretch in self.arrays.items()
+        ]
+
+    def begin(self, file: Any, input_digest: str) -> None:
+        """Write what is no dataset."""
+        group = file.create_group(GROUP)
+        group.attrs["format_version"] = FORMAT_VERSION
+        group.attrs["n_parts"] = self.halo.n_parts
+        group.attrs["n_cells"] = self.n_cells
+        group.attrs["layers"] = self.halo.layers
+        write_text(group, "across", self.halo.across)
+        write_text(group, "input_digest", input_digest)
+        for number, rows in enumerate(self.groups):
+            place = group.create_group(f"boundary/{number}")
+            write_text(place, "name", rows.name)
+            place.attrs["tag"] = rows.tag
+
+    def fill(self) -> None:
+        """Append this rank's rows."""
+        for name, stretch in self.arrays.items():
+            self.shared.column(f"{GROUP}/{name}", self.first[name]).append(stretch.rows)
+
+
+class _Stretch(NamedTuple):
+    """A rank's rows of a dataset."""
+
+    rows: Array
+    dtype: np.dtype[Any]
+
+
+def _cells_by_part(halo: Halo) -> Array:
+    """Return for each part of this rank its owned cells and then its halo cells."""
+    lists = [
+        rows
+        for owned, far in zip(pairwise(halo.owned_indptr), pairwise(halo.halo_indptr), strict=True)
+        for rows in (halo.owned[owned[0] : owned[1]], halo.halo[far[0] : far[1]])
+    ]
+    return np.concatenate([halo.owned[:0], *lists])
 
 
 def write_list_file(
     path: str | PathLike[str],
     halo: Halo,
     *,
-    groups: Iterable[GroupByPart] = (),
+    comm: Comm,
+    groups: Sequence[GroupByPart] = (),
     input_digest: str = "",
 ) -> None:
     """Write the exchange lists, with the cells they speak of, into a file of their own.
+
+    Parameters
+    ----------
+    path : path
+    halo : Halo
+        Of this rank's parts.
+    comm : Comm
+    groups : sequence of GroupByPart, optional
+    input_digest : str, optional
+        Text that identifies the mesh that was split.
 
     Raises
     ------
     FileError
         If the file cannot be written.
     """
-    with create_hdf5(path) as file:
-        write_lists(file, halo, input_digest=input_digest)
-        write_groups(file, groups)
-        cells = [
-            rows
-            for part in range(halo.n_parts)
-            for rows in (halo.owned_cells(part), halo.halo_cells(part))
-        ]
-        file[GROUP].create_dataset("cell_gid", data=np.concatenate(cells))
+    shared = SharedHdf5(Path(path), comm)
+    lists = ListWriter(shared, halo, groups, with_cells=True)
+    shared.lay_out(lists.tables(), lambda file: lists.begin(file, input_digest))
+    lists.fill()
+    shared.flush()
 
 
 def read_lists(file: Any, part: int) -> PartLists:
@@ -207,16 +297,6 @@ def _group_of_lists(file: Any) -> Any:
             f"{FORMAT_VERSION}; use a newer sfcpart"
         )
     return file[GROUP]
-
-
-def write_groups(file: Any, groups: Iterable[GroupByPart]) -> None:
-    """Write boundary groups into the group `/sfcpart` of an open HDF5 file."""
-    for number, rows in enumerate(groups):
-        group = file[GROUP].create_group(f"boundary/{number}")
-        write_text(group, "name", rows.name)
-        group.attrs["tag"] = rows.tag
-        for name in ("part_indptr", "element", "cell", "kind", "indptr", "points"):
-            group.create_dataset(name, data=getattr(rows, name))
 
 
 def _read_groups(group: Any, part: int) -> Iterator[PartBoundary]:

@@ -2,84 +2,42 @@
 
 What: for each part its owned cells in curve order, then its halo cells, with points numbered
 locally by first use; what the writers of VTKHDF and VTU put into files.
-How: one compiled pass renumbers a block of parts (`sfcpart.kernels.pieces`); a block holds
-about a million cells, so that memory stays bounded.
-Cost: O(entries) time; O(block + n_points) memory.
+How: a rank asks the ranks that hold the cells for those of a block of its own parts
+(`sfcpart.files.parts.supply`), and one compiled pass renumbers them (`sfcpart.kernels.pieces`); a
+block holds about a million cells, so that memory stays bounded.
+Cost: O(entries) time; O(block) memory.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from itertools import pairwise
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from sfcpart.dtypes import (
-    COORDINATE,
-    KIND,
-    OFFSET,
-    FloatArray,
-    Int64Array,
-    IntArray,
-    KindArray,
-    index_dtype,
-)
+from sfcpart.dtypes import GID, KIND, OFFSET, Int64Array, IntArray, KindArray, index_dtype
 from sfcpart.errors import PartitionError
+from sfcpart.files.parts.supply import CellRows, Relation, Supply
 from sfcpart.kernels.threads import run_ranges
+from sfcpart.slices.routing import compact
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
 
     from sfcpart.halo import Halo
-    from sfcpart.mesh.mesh import Mesh, Polyhedra
     from sfcpart.partition import Partition
+    from sfcpart.slices.mesh_slice import MeshSlice
 
-__all__ = [
-    "GHOST",
-    "POLYHEDRON",
-    "Block",
-    "Drawing",
-    "Renumbered",
-    "blocks",
-    "check_same_cells",
-    "drawing_of",
-]
+__all__ = ["GHOST", "POLYHEDRON", "Block", "Renumbered", "blocks", "check_same_cells"]
 
 BLOCK_CELLS = 1 << 20
 """Cells in one block: 2^20 hexahedra take about 64 MB while they are renumbered."""
 GHOST = 1
 """`vtkGhostType` of a cell that another part owns (bit 1: duplicate cell)."""
-VERTEX, POLYHEDRON = 1, 42
+POLYHEDRON = 42
 _STRIDE = 1 << 20
 _Lists = tuple[Int64Array, IntArray]
-
-
-@dataclass(frozen=True, eq=False)
-class Drawing:
-    """A mesh as files hold it: with points, even where the mesh has only centres.
-
-    Attributes
-    ----------
-    points : (n_points, 1 to 3) float64
-    kind : (n_cells,) uint8
-    indptr, indices : CSR
-        Points of each cell.
-    polyhedra : Polyhedra or None
-    """
-
-    points: FloatArray
-    kind: KindArray
-    indptr: Int64Array
-    indices: IntArray
-    polyhedra: Polyhedra | None = None
-
-    def coordinates(self, rows: IntArray) -> FloatArray:
-        """Return points with three columns, zero where there are fewer."""
-        if self.points.shape[1] == 3:
-            return self.points[rows]
-        padded = np.zeros((len(rows), 3), COORDINATE)
-        padded[:, : self.points.shape[1]] = self.points[rows]
-        return padded
 
 
 @dataclass(frozen=True, eq=False)
@@ -96,7 +54,7 @@ class Renumbered:
         For each part one more than it has rows, from 0.
     used_indptr : (k + 1,) int64
     used : (sum,) int32 or int64
-        Global number of each local item.
+        Slot of each local item (`sfcpart.files.parts.supply`).
     """
 
     entry_indptr: Int64Array
@@ -107,16 +65,135 @@ class Renumbered:
 
 
 @dataclass(frozen=True, eq=False)
-class _Relation:
-    """Rows of items in CSR form, with the row width if all rows are equally long, else -1."""
+class Block:
+    """The local meshes of consecutive parts; none where other ranks have more blocks than this.
 
-    indptr: Int64Array
-    indices: IntArray
+    Attributes
+    ----------
+    cell_indptr : (k + 1,) int64
+    cell_gid : (sum,) int64
+        Cells of each part: owned in curve order, then halo.
+    ghost : (sum,) uint8
+        0 for owned cells, `GHOST` for halo cells.
+    row : (sum,) int32
+        Which of `cells` each of them is: a cell may occur in several parts.
+    cells : CellRows
+        What is known about them.
+    points : Renumbered
+        Cells to points.
+    faces, face_points : Renumbered or None
+        Polyhedra to faces and these to points.
+    """
+
+    cell_indptr: Int64Array
+    cell_gid: Int64Array
+    ghost: KindArray
+    row: IntArray
+    cells: CellRows
+    points: Renumbered
+    faces: Renumbered | None
+    face_points: Renumbered | None
+
+    @property
+    def n_parts(self) -> int:
+        """Number of parts in the block."""
+        return len(self.cell_indptr) - 1
+
+
+def check_same_cells(held: MeshSlice, partition: Partition, halo: Halo) -> None:
+    """Check that mesh, partition and exchange lists belong together.
+
+    Raises
+    ------
+    PartitionError
+        If their numbers of cells or parts differ.
+    """
+    owned = np.array([len(halo.owned)], GID)
+    counts = {
+        "mesh": held.n_local,
+        "partition": partition.n_cells,
+        "exchange lists": held.n_local + int(held.comm.allreduce(owned)[0]) - held.n_cells,
+    }
+    error = None
+    if len(set(counts.values())) > 1:
+        found = ", ".join(f"{what} {count}" for what, count in counts.items())
+        error = PartitionError(f"numbers of cells differ: {found}; wanted all of the same mesh")
+    elif partition.n_parts != halo.n_parts:
+        error = PartitionError(
+            f"the partition has {partition.n_parts} parts and the exchange lists {halo.n_parts}; "
+            "wanted lists of this partition"
+        )
+    held.comm.check(error)
+
+
+def blocks(supply: Supply, halo: Halo, *, block_cells: int = BLOCK_CELLS) -> Iterator[Block]:
+    """Yield the local meshes of a rank's parts in order, a block of parts at a time (collective).
+
+    Parameters
+    ----------
+    supply : Supply
+    halo : Halo
+        Of this rank's parts.
+    block_cells : int, optional
+        A block stops before the part that would take it above this many cells.
+    """
+    end = halo.owned_indptr + halo.halo_indptr
+    n_parts, edges = len(end) - 1, [0]
+    while edges[-1] < n_parts:
+        first = edges[-1]
+        fits = int(np.searchsorted(end, end[first] + block_cells, side="right")) - 1
+        edges.append(max(first + 1, min(fits, n_parts)))
+    most = int(supply.comm.allreduce(np.array([len(edges) - 1]), "max")[0])
+    edges += [n_parts] * (most + 1 - len(edges))
+    for first, last in pairwise(edges):
+        yield _block(supply, halo, first, last)
+
+
+def _block(supply: Supply, halo: Halo, first: int, last: int) -> Block:
+    """Build the local meshes of this rank's parts `first` to `last - 1`."""
+    lists = [rows for part in range(first, last) for rows in _cells_of(halo, part)]
+    gid = np.concatenate([np.empty(0, GID), *lists])
+    flags = np.tile(np.array([0, GHOST], KIND), last - first)
+    ghost = np.repeat(flags, [len(rows) for rows in lists])
+    end = (halo.owned_indptr + halo.halo_indptr)[first : last + 1]
+    cell_indptr = end - end[0]
+    asked, row = compact(gid)
+    cells = supply.cell_rows(asked)
+    slots, face_number, face_rows = cells.points.indices, None, None
+    if cells.faces is not None and supply.faces is not None:
+        face_number, lowest = supply.faces.same(cells.faces.indices)
+        face_rows = supply.face_points(lowest)
+        slots = np.concatenate([slots, face_rows.indices])
+    number, slot = supply.points.same(slots)
+    n_entries, n_points = len(cells.points.indices), len(slot)
+    relation = _Rows.of(cells.points.indptr, number[:n_entries], n_points)
+    points = _renumber(cell_indptr, row, relation, None)
+    faces = face_points = None
+    if face_rows is not None and cells.faces is not None and face_number is not None:
+        to_faces = _Rows.of(cells.faces.indptr, face_number, len(face_rows.indptr) - 1)
+        faces = _renumber(cell_indptr, row, to_faces, None)
+        seed = (points.used_indptr, points.used)
+        to_points = _Rows.of(face_rows.indptr, number[n_entries:], n_points)
+        face_points = _renumber(faces.used_indptr, faces.used, to_points, seed)
+    points = replace(points, used=slot[points.used])
+    return Block(cell_indptr, gid, ghost, row, cells, points, faces, face_points)
+
+
+def _cells_of(halo: Halo, part: int) -> tuple[IntArray, IntArray]:
+    """Return the owned cells of the `part`-th part here, and its halo cells."""
+    own, far = (indptr[part : part + 2] for indptr in (halo.owned_indptr, halo.halo_indptr))
+    return halo.owned[own[0] : own[1]], halo.halo[far[0] : far[1]]
+
+
+@dataclass(frozen=True, eq=False)
+class _Rows(Relation):
+    """A relation, with its number of items and the width of its rows, -1 if they differ."""
+
     n_items: int
     width: int
 
     @classmethod
-    def of(cls, indptr: Int64Array, indices: IntArray, n_items: int) -> _Relation:
+    def of(cls, indptr: Int64Array, indices: IntArray, n_items: int) -> _Rows:
         """Find the width, a stretch of rows at a time."""
         n_rows = len(indptr) - 1
         width = int(indptr[1]) if n_rows else 0
@@ -134,133 +211,8 @@ class _Relation:
         return before[row_indptr]
 
 
-@dataclass(frozen=True, eq=False)
-class Block:
-    """The local meshes of consecutive parts.
-
-    Attributes
-    ----------
-    first : int
-        The first part; there are k.
-    cell_indptr : (k + 1,) int64
-    cells : (sum,) int32 or int64
-        Cells of each part: owned in curve order, then halo.
-    ghost : (sum,) uint8
-        0 for owned cells, `GHOST` for halo cells.
-    points : Renumbered
-        Cells to points.
-    faces, face_points : Renumbered or None
-        Polyhedra to faces and these to points.
-    """
-
-    first: int
-    cell_indptr: Int64Array
-    cells: IntArray
-    ghost: KindArray
-    points: Renumbered
-    faces: Renumbered | None
-    face_points: Renumbered | None
-
-    @property
-    def n_parts(self) -> int:
-        """Number of parts in the block."""
-        return len(self.cell_indptr) - 1
-
-
-def drawing_of(mesh: Mesh) -> Drawing:
-    """Return a mesh with points: its own, or one vertex at each cell centre.
-
-    Examples
-    --------
-    >>> from types import SimpleNamespace
-    >>> drawing_of(SimpleNamespace(points=None, centers=np.zeros((2, 3)))).kind.tolist()
-    [1, 1]
-    """
-    if mesh.points is not None:
-        return Drawing(mesh.points, mesh.kind, mesh.indptr, mesh.indices, mesh.polyhedra)
-    n_cells = len(mesh.centers)
-    return Drawing(
-        points=mesh.centers,
-        kind=np.full(n_cells, VERTEX, KIND),
-        indptr=np.arange(n_cells + 1, dtype=OFFSET),
-        indices=np.arange(n_cells, dtype=index_dtype(n_cells)),
-    )
-
-
-def check_same_cells(drawing: Drawing, partition: Partition, halo: Halo) -> None:
-    """Check that mesh, partition and exchange lists belong together.
-
-    Raises
-    ------
-    PartitionError
-        If their numbers of cells or parts differ.
-    """
-    counts = {
-        "mesh": len(drawing.kind),
-        "partition": partition.n_cells,
-        "exchange lists": halo.n_cells,
-    }
-    if len(set(counts.values())) > 1:
-        found = ", ".join(f"{what} {count}" for what, count in counts.items())
-        raise PartitionError(f"numbers of cells differ: {found}; wanted all of the same mesh")
-    if partition.n_parts != halo.n_parts:
-        raise PartitionError(
-            f"the partition has {partition.n_parts} parts and the exchange lists {halo.n_parts}; "
-            "wanted lists of this partition"
-        )
-
-
-def blocks(drawing: Drawing, halo: Halo, *, block_cells: int = BLOCK_CELLS) -> Iterator[Block]:
-    """Yield the local meshes of all parts in order, a block of parts at a time.
-
-    Parameters
-    ----------
-    drawing : Drawing
-    halo : Halo
-    block_cells : int, optional
-        A block stops before the part that would take it above this many cells.
-    """
-    end = halo.owned_indptr + halo.halo_indptr
-    relations = _relations(drawing)
-    first = 0
-    while first < halo.n_parts:
-        fits = int(np.searchsorted(end, end[first] + block_cells, side="right")) - 1
-        last = max(first + 1, min(fits, halo.n_parts))
-        yield _block(relations, halo, first, last)
-        first = last
-
-
-def _relations(drawing: Drawing) -> list[_Relation]:
-    """Return cells to points and, of polyhedra, cells to faces and faces to points."""
-    n_points, solid = len(drawing.points), drawing.polyhedra
-    relations = [_Relation.of(drawing.indptr, drawing.indices, n_points)]
-    if solid is not None:
-        n_faces = len(solid.face_indptr) - 1
-        relations.append(_Relation.of(solid.cell_indptr, solid.cell_indices, n_faces))
-        relations.append(_Relation.of(solid.face_indptr, solid.face_indices, n_points))
-    return relations
-
-
-def _block(relations: list[_Relation], halo: Halo, first: int, last: int) -> Block:
-    """Build the local meshes of parts `first` to `last - 1`."""
-    parts = range(first, last)
-    lists = [rows for part in parts for rows in (halo.owned_cells(part), halo.halo_cells(part))]
-    cells = np.concatenate(lists)
-    flags = np.tile(np.array([0, GHOST], KIND), len(parts))
-    ghost = np.repeat(flags, [len(rows) for rows in lists])
-    end = (halo.owned_indptr + halo.halo_indptr)[first : last + 1]
-    cell_indptr = end - end[0]
-    points = _renumber(cell_indptr, cells, relations[0], None)
-    faces = face_points = None
-    if len(relations) > 1:
-        faces = _renumber(cell_indptr, cells, relations[1], None)
-        seed = (points.used_indptr, points.used)
-        face_points = _renumber(faces.used_indptr, faces.used, relations[2], seed)
-    return Block(first, cell_indptr, cells, ghost, points, faces, face_points)
-
-
 def _renumber(
-    row_indptr: Int64Array, rows: IntArray, relation: _Relation, seed: _Lists | None
+    row_indptr: Int64Array, rows: IntArray, relation: _Rows, seed: _Lists | None
 ) -> Renumbered:
     """Give the items of some rows numbers within each part."""
     from sfcpart.kernels.pieces import number_locally
@@ -284,6 +236,5 @@ def _renumber(
 
 def _compact(used: IntArray, entry_indptr: Int64Array, count: Int64Array) -> IntArray:
     """Close the gaps between the used items of the parts."""
-    return np.concatenate(
-        [used[start : start + n] for start, n in zip(entry_indptr[:-1], count, strict=True)]
-    )
+    rows = [used[start : start + n] for start, n in zip(entry_indptr[:-1], count, strict=True)]
+    return np.concatenate([used[:0], *rows])

@@ -9,33 +9,31 @@ Source: VTK file formats (XML), unstructured grid and parallel unstructured grid
 
 from __future__ import annotations
 
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING
 from xml.sax.saxutils import quoteattr
 
 import numpy as np
 
-from sfcpart.dtypes import GID, OFFSET, Array, Int64Array, IntArray
+from sfcpart.dtypes import GID, OFFSET, Array, Int64Array
 from sfcpart.errors import FileError
 from sfcpart.files.parts.boundary import groups_by_part
-from sfcpart.files.parts.fields import gathered, writable_fields
+from sfcpart.files.parts.fields import as_written
 from sfcpart.files.parts.lists import write_list_file
-from sfcpart.files.parts.pieces import (
-    POLYHEDRON,
-    Block,
-    Drawing,
-    Renumbered,
-    blocks,
-    check_same_cells,
-    drawing_of,
-)
-from sfcpart.files.parts.vtkhdf_write import CELL_NAMES, POINT_NAMES
+from sfcpart.files.parts.pieces import POLYHEDRON, Block, Renumbered, blocks, check_same_cells
+from sfcpart.files.parts.supply import Supply
+from sfcpart.slices.gate import agreed
+from sfcpart.slices.mesh_slice import MeshSlice
+from sfcpart.slices.routing import block_bounds
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
     from os import PathLike
 
+    from sfcpart.comm.base import Comm
     from sfcpart.halo import Halo
     from sfcpart.mesh.mesh import Mesh
     from sfcpart.partition import Partition
@@ -57,25 +55,35 @@ class _Piece:
     n_points: int
     n_cells: int
 
+    def without_rows(self) -> _Piece:
+        """Return the forms of the arrays alone."""
+        forms = {
+            section: {name: array[:0] for name, array in arrays.items()}
+            for section, arrays in self.sections.items()
+        }
+        return _Piece(forms, 0, 0)
+
 
 def write_vtu_pieces(
     folder: str | PathLike[str],
-    mesh: Mesh,
+    mesh: Mesh | MeshSlice,
     *,
     partition: Partition,
     halo: Halo,
     input_digest: str = "",
 ) -> None:
-    """Write one VTU file a part, a PVTU that names them, and the exchange lists.
+    """Write one VTU file a part, a PVTU that names them, and the exchange lists (collective).
 
     Parameters
     ----------
     folder : path
         An existing folder (see `sfcpart.files.parts.folder`).
-    mesh : Mesh
+    mesh : Mesh or MeshSlice
         Cell and point fields go along; without points, cells become vertices at their centres.
     partition : Partition
+        Of the cells here.
     halo : Halo
+        Of this rank's parts; it writes their pieces.
     input_digest : str, optional
         Text kept with the lists to tell which mesh was split.
 
@@ -87,68 +95,78 @@ def write_vtu_pieces(
         If the lists belong to another mesh.
     """
     place = Path(folder)
-    drawing = drawing_of(mesh)
-    check_same_cells(drawing, partition, halo)
-    cell_fields = writable_fields(mesh.cell_fields, CELL_NAMES)
-    given = mesh.point_fields if drawing.points is mesh.points else {}
-    point_fields = writable_fields(given, POINT_NAMES)
+    held = mesh if isinstance(mesh, MeshSlice) else MeshSlice.whole(mesh)
+    comm = held.comm
+    check_same_cells(held, partition, halo)
+    supply = Supply.of(held, partition)
     names = [f"pieces/part_{part:04d}.vtu" for part in range(halo.n_parts)]
-    points_of_parts: list[IntArray] = []
-    try:
-        (place / "pieces").mkdir(exist_ok=True)
-        for block in blocks(drawing, halo):
-            for k in range(block.n_parts):
-                piece = _piece(block, k, drawing, partition, cell_fields, point_fields)
-                _write_piece(place / names[block.first + k], piece)
-            points_of_parts.extend(np.split(block.points.used, block.points.used_indptr[1:-1]))
-        _write_joint(place / "parts.pvtu", piece, names)
-    except OSError as error:
-        if isinstance(error, FileError):
-            raise
-        raise FileError(f"{place}: cannot be written: {error.strerror or error}") from error
-    groups = groups_by_part(mesh, halo, points_of_parts)
-    write_list_file(place / "lists.h5", halo, groups=groups, input_digest=input_digest)
+    part = int(block_bounds(halo.n_parts, comm.size)[comm.rank])
+    agreed(comm, partial(_make_folder, place))
+    points_of_parts: list[Int64Array] = []
+    example: _Piece | None = None
+    for block in blocks(supply, halo):
+        pieces = _pieces(block, supply)
+        agreed(comm, partial(_write_pieces, place, names[part : part + len(pieces)], pieces))
+        part += len(pieces)
+        points_of_parts += [piece.sections["PointData"]["GlobalPointIds"] for piece in pieces]
+        example = pieces[0].without_rows() if pieces else example
+    example = _first_known(example, comm)
+    agreed(comm, partial(_write_joint, place, example, names, comm))
+    groups = list(groups_by_part(held, supply, halo, points_of_parts))
+    write_list_file(place / "lists.h5", halo, comm=comm, groups=groups, input_digest=input_digest)
 
 
-def _piece(
-    block: Block,
-    k: int,
-    drawing: Drawing,
-    partition: Partition,
-    cell_fields: Mapping[str, Array],
-    point_fields: Mapping[str, Array],
-) -> _Piece:
-    """Take the k-th part of a block and add its fields."""
+def _first_known(example: _Piece | None, comm: Comm) -> _Piece:
+    """Return the lowest rank's example (collective): all pieces have the same arrays."""
+    known = np.concatenate(comm.allgather(np.array([example is not None], np.int64)))
+    found: _Piece = comm.bcast_object(example, int(np.argmax(known)))
+    return found
+
+
+def _pieces(block: Block, supply: Supply) -> list[_Piece]:
+    """Fetch the points of a block and cut it into its parts."""
+    used = block.points.used
+    point_data = {
+        "GlobalPointIds": supply.points.gids(used),
+        **{
+            name: as_written(supply.points.rows(field, used))
+            for name, field in supply.point_fields.items()
+        },
+    }
+    coordinates = supply.coordinates(used)
+    return [_piece(block, k, coordinates, point_data) for k in range(block.n_parts)]
+
+
+def _piece(block: Block, k: int, coordinates: Array, point_data: Mapping[str, Array]) -> _Piece:
+    """Take the k-th part of a block."""
     rows = slice(block.cell_indptr[k], block.cell_indptr[k + 1])
-    cells, points = block.cells[rows], _part_of(block.points, k, rows)
+    row, points = block.row[rows], _part_of(block.points, k, rows)
+    mine = slice(block.points.used_indptr[k], block.points.used_indptr[k + 1])
+    kind = block.cells.kind[row]
     cell_data: dict[str, Array] = {
         "vtkGhostType": block.ghost[rows],
-        "GlobalCellIds": cells.astype(GID),
-        "part": partition.cell_part[cells],
-        **{name: gathered(field, cells) for name, field in cell_fields.items()},
-    }
-    point_data: dict[str, Array] = {
-        "GlobalPointIds": points.used.astype(GID),
-        **{name: gathered(field, points.used) for name, field in point_fields.items()},
+        "GlobalCellIds": block.cell_gid[rows].astype(GID),
+        "part": block.cells.part[row],
+        **{name: as_written(field[row]) for name, field in block.cells.fields.items()},
     }
     shape: dict[str, Array] = {
         "connectivity": points.entries,
         "offsets": points.offsets[1:].astype(OFFSET),
-        "types": drawing.kind[cells],
+        "types": kind,
     }
     if block.faces is not None and block.face_points is not None:
         faces = _part_of(block.faces, k, rows)
         face_rows = slice(block.faces.used_indptr[k], block.faces.used_indptr[k + 1])
         stream, end = _face_stream(faces, _part_of(block.face_points, k, face_rows))
         shape["faces"] = stream
-        shape["faceoffsets"] = np.where(drawing.kind[cells] == POLYHEDRON, end, -1)
+        shape["faceoffsets"] = np.where(kind == POLYHEDRON, end, -1)
     sections: dict[str, Mapping[str, Array]] = {
-        "Points": {"Points": drawing.coordinates(points.used)},
+        "Points": {"Points": coordinates[mine]},
         "Cells": shape,
-        "PointData": point_data,
+        "PointData": {name: values[mine] for name, values in point_data.items()},
         "CellData": cell_data,
     }
-    return _Piece(sections, n_points=len(points.used), n_cells=len(cells))
+    return _Piece(sections, n_points=len(points.used), n_cells=len(row))
 
 
 def _part_of(several: Renumbered, k: int, rows: slice) -> Renumbered:
@@ -186,6 +204,27 @@ def _face_stream(faces: Renumbered, face_points: Renumbered) -> tuple[Int64Array
     return stream, end
 
 
+def _saying_where(place: Path, act: Callable[[], None]) -> None:
+    """Turn what the system says into an error that names the folder."""
+    try:
+        act()
+    except FileError:
+        raise
+    except OSError as error:
+        raise FileError(f"{place}: cannot be written: {error.strerror or error}") from error
+
+
+def _make_folder(place: Path) -> None:
+    """Make the folder of the pieces, if another rank has not."""
+    _saying_where(place, lambda: (place / "pieces").mkdir(exist_ok=True))
+
+
+def _write_pieces(place: Path, names: Sequence[str], pieces: Sequence[_Piece]) -> None:
+    """Write some VTU files."""
+    for name, piece in zip(names, pieces, strict=True):
+        _saying_where(place, partial(_write_piece, place / name, piece))
+
+
 def _write_piece(path: Path, piece: _Piece) -> None:
     """Write one VTU file."""
     lines = [_OPENING.format(kind="UnstructuredGrid"), "<UnstructuredGrid>\n"]
@@ -208,8 +247,10 @@ def _write_piece(path: Path, piece: _Piece) -> None:
         file.write(b"\n</AppendedData>\n</VTKFile>\n")
 
 
-def _write_joint(path: Path, example: _Piece, names: list[str]) -> None:
-    """Write the PVTU file; all pieces have the arrays of the example."""
+def _write_joint(place: Path, example: _Piece, names: Sequence[str], comm: Comm) -> None:
+    """Write the PVTU file, on rank 0; all pieces have the arrays of the example."""
+    if comm.rank:
+        return
     lines = [_OPENING.format(kind="PUnstructuredGrid"), '<PUnstructuredGrid GhostLevel="1">\n']
     for section in ("PointData", "CellData", "Points"):
         lines.append(f"<P{section}{_active(section)}>\n")
@@ -218,7 +259,13 @@ def _write_joint(path: Path, example: _Piece, names: list[str]) -> None:
         lines.append(f"</P{section}>\n")
     lines.extend(f"<Piece Source={quoteattr(name)}/>\n" for name in names)
     lines.append("</PUnstructuredGrid>\n</VTKFile>\n")
-    path.write_text("".join(lines), encoding="utf-8")
+    text = "".join(lines)
+    _saying_where(place, lambda: _write_text(place / "parts.pvtu", text))
+
+
+def _write_text(path: Path, text: str) -> None:
+    """Write a file of text."""
+    path.write_text(text, encoding="utf-8")
 
 
 def _active(section: str) -> str:

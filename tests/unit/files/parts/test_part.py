@@ -8,6 +8,7 @@ import h5py
 import numpy as np
 import pytest
 
+from sfcpart.comm import SerialComm
 from sfcpart.errors import FileError, InputError
 from sfcpart.files.parts.lists import write_list_file
 from sfcpart.files.parts.part import read_part
@@ -156,7 +157,7 @@ def test_files_that_are_no_parts(folder):
         file.create_group("VTKHDF")
     with pytest.raises(FileError, match="no group /sfcpart"):
         read_part(folder / "foreign.vtkhdf", 0)
-    write_list_file(folder / "lists.h5", parted("tets").halo)
+    write_list_file(folder / "lists.h5", parted("tets").halo, comm=SerialComm())
     with pytest.raises(FileError, match="but no mesh"):
         read_part(folder / "lists.h5", 0)
 
