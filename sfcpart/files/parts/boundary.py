@@ -81,10 +81,9 @@ def groups_by_part(
     """
     if not held.mesh.boundary or held.mesh.points is None:
         return
-    first_part = int(block_bounds(halo.n_parts, held.comm.size)[held.comm.rank])
-    local = _Numbers.of(halo, point_gid, first_part)
+    local = _Numbers.of(halo, point_gid)
     for group, element_gid, cells in _elements_held(held):
-        rows = _sent_to_parts(held, supply, group, element_gid, cells, halo.n_parts)
+        rows = _sent_to_parts(held, supply, group, element_gid, cells)
         yield local.of_group(group, rows, held.n_points)
 
 
@@ -116,7 +115,6 @@ def _sent_to_parts(
     group: BoundaryGroup,
     element_gid: Int64Array,
     cells: Int64Array,
-    n_parts: int,
 ) -> _Rows:
     """Send every element to the writers of the parts that own one of its cells."""
     first, second = cells.T
@@ -129,7 +127,7 @@ def _sent_to_parts(
     row = np.concatenate([mine, also])
     part_of = np.concatenate([part[mine, 0], part[also, 1]])
     cell = np.concatenate([first[mine], second[also]])
-    way = dealing(held.comm, owner_of(part_of, block_bounds(n_parts, held.comm.size)))
+    way = dealing(held.comm, owner_of(part_of, block_bounds(supply.n_parts, held.comm.size)))
     points = np.asarray(held.global_points(group.indices), GID)
     indptr, points = way.forward_ragged(*take_ragged(group.indptr, points, row))
     came = [way.forward(rows) for rows in (part_of, element_gid[row], cell, group.kind[row])]
@@ -148,10 +146,10 @@ class _Numbers:
     points: list[tuple[Int64Array, Int64Array]]
 
     @classmethod
-    def of(cls, halo: Halo, point_gid: Sequence[Int64Array], first_part: int) -> _Numbers:
+    def of(cls, halo: Halo, point_gid: Sequence[Int64Array]) -> _Numbers:
         """Sort the numbers of each part, to be looked up."""
         owned = [halo.owned[a:b] for a, b in pairwise(halo.owned_indptr)]
-        return cls(first_part, list(map(_sorted, owned)), list(map(_sorted, point_gid)))
+        return cls(halo.first_part, list(map(_sorted, owned)), list(map(_sorted, point_gid)))
 
     def of_group(self, group: BoundaryGroup, rows: _Rows, n_points: int) -> GroupByPart:
         """Replace global numbers by the local ones of each part."""

@@ -127,7 +127,7 @@ class ListWriter:
     ) -> None:
         self.shared, self.halo, self.groups = shared, halo, groups
         self.arrays: dict[str, _Stretch] = {}
-        comm, n_cells = shared.comm, self._n_cells()
+        comm, n_cells = shared.comm, self._sum(len(halo.owned))
         self._indptr("owned_indptr", halo.owned_indptr)
         self._indptr("halo_indptr", halo.halo_indptr)
         self._indptr("neighbour_indptr", halo.neighbour_indptr)
@@ -139,16 +139,15 @@ class ListWriter:
             self._group(f"boundary/{number}", rows, n_cells)
         if with_cells:
             self._rows("cell_gid", _cells_by_part(halo), index_dtype(n_cells))
-        self.n_cells = n_cells
+        self.n_cells, self.n_parts = n_cells, self._sum(halo.n_parts)
         starts = [len(stretch.rows) for stretch in self.arrays.values()]
         counts = np.array(comm.allgather(np.array(starts, np.int64)))
         self.first = dict(zip(self.arrays, counts[: comm.rank].sum(axis=0).tolist(), strict=True))
         self.total = dict(zip(self.arrays, counts.sum(axis=0).tolist(), strict=True))
 
-    def _n_cells(self) -> int:
-        """Return the number of all cells."""
-        owned = np.array([len(self.halo.owned)], np.int64)
-        return int(self.shared.comm.allreduce(owned)[0])
+    def _sum(self, count: int) -> int:
+        """Add up a number over ranks."""
+        return int(self.shared.comm.allreduce(np.array([count], np.int64))[0])
 
     def _rows(self, name: str, rows: Array, dtype: Any) -> None:
         """Plan rows that follow those of the rank before."""
@@ -180,7 +179,7 @@ class ListWriter:
         """Write what is no dataset."""
         group = file.create_group(GROUP)
         group.attrs["format_version"] = FORMAT_VERSION
-        group.attrs["n_parts"] = self.halo.n_parts
+        group.attrs["n_parts"] = self.n_parts
         group.attrs["n_cells"] = self.n_cells
         group.attrs["layers"] = self.halo.layers
         write_text(group, "across", self.halo.across)

@@ -108,19 +108,19 @@ def check_same_cells(held: MeshSlice, partition: Partition, halo: Halo) -> None:
     PartitionError
         If their numbers of cells or parts differ.
     """
-    owned = np.array([len(halo.owned)], GID)
+    n_owned, n_parts = held.comm.allreduce(np.array([len(halo.owned), halo.n_parts], GID))
     counts = {
         "mesh": held.n_local,
         "partition": partition.n_cells,
-        "exchange lists": held.n_local + int(held.comm.allreduce(owned)[0]) - held.n_cells,
+        "exchange lists": held.n_local + int(n_owned) - held.n_cells,
     }
     error = None
     if len(set(counts.values())) > 1:
         found = ", ".join(f"{what} {count}" for what, count in counts.items())
         error = PartitionError(f"numbers of cells differ: {found}; wanted all of the same mesh")
-    elif partition.n_parts != halo.n_parts:
+    elif partition.n_parts != n_parts:
         error = PartitionError(
-            f"the partition has {partition.n_parts} parts and the exchange lists {halo.n_parts}; "
+            f"the partition has {partition.n_parts} parts and the exchange lists {n_parts}; "
             "wanted lists of this partition"
         )
     held.comm.check(error)
@@ -138,7 +138,7 @@ def blocks(supply: Supply, halo: Halo, *, block_cells: int = BLOCK_CELLS) -> Ite
         A block stops before the part that would take it above this many cells.
     """
     end = halo.owned_indptr + halo.halo_indptr
-    n_parts, edges = len(end) - 1, [0]
+    n_parts, edges = halo.n_parts, [0]
     while edges[-1] < n_parts:
         first = edges[-1]
         fits = int(np.searchsorted(end, end[first] + block_cells, side="right")) - 1

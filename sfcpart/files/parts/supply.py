@@ -134,6 +134,7 @@ class Supply:
     rank_first: Int64Array
     kind: KindArray
     part: Array
+    n_parts: int
     cells: Relation
     points: Slots
     positions: FloatArray
@@ -154,6 +155,7 @@ class Supply:
                 rank_first=held.rank_first,
                 kind=np.full(n, VERTEX, KIND),
                 part=partition.cell_part,
+                n_parts=partition.n_parts,
                 cells=Relation(np.arange(n + 1, dtype=OFFSET), np.arange(n, dtype=np.int32)),
                 points=Slots(comm, held.rank_first, held.cell_gid, held.n_cells),
                 positions=mesh.centers,
@@ -170,6 +172,7 @@ class Supply:
             rank_first=held.rank_first,
             kind=mesh.kind,
             part=partition.cell_part,
+            n_parts=partition.n_parts,
             cells=Relation(mesh.indptr, mesh.indices),
             points=Slots.of(held.point_gid, mesh.n_points, held.n_points, comm),
             positions=mesh.points,

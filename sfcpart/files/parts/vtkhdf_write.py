@@ -141,8 +141,6 @@ class _Writer:
         self.point_count: list[Int64Array] = [np.zeros(0, OFFSET)]
         self.face_points: list[Renumbered] = []
         self.face_count: list[Int64Array] = [np.zeros((0, 2), OFFSET)]
-        n_parts = len(halo.owned_indptr) - 1
-        self.first_part = int(self.comm.exscan(np.array([n_parts], GID))[0])
         self.cells = _Counts.of(self._cell_counts(), self.comm)
 
     def _cell_counts(self) -> list[Int64Array]:
@@ -190,7 +188,9 @@ class _Writer:
         first = dict.fromkeys(names, rows)
         first[f"{_ROOT}/Connectivity"] = entries
         first[f"{_ROOT}/PolyhedronToFaces"] = faces
-        first[f"{_ROOT}/Offsets"] = first[f"{_ROOT}/PolyhedronOffsets"] = rows + self.first_part
+        first[f"{_ROOT}/Offsets"] = first[f"{_ROOT}/PolyhedronOffsets"] = (
+            rows + self.halo.first_part
+        )
         return {name: self.shared.column(name, first[name]) for name in names}
 
     def _append(self, columns: dict[str, Column], block: Block) -> None:
@@ -284,7 +284,7 @@ class _Writer:
         """Take over the points of the faces of polyhedra."""
         n_faces, n_entries = faces.first.tolist()
         entries = self.shared.column(f"{_ROOT}/FaceConnectivity", n_entries)
-        offsets = self.shared.column(f"{_ROOT}/FaceOffsets", n_faces + self.first_part)
+        offsets = self.shared.column(f"{_ROOT}/FaceOffsets", n_faces + self.halo.first_part)
         for kept in self.face_points:
             entries.append(kept.entries)
             offsets.append(kept.offsets)

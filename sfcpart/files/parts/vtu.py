@@ -27,7 +27,6 @@ from sfcpart.files.parts.pieces import POLYHEDRON, Block, Renumbered, blocks, ch
 from sfcpart.files.parts.supply import Supply
 from sfcpart.slices.gate import agreed
 from sfcpart.slices.mesh_slice import MeshSlice
-from sfcpart.slices.routing import block_bounds
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -99,8 +98,8 @@ def write_vtu_pieces(
     comm = held.comm
     check_same_cells(held, partition, halo)
     supply = Supply.of(held, partition)
-    names = [f"pieces/part_{part:04d}.vtu" for part in range(halo.n_parts)]
-    part = int(block_bounds(halo.n_parts, comm.size)[comm.rank])
+    names = [f"pieces/part_{part:04d}.vtu" for part in range(partition.n_parts)]
+    part = halo.first_part
     agreed(comm, partial(_make_folder, place))
     points_of_parts: list[Int64Array] = []
     example: _Piece | None = None
