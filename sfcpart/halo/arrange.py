@@ -100,12 +100,19 @@ def _at_owners(
 
 def _along(line: CurveSlice, lists: Lists) -> Lists:
     """Bring the lists of local cells to the curve."""
-    indptr, data = take_ragged(*lists, line.order)
+    indptr, data = _taken(lists, line.order)
     cuts = list(pairwise(line.edge))
     size = np.concatenate(line.comm.alltoall([np.diff(indptr[a : b + 1]) for a, b in cuts]))
     came = np.concatenate(line.comm.alltoall([data[indptr[a] : indptr[b]] for a, b in cuts]))
     indptr = np.concatenate(([0], np.cumsum(size))).astype(OFFSET)
-    return (indptr, came) if line.merge is None else take_ragged(indptr, came, line.merge)
+    return (indptr, came) if line.merge is None else _taken((indptr, came), line.merge)
+
+
+def _taken(lists: Lists, rows: IntArray) -> Lists:
+    """Return some lists in the order given; most of them are empty."""
+    size = np.diff(lists[0])[rows]
+    data = take_ragged(*lists, rows[np.flatnonzero(size)])[1]
+    return np.concatenate(([0], np.cumsum(size))).astype(OFFSET), data
 
 
 def _to_users(
