@@ -159,22 +159,31 @@ class Forecast:
     count: int = 0
     first_trend: float = 0.0
     _raw: tuple[float, float] = (0.0, 0.0)
+    _cut: tuple[float, ...] = (0.0, 0.0, 0.0)
+    _usual: float = 0.0
+    _late: float = 0.0
 
     @property
     def next(self) -> float:
-        """Return the loss expected of the next step."""
-        return self.level + self.trend
+        """Return the loss expected of the next step; no rise is expected where none was seen."""
+        if self.count < 3:
+            return self.level + self.trend
+        rise = max(0.0, (self._cut[2] - self._cut[0]) / 2)
+        return min(self.level, max(self._cut[1:])) + min(self.trend, rise)
 
     def add(self, loss: float, *, grave: float) -> float:
         """Take a step in; return its loss, cut back if it is a late step by itself.
 
-        A jump by more than `grave` is believed at once.
+        A jump by more than `grave` is believed at once; one that lasts is when it does, and what
+        was cut is then returned too.
         """
-        cut = loss
+        cut, late = loss, self._late if loss > self._usual else 0.0
+        self._late = 0.0
         if self.count >= 2:
-            usual = max(self._raw) + _SPIKE * self.change
-            cut = loss if loss > max(self._raw) + grave else min(loss, usual)
-            expected = self.next
+            self._usual = max(self._raw) + _SPIKE * self.change
+            cut = loss if loss > max(self._raw) + grave else min(loss, self._usual)
+            self._late = loss - cut
+            expected = self.level + self.trend
             self.level = expected + _LEVEL * (cut - expected)
             self.trend += _LEVEL * _TREND * (cut - expected)
         elif self.count == 1:
@@ -186,8 +195,9 @@ class Forecast:
         if self.count:
             share = _CHANGE if self.change else 1.0
             self.change += share * (abs(cut - self._raw[1]) - self.change)
-        self._raw, self.count = (self._raw[1] if self.count else loss, loss), self.count + 1
-        return cut
+        self._raw = (self._raw[1] if self.count else loss, loss)
+        self._cut, self.count = (*self._cut[1:], cut), self.count + 1
+        return cut + late
 
     def anew(self) -> Forecast:
         """Begin after a re-split; what is known of first trends fades while it is not seen."""

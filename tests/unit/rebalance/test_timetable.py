@@ -1,0 +1,135 @@
+"""A run as a table: every split in every later frame, against splits measured one by one."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+
+import sfcpart
+from sfcpart.errors import InputError, WeightError
+from sfcpart.measure import StepModel
+from sfcpart.mesh.shapes import lattice
+from tools.series.front import front_series
+from tools.series.spots import slow_series, spot_series
+
+N_PARTS = 4
+
+
+@pytest.fixture(scope="module")
+def front():
+    return list(front_series(4, n_levels=1, n_frames=6, steps=3))
+
+
+def carried(frames, first, last, cell_part):
+    """Give each cell the part of its parent, frame by frame."""
+    for frame in frames[first + 1 : last + 1]:
+        cell_part = cell_part[frame.parent]
+    return cell_part
+
+
+def test_every_entry_is_what_measuring_that_split_gives(front):
+    model = StepModel.from_preset("gigabit-ethernet")
+    resplit = sfcpart.ResplitCost(seconds=0.5, split_seconds=1e-3, cell_bytes=1000.0)
+    table = sfcpart.replay(front, N_PARTS, step_model=model, resplit=resplit).timetable
+    splits = [sfcpart.split(frame.mesh, N_PARTS).cell_part for frame in front]
+    for i in range(len(front)):
+        for k in range(i, len(front)):
+            part = carried(front, i, k, splits[i])
+            seen = sfcpart.assess(
+                front[k].mesh, sfcpart.Partition.from_array(part, N_PARTS), step_model=model
+            ).total
+            assert table.slowest[i, k] == pytest.approx(seen["step_seconds"], rel=1e-12)
+            assert table.imbalance[i, k] == pytest.approx(seen["imbalance"], abs=1e-12)
+            if k > i:
+                moved = sfcpart.Partition.from_array(part, N_PARTS).compare(
+                    sfcpart.Partition.from_array(splits[k], N_PARTS)
+                )
+                assert table.moved_bytes[i, k] == 1000.0 * moved.n_moved_relabelled
+                least = 0.5 + 1e-3 * front[k].n_cells / N_PARTS
+                assert table.cost[i, k] >= least
+                assert table.cost[i, k] <= least + 8 * 40e-6 + moved.n_moved * 1000 / 0.11e9
+        assert np.isnan(table.slowest[i, :i]).all()
+        assert np.isnan(table.cost[i, : i + 1]).all()
+    assert table.steps.tolist() == [3] * 6
+    assert table.n_cells.tolist() == [frame.n_cells for frame in front]
+
+
+def test_weights_on_one_mesh_keep_their_unit():
+    # Work that doubles everywhere takes twice as long, though no cell is dearer than another.
+    mesh = lattice((8, 8)).to_mesh()
+    frames = [sfcpart.Frame(mesh, weight=np.full(64, w)) for w in (1.0, 2.0)]
+    quick = StepModel(network=StepModel().network, exchanges=0)
+    table = sfcpart.replay(frames, 2, step_model=quick).timetable
+    assert table.slowest[0, 1] == pytest.approx(2 * table.slowest[0, 0])
+    assert table.moved_bytes[0, 1] == 0
+
+
+def test_specified_weights_multiply_those_of_the_frames():
+    mesh = lattice((8, 8)).to_mesh().with_cell_field("zone", np.arange(64) // 32)
+    weight = np.where(np.arange(64) < 32, 4.0, 1.0)
+    frames = [sfcpart.Frame(mesh, weight=weight)]
+    even = sfcpart.replay(frames, 2, weights="zone:0=1,1=4").timetable
+    assert even.imbalance[0, 0] == pytest.approx(0)
+    plain = sfcpart.replay([sfcpart.Frame(mesh)], 2, weights="zone:0=1,1=4").timetable
+    assert plain.n_frames == 1
+
+
+def test_bare_centres_have_no_messages():
+    mesh = sfcpart.Mesh.from_centers(np.stack([np.arange(8.0)] * 2, axis=1))
+    frames = [sfcpart.Frame(mesh, weight=np.arange(8) + k + 1.0) for k in range(3)]
+    table = sfcpart.replay(frames, 2).timetable
+    assert table.slowest[0, 0] == pytest.approx(1e-6 * 8 * 21 / 36)
+
+
+def test_slow_ranks_are_split_for():
+    frames = list(slow_series(4, n_parts=4, n_frames=4))
+    table = sfcpart.replay(frames, 4).timetable
+    assert table.imbalance[0, 1] > 0.5
+    assert table.imbalance[1, 1] < 0.05
+    with pytest.raises(InputError, match="frame 1: wanted speeds in all frames or in none"):
+        sfcpart.replay([frames[0], sfcpart.Frame(frames[0].mesh)], 4)
+    with pytest.raises(WeightError, match=r"speeds of a frame have shape \(4,\)"):
+        sfcpart.replay(frames, 5)
+
+
+def test_progress_counts_frames():
+    seen: list[int] = []
+    sfcpart.replay(spot_series(4, n_frames=3), 2, progress=seen.append)
+    assert seen == [1, 2, 3]
+
+
+def test_frames_that_do_not_follow_are_refused(front):
+    first, second = front[0], front[1]
+    with pytest.raises(InputError, match="series is empty"):
+        sfcpart.replay([], 2)
+    with pytest.raises(InputError, match="and no parents; wanted a parent for each cell"):
+        sfcpart.replay([first, sfcpart.Frame(second.mesh)], 2)
+    beyond = np.array(second.parent)
+    beyond[7] = first.n_cells
+    with pytest.raises(InputError, match=f"frame 1: cell 7 has parent {first.n_cells}; wanted 0"):
+        sfcpart.replay([first, sfcpart.Frame(second.mesh, parent=beyond)], 2)
+    with pytest.raises(InputError, match="method 'best' is unknown"):
+        sfcpart.replay([first], 2, method="best")
+
+
+@pytest.mark.parametrize(
+    ("wrong", "error", "words"),
+    [
+        ({"weight": [1.0]}, WeightError, r"weights have shape \(1,\)"),
+        ({"parent": [0.5, 1.0]}, InputError, "parents are float64"),
+        ({"parent": [0]}, InputError, "wanted whole numbers, one a cell"),
+        ({"steps": 0}, InputError, "a frame lasts 0 steps"),
+        ({"steps": True}, InputError, "a frame lasts True steps"),
+        ({"steps": 1.5}, InputError, "a frame lasts 1.5 steps"),
+    ],
+)
+def test_what_makes_no_frame_is_refused(wrong, error, words):
+    with pytest.raises(error, match=words):
+        sfcpart.Frame(sfcpart.Mesh.from_centers(np.eye(2)), **wrong)
+
+
+@pytest.mark.parametrize("name", ["seconds", "split_seconds", "cell_bytes"])
+@pytest.mark.parametrize("value", [-1.0, float("nan"), float("inf")])
+def test_costs_of_a_re_split_are_finite(name, value):
+    with pytest.raises(InputError, match=f"{name} of a re-split is"):
+        sfcpart.ResplitCost(**{name: value})
