@@ -27,9 +27,9 @@ partitions, speeds of ranks are fitted too. The file of costs stands wherever we
 
 \b
 Examples:
-  sfcpart fit-weights times.csv --mesh meshes/channel_mixed.vtu --parts parts -o costs.json
-  sfcpart fit-weights a.csv b.csv --mesh m.vtu --parts a --parts b --by cell --by face
-  sfcpart fit-weights times.npy --counts counts.csv --json
+  sfcpart fit-weights measured.csv -o costs.json
+  sfcpart fit-weights times.csv --counts counts.csv --json
+  sfcpart fit-weights times.csv --mesh meshes/channel_mixed.vtu --parts parts --by cell --by face
   sfcpart split meshes/channel_mixed.vtu -n 8 --weight costs.json
 """
 

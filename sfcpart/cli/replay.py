@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import sys
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import click
@@ -43,9 +44,9 @@ Rules (--rule, repeat for several):
 
 \b
 Examples:
-  sfcpart replay front.h5 --parts 64 --picture run.png
-  sfcpart replay run.pvd -n 16 --weight work --rule never --rule threshold:0.2 --rule hindsight
-  sfcpart replay weights/ --mesh meshes/channel_mixed.vtu -n 8 --steps 100 --json
+  sfcpart replay front.h5 --parts 8 --picture run.png
+  sfcpart replay front.h5 -n 8 --rule never --rule threshold:0.2 --rule hindsight --csv rules.csv
+  sfcpart replay weights --mesh meshes/channel_mixed.vtu -n 8 --steps 100 --json
 """
 
 
@@ -105,6 +106,7 @@ Examples:
 @click.option(
     "--picture", type=click.Path(), metavar="FILE", help="Draw imbalance over time as PNG."
 )
+@click.option("--report", type=click.Path(), metavar="FILE", help="Write a report page (HTML).")
 @click.option("--threads", type=click.IntRange(min=1), metavar="T", help="Threads to use.")
 @network_options
 @output_options
@@ -140,6 +142,9 @@ def command(series: str, **given: Any) -> None:
     if given["picture"]:
         with doing(f"drawing {given['picture']}"):
             _draw(given["picture"], series, found)
+    if given["report"]:
+        with doing(f"writing {given['report']}"):
+            _write_page(given["report"], series, found)
     if given["as_json"]:
         print_json({"series": series, **found.to_json_dict()})
     elif not given["quiet"]:
@@ -200,17 +205,29 @@ def _draw(path: str, name: str, found: Replay) -> None:
         draw_run(place, runs, steps=table.steps, title=f"{name}: {table.n_parts} parts")
 
 
+def _write_page(path: str, name: str, found: Replay) -> None:
+    """Write the report page."""
+    from sfcpart.cli.outputs import new_file
+    from sfcpart.report.page import replay_page, write_page
+
+    with new_file(path) as place:
+        write_page(place, replay_page(found, title=Path(name).name))
+
+
 def _print(name: str, found: Replay) -> None:
     """Print a row a rule."""
     from sfcpart.cli.console import print_table
-    from sfcpart.cli.figures import counted, percent
+    from sfcpart.cli.figures import print_verdict
+    from sfcpart.report.numbers import counted, percent
+    from sfcpart.report.verdict import judge_replay
 
     table = found.timetable
     least, most = int(table.n_cells.min()), int(table.n_cells.max())
     cells = counted(most, "cell") if least == most else f"{least:,} to {most:,} cells"
     steps = counted(int(table.steps.sum()), "step")
     frames = counted(table.n_frames, "frame")
-    print(f"{name}: {frames}, {steps}, {cells}, {counted(table.n_parts, 'part')}\n")
+    print(f"{name}: {frames}, {steps}, {cells}, {counted(table.n_parts, 'part')}")
+    print_verdict(judge_replay(found))
     rows = [
         [
             row["rule"] if row["period"] is None else f"{row['rule']}: {row['period']}",
