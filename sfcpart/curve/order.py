@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import cached_property
 from itertools import pairwise
 from typing import TYPE_CHECKING, cast
 
@@ -20,6 +21,9 @@ if TYPE_CHECKING:
     from sfcpart.mesh.mesh import Mesh
 
 __all__ = ["CurveSlice", "curve_order", "curve_slice", "key_slice", "mesh_slice"]
+
+SLACK = 1 / 64
+"""Share of an even stretch by which a rank's may be longer or shorter."""
 
 
 def curve_order(
@@ -83,6 +87,14 @@ class CurveSlice:
         """Return the number of cells on this stretch."""
         return int(self.received.sum())
 
+    @cached_property
+    def position(self) -> IntArray:
+        """Place on the whole curve of each local cell, (n_local,), kept; collective at first."""
+        count = np.array([len(self), len(self)], np.int64)
+        first, total = int(self.comm.exscan(count)[0]), int(self.comm.allreduce(count)[0])
+        here = np.arange(first, first + len(self), dtype=index_dtype(total))
+        return np.asarray(self.scatter(here))
+
     def gather(self, values: Array) -> Array:
         """Bring one value a local cell to the curve: (n_local,) -> (n_slice,) in curve order."""
         return self.forward(take_rows(values, self.order))
@@ -114,7 +126,8 @@ def curve_slice(centers: ArrayLike, *, curve: Curve = "hilbert", comm: Comm) -> 
 
     Notes
     -----
-    One local sort, 63 small reductions, one exchange, and one merge.
+    One local sort, at most 63 small reductions (a cell in 64 is not worth more), one exchange, and
+    one merge.
     """
     frame = Frame.of(centers, curve, comm)
     line, key = _by_key(frame.keys(), comm)
@@ -161,18 +174,51 @@ def _by_key(key: Int64Array, comm: Comm) -> tuple[CurveSlice, Int64Array]:
 
 
 def _even_edges(key: Int64Array, comm: Comm) -> Int64Array:
-    """Cut the sorted local keys where the keys of all ranks fall into `size` even stretches."""
+    """Cut the sorted local keys where the keys of all ranks fall into `size` even stretches.
+
+    A cut is good enough within `SLACK` of a stretch: which rank sorts a cell changes no answer.
+    Each round counts the keys below some probes, spread over the brackets of the cuts not found.
+    """
     total = int(comm.allreduce(np.array([len(key)], np.int64))[0])
     wanted = np.array([total * r // comm.size for r in range(1, comm.size)], np.int64)
+    slack = int(SLACK * (total // comm.size))
     low, high = np.zeros_like(wanted), np.full_like(wanted, np.iinfo(KEY).max)
     while np.any(low < high):  # the same on all ranks
-        middle = low + (high - low) // 2
-        below = comm.allreduce(np.searchsorted(key, middle, side="left").astype(np.int64))
-        enough = below >= wanted
-        high = np.where(enough, middle, high)
-        low = np.where(enough, low, middle + 1)
+        probe = _probes(low, high, at_most=2 * comm.size + 62)
+        below = comm.allreduce(np.searchsorted(key, probe, side="left").astype(np.int64))
+        low, high = _narrowed(low, high, wanted, probe=probe, below=below, slack=slack)
     inner = np.searchsorted(key, low, side="left")
     return np.concatenate(([0], inner, [len(key)])).astype(np.int64)
+
+
+def _probes(low: Int64Array, high: Int64Array, *, at_most: int) -> Int64Array:
+    """Spread keys over the open brackets, the middle of each among them; ascending."""
+    bracket = np.unique(np.stack([low, high], axis=1)[low < high], axis=0)
+    width = bracket[:, 1] - bracket[:, 0]
+    each = max(1, at_most // len(bracket))
+    between = bracket[:, :1] + (width // (each + 1))[:, None] * np.arange(1, each + 1)
+    return np.unique(np.append(between, bracket[:, 0] + width // 2))
+
+
+def _narrowed(
+    low: Int64Array,
+    high: Int64Array,
+    wanted: Int64Array,
+    *,
+    probe: Int64Array,
+    below: Int64Array,
+    slack: int,
+) -> tuple[Int64Array, Int64Array]:
+    """Narrow the brackets of the cuts: the least keys with `wanted` keys below, or near enough."""
+    first = np.searchsorted(below, wanted, side="left")  # the first probe with enough below
+    before, after = np.maximum(first - 1, 0), np.minimum(first, len(probe) - 1)
+    is_open = low < high
+    low = np.where(is_open & (first > 0), np.maximum(low, probe[before] + 1), low)
+    high = np.where(is_open & (first < len(probe)), np.minimum(high, probe[after]), high)
+    for at in (before, after):
+        fits = is_open & (np.abs(below[at] - wanted) <= slack)
+        low, high = np.where(fits, probe[at], low), np.where(fits, probe[at], high)
+    return low, high
 
 
 def _untie(line: CurveSlice, key: Int64Array, frame: Frame) -> CurveSlice:

@@ -9,12 +9,14 @@ to wanted positions inside these sets.
 A rank sees its stretch of the line: positions `first <= a < last`, with prefix sums from position
 `base` on that reach a few items past `last`. Empty prefix sums stand for items of weight 1
 (`total`) or for no limit (`limit`). What lies beyond `last` arrives as intervals with the sums at
-their lower ends.
+their lower ends; only those travel that a chunk from further down can reach, so that neither they
+nor the work on a stretch grow with the number of parts elsewhere.
 
 Source: the probe of A. Pinar, C. Aykanat, Fast optimal load balancing algorithms for 1D
 partitioning, JPDC 64:974 (2004), run from the right on sets of positions instead of one position,
 which keeps it exact when parts differ in speed and none may be empty.
-Cost: O(P log n) a sweep, plus the items heavier than a part may hold.
+Cost: O(log n) for each cut that can lie on the stretch, plus the items heavier than a part may
+hold.
 """
 
 from __future__ import annotations
@@ -24,7 +26,7 @@ import numpy as np
 from sfcpart.dtypes import FloatArray, Int64Array
 from sfcpart.kernels._jit import jit
 
-__all__ = ["caps", "pick", "sweep_back", "walk_forward"]
+__all__ = ["caps", "pass_on", "pick", "sweep_back", "walk_forward"]
 
 
 @jit
@@ -167,7 +169,6 @@ def sweep_back(
     limit_cap: Int64Array,
     speed: FloatArray,
     heavy: Int64Array,
-    came_ptr: Int64Array,
     came: Int64Array,
     brackets: FloatArray,
     own_ptr: Int64Array,
@@ -177,16 +178,19 @@ def sweep_back(
 
     Parameters
     ----------
-    span : (4,) int64
-        first, last, base, least (items a chunk takes at least).
+    span : (5,) int64
+        first, last, base, least (items a chunk takes at least), begin of the range.
     heavy : int64
         Positions whose next `least` items may be too much for some part, ascending.
-    came_ptr (P + 2,), came (m, 4)
-        For each p, intervals (low, high, total at low, limit at low) beyond `last`, ascending.
+    came : (m, 5) int64
+        Intervals beyond `last`: cut, low, high, total at low, limit at low; by cut, then place.
     brackets : (2,) float64, changed
         Smallest quotient above the bottleneck and largest below that a comparison met.
-    own_ptr (P + 2,), own (capacity, 2), written
-        Intervals for p = P, P - 1, ..., 0, each list descending.
+    own_ptr : (P + 2,) int64, zeros, written
+        Intervals of cut c are `own[own_ptr[P - c] : own_ptr[P - c + 1]]`, descending. Cuts that
+        cannot lie on this stretch are not looked at: their entries stay zero.
+    own : (capacity, 3) int64, written
+        Low, high, cut.
 
     Returns
     -------
@@ -195,25 +199,33 @@ def sweep_back(
     """
     first, least, n_parts = span[0], span[3], len(cap)
     ends = np.empty(4, np.int64)  # the interval of cut p + 1 at hand
-    own_ptr[0] = 0
-    own_ptr[1] = 0  # p = P: only the end of the line, which came
     n = int(own_ptr[0])  # a plain 0 would compile the callees once more
-    for q in range(1, n_parts + 1):
-        p = n_parts - q
+    after = len(came)  # rows from here on belong to later cuts
+    if after == 0:
+        return n
+    p = int(came[after - 1, 0])
+    while p > 0:
+        p -= 1
+        q = n_parts - p
+        start = after
+        while start > 0 and came[start - 1, 0] == p + 1:
+            start -= 1
+        n_came = after - start
+        n_all = n_came + own_ptr[q] - own_ptr[q - 1]
+        if n_all == 0 and start == 0:
+            break
         fresh = n
         top = span[1] - 1  # highest position not decided
-        n_came = came_ptr[p + 2] - came_ptr[p + 1]
-        n_all = n_came + own_ptr[q] - own_ptr[q - 1]
         for k in range(n_all):
             if top < first:
                 break
             below = first
             if k < n_came:
-                row = came_ptr[p + 2] - 1 - k
+                row = after - 1 - k
                 for column in range(4):
-                    ends[column] = came[row, column]
+                    ends[column] = came[row, column + 1]
                 if k + 1 < n_came:
-                    below = max(first, came[row - 1, 1] - least + 1)
+                    below = max(first, came[row - 1, 2] - least + 1)
             else:
                 row = own_ptr[q - 1] + k - n_came
                 ends[0], ends[1] = own[row, 0], own[row, 1]
@@ -238,6 +250,9 @@ def sweep_back(
             if n < 0:
                 return -1
         own_ptr[q + 1] = n
+        for row in range(fresh, n):
+            own[row, 2] = p
+        after = start
     return n
 
 
@@ -246,34 +261,55 @@ def pass_on(
     span: Int64Array,
     total: Int64Array,
     limit: Int64Array,
-    came_ptr: Int64Array,
+    cap: Int64Array,
+    limit_cap: Int64Array,
+    speed: FloatArray,
     came: Int64Array,
-    own_ptr: Int64Array,
     own: Int64Array,
-    out_ptr: Int64Array,
+    n_own: int,
+    brackets: FloatArray,
     out: Int64Array,
 ) -> int:
-    """Write what the stretch before needs: intervals up to `first + least`, and one more."""
-    n_parts = len(out_ptr) - 2
-    n = 0
-    out_ptr[0] = 0
-    for p in range(n_parts + 1):
-        q = n_parts - p
-        begin, end = own_ptr[q], own_ptr[q + 1]
-        n_all = end - begin + came_ptr[p + 1] - came_ptr[p]
-        for k in range(n_all):
-            if k < end - begin:
-                low, high = own[end - 1 - k, 0], own[end - 1 - k, 1]
-                out[n, 0], out[n, 1] = low, high
-                out[n, 2] = sum_before(total, low, span[2])
-                out[n, 3] = limit_before(limit, low, span[2])
-            else:
-                for column in range(4):  # an assignment of rows would compile for seconds
-                    out[n, column] = came[came_ptr[p] + k - (end - begin), column]
-            n += 1
-            if out[n - 1, 0] >= span[0] + span[3]:
-                break
-        out_ptr[p + 1] = n
+    """Write what the stretch before needs: intervals that a chunk from there can reach.
+
+    Of each cut, those up to `first + least` and one more, unless the items between are too much
+    for the chunk. The next larger bottleneck is then that of these items at most (`brackets`, which
+    may name one that no chunk has: it is tried like any other). Returns the number of rows.
+    """
+    first, least = span[0], span[3]
+    is_last = first <= span[4]  # nothing before needs anything but the answer
+    total_here = sum_before(total, first, span[2])
+    limit_here = limit_before(limit, first, span[2])
+    row = np.empty(5, np.int64)
+    n, k, i, group, is_done = 0, 0, n_own - 1, -1, False
+    while k < len(came) or i >= 0:
+        if i >= 0 and (k == len(came) or own[i, 2] <= came[k, 0]):  # own ones lie lower
+            row[0], row[1], row[2] = own[i, 2], own[i, 0], own[i, 1]
+            row[3] = sum_before(total, row[1], span[2])
+            row[4] = limit_before(limit, row[1], span[2])
+            i -= 1
+        else:
+            for column in range(5):  # an assignment of rows would compile for seconds
+                row[column] = came[k, column]
+            k += 1
+        c = row[0]
+        if c != group:
+            group, is_done = c, False
+        if c == 0 or is_last:
+            is_done = c > 0 or not is_last or row[1] != first
+        if is_done:
+            continue
+        if c > 0:
+            w = row[3] - total_here
+            if w > cap[c - 1]:
+                brackets[0] = min(brackets[0], w / speed[c - 1])
+            is_done = w > cap[c - 1] or row[4] - limit_here > limit_cap[c - 1]
+            if is_done:
+                continue
+            is_done = row[1] >= first + least
+        for column in range(5):
+            out[n, column] = row[column]
+        n += 1
     return n
 
 

@@ -8,10 +8,13 @@ C. Aykanat, JPDC 64:974 (2004); parts of different speed in fixed order: A. Pina
 C. Aykanat, JPDC 68:1473 (2008)). Among the divisions that keep it, cuts lie as near to their fair
 positions as they can, from the left.
 
-A probe walks the stretches of the line from the last rank to the first; several bottlenecks are
-tried in one walk when there are several ranks. Only lists of P intervals travel.
+A probe walks the stretches of the line from the last rank to the first, and in the end one walk
+goes forward (`Comm.relay`). A rank gets from its neighbour what can be reached from its stretch: a
+few intervals, whatever the number of ranks and parts. Several bottlenecks are tried in one walk
+when there are several ranks. `tools/ranks/` counts rounds and bytes.
 
-Cost: about log2(w_max) probes of O(P log n) each.
+Cost: about log2(w_max) probes of O(P log n) each on one rank; on R ranks log(w_max) / log(R + 1)
+walks of R steps (R at most 32 there), each of O(log n) for each cut that can lie on a stretch.
 """
 
 from __future__ import annotations
@@ -26,11 +29,15 @@ from sfcpart.kernels.curve import chunks as kernel
 from sfcpart.methods.curve.chunk_bounds import Bounds
 from sfcpart.methods.curve.fair import fair_positions
 from sfcpart.methods.curve.line import Line
-from sfcpart.methods.curve.probe_state import ProbeState
+from sfcpart.methods.curve.placing import place_cuts
+from sfcpart.methods.curve.probe_state import ProbeState, pack, unpack
+from sfcpart.methods.curve.stretch import Stretch
 
 __all__ = ["cut_line"]
 
 _UNLIMITED = np.iinfo(np.int64).max
+_TRIES = 32
+"""Bottlenecks that are tried in one walk along the ranks, if there are as many ranks."""
 
 
 def cut_line(
@@ -110,7 +117,7 @@ class _Task:
         low, high = self.bounds.lowest, np.inf
         top = max(self.weight / float(self.speed.min()), low)
         ladder = [low, low + self.bounds.widest, min(low + 8 * self.bounds.widest, top), top]
-        n_tries = min(self.line.comm.size, 8)
+        n_tries = min(self.line.comm.size, _TRIES)
         while low < high:
             if ladder:
                 tries = [b for b in ladder[:n_tries] if b >= low] or [top]
@@ -129,76 +136,39 @@ class _Task:
                 ladder.clear()
         return float(low)
 
-    def _ranks(self) -> list[int]:
-        """Return the ranks that hold items of the range, last first."""
-        offset = self.line.offset
-        holds = (offset[:-1] < self.end) & (offset[1:] > self.begin) & (offset[:-1] < offset[1:])
-        return [int(r) for r in np.flatnonzero(holds)[::-1]]
-
-    def _first_states(self, count: int) -> list[ProbeState]:
+    def _first_state(self) -> ProbeState:
         """Return what is known beyond the end: the line may end there."""
         n_parts = len(self.speed)
-        at_end = np.array([[self.end, self.end, *self.edge_sums[1]]], np.int64)
-        ptr = np.zeros(n_parts + 2, np.int64)
-        ptr[-1] = 1
-        if self.least == 0:  # parts after the last item may be empty
-            ptr = np.arange(n_parts + 2)
-            at_end = np.repeat(at_end, n_parts + 1, axis=0)
-        brackets = np.array([np.inf, 0.0])
-        return [ProbeState(ptr, at_end, brackets.copy()) for _ in range(count)]
+        cut = np.arange(n_parts if self.least else 0, n_parts + 1)  # empty parts may follow the end
+        rows = np.empty((len(cut), 5), np.int64)
+        rows[:, 0], rows[:, 1:3], rows[:, 3:] = cut, self.end, self.edge_sums[1]
+        return ProbeState(rows, np.array([np.inf, 0.0]))
 
     def _probe(self, bottlenecks: list[float]) -> list[ProbeState]:
         """Sweep the range from its end for each bottleneck; every rank gets the last states."""
-        states = self._first_states(len(bottlenecks))
-        for rank in self._ranks():
-            packed = None
-            if rank == self.line.comm.rank:
-                swept = zip(bottlenecks, states, strict=True)
-                packed = np.concatenate([self._sweep(b, state)[0].pack() for b, state in swept])
-            packed = self.line.comm.bcast(packed, root=rank)
-            states = ProbeState.unpack(packed, len(self.speed), len(bottlenecks))
-        return states
+        stretches = [self.stretch(bottleneck) for bottleneck in bottlenecks]
 
-    def _caps(self, bottleneck: float) -> Int64Array:
-        """Return the most weight each part may hold under a bottleneck."""
-        return kernel.caps(bottleneck, self.speed, max(self.weight, 1))
+        def sweep(packed: Int64Array) -> Int64Array:
+            came = unpack(packed)
+            return pack([here.sweep(state) for here, state in zip(stretches, came, strict=True)])
 
-    def _span(self) -> Int64Array:
-        """Return this rank's positions of the range, its base and the least number of items."""
-        return np.array(
-            [*self.line.own_part(self.begin, self.end), self.line.first, self.least], np.int64
-        )
+        first = pack([self._first_state()] * len(bottlenecks))
+        return unpack(self.line.comm.relay(first, sweep, towards="first"))
 
-    def _sweep(
-        self, bottleneck: float, came: ProbeState
-    ) -> tuple[ProbeState, Int64Array, Int64Array]:
-        """Sweep this rank's stretch; return what the lower ranks need, and the own intervals."""
-        n_parts = len(self.speed)
-        own_ptr = np.zeros(n_parts + 2, np.int64)
-        capacity, n_own = 2 * n_parts + 64, -1
-        while n_own < 0:
-            own = np.empty((capacity, 2), np.int64)
-            brackets = came.brackets.copy()
-            n_own = kernel.sweep_back(
-                self._span(), self.line.total, self.line.limit, self._caps(bottleneck),
-                self.limit, self.speed, self.bounds.heavy, came.ptr, came.rows, brackets,
-                own_ptr, own,
-            )  # fmt: skip
-            capacity *= 4
-        out = np.empty((n_own + len(came.rows), 4), np.int64)
-        ptr = np.empty(n_parts + 2, np.int64)
-        n_out = kernel.pass_on(
-            self._span(), self.line.total, self.line.limit,
-            came.ptr, came.rows, own_ptr, own, ptr, out,
-        )  # fmt: skip
-        return ProbeState(ptr, out[:n_out], brackets), own_ptr, own
+    def stretch(self, bottleneck: float) -> Stretch:
+        """Return this rank's stretch of the range under a bottleneck."""
+        cap = kernel.caps(bottleneck, self.speed, max(self.weight, 1))
+        return Stretch(self.line, self.begin, self.end, self.least, cap, self.limit, self.speed,
+                       self.bounds.heavy)  # fmt: skip
 
     def place_cuts(self, bottleneck: float) -> Int64Array:
         """Return cuts that keep the bottleneck, each as near to its fair position as it can."""
-        comm, n_parts = self.line.comm, len(self.speed)
-        own_ptr, own = self._own_intervals(bottleneck)
-        stretch = (self._span(), self.line.total, self.line.limit, self._caps(bottleneck),
-                   self.limit, own_ptr, own)  # fmt: skip
+        here = self.stretch(bottleneck)
+        self.line.comm.relay(
+            pack([self._first_state()]),
+            lambda packed: pack([here.sweep(unpack(packed)[0])]),
+            towards="first",
+        )
         wanted = fair_positions(
             self.line,
             begin=self.begin,
@@ -207,53 +177,7 @@ class _Task:
             speed=self.speed,
             least=self.least,
         )
-        cut = np.full(n_parts + 1, self.end, np.int64)
-        cut[0] = self.begin
-        part, origin = 0, np.array([self.begin, *self.edge_sums[0]], np.int64)
-        while part < n_parts - 1:
-            home = int(np.searchsorted(self.line.offset, origin[0], side="right")) - 1
-            home = min(home, comm.size - 1)
-            token = None
-            if comm.rank == home:
-                part = kernel.walk_forward(part, origin, wanted, *stretch, cut)
-                token = np.concatenate(([part], origin, cut))
-            token = comm.bcast(token, root=home)
-            part, origin, cut = int(token[0]), token[1:4].copy(), token[4:].copy()
-            if part < n_parts - 1:
-                origin = self._agree(kernel.pick(part, origin, wanted[part + 1], *stretch))
-                part += 1
-                cut[part] = origin[0]
-        return cut
-
-    def _own_intervals(self, bottleneck: float) -> tuple[Int64Array, Int64Array]:
-        """Sweep once more; return this rank's intervals of good positions by part."""
-        comm, n_parts = self.line.comm, len(self.speed)
-        own_ptr, own = np.zeros(n_parts + 2, np.int64), np.empty((0, 2), np.int64)
-        state = self._first_states(1)[0]
-        for rank in self._ranks():
-            packed = None
-            if rank == comm.rank:
-                state, own_ptr, own = self._sweep(bottleneck, state)
-                packed = state.pack()
-            state = ProbeState.unpack(comm.bcast(packed, root=rank), n_parts, 1)[0]
-        return own_ptr, own
-
-    def _agree(self, ends: tuple[int, int]) -> Int64Array:
-        """Choose among the ends found by all ranks; return it with the sums before it."""
-        rows = np.zeros((2, 3), np.int64)
-        for row, at in zip(rows, ends, strict=True):
-            row[0] = at
-            if at >= 0:
-                row[1] = kernel.sum_before(self.line.total, at, self.line.first)
-                row[2] = kernel.limit_before(self.line.limit, at, self.line.first)
-        found = np.stack(self.line.comm.allgather(rows))
-        near, above = found[:, 0], found[:, 1]
-        if np.any(near[:, 0] >= 0):
-            return np.asarray(near[np.argmax(near[:, 0])]).copy()
-        above = above[above[:, 0] >= 0]
-        if len(above):
-            return np.asarray(above[np.argmin(above[:, 0])]).copy()
-        return np.array([self.end, *self.edge_sums[1]], np.int64)  # only empty parts follow
+        return place_cuts(here, wanted, origin=np.array([self.begin, *self.edge_sums[0]], np.int64))
 
     def _refuse(self) -> None:
         """Raise the error for limits that cannot be kept, saying what would be needed."""

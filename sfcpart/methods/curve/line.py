@@ -114,16 +114,17 @@ class Line:
 
 def _sums(values: Int64Array, offset: Int64Array, reach: int, comm: Comm) -> Int64Array:
     """Return the sums before each position of the stretch and `reach` positions more."""
-    first, last, end = offset[comm.rank], offset[comm.rank + 1], offset[-1]
+    last, end = offset[comm.rank + 1], offset[-1]
     n = len(values)
     n_more = int(min(reach, end - last))
     sums = np.empty(n + 1 + n_more, WEIGHT)
     sums[0] = 0
     np.cumsum(values, out=sums[1 : n + 1])
     sums[: n + 1] += comm.exscan(sums[n : n + 1])[0]
-    wanted = offset[1:, None] + np.arange(1, reach + 1)
-    here = (wanted > first) & (wanted <= last)
-    beyond = np.zeros(wanted.shape, WEIGHT)
-    beyond[here] = sums[wanted[here] - first]
-    sums[n + 1 :] = comm.allreduce(beyond)[comm.rank, :n_more]
+
+    def step(came: Int64Array) -> Int64Array:
+        sums[n + 1 :] = came[:n_more]  # the sums before the positions after this stretch
+        return sums[1 : 1 + reach]
+
+    comm.relay(np.empty(0, WEIGHT), step, towards="first")
     return sums

@@ -2,40 +2,53 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
 from sfcpart.dtypes import FloatArray, Int64Array
 
-__all__ = ["ProbeState"]
+__all__ = ["ProbeState", "pack", "unpack"]
 
 
 @dataclass(eq=False)
 class ProbeState:
-    """What a probe knows beyond a stretch: intervals of good positions by part, and brackets."""
+    """What a probe knows beyond a stretch.
 
-    ptr: Int64Array
+    Attributes
+    ----------
+    rows : (n, 5) int64
+        Intervals of good positions: cut, low, high, weight before low, limited weight before low;
+        by cut, then place.
+    brackets : (2,) float64
+        Smallest quotient above the bottleneck and largest below that a comparison met.
+    """
+
     rows: Int64Array
     brackets: FloatArray
 
-    def pack(self) -> Int64Array:
-        """Return everything in one array."""
-        parts = ([len(self.rows)], self.brackets.view(np.int64), self.ptr, self.rows.ravel())
-        return np.concatenate(parts).astype(np.int64)
-
-    @staticmethod
-    def unpack(packed: Int64Array, n_parts: int, count: int) -> list[ProbeState]:
-        """Take `count` states apart."""
-        states = []
-        for _ in range(count):
-            at = 3 + n_parts + 2
-            stop = at + 4 * int(packed[0])
-            rows = packed[at:stop].reshape(-1, 4)
-            states.append(ProbeState(packed[3:at], rows, packed[1:3].copy().view(np.float64)))
-            packed = packed[stop:]
-        return states
-
     def good_start(self, begin: int) -> bool:
         """Tell whether the whole line can be divided from `begin`."""
-        return bool(np.any(self.rows[self.ptr[0] : self.ptr[1], 0] == begin))
+        return bool(np.any((self.rows[:, 0] == 0) & (self.rows[:, 1] == begin)))
+
+
+def pack(states: Sequence[ProbeState]) -> Int64Array:
+    """Return some states in one array."""
+    pieces = [
+        piece
+        for state in states
+        for piece in ([len(state.rows)], state.brackets.view(np.int64), state.rows.ravel())
+    ]
+    return np.concatenate(pieces).astype(np.int64, copy=False)
+
+
+def unpack(packed: Int64Array) -> list[ProbeState]:
+    """Take states apart."""
+    states = []
+    while len(packed):
+        stop = 3 + 5 * int(packed[0])
+        rows = packed[3:stop].reshape(-1, 5)
+        states.append(ProbeState(rows, packed[1:3].copy().view(np.float64)))
+        packed = packed[stop:]
+    return states
