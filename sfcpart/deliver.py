@@ -24,6 +24,7 @@ if TYPE_CHECKING:
     from sfcpart.measure import Assessment
     from sfcpart.mesh.mesh import Mesh
     from sfcpart.partition import Partition
+    from sfcpart.report.page import Page
 
 __all__ = ["FORMATS", "Delivery", "deliver", "file_digest"]
 
@@ -56,10 +57,12 @@ def deliver(
     source: Path | None,
     options: Mapping[str, Any],
     more: Callable[[Path], Mapping[str, Any]] = lambda place: {},
+    page: Callable[[Page], Page] = lambda page: page,
 ) -> Path:
     """Write the folder and return where it is.
 
-    `more` writes further files into the folder and returns what the summary tells about them.
+    `more` writes further files into the folder and returns what the summary tells about them;
+    `page` turns the report page of the split into that of what is delivered.
     """
     _check_formats(how.formats, source)
     target = check_output_folder(folder, overwrite=how.overwrite)
@@ -80,6 +83,7 @@ def deliver(
                 graph=graph,
                 title=title,
                 options=options,
+                turn=page,
             )
         summary = _summary(mesh, assessment, source=source, digest=digest, options=options)
         write_summary(place / "summary.json", {**summary, **more(place)})
@@ -186,6 +190,7 @@ def _report(
     graph: CellGraph | None,
     title: str,
     options: Mapping[str, Any],
+    turn: Callable[[Page], Page],
 ) -> None:
     """Write the report page."""
     from sfcpart.report.page import split_page, write_page
@@ -199,7 +204,7 @@ def _report(
         levels=options.get("levels"),
         options=options,
     )
-    write_page(path, page)
+    write_page(path, turn(page))
 
 
 def _columns(assessment: Assessment) -> dict[str, Array]:

@@ -216,6 +216,7 @@ def write_rebalance(
     """
     from sfcpart.deliver import Delivery, deliver
     from sfcpart.files.parts.moves import write_moves
+    from sfcpart.report.page.rebalance import rebalance_page
 
     def more(place: Path) -> dict[str, Any]:
         write_moves(
@@ -238,6 +239,7 @@ def write_rebalance(
         source=None if source is None else Path(source),
         options={} if options is None else options,
         more=more,
+        page=lambda page: rebalance_page(page, result),
     )
 
 

@@ -6,9 +6,11 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from sfcpart.cli.console import Stages, print_json, print_pairs
+from sfcpart.cli.figures import print_verdict
 from sfcpart.cli.inputs import partition_from_place, read_mesh, read_numbers
 from sfcpart.cli.wishes import load_wish, shape_wish
 from sfcpart.report.numbers import amount, counted, number, percent, seconds
+from sfcpart.report.verdict import judge_rebalance
 
 if TYPE_CHECKING:
     from sfcpart.dtypes import Array
@@ -129,7 +131,7 @@ class RebalanceJob:
             f"{self.source}: {counted(self.mesh.n_cells, 'cell')} into "
             f"{counted(result.partition.n_parts, 'part')} again by {result.way}"
         )
-        print(f"{result.verdict.text}\n")
+        print_verdict(judge_rebalance(result))
         print_pairs(_figures(result))
         if output is not None:
             names = sorted(entry.name for entry in Path(output).iterdir() if entry.name[0] != ".")

@@ -9,13 +9,15 @@ from __future__ import annotations
 from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
-from sfcpart.report.numbers import counted, number, percent
+from sfcpart.report.numbers import counted, duration, number, percent
 
 if TYPE_CHECKING:
     from sfcpart.comparison import Comparison
     from sfcpart.measure.assessment import Assessment
+    from sfcpart.rebalance.replayed import Replay
+    from sfcpart.rebalance.result import Rebalance
 
-__all__ = ["judge", "judge_comparison", "listed"]
+__all__ = ["judge", "judge_comparison", "judge_rebalance", "judge_replay", "listed"]
 
 FAIR = 0.05
 """Imbalance up to which work counts as evenly shared."""
@@ -127,3 +129,52 @@ def _least_uneven(figures: list[dict[str, float | None]]) -> str:
     """Name the most even split where nothing else is known."""
     best = min(figures, key=lambda row: row["imbalance"] or 0.0)
     return f"{best['name']} is the most even, with an imbalance of {percent(best['imbalance'])}."
+
+
+def judge_rebalance(result: Rebalance) -> tuple[str, str]:
+    """Say in two sentences whether a re-split pays, and what moves.
+
+    Parameters
+    ----------
+    result : Rebalance
+
+    Returns
+    -------
+    (str, str)
+    """
+    moved, after = result.migration, result.after.total
+    told = result.verdict.text
+    first = f"{told[:1].upper()}{told[1:]}."
+    if not moved.moved_cells:
+        return first, "No cell moves."
+    least = "" if moved.times_least is None else f", {number(moved.times_least)} times the least"
+    balance = f"{percent(after['imbalance'])} after"
+    if result.before is not None:
+        balance = f"{percent(result.before.total['imbalance'])} before, {balance}"
+    cells = counted(moved.moved_cells, "cell")
+    verb = "moves" if moved.moved_cells == 1 else "move"
+    share = f"{percent(moved.moved_share)} of the work{least}"
+    return first, f"{cells} {verb} ({share}); imbalance {balance}."
+
+
+def judge_replay(found: Replay) -> tuple[str, str]:
+    """Say in two sentences which rule serves a run best, and what never re-splitting would cost.
+
+    Parameters
+    ----------
+    found : Replay
+
+    Returns
+    -------
+    (str, str)
+    """
+    rows = list(found.figures())
+    blind = [row for row in rows if row["rule"] not in ("hindsight", "best-period")] or rows
+    best, worst = (pick(blind, key=lambda row: row["seconds"]) for pick in (min, max))
+    first = f"Of the rules that do not know the future, {best['rule']} is predicted to be quickest"
+    first += f": {duration(best['seconds'])} with {counted(best['n_resplits'], 're-split')}"
+    first += f", {percent(best['regret'])} over the best in hindsight."
+    longer = worst["seconds"] / best["seconds"] - 1 if best["seconds"] else 0.0
+    if worst is best or not longer:
+        return first, "No rule differs from another here."
+    return first, f"The slowest, {worst['rule']}, takes {percent(longer)} longer."

@@ -16,6 +16,8 @@ from sfcpart.report.page.content import (
     Series,
     TablePlot,
 )
+from sfcpart.report.page.rebalance import rebalance_page
+from sfcpart.report.page.replay import replay_page
 from sfcpart.report.page.split import split_page
 from sfcpart.report.page.write import render_page, write_page
 
@@ -29,7 +31,9 @@ __all__ = [
     "Series",
     "TablePlot",
     "compare_page",
+    "rebalance_page",
     "render_page",
+    "replay_page",
     "split_page",
     "write_page",
 ]

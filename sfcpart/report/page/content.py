@@ -77,6 +77,7 @@ class Series:
 
     A "rule" has one y and goes across; a "tick" is a short line; "step" keeps its y to the next x.
     `label` names points: shown when pointed at, and beside dots if `named`.
+    Series with a `facet` stand in strips of their own, one for each facet.
     """
 
     name: str
@@ -86,6 +87,7 @@ class Series:
     label: Sequence[str] = ()
     colour: int = 0
     named: bool = False
+    facet: str = ""
 
 
 @dataclass(frozen=True, eq=False)

@@ -151,6 +151,7 @@ def _plain_chart(chart: Chart) -> dict[str, Any]:
                 "label": list(series.label),
                 "colour": series.colour,
                 "named": series.named,
+                "facet": series.facet,
             }
             for series in chart.series
         ],

@@ -3,7 +3,8 @@
 
 function drawChart(section, body, index) {
   const { series } = section;
-  if (series.length > 1) body.append(chartLegend(series));
+  const told = series.filter((one, k) => series.findIndex((other) => other.name === one.name) === k);
+  if (told.length > 1) body.append(chartLegend(told));
   const room = make("div");
   body.append(room);
   const redraw = () => {
@@ -33,17 +34,19 @@ function plotted(section, width, index) {
   const narrow = width < 520;
   const marks = [charts.gridY({ stroke: tone("grid"), strokeOpacity: 1, ticks: 5 })];
   for (const one of section.series) marks.push(...markOf(one, section));
+  const facets = section.series.some((one) => one.facet);
   const figure = charts.plot({
     width,
+    ...(facets ? { fy: { label: null, domain: [...new Set(section.series.map((one) => one.facet))] } } : {}),
     height: section.height,
     marginLeft: 60,
-    marginRight: 16,
+    marginRight: facets ? 92 : 16,
     marginBottom: 38,
     marginTop: 30,
     style: { fontSize: "12px", color: tone("soft"), fontFamily: "inherit" },
     inset: section.series.some((one) => one.named) ? 24 : 0,
     x: axisOf(section.x, narrow ? 5 : 10, section.series, "x"),
-    y: axisOf(section.y, 5, section.series, "y"),
+    y: axisOf(section.y, facets ? 3 : 5, section.series, "y"),
     marks,
   });
   figure.setAttribute("role", "img");
@@ -85,13 +88,14 @@ function markOf(one, section) {
   const charts = sfcpartCharts;
   const colour = tone(`mark-${one.colour % 7}`);
   const points = one.y.map((y, k) => ({ x: one.x[k] ?? 0, y, name: one.label[k] ?? one.name }));
+  const strip = one.facet ? { fy: () => one.facet } : {};
   const title = (point) =>
     `${point.name}\n${section.y.label}: ${written(point.y, section.y.form)}`;
   const told = charts.tip(
     points,
-    charts.pointerX({ x: "x", y: "y", title, fill: tone("sheet"), stroke: tone("line") }),
+    charts.pointerX({ x: "x", y: "y", ...strip, title, fill: tone("sheet"), stroke: tone("line") }),
   );
-  const there = { x: "x", y: "y" };
+  const there = { x: "x", y: "y", ...strip };
   switch (one.mark) {
     case "bar": {
       const gap = points.length > 250 ? 0 : 0.08;
