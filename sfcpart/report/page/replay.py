@@ -19,8 +19,8 @@ __all__ = ["replay_page"]
 _COLUMNS = (
     ColumnHead("rule", "rule", form="text"),
     ColumnHead("seconds", "run", "s", "Predicted time of the run.", "duration"),
-    ColumnHead("step_seconds", "steps", "s", "What of it are steps.", "duration"),
-    ColumnHead("resplit_seconds", "re-splits", "s", "What of it are re-splits.", "duration"),
+    ColumnHead("step_seconds", "in steps", "s", "What of it are steps.", "duration"),
+    ColumnHead("resplit_seconds", "in re-splits", "s", "What of it are re-splits.", "duration"),
     ColumnHead("n_resplits", "re-splits", "times", "How often it re-split.", "whole"),
     ColumnHead("moved_bytes", "moved", "bytes", "What moved in all.", "bytes"),
     ColumnHead("mean_imbalance", "imbalance", "", "Mean over frames.", "percent"),
@@ -94,13 +94,12 @@ def _regret(row: dict[str, Any]) -> str:
 
 def _over_time(found: Replay) -> Chart:
     """Show the imbalance of each rule frame by frame, and where it re-splits."""
-    start = np.concatenate(([0], np.cumsum(found.timetable.steps)[:-1]))
+    start = np.concatenate(([0], np.cumsum(found.timetable.steps)))
     series = []
     for outcome in found.outcomes:
         again = np.array(outcome.path.resplits, np.int64)
-        series.append(
-            Series("imbalance", "step", start, outcome.path.imbalance, facet=outcome.rule, colour=0)
-        )
+        lasting = np.append(outcome.path.imbalance, outcome.path.imbalance[-1:])
+        series.append(Series("imbalance", "step", start, lasting, facet=outcome.rule))
         dots = outcome.path.imbalance[again]
         series.append(Series("re-split", "dot", start[again], dots, facet=outcome.rule, colour=1))
     return Chart(
@@ -115,7 +114,11 @@ def _over_time(found: Replay) -> Chart:
 
 
 def _price(rows: list[dict[str, Any]]) -> Chart:
-    """Show the time of the run against the number of re-splits."""
+    """Show the time of the run against the number of re-splits; rules that agree share a dot."""
+    names: dict[tuple[int, float], list[str]] = {}
+    for row in rows:
+        place = row["n_resplits"], float(f"{row['seconds']:.3g}")
+        names.setdefault(place, []).append(row["rule"])
     return Chart(
         "Time of the run against re-splits",
         "Too few re-splits wait for the slowest part, too many pay for moving.",
@@ -125,9 +128,9 @@ def _price(rows: list[dict[str, Any]]) -> Chart:
             Series(
                 "rules",
                 "dot",
-                [row["n_resplits"] for row in rows],
-                [row["seconds"] for row in rows],
-                [str(row["rule"]) for row in rows],
+                [place[0] for place in names],
+                [place[1] for place in names],
+                [", ".join(agreed) for agreed in names.values()],
                 named=True,
             )
         ],
