@@ -22,20 +22,21 @@ from sfcpart.methods.curve.stretch import Stretch
 __all__ = ["place_cuts"]
 
 _NONE = np.array([-1, 0, 0], np.int64)
+_NO_ROWS = np.empty((0, 2), np.int64)
 
 
 @dataclass(eq=False)
 class _Choice:
     """An open choice: the end of chunk `part`, which begins at `origin`; the best end so far.
 
-    `origin` and `best` are (position, weight before, limited weight before); `fixed` are the (cut,
-    position) that were chosen since the choice before this one, if that ends at its best.
+    `origin` and `best` are (position, weight before, limited weight before); `fixed` holds the
+    (cut, position) that were chosen since the choice before this one, if that ends at its best.
     """
 
     part: int
     origin: Int64Array
     best: Int64Array = field(default_factory=_NONE.copy)
-    fixed: list[tuple[int, int]] = field(default_factory=list)
+    fixed: Int64Array = field(default_factory=_NO_ROWS.copy)
 
     @property
     def is_open(self) -> bool:
@@ -63,19 +64,19 @@ def place_cuts(here: Stretch, wanted: Int64Array, *, origin: Int64Array) -> Int6
     -------
     (P + 1,) int64
     """
-    certain: list[tuple[int, int]] = []
+    certain = [_NO_ROWS]
 
     def step(packed: Int64Array) -> Int64Array:
         choices = _walk(here, wanted, _unpack(packed))
-        certain.extend(choices[0].fixed)
-        choices[0].fixed = []
+        certain.append(choices[0].fixed)
+        choices[0].fixed = _NO_ROWS
         return _pack(choices)
 
     comm = here.line.comm
     left = _unpack(comm.relay(_pack([_Choice(0, origin)]), step, towards="last"))
     cut = np.full(len(here.cap) + 1, here.end, np.int64)
     cut[0] = here.begin
-    for rows in [*comm.allgather(_rows(certain)), *(_rows(choice.fixed) for choice in left)]:
+    for rows in [*comm.allgather(np.concatenate(certain)), *(choice.fixed for choice in left)]:
         cut[rows[:, 0]] = rows[:, 1]
     for choice in left:  # beyond the last rank there is no better end; then only empty parts
         if not choice.is_open:
@@ -83,28 +84,23 @@ def place_cuts(here: Stretch, wanted: Int64Array, *, origin: Int64Array) -> Int6
     return cut
 
 
-def _rows(pairs: list[tuple[int, int]]) -> Int64Array:
-    """Return pairs of numbers as an array."""
-    return np.array(pairs, np.int64).reshape(-1, 2)
-
-
 def _walk(here: Stretch, wanted: Int64Array, choices: list[_Choice]) -> list[_Choice]:
     """Make the choices that can be made on this stretch; return those that stay open."""
     if not len(here):
         return choices
     still_open: list[_Choice] = []
-    fixed: list[tuple[int, int]] = []
+    fixed: list[Int64Array] = []
     choice, follow = choices[0], choices[1:]
     while True:
-        fixed += choice.fixed
+        fixed.append(choice.fixed)
         if choice.is_open and not follow:
             choice, passed = _advance(here, wanted, choice)
-            fixed += passed
+            fixed.append(passed)
         at_end = choice.part >= len(here.cap) - 1
         if not at_end and _decide(here, wanted, choice, follow):
-            fixed.append((choice.part + 1, int(choice.best[0])))
+            fixed.append(np.array([[choice.part + 1, choice.best[0]]], np.int64))
         else:
-            choice.fixed, fixed = fixed, []
+            choice.fixed, fixed = np.concatenate(fixed), []
             still_open.append(choice)
             if at_end or choice.is_open:
                 return still_open
@@ -125,9 +121,7 @@ def _decide(here: Stretch, wanted: Int64Array, choice: _Choice, follow: list[_Ch
     return not choice.is_open
 
 
-def _advance(
-    here: Stretch, wanted: Int64Array, choice: _Choice
-) -> tuple[_Choice, list[tuple[int, int]]]:
+def _advance(here: Stretch, wanted: Int64Array, choice: _Choice) -> tuple[_Choice, Int64Array]:
     """Make as many choices as lie on this stretch without doubt."""
     origin = choice.origin.copy()
     cut = np.empty(len(here.cap) + 1, np.int64)
@@ -135,8 +129,8 @@ def _advance(
         choice.part, origin, wanted, here.span, here.line.total, here.line.limit, here.cap,
         here.limit, here.own_ptr, here.own, cut,
     )  # fmt: skip
-    passed = [(c, int(cut[c])) for c in range(choice.part + 1, part + 1)]
-    return _Choice(part, origin), passed
+    passed = np.arange(choice.part + 1, part + 1)
+    return _Choice(part, origin), np.stack([passed, cut[passed]], axis=1)
 
 
 def _pack(choices: list[_Choice]) -> Int64Array:
@@ -148,7 +142,7 @@ def _pack(choices: list[_Choice]) -> Int64Array:
             [choice.part, len(choice.fixed)],
             choice.origin,
             choice.best,
-            [number for pair in choice.fixed for number in pair],
+            choice.fixed.ravel(),
         )
     ]
     return np.concatenate(pieces).astype(np.int64)
@@ -160,7 +154,7 @@ def _unpack(packed: Int64Array) -> list[_Choice]:
     while len(packed):
         part, n_fixed = int(packed[0]), int(packed[1])
         stop = 8 + 2 * n_fixed
-        fixed = [(int(cut), int(at)) for cut, at in packed[8:stop].reshape(-1, 2)]
+        fixed = packed[8:stop].reshape(-1, 2)
         choices.append(_Choice(part, packed[2:5], packed[5:8].copy(), fixed))
         packed = packed[stop:]
     return choices

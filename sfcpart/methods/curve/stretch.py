@@ -80,7 +80,7 @@ class Stretch:
         if not len(self):
             return came
         brackets = came.brackets.copy()
-        n_own, capacity = -1, 2 * len(came.rows) + 64
+        n_own, capacity = -1, 2 * min(len(self.cap), len(self)) + 64
         while n_own < 0:
             own = np.empty((capacity, 3), np.int64)
             self.own_ptr = np.zeros(len(self.cap) + 2, np.int64)
