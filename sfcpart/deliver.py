@@ -14,16 +14,22 @@ import numpy as np
 
 from sfcpart import __version__
 from sfcpart.errors import InputError
-from sfcpart.files.parts.folder import check_output_folder, output_folder
+from sfcpart.files.parts.folder import check_output_folder, shared_folder
 from sfcpart.files.parts.tables import write_cell_part, write_part_table, write_summary
+from sfcpart.graph import CellGraph, cell_graph
+from sfcpart.partition import Partition
+from sfcpart.slices.gate import agreed
+from sfcpart.slices.gathering import gather_mesh
+from sfcpart.slices.graph_slice import GraphSlice
+from sfcpart.slices.mesh_slice import MeshSlice
+from sfcpart.slices.routing import gather_rows
 
 if TYPE_CHECKING:
-    from sfcpart.dtypes import Array
-    from sfcpart.graph import CellGraph
-    from sfcpart.halo import Across, Halo
+    from sfcpart.comm.base import Comm
+    from sfcpart.dtypes import Array, Int32Array
+    from sfcpart.halo import Across
     from sfcpart.measure import Assessment
     from sfcpart.mesh.mesh import Mesh
-    from sfcpart.partition import Partition
     from sfcpart.report.page import Page
 
 __all__ = ["FORMATS", "Delivery", "deliver", "file_digest"]
@@ -48,46 +54,97 @@ class Delivery:
 
 def deliver(
     folder: str | PathLike[str],
-    mesh: Mesh,
+    mesh: Mesh | MeshSlice,
     partition: Partition,
     *,
     assessment: Assessment,
-    graph: CellGraph | None,
+    graph: CellGraph | GraphSlice | None,
     how: Delivery,
     source: Path | None,
     options: Mapping[str, Any],
     more: Callable[[Path], Mapping[str, Any]] = lambda place: {},
     page: Callable[[Page], Page] = lambda page: page,
 ) -> Path:
-    """Write the folder and return where it is.
+    """Write the folder and return where it is (collective with several ranks).
 
     `more` writes further files into the folder and returns what the summary tells about them;
-    `page` turns the report page of the split into that of what is delivered.
+    `page` turns the report page of the split into that of what is delivered. Both are called on
+    rank 0.
     """
+    held = mesh if isinstance(mesh, MeshSlice) else MeshSlice.whole(mesh)
+    rows = GraphSlice.whole(graph) if isinstance(graph, CellGraph) else graph
+    comm = held.comm
     _check_formats(how.formats, source)
-    target = check_output_folder(folder, overwrite=how.overwrite)
-    digest = "" if source is None else file_digest(source)
-    with output_folder(target, overwrite=how.overwrite) as place:
-        _write_parts(place, mesh, partition, graph=graph, how=how, source=source, digest=digest)
-        write_cell_part(place / "cell_part.npy", partition)
-        write_part_table(place / "parts.csv", _columns(assessment))
+    target = agreed(comm, lambda: check_output_folder(folder, overwrite=how.overwrite))
+    digest = _digest_for_all(source, comm)
+    with shared_folder(target, overwrite=how.overwrite, comm=comm) as place:
+        _write_parts(place, held, partition, graph=rows, how=how, source=source, digest=digest)
+        write_cell_part(place / "cell_part.npy", partition, comm=comm)
         title = how.title if how.title is not None else "" if source is None else source.name
-        if how.picture:
-            _draw(place, mesh, partition, assessment=assessment, graph=graph, title=title)
-        if how.report:
-            _report(
-                place / "report.html",
-                mesh,
-                partition,
-                assessment=assessment,
-                graph=graph,
-                title=title,
-                options=options,
-                turn=page,
-            )
-        summary = _summary(mesh, assessment, source=source, digest=digest, options=options)
-        write_summary(place / "summary.json", {**summary, **more(place)})
+        about = {"assessment": assessment, "title": title, "options": options, "page": page}
+        if how.picture or how.report:
+            _show(place, held, partition, graph=graph, how=how, about=about)
+        summary = _summary(held, assessment, source=source, digest=digest, options=options)
+        agreed(comm, lambda: _write_tables(place, assessment, summary, more, comm))
     return target
+
+
+def _digest_for_all(source: Path | None, comm: Comm) -> str:
+    """Return the digest of the input, which rank 0 reads."""
+    if source is None:
+        return ""
+    made = agreed(comm, lambda: file_digest(source) if comm.rank == 0 else "")
+    return str(comm.bcast_object(made))
+
+
+def _write_tables(
+    place: Path,
+    assessment: Assessment,
+    summary: Mapping[str, Any],
+    more: Callable[[Path], Mapping[str, Any]],
+    comm: Comm,
+) -> None:
+    """Write figures, on rank 0."""
+    if comm.rank == 0:
+        write_part_table(place / "parts.csv", _columns(assessment))
+        write_summary(place / "summary.json", {**summary, **more(place)})
+
+
+def _show(
+    place: Path,
+    held: MeshSlice,
+    partition: Partition,
+    *,
+    graph: CellGraph | GraphSlice | None,
+    how: Delivery,
+    about: Mapping[str, Any],
+) -> None:
+    """Draw the picture and write the report page, on rank 0, which gathers the mesh for it."""
+    whole = gather_mesh(held)
+    cell_part = gather_rows(held.comm, partition.cell_part)
+    agreed(held.comm, lambda: _shown(place, whole, cell_part, partition.n_parts, graph, how, about))
+
+
+def _shown(
+    place: Path,
+    mesh: Mesh | None,
+    cell_part: Int32Array,
+    n_parts: int,
+    graph: CellGraph | GraphSlice | None,
+    how: Delivery,
+    about: Mapping[str, Any],
+) -> None:
+    """Draw and write what shows the whole mesh."""
+    if mesh is None:
+        return
+    known = graph if graph is None or isinstance(graph, CellGraph) else cell_graph(mesh)
+    partition = Partition.from_array(cell_part, n_parts)
+    common = {"assessment": about["assessment"], "graph": known, "title": about["title"]}
+    if how.picture:
+        _draw(place, mesh, partition, **common)
+    if how.report:
+        path, options = place / "report.html", about["options"]
+        _report(path, mesh, partition, **common, options=options, turn=about["page"])
 
 
 def _check_formats(formats: tuple[str, ...], source: Path | None) -> None:
@@ -111,33 +168,36 @@ def file_digest(path: Path) -> str:
 
 def _write_parts(
     place: Path,
-    mesh: Mesh,
+    held: MeshSlice,
     partition: Partition,
     *,
-    graph: CellGraph | None,
+    graph: GraphSlice | None,
     how: Delivery,
     source: Path | None,
     digest: str,
 ) -> None:
     """Write the parts in each format asked for."""
     if "same" in how.formats:
-        from sfcpart.files.meshes.own_format import write_in_own_format
-
         assert source is not None
-        write_in_own_format(_own_place(place, source), source, {"part": partition.cell_part})
+        cell_part = gather_rows(held.comm, partition.cell_part)
+        agreed(held.comm, lambda: _write_same(place, source, cell_part, held.comm))
     if how.formats == ("same",):
         return
-    halo = _halo(mesh, graph, partition, how)
+    from sfcpart.halo import build_halo_slice
+
+    # bare centres have no neighbours and so no halo
+    layers = how.layers if graph is not None else 0
+    halo = build_halo_slice(held, graph, partition, layers=layers, across=how.across)
     if "vtu" in how.formats:
         from sfcpart.files.parts.vtu import write_vtu_pieces
 
-        write_vtu_pieces(place, mesh, partition=partition, halo=halo, input_digest=digest)
+        write_vtu_pieces(place, held, partition=partition, halo=halo, input_digest=digest)
     if "vtkhdf" in how.formats:
         from sfcpart.files.parts.vtkhdf_write import write_vtkhdf
 
         write_vtkhdf(
             place / "parts.vtkhdf",
-            mesh,
+            held,
             partition=partition,
             halo=halo,
             compress=how.compress,
@@ -145,18 +205,18 @@ def _write_parts(
         )
 
 
+def _write_same(place: Path, source: Path, cell_part: Int32Array, comm: Comm) -> None:
+    """Write a copy of the input with the parts, on rank 0, which gathers them."""
+    if comm.rank == 0:
+        from sfcpart.files.meshes.own_format import write_in_own_format
+
+        write_in_own_format(_own_place(place, source), source, {"part": cell_part})
+
+
 def _own_place(place: Path, source: Path) -> Path:
     """Name the copy of the input; `parts.vtkhdf` is the file a solver loads."""
     suffix = source.suffix
     return place / (f"mesh{suffix}" if suffix.lower() == ".vtkhdf" else f"parts{suffix}")
-
-
-def _halo(mesh: Mesh, graph: CellGraph | None, partition: Partition, how: Delivery) -> Halo:
-    """Build the exchange lists; bare centres have no neighbours and so no halo."""
-    from sfcpart.halo import build_halo
-
-    layers = how.layers if graph is not None else 0
-    return build_halo(mesh, graph, partition, layers=layers, across=how.across)
 
 
 def _draw(
@@ -214,7 +274,7 @@ def _columns(assessment: Assessment) -> dict[str, Array]:
 
 
 def _summary(
-    mesh: Mesh,
+    held: MeshSlice,
     assessment: Assessment,
     *,
     source: Path | None,
@@ -229,9 +289,9 @@ def _summary(
         "input": {
             "path": None if source is None else str(source),
             "digest": digest or None,
-            "n_cells": mesh.n_cells,
-            "n_points": mesh.n_points,
-            "dim": mesh.dim,
+            "n_cells": held.n_cells,
+            "n_points": held.n_points,
+            "dim": held.mesh.dim,
         },
         "options": dict(options),
         **assessment.to_json_dict(),

@@ -13,6 +13,8 @@ from sfcpart.graph import CellGraph, cell_graph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
 from sfcpart.plan import Weights, part_speeds, plan_problem, weights_of
+from sfcpart.slices.graph_slice import GraphSlice, graph_slice
+from sfcpart.slices.mesh_slice import MeshSlice
 
 if TYPE_CHECKING:
     from sfcpart.comparison import Comparison
@@ -22,11 +24,11 @@ if TYPE_CHECKING:
     from sfcpart.methods.problem import Cuts
     from sfcpart.weights import FaceWeight
 
-__all__ = ["assess", "compare", "graph_of", "inspect"]
+__all__ = ["assess", "compare", "graph_of", "inspect", "rows_of_graph"]
 
 
 def assess(
-    mesh: Mesh,
+    mesh: Mesh | MeshSlice,
     partition: Partition | ArrayLike,
     *,
     weights: Weights = None,
@@ -39,8 +41,10 @@ def assess(
 
     Parameters
     ----------
-    mesh : Mesh
+    mesh : Mesh or MeshSlice
+        With a slice all ranks measure together (`sfcpart.read_slice`).
     partition : Partition or (n_cells,) integers
+        Of the cells here; of a slice, a `Partition`, since no rank knows how many parts there are.
     weights, speeds, limit_weights, limits : optional
         As for `split`.
     step_model : StepModel, optional
@@ -65,19 +69,19 @@ def assess(
     >>> sfcpart.assess(mesh, [0, 1]).total["cut_faces"]
     1
     """
-    from sfcpart.measure import assess_partition
+    from sfcpart.measure import assess_partition, assess_slice
 
     partition = _as_partition(partition)
-    return assess_partition(
-        mesh,
-        graph_of(mesh),
-        partition,
-        weights=weights_of(mesh, weights),
-        speeds=None if speeds is None else part_speeds(speeds, partition.n_parts),
-        step_model=step_model,
-        limit_weights=weights_of(mesh, limit_weights),
-        limits=limits,
-    )
+    given: dict[str, Any] = {
+        "weights": weights_of(mesh, weights),
+        "speeds": None if speeds is None else part_speeds(speeds, partition.n_parts),
+        "step_model": step_model,
+        "limit_weights": weights_of(mesh, limit_weights),
+        "limits": limits,
+    }
+    if isinstance(mesh, MeshSlice):
+        return assess_slice(mesh, rows_of_graph(mesh), partition, **given)
+    return assess_partition(mesh, graph_of(mesh), partition, **given)
 
 
 def compare(
@@ -217,6 +221,13 @@ def _time_graph(mesh: Mesh, repeat: int) -> Metered | None:
     graph, took = metered(lambda: cell_graph(replace(mesh)), repeat=repeat)
     mesh.keep("graph", lambda: graph)
     return took
+
+
+def rows_of_graph(held: MeshSlice) -> GraphSlice | None:
+    """Return a slice's rows of the cell graph, or None for a mesh known by its centres only."""
+    if held.mesh.points is None and held.mesh.faces is None:
+        return None
+    return graph_slice(held)
 
 
 def graph_of(mesh: Mesh) -> CellGraph | None:

@@ -7,9 +7,10 @@ from os import PathLike
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from sfcpart.api.judge import assess, graph_of
+from sfcpart.api.judge import assess, graph_of, rows_of_graph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
+from sfcpart.slices.mesh_slice import MeshSlice
 
 if TYPE_CHECKING:
     from sfcpart.halo import Across
@@ -20,7 +21,7 @@ __all__ = ["write_split"]
 
 def write_split(
     folder: str | PathLike[str],
-    mesh: Mesh,
+    mesh: Mesh | MeshSlice,
     partition: Partition,
     *,
     assessment: Assessment | None = None,
@@ -42,8 +43,10 @@ def write_split(
     folder : path
         The folder to make; refused if it holds something, unless `overwrite` and all of it was
         written by sfcpart.
-    mesh : Mesh
+    mesh : Mesh or MeshSlice
+        With a slice all ranks write together (`sfcpart.read_slice`), the same bytes as one.
     partition : Partition
+        Of the cells here.
     assessment : Assessment, optional
         Figures to write; measured with defaults if missing.
     formats : sequence of {"vtkhdf", "vtu", "same"}
@@ -96,7 +99,7 @@ def write_split(
         mesh,
         partition,
         assessment=assess(mesh, partition) if assessment is None else assessment,
-        graph=graph_of(mesh),
+        graph=rows_of_graph(mesh) if isinstance(mesh, MeshSlice) else graph_of(mesh),
         how=Delivery(tuple(formats), layers, across, overwrite, picture, compress, title, report),
         source=None if source is None else Path(source),
         options={} if options is None else options,

@@ -13,7 +13,7 @@ from __future__ import annotations
 import errno
 import os
 import shutil
-from contextlib import contextmanager
+from contextlib import ExitStack, contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -29,12 +29,15 @@ from sfcpart.files.parts.replacing import (
     temporary_beside,
     write_manifest,
 )
+from sfcpart.slices.gate import agreed
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
     from os import PathLike
 
-__all__ = ["MANIFEST", "check_output_folder", "output_folder"]
+    from sfcpart.comm.base import Comm
+
+__all__ = ["MANIFEST", "check_output_folder", "output_folder", "shared_folder"]
 
 _NO_ROOM = frozenset({errno.ENOSPC, errno.EDQUOT, errno.EFBIG})
 
@@ -84,9 +87,7 @@ def output_folder(path: str | PathLike[str], *, overwrite: bool = False) -> Iter
         check_output_folder(target, overwrite=overwrite)
         put_in_place(temporary, target)
     except FileError as error:
-        # The user asked for `target` and never saw the temporary name.
-        text = str(error).replace(str(temporary), str(target))
-        raise FileError(text + _advice(error.__cause__)) from error
+        raise _told(error, temporary, target) from error
     except SfcpartError:
         raise
     except OSError as error:
@@ -97,6 +98,48 @@ def output_folder(path: str | PathLike[str], *, overwrite: bool = False) -> Iter
         else:
             remove_result(temporary)
         os.close(lock)
+
+
+@contextmanager
+def shared_folder(
+    path: str | PathLike[str], *, overwrite: bool = False, comm: Comm
+) -> Iterator[Path]:
+    """Give all ranks the temporary folder of `output_folder`, which rank 0 makes and puts in place.
+
+    Parameters
+    ----------
+    path, overwrite
+        As for `output_folder`, the same on all ranks.
+    comm : Comm
+        What the block raises must be raised by all ranks (`Comm.check`).
+
+    Yields
+    ------
+    pathlib.Path
+        The same folder on all ranks.
+
+    Raises
+    ------
+    FileError
+        As `output_folder`, on all ranks alike.
+    """
+    with ExitStack() as stack:
+        made = agreed(
+            comm,
+            lambda: (
+                stack.enter_context(output_folder(path, overwrite=overwrite))
+                if comm.rank == 0
+                else None
+            ),
+        )
+        place = Path(comm.bcast_object(made))
+        try:
+            yield place
+        except FileError as error:
+            if comm.rank == 0:
+                raise  # `output_folder` tells it
+            raise _told(error, place, Path(os.path.realpath(path))) from error
+        agreed(comm, stack.close)
 
 
 def check_output_folder(path: str | PathLike[str], *, overwrite: bool = False) -> Path:
@@ -160,14 +203,22 @@ def _check_writable(target: Path) -> None:
         raise FileError(f"{target}: cannot be made, because {parent} may not be written")
 
 
+def _told(error: FileError, temporary: Path, target: Path) -> FileError:
+    """Name the folder that the user asked for; nobody ever saw the temporary name."""
+    text = str(error).replace(str(temporary), str(target))
+    return FileError(text + _advice(error))
+
+
 def _cannot(target: Path, error: OSError) -> FileError:
     """Say in one line why the folder could not be written."""
     reason = " ".join(str(error.strerror or error).split())
     return FileError(f"{target}: cannot be written: {reason}{_advice(error)}")
 
 
-def _advice(error: BaseException | None) -> str:
-    """Say what to do if there was no room."""
-    if isinstance(error, OSError) and error.errno in _NO_ROOM:
+def _advice(error: OSError) -> str:
+    """Say what to do if there was no room, here or, as its text tells, on another rank."""
+    cause = error.__cause__
+    full = isinstance(cause, OSError) and cause.errno in _NO_ROOM
+    if full or any(os.strerror(number) in str(error) for number in _NO_ROOM):
         return "; make room or give another place (nothing was left there)"
     return ""

@@ -6,17 +6,23 @@ import csv
 import json
 import math
 from collections.abc import Mapping, Sequence
+from io import BytesIO
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import ArrayLike
 
+from sfcpart.comm import SerialComm
+from sfcpart.dtypes import PART
 from sfcpart.errors import FileError, InputError
+from sfcpart.files.parts.turns import write_in_turn
+from sfcpart.slices.gate import agreed
 
 if TYPE_CHECKING:
     from os import PathLike
 
+    from sfcpart.comm.base import Comm
     from sfcpart.partition import Partition
 
 __all__ = ["json_text", "write_cell_part", "write_part_table", "write_summary"]
@@ -71,17 +77,51 @@ def write_summary(path: str | PathLike[str], summary: Mapping[str, Any]) -> None
         raise _cannot(path, error) from error
 
 
-def write_cell_part(path: str | PathLike[str], partition: Partition) -> None:
+def write_cell_part(
+    path: str | PathLike[str], partition: Partition, *, comm: Comm | None = None
+) -> None:
     """Write the part of each cell, in the file order of the mesh, as a .npy array of int32.
+
+    Parameters
+    ----------
+    path : path
+        The file, replaced if it exists.
+    partition : Partition
+        Of this rank's cells.
+    comm : Comm, optional
+        Ranks that write together, each its slice of the cells; this process alone by default.
 
     Raises
     ------
     FileError
         If the file cannot be written.
+
+    Notes
+    -----
+    Source: NumPy's documentation, "NPY format", version 1.0.
     """
+    comm = comm or SerialComm()
+    count = np.array([partition.n_cells], np.int64)
+    n_cells, first = int(comm.allreduce(count)[0]), int(comm.exscan(count)[0])
+    header = _npy_header(n_cells)
+    agreed(comm, lambda: _begin(Path(path), header) if comm.rank == 0 else None)
+    offset = len(header) + first * np.dtype(PART).itemsize
+    rows = np.ascontiguousarray(partition.cell_part, "<i4")
+    write_in_turn(Path(path), [(offset, rows)] if len(rows) else [], comm)
+
+
+def _npy_header(n_cells: int) -> bytes:
+    """Return how a .npy file of so many int32 begins."""
+    about = {"descr": "<i4", "fortran_order": False, "shape": (n_cells,)}
+    sink = BytesIO()
+    np.lib.format.write_array_header_1_0(sink, about)
+    return sink.getvalue()
+
+
+def _begin(path: Path, header: bytes) -> None:
+    """Write the first bytes of a file."""
     try:
-        with Path(path).open("wb") as file:
-            np.save(file, partition.cell_part, allow_pickle=False)
+        path.write_bytes(header)
     except OSError as error:
         raise _cannot(path, error) from error
 
