@@ -17,6 +17,7 @@ from sfcpart.files.weights_file import is_cost_file, read_costs
 from sfcpart.graph import CellGraph, cell_graph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.methods.problem import Cuts, Problem
+from sfcpart.slices.gate import agreed
 from sfcpart.slices.graph_slice import graph_slice
 from sfcpart.slices.mesh_slice import MeshSlice
 from sfcpart.weights import (
@@ -94,7 +95,6 @@ def plan_problem(
             "part_speed": part_speeds(speeds, n_parts),
             "tolerance": _tolerance(tolerance),
             "level_sizes": _levels(levels, n_parts),
-            "group": _groups(mesh, together, pairs, periodic),
             "face_weight": _face_weight(face_weight),
             "seed": _whole(seed, "seed", least=0),
             "cuts": _cuts(cuts),
@@ -108,6 +108,7 @@ def plan_problem(
         n_parts=n_parts,
         graph=lambda: _graph_of(given, held),
         place=partial(_place, mesh),
+        group=_groups(held, together, pairs, periodic),
         **_work(work, **whole),
         **_limits(second, limits, n_parts, **whole),
         **wish,
@@ -292,24 +293,32 @@ def _limits(
 
 
 def _groups(
-    mesh: Mesh,
+    held: MeshSlice,
     together: ArrayLike | str | Sequence[str] | None,
     pairs: ArrayLike | None,
     periodic: Sequence[tuple[str, str]],
 ) -> Int64Array | None:
-    """Unite all that must stay together into one grouping, None if all cells are free."""
-    found: list[Int64Array] = []
-    for values in _together_values(mesh, together):
+    """Unite all that must stay together, None if all cells are free (collective)."""
+    fields = agreed(held.comm, lambda: _checked_together(held.mesh, together))
+    found = [groups_from_field(values, held=held) for values in fields]
+    if pairs is not None:
+        found.append(groups_from_pairs(pairs, held=held))
+    found += [groups_from_boundaries(held, sides) for sides in periodic]
+    return join_groups(*found, held=held) if found else None
+
+
+def _checked_together(
+    mesh: Mesh, together: ArrayLike | str | Sequence[str] | None
+) -> list[ArrayLike]:
+    """Return arrays with one value a cell."""
+    fields = _together_values(mesh, together)
+    for values in fields:
         if np.shape(values) != (mesh.n_cells,):
             raise WeightError(
                 f"the group field has shape {np.shape(values)}; wanted one number for each of "
                 f"the {mesh.n_cells} cells"
             )
-        found.append(groups_from_field(values))
-    if pairs is not None:
-        found.append(groups_from_pairs(pairs, n_cells=mesh.n_cells))
-    found += [groups_from_boundaries(mesh, sides) for sides in periodic]
-    return join_groups(*found) if found else None
+    return fields
 
 
 def _together_values(

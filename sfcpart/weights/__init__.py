@@ -11,12 +11,8 @@ from __future__ import annotations
 
 from sfcpart.weights.cells import cell_weights, counts_faces
 from sfcpart.weights.faces import FACE_WEIGHTS, FaceWeight, face_weights
-from sfcpart.weights.groups import (
-    groups_from_boundaries,
-    groups_from_field,
-    groups_from_pairs,
-    join_groups,
-)
+from sfcpart.weights.groups import groups_from_field, groups_from_pairs, join_groups
+from sfcpart.weights.periodic import groups_from_boundaries
 from sfcpart.weights.quantise import Quantised, quantise, quantise_limits
 from sfcpart.weights.spec import WeightSpec, parse_weights
 

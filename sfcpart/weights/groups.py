@@ -1,76 +1,135 @@
 """Cells that must stay together, as one group number a cell: -1 is free.
 
 Groups come from a field (equal values), from pairs of cells, and from two boundary groups that are
-copies of each other shifted by a constant (periodic or coupled boundaries). `join_groups` unites
-several: cells that any of them holds together stay together.
+copies of each other shifted by a constant (`periodic`). `join_groups` unites several: cells that
+any of them holds together stay together.
+
+Over ranks each holds the numbers of its slice of the cells. Values and group numbers meet at a
+rank that their bits choose, cells that hang together are found by `sfcpart.slices.linking`. No
+rank holds more than its cells, and the values and pairs that fall to it.
 """
 
 from __future__ import annotations
 
+import zlib
+
 import numpy as np
 from numpy.typing import ArrayLike
 
-from sfcpart.dtypes import GID, Array, FloatArray, Int64Array, IntArray
+from sfcpart.comm import SerialComm
+from sfcpart.comm.base import Comm
+from sfcpart.dtypes import GID, Array, Int64Array
 from sfcpart.errors import WeightError
-from sfcpart.mesh.kinds import kind_tables
-from sfcpart.mesh.mesh import BoundaryGroup, Mesh
+from sfcpart.slices.gate import agreed
+from sfcpart.slices.linking import lowest_of_pairs
+from sfcpart.slices.mesh_slice import MeshSlice
+from sfcpart.slices.routing import dealing
 
-__all__ = ["groups_from_boundaries", "groups_from_field", "groups_from_pairs", "join_groups"]
+__all__ = ["groups_from_field", "groups_from_pairs", "join_groups"]
 
 
-def groups_from_field(values: ArrayLike) -> Int64Array:
+def groups_from_field(values: ArrayLike, *, held: MeshSlice | None = None) -> Int64Array:
     """Keep cells with equal values together.
 
     Parameters
     ----------
-    values : (n_cells,) numbers or text
+    values : (n_local,) numbers or text
         Negative numbers, NaN and empty text are free.
+    held : MeshSlice, optional
+        The cells of this rank, if they are not all; all ranks call then.
 
     Returns
     -------
-    (n_cells,) int64
-        Integers are kept as group numbers; other values are numbered in ascending order.
+    (n_local,) int64
+        Integers are kept as group numbers; other groups are named by their lowest cell.
 
     Raises
     ------
     WeightError
         If there is not one value a cell.
 
+    Notes
+    -----
+    O(n log n); 16 bytes (or the size of the text and 8) for each value that a rank has.
+
     Examples
     --------
     >>> groups_from_field([7, -1, 7, 2]).tolist(), groups_from_field([0.5, np.nan, 0.5]).tolist()
     ([7, -1, 7, 2], [0, -1, 0])
     """
+    comm: Comm = SerialComm() if held is None else held.comm
+    array = agreed(comm, lambda: _checked_field(values))
+    if array.dtype.kind in "bi":
+        return np.maximum(array.astype(GID), -1)
+    free = _free(array)
+    value, first, inverse = np.unique(array[~free], return_index=True, return_inverse=True)
+    first_gid = 0 if held is None else held.first_gid
+    cell = first_gid + np.flatnonzero(~free)[first]
+    group = np.full(len(array), -1, GID)
+    group[~free] = _lowest_by_value(value, cell, comm)[inverse.reshape(-1)]
+    return group
+
+
+def _checked_field(values: ArrayLike) -> Array:
+    """Return one number or text a cell; floats and texts of one width on all ranks."""
     array = np.asarray(values)
     if array.ndim != 1 or array.dtype.kind not in "biufUS":
         raise WeightError(
             f"the group field has shape {array.shape} and type {array.dtype}; "
             "wanted one number a cell"
         )
-    if array.dtype.kind in "bi":
-        return np.maximum(array.astype(GID), -1)
-    free = array == "" if array.dtype.kind == "U" else np.zeros(len(array), np.bool_)
     if array.dtype.kind == "f":
-        free = ~(array >= 0)
-    if array.dtype.kind == "S":
-        free = array == b""
-    group = np.full(len(array), -1, GID)
-    group[~free] = np.unique(array[~free], return_inverse=True)[1]
-    return group
+        return array.astype(np.float64) + 0.0  # -0.0 and 0.0 are equal
+    return array.astype(np.uint64) if array.dtype.kind == "u" else array
 
 
-def groups_from_pairs(pairs: ArrayLike, *, n_cells: int) -> Int64Array:
+def _free(array: Array) -> Array:
+    """Mark values that stand for no group."""
+    if array.dtype.kind == "f":
+        return np.asarray(~(array >= 0))
+    if array.dtype.kind == "u":
+        return np.zeros(len(array), np.bool_)
+    return np.asarray(array == array.dtype.type())
+
+
+def _lowest_by_value(value: Array, cell: Int64Array, comm: Comm) -> Int64Array:
+    """Return for each of this rank's values the lowest of the cells that ranks give for it."""
+    if value.dtype.kind in "US":
+        letters = np.array([value.dtype.itemsize // np.dtype(f"{value.dtype.kind}1").itemsize])
+        value = value.astype(f"{value.dtype.kind}{max(1, comm.allreduce(letters, 'max')[0])}")
+        home = np.array([zlib.crc32(str(text).encode()) for text in value.tolist()], np.uint64)
+    else:
+        home = value.view(np.uint64)
+    way = dealing(comm, (home % np.uint64(comm.size)).astype(np.int64))
+    came, lowest = way.forward(value), way.forward(cell)
+    _, which = np.unique(came, return_inverse=True)
+    return way.back(_least(lowest, which.reshape(-1)))
+
+
+def _least(values: Int64Array, which: Int64Array) -> Int64Array:
+    """Return for each row the least value of the rows of its kind."""
+    least = np.full(int(which.max(initial=-1)) + 1, np.iinfo(GID).max)
+    np.minimum.at(least, which, values)
+    return least[which]
+
+
+def groups_from_pairs(
+    pairs: ArrayLike, *, n_cells: int | None = None, held: MeshSlice | None = None
+) -> Int64Array:
     """Keep the cells of each pair together, and whatever pairs link.
 
     Parameters
     ----------
     pairs : (m, 2) integers
-        Cells.
-    n_cells : int
+        Cells, by number in the whole mesh. Ranks may hold different pairs.
+    n_cells : int, optional
+        Number of cells, if one rank holds all.
+    held : MeshSlice, optional
+        The cells of this rank, if they are not all; all ranks call then.
 
     Returns
     -------
-    (n_cells,) int64
+    (n_local,) int64
         A group is named by its lowest cell.
 
     Raises
@@ -80,16 +139,24 @@ def groups_from_pairs(pairs: ArrayLike, *, n_cells: int) -> Int64Array:
 
     Notes
     -----
-    O(n + m), connected components by scipy.
+    O(n + m log m) (`sfcpart.slices.linking`).
 
     Examples
     --------
     >>> groups_from_pairs([[4, 1], [1, 3]], n_cells=5).tolist()
     [-1, 1, -1, 1, 1]
     """
+    comm: Comm = SerialComm() if held is None else held.comm
+    first = np.array([0, n_cells or 0], GID) if held is None else held.rank_first
+    array = agreed(comm, lambda: _checked_pairs(pairs, int(first[-1])))
+    return group_of_pairs(array, first=first, comm=comm)
+
+
+def _checked_pairs(pairs: ArrayLike, n_cells: int) -> Int64Array:
+    """Return pairs of cells."""
     array = np.asarray(pairs)
     if array.size == 0:
-        return np.full(n_cells, -1, GID)
+        return np.empty((0, 2), GID)
     if array.ndim != 2 or array.shape[1] != 2 or array.dtype.kind not in "iu":
         raise WeightError(
             f"pairs have shape {array.shape} and type {array.dtype}; "
@@ -100,22 +167,38 @@ def groups_from_pairs(pairs: ArrayLike, *, n_cells: int) -> Int64Array:
         raise WeightError(
             f"pair {row} is {tuple(array[row].tolist())}; cells go from 0 to {n_cells - 1}"
         )
-    return _united(array.astype(GID), n_cells)
+    return array.astype(GID)
 
 
-def join_groups(*groups: Int64Array) -> Int64Array:
+def group_of_pairs(pairs: Int64Array, *, first: Int64Array, comm: Comm) -> Int64Array:
+    """Name the cells that pairs link by the lowest of them; the rest are free (collective)."""
+    gid, lowest = lowest_of_pairs(pairs[pairs[:, 0] != pairs[:, 1]], first=first, comm=comm)
+    low, high = (int(edge) for edge in first[comm.rank : comm.rank + 2])
+    group = np.full(high - low, -1, GID)
+    group[gid - low] = lowest
+    return group
+
+
+def join_groups(*groups: Int64Array, held: MeshSlice | None = None) -> Int64Array:
     """Unite groupings of the same cells: what any of them holds together stays together.
 
     Parameters
     ----------
-    *groups : (n_cells,) int64
+    *groups : (n_local,) int64
         Group numbers, -1 for free cells.
+    held : MeshSlice, optional
+        The cells of this rank, if they are not all; all ranks call then.
 
     Returns
     -------
-    (n_cells,) int64
+    (n_local,) int64
         A group is named by its lowest cell; a group of one cell is free. A single grouping is
         returned as it is.
+
+    Notes
+    -----
+    Cells are united on each rank by scipy's connected components, those of groups that have cells
+    on several ranks then by `sfcpart.slices.linking`.
 
     Examples
     --------
@@ -125,164 +208,41 @@ def join_groups(*groups: Int64Array) -> Int64Array:
     if len(groups) == 1:
         return groups[0]
     n_cells = len(groups[0])
+    comm: Comm = SerialComm() if held is None else held.comm
+    first = np.array([0, n_cells], GID) if held is None else held.rank_first
+    first_gid = int(first[comm.rank])
     links = []
     for group in groups:
         order = np.argsort(group, kind="stable")
         order = order[np.count_nonzero(group < 0) :]
         same = group[order][1:] == group[order][:-1]
         links.append(np.stack([order[:-1][same], order[1:][same]], axis=1))
-    return _united(np.concatenate(links).astype(GID), n_cells)
+    lowest = _lowest_here(np.concatenate(links).astype(GID), n_cells)
+    apart = np.concatenate([_links_over_ranks(group, lowest + first_gid, comm) for group in groups])
+    gid, linked = lowest_of_pairs(apart, first=first, comm=comm)
+    name = np.arange(first_gid, first_gid + n_cells)
+    name[gid - first_gid] = linked
+    alone = np.bincount(lowest, minlength=n_cells) == 1
+    alone[gid - first_gid] = False
+    return np.where(alone[lowest], -1, name[lowest])
 
 
-def _united(links: Int64Array, n_cells: int) -> Int64Array:
-    """Name connected cells by the lowest of them; the rest are free."""
+def _lowest_here(links: Int64Array, n_cells: int) -> Int64Array:
+    """Return the lowest cell that each is linked with."""
     from scipy.sparse import coo_array
     from scipy.sparse.csgraph import connected_components
 
     graph = coo_array((np.ones(len(links), np.int8), links.T), shape=(n_cells, n_cells))
     label = connected_components(graph.tocsr(), directed=False)[1]
     _, lowest = np.unique(label, return_index=True)
-    group = lowest[label].astype(GID)
-    group[np.bincount(label, minlength=1)[label] == 1] = -1
-    return group
+    return np.asarray(lowest[label], GID)
 
 
-def groups_from_boundaries(
-    mesh: Mesh, sides: tuple[str, str], *, tolerance: float = 1e-6
-) -> Int64Array:
-    """Keep the two sides of a periodic or coupled boundary together.
-
-    The elements of one boundary group are matched with those of the other by their centres, after
-    the mean offset between the groups has been taken out; the two cells behind a matched pair
-    become one group.
-
-    Parameters
-    ----------
-    mesh : Mesh
-        With points and boundary groups.
-    sides : pair of str
-        Names of the two groups.
-    tolerance : float
-        Largest distance of matched centres, as a share of the extent of the first group.
-
-    Returns
-    -------
-    (n_cells,) int64
-
-    Raises
-    ------
-    WeightError
-        If a group is unknown, the groups differ in size, an element has no partner, or no cell
-        has it as a face.
-
-    Notes
-    -----
-    O(n log n), nearest neighbours by scipy's k-d tree.
-    """
-    from scipy.spatial import cKDTree
-
-    first, second = sides
-    pair = [_boundary_group(mesh, name) for name in sides]
-    sizes = [len(group.kind) for group in pair]
-    if sizes[0] != sizes[1]:
-        raise WeightError(
-            f"boundary {first!r} has {sizes[0]} elements and {second!r} {sizes[1]}; "
-            "a periodic pair has as many on both sides"
-        )
-    center = [_element_centers(mesh, group) for group in pair]
-    center[1] = center[1] - (center[1].mean(axis=0) - center[0].mean(axis=0))
-    found = cKDTree(center[1]).query(center[0])
-    distance, partner = np.asarray(found[0]), np.asarray(found[1])
-    within = tolerance * float(np.linalg.norm(np.ptp(center[0], axis=0)))
-    twice = np.bincount(partner, minlength=sizes[1]).max() > 1
-    worst = int(np.argmax(distance))
-    if distance[worst] > within or twice:
-        raise WeightError(
-            f"boundaries {first!r} and {second!r} do not match by a shift: the centre of element "
-            f"{worst} of {first!r} misses its partner by {distance[worst]:.3g}, allowed are "
-            f"{within:.3g}"
-        )
-    cells = [_cells_behind(mesh, group) for group in pair]
-    return _united(np.stack([cells[0], cells[1][partner]], axis=1), mesh.n_cells)
-
-
-def _boundary_group(mesh: Mesh, name: str) -> BoundaryGroup:
-    """Return the elements of all boundary groups of that name."""
-    found = [group for group in mesh.boundary if group.name == name and len(group.kind)]
-    if not found or mesh.points is None:
-        known = ", ".join(sorted({repr(group.name) for group in mesh.boundary})) or "none"
-        raise WeightError(f"there is no boundary group {name!r}; the mesh has {known}")
-    if len(found) == 1:
-        return found[0]
-    sizes = np.concatenate([np.diff(group.indptr) for group in found])
-    return BoundaryGroup(
-        name=name,
-        tag=-1,
-        kind=np.concatenate([group.kind for group in found]),
-        indptr=np.concatenate(([0], np.cumsum(sizes))).astype(np.int64),
-        indices=np.concatenate([group.indices for group in found]),
-    )
-
-
-def _element_corners(group: BoundaryGroup) -> tuple[Int64Array, IntArray]:
-    """Return the corners of the elements as CSR, mid-side points left out."""
-    size = np.diff(group.indptr)
-    n_corners = kind_tables().n_corners[group.kind].astype(np.int64)
-    n_corners = np.where(n_corners > 0, n_corners, size)
-    place = np.arange(len(group.indices)) - np.repeat(group.indptr[:-1], size)
-    keep = place < np.repeat(n_corners, size)
-    return np.concatenate(([0], np.cumsum(n_corners))), group.indices[keep]
-
-
-def _element_centers(mesh: Mesh, group: BoundaryGroup) -> FloatArray:
-    """Return the mean of the corners of each element."""
-    assert mesh.points is not None
-    indptr, corner = _element_corners(group)
-    total = np.add.reduceat(mesh.points[corner], indptr[:-1], axis=0)
-    return np.asarray(total / np.diff(indptr)[:, None])
-
-
-def _cells_behind(mesh: Mesh, group: BoundaryGroup) -> Array:
-    """Return, for each element, the lowest cell that has all its corners."""
-    from scipy.sparse import csr_array
-
-    indptr, corner = _element_corners(group)
-    used, column = np.unique(corner, return_inverse=True)
-    place = np.full(mesh.n_points, -1, np.int64)
-    place[used] = np.arange(len(used))
-    cell_ptr, point = _points_of_cells(mesh)
-    cell = np.repeat(np.arange(mesh.n_cells), np.diff(cell_ptr))
-    touches = place[point] >= 0
-    shape = (len(used), mesh.n_cells)
-    ones = np.ones(np.count_nonzero(touches), np.int32)
-    around = csr_array((ones, (place[point[touches]], cell[touches])), shape=shape)
-    around.data[:] = 1
-    element = csr_array(
-        (np.ones(len(column), np.int32), column, indptr), shape=(len(indptr) - 1, len(used))
-    )
-    shared = (element @ around).tocoo()
-    full = shared.data == np.diff(indptr)[shared.row]
-    behind = np.full(len(indptr) - 1, mesh.n_cells, np.int64)
-    np.minimum.at(behind, shared.row[full], shared.col[full])
-    if np.any(behind == mesh.n_cells):
-        bad = int(np.argmax(behind == mesh.n_cells))
-        raise WeightError(f"element {bad} of boundary {group.name!r} is no face of any cell")
-    return behind
-
-
-def _points_of_cells(mesh: Mesh) -> tuple[Int64Array, IntArray]:
-    """Return the points of every cell as CSR; those of polyhedra come from their faces."""
-    if mesh.polyhedra is None:
-        return mesh.indptr, mesh.indices
-    solid = mesh.polyhedra
-    face_size = np.diff(solid.face_indptr)[solid.cell_indices]
-    starts = solid.face_indptr[solid.cell_indices]
-    inner = np.arange(face_size.sum()) - np.repeat(np.cumsum(face_size) - face_size, face_size)
-    from_faces = solid.face_indices[np.repeat(starts, face_size) + inner]
-    face_cell = np.repeat(np.arange(mesh.n_cells), np.diff(solid.cell_indptr))
-    cell = np.concatenate(
-        [np.repeat(np.arange(mesh.n_cells), np.diff(mesh.indptr)), np.repeat(face_cell, face_size)]
-    )
-    point = np.concatenate([mesh.indices, from_faces])
-    order = np.argsort(cell, kind="stable")
-    return np.concatenate(([0], np.cumsum(np.bincount(cell, minlength=mesh.n_cells)))), point[order]
+def _links_over_ranks(group: Int64Array, name: Int64Array, comm: Comm) -> Int64Array:
+    """Return pairs of names that groups with cells on several ranks link."""
+    number, first = np.unique(group, return_index=True)
+    first = first[number >= 0]
+    number, named = number[number >= 0], name[first]
+    lowest = _lowest_by_value(number, named, comm)
+    pairs = np.stack([named, lowest], axis=1)
+    return np.asarray(pairs[named != lowest], GID)

@@ -235,7 +235,7 @@ def test_groups_from_fields():
     assert groups_from_field(np.array([5, -3, 5, 0])).tolist() == [5, -1, 5, 0]
     assert groups_from_field([1.5, np.nan, 1.5, -1.0]).tolist() == [0, -1, 0, -1]
     assert groups_from_field(["pier", "", "pier"]).tolist() == [0, -1, 0]
-    assert groups_from_field(np.array([2**63, 1], np.uint64)).tolist() == [1, 0]
+    assert groups_from_field(np.array([2**63, 1], np.uint64)).tolist() == [0, 1]
     with pytest.raises(WeightError, match="wanted one number a cell"):
         groups_from_field(np.zeros((3, 2)))
 
