@@ -116,11 +116,18 @@ def _owners(folder: Path, n_cells: int) -> tuple[Array, int]:
 
 
 def read_speeds(speeds: Any, n_parts: int) -> Array | None:
-    """Return the speed of each part, from a list or a file of numbers."""
+    """Return the speed of each part, from a list, a file of numbers or a file of costs."""
     if speeds is None:
         return None
     if isinstance(speeds, list):
         return np.array(speeds)
+    if speeds.lower().endswith(".json"):
+        from sfcpart.files.weights_file import read_costs
+
+        fitted = read_costs(speeds).speed
+        if fitted is None:
+            raise FileError(f"{speeds}: holds no speeds of ranks; fit them from two partitions")
+        return np.array(fitted)
     from sfcpart.files.meshes.cell_values import read_cell_values
 
     return read_cell_values(speeds, n_parts).astype(float)

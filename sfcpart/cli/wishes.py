@@ -75,7 +75,7 @@ wish_options = adding(
         "--speeds",
         type=SPEEDS,
         metavar="LIST|FILE",
-        help="Relative speed of each part: 48*1,16*0.5 or a file of numbers.",
+        help="Relative speed of each part: 48*1,16*0.5, a file of numbers, or of costs.",
     ),
     click.option(
         "--limit",

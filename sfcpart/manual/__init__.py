@@ -9,10 +9,13 @@ from sfcpart.errors import InputError
 __all__ = ["PAGES", "read_page"]
 
 PAGES: dict[str, str] = {
+    "clock": "re-splitting inside a running solver: when, in a few lines",
+    "costs": "true weights from measured seconds: classes of cells, speeds, the file of costs",
     "figures": "every figure of a report: unit, meaning, bounds, the model of a step",
     "in_a_solver": "splitting, halo exchange and migration inside a running solver, with a program",
     "parts_file": "the file of parts, for those who write a solver's reader",
     "reading": "which mesh files are read, how, and what is refused",
+    "series": "replaying a run in which the work moves: series of frames, rules, times",
 }
 """Pages and what they hold."""
 

@@ -12,6 +12,7 @@ import pytest
 
 from sfcpart.cli.exits import EXITS, code_of
 from sfcpart.cli.verbs import VERBS
+from tests.run_files import write_runs, write_times
 
 LIGHT = ["numpy", "scipy", "numba", "meshio", "h5py", "matplotlib", "rich", "mpi4py", "sfcpart.api"]
 
@@ -58,6 +59,10 @@ def test_every_example_in_the_help_runs(sfcpart, verb):
     assert len(examples) >= 2
     np.save("cell_part.npy", np.arange(2784) // 600)
     sfcpart("split meshes/channel_mixed.vtu -n 3 -o parts -q")
+    if verb == "fit-weights":
+        write_times()
+    if verb == "replay":
+        write_runs()
     for line in examples:
         if verb == "split" and "-o parts" in line:
             shutil.rmtree("parts", ignore_errors=True)
