@@ -16,7 +16,7 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from rich.console import Console
 
-__all__ = ["Stages", "console", "note", "print_json", "print_pairs", "print_table"]
+__all__ = ["Stages", "console", "hush", "note", "print_json", "print_pairs", "print_table"]
 
 PIPE_WIDTH = 80
 
@@ -30,8 +30,18 @@ def console(*, stderr: bool = False) -> Console:
     return Console(file=stream, width=width, highlight=False, soft_wrap=False, emoji=False)
 
 
+_hushed: list[bool] = []
+
+
+def hush() -> None:
+    """Print no notes and no progress from now on: another rank does."""
+    _hushed.append(True)
+
+
 def note(text: str) -> None:
     """Print one line on the error stream."""
+    if _hushed:
+        return
     print(f"sfcpart: {text}", file=sys.stderr, flush=True)
 
 
@@ -106,7 +116,9 @@ class Stages:
     def __init__(self, *, quiet: bool, methods: Sequence[str] = ("hilbert",)) -> None:
         self.quiet = quiet
         # a dumb terminal cannot redraw a line
-        self.live = not quiet and sys.stderr.isatty() and os.environ.get("TERM") != "dumb"
+        self.live = (
+            not quiet and not _hushed and sys.stderr.isatty() and os.environ.get("TERM") != "dumb"
+        )
         cold = [] if quiet else [room for room in _rooms(methods) if not _is_compiled(room)]
         if cold:
             note(f"first run: compiling (up to {20 * len(cold)} s, once)")

@@ -8,6 +8,8 @@ from typing import TYPE_CHECKING, Any, TypeVar
 
 import click
 
+from sfcpart.cli.ranks import share_threads
+
 if TYPE_CHECKING:
     from sfcpart.measure.step_model import StepModel
 
@@ -244,6 +246,7 @@ def prepare_process(threads: int | None) -> None:
     """Fix the number of threads, and load the compiler before anything else needs it."""
     if threads is not None:
         os.environ["SFCPART_THREADS"] = str(threads)
+    share_threads()
     from sfcpart.kernels._jit import load_for_us_alone
 
     load_for_us_alone()

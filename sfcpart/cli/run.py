@@ -31,8 +31,9 @@ def run(arguments: Sequence[str]) -> int:
     _print_any_name()
     try:
         _meet_the_other_ranks()
-        with sfcpart.make_context(PROGRAM, list(arguments)) as context:
-            sfcpart.invoke(context)
+        if launched() and not _are_for_all_ranks(arguments):
+            return _run_on_rank_0(arguments)
+        _invoke(arguments)
         sys.stdout.flush()
     except click.exceptions.Exit as leave:
         return _flushed(leave.exit_code)
@@ -50,9 +51,38 @@ def run(arguments: Sequence[str]) -> int:
 def _meet_the_other_ranks() -> None:
     """Start MPI where a launcher did, so that a rank that fails early can tell the others."""
     if launched():
+        from sfcpart.cli.ranks import hush_others
         from sfcpart.comm.mpi.ending import prepare
 
         prepare()
+        hush_others()
+
+
+def _invoke(arguments: Sequence[str]) -> None:
+    """Parse, and run the verb."""
+    with sfcpart.make_context(PROGRAM, list(arguments)) as context:
+        sfcpart.invoke(context)
+
+
+def _are_for_all_ranks(arguments: Sequence[str]) -> bool:
+    """Tell whether these are of a verb that all ranks run."""
+    from sfcpart.cli.ranks import TOGETHER
+
+    return next((word for word in arguments if not word.startswith("-")), "") in TOGETHER
+
+
+def _run_on_rank_0(arguments: Sequence[str]) -> int:
+    """Run a verb on one rank; all return its exit code."""
+    from sfcpart.cli.ranks import is_spokesman, run_alone
+
+    text, code = run_alone(
+        arguments,
+        lambda: _invoke(arguments),
+        lambda error: (_one_line(error), code_of(error)),
+    )
+    if text and is_spokesman():
+        return _say(text, code)
+    return _flushed(code)
 
 
 def _end(error: BaseException, text: str, code: int) -> int:
@@ -133,4 +163,6 @@ def _complete(instruction: str) -> int:
 
 def _show_warning(message: Warning | str, *_: Any, **__: Any) -> None:
     """Print a warning of the library as one line on the error stream."""
-    print(f"{PROGRAM}: note: {' '.join(str(message).split())}", file=sys.stderr)
+    from sfcpart.cli.console import note
+
+    note(f"note: {' '.join(str(message).split())}")

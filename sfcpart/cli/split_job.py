@@ -4,10 +4,11 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from sfcpart.cli.console import Stages, print_json
+from sfcpart.cli.console import Stages, note, print_json
 from sfcpart.cli.figures import print_assessment, print_verdict
-from sfcpart.cli.inputs import read_mesh
+from sfcpart.cli.ranks import read_held
 from sfcpart.cli.wishes import load_wish, shape_wish
+from sfcpart.launcher import launched
 from sfcpart.report.numbers import counted
 from sfcpart.report.verdict import judge
 
@@ -16,6 +17,7 @@ if TYPE_CHECKING:
     from sfcpart.measure.step_model import StepModel
     from sfcpart.mesh.mesh import Mesh
     from sfcpart.partition import Partition
+    from sfcpart.slices.mesh_slice import MeshSlice
 
 __all__ = ["SplitJob"]
 
@@ -23,7 +25,7 @@ __all__ = ["SplitJob"]
 class SplitJob:
     """One run: read, split, measure, write."""
 
-    mesh: Mesh
+    mesh: Mesh | MeshSlice
     partition: Partition
     assessment: Assessment
 
@@ -37,12 +39,14 @@ class SplitJob:
     def run(self) -> None:
         """Do the work; an output folder that cannot be used is refused before it."""
         given = self.options
+        if launched():
+            self._note_limits()
         if given["output"] is not None:
             from sfcpart.files.parts.folder import check_output_folder
 
             check_output_folder(given["output"], overwrite=given["overwrite"])
         with self.doing(f"reading {self.source}"):
-            self.mesh = read_mesh(self.source, merge_points=given["merge_points"])
+            self.mesh = read_held(self.source, merge_points=given["merge_points"])
         load = load_wish(given)
         with self.doing(f"splitting {self.mesh.n_cells:,} cells"):
             self._split(load)
@@ -51,6 +55,21 @@ class SplitJob:
         if given["output"] is not None:
             with self.doing(f"writing {given['output']}"):
                 self._write()
+
+    def _note_limits(self) -> None:
+        """Say what rank 0 will do alone."""
+        from sfcpart.methods.on_one_rank import splits_by_slices
+        from sfcpart.methods.registry import METHODS
+
+        given = self.options
+        if not splits_by_slices(METHODS[given["method"]], given["cuts"]):
+            what = given["method"] if given["cuts"] == "balanced" else "--cuts least"
+            note(f"{what} runs on rank 0, which must hold the cells and their graph")
+        whole = [name for name in ("picture", "report") if given[name]]
+        whole += ["format same"] if "same" in self.formats else []
+        if whole:
+            names = ", ".join(f"--{name}" for name in whole)
+            note(f"{names}: made by rank 0, which gathers what it needs of the whole mesh")
 
     def _split(self, load: dict[str, Any]) -> None:
         """Split with the weights, speeds and limits of `load`."""
