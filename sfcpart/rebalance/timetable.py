@@ -7,7 +7,7 @@ every rule is a path through the table, and the best path is found exactly
 (`sfcpart.rebalance.hindsight`). New parts are renamed to keep most cells at home, which does not
 depend on earlier names; not so where ranks differ in speed, which a name stands for. Cost: n^2/2
 passes over the cells of n frames, and memory for the parts of every split, carried to the newest
-frame; frames are streamed, two meshes at a time.
+frame (a byte a cell up to 256 parts); frames are streamed, two meshes at a time.
 """
 
 from __future__ import annotations
@@ -18,7 +18,7 @@ from math import isfinite
 
 import numpy as np
 
-from sfcpart.dtypes import FloatArray, Int32Array, Int64Array
+from sfcpart.dtypes import PART, Array, FloatArray, Int32Array, Int64Array
 from sfcpart.errors import InputError
 from sfcpart.files.series.frame import Frame
 from sfcpart.graph import CellGraph, cell_graph
@@ -141,7 +141,8 @@ def make_timetable(
             _carry(old, frame, number)
         _check_speeds(old, frame, number)
         state = _State(frame, weight, frame.checked_speed(n_parts), n_parts, now)
-        new = _Carried(split(frame, weight), has_speed=frame.speed is not None)
+        packed = split(frame, weight).astype(np.min_scalar_type(n_parts - 1))
+        new = _Carried(packed, has_speed=frame.speed is not None)
         columns.append(_column(old, new, state, resplit))
         old.append(new)
         progress(number + 1)
@@ -152,11 +153,16 @@ def make_timetable(
 
 @dataclass(eq=False)
 class _Carried:
-    """A split carried to the newest frame; its pairs are kept while the mesh stays."""
+    """A split carried to the newest frame, packed; its pairs are kept while the mesh stays."""
 
-    part: Int32Array
+    packed: Array
     has_speed: bool
     pairs: PartPairs | None = None
+
+    @property
+    def part(self) -> Int32Array:
+        """Part of each cell."""
+        return self.packed.astype(PART)
 
 
 @dataclass(frozen=True, eq=False)
@@ -194,13 +200,13 @@ def _carry(old: list[_Carried], frame: Frame, number: int) -> None:
     if not old:
         return
     try:
-        parent = frame.checked_parent(len(old[0].part))
+        parent = frame.checked_parent(len(old[0].packed))
     except InputError as error:
         raise InputError(f"frame {number}: {error}") from error
     for carried in old:
         carried.pairs = None
         if parent is not None:
-            carried.part = carried.part[parent]
+            carried.packed = carried.packed[parent]
 
 
 def _check_speeds(old: list[_Carried], frame: Frame, number: int) -> None:
@@ -228,9 +234,10 @@ def _graph(mesh: Mesh) -> CellGraph | None:
 
 def _step(carried: _Carried, state: _State, graph: CellGraph | None) -> tuple[float, float, float]:
     """Return slowest rank, mean rank and imbalance of a step with one split."""
-    load = np.bincount(carried.part, state.weight, minlength=state.n_parts).astype(np.float64)
+    part = carried.part
+    load = np.bincount(part, state.weight, minlength=state.n_parts).astype(np.float64)
     if carried.pairs is None:
-        carried.pairs = _pairs(carried.part, graph, state.n_parts)
+        carried.pairs = _pairs(part, graph, state.n_parts)
     time = state.model.predict(load, carried.pairs, speed=state.speed, n_cells=state.frame.n_cells)
     work_mean = float(load.sum() / state.speed.sum())
     worst = float((load / state.speed).max()) / work_mean - 1.0 if work_mean > 0 else 0.0
