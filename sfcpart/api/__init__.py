@@ -15,6 +15,7 @@ from sfcpart.api.write import write_split
 from sfcpart.curve import curve_keys, curve_order
 from sfcpart.files.meshes.cell_values import read_cell_values
 from sfcpart.files.meshes.read import read_mesh
+from sfcpart.files.meshes.read_slice import read_slice
 from sfcpart.files.parts.moves import PartMoves, read_moves
 from sfcpart.files.parts.part import Part, read_part
 from sfcpart.files.series.frame import Frame
@@ -24,6 +25,7 @@ from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
 from sfcpart.rebalance.clock import RebalanceClock
 from sfcpart.rebalance.timetable import ResplitCost
+from sfcpart.scaling import forecast
 
 __all__ = [
     "Frame",
@@ -40,6 +42,7 @@ __all__ = [
     "curve_keys",
     "curve_order",
     "fit_weights",
+    "forecast",
     "graph_of",
     "inspect",
     "read_cell_values",
@@ -47,6 +50,7 @@ __all__ = [
     "read_moves",
     "read_part",
     "read_series",
+    "read_slice",
     "rebalance",
     "replay",
     "split",

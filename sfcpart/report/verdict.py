@@ -9,15 +9,23 @@ from __future__ import annotations
 from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
-from sfcpart.report.numbers import counted, duration, number, percent
+from sfcpart.report.numbers import counted, duration, number, percent, seconds
 
 if TYPE_CHECKING:
     from sfcpart.comparison import Comparison
     from sfcpart.measure.assessment import Assessment
     from sfcpart.rebalance.replayed import Replay
     from sfcpart.rebalance.result import Rebalance
+    from sfcpart.scaling import Forecast, Rung
 
-__all__ = ["judge", "judge_comparison", "judge_rebalance", "judge_replay", "listed"]
+__all__ = [
+    "judge",
+    "judge_comparison",
+    "judge_forecast",
+    "judge_rebalance",
+    "judge_replay",
+    "listed",
+]
 
 FAIR = 0.05
 """Imbalance up to which work counts as evenly shared."""
@@ -178,3 +186,34 @@ def judge_replay(found: Replay) -> tuple[str, str]:
     if worst is best or not longer:
         return first, "No rule differs from another here."
     return first, f"The slowest, {worst['rule']}, takes {percent(longer)} longer."
+
+
+def judge_forecast(found: Forecast) -> tuple[str, str]:
+    """Say in two sentences how far a run will scale, and what stops it.
+
+    Parameters
+    ----------
+    found : Forecast
+
+    Returns
+    -------
+    (str, str)
+    """
+    last = found.rungs[-1]
+    if found.best is None:
+        first = found.rungs[0]
+        start = f"No count keeps an efficiency of {percent(found.keep)}: {_reached(first)}."
+    elif found.best == last.n_parts:
+        start = f"Even the largest count keeps {percent(found.keep)}: {_reached(last)}."
+    else:
+        best = next(rung for rung in found.rungs if rung.n_parts == found.best)
+        start = f"Up to {number(found.best)} parts keep {percent(found.keep)}: {_reached(best)}."
+    fastest = min(found.rungs, key=lambda rung: rung.step_seconds)
+    shortest = f"The shortest step is {seconds(fastest.step_seconds)} on "
+    return start, f"{shortest}{counted(fastest.n_parts, 'part')}; {_reached(last)} (model)."
+
+
+def _reached(rung: Rung) -> str:
+    """Say what one count reaches, and on what."""
+    share = f"{percent(rung.exchange_share)} of a step are messages"
+    return f"{counted(rung.n_parts, 'part')} reach {percent(rung.efficiency)}, {share}"

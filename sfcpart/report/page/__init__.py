@@ -16,6 +16,7 @@ from sfcpart.report.page.content import (
     Series,
     TablePlot,
 )
+from sfcpart.report.page.forecast import forecast_page
 from sfcpart.report.page.rebalance import rebalance_page
 from sfcpart.report.page.replay import replay_page
 from sfcpart.report.page.split import split_page
@@ -31,6 +32,7 @@ __all__ = [
     "Series",
     "TablePlot",
     "compare_page",
+    "forecast_page",
     "rebalance_page",
     "render_page",
     "replay_page",

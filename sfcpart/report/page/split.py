@@ -18,10 +18,18 @@ from sfcpart.report.verdict import judge, listed
 if TYPE_CHECKING:
     from sfcpart.graph import CellGraph
     from sfcpart.measure.assessment import Assessment
+    from sfcpart.measure.step_model import StepModel
     from sfcpart.mesh.mesh import Mesh
     from sfcpart.partition import Partition
 
-__all__ = ["CAUTION", "load_chart", "model_notes", "split_figures", "split_page"]
+__all__ = [
+    "CAUTION",
+    "load_chart",
+    "model_notes",
+    "split_figures",
+    "split_page",
+    "step_model_notes",
+]
 
 CAUTION = (
     "A partition changes the order in which a solver sums, hence the last digits of a parallel "
@@ -250,8 +258,12 @@ def _told(value: Any) -> str:
 
 
 def model_notes(assessment: Assessment) -> list[tuple[str, str]]:
+    """Write down the model of a step, what it leaves out, and the caution."""
+    return [*step_model_notes(assessment.step_model), ("caution", CAUTION)]
+
+
+def step_model_notes(model: StepModel) -> list[tuple[str, str]]:
     """Write down the model of a step and what it leaves out."""
-    model = assessment.step_model
     network = model.network
     return [
         (
@@ -261,12 +273,11 @@ def model_notes(assessment: Assessment) -> list[tuple[str, str]]:
             f"{seconds(network.latency)} a message, {number(network.bandwidth / 1e9)} GB/s "
             f"({network.source})",
         ),
-        ("the model leaves out", "; ".join(_leaves_out(assessment))),
-        ("caution", CAUTION),
+        ("the model leaves out", "; ".join(_leaves_out(model))),
     ]
 
 
-def _leaves_out(assessment: Assessment) -> list[str]:
+def _leaves_out(model: StepModel) -> list[str]:
     """Return what the model does not see."""
-    told = assessment.step_model.to_json_dict()["leaves_out"]
+    told = model.to_json_dict()["leaves_out"]
     return [str(item) for item in told] if isinstance(told, list) else []
