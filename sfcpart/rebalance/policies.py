@@ -33,7 +33,7 @@ __all__ = ["Every", "Forecast", "Never", "Regret", "Rule", "StopAtRise", "Thresh
 _MOST_PATIENCE = 64.0
 _SPIKE = 4.0  # times the usual change from step to step: more must be seen twice
 _GRAVE = 4.0  # times the cost of a re-split: a step that lost so much more need not be seen twice
-_FADE = 0.95
+_FADE, _MOST_CONFIRMED = 0.95, 3  # each time it is seen again, trust fades half as fast
 _LEVEL, _TREND, _CHANGE = 0.5, 0.3, 0.2  # how much the newest step counts
 
 
@@ -150,14 +150,16 @@ class Forecast:
     """Level and trend of a loss, smoothed twice (C. C. Holt, 1957, from memory); late steps cut.
 
     A straight line is followed exactly from its second step on. For the first step after a
-    re-split the trend is that from the first to the second step of re-splits before.
+    re-split the trend is the usual rise from the first to the second step after those before.
     """
 
     level: float = 0.0
     trend: float = 0.0
     change: float = 0.0
     count: int = 0
-    first_trend: float = 0.0
+    first_rises: tuple[float, ...] = ()
+    trust: float = 1.0
+    n_confirmed: int = 0
     _raw: tuple[float, float] = (0.0, 0.0)
     _cut: tuple[float, ...] = (0.0, 0.0, 0.0)
     _usual: float = 0.0
@@ -187,11 +189,10 @@ class Forecast:
             self.level = expected + _LEVEL * (cut - expected)
             self.trend += _LEVEL * _TREND * (cut - expected)
         elif self.count == 1:
-            share = _LEVEL if self.first_trend else 1.0
-            self.first_trend += share * (cut - self.level - self.first_trend)
+            self.first_rises = (*self.first_rises[-2:], cut - self.level)
             self.level, self.trend = cut, cut - self.level
         else:
-            self.level, self.trend = cut, max(0.0, self.first_trend)
+            self.level, self.trend = cut, max(0.0, self._first_rise())
         if self.count:
             share = _CHANGE if self.change else 1.0
             self.change += share * (abs(cut - self._raw[1]) - self.change)
@@ -200,9 +201,26 @@ class Forecast:
         return cut + late
 
     def anew(self) -> Forecast:
-        """Begin after a re-split; what is known of first trends fades while it is not seen."""
-        kept = self.first_trend * (_FADE if self.count < 2 else 1.0)
-        return Forecast(change=self.change, first_trend=kept)
+        """Begin after a re-split; trust in first rises fades while none is seen."""
+        trust, confirmed = 1.0, self.n_confirmed
+        if self.count < 2:
+            trust = self.trust * _FADE ** (0.5**confirmed)
+        elif self.first_rises[-1] >= self._first_rise() / 2:
+            confirmed = min(confirmed + 1, _MOST_CONFIRMED)
+        else:
+            confirmed = 0
+        return Forecast(
+            change=self.change,
+            first_rises=self.first_rises,
+            trust=trust,
+            n_confirmed=confirmed,
+        )
+
+    def _first_rise(self) -> float:
+        """Return the median of the last three rises to a second step (the lower of two)."""
+        if len(self.first_rises) < 2:
+            return 0.0
+        return self.trust * sorted(self.first_rises)[(len(self.first_rises) - 1) // 2]
 
 
 @dataclass

@@ -116,6 +116,17 @@ def test_a_forecast_follows_a_line_exactly():
         forecast.add(3.0 * step, grave=1e9)
         if step > 1:
             assert forecast.next == pytest.approx(3.0 * (step + 1))
-    again = forecast.anew()
-    again.add(3.0, grave=1e9)
-    assert again.next == pytest.approx(6.0)
+
+
+def test_a_forecast_remembers_how_a_fresh_split_ages():
+    forecast = Forecast()
+    for rise in (5.0, 3.0, 100.0):  # the last one is a late step
+        forecast.add(1.0, grave=1e9)
+        forecast.add(1.0 + rise, grave=1e9)
+        forecast = forecast.anew()
+    forecast.add(1.0, grave=1e9)
+    assert forecast.next == pytest.approx(6.0)
+    for _ in range(50):  # re-split after every step: nothing more is seen of it
+        forecast = forecast.anew()
+        forecast.add(1.0, grave=1e9)
+    assert 1.0 < forecast.next < 5.0
