@@ -21,6 +21,7 @@ from sfcpart.cli.options import (
 if TYPE_CHECKING:
     from sfcpart.mesh.mesh import Mesh
     from sfcpart.partition import Partition
+    from sfcpart.slices.mesh_slice import MeshSlice
 
 __all__ = ["command"]
 
@@ -68,10 +69,11 @@ def command(mesh: str, parts: str | None, **given: Any) -> None:
     from sfcpart import api
     from sfcpart.cli.console import Stages
     from sfcpart.cli.inputs import read_speeds
+    from sfcpart.cli.ranks import once, read_held, whole_of
 
     doing = Stages(quiet=given["quiet"] or given["as_json"])
     with doing(f"reading {mesh}"):
-        loaded = api.read_mesh(mesh)
+        loaded = read_held(mesh)
         partition = _read_parts(loaded, parts, given["field"])
     with doing("measuring"):
         assessment = api.assess(
@@ -84,20 +86,27 @@ def command(mesh: str, parts: str | None, **given: Any) -> None:
             limits=most,
         )
     if given["csv_path"] is not None:
-        _write_csv(given["csv_path"], assessment)
+        once(lambda: _write_csv(given["csv_path"], assessment))
+    if given["picture"] is not None or given["report"] is not None:
+        whole = (*whole_of(loaded, partition), assessment)
     if given["picture"] is not None:
         with doing("drawing"):
-            _draw(given["picture"], mesh, loaded, partition, assessment)
+            once(lambda: _draw(given["picture"], mesh, *whole))
     if given["report"] is not None:
         with doing(f"writing {given['report']}"):
-            _write_page(given["report"], mesh, loaded, partition, assessment)
+            once(lambda: _write_page(given["report"], mesh, *whole))
     _report(mesh, assessment, as_json=given["as_json"], quiet=given["quiet"])
 
 
-def _read_parts(mesh: Mesh, parts: str | None, field: str | None) -> Partition:
+def _read_parts(mesh: Mesh | MeshSlice, parts: str | None, field: str | None) -> Partition:
     """Take the parts from a field, a file or a folder."""
     from sfcpart.cli.inputs import partition_from_field, partition_from_path
+    from sfcpart.slices.mesh_slice import MeshSlice
 
+    if isinstance(mesh, MeshSlice):
+        from sfcpart.cli.sliced_parts import partition_of_slice
+
+        return partition_of_slice(mesh, parts, field)
     if field is not None:
         return partition_from_field(mesh, field)
     assert parts is not None
@@ -115,7 +124,7 @@ def _write_csv(path: str, assessment: Any) -> None:
         write_part_table(place, columns)
 
 
-def _draw(path: str, name: str, mesh: Mesh, partition: Partition, assessment: Any) -> None:
+def _draw(path: str, name: str, mesh: Any, partition: Partition, assessment: Any) -> None:
     """Write the picture."""
     from sfcpart.cli.outputs import new_file
     from sfcpart.graph import cell_graph
@@ -127,7 +136,7 @@ def _draw(path: str, name: str, mesh: Mesh, partition: Partition, assessment: An
         draw_split(place, mesh, partition=partition, graph=graph, title=name, figures=figures)
 
 
-def _write_page(path: str, name: str, mesh: Mesh, partition: Partition, assessment: Any) -> None:
+def _write_page(path: str, name: str, mesh: Any, partition: Partition, assessment: Any) -> None:
     """Write the report page."""
     from sfcpart.api import graph_of
     from sfcpart.cli.outputs import new_file

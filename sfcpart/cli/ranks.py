@@ -19,9 +19,19 @@ from sfcpart.launcher import launched, local_ranks
 
 if TYPE_CHECKING:
     from sfcpart.mesh.mesh import Mesh
+    from sfcpart.partition import Partition
     from sfcpart.slices.mesh_slice import MeshSlice
 
-__all__ = ["TOGETHER", "hush_others", "is_spokesman", "read_held", "run_alone", "share_threads"]
+__all__ = [
+    "TOGETHER",
+    "hush_others",
+    "is_spokesman",
+    "once",
+    "read_held",
+    "run_alone",
+    "share_threads",
+    "whole_of",
+]
 
 TOGETHER = frozenset({"split", "assess", "network"})
 """Verbs that all ranks run."""
@@ -41,6 +51,30 @@ def is_spokesman() -> bool:
     from sfcpart.comm import world
 
     return world().rank == 0
+
+
+def once(act: Callable[[], None]) -> None:
+    """Do something on one rank; what goes wrong is raised on all."""
+    if not launched():
+        act()
+        return
+    from sfcpart.comm import world
+    from sfcpart.slices.gate import agreed
+
+    agreed(world(), lambda: act() if is_spokesman() else None)
+
+
+def whole_of(mesh: Mesh | MeshSlice, partition: Partition) -> tuple[Mesh | None, Partition]:
+    """Return mesh and partition as a whole, on the rank that draws (collective)."""
+    from sfcpart.slices.gathering import gather_mesh
+    from sfcpart.slices.mesh_slice import MeshSlice
+    from sfcpart.slices.routing import gather_rows
+
+    if not isinstance(mesh, MeshSlice):
+        return mesh, partition
+    note("pictures and reports are made by rank 0, which gathers the mesh")
+    cell_part = gather_rows(mesh.comm, partition.cell_part)
+    return gather_mesh(mesh), type(partition)(cell_part, partition.n_parts)
 
 
 def share_threads() -> None:

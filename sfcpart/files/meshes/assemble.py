@@ -19,7 +19,7 @@ from sfcpart.mesh.gate import check_indices, check_kinds, check_offsets, frozen
 from sfcpart.mesh.kinds import KINDS, kind_tables
 from sfcpart.mesh.mesh import BoundaryGroup, Mesh
 
-__all__ = ["TAG_FIELDS", "as_numbers", "build_mesh", "element_dimension", "tag_label"]
+__all__ = ["TAG_FIELDS", "as_numbers", "build_mesh", "cell_dimension", "tag_label"]
 
 TAG_FIELDS = (
     "gmsh:physical",
@@ -83,24 +83,35 @@ def _build(raw: RawMesh) -> Mesh:
 
 def element_dimension(kind: Array) -> Array:
     """Return the dimension of every element; refuse kinds nobody here knows, and no cells."""
-    if not len(kind):
-        raise MeshError("holds no cells")
+    codes, counts = np.unique(kind, return_counts=True)
+    cell_dimension(codes, counts)
     dimension: Array = kind_tables().dim[kind]
-    if dimension.min() < 0:
-        raise MeshError(f"holds cells that cannot be used: {_listed(kind[dimension < 0])}")
-    if dimension.max() < 1:
-        raise MeshError(
-            f"holds no cells, only {_listed(kind)}; use Mesh.from_centers to split single points"
-        )
-    if dimension.max() < 2:
-        raise MeshError(f"holds no cells of dimension 2 or 3, only {_listed(kind)}")
     return dimension
 
 
-def _listed(kind: Array) -> str:
+def cell_dimension(codes: Array, counts: Array) -> int:
+    """Return the dimension of the cells, given how many elements of each kind there are."""
+    if not len(codes):
+        raise MeshError("holds no cells")
+    dimension = kind_tables().dim[codes]
+    strange = dimension < 0
+    if strange.any():
+        raise MeshError(f"holds cells that cannot be used: {_listed(codes, counts, strange)}")
+    if dimension.max() < 1:
+        raise MeshError(
+            f"holds no cells, only {_listed(codes, counts)}; "
+            "use Mesh.from_centers to split single points"
+        )
+    if dimension.max() < 2:
+        raise MeshError(f"holds no cells of dimension 2 or 3, only {_listed(codes, counts)}")
+    return int(dimension.max())
+
+
+def _listed(codes: Array, counts: Array, which: Array | None = None) -> str:
     """Say how many elements there are of each kind."""
-    codes, counts = np.unique(kind, return_counts=True)
-    return ", ".join(f"{n} {_name(c)}" for c, n in zip(codes.tolist(), counts, strict=True))
+    some = slice(None) if which is None else which
+    pairs = zip(codes[some].tolist(), counts[some].tolist(), strict=True)
+    return ", ".join(f"{n} {_name(c)}" for c, n in pairs)
 
 
 def _name(code: int) -> str:

@@ -7,11 +7,14 @@ from pathlib import Path
 
 import numpy as np
 
-from sfcpart.dtypes import Array
+from sfcpart.comm.base import Comm
+from sfcpart.dtypes import Array, Int64Array
 from sfcpart.errors import FileError, InputError
 from sfcpart.files.meshes.formats import head_of, told
+from sfcpart.slices.gate import agreed
+from sfcpart.slices.routing import hand_out_rows
 
-__all__ = ["read_cell_values"]
+__all__ = ["read_cell_slice", "read_cell_values"]
 
 
 def read_cell_values(path: str | PathLike[str], n_cells: int | None) -> Array:
@@ -62,6 +65,59 @@ def read_cell_values(path: str | PathLike[str], n_cells: int | None) -> Array:
             f"wanted {wanted}, one a cell, in the mesh's order"
         )
     return values
+
+
+def read_cell_slice(path: str | PathLike[str], rank_first: Int64Array, *, comm: Comm) -> Array:
+    """Read this rank's rows of one number a cell (collective).
+
+    Parameters
+    ----------
+    path : path
+        As for `read_cell_values`. Of a `.npy` file each rank reads its rows; text is read by
+        rank 0, which must hold the numbers of all cells.
+    rank_first : (size + 1,) int64
+        First cell of every rank, and the number of cells.
+    comm : Comm
+
+    Returns
+    -------
+    (n_local,) int64 or float64
+
+    Raises
+    ------
+    FileError, InputError
+        As `read_cell_values`, on all ranks alike.
+
+    Examples
+    --------
+    >>> import tempfile
+    >>> from sfcpart.comm import run_ranks
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     np.save(f"{folder}/a.npy", np.array([0, 0, 1]))
+    ...     run_ranks(2, lambda comm: read_cell_slice(
+    ...         f"{folder}/a.npy", np.array([0, 1, 3]), comm=comm).tolist())
+    [[0], [0, 1]]
+    """
+    place, n_cells = Path(path), int(rank_first[-1])
+    lo, hi = int(rank_first[comm.rank]), int(rank_first[comm.rank + 1])
+    if agreed(comm, lambda: head_of(place))[:6] == b"\x93NUMPY":
+        return agreed(comm, lambda: _npy_rows(place, n_cells, lo, hi))
+    whole = agreed(
+        comm, lambda: read_cell_values(place, n_cells) if comm.rank == 0 else np.zeros(0)
+    )
+    dtype = comm.bcast_object(whole.dtype)
+    return hand_out_rows(comm, whole.astype(dtype), n_local=hi - lo)
+
+
+def _npy_rows(place: Path, n_cells: int, lo: int, hi: int) -> Array:
+    """Read some rows of a .npy array of one number a cell."""
+    try:
+        mapped = np.load(place, mmap_mode="r", allow_pickle=False)
+    except (OSError, ValueError, EOFError, SyntaxError, TypeError):
+        return read_cell_values(place, n_cells)  # says what is wrong
+    if mapped.shape != (n_cells,) or mapped.dtype.kind not in "if":
+        return read_cell_values(place, n_cells)[lo:hi]
+    return np.array(mapped[lo:hi], np.float64 if mapped.dtype.kind == "f" else np.int64)
 
 
 def _npy(place: Path) -> Array:

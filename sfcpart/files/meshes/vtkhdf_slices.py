@@ -22,7 +22,7 @@ from sfcpart.comm.base import Comm
 from sfcpart.dtypes import GID, Array, BoolArray, Int64Array, IntArray
 from sfcpart.errors import MeshError
 from sfcpart.files.hdf5 import read_hdf5
-from sfcpart.files.meshes.assemble import as_numbers, element_dimension, tag_label
+from sfcpart.files.meshes.assemble import as_numbers, cell_dimension, tag_label
 from sfcpart.files.meshes.raw import select_rows
 from sfcpart.files.meshes.vtkhdf_extent import grid_of
 from sfcpart.files.meshes.vtkhdf_points import FilePoints, read_points
@@ -142,11 +142,10 @@ def _read_faces(grid: GridRows, comm: Comm) -> tuple[Int64Array, IntArray, Int64
 
 def _dimension(elements: _Elements, source: str, comm: Comm) -> int:
     """Return the dimension of the cells: the highest there is on any rank."""
-    present = np.zeros(256, np.int64)
-    present[np.unique(elements.kind)] = 1
-    kinds = np.flatnonzero(comm.allreduce(present, "max")).astype(np.uint8)
+    counts = comm.allreduce(np.bincount(elements.kind, minlength=256).astype(np.int64))
+    codes = np.flatnonzero(counts)
     try:
-        return int(element_dimension(kinds).max())
+        return cell_dimension(codes, counts[codes])
     except MeshError as error:
         raise MeshError(f"{source}: {error}") from error
 
