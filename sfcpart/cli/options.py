@@ -190,7 +190,7 @@ weight_option = click.option(
     metavar="SPEC",
     help="Work of each cell; several multiply. A cell field (work), a table by kind of cell "
     "(tetra=1,other=2) or by region (zone:1=1,2=4,other=1), a mix of cells and faces "
-    "(cell=1,face=0.25), products (work*tetra=1,other=2).",
+    "(cell=1,face=0.25), products (work*tetra=1,other=2), or a file of costs (costs.json).",
 )
 
 
