@@ -382,12 +382,19 @@ def _rung(cut: _Cut, model: StepModel, memory_a_cell: float) -> Rung:
 
 def _weak(cut: _Cut, model: StepModel) -> tuple[WeakRung, ...]:
     """Predict the first 1, 2, 4, ... parts, each as a mesh of its own."""
-    rungs: list[WeakRung] = []
+    rungs = []
     for count in ladder(1, cut.n_parts):
         region = cut.first(count)
-        share = region.work.sum() / cut.work.sum() * int(cut.cells.sum())
-        scaled = replace(model, cell_seconds=model.cell_seconds * share / region.cells.sum())
-        time = region.predicted(scaled)
-        alone = rungs[0].step_seconds if rungs else time.total
-        rungs.append(WeakRung(count, time.total, alone / time.total))
+        time = region.predicted(_for_region(model, region, cut))
+        efficiency = float(time.work.mean() / time.total) if time.total > 0 else 1.0
+        rungs.append(WeakRung(count, time.total, efficiency))
     return tuple(rungs)
+
+
+def _for_region(model: StepModel, region: _Cut, whole: _Cut) -> StepModel:
+    """Return the model with the work of a mean cell of the region, where it has any."""
+    weight = region.work.sum() / region.cells.sum()
+    mean = whole.work.sum() / whole.cells.sum()
+    if not weight > 0:
+        return model
+    return replace(model, cell_seconds=float(model.cell_seconds * weight / mean))

@@ -199,15 +199,14 @@ def judge_forecast(found: Forecast) -> tuple[str, str]:
     -------
     (str, str)
     """
-    last = found.rungs[-1]
+    last, wish = found.rungs[-1], f"an efficiency of {percent(found.keep)}"
     if found.best is None:
-        first = found.rungs[0]
-        start = f"No count keeps an efficiency of {percent(found.keep)}: {_reached(first)}."
+        start = f"No count keeps {wish}: {_reached(found.rungs[0])}."
     elif found.best == last.n_parts:
-        start = f"Even the largest count keeps {percent(found.keep)}: {_reached(last)}."
+        start = f"Even the largest count keeps {wish}: {_reached(last)}."
     else:
         best = next(rung for rung in found.rungs if rung.n_parts == found.best)
-        start = f"Up to {number(found.best)} parts keep {percent(found.keep)}: {_reached(best)}."
+        start = f"Up to {number(found.best)} parts keep {wish}: {_reached(best)}."
     fastest = min(found.rungs, key=lambda rung: rung.step_seconds)
     shortest = f"The shortest step is {seconds(fastest.step_seconds)} on "
     return start, f"{shortest}{counted(fastest.n_parts, 'part')}; {_reached(last)} (model)."

@@ -19,10 +19,10 @@ _SHOWN = frozenset(
     {"part", "cells", "weight", "load", "load_unweighted", "limit_share", "cut_faces"}
     | {"halo_cells", "neighbours", "smallest_interface", "pieces", "surface_ratio", "step_seconds"}
 )
-_SHARES = frozenset({"limit_share", "imbalance", "imbalance_unweighted", "cut_share"}) | {
-    "exchange_share",
-    "efficiency",
-}
+_SHARES = frozenset(
+    {"limit_share", "imbalance", "imbalance_unweighted", "cut_share", "halo_share"}
+    | {"exchange_share", "efficiency"}
+)
 
 
 def parts_table(assessment: Assessment) -> TablePlot:

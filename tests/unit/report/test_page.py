@@ -1,5 +1,6 @@
 """A report page as text: the figures of summary.json, nothing that breaks out, nothing fetched."""
 
+import base64
 import json
 import re
 from importlib.resources import files
@@ -8,10 +9,21 @@ import numpy as np
 import pytest
 
 import sfcpart
+import sfcpart.measure
 from sfcpart.api import graph_of
 from sfcpart.errors import FileError
 from sfcpart.mesh.shapes import lattice
-from sfcpart.report.page import Page, compare_page, parts_table, render_page, split_page, write_page
+from sfcpart.report.page import (
+    Page,
+    compare_page,
+    forecast_page,
+    parts_table,
+    rebalance_page,
+    render_page,
+    replay_page,
+    split_page,
+    write_page,
+)
 from sfcpart.report.page import split as split_module
 
 
@@ -168,3 +180,77 @@ def test_faults_are_among_the_figures(mesh):
     assert figures["n_empty_parts"].note == "part 2"
     assert figures["limit_share"].text == "120 %"
     assert figures["n_split_parts"].note.startswith("part 0, 1")
+
+
+def test_a_re_split_shows_what_moves_and_when_it_pays(tmp_path):
+    mesh = lattice((16, 8)).to_mesh()
+    work = 1.0 + 3.0 * (mesh.centers[:, 0] > 8)
+    result = sfcpart.rebalance(mesh, sfcpart.split(mesh, 4), weights=work, way="shift", steps=500)
+    folder = sfcpart.write_rebalance(tmp_path / "parts", mesh, result, report=True)
+    text = (folder / "report.html").read_text()
+    data = data_of(text)
+    told = json.loads((folder / "summary.json").read_text())["rebalance"]
+    assert data["summary"]["rebalance"] == told
+    assert told["verdict"][1:] in text
+    kinds = [section["kind"] for section in data["sections"]]
+    assert kinds[:3] == ["view", "matrix", "chart"]
+    cells = np.frombuffer(base64.b64decode(data["sections"][1]["value"]["cells"]), "<f8")
+    assert cells.sum() == told["migration"]["moved_cells"] > 0
+    line = data["sections"][2]["series"][0]
+    cost = told["split_seconds"] + told["move_seconds"]
+    assert line["y"][0] == pytest.approx(-cost, rel=1e-5)
+    slope = (line["y"][1] - line["y"][0]) / (line["x"][1] - line["x"][0])
+    assert slope == pytest.approx(told["saved_seconds_a_step"], rel=1e-4)
+
+
+def test_a_re_split_that_moves_nothing_or_has_no_old_step_has_a_page_too():
+    mesh = lattice((8, 4)).to_mesh()
+    parts = sfcpart.split(mesh, 2)
+    page = page_of(mesh, parts)
+    same = rebalance_page(page, sfcpart.rebalance(mesh, parts, way="shift"))
+    assert same.verdict[1] == "No cell moves."
+    other = rebalance_page(page, sfcpart.rebalance(mesh, parts, n_parts=4, way="shift"))
+    assert [section.title for section in other.sections][:3] == [
+        "The parts",
+        "Who sends cells to whom",
+        "Load of each part",
+    ]
+    assert "cannot be kept" in other.verdict[0]
+
+
+def test_a_replayed_run_shows_every_rule():
+    mesh = lattice((12, 6)).to_mesh()
+    place = mesh.centers[:, 0]
+    frames = [sfcpart.Frame(mesh, 1.0 + 4.0 * (np.abs(place - k) < 2), steps=50) for k in range(6)]
+    found = sfcpart.replay(frames, 3, rules=["never", "every:1", "hindsight"])
+    data = data_of(render_page(replay_page(found, title="front")))
+    over, price, table = data["sections"]
+    assert {one["facet"] for one in over["series"]} == {"never", "every:1", "hindsight"}
+    rows = list(found.figures())
+    assert table["rows"]["seconds"] == [row["seconds"] for row in rows]
+    assert sum(len(name.split(", ")) for name in price["series"][0]["label"]) == 3
+    dots = next(o for o in over["series"] if o["facet"] == "every:1" and o["mark"] == "dot")
+    assert len(dots["x"]) == rows[1]["n_resplits"] == 5
+    alone = sfcpart.replay(frames[:1], 3, rules=["hindsight"])
+    assert replay_page(alone).verdict[1] == "No rule differs from another here."
+
+
+def test_a_forecast_shows_its_counts_and_what_it_leaves_out():
+    mesh = lattice((16, 16)).to_mesh()
+    found = sfcpart.forecast(mesh, [1, 4, 16], keep=0.6)
+    page = forecast_page(found, title="channel")
+    text = render_page(page)
+    data = data_of(text)
+    told = found.to_json_dict()
+    table = data["sections"][-1]["rows"]
+    for name, values in table.items():
+        assert values == [row[name] for row in told["rungs"]]
+    assert data["summary"]["weak"] == told["weak"]
+    assert "collective operations" in text
+    assert page.verdict[0].startswith("Up to ")
+    even = forecast_page(sfcpart.forecast(mesh, [1, 4], keep=0.01))
+    assert even.verdict[0].startswith("Even the largest count keeps an efficiency of 1 %")
+    slow = sfcpart.measure.StepModel.from_preset(latency=1.0)
+    none = forecast_page(sfcpart.forecast(mesh, [4], step_model=slow))
+    assert none.verdict[0].startswith("No count keeps an efficiency of 80 %")
+    assert none.figures[0].text == "none"
