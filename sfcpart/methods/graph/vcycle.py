@@ -40,6 +40,13 @@ SMALL = 200_000
 
 MANY = 5
 
+LOOSER = 1.5
+"""Excess on coarse graphs as a multiple of that allowed in the end: full parts hinder flows."""
+
+ROOMY = 1500
+"""Large graphs with more vertices a part are refined by flows alone: local searches cost a fifth
+of the time there and bring nothing that can be measured."""
+
 RELAX = 0.06
 """Excess that parts may have on coarse graphs, so that full parts can exchange vertices."""
 
@@ -80,7 +87,8 @@ class Aim:
     def relaxed(self, heaviest: int) -> Int64Array:
         """Return capacities for coarse vertices: what full parts need to exchange any."""
         extra = np.minimum(heaviest, RELAX * self.share)
-        return np.maximum(self.capacity, (self.share + extra).astype(np.int64))
+        loose = np.maximum(self.share + extra, self.share + LOOSER * (self.capacity - self.share))
+        return np.maximum(self.capacity, loose.astype(np.int64))
 
     def of_blocks(self, blocks: list[tuple[int, int]], heaviest: int) -> Int64Array:
         """Return the capacity of each block (at its first part), with room for coarse vertices.
@@ -214,12 +222,17 @@ def _refine(
     heaviest = int(graph.vertex_weight.max())
     capacity = aim.capacity
     if not finest:
-        capacity = aim.of_blocks(blocks, heaviest) if blocks else aim.relaxed(heaviest)
+        apart = blocks is None or len(blocks) == aim.n_parts
+        capacity = aim.relaxed(heaviest)
+        if blocks is not None and not apart:
+            capacity = aim.of_blocks(blocks, heaviest)
     labels = Labels(graph, part, capacity)
     rebalance(labels)
-    search_locally(labels, rounds=sweeps, patience=6 if sweeps == 1 else 15, seed=aim.seed)
+    if sweeps > 1 or graph.n < ROOMY * (len(blocks) if blocks else aim.n_parts):
+        search_locally(labels, rounds=sweeps, patience=6 if sweeps == 1 else 15, seed=aim.seed)
     few = 8 * len(boundary_of(labels)) < graph.n  # then another sweep costs little
-    flow_between(labels, sweeps=max(sweeps, 2) if few else sweeps, depth=3, stretch=4.0)
+    depth, stretch = (4, 16.0) if sweeps == 1 else (3, 4.0)
+    flow_between(labels, sweeps=max(sweeps, 2) if few else sweeps, depth=depth, stretch=stretch)
     tight = float((aim.capacity - aim.share).max(initial=0.0)) < 4 * heaviest
     if sweeps > 1 or (tight and finest):
         refine_between(labels, sweeps=3, patience=200, slack=heaviest if tight else 0)
