@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import numpy as np
 
+from sfcpart.dtypes import Array, index_dtype
 from sfcpart.mesh.kinds import POLYGON, kind_tables
 from sfcpart.mesh.mesh import Mesh
+from sfcpart.slices.mesh_slice import MeshSlice
 
 __all__ = ["memory_of_counts", "split_memory"]
 
@@ -13,12 +15,13 @@ _PROCESS = 200_000_000
 """Bytes of a process that has loaded everything and split a mesh of no size (measured: 190)."""
 
 
-def split_memory(mesh: Mesh) -> int:
-    """Estimate the peak memory of splitting, measuring and writing a mesh.
+def split_memory(mesh: Mesh | MeshSlice) -> int:
+    """Estimate the peak memory of splitting, measuring and writing a mesh on one rank.
 
     Parameters
     ----------
-    mesh : Mesh
+    mesh : Mesh or MeshSlice
+        The whole mesh is meant; all ranks that hold slices of it call together.
 
     Returns
     -------
@@ -39,17 +42,35 @@ def split_memory(mesh: Mesh) -> int:
     >>> split_memory(large) - split_memory(small)
     104895
     """
-    held = [mesh.points, mesh.kind, mesh.indptr, mesh.indices, mesh.given_center]
-    held += [mesh.given_measure, *mesh.cell_fields.values(), *mesh.point_fields.values()]
+    held = mesh if isinstance(mesh, MeshSlice) else MeshSlice.whole(mesh)
+    n_bytes, n_faces = held.comm.allreduce(np.array(_counts(held), np.int64)).tolist()
+    of_points = [held.mesh.points, *held.mesh.point_fields.values()]
+    n_bytes += held.n_points * sum(_row(array) for array in of_points if array is not None)
+    shape = {"n_faces": n_faces, "dim": held.mesh.space_dim}
+    return memory_of_counts(held.n_cells, held=n_bytes + 8, **shape)
+
+
+def _counts(held: MeshSlice) -> tuple[int, int]:
+    """Return the bytes that this rank's cells take, and their faces."""
+    mesh, n = held.mesh, held.n_local
+    arrays = [mesh.kind, mesh.given_center, mesh.given_measure, *mesh.cell_fields.values()]
+    number = np.dtype(index_dtype(held.n_points)).itemsize
+    size = 8 * n + number * len(mesh.indices)
+    size += sum(_row(array) * n for array in arrays if array is not None)
     if mesh.polyhedra is not None:
         faces = mesh.polyhedra
-        held += [faces.face_indptr, faces.face_indices, faces.cell_indptr, faces.cell_indices]
+        corners = int(np.diff(faces.face_indptr)[faces.cell_indices].sum())
+        size += 8 * n + (8 + number) * len(faces.cell_indices) + number * corners
     if mesh.faces is not None:
-        held += [mesh.faces.cell, mesh.faces.measure]
-    size = sum(array.nbytes for array in held if array is not None)
-    return memory_of_counts(
-        mesh.n_cells, n_faces=_count_cell_faces(mesh), held=size, dim=mesh.space_dim
-    )
+        first = mesh.faces.cell[:, 0]
+        n_own = int(np.count_nonzero((first >= held.first_gid) & (first < held.first_gid + n)))
+        return size + 24 * n_own, 2 * n_own
+    return size, _count_cell_faces(mesh)
+
+
+def _row(array: Array) -> int:
+    """Return the bytes of a row."""
+    return int(array.dtype.itemsize * np.prod(array.shape[1:]))
 
 
 def memory_of_counts(n_cells: int, *, n_faces: int, held: int, dim: int = 3) -> int:
@@ -82,8 +103,6 @@ def memory_of_counts(n_cells: int, *, n_faces: int, held: int, dim: int = 3) -> 
 
 def _count_cell_faces(mesh: Mesh) -> int:
     """Count the faces of all cells, shared ones from both sides."""
-    if mesh.faces is not None:
-        return 2 * len(mesh.faces.cell)
     count = kind_tables().face_count.astype(np.int64)
     total = int(np.bincount(mesh.kind, minlength=256) @ count)
     if mesh.polyhedra is not None:

@@ -20,9 +20,16 @@ from sfcpart.mesh.arrays import MeshArrays
 from sfcpart.mesh.gate import frozen
 from sfcpart.mesh.pieces import Polyhedra
 
-__all__ = ["check_still_cells", "coincident_points", "with_new_numbers"]
+__all__ = [
+    "SLANT",
+    "check_still_cells",
+    "check_tolerance",
+    "close_pairs",
+    "coincident_points",
+    "with_new_numbers",
+]
 
-_SLANT = np.array([0.8506508, 0.4472136, 0.2763932])
+SLANT = np.array([0.8506508, 0.4472136, 0.2763932])
 _WIDEST = 32
 
 
@@ -50,10 +57,9 @@ def coincident_points(points: FloatArray, tolerance: float) -> Int64Array:
     >>> coincident_points(np.array([[0.0, 0], [1, 0], [1e-9, 0], [0, 0]]), 1e-6).tolist()
     [0, 1, 0, 0]
     """
-    if not (np.isfinite(tolerance) and tolerance >= 0):
-        raise MeshError(f"the tolerance is {tolerance}; wanted a finite distance >= 0")
+    check_tolerance(tolerance)
     lowest = np.arange(len(points), dtype=OFFSET)
-    pairs = _close_pairs(points, tolerance)
+    pairs = close_pairs(points, tolerance)
     if not len(pairs):
         return lowest
     from scipy.sparse import coo_array
@@ -70,9 +76,15 @@ def coincident_points(points: FloatArray, tolerance: float) -> Int64Array:
     return lowest
 
 
-def _close_pairs(points: FloatArray, tolerance: float) -> Int64Array:
+def check_tolerance(tolerance: float) -> None:
+    """Refuse distances that are none."""
+    if not (np.isfinite(tolerance) and tolerance >= 0):
+        raise MeshError(f"the tolerance is {tolerance}; wanted a finite distance >= 0")
+
+
+def close_pairs(points: FloatArray, tolerance: float) -> Int64Array:
     """List pairs of points within the tolerance, (n_pairs, 2)."""
-    along = points @ _SLANT[: points.shape[1]]
+    along = points @ SLANT[: points.shape[1]]
     order = np.argsort(along, kind="stable")
     along = along[order]
     # rounding of the projections must not hide a pair

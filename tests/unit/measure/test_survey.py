@@ -9,8 +9,8 @@ import pytest
 
 from sfcpart.errors import MeshError
 from sfcpart.graph import cell_graph
+from sfcpart.measure.check import Offenders
 from sfcpart.measure.survey import survey_mesh
-from sfcpart.mesh.check import Offenders
 from sfcpart.mesh.mesh import BoundaryGroup, Mesh
 from tests.strategies import DEGENERATE, grid
 

@@ -8,8 +8,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from sfcpart.graph import cell_graph
-from sfcpart.mesh.check import Offenders, check_cells, count_kinds, unused_points
-from sfcpart.mesh.cracks import find_cracks
+from sfcpart.measure.check import Offenders, check_cells, count_kinds, unused_points
+from sfcpart.measure.cracks import find_cracks
 from sfcpart.mesh.kinds import KINDS
 from sfcpart.mesh.mesh import Mesh
 from tests.oracles.faces import cell_faces
