@@ -184,12 +184,13 @@ def compare(
     )
 
 
-def inspect(mesh: Mesh) -> Survey:
+def inspect(mesh: Mesh | MeshSlice) -> Survey:
     """Look a mesh over: what it holds and what is wrong with it.
 
     Parameters
     ----------
-    mesh : Mesh
+    mesh : Mesh or MeshSlice
+        With a slice all ranks look together (`sfcpart.read_slice`).
 
     Returns
     -------
@@ -207,8 +208,10 @@ def inspect(mesh: Mesh) -> Survey:
     >>> sfcpart.inspect(sfcpart.Mesh.from_centers([[0.0, 0.0], [1.0, 0.0]])).n_cells
     2
     """
-    from sfcpart.measure.survey import survey_mesh
+    from sfcpart.measure.survey import survey_mesh, survey_slice
 
+    if isinstance(mesh, MeshSlice):
+        return survey_slice(mesh, rows_of_graph(mesh))
     return survey_mesh(mesh, graph_of(mesh))
 
 

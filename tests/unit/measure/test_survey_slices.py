@@ -7,6 +7,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+import sfcpart
 from sfcpart.comm import SerialComm, run_ranks
 from sfcpart.errors import MeshError
 from sfcpart.graph import cell_graph
@@ -132,3 +133,10 @@ def test_medians_are_those_of_numpy(values, size):
     found = run_ranks(size, lambda comm: median(values[comm.rank :: size], comm=comm))
     np.testing.assert_array_equal(found, [wanted] * size)
     assert repr(median(values, comm=SerialComm())) == repr(float(wanted))
+
+
+def test_inspect_takes_slices():
+    mesh = grid((3, 2))
+    wanted = sfcpart.inspect(mesh).to_json_dict()
+    found = on_slices(mesh, [0, 2, 6], lambda held: sfcpart.inspect(held).to_json_dict())
+    assert found == [wanted, wanted]
