@@ -49,14 +49,18 @@ class Barrier:
         self._round = 0
         self._broken = False
 
-    def wait(self) -> bool:
-        """Wait for all; tell whether they came, or the barrier is broken or ran out of time."""
+    def wait(self, before_all_go: Callable[[], None]) -> bool:
+        """Wait for all; tell whether they came, or the barrier is broken or ran out of time.
+
+        Whoever comes last calls `before_all_go`.
+        """
         with self._changed:
             if self._broken:
                 return False
             mine = self._round
             self._waiting += 1
             if self._waiting == self._size:
+                before_all_go()
                 self._waiting = 0
                 self._round += 1
                 self._changed.notify_all()
@@ -80,31 +84,50 @@ class Room:
         self.timeout = timeout
         self.barrier = Barrier(size, timeout)
         self.slots: list[Call] = [Call("", (), None)] * size
+        self.difference = ""
+        self.found: Any = None
 
-    def wait(self, rank: int) -> None:
+    def wait(self, rank: int, before_all_go: Callable[[], None] = lambda: None) -> None:
         """Wait for all ranks; an error if one of them will not come."""
-        if not self.barrier.wait():
+        if not self.barrier.wait(before_all_go):
             raise RoomBrokenError(
                 f"rank {rank} waited for the others in vain: "
                 f"a rank failed, or took more than {self.timeout:g} s"
             )
 
-    def meet(self, rank: int, call: Call, take: Callable[[list[Any]], T]) -> T:
-        """Put a call into this rank's slot; when all are there, `take` from the values."""
+    def meet(
+        self,
+        rank: int,
+        call: Call,
+        take: Callable[[Any], T],
+        once: Callable[[list[Any]], Any] = lambda values: values,
+    ) -> T:
+        """Put a call into this rank's slot; when all are there, `take` from the values.
+
+        What one rank can do for all, `once` makes of the values, and `take` is given that.
+        """
         self.slots[rank] = call
-        self.wait(rank)
+        self.wait(rank, lambda: self._look(once))
         try:
-            self._agree(rank)
-            return take([other.value for other in self.slots])
+            if self.difference:
+                raise RankError(self.difference)
+            return take(self.found)
         finally:
             self.wait(rank)  # nobody changes an array or a slot before all have read
 
-    def _agree(self, rank: int) -> None:
-        """Raise on all ranks if they did not all call the same collective alike."""
+    def _look(self, once: Callable[[list[Any]], Any]) -> None:
+        """Do for all what has to be done once: compare the calls, and prepare what they take."""
+        self.difference = self._difference()
+        if not self.difference:
+            self.found = once([call.value for call in self.slots])
+
+    def _difference(self) -> str:
+        """Tell whether the ranks did not all call the same collective alike."""
         first = self.slots[0]
         for other, call in enumerate(self.slots):
             if (call.name, call.agree) != (first.name, first.agree):
-                raise RankError(
+                return (
                     f"collectives do not match: rank 0 called {first}, rank {other} {call}; "
                     "every rank must call the same ones in the same order"
                 )
+        return ""

@@ -56,10 +56,15 @@ class ThreadComm:
         return self._room.size
 
     def _meet(
-        self, name: str, agree: tuple[Any, ...], value: Any, take: Callable[[list[Any]], T]
+        self,
+        name: str,
+        agree: tuple[Any, ...],
+        value: Any,
+        take: Callable[[Any], T],
+        once: Callable[[list[Any]], Any] = list,
     ) -> T:
         """Meet the other ranks in one collective."""
-        return self._room.meet(self._rank, Call(name, agree, value), take)
+        return self._room.meet(self._rank, Call(name, agree, value), take, once)
 
     def barrier(self) -> None:
         """Return once every rank has arrived."""
@@ -73,7 +78,8 @@ class ThreadComm:
             "allreduce",
             (op, array.dtype, array.shape),
             array,
-            lambda values: np.asarray(combine(np.stack(values), axis=0)),
+            lambda whole: np.array(whole),
+            once=lambda values: combine(np.stack(values), axis=0),
         )
 
     def exscan(self, array: Array) -> Array:

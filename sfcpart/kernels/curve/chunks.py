@@ -161,6 +161,24 @@ def reach_back(
 
 
 @jit
+def last_within(
+    span: Int64Array, total: Int64Array, limit: Int64Array, most: int, most_limited: int
+) -> int:
+    """Return the last position of a stretch with no more than some sums before it; -1 if none."""
+    a, stop = int(span[0]) - 1, int(span[1]) - 1
+    while a < stop:
+        middle = (a + stop + 1) >> 1
+        if (
+            sum_before(total, middle, span[2]) <= most
+            and limit_before(limit, middle, span[2]) <= most_limited
+        ):
+            a = middle
+        else:
+            stop = middle - 1
+    return a if a >= span[0] else -1
+
+
+@jit
 def sweep_back(
     span: Int64Array,
     total: Int64Array,
@@ -169,6 +187,8 @@ def sweep_back(
     limit_cap: Int64Array,
     speed: FloatArray,
     heavy: Int64Array,
+    reach: Int64Array,
+    beyond: float,
     came: Int64Array,
     brackets: FloatArray,
     own_ptr: Int64Array,
@@ -176,12 +196,18 @@ def sweep_back(
 ) -> int:
     """Find the positions of this stretch from which chunks p, p + 1, ... can end the line.
 
+    But for the stretch where the range begins, only those that the chunks before can reach.
+
     Parameters
     ----------
     span : (5,) int64
         first, last, base, least (items a chunk takes at least), begin of the range.
     heavy : int64
         Positions whose next `least` items may be too much for some part, ascending.
+    reach : (P + 1, 2) int64
+        The most weight and limited weight before each cut, counted from the begin of the line.
+    beyond : float
+        The least quotient above the bottleneck that any chunk may have.
     came : (m, 5) int64
         Intervals beyond `last`: cut, low, high, total at low, limit at low; by cut, then place.
     brackets : (2,) float64, changed
@@ -198,6 +224,7 @@ def sweep_back(
         Number of intervals; -1 if `own` is too short.
     """
     first, least, n_parts = span[0], span[3], len(cap)
+    is_last = first <= span[4]
     ends = np.empty(4, np.int64)  # the interval of cut p + 1 at hand
     n = int(own_ptr[0])  # a plain 0 would compile the callees once more
     after = len(came)  # rows from here on belong to later cuts
@@ -216,6 +243,12 @@ def sweep_back(
             break
         fresh = n
         top = span[1] - 1  # highest position not decided
+        if not is_last:
+            top = last_within(span, total, limit, reach[p, 0], reach[p, 1])
+            if top < span[1] - 1:
+                brackets[0] = min(brackets[0], beyond)
+            if top < first:
+                break  # nor can the cuts before it lie here
         for k in range(n_all):
             if top < first:
                 break

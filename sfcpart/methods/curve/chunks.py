@@ -116,14 +116,17 @@ class _Task:
         """Return the least bottleneck that some division keeps."""
         low, high = self.bounds.lowest, np.inf
         top = max(self.weight / float(self.speed.min()), low)
-        ladder = [low, low + self.bounds.widest, min(low + 8 * self.bounds.widest, top), top]
+        step = self.bounds.widest
+        ladder = [low, low + step, min(low + 8 * step, top), top]
         n_tries = min(self.line.comm.size, _TRIES)
+        n_rungs = min(n_tries, 2)  # high rungs are dear: many cuts can be reached from anywhere
         while low < high:
+            tries = _between(low, high, n_tries) if not ladder else []
             if ladder:
-                tries = [b for b in ladder[:n_tries] if b >= low] or [top]
-                del ladder[:n_tries]
-            else:
-                tries = _between(low, high, n_tries)
+                tries = [b for b in ladder[:n_rungs] if b >= low] or [top]
+                tries += _between(low, tries[-1], n_tries - len(tries)) if low < tries[-1] else []
+                del ladder[:n_rungs]
+                n_rungs = 1
             for bottleneck, state in zip(tries, self._probe(tries), strict=True):
                 larger, smaller = state.brackets
                 if state.good_start(self.begin):
@@ -159,7 +162,7 @@ class _Task:
         """Return this rank's stretch of the range under a bottleneck."""
         cap = kernel.caps(bottleneck, self.speed, max(self.weight, 1))
         return Stretch(self.line, self.begin, self.end, self.least, cap, self.limit, self.speed,
-                       self.bounds.heavy)  # fmt: skip
+                       self.bounds.heavy, self.edge_sums)  # fmt: skip
 
     def place_cuts(self, bottleneck: float) -> Int64Array:
         """Return cuts that keep the bottleneck, each as near to its fair position as it can."""

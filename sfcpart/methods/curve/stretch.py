@@ -30,6 +30,12 @@ class Stretch:
     speed : (P,) float64
     heavy : (k,) int64
         Positions whose next `least` items may be too much for a part.
+    edge_sums : (2, 2) int64
+        Weight and limited weight before `begin` and `end`.
+    reach : (P + 1, 2) int64
+        The most of both that can be before each cut.
+    beyond : float
+        The least quotient of a chunk that `cap` does not allow.
     own_ptr, own : (P + 2,), (n, 3) int64
         Intervals, as `kernels.curve.chunks.sweep_back` writes them.
     """
@@ -42,12 +48,22 @@ class Stretch:
     limit: Int64Array
     speed: FloatArray
     heavy: Int64Array
+    edge_sums: Int64Array
+    reach: Int64Array = field(init=False)
+    beyond: float = field(init=False)
     own_ptr: Int64Array = field(init=False)
     own: Int64Array = field(init=False)
 
     def __post_init__(self) -> None:
         self.own_ptr = np.zeros(len(self.cap) + 2, np.int64)
         self.own = np.empty((0, 3), np.int64)
+        most = np.stack([self.cap, self.limit], axis=1).astype(np.float64).cumsum(axis=0)
+        whole = self.edge_sums[1] - self.edge_sums[0]
+        held = np.minimum(most * (1 + 1e-9) + 1, whole)  # rounded up: too much does no harm
+        self.reach = self.edge_sums[0] + np.append(np.zeros((1, 2), np.int64), held, axis=0)
+        self.reach = self.reach.astype(np.int64)
+        larger = np.where(self.cap < whole[0], (self.cap + 1) / self.speed, np.inf)
+        self.beyond = float(larger.min())
 
     @property
     def first(self) -> int:
@@ -86,7 +102,7 @@ class Stretch:
             self.own_ptr = np.zeros(len(self.cap) + 2, np.int64)
             n_own = kernel.sweep_back(
                 self.span, self.line.total, self.line.limit, self.cap, self.limit, self.speed,
-                self.heavy, came.rows, brackets, self.own_ptr, own,
+                self.heavy, self.reach, self.beyond, came.rows, brackets, self.own_ptr, own,
             )  # fmt: skip
             capacity *= 4
         self.own = own
