@@ -40,8 +40,8 @@ Counts (--parts):
 Examples:
   sfcpart forecast meshes/channel_mixed.vtu --parts 1:64
   sfcpart forecast meshes/channel_mixed.vtu --parts 1:64:9 --keep 0.9 --weight work
-  sfcpart forecast MESH --parts 16:4096 --network gigabit-ethernet --report scaling.html
-  sfcpart forecast MESH --parts 16:4096 --cell-seconds 4e-7 --latency 2e-6 --bandwidth 9e9 --json
+  sfcpart forecast meshes/kelvin_cells.vtkhdf --parts 4,8,12 --report scaling.html
+  sfcpart forecast meshes/turbine.vtu -n 2:32 --cell-seconds 4e-7 --latency 2e-6 --json
 
 Give measured numbers of your solver and network: the presets are orders of magnitude. A forecast
 comes from a simple model of work and messages; what it leaves out is printed with it.
