@@ -79,9 +79,10 @@ METHODS: Mapping[str, Method] = MappingProxyType(
             ),
             Method(
                 name="smoothed",
-                home="graph.on_graph:smoothed",
+                home="smoothing.on_slices:smoothed",
                 needs_graph=True,
                 summary="chunks of the Hilbert curve, borders moved to where they cut less",
+                by_slices=True,
             ),
             Method(
                 name="multilevel",

@@ -15,7 +15,7 @@ from itertools import pairwise
 import numpy as np
 
 from sfcpart.comm.base import Comm
-from sfcpart.dtypes import Array, BoolArray, Int32Array, Int64Array
+from sfcpart.dtypes import Array, BoolArray, Int64Array, IntArray
 
 __all__ = ["Bundles", "number_items"]
 
@@ -90,9 +90,9 @@ class Bundles:
             weights.append(given)
         return cls(comm, item, weights[0], weights[1], group[item], group, here)
 
-    def spread(self, item_part: Int32Array) -> Int32Array:
+    def spread(self, item_part: IntArray) -> IntArray:
         """Give every cell of the stretch the part of its item."""
-        part = np.full(len(self.item), -1, np.int32)
+        part = np.full(len(self.item), -1, item_part.dtype)
         part[self.item] = item_part
         known = self._here.reduce(part.astype(np.int64), np.maximum)
         known = self._here.over_ranks(known[:, None], (np.maximum,))[:, 0]

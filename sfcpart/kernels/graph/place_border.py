@@ -23,7 +23,6 @@ from sfcpart.kernels.graph.cut_trees import (
     TWIN,
     push_flow,
 )
-from sfcpart.kernels.graph.flow import PUSHES
 
 __all__ = ["place_borders"]
 
@@ -31,6 +30,9 @@ TRIES = 3
 """A border that overloads a part is sought again in a narrower band."""
 
 NARROWER = 0.4
+
+NO_END = 1 << 62
+"""A flow is never given up: how many pushes it takes depends on the order of the rows."""
 
 
 @jit
@@ -75,56 +77,88 @@ def choose_rows(
 @jit
 def join_rows(
     n: int, first: int, row_at: Array, row_first: Array, row_note: Array, entry_to: Array,
-    entry_weight: Array, local: Array, chosen: Array, ptr: Array, arc: Array, left: Array,
-    source: Array, sink: Array, fill: Array,
+    entry_weight: Array, local: Array, chosen: Array, ptr: Array, stop: Array, arc: Array,
+    left: Array, source: Array, sink: Array,
 ) -> int:  # fmt: skip
     """Write the arcs between chosen rows (each with its twin) and the links to either side.
 
     Returns what the present border cuts of them.
     """
-    ptr[0] = 0
+    room = 0
+    for i in range(n):
+        r = row_at[first + chosen[i]]
+        ptr[i] = room
+        stop[i] = room
+        room += row_first[r + 1] - row_first[r]
+        source[i] = 0
+        sink[i] = 0
     border = 0
     for i in range(n):
         r = row_at[first + chosen[i]]
         side = row_note[r] & 1
-        count = 0
-        source[i] = 0
-        sink[i] = 0
         for e in range(row_first[r], row_first[r + 1]):
-            to = entry_to[e]
-            if to >= 0:
-                to = local[to]
-            if to >= 0:
-                count += 1
-            elif to == -1:
+            h = entry_to[e]
+            if h >= 0:
+                h = local[h]
+            if h > i:
+                x = stop[i]
+                y = stop[h]
+                stop[i] += 1
+                stop[h] += 1
+                arc[x, HEAD] = h
+                arc[y, HEAD] = i
+                arc[x, TWIN] = y
+                arc[y, TWIN] = x
+                left[x] = entry_weight[e]
+                left[y] = entry_weight[e]
+                if (row_note[row_at[first + chosen[h]]] & 1) != side:
+                    border += entry_weight[e]
+            elif h == -1:
                 source[i] += entry_weight[e]
-            elif to == -2:
+            elif h == -2:
                 sink[i] += entry_weight[e]
         border += source[i] if side else sink[i]
-        ptr[i + 1] = ptr[i] + count
-        fill[i] = ptr[i]
-    for i in range(n):
-        r = row_at[first + chosen[i]]
-        side = row_note[r] & 1
-        for e in range(row_first[r], row_first[r + 1]):
-            if entry_to[e] < 0:
-                continue
-            h = local[entry_to[e]]
-            if h <= i:
-                continue
-            if (row_note[row_at[first + chosen[h]]] & 1) != side:
-                border += entry_weight[e]
-            x = fill[i]
-            y = fill[h]
-            fill[i] += 1
-            fill[h] += 1
-            arc[x, HEAD] = h
-            arc[y, HEAD] = i
-            arc[x, TWIN] = y
-            arc[y, TWIN] = x
-            left[x] = entry_weight[e]
-            left[y] = entry_weight[e]
     return border
+
+
+@jit
+def settle(
+    n: int, first: int, row_at: Array, row_note: Array, row_weight: Array, chosen: Array,
+    node: Array, load: Array, capacity: Array, fall: int, side: Array,
+) -> int:  # fmt: skip
+    """Move the border to a least cut that fits; return 0 if none does, 1 if so, 2 if it moved.
+
+    There are two: the first part keeps only what the source reaches, or all but what reaches the
+    sink. The one that leaves the parts' rooms more alike is taken, unless nothing is gained by it.
+    `load` and `capacity` are those of the pair.
+    """
+    total = load[0] + load[1]
+    small = load[0]
+    large = load[0]
+    for x in range(n):
+        r = row_at[first + chosen[x]]
+        now = 1 - (row_note[r] & 1)
+        small += row_weight[r] * ((1 if node[x, TREE] == SOURCE else 0) - now)
+        large += row_weight[r] * ((0 if node[x, TREE] == SINK else 1) - now)
+    small_fits = small <= capacity[0] and total - small <= capacity[1]
+    large_fits = large <= capacity[0] and total - large <= capacity[1]
+    if not (small_fits or large_fits):
+        return 0
+    # balance as far as capacities tell: the room both parts keep
+    lean = capacity[0] - capacity[1] + total
+    small_skew = abs(lean - 2 * small)
+    large_skew = abs(lean - 2 * large)
+    use_large = large_fits and (not small_fits or large_skew < small_skew)
+    skew = large_skew if use_large else small_skew
+    if fall <= 0 and (fall < 0 or skew >= abs(lean - 2 * load[0])):
+        return 1
+    for x in range(n):
+        tree = node[x, TREE]
+        to_first = tree == SOURCE or (use_large and tree != SINK)
+        side[row_at[first + chosen[x]]] = 0 if to_first else 1
+    load[0] = large if use_large else small
+    load[1] = total - load[0]
+    return 2
 
 
 @jit
@@ -161,15 +195,9 @@ def place_borders(
             entries += row_first[row_at[x] + 1] - row_first[row_at[x]]
         widest = max(widest, entries)
     held = np.zeros((2, n_places), np.int64)
-    local = np.empty(longest, np.int32)
-    chosen = np.empty(longest, np.int32)
+    slim = np.empty((4, longest), np.int32)  # numbers among the chosen, scratch of the flow
+    wide = np.empty((4, longest), np.int64)  # where arcs start and stop, capacities outside
     node = np.empty((longest, N_COLUMNS), np.int32)
-    waiting = np.empty(longest, np.int32)
-    orphans = np.empty(longest, np.int32)
-    fill = np.empty(longest, np.int64)
-    ptr = np.empty(longest + 1, np.int64)
-    source = np.empty(longest, np.int64)
-    sink = np.empty(longest, np.int64)
     arc = np.empty((widest, 2), np.int32)
     left = np.empty(widest, np.int64)
     for i in range(start, stop):
@@ -177,51 +205,30 @@ def place_borders(
         gain[i] = 0
         for x in range(first, row_ptr[i + 1]):
             side[row_at[x]] = row_note[row_at[x]] & 1
-        most_a = capacity[i, 0]
-        most_b = capacity[i, 1]
-        load_a = load[i, 0]
-        total = load_a + load[i, 1]
         widen = stretch
         for _ in range(TRIES):
             # at most half a part, so that something is left to be source or sink
-            limit_a = min(load_a // 2, int(widen * max(0, most_b - load[i, 1])) + 1)
-            limit_b = min(load[i, 1] // 2, int(widen * max(0, most_a - load_a)) + 1)
+            room_a = capacity[i, 0] - load[i, 0]
+            room_b = capacity[i, 1] - load[i, 1]
             n = choose_rows(
-                first, row_ptr[i + 1], row_at, row_note, row_weight, limit_a, limit_b, held,
-                local, chosen,
+                first, row_ptr[i + 1], row_at, row_note, row_weight,
+                min(load[i, 0] // 2, int(widen * max(0, room_b)) + 1),
+                min(load[i, 1] // 2, int(widen * max(0, room_a)) + 1), held, slim[0], slim[1],
             )  # fmt: skip
             border = join_rows(
-                n, first, row_at, row_first, row_note, entry_to, entry_weight, local, chosen, ptr,
-                arc, left, source, sink, fill,
+                n, first, row_at, row_first, row_note, entry_to, entry_weight, slim[0], slim[1],
+                wide[0], wide[1], arc, left, wide[2], wide[3],
             )  # fmt: skip
             value = push_flow(
-                n, ptr, fill, arc, left, source, sink, node, waiting, orphans, PUSHES * n
+                n, wide[0], wide[1], arc, left, wide[2], wide[3], node, slim[2], slim[3], NO_END
             )
-            if value < 0:
-                break
-            small = load_a  # load of a if it keeps only the source's side; or all but the sink's
-            large = load_a
-            for x in range(n):
-                r = row_at[first + chosen[x]]
-                small += row_weight[r] * ((node[x, TREE] == SOURCE) - ((row_note[r] & 1) == 0))
-                large += row_weight[r] * ((node[x, TREE] != SINK) - ((row_note[r] & 1) == 0))
-            small_fits = small <= most_a and total - small <= most_b
-            large_fits = large <= most_a and total - large <= most_b
-            if small_fits or large_fits:
-                # balance as far as capacities tell: the room both parts keep
-                small_skew = abs((most_a - small) - (most_b - total + small))
-                large_skew = abs((most_a - large) - (most_b - total + large))
-                use_large = large_fits and (not small_fits or large_skew < small_skew)
-                skew = large_skew if use_large else small_skew
-                now = abs((most_a - load_a) - (most_b - load[i, 1]))
-                if value < border or (value == border and skew < now):
-                    for x in range(n):
-                        to_a = node[x, TREE] == SOURCE or (use_large and node[x, TREE] != SINK)
-                        side[row_at[first + chosen[x]]] = 0 if to_a else 1
-                    load[i, 0] = large if use_large else small
-                    load[i, 1] = total - load[i, 0]
-                    gain[i] = border - value if value < border else -1
-                break
-            if value >= border:
+            fall = border - value
+            how = settle(
+                n, first, row_at, row_note, row_weight, slim[1], node, load[i], capacity[i], fall,
+                side,
+            )  # fmt: skip
+            if how == 2:
+                gain[i] = fall if fall > 0 else -1
+            if how > 0 or fall <= 0:
                 break
             widen *= NARROWER

@@ -19,11 +19,11 @@ from sfcpart.methods.graph.cell_problem import CellProblem, limits_kept
 from sfcpart.methods.graph.coarsen import WeightedGraph
 from sfcpart.methods.graph.labels import cut_of
 from sfcpart.methods.graph.search import best_of_many
-from sfcpart.methods.graph.smooth import smooth
 from sfcpart.methods.graph.vcycle import Aim
 from sfcpart.methods.problem import Problem
+from sfcpart.methods.smoothing.on_slices import smoothed
 
-__all__ = ["multilevel", "smoothed"]
+__all__ = ["multilevel"]
 
 
 def multilevel(problem: Problem) -> Int32Array:
@@ -68,41 +68,6 @@ def multilevel(problem: Problem) -> Int32Array:
     return cells.spread(part)
 
 
-def smoothed(problem: Problem) -> Int32Array:
-    """Return the part of each local cell: chunks of the Hilbert curve with smoothed borders.
-
-    Parameters
-    ----------
-    problem : Problem
-
-    Returns
-    -------
-    (n_local,) int32
-        Cuts no more faces than the `hilbert` method, with parts no heavier than the tolerance
-        allows (or than its heaviest, if it exceeds that).
-
-    Raises
-    ------
-    InputError, PartitionError
-        As `multilevel`, and as the `hilbert` method.
-
-    Notes
-    -----
-    O(n) for bounded degrees. With nested levels borders move inside the chunks of the upper
-    levels only. If smoothing breaks a limit, the start is returned.
-    """
-    start = along_hilbert(problem)
-    whole = np.concatenate(problem.comm.allgather(start))
-    cells = CellProblem.of(problem)
-    part = cells.gather(whole)
-    sizes = problem.level_sizes or (problem.n_parts,)
-    graph = cells.graph if len(sizes) == 1 else _cut_off(cells.graph, part // sizes[-1])
-    weight = int(graph.vertex_weight.sum())
-    aim = mesh_aim(weight, problem.part_speed, problem.tolerance, problem.seed)
-    better = smooth(graph, part, aim)
-    return cells.spread(better) if limits_kept(problem, cells, better) else start
-
-
 def mesh_aim(total: int, speed: FloatArray, tolerance: float, seed: int) -> Aim:
     """Aim at shares by speed; capacities are (1 + tolerance) shares, or whole shares rounded up."""
     exact = Aim.of(total, speed, 0.0, seed)
@@ -145,15 +110,6 @@ def _inside(graph: WeightedGraph, members: Array) -> WeightedGraph:
         graph.edge_weight[entry[keep]],
         graph.vertex_weight[members],
     )
-
-
-def _cut_off(graph: WeightedGraph, label: Int32Array) -> WeightedGraph:
-    """Return the graph without the edges between different labels."""
-    row = np.repeat(np.arange(graph.n), np.diff(graph.indptr))
-    keep = label[row] == label[graph.indices]
-    count = np.bincount(row[keep], minlength=graph.n)
-    indptr = np.concatenate([[0], np.cumsum(count)]).astype(np.int64)
-    return WeightedGraph(indptr, graph.indices[keep], graph.edge_weight[keep], graph.vertex_weight)
 
 
 def _both_weights(problem: Problem, cells: CellProblem) -> WeightedGraph:

@@ -39,8 +39,7 @@ def flow_between(state: State, *, sweeps: int) -> int:
         for turn, group in enumerate(disjoint_groups(pairs, state.n_parts)):
             if turn % FRESH == 0:  # what changes meanwhile is within the bands anyway
                 fringe = bands.fringe()
-            group = group[np.argsort(bands.host[group[:, 0]], kind="stable")]
-            gain = bands.solve(group, fringe)
+            gain = bands.place(group, fringe)
             total += int(np.maximum(gain, 0).sum())
             stale[group[gain != 0].ravel()] = True
         if total == before:

@@ -18,7 +18,7 @@ from sfcpart.methods.smoothing.borders import touching_pairs
 from sfcpart.methods.smoothing.queues import bucket_of, weight_before
 from sfcpart.methods.smoothing.state import State
 
-__all__ = ["fill_empty_parts", "rebalance"]
+__all__ = ["fill_empty_parts", "rebalance", "steps_to_room"]
 
 IDLE = 4
 """Rounds without a lower overload after which rebalancing gives up."""
@@ -28,9 +28,13 @@ def rebalance(state: State) -> Int32Array:
     """Shed excess until none is left or nothing helps; return this rank's vertices that moved."""
     lowest, idle = state.overload, 0
     moved: list[Array] = [np.empty(0, np.int32)]
+    near = True  # at first only to neighbours with room, which takes no distances
     while lowest > 0 and idle < IDLE:
-        leavers, to = _leavers(state)
+        leavers, to = _leavers(state, near=near)
+        near, was_near = False, near
         if int(state.graph.comm.allreduce(np.array([len(leavers)]))[0]) == 0:
+            if was_near:
+                continue
             break
         state.move(leavers, to)
         moved.append(leavers)
@@ -39,12 +43,12 @@ def rebalance(state: State) -> Int32Array:
     return np.unique(np.concatenate(moved))
 
 
-def _leavers(state: State) -> tuple[Int32Array, Int32Array]:
+def _leavers(state: State, *, near: bool) -> tuple[Int32Array, Int32Array]:
     """Choose the vertices that leave in one round, and where to."""
     graph, comm, k = state.graph, state.graph.comm, state.n_parts
     boundary = state.boundary()
     boundary = boundary[(state.load > state.capacity)[state.part[boundary]]]
-    distance = _steps_to_room(state)
+    distance = np.zeros(k, np.int32) if near else steps_to_room(state, touching_pairs(state)[0])
     target = np.empty(len(boundary), np.int32)
     loss = np.empty(len(boundary), np.int64)
     run_ranges(
@@ -66,10 +70,9 @@ def _leavers(state: State) -> tuple[Int32Array, Int32Array]:
     return vertex[keep], target[keep]
 
 
-def _steps_to_room(state: State) -> Int32Array:
-    """Steps over neighbouring parts from each part to one that has room."""
+def steps_to_room(state: State, pairs: Int32Array) -> Int32Array:
+    """Steps over neighbouring parts from each part to one that has room; n_parts if none leads."""
     k = state.n_parts
-    pairs, _ = touching_pairs(state)
     distance = np.full(k, k, np.int32)
     near = state.load < state.capacity
     step = 0
@@ -94,10 +97,10 @@ def fill_empty_parts(state: State) -> None:
     if not len(empty):
         return
     row = np.repeat(np.arange(graph.n), np.diff(graph.indptr))
+    inside = np.zeros(graph.n, np.int64)
+    same = state.part[row] == state.part[graph.indices]
+    np.add.at(inside, row[same], graph.edge_weight[same])
     for p in empty:
-        inside = np.zeros(graph.n, np.int64)
-        same = state.part[row] == state.part[graph.indices]
-        np.add.at(inside, row[same], graph.edge_weight[same])
         excess = (state.load - state.capacity)[state.own]
         chosen = _least(state, np.flatnonzero(size[state.own] > 1), (-excess, inside))
         if chosen is None:

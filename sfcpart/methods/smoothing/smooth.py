@@ -1,19 +1,39 @@
 """Smooth a partition over ranks: move its borders to where they cut less, within the balance.
 
-Label moves straighten ragged borders, flows then put each border between two parts where it cuts
-least. The answer does not depend on the number of ranks or threads.
+Where parts are large, blocks of the curve are moved first (`blocks`), by label moves and flows;
+then flows put each border between two parts where it cuts least, vertex by vertex; pieces are
+joined. The answer does not depend on the number of ranks or threads.
+
+Measured (1.08e6 random Delaunay tets along the curve, 64 parts, 3 %, processor seconds of one
+thread; cuts as multiples of the start's). Flows alone 0.632 in 0.5 s, two sweeps 0.605 in 1.0 s.
+Label moves alone 0.719 in 0.4 s, before the flows 0.625 in 1.0 s. Label moves and flows of blocks
+of 128, then flows 0.617 in 0.7 s; two sweeps 0.594 in 1.1 s. Blocks of 64 and then of 8: 0.612 in
+1.4 s. Coarse by matching (`methods.graph.coarsen`, five levels) instead of blocks, refined by local
+searches: 0.610 in 3.3 s. Blocks win, and need no matching.
 """
 
 from __future__ import annotations
 
+import numpy as np
+
 from sfcpart.dtypes import Int32Array, Int64Array
+from sfcpart.methods.smoothing.blocks import BlockGraph
 from sfcpart.methods.smoothing.borders import flow_between
 from sfcpart.methods.smoothing.excess import fill_empty_parts, rebalance
 from sfcpart.methods.smoothing.moves import move_labels
+from sfcpart.methods.smoothing.pieces import join_pieces
 from sfcpart.methods.smoothing.state import State
 from sfcpart.methods.smoothing.weighted_slice import WeightedSlice
 
 __all__ = ["smooth_slice"]
+
+BLOCKS = 128
+"""Blocks in a part; they are moved if they hold `LEAST_BLOCK` vertices or more."""
+
+LEAST_BLOCK = 16
+
+RAGGED = 3
+"""If more than one vertex in so many lies at a border, label moves go first, two sweeps follow."""
 
 
 def smooth_slice(
@@ -21,7 +41,7 @@ def smooth_slice(
     part: Int32Array,
     capacity: Int64Array,
     *,
-    sweeps: int = 1,
+    sweeps: int | None = None,
     home_part: Int32Array | None = None,
     home_price: Int64Array | None = None,
 ) -> Int32Array:
@@ -35,15 +55,32 @@ def smooth_slice(
     capacity : (n_parts,) int64
         The most each part may weigh. A start that exceeds it is rebalanced, and may then cost more.
     sweeps : int
-        Rounds of flows over all pairs of neighbouring parts.
+        Rounds of flows over all pairs of neighbouring parts; 1 by default, 2 where borders are
+        ragged or parts small.
     home_part, home_price : (n,) int32, (n,) int64, optional
         Where vertices come from, and what it costs to have them elsewhere, in units of edge
         weight: the cost is the cut and these prices. A part of -1 is no home.
     """
     state = State.of(graph, part, capacity, home_part=home_part, home_price=home_price)
     start = state.overload, state.cost()
+    fill_empty_parts(state)
     rebalance(state)
-    move_labels(state, patience=1)
-    flow_between(state, sweeps=sweeps)
+    size = graph.n_total // len(capacity)
+    at_border = int(graph.comm.allreduce(np.array([len(state.boundary())], np.int64))[0])
+    ragged = at_border * RAGGED > graph.n_total
+    if ragged:
+        move_labels(state, patience=1)
+    elif size >= BLOCKS * LEAST_BLOCK:
+        _move_blocks(state, (size // BLOCKS).bit_length() - 1)
+    flow_between(state, sweeps=sweeps or (2 if ragged else 1))
+    join_pieces(state)
     fill_empty_parts(state)
     return state.own.copy() if (state.overload, state.cost()) <= start else part
+
+
+def _move_blocks(state: State, bits: int) -> None:
+    """Improve by moving what blocks of 2**bits vertices hold of a part."""
+    blocks = BlockGraph.of(state, bits)
+    move_labels(blocks.coarse, patience=2)
+    flow_between(blocks.coarse, sweeps=2)
+    blocks.project()

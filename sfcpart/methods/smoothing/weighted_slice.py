@@ -7,14 +7,14 @@ theirs. With one rank there are none, and the slice is the graph.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 
 import numpy as np
 
 from sfcpart.comm import SerialComm
 from sfcpart.comm.base import Comm
-from sfcpart.dtypes import Array, Int32Array, Int64Array
+from sfcpart.dtypes import Array, Int32Array, Int64Array, IntArray
 from sfcpart.methods.graph.coarsen import WeightedGraph
 
 __all__ = ["WeightedSlice", "cut_by_rank"]
@@ -73,25 +73,28 @@ class WeightedSlice:
         cls,
         comm: Comm,
         indptr: Int64Array,
-        neighbour_gid: Int64Array,
+        neighbour_gid: IntArray,
         edge_weight: Int64Array,
         vertex_weight: Int64Array,
     ) -> WeightedSlice:
-        """Number the neighbours locally and agree on who shows what to whom (collective)."""
+        """Number the neighbours locally and agree on who shows what to whom (collective).
+
+        Two vertices may share several edges; then both rows have an entry for each.
+        """
         n = len(vertex_weight)
         sizes = np.concatenate(comm.allgather(np.array([n], np.int64)))
         offset = np.concatenate(([0], np.cumsum(sizes)))
         first = int(offset[comm.rank])
-        indices = (neighbour_gid - first).astype(np.int64)
-        foreign = np.flatnonzero((indices < 0) | (indices >= n))
-        ghost_gid, place = np.unique(neighbour_gid[foreign], return_inverse=True)
+        indices = (neighbour_gid - first).astype(np.int32)  # those of other ranks follow
+        foreign = np.flatnonzero((neighbour_gid < first) | (neighbour_gid >= first + n))
+        ghost_gid, place = np.unique(neighbour_gid[foreign].astype(np.int64), return_inverse=True)
         indices[foreign] = n + place
         owner = np.searchsorted(offset, ghost_gid, side="right") - 1
         ghost_count = np.bincount(owner, minlength=comm.size).astype(np.int64)
         asked = comm.alltoall(cut_by_rank(ghost_gid, ghost_count))
         shown = (np.concatenate(asked) - first).astype(np.int32)
         return cls(
-            comm, offset, indptr, indices.astype(np.int32), edge_weight, vertex_weight, ghost_gid,
+            comm, offset, indptr, indices, edge_weight, vertex_weight, ghost_gid,
             ghost_count, shown, np.array([len(rows) for rows in asked], np.int64),
         )  # fmt: skip
 
@@ -134,8 +137,11 @@ class WeightedSlice:
 
     def fetch(self, held: Array) -> None:
         """Bring the ghosts' values up to date in an array with a value for all that is held."""
-        sent = cut_by_rank(held[self.shown], self.shown_count)
-        held[self.n :] = np.concatenate(self.comm.alltoall(sent))
+        held[self.n :] = self.swap(held[self.shown])
+
+    def swap(self, shown_values: Array) -> Array:
+        """Return values of the ghosts, given those of what this rank shows."""
+        return np.concatenate(self.comm.alltoall(cut_by_rank(shown_values, self.shown_count)))
 
     def held(self, values: Array) -> Array:
         """Return this rank's values followed by those of the ghosts."""
@@ -143,6 +149,18 @@ class WeightedSlice:
         array[: self.n] = values
         self.fetch(array)
         return array
+
+    def without_edges_between(self, label: Array) -> WeightedSlice:
+        """Return the slice without the edges between different labels, (n_held,)."""
+        row = np.repeat(label[: self.n], np.diff(self.indptr))
+        keep = row == label[self.indices]
+        kept = np.concatenate(([0], np.cumsum(keep)))
+        return replace(
+            self,
+            indptr=kept[self.indptr],
+            indices=self.indices[keep],
+            edge_weight=self.edge_weight[keep],
+        )
 
     def sum_by(self, label: Array, values: Int64Array, size: int) -> Int64Array:
         """Add up values by label over all ranks, (size,) int64."""
