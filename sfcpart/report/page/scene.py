@@ -26,8 +26,9 @@ __all__ = ["MOST_TRIANGLES", "Shape", "pack_scene", "thin_triangles"]
 
 MOST_TRIANGLES = 120_000
 FINEST = 16  # bits of a coordinate
-FIRST = 0.6  # steps of the first lattice tried, times the root of the triangles allowed
+FIRST = 0.3  # steps of the first lattice tried, times the root of the triangles allowed
 COARSEST = 2  # steps
+_TABLE = 1 << 24  # cells of a lattice that are numbered by a table
 
 
 @dataclass(frozen=True, eq=False)
@@ -106,16 +107,14 @@ def _coarsened(
         kept = _different(group, part)
         if len(kept) <= most or steps <= COARSEST:
             return steps, corners, kept[:most]
-        shrink = max(0.5, 0.97 * (most / len(kept)) ** 0.5)  # triangles grow as steps squared
+        shrink = max(0.5, 0.85 * (most / len(kept)) ** 0.5)  # triangles grow as steps squared
         steps = max(COARSEST, int(shrink * steps))
 
 
 def _united(place: Int64Array, steps: int) -> tuple[Int64Array, Int64Array]:
     """Move points to the mean of those in the same cell of a lattice; return also the cells."""
     cell = place * steps >> FINEST
-    key = (cell[..., 0] << 2 * FINEST | cell[..., 1] << FINEST | cell[..., 2]).ravel()
-    _, group = np.unique(key, return_inverse=True)
-    group = group.ravel()
+    group = _numbered(((cell[..., 0] * steps + cell[..., 1]) * steps + cell[..., 2]).ravel(), steps)
     count = np.bincount(group)
     mean = np.empty_like(place)
     for axis in range(3):  # sums of whole numbers below 2^53: exact in any order
@@ -124,15 +123,28 @@ def _united(place: Int64Array, steps: int) -> tuple[Int64Array, Int64Array]:
     return mean, group.reshape(place.shape[:2])
 
 
+def _numbered(key: Int64Array, steps: int) -> Int64Array:
+    """Number the different cells of a lattice from 0, in order; by a table where that is small."""
+    if steps**3 > _TABLE:
+        return np.unique(key, return_inverse=True)[1].ravel().astype(np.int64)
+    there = np.zeros(steps**3, bool)
+    there[key] = True
+    numbers: Int64Array = (np.cumsum(there, dtype=np.int64) - 1)[key]
+    return numbers
+
+
 def _different(group: Int64Array, part: Int64Array) -> Int64Array:
     """Return the triangles with three corners, one of those that coincide within a part."""
     a, b, c = np.sort(group, axis=1).T
     whole = np.flatnonzero((a != b) & (b != c))
-    a, b, c, owner = a[whole], b[whole], c[whole], part[whole]
-    order = np.lexsort((c, b, a, owner))
-    rows = np.stack([owner, a, b, c], axis=1)[order]
-    is_new = np.ones(len(rows), bool)
-    is_new[1:] = (rows[1:] != rows[:-1]).any(axis=1)
+    if not len(whole):
+        return whole
+    base = int(group.max()) + 1
+    low = a[whole] * base + b[whole]  # below 2^62: there are less than 2^31 points
+    high = c[whole] * (int(part.max()) + 1) + part[whole]
+    order = np.lexsort((low, high))
+    is_new = np.ones(len(order), bool)
+    is_new[1:] = (np.diff(low[order]) != 0) | (np.diff(high[order]) != 0)
     return np.sort(whole[order[is_new]])
 
 
