@@ -246,7 +246,12 @@ def _ranges(values: FloatArray, held: MeshSlice) -> dict[str, float]:
 
 
 def used_points(mesh: Mesh) -> BoolArray:
-    """Mark the points that cells list."""
+    """Mark the points that cells list, kept on the mesh."""
+    return mesh.keep("used points", lambda: _used_points(mesh))
+
+
+def _used_points(mesh: Mesh) -> BoolArray:
+    """Mark them."""
     used = np.zeros(mesh.n_points, np.bool_)
     used[mesh.indices] = True
     return used

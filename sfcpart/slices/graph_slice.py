@@ -284,7 +284,7 @@ def _with_entries(
     rows: tuple[Any, ...], row: Array, gid: Int64Array, measure: FloatArray, *, first: int
 ) -> tuple[tuple[Array, ...], Int64Array]:
     """Add entries to the rows of local cells; return them and the cells that are not local."""
-    from sfcpart.kernels.mesh.face_rows import sort_rows
+    from sfcpart.kernels.mesh.face_rows import merge_rows
 
     if not len(row):
         return rows, np.zeros(0, GID)
@@ -298,16 +298,13 @@ def _with_entries(
         np.searchsorted(ghost_gid, gid),
         np.where(gid < first + n, gid - first + n_low, np.searchsorted(ghost_gid, gid) + n),
     )
-    by_row = np.argsort(row, kind="stable")
-    at = indptr[row[by_row]]
-    dtype = index_dtype(n + len(ghost_gid))
-    indices = np.insert(indices.astype(dtype, copy=False) + dtype(n_low), at, place[by_row])
-    data = np.insert(data, at, measure[by_row])
-    added = np.concatenate(([0], np.cumsum(np.bincount(row, minlength=n))))
-    indptr = indptr + added
-    run_ranges(sort_rows, n, indptr, indices, data.view(np.int64))
-    _to_local(indices, n_low, n)
-    return (indptr, indices, data, boundary_count, boundary_measure), ghost_gid
+    by_row = np.lexsort((measure, place, row))
+    added = np.concatenate(([0], np.cumsum(np.bincount(row, minlength=n)))).astype(OFFSET)
+    more = (added, place[by_row], measure[by_row], n_low)
+    merged = np.empty(len(indices) + len(row), index_dtype(n + len(ghost_gid)))
+    measures = np.empty(len(merged), COORDINATE)
+    run_ranges(merge_rows, n, indptr, indices, data, *more, merged, measures)
+    return (indptr + added, merged, measures, boundary_count, boundary_measure), ghost_gid
 
 
 def _to_local(indices: IntArray, n_low: int, n: int) -> None:

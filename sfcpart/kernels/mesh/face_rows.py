@@ -15,7 +15,7 @@ from sfcpart.dtypes import Array, FloatArray, Int32Array, Int64Array
 from sfcpart.kernels._jit import jit
 from sfcpart.kernels.mesh.face_match import sort_pairs
 
-__all__ = ["count_given", "count_rows", "fill_rows", "place_given", "sort_rows"]
+__all__ = ["count_given", "count_rows", "fill_rows", "merge_rows", "place_given", "sort_rows"]
 
 
 @jit
@@ -144,3 +144,45 @@ def sort_rows(start: int, stop: int, indptr: Int64Array, indices: Array, bits: I
     for row in range(start, stop):
         lo, hi = indptr[row], indptr[row + 1]
         sort_pairs(indices[lo:hi], bits[lo:hi], hi - lo)
+
+
+@jit
+def merge_rows(
+    start: int,
+    stop: int,
+    indptr: Int64Array,
+    indices: Array,
+    data: FloatArray,
+    more_indptr: Int64Array,
+    more_place: Int64Array,
+    more_data: FloatArray,
+    n_low: int,
+    to_indices: Array,
+    to_data: FloatArray,
+) -> None:
+    """Merge further entries into rows start..stop, by place of the neighbour, then by measure.
+
+    Places count all known cells: `n_low` ghosts, the cells of the rows, the other ghosts. Entries
+    are written with ghosts after the cells of the rows.
+    """
+    n = len(indptr) - 1
+    for row in range(start, stop):
+        at, more = indptr[row], more_indptr[row]
+        for to in range(at + more, indptr[row + 1] + more_indptr[row + 1]):
+            takes_more = more < more_indptr[row + 1]
+            if takes_more and at < indptr[row + 1]:
+                place = indices[at] + n_low
+                takes_more = more_place[more] < place or (
+                    more_place[more] == place and more_data[more] < data[at]
+                )
+            if takes_more:
+                place = more_place[more]
+                to_indices[to] = place + n if place < n_low else place
+                if n_low <= place < n_low + n:
+                    to_indices[to] = place - n_low
+                to_data[to] = more_data[more]
+                more += 1
+            else:
+                to_indices[to] = indices[at]
+                to_data[to] = data[at]
+                at += 1
