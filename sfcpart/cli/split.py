@@ -29,6 +29,7 @@ Examples:
   sfcpart split meshes/channel_mixed.vtu --levels 2x4 -o parts --weight work
   sfcpart split meshes/channel_mixed.vtu -n 4 --speeds 2*1,2*0.5 --format vtu -o parts
   sfcpart split meshes/channel_mixed.vtu -n 8 --limit memory:300 --json
+  sfcpart split meshes/turbine.vtu --from body --method smoothed
 
 \b
 Written to DIR:
@@ -58,6 +59,13 @@ nothing about whether a simulation is right.
     show_default=True,
     help="How to split: NAMES.",
 )
+@click.option(
+    "--from",
+    "start",
+    metavar="FIELD|FILE",
+    help="Improve a partition that is there, by --method smoothed: a cell field of MESH, a text or "
+    ".npy file of integers, or a folder that split wrote. --parts is then its number of parts.",
+)
 @wish_options
 @click.option(
     "-f",
@@ -85,7 +93,10 @@ nothing about whether a simulation is right.
 def command(**given: Any) -> None:
     """Parse, split, write, print."""
     quiet, as_json = given.pop("quiet"), given.pop("as_json")
-    check_part_count(given)
+    if given["start"] is not None:
+        _check_start(given)
+    if given["start"] is None or given["n_parts"] or given["levels"]:
+        check_part_count(given)
     _check_output(given)
     prepare_process(given.pop("threads"))
     model = step_model(given)
@@ -94,6 +105,17 @@ def command(**given: Any) -> None:
     job = SplitJob(given, step_model=model, quiet=quiet or as_json)
     job.run()
     job.report(as_json=as_json, quiet=quiet)
+
+
+def _check_start(given: dict[str, Any]) -> None:
+    """Settle the method that improves a start, before anything is loaded."""
+    source = click.get_current_context().get_parameter_source("method")
+    if source is click.core.ParameterSource.DEFAULT:
+        given["method"] = "smoothed"
+    if given["method"] != "smoothed":
+        raise click.UsageError(
+            f"--from is a start for --method smoothed; {given['method']} splits without one"
+        )
 
 
 def _check_output(given: dict[str, Any]) -> None:

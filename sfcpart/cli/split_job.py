@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 from sfcpart.cli.console import Stages, note, print_json
 from sfcpart.cli.figures import print_assessment, print_verdict
 from sfcpart.cli.ranks import read_held
+from sfcpart.cli.start import read_start
 from sfcpart.cli.wishes import load_wish, shape_wish
 from sfcpart.launcher import launched
 from sfcpart.report.numbers import counted
@@ -27,6 +28,7 @@ class SplitJob:
 
     mesh: Mesh | MeshSlice
     partition: Partition
+    start: Partition | None = None
     assessment: Assessment
 
     def __init__(self, options: dict[str, Any], *, step_model: StepModel, quiet: bool) -> None:
@@ -47,6 +49,10 @@ class SplitJob:
             check_output_folder(given["output"], overwrite=given["overwrite"])
         with self.doing(f"reading {self.source}"):
             self.mesh = read_held(self.source, merge_points=given["merge_points"])
+        if given["start"] is not None:
+            with self.doing(f"reading the parts of {given['start']}"):
+                self.start = read_start(self.mesh, given["start"])
+            given["n_parts"] = given["n_parts"] or self.start.n_parts
         load = load_wish(given)
         with self.doing(f"splitting {self.mesh.n_cells:,} cells"):
             self._split(load)
@@ -76,9 +82,13 @@ class SplitJob:
         from sfcpart import api
 
         given = self.options
-        self.partition = api.split(
-            self.mesh, given["n_parts"], method=given["method"], **shape_wish(given), **load
-        )
+        if self.start is None:
+            self.partition = api.split(
+                self.mesh, given["n_parts"], method=given["method"], **shape_wish(given), **load
+            )
+            return
+        wish = {k: v for k, v in shape_wish(given).items() if k not in ("cuts", "seed")}
+        self.partition = api.smooth(self.mesh, self.start, given["n_parts"], **wish, **load)
 
     def _measure(self, load: dict[str, Any]) -> None:
         """Measure with the same."""
