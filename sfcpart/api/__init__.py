@@ -11,6 +11,7 @@ from sfcpart.api.divide import split
 from sfcpart.api.judge import assess, compare, graph_of, inspect
 from sfcpart.api.rebalance import rebalance, write_rebalance
 from sfcpart.api.replay import replay
+from sfcpart.api.smooth import smooth
 from sfcpart.api.write import write_split
 from sfcpart.curve import curve_keys, curve_order
 from sfcpart.files.meshes.cell_values import read_cell_values
@@ -53,6 +54,7 @@ __all__ = [
     "read_slice",
     "rebalance",
     "replay",
+    "smooth",
     "split",
     "write_costs",
     "write_rebalance",
