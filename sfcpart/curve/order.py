@@ -3,8 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
-from functools import cached_property
+from dataclasses import dataclass, field
 from itertools import pairwise
 from typing import TYPE_CHECKING, cast
 
@@ -82,14 +81,21 @@ class CurveSlice:
     edge: Int64Array
     received: Int64Array
     merge: IntArray | None
+    _kept: dict[str, IntArray] = field(default_factory=dict, init=False, repr=False)
 
     def __len__(self) -> int:
         """Return the number of cells on this stretch."""
         return int(self.received.sum())
 
-    @cached_property
+    @property
     def position(self) -> IntArray:
         """Place on the whole curve of each local cell, (n_local,), kept; collective at first."""
+        if "position" not in self._kept:  # functools keeps other ranks' threads out meanwhile
+            self._kept["position"] = self._positions()
+        return self._kept["position"]
+
+    def _positions(self) -> IntArray:
+        """Number the places of the curve and bring the numbers home."""
         count = np.array([len(self), len(self)], np.int64)
         first, total = int(self.comm.exscan(count)[0]), int(self.comm.allreduce(count)[0])
         here = np.arange(first, first + len(self), dtype=index_dtype(total))

@@ -12,9 +12,10 @@ from time import perf_counter
 from typing import Any
 
 from sfcpart.dtypes import Int32Array
-from sfcpart.errors import SfcpartError
+from sfcpart.errors import PartitionError, SfcpartError
 from sfcpart.rebalance.migration import Migration
 from sfcpart.rebalance.task import Task
+from sfcpart.rebalance.warm import warm_up
 from sfcpart.rebalance.ways import WAYS
 
 __all__ = ["Trial", "best_trial", "try_ways"]
@@ -88,6 +89,7 @@ def try_ways(
 
 def _tried(task: Task, name: str, step_seconds: Callable[[Int32Array], float]) -> Trial:
     """Run one way."""
+    warm_up(name, task.method)
     begin = perf_counter()
     cell_part = WAYS[name].run(task)
     took = perf_counter() - begin
@@ -101,12 +103,10 @@ def best_trial(trials: Sequence[Trial]) -> Trial:
 
     Raises
     ------
-    SfcpartError
-        That of the last way, if all refused.
+    PartitionError
+        If all refused; it says why each did.
     """
     done = [trial for trial in trials if trial.run_seconds is not None]
     if not done:
-        from sfcpart.errors import PartitionError
-
         raise PartitionError("; ".join(f"{trial.name}: {trial.failure}" for trial in trials))
     return min(done, key=lambda trial: trial.run_seconds or 0.0)

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from functools import cached_property
 
 import numpy as np
 
@@ -48,14 +47,23 @@ class Task:
     steps: int = 1000
     cell_bytes: float = CELL_BYTES
     step_model: StepModel = field(default_factory=StepModel)
+    _kept: dict[str, int] = field(default_factory=dict, init=False, repr=False)
 
-    @cached_property
+    @property
     def total(self) -> int:
-        """Quantised weight of all cells of all ranks."""
+        """Quantised weight of all cells of all ranks; collective at first."""
         problem = self.problem
-        weight = problem.weight
-        own = len(problem.centers) if weight is None else int(weight.sum())
-        return int(problem.comm.allreduce(np.array([own], np.int64))[0])
+        if "total" not in self._kept:
+            weight = problem.weight
+            own = len(problem.centers) if weight is None else int(weight.sum())
+            total = problem.comm.allreduce(np.array([own], np.int64))
+            self._kept["total"] = int(total[0])
+        return self._kept["total"]
+
+    @property
+    def is_limited(self) -> bool:
+        """Whether there is a second weight to keep."""
+        return self.problem.limit_weight is not None and self.problem.part_limit is not None
 
     @property
     def most(self) -> Int64Array:

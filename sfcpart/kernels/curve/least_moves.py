@@ -8,7 +8,8 @@ maximum over the cuts a chunk can begin at is one over a window that slides (a q
 each seen once). Cost: the positions of all windows.
 
 `reach_up` and `reach_down` find how far cuts can get if every chunk before (after) them is as full
-as it may be, or they stop at a wanted position.
+as it may be, or they stop at a wanted position. Here a position is a row of `sums`, the weight
+before it (and of `limits`, a second weight, if there is one).
 
 Source: sliding maxima by a monotone queue, common practice, no source; dynamic programming over
 cuts as in B. W. Kernighan, J. ACM 18:34 (1971), from memory.
@@ -18,7 +19,7 @@ from __future__ import annotations
 
 from sfcpart.dtypes import Int32Array, Int64Array
 from sfcpart.kernels._jit import jit
-from sfcpart.kernels.curve.chunks import count_up_to, limit_before, sum_before
+from sfcpart.kernels.curve.chunks import count_up_to
 
 __all__ = ["least_moves", "reach_down", "reach_up"]
 
@@ -27,76 +28,45 @@ _DEAD = -(1 << 62)
 
 @jit
 def reach_up(
-    part: int,
-    origin: Int64Array,
     aim: Int64Array,
-    span: Int64Array,
-    total: Int64Array,
-    limit: Int64Array,
+    sums: Int64Array,
+    limits: Int64Array,
     most: Int64Array,
     most_limited: Int64Array,
+    beyond: int,
     cut: Int64Array,
-) -> int:
-    """Place cuts from `part` + 1 on, each at its aim or as far as the chunk before it may reach.
+) -> None:
+    """Place cuts from the second on, each at its aim or as far as the chunk before it may reach.
 
-    `origin` holds the sums before the last cut placed; `span` this rank's first and last position
-    and whether it is the last rank. Returns the last cut that could be placed here.
+    `beyond` rows are added to how far it reaches: 1 where rows are ends of blocks of positions.
     """
-    first, last, is_end = span
-    while part < len(most):
-        at = aim[part + 1]
-        furthest = last
-        if len(total):
-            here = total[: last - first + 1]
-            furthest = min(furthest, first + count_up_to(here, origin[0] + most[part]) - 1)
-        else:
-            furthest = min(furthest, origin[0] + most[part])
-        if len(limit):
-            here = limit[: last - first + 1]
-            room = origin[1] + most_limited[part]
-            furthest = min(furthest, first + count_up_to(here, room) - 1)
-        if at > last and furthest == last and not is_end:
-            return part
-        part += 1
-        cut[part] = min(at, furthest)
-        origin[0] = sum_before(total, cut[part], first)
-        origin[1] = limit_before(limit, cut[part], first)
-    return part
+    last = len(sums) - 1
+    for part in range(len(most)):
+        at = cut[part]
+        furthest = count_up_to(sums, sums[at] + most[part]) - 1
+        if len(limits):
+            room = limits[at] + most_limited[part]
+            furthest = min(furthest, count_up_to(limits, room) - 1)
+        cut[part + 1] = min(aim[part + 1], min(furthest + beyond, last))
 
 
 @jit
 def reach_down(
-    part: int,
-    origin: Int64Array,
     aim: Int64Array,
-    span: Int64Array,
-    total: Int64Array,
-    limit: Int64Array,
+    sums: Int64Array,
+    limits: Int64Array,
     most: Int64Array,
     most_limited: Int64Array,
+    beyond: int,
     cut: Int64Array,
-) -> int:
-    """Place cuts from `part` - 1 down, each at its aim or as low as the chunk after it reaches."""
-    first, last, is_end = span
-    while part > 0:
-        at = aim[part - 1]
-        lowest = first
-        if len(total):
-            here = total[: last - first + 1]
-            lowest = max(lowest, first + count_up_to(here, origin[0] - most[part - 1] - 1))
-        else:
-            lowest = max(lowest, origin[0] - most[part - 1])
-        if len(limit):
-            here = limit[: last - first + 1]
-            room = origin[1] - most_limited[part - 1] - 1
-            lowest = max(lowest, first + count_up_to(here, room))
-        if at < first and lowest == first and not is_end:
-            return part
-        part -= 1
-        cut[part] = max(at, lowest)
-        origin[0] = sum_before(total, cut[part], first)
-        origin[1] = limit_before(limit, cut[part], first)
-    return part
+) -> None:
+    """Place cuts from the last but one down, each at its aim or as low as its chunk reaches."""
+    for part in range(len(most) - 1, -1, -1):
+        at = cut[part + 1]
+        lowest = count_up_to(sums, sums[at] - most[part] - 1)
+        if len(limits):
+            lowest = max(lowest, count_up_to(limits, limits[at] - most_limited[part] - 1))
+        cut[part] = max(aim[part], max(lowest - beyond, 0))
 
 
 @jit
@@ -122,9 +92,9 @@ def least_moves(
 ) -> int:
     """Choose one position of each window so that the chunks keep most; return what they keep.
 
-    Positions index `sums` (and `limits`, if there are any) and ascend; window j is
-    `low[j] <= y <= high[j]`, and chunks have one position at least. Among equal choices each cut,
-    from the last, takes the lowest position. -1 if no choice keeps the bounds.
+    Window j is `low[j] <= y <= high[j]`, ascending in j; chunks have one position at least. Among
+    equal choices each cut, from the last, takes the lowest position. -1 if no choice keeps the
+    bounds.
 
     `value` (2, widest window), `queue` (widest window) and `back` (all windows) are scratch.
     """
