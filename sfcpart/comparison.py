@@ -139,6 +139,7 @@ def compare_methods(
     repeat: int,
     time_graph: Callable[[int], Metered | None],
     measure: Callable[[Partition], Assessment],
+    progress: Callable[[int], None] = lambda done: None,
 ) -> Comparison:
     """Run methods on one problem and measure their partitions, and given ones, alike.
 
@@ -151,13 +152,18 @@ def compare_methods(
         Builds the cell graph a number of times and returns what that took; None if there is none.
     measure : callable
         Assesses a partition.
+    progress : callable
+        Called with the number of methods done.
     """
     names = _known(methods)
     steps, repeat = _whole(steps, "steps"), _whole(repeat, "repeat")
     problem = replace(problem, place=curve_slice)  # each method finds the curve anew, and is timed
     others = [_given_row(name, given[name], problem, taken=names) for name in given]
     graph = time_graph(repeat)
-    rows = [_run(name, problem, repeat=repeat, graph=graph) for name in names]
+    rows = []
+    for name in names:
+        rows.append(_run(name, problem, repeat=repeat, graph=graph))
+        progress(len(rows))
     measured = (
         row if row.partition is None else replace(row, assessment=measure(row.partition))
         for row in rows + others

@@ -10,7 +10,7 @@ The model is that of `sfcpart.measure.step_model`; what it leaves out, a forecas
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import asdict, dataclass, replace
 from math import isfinite
 from typing import TYPE_CHECKING, Any
@@ -176,6 +176,7 @@ def forecast(
     weights: Weights = None,
     step_model: StepModel | None = None,
     memory_a_cell: float = MEMORY_A_CELL,
+    progress: Callable[[int], None] = lambda done: None,
 ) -> Forecast:
     """Predict how far a run on a mesh will scale, along one Hilbert order of its cells.
 
@@ -194,6 +195,8 @@ def forecast(
         more.
     memory_a_cell : float
         Bytes that the solver keeps for each cell, halo cells included.
+    progress : callable
+        Called with the number of counts done.
 
     Returns
     -------
@@ -231,7 +234,10 @@ def forecast(
     model = StepModel() if step_model is None else step_model
     problem = _planned(mesh, counts[-1], weights)
     line = _CurveRows.of(cast_graph(cell_graph(mesh)), problem, weights_of(mesh, weights))
-    cuts = [_cut(problem, line, count) for count in counts]
+    cuts = []
+    for count in counts:
+        cuts.append(_cut(problem, line, count))
+        progress(len(cuts))
     rungs = tuple(_rung(cut, model, memory_a_cell) for cut in cuts)
     keeping = [k for k, rung in enumerate(rungs) if rung.efficiency >= keep]
     shown = cuts[keeping[-1]] if keeping else cuts[0]

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
@@ -105,6 +105,7 @@ def compare(
     periodic: Sequence[tuple[str, str]] = (),
     face_weight: FaceWeight = "count",
     seed: int = 0,
+    progress: Callable[[int], None] = lambda done: None,
 ) -> Comparison:
     """Split one mesh in several ways and measure all alike.
 
@@ -125,6 +126,8 @@ def compare(
     tolerance, cuts, weights, speeds, limit_weights, limits, levels, together, pairs, periodic,
     face_weight, seed
         As for `split`, the same for all methods.
+    progress : callable
+        Called with the number of methods done.
 
     Returns
     -------
@@ -181,6 +184,7 @@ def compare(
         repeat=repeat,
         time_graph=lambda times: _time_graph(mesh, times),
         measure=lambda partition: assess(mesh, partition, step_model=step_model, **wish),
+        progress=progress,
     )
 
 

@@ -97,14 +97,15 @@ def command(mesh: str, **given: Any) -> None:
     from sfcpart.report.verdict import judge_comparison
 
     quiet = given["quiet"] or given["as_json"]
-    doing = Stages(quiet=quiet, methods=given["methods"] or list(METHODS))
+    methods = list(given["methods"]) or list(METHODS)
+    doing = Stages(quiet=quiet, methods=methods)
     with doing(f"reading {mesh}"):
         loaded = read_mesh(mesh, merge_points=given["merge_points"])
         others = {
             name: partition_from_place(loaded.cell_fields, place, loaded.n_cells)
             for name, place in given["given_parts"]
         }
-    with doing("splitting and measuring"):
+    with doing.counted("splitting", len(methods)) as progress:
         comparison = api.compare(
             loaded,
             given["n_parts"],
@@ -113,6 +114,7 @@ def command(mesh: str, **given: Any) -> None:
             steps=given["steps"],
             repeat=given["repeat"],
             step_model=model,
+            progress=progress,
             **shape_wish(given),
             **load_wish(given),
         )

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import os
 import sys
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -16,7 +16,16 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from rich.console import Console
 
-__all__ = ["Stages", "console", "hush", "note", "print_json", "print_pairs", "print_table"]
+__all__ = [
+    "Stages",
+    "console",
+    "hush",
+    "note",
+    "print_json",
+    "print_pairs",
+    "print_table",
+    "print_written",
+]
 
 PIPE_WIDTH = 80
 
@@ -79,6 +88,15 @@ def print_table(heads: list[str], rows: list[list[str]], *, title: str = "") -> 
     _print(title, table, least_width=_natural_width(heads, rows))
 
 
+def print_written(place: str, names: Sequence[str]) -> None:
+    """Print where the results are, in lines that fit."""
+    from textwrap import wrap
+
+    text = f"written to {place}: {', '.join(names)}"
+    lines = wrap(text, PIPE_WIDTH, break_long_words=False, break_on_hyphens=False)
+    print("\n" + "\n".join(lines))
+
+
 def _natural_width(heads: list[str], rows: list[list[str]]) -> int:
     """Return how wide a table must be to show all of its texts."""
     from rich.cells import cell_len
@@ -125,16 +143,46 @@ class Stages:
 
     @contextmanager
     def __call__(self, text: str) -> Iterator[None]:
-        """Show a spinner while the block runs."""
-        if not self.live:
+        """Show a spinner and the time passed while the block runs."""
+        with self._shown(text, None):
             yield
-            return
-        from rich.progress import Progress, SpinnerColumn, TextColumn, TimeElapsedColumn
 
-        columns = (SpinnerColumn(), TextColumn("{task.description}"), TimeElapsedColumn())
-        with Progress(*columns, console=console(stderr=True), transient=True) as progress:
-            progress.add_task(text, total=None)
-            yield
+    @contextmanager
+    def counted(self, text: str, total: int) -> Iterator[Callable[[int], None]]:
+        """Show how many of `total` are done, and the time left; call the given with it."""
+        with self._shown(text, total) as show:
+            yield show
+
+    @contextmanager
+    def _shown(self, text: str, total: int | None) -> Iterator[Callable[[int], None]]:
+        """Show a line that is redrawn, gone in the end; nothing where nobody looks."""
+        if not self.live:
+            yield lambda done: None
+            return
+        from rich.progress import Progress
+
+        out = console(stderr=True)
+        with Progress(*_columns(total), console=out, transient=True) as progress:
+            task = progress.add_task(text, total=total)
+            yield lambda done: progress.update(task, completed=done)
+
+
+def _columns(total: int | None) -> list[Any]:
+    """Return what a line of progress shows."""
+    from rich import progress
+
+    name = progress.TextColumn("{task.description}", markup=False)
+    if total is None:
+        return [progress.SpinnerColumn(), name, progress.TimeElapsedColumn()]
+    left = progress.TimeRemainingColumn(elapsed_when_finished=True)
+    return [
+        progress.SpinnerColumn(),
+        name,
+        progress.BarColumn(20),
+        progress.MofNCompleteColumn(),
+        left,
+        progress.TextColumn("left"),
+    ]
 
 
 def _rooms(methods: Sequence[str]) -> list[str]:

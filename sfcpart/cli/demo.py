@@ -22,13 +22,14 @@ Examples:
 """
 NEXT = """
 Next:
-  open {folder}/report.html in a browser: figures, charts, the parts to turn and pull apart
+  open {folder}/report.html in a browser: charts, and the parts to turn
   look at {folder}/parts.png
   open {folder}/parts.vtkhdf in a viewer of VTKHDF files, coloured by `part`
   sfcpart inspect YOUR_MESH                        what is in your mesh?
   sfcpart split YOUR_MESH --parts 64 -o parts      the same for your mesh
   in your solver, rank r:  sfcpart.read_part("{folder}", r)
-A partition changes the order of summation and says nothing about whether a simulation is right."""
+A partition changes the order of summation and says nothing about whether a
+simulation is right."""
 WRITTEN = ("parts.vtkhdf", "parts.csv", "summary.json", "parts.png", "report.html")
 COLUMNS, ROWS, ACROSS = 100, 20, 20
 
@@ -58,7 +59,7 @@ def command(n_parts: int, output: str, threads: int | None, **how: Any) -> None:
     """Make the mesh, split it, measure, write, print."""
     prepare_process(threads)
     from sfcpart import api
-    from sfcpart.cli.console import Stages, print_json
+    from sfcpart.cli.console import Stages, print_json, print_written
     from sfcpart.cli.figures import print_assessment, print_verdict
     from sfcpart.mesh.channel import channel_water
     from sfcpart.report.verdict import judge
@@ -81,5 +82,5 @@ def command(n_parts: int, output: str, threads: int | None, **how: Any) -> None:
         print(f"Skerry Channel: {mesh.n_cells:,} cells into {n_parts:,} parts by hilbert")
         print_verdict(judge(assessment))
         print_assessment(assessment)
-        print(f"\nwritten to {output}: {', '.join(WRITTEN)}")
+        print_written(output, WRITTEN)
         print(NEXT.format(folder=output))

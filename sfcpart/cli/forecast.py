@@ -124,7 +124,7 @@ def command(mesh: str, **given: Any) -> None:
     doing = Stages(quiet=given["quiet"] or given["as_json"], methods=["smoothed"])
     with doing(f"reading {mesh}"):
         loaded = read_mesh(mesh, merge_points=given["merge_points"])
-    with doing(f"cutting the curve in {len(given['n_parts'])} ways"):
+    with doing.counted("cutting the curve", len(given["n_parts"])) as progress:
         found = api.forecast(
             loaded,
             given["n_parts"],
@@ -132,6 +132,7 @@ def command(mesh: str, **given: Any) -> None:
             weights=list(given["weights"]) or None,
             step_model=model,
             memory_a_cell=given["memory_a_cell"],
+            progress=progress,
         )
     if given["csv_path"]:
         _write_csv(given["csv_path"], found)

@@ -5,7 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from sfcpart.cli.console import Stages, print_json, print_pairs
+from sfcpart.cli.console import Stages, print_json, print_pairs, print_written
 from sfcpart.cli.figures import print_verdict
 from sfcpart.cli.inputs import partition_from_place, read_mesh, read_numbers
 from sfcpart.cli.wishes import load_wish, shape_wish
@@ -135,7 +135,7 @@ class RebalanceJob:
         print_pairs(_figures(result))
         if output is not None:
             names = sorted(entry.name for entry in Path(output).iterdir() if entry.name[0] != ".")
-            print(f"\nwritten to {output}: {', '.join(names)}")
+            print_written(output, names)
 
 
 def _figures(result: Rebalance) -> list[tuple[str, str]]:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -18,8 +17,6 @@ from sfcpart.cli.options import (
 from sfcpart.cli.wishes import METHOD, MethodOption
 
 if TYPE_CHECKING:
-    from collections.abc import Callable
-
     from sfcpart.files.series.read import Series
     from sfcpart.rebalance.replayed import Replay
 
@@ -125,18 +122,19 @@ def command(series: str, **given: Any) -> None:
     cost = CELL_BYTES if given["cell_bytes"] is None else given["cell_bytes"]
     resplit = ResplitCost(given["resplit_seconds"], given["split_seconds"], cost)
     frames = _open(series, given)
-    found = api.replay(
-        frames,
-        given["n_parts"],
-        rules=given["rules"] or DEFAULT_RULES,
-        method=given["method"],
-        tolerance=given["tolerance"],
-        seed=given["seed"],
-        weights=list(given["weights"]) or None,
-        step_model=model,
-        resplit=resplit,
-        progress=_progress(len(frames), quiet=quiet),
-    )
+    with doing.counted("frames", len(frames)) as progress:
+        found = api.replay(
+            frames,
+            given["n_parts"],
+            rules=given["rules"] or DEFAULT_RULES,
+            method=given["method"],
+            tolerance=given["tolerance"],
+            seed=given["seed"],
+            weights=list(given["weights"]) or None,
+            step_model=model,
+            resplit=resplit,
+            progress=progress,
+        )
     if given["csv_path"]:
         _write_csv(given["csv_path"], found)
     if given["picture"]:
@@ -164,18 +162,6 @@ def _open(path: str, given: dict[str, Any]) -> Series:
     if steps is None:
         return series
     return replace(series, frames=lambda: (replace(frame, steps=steps) for frame in series))
-
-
-def _progress(n_frames: int, *, quiet: bool) -> Callable[[int], None]:
-    """Return what tells a person at a terminal how far it is."""
-    live = not quiet and sys.stderr.isatty()
-
-    def show(done: int) -> None:
-        if live:
-            end = "\n" if done == n_frames else "\r"
-            print(f"frame {done} of {n_frames}", end=end, file=sys.stderr, flush=True)
-
-    return show
 
 
 def _write_csv(path: str, found: Replay) -> None:
@@ -240,7 +226,7 @@ def _print(name: str, found: Replay) -> None:
         ]
         for row in found.figures()
     ]
-    heads = ["rule", "seconds", "of that re-splits", "re-splits", "MB moved", "imbalance", "regret"]
+    heads = ["rule", "seconds", "re-splitting", "re-splits", "MB moved", "imbalance", "regret"]
     print_table(heads, rows)
     print(
         f"\nWith every step as short as its mean rank: {found.balanced_seconds:.4g} s. Times are "

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from sfcpart.cli.console import Stages, note, print_json
+from sfcpart.cli.console import Stages, note, print_json, print_written
 from sfcpart.cli.figures import print_assessment, print_verdict
 from sfcpart.cli.ranks import read_held
 from sfcpart.cli.start import read_start
@@ -139,7 +139,7 @@ class SplitJob:
         print_verdict(judge(self.assessment))
         print_assessment(self.assessment)
         if output is not None:
-            print(f"\nwritten to {output}: {', '.join(self._files())}")
+            print_written(output, self._files())
 
     def _files(self) -> list[str]:
         """Return the names of what was written, the list for overwriting left out."""
