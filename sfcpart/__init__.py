@@ -26,8 +26,10 @@ if TYPE_CHECKING:
         fit_weights,
         forecast,
         inspect,
+        measure_network,
         read_mesh,
         read_moves,
+        read_network,
         read_part,
         read_series,
         read_slice,
@@ -36,6 +38,7 @@ if TYPE_CHECKING:
         smooth,
         split,
         write_costs,
+        write_network,
         write_rebalance,
         write_split,
     )
@@ -58,8 +61,10 @@ _PUBLIC = {
     "forecast": "sfcpart.scaling",
     "fit_weights": "sfcpart.weights.fit",
     "inspect": "sfcpart.api.judge",
+    "measure_network": "sfcpart.api.network",
     "read_mesh": "sfcpart.files.meshes.read",
     "read_moves": "sfcpart.files.parts.moves",
+    "read_network": "sfcpart.api.network",
     "read_part": "sfcpart.files.parts.part",
     "read_series": "sfcpart.files.series.read",
     "read_slice": "sfcpart.files.meshes.read_slice",
@@ -69,6 +74,7 @@ _PUBLIC = {
     "split": "sfcpart.api.divide",
     "split_graph": "sfcpart.methods.graph.multilevel",
     "write_costs": "sfcpart.api.costs",
+    "write_network": "sfcpart.api.network",
     "write_rebalance": "sfcpart.api.rebalance",
     "write_split": "sfcpart.api.write",
 }
@@ -101,6 +107,9 @@ __all__ = [  # noqa: RUF022 - in the order a user meets them
     "read_series",
     "ResplitCost",
     "replay",
+    "measure_network",
+    "write_network",
+    "read_network",
     "__version__",
 ]
 

@@ -9,6 +9,7 @@ sfcpart.write_split("parts", mesh, partition)
 from sfcpart.api.costs import class_counts, fit_weights, write_costs
 from sfcpart.api.divide import split
 from sfcpart.api.judge import assess, compare, graph_of, inspect
+from sfcpart.api.network import measure_network, read_network, write_network
 from sfcpart.api.rebalance import rebalance, write_rebalance
 from sfcpart.api.replay import replay
 from sfcpart.api.smooth import smooth
@@ -46,9 +47,11 @@ __all__ = [
     "forecast",
     "graph_of",
     "inspect",
+    "measure_network",
     "read_cell_values",
     "read_mesh",
     "read_moves",
+    "read_network",
     "read_part",
     "read_series",
     "read_slice",
@@ -57,6 +60,7 @@ __all__ = [
     "smooth",
     "split",
     "write_costs",
+    "write_network",
     "write_rebalance",
     "write_split",
 ]

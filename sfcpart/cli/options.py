@@ -150,6 +150,16 @@ LEVELS, SPEEDS, LIMIT, PAIR = Levels(), Speeds(), Limit(), Pair()
 NAMED = Named()
 
 
+class NetworkName(Names):
+    """A network known by name, or the file of a measured one."""
+
+    def convert(self, value: Any, param: Any, ctx: Any) -> str:
+        """Pass the path of a file, check anything else against the table."""
+        if os.path.isfile(value):  # noqa: PTH113 - no Path at start
+            return str(value)
+        return super().convert(value, param, ctx)
+
+
 def _networks() -> list[str]:
     """Load the names of the networks."""
     from sfcpart.measure.step_model import NETWORKS
@@ -197,12 +207,13 @@ weight_option = click.option(
 network_options = adding(
     click.option(
         "--network",
-        type=Names("network", _networks),
-        metavar="NAME",
+        type=NetworkName("network", _networks),
+        metavar="NAME|FILE",
         default="infiniband-edr",
         show_default=True,
         help="Network of the predicted step time: gigabit-ethernet, infiniband-fdr, "
-        "infiniband-edr, infiniband-hdr, infiniband-ndr, shared-memory.",
+        "infiniband-edr, infiniband-hdr, infiniband-ndr, shared-memory; or what `sfcpart network` "
+        "wrote.",
     ),
     click.option("--latency", type=float, metavar="S", help="Own seconds a message."),
     click.option("--bandwidth", type=float, metavar="B/S", help="Own bytes a second."),
@@ -236,10 +247,15 @@ network_options = adding(
 
 def step_model(given: dict[str, Any]) -> StepModel:
     """Take the network options out of the given ones and make a model of them."""
-    from sfcpart.measure.step_model import StepModel
+    from sfcpart.measure.step_model import NETWORKS, StepModel
 
+    network = given.pop("network")
+    if network not in NETWORKS:
+        from sfcpart.api.network import read_network
+
+        network = read_network(network)
     names = ("latency", "bandwidth", "cell_seconds", "bytes_per_halo_cell", "exchanges")
-    return StepModel.from_preset(given.pop("network"), **{name: given.pop(name) for name in names})
+    return StepModel.from_preset(network, **{name: given.pop(name) for name in names})
 
 
 def prepare_process(threads: int | None) -> None:

@@ -26,6 +26,10 @@ VERBS: dict[str, tuple[str, str]] = {
         "Split again when the work has moved; does it pay?",
     ),
     "forecast": ("sfcpart.cli.forecast", "Predict how far a run on a mesh will scale."),
+    "network": (
+        "sfcpart.cli.network",
+        "Measure latency and bandwidth between the ranks of a job.",
+    ),
     "inspect": ("sfcpart.cli.inspect", "Say what a mesh file holds, and what is wrong with it."),
     "demo": ("sfcpart.cli.demo", "Split an invented tidal channel; needs no file."),
     "figures": ("sfcpart.cli.figures_verb", "Explain every figure of a partition."),

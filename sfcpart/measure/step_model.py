@@ -150,7 +150,7 @@ class StepModel:
     @classmethod
     def from_preset(
         cls,
-        name: str = DEFAULT_NETWORK,
+        name: str | Network = DEFAULT_NETWORK,
         *,
         latency: float | None = None,
         bandwidth: float | None = None,
@@ -162,8 +162,8 @@ class StepModel:
 
         Parameters
         ----------
-        name : str
-            One of `NETWORKS`.
+        name : str or Network
+            One of `NETWORKS`, or a network of your own (`sfcpart.read_network`).
         latency, bandwidth : float, optional
             Seconds per message and bytes per second in place of the preset's.
         cell_seconds, bytes_per_halo_cell, exchanges : float
@@ -174,13 +174,14 @@ class StepModel:
         InputError
             If the name is unknown, or a number is not finite or out of range.
         """
-        if name not in NETWORKS:
+        if isinstance(name, str) and name not in NETWORKS:
             raise InputError(f"unknown network {name!r}; known are {', '.join(NETWORKS)}")
-        network = NETWORKS[name]
+        network = NETWORKS[name] if isinstance(name, str) else name
         if latency is not None or bandwidth is not None:
+            whole = latency is not None and bandwidth is not None
             network = replace(
                 network,
-                name="own" if latency is not None and bandwidth is not None else f"{name}, changed",
+                name="own" if whole else f"{network.name}, changed",
                 latency=network.latency if latency is None else latency,
                 bandwidth=network.bandwidth if bandwidth is None else bandwidth,
                 source="given by the user",
