@@ -17,8 +17,9 @@ the cost C of a re-split:
   jumped and stays (W never rises then). It costs at most twice the best, as renting before buying
   does; where the last re-split did not earn its cost, the sum must reach twice as much, and so on.
 
-Both only count steps that are left, if the length of the run is known. A single late step (the
-system was busy) must be confirmed by the next.
+A re-split is taken to become dearer or cheaper as the work of the mean rank does: both follow the
+number of cells. Both sums only count steps that are left, if the length of the run is known. A
+single late step (the system was busy) must be confirmed by the next.
 """
 
 from __future__ import annotations
@@ -32,6 +33,7 @@ __all__ = ["Every", "Forecast", "Never", "Regret", "Rule", "StopAtRise", "Thresh
 
 _MOST_PATIENCE = 64.0
 _SPIKE = 4.0  # times the usual change from step to step: more must be seen twice
+_GROWTH = 4.0  # how much dearer or cheaper than the last one a re-split is taken to be at most
 _GRAVE = 4.0  # times the cost of a re-split: a step that lost so much more need not be seen twice
 _FADE, _MOST_CONFIRMED = 0.95, 3  # each time it is seen again, trust fades half as fast
 _LEVEL, _TREND, _CHANGE = 0.5, 0.3, 0.2  # how much the newest step counts
@@ -230,7 +232,8 @@ class Regret:
     Attributes
     ----------
     cost : float
-        Seconds of the next re-split, as far as known: half that of the last, half those before.
+        Seconds of the next re-split, as far as known: half that of the last, half those before,
+        and changed as the step of the mean rank has changed since (a quarter to four times).
     steps_left : int or None
         None where the end of the run is not known.
     saved, lost : float
@@ -254,9 +257,18 @@ class Regret:
     _before: float | None = None
     _patience: float = 1.0
     _n_resplits: int = 0
+    _last_cost: float = 0.0
+    _last_mean: float = 0.0
+    _mean: float = 0.0
+
+    def __post_init__(self) -> None:
+        self._last_cost = self.cost
 
     def after_step(self, slowest: float, mean: float) -> bool:
         """Add the step to both sums and compare."""
+        self._mean, self._last_mean = mean, self._last_mean or mean
+        if mean > 0:
+            self.cost = self._last_cost * min(_GROWTH, max(1 / _GROWTH, mean / self._last_mean))
         loss = self._forecast.add(slowest - mean, grave=_GRAVE * self.cost)
         self._sums.append(self._sums[-1] + loss)
         self._recent = (*self._recent[-2:], loss)
@@ -283,5 +295,6 @@ class Regret:
         self._before = self._forecast.next
         self.cost = (self.cost + cost) / 2 if self._n_resplits else cost
         self._n_resplits += 1
+        self._last_cost, self._last_mean = self.cost, self._mean
         self._sums, self._recent, self._fresh = [0.0], (), float("inf")
         self._forecast, self.saved, self.lost = self._forecast.anew(), 0.0, 0.0

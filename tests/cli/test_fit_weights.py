@@ -109,6 +109,15 @@ def test_bad_input_ends_in_one_line_and_nothing_is_written(measured, line, code,
     assert sorted(Path().iterdir()) == before
 
 
+def test_without_a_file_the_costs_are_printed(measured):
+    code, out, err = measured("fit-weights measured.csv --speeds alike")
+    assert (code, err) == (0, "")
+    assert [line.split()[0] for line in out.splitlines()[3:5]] == list(COSTS)
+    assert "speeds" not in out
+    assert "hard to tell apart" in out
+    assert not Path("costs.json").exists()
+
+
 def test_quiet_prints_nothing(measured):
     assert measured("fit-weights measured.csv -q -o costs.json") == (0, "", "")
     assert Path("costs.json").exists()

@@ -85,10 +85,3 @@ def test_bad_input_ends_in_one_line_and_nothing_is_written(runs, line, code, wor
 
 def test_quiet_prints_nothing(runs):
     assert runs("replay front.h5 -n 4 --rule never -q") == (0, "", "")
-
-
-def test_a_person_at_a_terminal_sees_how_far_it_is(runs, monkeypatch):
-    monkeypatch.setattr("sys.stderr.isatty", lambda: True, raising=False)
-    err = runs("replay front.h5 -n 4 --rule never").err
-    assert "frame 3 of 6" in err
-    assert err.rstrip("\n").endswith("frame 6 of 6")

@@ -64,6 +64,13 @@ def test_weights_on_one_mesh_keep_their_unit():
     assert table.moved_bytes[0, 1] == 0
 
 
+def test_equal_cells_in_another_mesh_are_the_same_cells():
+    frames = [sfcpart.Frame(lattice((8, 8)).to_mesh(), weight=np.arange(64) + k) for k in (1, 9)]
+    one = [sfcpart.Frame(frames[0].mesh, weight=frame.weight) for frame in frames]
+    tables = [sfcpart.replay(series, 2).timetable for series in (frames, one)]
+    assert np.array_equal(tables[0].slowest, tables[1].slowest, equal_nan=True)
+
+
 def test_specified_weights_multiply_those_of_the_frames():
     mesh = lattice((8, 8)).to_mesh().with_cell_field("zone", np.arange(64) // 32)
     weight = np.where(np.arange(64) < 32, 4.0, 1.0)

@@ -185,6 +185,9 @@ def test_other_cells_need_whole_parents(tmp_path):
     write_quads(tmp_path / "1.vtu", np.ones(6), parent=np.full(6, 0.5))
     with pytest.raises(InputError, match="holds fractions"):
         list(sfcpart.read_series(tmp_path))
+    write_quads(tmp_path / "1.vtu", np.ones(6), parent=np.zeros((6, 3)))
+    with pytest.raises(InputError, match=r"1.vtu: parents are int64 of shape \(6, 3\)"):
+        list(sfcpart.read_series(tmp_path))
 
 
 def test_a_folder_of_weights(tmp_path):
@@ -206,6 +209,8 @@ def test_what_is_no_series_is_refused(tmp_path):
         sfcpart.read_series(tmp_path, mesh=mesh)
     with pytest.raises(FileError, match="none.h5: cannot be read: No such file"):
         sfcpart.read_series(tmp_path / "none.h5")
+    with pytest.raises(FileError, match="none.pvd: cannot be read: No such file"):
+        sfcpart.read_series(tmp_path / "none.pvd")
     (tmp_path / "a.txt").write_text("hello")
     with pytest.raises(
         FileError, match="is no series; wanted an HDF5 file, a PVD file or a folder"
