@@ -13,8 +13,10 @@ PAGES: dict[str, str] = {
     "costs": "true weights from measured seconds: classes of cells, speeds, the file of costs",
     "figures": "every figure of a report: unit, meaning, bounds, the model of a step",
     "in_a_solver": "splitting, halo exchange and migration inside a running solver, with a program",
+    "install": "on a laptop, and on a cluster with its own MPI",
     "parts_file": "the file of parts, for those who write a solver's reader",
     "reading": "which mesh files are read, how, and what is refused",
+    "recipes": "five jobs from begin to end: split, balance, restart, compare, split again",
     "series": "replaying a run in which the work moves: series of frames, rules, times",
 }
 """Pages and what they hold."""
