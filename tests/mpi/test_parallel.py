@@ -71,3 +71,17 @@ def test_the_program_of_the_manual_gives_the_same_bits_on_any_ranks(tmp_path, si
     work = [float(found) for found in re.findall(r"cells of work ([\d.]+)", printed)]
     assert len(work) == size
     assert max(work) <= 1.05 * sum(work) / size  # the second split followed the salt
+
+
+@pytest.mark.parametrize("size", [1, 3])
+def test_the_script_of_the_readme_runs_on_any_ranks(tmp_path, root, size):
+    scripts = re.findall(
+        r"^```python\n(# salt\.py.*?)^```$", (root / "README.md").read_text(), re.M | re.S
+    )
+    assert len(scripts) == 1
+    (tmp_path / "salt.py").write_text(scripts[0])
+    printed = run_script(tmp_path / "salt.py", size)
+    found = re.fullmatch(r"(\d+) ranks, (\d+) cells on rank 0, salt ([\d.]+)\s*", printed)
+    assert found is not None, printed
+    assert (int(found[1]), float(found[3])) == (size, pytest.approx(35.0 * 1000, rel=1e-9))
+    assert int(found[2]) == pytest.approx(10_000 / size, abs=1)

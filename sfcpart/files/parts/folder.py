@@ -17,6 +17,7 @@ from contextlib import ExitStack, contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from sfcpart.comm import removed_on_abort
 from sfcpart.errors import FileError, SfcpartError
 from sfcpart.files.parts.replacing import (
     LOCK,
@@ -133,6 +134,7 @@ def shared_folder(
             ),
         )
         place = Path(comm.bcast_object(made))
+        stack.enter_context(removed_on_abort(place))
         try:
             yield place
         except FileError as error:
