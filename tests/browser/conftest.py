@@ -50,8 +50,8 @@ def start(*more: str):
         options.add_argument(flag)
     options.set_capability("goog:loggingPrefs", {"browser": "ALL", "performance": "ALL"})
     browser = webdriver.Chrome(options=options, service=Service(driver))
-    browser.set_page_load_timeout(60)
-    browser.set_script_timeout(60)
+    browser.set_page_load_timeout(180)
+    browser.set_script_timeout(180)
     return browser
 
 

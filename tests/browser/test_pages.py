@@ -17,7 +17,14 @@ import sfcpart
 from sfcpart.graph import cell_graph
 from sfcpart.mesh.channel import channel_water
 from sfcpart.mesh.shapes import lattice
-from sfcpart.report.page import compare_page, split_page, write_page
+from sfcpart.report.page import (
+    compare_page,
+    forecast_page,
+    rebalance_page,
+    replay_page,
+    split_page,
+    write_page,
+)
 from tests.browser.conftest import start
 
 pytestmark = pytest.mark.large
@@ -39,11 +46,18 @@ def pages(tmp_path_factory) -> dict[str, Path]:
     flat = lattice((24, 12)).to_mesh()
     solid = channel_water(24, 6, n_across=6).to_mesh()
     compared = sfcpart.compare(flat, 6, methods=["hilbert", "rows", "coordinate"])
+    work = 1.0 + 4.0 * (solid.centers[:, 0] > solid.centers[:, 0].mean())
+    again = sfcpart.rebalance(solid, sfcpart.split(solid, 8), weights=work, way="shift")
+    place = flat.centers[:, 0]
+    frames = [sfcpart.Frame(flat, 1.0 + 4.0 * (abs(place - 3 * k) < 3), steps=9) for k in range(8)]
     made = {
         "solid": page_of(solid, 16, title="Skerry Channel", levels=(4, 4)),
         "flat": page_of(flat, 6, title="lattice"),
         "thousand": page_of(lattice((20, 20, 10)).to_mesh(), 1000, title="thousand"),
         "hostile": page_of(flat, 3, title=HOSTILE, options={HOSTILE: HOSTILE}),
+        "rebalance": rebalance_page(page_of(solid, 8), again),
+        "replay": replay_page(sfcpart.replay(frames, 4, rules=["never", "every:1", "hindsight"])),
+        "forecast": forecast_page(sfcpart.forecast(solid, [1, 4, 16, 64])),
         "compare": compare_page(compared, title="lattice", n_cells=flat.n_cells),
     }
     for name, page in made.items():
@@ -51,7 +65,7 @@ def pages(tmp_path_factory) -> dict[str, Path]:
     return {name: folder / f"{name}.html" for name in made}
 
 
-KINDS = ["solid", "flat", "thousand", "hostile", "compare"]
+KINDS = ["solid", "flat", "thousand", "hostile", "rebalance", "replay", "forecast", "compare"]
 
 
 @pytest.mark.parametrize("kind", KINDS)
@@ -61,9 +75,12 @@ def test_a_page_opens_without_complaint_or_request(reader, pages, kind):
     assert reader.requests() == [pages[kind].as_uri()]
 
 
-@pytest.mark.parametrize("scheme", ["light", "dark"])
-@pytest.mark.parametrize("kind", ["solid", "compare"])
-def test_axe_finds_nothing_to_mend(reader, pages, kind, scheme):
+LOOKED_AT = ["solid light", "solid dark", "compare dark", "replay light", "forecast dark"]
+
+
+@pytest.mark.parametrize("look", LOOKED_AT)
+def test_axe_finds_nothing_to_mend(reader, pages, look):
+    kind, scheme = look.split()
     import axe_core_python
 
     reader.show_as(scheme=scheme)
@@ -215,7 +232,7 @@ def test_the_matrix_shows_all_pairs_and_zooms(reader, pages):
 
 
 def test_a_phone_scrolls_down_only(reader, pages):
-    for kind in ("solid", "compare"):
+    for kind in ("solid", "compare", "replay", "forecast"):
         reader.size(390, 800)
         reader.open(pages[kind])
         wide = reader.ask("return document.documentElement.scrollWidth")
