@@ -60,7 +60,7 @@ class BlockGraph:
         rows = _at_home(way, _merged(graph, cluster, number), at, len(chosen))
         coarse = WeightedSlice.of_rows(comm, *rows, _summed(graph.vertex_weight, cluster, way, at))
         home: dict[str, Array] = {}
-        if len(state.home_part):
+        if state.priced:
             price = _summed(state.home_price, cluster, way, at)
             home = {"home_part": came[2][chosen], "home_price": price}
         labels = State.of(coarse, came[1][chosen], state.capacity, **home)
@@ -75,7 +75,7 @@ class BlockGraph:
 
 def _labels_of(state: State) -> tuple[Int32Array, ...]:
     """Return what all vertices of a coarse one share: the part, and the home."""
-    return (state.own, state.home_part) if len(state.home_part) else (state.own,)
+    return (state.own, state.home_part) if state.priced else (state.own,)
 
 
 def _distinct(block: Int64Array, *labels: Int32Array) -> tuple[Int64Array, Int64Array]:

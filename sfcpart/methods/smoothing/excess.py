@@ -26,7 +26,7 @@ IDLE = 4
 
 def rebalance(state: State) -> Int32Array:
     """Shed excess until none is left or nothing helps; return this rank's vertices that moved."""
-    lowest, idle = state.overload, 0
+    lowest, idle, best = state.overload, 0, state.part.copy()
     moved: list[Array] = [np.empty(0, np.int32)]
     near = True  # at first only to neighbours with room, which takes no distances
     while lowest > 0 and idle < IDLE:
@@ -39,7 +39,11 @@ def rebalance(state: State) -> Int32Array:
         state.move(leavers, to)
         moved.append(leavers)
         idle = 0 if state.overload < lowest else idle + 1
-        lowest = min(lowest, state.overload)
+        if state.overload < lowest:
+            lowest = state.overload
+            best[:] = state.part
+    if state.overload > lowest:
+        state.restore(best)
     return np.unique(np.concatenate(moved))
 
 

@@ -31,6 +31,8 @@ class State:
     home_part : (n,) int32, or empty
         Where vertices come from; with `home_price` (n,) int64 >= 0, what it costs, in units of
         edge weight, if they are elsewhere.
+    priced : bool
+        Whether there are homes, on all ranks alike; one without vertices has empty arrays.
     load : (n_parts,) int64
         What each part weighs now.
     """
@@ -40,6 +42,7 @@ class State:
     capacity: Int64Array
     home_part: Int32Array = field(default_factory=lambda: NO_PART)
     home_price: Int64Array = field(default_factory=lambda: NO_PRICE)
+    priced: bool = False
     load: Int64Array = field(init=False)
 
     def __post_init__(self) -> None:
@@ -60,7 +63,8 @@ class State:
         """Start from the parts of this rank's vertices, (n,); they are copied."""
         home = NO_PART if home_part is None else home_part.astype(np.int32, copy=False)
         price = NO_PRICE if home_price is None else home_price.astype(np.int64, copy=False)
-        return cls(graph, graph.held(part.astype(np.int32, copy=False)), capacity, home, price)
+        held = graph.held(part.astype(np.int32, copy=False))
+        return cls(graph, held, capacity, home, price, home_part is not None)
 
     @property
     def n_parts(self) -> int:
