@@ -2,8 +2,9 @@
 
 `run_job(module, size, folder)` starts `mpiexec -n SIZE python -m MODULE FOLDER` with a time limit
 and returns when it has ended; what the ranks saw, they wrote into the folder. `run_script(path,
-size, ...)` does the same for a user's script, in its own folder. A job that fails, or hangs and is
-killed with all its processes, raises with what it printed.
+size, ...)` does the same for a user's script, in its own folder, and `run_command` for a verb of
+`sfcpart`. A job that fails, or hangs and is killed with all its processes, raises with what it
+printed.
 """
 
 from __future__ import annotations
@@ -17,7 +18,7 @@ from pathlib import Path
 
 import sfcpart
 
-__all__ = ["MpiJobError", "mpiexec", "run_job", "run_script"]
+__all__ = ["MpiJobError", "mpiexec", "run_command", "run_job", "run_script"]
 
 ROOT = Path(__file__).resolve().parents[2]
 
@@ -53,6 +54,13 @@ def run_script(path: Path, size: int, *arguments: str, timeout: float = 120.0) -
         timeout=timeout,
         more=package,
     )
+
+
+def run_command(arguments: list[str], size: int, folder: Path, *, timeout: float = 120.0) -> str:
+    """Run `sfcpart` on `size` ranks in a folder; return what it printed."""
+    package = {"PYTHONPATH": str(Path(sfcpart.__file__).parents[1])}
+    words, what = ["-m", "sfcpart.cli", *arguments], f"sfcpart {arguments[0]}"
+    return _run(words, size, cwd=folder, what=what, timeout=timeout, more=package)
 
 
 def _run(
