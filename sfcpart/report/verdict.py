@@ -19,6 +19,7 @@ if TYPE_CHECKING:
     from sfcpart.scaling import Forecast, Rung
 
 __all__ = [
+    "counted_parts",
     "judge",
     "judge_comparison",
     "judge_forecast",
@@ -52,6 +53,11 @@ def listed(parts: Sequence[int]) -> str:
     """List parts, the first few if there are many."""
     text = ", ".join(map(str, parts[:10]))
     return text if len(parts) <= 10 else f"{text} and {len(parts) - 10:,} more"
+
+
+def counted_parts(parts: Sequence[int]) -> str:
+    """List parts with their noun: part 3, parts 3, 7."""
+    return f"part{'' if len(parts) == 1 else 's'} {listed(parts)}"
 
 
 def _balance(assessment: Assessment) -> str:
@@ -100,7 +106,7 @@ def _cost(assessment: Assessment) -> str:
         whole = f"{counted(pieces, 'part')} in more than one piece"
     model = assessment.step_model.network.name
     step = f"a step is predicted to keep {percent(total['efficiency'])} of the ranks busy"
-    return f"{cut}, {whole}; {step} (model, network {model})."
+    return f"{cut} and leaves {whole}; {step} (model, network {model})."
 
 
 def judge_comparison(comparison: Comparison) -> tuple[str, str]:

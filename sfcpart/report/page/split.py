@@ -13,7 +13,7 @@ from sfcpart.report.page.content import Axis, Chart, Figure, Page, Section, Seri
 from sfcpart.report.page.meetings import meeting_sections
 from sfcpart.report.page.parts_table import parts_table
 from sfcpart.report.page.space import view_section
-from sfcpart.report.verdict import judge, listed
+from sfcpart.report.verdict import counted_parts, judge
 
 if TYPE_CHECKING:
     from sfcpart.graph import CellGraph
@@ -117,7 +117,7 @@ def split_figures(assessment: Assessment) -> list[Figure]:
         figures += _face_figures(assessment)
     if total["n_empty_parts"]:
         empty = total["n_empty_parts"]
-        note = f"part {listed(assessment.empty_parts.tolist())}"
+        note = counted_parts(assessment.empty_parts.tolist())
         figures.append(Figure("n_empty_parts", "Empty parts", empty, number(empty), note))
     return figures
 
@@ -131,7 +131,7 @@ def _face_figures(assessment: Assessment) -> list[Figure]:
 
     pieces = "every part in one piece"
     if total["n_split_parts"]:
-        pieces = f"part {listed(assessment.split_parts.tolist())}"
+        pieces = counted_parts(assessment.split_parts.tolist())
     halo_most = f"at most {number(total['halo_cells_max'])} a part"
     figures = [
         figure("cut_faces", "Faces cut", number, _cut_note(total)),

@@ -179,7 +179,7 @@ def test_faults_are_among_the_figures(mesh):
     figures = {figure.key: figure for figure in page.figures}
     assert figures["n_empty_parts"].note == "part 2"
     assert figures["limit_share"].text == "120 %"
-    assert figures["n_split_parts"].note.startswith("part 0, 1")
+    assert figures["n_split_parts"].note.startswith("parts 0, 1")
 
 
 def test_a_re_split_shows_what_moves_and_when_it_pays(tmp_path):

@@ -40,7 +40,7 @@ function written(value, form) {
   if (form === "whole") return wholeNumber.format(value);
   if (form === "ratio") return threePlaces.format(value);
   if (form === "percent") return `${threeDigits.format(100 * value)} %`;
-  if (form === "seconds") return withUnit(value, [["s", 1], ["ms", 1e-3], ["µs", 1e-6]]);
+  if (form === "seconds") return withUnit(value, [["s", 1], ["ms", 1e-3], ["us", 1e-6]]);
   if (form === "duration") {
     return Math.abs(value) < 120 ? written(value, "seconds") : withUnit(value, [["d", 86400], ["h", 3600], ["min", 60]]);
   }

@@ -36,6 +36,7 @@ class PartsView {
     onWidth(this.canvas, () => this.resize());
     onTheme(() => this.draw());
     this.resize();
+    this.lookFromStart();
   }
 
   controls() {
@@ -126,7 +127,8 @@ class PartsView {
     const { middle, radius } = this.reach;
     this.orbit.target.set(...middle);
     this.camera.zoom = 1;
-    const far = this.flat ? [0, 0, radius] : [1.55, -2.9, 1.5].map((value) => value * radius * 0.8);
+    const narrow = Math.max(1, 1.5 / (this.camera.aspect || 1.5)); // on a phone from farther away
+    const far = this.flat ? [0, 0, radius] : [1.24, -2.32, 1.2].map((value) => value * radius * narrow);
     this.camera.position.set(...middle.map((value, axis) => value + far[axis]));
     this.camera.updateProjectionMatrix();
     this.orbit.update();
