@@ -12,7 +12,7 @@ frame (a byte a cell up to 256 parts); frames are streamed, two meshes at a time
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Iterator
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass, replace
 from math import isfinite
 
@@ -28,7 +28,9 @@ from sfcpart.measure.gate import cast_graph, frozen
 from sfcpart.measure.pairs import PartPairs
 from sfcpart.measure.step_model import StepModel
 from sfcpart.mesh.mesh import Mesh
+from sfcpart.partition import Partition
 from sfcpart.rebalance.migration import CELL_BYTES, Migration
+from sfcpart.rebalance.origin import home_parts
 from sfcpart.rebalance.overlap import Overlap
 from sfcpart.rebalance.relabel import best_labels
 
@@ -132,19 +134,20 @@ def make_timetable(
     """
     columns: list[_Column] = []
     old: list[_Carried] = []
-    scale = 0.0
-    for number, (frame, same) in enumerate(_with_sameness(frames)):
+    scale, before = 0.0, None
+    for number, frame in enumerate(frames):
         weight = weigh(frame)
         scale = scale or float(weight.mean())
         now = replace(model, cell_seconds=model.cell_seconds * (float(weight.mean()) / scale))
-        if not same:
-            _carry(old, frame, number)
+        if before is not None:
+            _carry(old, frame, before, number)
         _check_speeds(old, frame, number)
         state = _State(frame, weight, frame.checked_speed(n_parts), n_parts, now)
         packed = split(frame, weight).astype(np.min_scalar_type(n_parts - 1))
         new = _Carried(packed, has_speed=frame.speed is not None)
         columns.append(_column(old, new, state, resplit))
         old.append(new)
+        before = frame.mesh
         progress(number + 1)
     if not columns:
         raise InputError("the series is empty; wanted at least one frame")
@@ -186,27 +189,24 @@ class _Column:
     n_cells: int
 
 
-def _with_sameness(frames: Iterable[Frame]) -> Iterator[tuple[Frame, bool]]:
-    """Yield frames and whether they have the mesh of the one before."""
-    before: Mesh | None = None
-    for frame in frames:
-        centers = None if before is None else before.centers
-        yield frame, frame.parent is None and centers is frame.mesh.centers
-        before = frame.mesh
-
-
-def _carry(old: list[_Carried], frame: Frame, number: int) -> None:
-    """Give each cell the part of its parent, in every split so far."""
-    if not old:
+def _carry(old: list[_Carried], frame: Frame, before: Mesh, number: int) -> None:
+    """Give each cell the part of the cell it comes from, in every split so far."""
+    if frame.parent is None and _same_cells(frame.mesh, before):
         return
+    cells = Partition.from_array(np.arange(before.n_cells), before.n_cells)
+    centers = {"old_centers": before.centers, "centers": frame.mesh.centers}
     try:
-        parent = frame.checked_parent(len(old[0].packed))
+        origin = home_parts(cells, frame.n_cells, parent=frame.parent, **centers)
     except InputError as error:
         raise InputError(f"frame {number}: {error}") from error
     for carried in old:
         carried.pairs = None
-        if parent is not None:
-            carried.packed = carried.packed[parent]
+        carried.packed = carried.packed[origin]
+
+
+def _same_cells(mesh: Mesh, before: Mesh) -> bool:
+    """Tell whether two meshes have the same centres, and so the same cells."""
+    return mesh.centers is before.centers or np.array_equal(mesh.centers, before.centers)
 
 
 def _check_speeds(old: list[_Carried], frame: Frame, number: int) -> None:

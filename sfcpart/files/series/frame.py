@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from sfcpart.dtypes import Array, FloatArray, IntArray
+from sfcpart.dtypes import Array, FloatArray
 from sfcpart.errors import InputError, WeightError
 from sfcpart.mesh.mesh import Mesh
 
@@ -25,7 +25,8 @@ class Frame:
         Work of each cell; 1 each by default.
     parent : (n_cells,) integers, optional
         Cell of the frame before that each cell lies in (or, where cells were joined, one that lay
-        in it). None: the cells are those of the frame before.
+        in it), -1 where that is not known: then the one with the nearest centre. None: the cells
+        of the frame before, if all centres are where they were, else the nearest ones.
     steps : int
         Steps of the solver for which this state lasts.
     speed : (n_parts,) numbers, optional
@@ -68,30 +69,6 @@ class Frame:
     def n_cells(self) -> int:
         """Number of cells."""
         return self.mesh.n_cells
-
-    def checked_parent(self, n_before: int) -> IntArray | None:
-        """Return the parents, all of them cells of the frame before, or None for equal cells.
-
-        Raises
-        ------
-        InputError
-            If a parent is out of range, or there are none and the number of cells differs.
-        """
-        if self.parent is None:
-            if self.n_cells != n_before:
-                raise InputError(
-                    f"a frame has {self.n_cells} cells, the one before {n_before}, and no parents; "
-                    "wanted a parent for each cell"
-                )
-            return None
-        parent: IntArray = np.asarray(self.parent)
-        wrong = np.flatnonzero((parent < 0) | (parent >= n_before))
-        if len(wrong):
-            raise InputError(
-                f"cell {wrong[0]} has parent {parent[wrong[0]]}; wanted 0 to {n_before - 1}, a "
-                "cell of the frame before"
-            )
-        return parent
 
     def checked_speed(self, n_parts: int) -> FloatArray:
         """Return one positive speed a part; 1 each by default.

@@ -64,8 +64,9 @@ def read_series(
     mesh : Mesh, optional
         The one mesh of a series of weights.
     parent : str
-        Cell field of the meshes that holds the parent of each cell. Meshes without it must have
-        the cells of the mesh before, in the same order and places.
+        Cell field of the meshes that holds the parent of each cell (`Frame.parent`). Where there
+        is none, cells with the centres of the mesh before are the same, and others come from the
+        nearest.
 
     Returns
     -------
@@ -128,7 +129,7 @@ def _meshes(files: list[Path], parent: str) -> Iterator[Frame]:
         mesh = read_mesh(file)
         origin = _parents(mesh, parent, file)
         if before is not None and origin is None:
-            mesh = _same_cells(before, mesh, file, parent)
+            mesh = _same_cells(before, mesh)
         try:
             yield Frame(mesh, parent=None if before is None else origin)
         except InputError as error:
@@ -147,13 +148,13 @@ def _parents(mesh: Mesh, name: str, file: Path) -> Array | None:
     return whole
 
 
-def _same_cells(before: Mesh, mesh: Mesh, file: Path, parent: str) -> Mesh:
-    """Return the mesh before with the new fields: what was derived from it is kept."""
-    if before.n_cells != mesh.n_cells or not np.array_equal(before.centers, mesh.centers):
-        raise InputError(
-            f"{file}: has other cells than the mesh before and no cell field {parent!r}; wanted "
-            "the parent of each cell"
-        )
+def _same_cells(before: Mesh, mesh: Mesh) -> Mesh:
+    """Return a mesh, or if its cells are those before, that one with the new fields.
+
+    What was derived from the mesh before is then kept.
+    """
+    if not np.array_equal(before.centers, mesh.centers):
+        return mesh
     for name, values in mesh.cell_fields.items():
         before = before.with_cell_field(name, values)
     return before

@@ -71,6 +71,18 @@ def test_equal_cells_in_another_mesh_are_the_same_cells():
     assert np.array_equal(tables[0].slowest, tables[1].slowest, equal_nan=True)
 
 
+def test_without_parents_the_nearest_cell_counts(front):
+    # Centres of refined cells lie nearest to that of the cube they were cut from.
+    fine = [frame for frame in front if frame.n_cells > front[0].n_cells][:1]
+    frames = [front[0], *fine]
+    expected = sfcpart.replay(frames, N_PARTS).timetable
+    bare = [front[0], sfcpart.Frame(fine[0].mesh, steps=3)]
+    unknown = [front[0], sfcpart.Frame(fine[0].mesh, parent=np.full(fine[0].n_cells, -1), steps=3)]
+    for series in (bare, unknown):
+        found = sfcpart.replay(series, N_PARTS).timetable
+        assert np.array_equal(found.slowest, expected.slowest, equal_nan=True)
+
+
 def test_specified_weights_multiply_those_of_the_frames():
     mesh = lattice((8, 8)).to_mesh().with_cell_field("zone", np.arange(64) // 32)
     weight = np.where(np.arange(64) < 32, 4.0, 1.0)
@@ -109,11 +121,11 @@ def test_frames_that_do_not_follow_are_refused(front):
     first, second = front[0], front[1]
     with pytest.raises(InputError, match="series is empty"):
         sfcpart.replay([], 2)
-    with pytest.raises(InputError, match="and no parents; wanted a parent for each cell"):
-        sfcpart.replay([first, sfcpart.Frame(second.mesh)], 2)
     beyond = np.array(second.parent)
     beyond[7] = first.n_cells
-    with pytest.raises(InputError, match=f"frame 1: cell 7 has parent {first.n_cells}; wanted 0"):
+    with pytest.raises(
+        InputError, match=f"frame 1: the parent of cell 7 is {first.n_cells}; wanted numbers from 0"
+    ):
         sfcpart.replay([first, sfcpart.Frame(second.mesh, parent=beyond)], 2)
     with pytest.raises(InputError, match="method 'best' is unknown"):
         sfcpart.replay([first], 2, method="best")
