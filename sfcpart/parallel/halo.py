@@ -10,16 +10,16 @@ Cost of an exchange: one copy of the rows sent, one of the rows received, a mess
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from typing import TYPE_CHECKING, Any, TypeAlias
+from typing import TYPE_CHECKING, Any
 
-import numpy as np
+import numpy as np  # noqa: F401 - the examples use it
 from numpy.typing import ArrayLike
 
 from sfcpart.comm import adopt
 from sfcpart.dtypes import Array, Int64Array
-from sfcpart.errors import InputError
 from sfcpart.parallel.gate import checked_faces, checked_graph
-from sfcpart.slices.exchange import Exchange, Lane, Way, open_lane, pack
+from sfcpart.parallel.lanes import Lanes
+from sfcpart.slices.exchange import Exchange
 from sfcpart.slices.gate import agreed
 from sfcpart.slices.lists import ExchangePlan
 
@@ -27,8 +27,6 @@ if TYPE_CHECKING:
     from sfcpart.comm.base import Comm
 
 __all__ = ["Halo"]
-
-_Form: TypeAlias = tuple[Way, Any, tuple[int, ...]]
 
 
 @dataclass(frozen=True, eq=False)
@@ -63,7 +61,10 @@ class Halo:
 
     comm: Comm
     plan: ExchangePlan
-    _idle: dict[_Form, list[Lane]] = field(default_factory=dict, init=False, repr=False)
+    _lanes: Lanes = field(init=False, repr=False)
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "_lanes", Lanes(self.comm, self.plan))
 
     @classmethod
     def from_graph(
@@ -278,21 +279,7 @@ class Halo:
         >>> run_ranks(2, act)
         [[5, 1], [6, 0]]
         """
-        whole = self._checked(array, needs_halo=False)
-        lane = self._lane("forward", array)
-        pack(array, self.plan.send, lane.sent)
-        form = self._form("forward", array)
-
-        def land(lane: Lane) -> Array:
-            if whole:
-                array[self.n_owned :] = lane.received
-                halo_rows = array[self.n_owned :]
-            else:
-                halo_rows = lane.received.astype(array.dtype)
-            self._idle[form].append(lane)
-            return halo_rows
-
-        return Exchange(lane, land)
+        return self._lanes.forward(array)
 
     def add_back(self, array: Array) -> Array:
         """Add the halo rows to the owned rows of their owners, and set them to zero.
@@ -350,47 +337,4 @@ class Halo:
         >>> halo.start_back(np.array([2.5])).finish().tolist()
         [2.5]
         """
-        self._checked(array, needs_halo=True)
-        if array.dtype.kind not in "iufc":
-            raise InputError(f"{array.dtype} rows to add; wanted integers, floats or complex")
-        lane = self._lane("back", array)
-        lane.sent[...] = array[self.n_owned :]
-        array[self.n_owned :] = 0
-        form = self._form("back", array)
-
-        def land(lane: Lane) -> Array:
-            for _, lo, hi in self.plan.targets():  # within one, no row occurs twice
-                array[self.plan.send[lo:hi]] += lane.received[lo:hi]
-            self._idle[form].append(lane)
-            return array[: self.n_owned]
-
-        return Exchange(lane, land)
-
-    def _checked(self, array: Array, *, needs_halo: bool) -> bool:
-        """Tell whether the array has halo rows; refuse what cannot be exchanged."""
-        whole = self.n_owned + self.n_halo
-        fits = isinstance(array, np.ndarray) and array.ndim > 0
-        if not fits or (len(array) != whole and (needs_halo or len(array) != self.n_owned)):
-            what = f"an array of shape {array.shape}" if isinstance(array, np.ndarray) else array
-            other = "" if needs_halo else f", or the {self.n_owned} owned ones alone"
-            raise InputError(
-                f"{what!s} to exchange; wanted an array of {whole} rows, {self.n_owned} owned and "
-                f"{self.n_halo} in the halo{other}"
-            )
-        if array.dtype.hasobject:
-            raise InputError(f"{array.dtype} rows to exchange; wanted a fixed-size dtype")
-        is_whole = self.n_halo > 0 and len(array) == whole
-        if (is_whole or needs_halo) and not array.flags.writeable:
-            raise InputError("the array is read-only; wanted one whose halo rows can be filled")
-        return is_whole
-
-    def _form(self, way: Way, array: Array) -> _Form:
-        """Return what must agree for a lane to be used again."""
-        return way, array.dtype, array.shape[1:]
-
-    def _lane(self, way: Way, array: Array) -> Lane:
-        """Take an idle lane for the rows of an array, or make one."""
-        idle = self._idle.setdefault(self._form(way, array), [])
-        if idle:
-            return idle.pop()
-        return open_lane(way, array, plan=self.plan, comm=self.comm)
+        return self._lanes.back(array)

@@ -241,6 +241,6 @@ def test_buffers_are_used_again():
             array = np.array([comm.rank + 10 * step, -1])
             halo.exchange(array)
             assert array[1] == 1 - comm.rank + 10 * step
-        return [len(lanes) for lanes in halo._idle.values()]
+        return [len(lanes) for lanes in halo._lanes._idle.values()]
 
     assert run_ranks(2, act) == [[1], [1]]
