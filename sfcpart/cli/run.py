@@ -39,11 +39,13 @@ def run(arguments: Sequence[str]) -> int:
         return _flushed(leave.exit_code)
     except (KeyboardInterrupt, click.Abort) as error:
         return _end(error, "interrupted; nothing was left half-written", 130)
-    except BrokenPipeError:
-        return _forget_output()
+    except BrokenPipeError as error:
+        return _end(error, "", _forget_output())
     except Exception as error:
         if os.environ.get("SFCPART_DEBUG", "0") not in ("", "0"):
-            raise
+            if not launched():
+                raise
+            _print_traceback(error)
         return _end(error, _one_line(error), code_of(error))
     return 0
 
@@ -85,8 +87,18 @@ def _run_on_rank_0(arguments: Sequence[str]) -> int:
     return _flushed(code)
 
 
+def _print_traceback(error: Exception) -> None:
+    """Print where an error came from; the process goes on, so that the other ranks are told."""
+    import traceback
+
+    traceback.print_exception(error)
+
+
 def _end(error: BaseException, text: str, code: int) -> int:
-    """Tell an error once, however many ranks there are; return the code or end the job."""
+    """Tell an error once, however many ranks there are; return the code or end the job.
+
+    There is nothing to tell where the reader of the output went away.
+    """
     if not launched():
         return _say(text, code)
     from sfcpart.comm.ending import end_rank

@@ -49,3 +49,11 @@ def test_what_a_killed_rank_leaves_is_removed_by_the_next_run(tmp_path, root):
     (tmp_path / "killed").rename(tmp_path / "sound")
     printed, names = told_by(tmp_path, root, "sound")
     assert (printed, names) == ("", ["parts"])
+
+
+def test_a_traceback_on_demand_ends_the_job_too(tmp_path, root, monkeypatch):
+    monkeypatch.setenv("SFCPART_DEBUG", "1")
+    printed, names = told_by(tmp_path, root, "bad_slice")
+    assert printed.count("Traceback") == 1
+    assert "sfcpart: error: rank 1: cell 7 of the slice has no points" in printed
+    assert names == []
