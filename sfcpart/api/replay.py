@@ -14,7 +14,7 @@ from sfcpart.errors import InputError
 from sfcpart.files.series.frame import Frame
 from sfcpart.plan import plan_problem, weights_of
 from sfcpart.rebalance.replayed import DEFAULT_RULES, Replay, check_rules, replay_rules
-from sfcpart.rebalance.timetable import ResplitCost, make_timetable
+from sfcpart.rebalance.timetable import ResplitCost, frame_speed, make_timetable
 
 if TYPE_CHECKING:
     from sfcpart.measure import StepModel
@@ -104,7 +104,7 @@ def replay(
             n_parts,
             tolerance=tolerance,
             weights=weight,
-            speeds=frame.checked_speed(n_parts),
+            speeds=frame_speed(frame, n_parts),
             limit_weights=None,
             limits=None,
             levels=None,

@@ -19,7 +19,7 @@ from math import isfinite
 import numpy as np
 
 from sfcpart.dtypes import PART, Array, FloatArray, Int32Array, Int64Array
-from sfcpart.errors import InputError
+from sfcpart.errors import InputError, WeightError
 from sfcpart.files.series.frame import Frame
 from sfcpart.graph import CellGraph, cell_graph
 from sfcpart.kernels.measure import count_cuts
@@ -34,7 +34,7 @@ from sfcpart.rebalance.origin import home_parts
 from sfcpart.rebalance.overlap import Overlap
 from sfcpart.rebalance.relabel import best_labels
 
-__all__ = ["ResplitCost", "Timetable", "make_timetable"]
+__all__ = ["ResplitCost", "Timetable", "frame_speed", "make_timetable"]
 
 Split = Callable[[Frame, FloatArray], Int32Array]
 """Splits a frame by the weights of its cells."""
@@ -53,6 +53,11 @@ class ResplitCost:
         cell in a step; our own choice, to be replaced by a measurement).
     cell_bytes : float
         That a cell which moves takes along.
+
+    Examples
+    --------
+    >>> ResplitCost(seconds=0.5).split_seconds
+    2e-06
     """
 
     seconds: float = 0.0
@@ -142,7 +147,7 @@ def make_timetable(
         if before is not None:
             _carry(old, frame, before, number)
         _check_speeds(old, frame, number)
-        state = _State(frame, weight, frame.checked_speed(n_parts), n_parts, now)
+        state = _State(frame, weight, frame_speed(frame, n_parts), n_parts, now)
         packed = split(frame, weight).astype(np.min_scalar_type(n_parts - 1))
         new = _Carried(packed, has_speed=frame.speed is not None)
         columns.append(_column(old, new, state, resplit))
@@ -187,6 +192,18 @@ class _Column:
     cost: FloatArray
     steps: int
     n_cells: int
+
+
+def frame_speed(frame: Frame, n_parts: int) -> FloatArray:
+    """Return one positive speed for each part, 1 each where the frame has none."""
+    if frame.speed is None:
+        return np.ones(n_parts)
+    speed: FloatArray = np.asarray(frame.speed, np.float64)
+    if speed.shape != (n_parts,) or not np.all(np.isfinite(speed) & (speed > 0)):
+        raise WeightError(
+            f"speeds of a frame have shape {speed.shape}; wanted {n_parts} numbers above 0"
+        )
+    return speed
 
 
 def _carry(old: list[_Carried], frame: Frame, before: Mesh, number: int) -> None:

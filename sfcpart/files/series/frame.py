@@ -7,7 +7,6 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from sfcpart.dtypes import Array, FloatArray
 from sfcpart.errors import InputError, WeightError
 from sfcpart.mesh.mesh import Mesh
 
@@ -69,20 +68,3 @@ class Frame:
     def n_cells(self) -> int:
         """Number of cells."""
         return self.mesh.n_cells
-
-    def checked_speed(self, n_parts: int) -> FloatArray:
-        """Return one positive speed a part; 1 each by default.
-
-        Raises
-        ------
-        WeightError
-            If there is not one positive finite number for each part.
-        """
-        if self.speed is None:
-            return np.ones(n_parts)
-        speed: Array = np.asarray(self.speed, np.float64)
-        if speed.shape != (n_parts,) or not np.all(np.isfinite(speed) & (speed > 0)):
-            raise WeightError(
-                f"speeds of a frame have shape {speed.shape}; wanted {n_parts} numbers above 0"
-            )
-        return speed
