@@ -38,7 +38,7 @@ from sfcpart.dtypes import Array, Int64Array
 __all__ = ["MpiComm"]
 
 _TAG = 1
-_RELAY_TAG, _FAILED_TAG = 3, 4
+_RELAY_TAG = 3
 _OPERATION = {"sum": MPI.SUM, "min": MPI.MIN, "max": MPI.MAX}
 
 
@@ -174,27 +174,29 @@ class MpiComm:
         """Hand an array from rank to rank, each of which makes of it what the next one gets."""
         before, after = (-1, 1) if towards == "last" else (1, -1)
         ends = range(self.size)[::after]
-        status, came = MPI.Status(), relayed(array)
+        came, failed = relayed(array), False
         if self.rank != ends[0]:
-            self._comm.Probe(self.rank + before, MPI.ANY_TAG, status)
-            came = np.empty(status.Get_count(MPI.INT64_T), np.int64)
-            self._comm.Recv(came, self.rank + before, status.Get_tag())
-        failed = status.Get_tag() == _FAILED_TAG
+            status = MPI.Status()
+            self._comm.Probe(self.rank + before, _RELAY_TAG, status)  # links have another tag
+            box = np.empty(status.Get_count(MPI.INT64_T), np.int64)
+            self._comm.Recv(box, self.rank + before, _RELAY_TAG)
+            came, failed = box[1:], bool(box[0])
         if not failed:
             came, failed = _stepped(step, came, self.rank)
+        box = np.append(np.int64(failed), came)
         if self.rank != ends[-1]:
-            self._comm.Send(came, self.rank + after, _FAILED_TAG if failed else _RELAY_TAG)
-        return self._result_of_relay(came, failed, ends[-1])
+            self._comm.Send(box, self.rank + after, _RELAY_TAG)
+        return self._result_of_relay(box, ends[-1])
 
-    def _result_of_relay(self, came: Int64Array, failed: bool, root: int) -> Int64Array:
+    def _result_of_relay(self, box: Int64Array, root: int) -> Int64Array:
         """Spread what the last rank made; raise on all ranks what one of them failed with."""
-        head = np.array([len(came), failed], np.int64)
-        self._comm.Bcast(head, root)
-        made = came if self.rank == root else np.empty(head[0], np.int64)
+        length = np.array(len(box), np.int64)
+        self._comm.Bcast(length, root)
+        made = box if self.rank == root else np.empty(int(length), np.int64)
         self._comm.Bcast(made, root)
-        if head[1]:
-            raise_parcel(made[1:].tobytes(), None, rank=int(made[0]))
-        return made
+        if made[0]:
+            raise_parcel(made[2:].tobytes(), None, rank=int(made[1]))
+        return made[1:]
 
     def check(self, error: BaseException | None) -> None:
         """Turn an error of any rank into the same error on all."""

@@ -575,6 +575,22 @@ def arrays_are_handed_on(comm: Comm) -> Lines:
     return [str(array.tolist()) for array in [*seen, last[:1]]]
 
 
+@scenario(lambda rank, size: [str([*range(size)]), str([(rank - 1) % size])])
+def a_relay_minds_no_link_on_its_way(comm: Comm) -> Lines:
+    received = np.zeros(1, np.int64)
+    link = comm.link(
+        np.array([comm.rank]),
+        received,
+        targets=[((comm.rank + 1) % comm.size, 0, 1)],
+        sources=[((comm.rank - 1) % comm.size, 0, 1)],
+    )
+    link.start()
+    none = np.empty(0, np.int64)
+    seen = comm.relay(none, lambda came: np.append(came, comm.rank), towards="last")
+    link.finish()
+    return [str(seen.tolist()), str(received.tolist())]
+
+
 def _expect_broken_relay(rank: int, size: int) -> Lines:
     failing = size // 2
     return [
