@@ -45,11 +45,11 @@ def command(
     prepare_process(threads)
     from sfcpart import api
     from sfcpart.cli.console import Stages, print_json
-    from sfcpart.cli.inputs import read_mesh
+    from sfcpart.cli.ranks import read_held
 
     doing = Stages(quiet=quiet or as_json)
     with doing(f"reading {mesh}"):
-        loaded = read_mesh(mesh, merge_points=merge_points)
+        loaded = read_held(mesh, merge_points=merge_points)
     with doing("looking it over"):
         survey = api.inspect(loaded)
     if as_json:

@@ -33,8 +33,9 @@ __all__ = [
     "whole_of",
 ]
 
-TOGETHER = frozenset({"split", "assess", "network"})
+TOGETHER = frozenset({"split", "assess", "inspect", "network"})
 """Verbs that all ranks run."""
+_WITHOUT_MESH = frozenset({None, "completion", "figures", "manual"})
 
 
 def hush_others() -> None:
@@ -95,7 +96,7 @@ def run_alone(
     comm, ended = world(), ("", 0)
     if comm.rank == 0:
         verb = next((word for word in arguments if not word.startswith("-")), None)
-        if comm.size > 1 and verb is not None:
+        if comm.size > 1 and verb not in _WITHOUT_MESH:
             note(f"{verb} runs on rank 0 alone, which must hold the mesh; the other ranks wait")
         try:
             act()

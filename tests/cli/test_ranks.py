@@ -95,7 +95,7 @@ def test_other_formats_are_spread(launched, root, capsys):
 def test_other_verbs_run_on_rank_0(launched, channel, capsys):
     assert run.run(["inspect", str(channel)]) == 0
     assert run.run(["figures", "--help"]) == 0
-    assert run.run(["inspect", f"{channel}.none"]) == 4
+    assert run.run(["compare", f"{channel}.none", "-n", "2"]) == 4
     told = capsys.readouterr()
     assert "cells" in told.out
     assert "cannot be read" in told.err
@@ -108,7 +108,7 @@ def test_ranks_but_the_first_are_silent(launched, monkeypatch, capsys):
     ranks.hush_others()
     console.note("nobody reads this")
     ranks.once(lambda: pytest.fail("only rank 0 does this"))
-    assert ranks.run_alone(["inspect"], lambda: pytest.fail("rank 0"), lambda error: ("", 1))
+    assert ranks.run_alone(["compare"], lambda: pytest.fail("rank 0"), lambda error: ("", 1))
     assert not console.Stages(quiet=False).live
     assert capsys.readouterr().err == ""
 
@@ -117,8 +117,8 @@ def test_rank_0_says_that_the_others_wait(launched, monkeypatch, capsys):
     first = Second()
     monkeypatch.setattr(Second, "rank", 0)
     launched[0] = first
-    assert ranks.run_alone(["inspect"], lambda: None, lambda error: ("", 1)) == ("", 0)
-    assert "inspect runs on rank 0 alone" in capsys.readouterr().err
+    assert ranks.run_alone(["compare"], lambda: None, lambda error: ("", 1)) == ("", 0)
+    assert "compare runs on rank 0 alone" in capsys.readouterr().err
 
 
 def test_ranks_of_a_node_share_its_processors(launched, monkeypatch):

@@ -23,6 +23,7 @@ OTHERS = [
     ["split", shell, "-n", "1000000"],
     ["split", channel, "--colour"],
     ["assess", channel, "--field", "colour"],
+    ["replay", "none.h5", "-n", "2"],
     ["inspect", channel],
 ]
 os.chdir(out)
