@@ -41,7 +41,8 @@ def splits_by_slices(method: Method, cuts: Cuts) -> bool:
     >>> splits_by_slices(METHODS["hilbert"], "balanced")
     True
     """
-    return method.by_slices and cuts == "balanced"
+    moves_cuts = cuts == "least" and method.home.startswith("curve.")
+    return method.by_slices and not moves_cuts
 
 
 def run_method(method: Method, problem: Problem) -> Int32Array:
