@@ -109,7 +109,7 @@ def meet_faces(faces: FaceRows, comm: Comm) -> Answers:
     came = way.forward(np.stack([faces.cell_gid, bits, size], axis=1))
     corner = dealing(comm, np.repeat(home, size)).forward(faces.corner_gid)
     start = np.cumsum(way.received) - way.received
-    told = _pair(came, corner, np.repeat(np.arange(comm.size), way.received))
+    told = _told(came, corner, np.repeat(np.arange(comm.size), way.received))
     source = np.searchsorted(start, told[:, 0], side="right") - 1
     # of several ranks that sent nothing `searchsorted` takes the last, which did send
     told[:, 0] -= start[source]
@@ -122,40 +122,39 @@ def meet_faces(faces: FaceRows, comm: Comm) -> Answers:
     return Answers(row, rows[:, 1], np.ascontiguousarray(rows[:, 2]).view(COORDINATE))
 
 
-def _pair(came: Int64Array, corner: Int64Array, rank: Int64Array) -> Int64Array:
+def _told(came: Int64Array, corner: Int64Array, rank: Int64Array) -> Int64Array:
     """Return (row, cell behind it, bits of the measure) of faces of several ranks, by row."""
-    order, begins = _equal_faces(came, corner)
-    cell, source = came[order, 0], rank[order]
-    group = np.cumsum(begins) - 1
-    begin = np.flatnonzero(begins)
-    if not len(begin):
-        return np.zeros((0, 3), np.int64)
+    size = came[:, 2]
+    start = np.cumsum(size) - size
+    told = [np.zeros((0, 3), np.int64)]
+    for n in np.unique(size).tolist():  # equal faces have as many corners
+        rows = np.flatnonzero(size == n)
+        key = corner[start[rows][:, None] + np.arange(n)]
+        order = np.lexsort((came[rows, 0], *key.T[::-1]))
+        key, rows = key[order], rows[order]
+        begins = np.ones(len(rows), np.bool_)
+        begins[1:] = (key[1:] != key[:-1]).any(axis=1)
+        told.append(_pair(rows, begins, came, rank[rows]))
+    found = np.concatenate(told)
+    return found[np.argsort(found[:, 0], kind="stable")]
+
+
+def _pair(row: Int64Array, begins: BoolArray, came: Int64Array, source: Int64Array) -> Int64Array:
+    """Tell the faces of runs of equal ones, by cell, the other cells of the run."""
+    cell, group, begin = came[row, 0], np.cumsum(begins) - 1, np.flatnonzero(begins)
     is_met = np.minimum.reduceat(source, begin) < np.maximum.reduceat(source, begin)
-    bits = came[order[begin], 1]
+    bits = came[row[begin], 1]
     same_cell = np.append(False, (cell[1:] == cell[:-1]) & ~begins[1:])
     again = np.flatnonzero(is_met[group] & same_cell)
     first = np.flatnonzero(is_met[group] & ~same_cell)
     one, other = _all_pairs(group[first])
     one, other = first[one], first[other]
-    told = np.concatenate(
+    return np.concatenate(
         [
-            np.stack([order[one], cell[other], bits[group[one]]], axis=1),
-            np.stack([order[again], np.full(len(again), -1), bits[group[again]]], axis=1),
+            np.stack([row[one], cell[other], bits[group[one]]], axis=1),
+            np.stack([row[again], np.full(len(again), -1), bits[group[again]]], axis=1),
         ]
     )
-    return told[np.argsort(told[:, 0], kind="stable")]
-
-
-def _equal_faces(came: Int64Array, corner: Int64Array) -> tuple[Int64Array, BoolArray]:
-    """Sort faces by corners, then cell; mark where other corners begin."""
-    size = came[:, 2]
-    key = np.full((len(size), int(size.max(initial=1))), -1, GID)
-    key[np.arange(key.shape[1]) < size[:, None]] = corner
-    order = np.lexsort((came[:, 0], *key.T[::-1]))
-    key = key[order]
-    begins = np.ones(len(order), np.bool_)
-    begins[1:] = (key[1:] != key[:-1]).any(axis=1)
-    return order, begins
 
 
 def _all_pairs(group: Int64Array) -> tuple[Int64Array, Int64Array]:

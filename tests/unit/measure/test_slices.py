@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from sfcpart.comm import SerialComm, run_ranks
@@ -74,6 +74,7 @@ def cases(draw):
     return mesh, part, n_parts, draw(bounds(n)), extra
 
 
+@settings(max_examples=25)
 @given(cases())
 def test_slices_give_the_bits_of_the_whole(case):
     *where, extra = case
@@ -143,6 +144,12 @@ def test_errors_are_those_of_the_first_rank_that_fails():
             [0, 4, 8],
             lambda held: act(held, [0] * 4, weights=np.where(held.cell_gid > 4, 1e308, 1)),
         )
+
+
+def test_one_weight_near_the_largest_number_is_no_error():
+    mesh = grid((4, 2))
+    heavy = np.where(np.arange(8) == 5, 1.7e308, 1.0)
+    assert_same(mesh, [0] * 4 + [1] * 4, 2, [0, 3, 8], weights=heavy)
 
 
 @given(

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.sparse import coo_array
 from scipy.sparse.csgraph import connected_components
@@ -79,6 +79,7 @@ def parted(draw):
     return mesh, np.array(part, np.int32), draw(bounds(mesh.n_cells))
 
 
+@settings(max_examples=25)
 @given(parted())
 def test_pieces_of_parts(case):
     mesh, part, first = case
