@@ -237,14 +237,15 @@ def _non_negative(design: FloatArray, target: FloatArray) -> FloatArray:
 
     length = np.linalg.norm(design, axis=0)
     length[length == 0] = 1.0
-    return np.asarray(nnls(design / length, target)[0] / length)
+    q, r = np.linalg.qr(design / length)  # few rows instead of one a rank
+    return np.asarray(nnls(r, q.T @ target)[0] / length)
 
 
 def _singular(design: FloatArray) -> tuple[FloatArray, FloatArray]:
     """Return singular values and right vectors of the columns scaled to length 1."""
     length = np.linalg.norm(design, axis=0)
     scaled = design / np.where(length > 0, length, 1.0)
-    values, vectors = np.linalg.svd(scaled, full_matrices=True)[1:]
+    values, vectors = np.linalg.svd(np.linalg.qr(scaled, mode="r"))[1:]
     padded = np.zeros(design.shape[1])
     padded[: len(values)] = values
     return padded, vectors
