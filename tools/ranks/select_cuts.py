@@ -123,6 +123,15 @@ def tell(rows: list[dict], far: dict) -> None:
     )
 
 
+def cases(size: int, cells: list[int]) -> list[tuple[int, int]]:
+    """Return cells a rank and parts to try; one of each from 1000 ranks on, to save time."""
+    if size >= 1000:
+        return [(cells[0], size)]
+    return [
+        (n, p) for n in cells for p in (max(2, size // 10), size, min(10 * size, size * n // 2))
+    ]
+
+
 def main() -> None:
     parser = argparse.ArgumentParser(description=__doc__.splitlines()[0])
     parser.add_argument("--ranks", type=int, nargs="*", default=[30, 100, 300, 1000])
@@ -132,11 +141,10 @@ def main() -> None:
     given = parser.parse_args()
     rows = []
     for size in given.ranks:
-        for n_local in given.cells if size < 1000 else given.cells[:1]:  # to save time
-            for n_parts in {max(2, size // 10), size, min(10 * size, size * n_local // 2)}:
-                work = {"n_local": n_local, "n_parts": n_parts, "heaviest": given.heaviest}
-                counts = run_ranks(size, lambda comm: select(comm, **work), timeout=900)  # noqa: B023
-                rows.append(busiest(counts))
+        for n_local, n_parts in cases(size, given.cells):
+            work = {"n_local": n_local, "n_parts": n_parts, "heaviest": given.heaviest}
+            counts = run_ranks(size, lambda comm: select(comm, **work), timeout=1800)  # noqa: B023
+            rows.append(busiest(counts))
     rows.sort(key=lambda row: (row["ranks"], row["parts"], row["cells"]))
     far = said(rows)
     print(json.dumps({"rows": rows, **far}, indent=1)) if given.json else tell(rows, far)

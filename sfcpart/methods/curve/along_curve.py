@@ -18,7 +18,8 @@ import numpy as np
 from sfcpart.curve import Curve
 from sfcpart.dtypes import PART, Int32Array, Int64Array
 from sfcpart.errors import InputError, PartitionError, WeightError
-from sfcpart.methods.curve.chunks import cut_line
+from sfcpart.methods.curve.abreast import Asking, answered
+from sfcpart.methods.curve.chunks import cutting
 from sfcpart.methods.curve.line import Line
 from sfcpart.methods.curve.window_cuts import with_least_cuts
 from sfcpart.methods.problem import Problem
@@ -146,19 +147,24 @@ def _nested_cuts(
         speed = problem.part_speed.astype(np.float64).reshape(n_chunks, inside).sum(axis=1)
         limit = None if part_limit is None else _summed(part_limit, n_chunks)
         least = inside if some_for_each else 0
-        pieces = []
+        tasks = []
         for chunk in range(len(cut) - 1):
             own = slice(chunk * size, (chunk + 1) * size)
             ends = {"begin": int(cut[chunk]), "end": int(cut[chunk + 1])}
             most = None if limit is None else limit[own]
-            try:
-                pieces.append(cut_line(line, **ends, speed=speed[own], limit=most, least=least))
-            except PartitionError as error:
-                if n_chunks == size:
-                    raise
-                raise PartitionError(f"inside chunk {chunk} of the level above, {error}") from error
+            task = cutting(line, **ends, speed=speed[own], limit=most, least=least)
+            tasks.append(task if n_chunks == size else _inside(chunk, task))
+        pieces = answered(line.comm, tasks)
         cut = np.append(np.concatenate([piece[:-1] for piece in pieces]), line.n_items)
     return cut
+
+
+def _inside(chunk: int, task: Asking[Int64Array]) -> Asking[Int64Array]:
+    """Run a task; say in which chunk it fails."""
+    try:
+        return (yield from task)
+    except PartitionError as error:
+        raise PartitionError(f"inside chunk {chunk} of the level above, {error}") from error
 
 
 def _summed(limit: Int64Array, n_chunks: int) -> Int64Array:

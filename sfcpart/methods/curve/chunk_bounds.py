@@ -8,6 +8,7 @@ import numpy as np
 
 from sfcpart.dtypes import BoolArray, FloatArray, Int64Array
 from sfcpart.kernels.curve import chunks as kernel
+from sfcpart.methods.curve.abreast import Ask, Asking
 from sfcpart.methods.curve.line import Line
 
 __all__ = ["Bounds"]
@@ -36,7 +37,7 @@ class Bounds:
     heavy: Int64Array = field(default_factory=lambda: np.empty(0, np.int64))
 
     @classmethod
-    def of(
+    def asked(
         cls,
         line: Line,
         begin: int,
@@ -46,11 +47,11 @@ class Bounds:
         limit: Int64Array,
         least: int,
         weight: int,
-    ) -> Bounds:
+    ) -> Asking[Bounds]:
         """Look over the items [begin, end) of a line, of the given weight in all."""
         if begin == end:
             return cls()
-        heaviest, widest, lightest, most = _extremes(line, begin, end, least)
+        heaviest, widest, lightest, most = yield from _extremes(line, begin, end, least)
         slowest, fastest = float(speed.min()), float(speed.max())
         share = weight / float(speed.sum()) * (1 - 1e-9)
         if slowest == fastest:  # loads are integers
@@ -65,7 +66,7 @@ class Bounds:
         return cls(lowest, heaviest / slowest, heavy)
 
 
-def _extremes(line: Line, begin: int, end: int, least: int) -> tuple[int, int, int, int]:
+def _extremes(line: Line, begin: int, end: int, least: int) -> Asking[tuple[int, int, int, int]]:
     """Return heaviest item, heaviest and lightest window, and most limited window."""
     width = max(1, least)
     found = np.array([0, 0, _LEAST_INT, 0], np.int64)
@@ -78,7 +79,7 @@ def _extremes(line: Line, begin: int, end: int, least: int) -> tuple[int, int, i
         for _, weight, _ in line.windows(begin, end, 1):
             found[0] = max(found[0], weight.max())
     found[0] = found[0] if width > 1 else found[1]
-    heaviest, widest, lightest, most = (int(x) for x in line.comm.allreduce(found, "max"))
+    heaviest, widest, lightest, most = map(int, (yield Ask("max", found)))
     if not len(line.total):
         return 1, width, least, most
     return heaviest, widest, -lightest if least else 0, most

@@ -26,6 +26,7 @@ import numpy as np
 from sfcpart.dtypes import FloatArray, Int64Array
 from sfcpart.errors import PartitionError
 from sfcpart.kernels.curve import chunks as kernel
+from sfcpart.methods.curve.abreast import Ask, Asking, answered
 from sfcpart.methods.curve.chunk_bounds import Bounds
 from sfcpart.methods.curve.fair import fair_positions
 from sfcpart.methods.curve.line import Line
@@ -33,7 +34,7 @@ from sfcpart.methods.curve.placing import place_cuts
 from sfcpart.methods.curve.probe_state import ProbeState, pack, unpack
 from sfcpart.methods.curve.stretch import Stretch
 
-__all__ = ["cut_line"]
+__all__ = ["cut_line", "cutting"]
 
 _UNLIMITED = np.iinfo(np.int64).max
 _TRIES = 32
@@ -71,10 +72,25 @@ def cut_line(
     PartitionError
         If the limits, or `least`, cannot be kept by any contiguous division.
     """
-    task = _Task.of(line, begin, end, speed, limit, least)
+    task = cutting(line, begin=begin, end=end, speed=speed, limit=limit, least=least)
+    return answered(line.comm, [task])[0]
+
+
+def cutting(
+    line: Line,
+    *,
+    begin: int,
+    end: int,
+    speed: FloatArray,
+    limit: Int64Array | None = None,
+    least: int = 1,
+) -> Asking[Int64Array]:
+    """Ask for what `cut_line` returns: a task that may run beside others (`answered`)."""
+    task = yield from _Task.asked(line, begin, end, speed, limit, least)
     if begin == end:
         return np.full(len(speed) + 1, begin, np.int64)
-    return task.place_cuts(task.least_bottleneck())
+    bottleneck = yield from task.least_bottleneck()
+    return (yield from task.place_cuts(bottleneck))
 
 
 @dataclass(eq=False)
@@ -91,7 +107,7 @@ class _Task:
     bounds: Bounds
 
     @classmethod
-    def of(
+    def asked(
         cls,
         line: Line,
         begin: int,
@@ -99,12 +115,14 @@ class _Task:
         speed: FloatArray,
         limit: Int64Array | None,
         least: int,
-    ) -> _Task:
+    ) -> Asking[_Task]:
         """Find the bounds of the bottleneck and the items that may be too heavy for a part."""
         most = np.full(len(speed), _UNLIMITED) if limit is None else limit
-        sums = line.sums_at(np.array([begin, end], np.int64))
+        sums = yield from line.ask_sums(np.array([begin, end], np.int64))
         weight = int(sums[1, 0] - sums[0, 0])
-        bounds = Bounds.of(line, begin, end, speed=speed, limit=most, least=least, weight=weight)
+        bounds = yield from Bounds.asked(
+            line, begin, end, speed=speed, limit=most, least=least, weight=weight
+        )
         return cls(line, begin, end, speed, most, least, sums, bounds)
 
     @property
@@ -112,7 +130,7 @@ class _Task:
         """Weight of all items of the range."""
         return int(self.edge_sums[1, 0] - self.edge_sums[0, 0])
 
-    def least_bottleneck(self) -> float:
+    def least_bottleneck(self) -> Asking[float]:
         """Return the least bottleneck that some division keeps."""
         low, high = self.bounds.lowest, np.inf
         top = max(self.weight / float(self.speed.min()), low)
@@ -127,12 +145,13 @@ class _Task:
                 tries += _between(low, tries[-1], n_tries - len(tries)) if low < tries[-1] else []
                 del ladder[:n_rungs]
                 n_rungs = 1
-            for bottleneck, state in zip(tries, self._probe(tries), strict=True):
+            states = yield from self._probe(tries)
+            for bottleneck, state in zip(tries, states, strict=True):
                 larger, smaller = state.brackets
                 if state.good_start(self.begin):
                     high = min(high, max(low, float(smaller)))
                 elif bottleneck >= top or not np.isfinite(larger):
-                    self._refuse()
+                    yield from self._refuse()
                 else:
                     low = max(low, float(larger))
             if high < np.inf:
@@ -147,7 +166,7 @@ class _Task:
         rows[:, 0], rows[:, 1:3], rows[:, 3:] = cut, self.end, self.edge_sums[1]
         return ProbeState(rows, np.array([np.inf, 0.0]))
 
-    def _probe(self, bottlenecks: list[float]) -> list[ProbeState]:
+    def _probe(self, bottlenecks: list[float]) -> Asking[list[ProbeState]]:
         """Sweep the range from its end for each bottleneck; every rank gets the last states."""
         stretches = [self.stretch(bottleneck) for bottleneck in bottlenecks]
 
@@ -156,7 +175,7 @@ class _Task:
             return pack([here.sweep(state) for here, state in zip(stretches, came, strict=True)])
 
         first = pack([self._first_state()] * len(bottlenecks))
-        return unpack(self.line.comm.relay(first, sweep, towards="first"))
+        return unpack((yield Ask("first", first, sweep)))
 
     def stretch(self, bottleneck: float) -> Stretch:
         """Return this rank's stretch of the range under a bottleneck."""
@@ -164,15 +183,12 @@ class _Task:
         return Stretch(self.line, self.begin, self.end, self.least, cap, self.limit, self.speed,
                        self.bounds.heavy, self.edge_sums)  # fmt: skip
 
-    def place_cuts(self, bottleneck: float) -> Int64Array:
+    def place_cuts(self, bottleneck: float) -> Asking[Int64Array]:
         """Return cuts that keep the bottleneck, each as near to its fair position as it can."""
         here = self.stretch(bottleneck)
-        self.line.comm.relay(
-            pack([self._first_state()]),
-            lambda packed: pack([here.sweep(unpack(packed)[0])]),
-            towards="first",
-        )
-        wanted = fair_positions(
+        first = pack([self._first_state()])
+        yield Ask("first", first, lambda packed: pack([here.sweep(unpack(packed)[0])]))
+        wanted = yield from fair_positions(
             self.line,
             begin=self.begin,
             end=self.end,
@@ -180,9 +196,10 @@ class _Task:
             speed=self.speed,
             least=self.least,
         )
-        return place_cuts(here, wanted, origin=np.array([self.begin, *self.edge_sums[0]], np.int64))
+        origin = np.array([self.begin, *self.edge_sums[0]], np.int64)
+        return (yield from place_cuts(here, wanted, origin=origin))
 
-    def _refuse(self) -> None:
+    def _refuse(self) -> Asking[None]:
         """Raise the error for limits that cannot be kept, saying what would be needed."""
         n_items, n_parts = self.end - self.begin, len(self.speed)
         if n_items < self.least * n_parts:
@@ -191,7 +208,8 @@ class _Task:
             )
         swap = Line(self.line.comm, self.line.offset, self.line.limit, np.empty(0, np.int64))
         positive = np.maximum(self.limit, 1).astype(np.float64)
-        factor = _Task.of(swap, self.begin, self.end, positive, None, self.least).least_bottleneck()
+        scaled = yield from _Task.asked(swap, self.begin, self.end, positive, None, self.least)
+        factor = yield from scaled.least_bottleneck()
         need = int(self.edge_sums[1, 1] - self.edge_sums[0, 1]) * self.line.limit_unit
         may_hold = sum(map(int, self.limit)) * self.line.limit_unit
         raise PartitionError(

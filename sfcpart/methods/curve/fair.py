@@ -13,6 +13,7 @@ from __future__ import annotations
 import numpy as np
 
 from sfcpart.dtypes import FloatArray, Int64Array
+from sfcpart.methods.curve.abreast import Ask, Asking
 from sfcpart.methods.curve.line import Line
 
 __all__ = ["fair_positions"]
@@ -22,8 +23,8 @@ _ROUNDS = 8
 
 def fair_positions(
     line: Line, *, begin: int, end: int, edge_sums: Int64Array, speed: FloatArray, least: int
-) -> Int64Array:
-    """Return the position nearest to each part's fair share of [begin, end), (P + 1,) int64.
+) -> Asking[Int64Array]:
+    """Ask for the position nearest to each part's fair share of [begin, end), (P + 1,) int64.
 
     Parameters
     ----------
@@ -44,15 +45,15 @@ def fair_positions(
     else:
         aim = weight * share / share[-1]
         if equal:
-            aim = _around_heavy(line, begin, end, aim, int(edge_sums[0, 0]))
-        found = _nearest(line, begin, end, aim, int(edge_sums[0, 0]))
+            aim = yield from _around_heavy(line, begin, end, aim, int(edge_sums[0, 0]))
+        found = yield from _nearest(line, begin, end, aim, int(edge_sums[0, 0]))
         found[aim >= weight] = end
     rest = least * np.arange(n_parts + 1)
     return np.asarray(np.clip(found, begin + rest, end - rest[::-1]), np.int64)
 
 
-def _nearest(line: Line, begin: int, end: int, aim: FloatArray, base: int) -> Int64Array:
-    """Return the positions whose sums are nearest to some sums, on every rank."""
+def _nearest(line: Line, begin: int, end: int, aim: FloatArray, base: int) -> Asking[Int64Array]:
+    """Ask for the positions whose sums are nearest to some sums, on every rank."""
     first, last = line.own_part(begin, end)
     found = np.zeros(len(aim), np.int64)
     if last > first:
@@ -62,10 +63,13 @@ def _nearest(line: Line, begin: int, end: int, aim: FloatArray, base: int) -> In
         at = np.where(here, at, 0)
         after = aim - (sums[at] - base) > (sums[at + 1] - base) - aim
         found = np.where(here, first + at + after, 0)
-    return line.comm.allreduce(found)
+    nearest: Int64Array = yield Ask("sum", found)
+    return nearest
 
 
-def _around_heavy(line: Line, begin: int, end: int, aim: FloatArray, base: int) -> FloatArray:
+def _around_heavy(
+    line: Line, begin: int, end: int, aim: FloatArray, base: int
+) -> Asking[FloatArray]:
     """Move the aims so that items heavier than the fair level count as one part each."""
     n_parts = len(aim) - 1
     level, n_heavy = aim[-1] / n_parts, 0
@@ -73,13 +77,13 @@ def _around_heavy(line: Line, begin: int, end: int, aim: FloatArray, base: int) 
     for _ in range(_ROUNDS):
         above = _items_above(line, begin, end, level)
         mine = np.array([len(above), above[:, 1].sum()], np.int64)
-        count, weight = (int(x) for x in line.comm.allreduce(mine))
+        count, weight = map(int, (yield Ask("sum", mine)))
         if count == n_heavy or count >= n_parts:  # the latter if a level was rounded down
             break
         rows, n_heavy, level = above, count, (aim[-1] - weight) / (n_parts - count)
     if n_heavy == 0:
         return aim
-    start, heavy = np.concatenate(line.comm.allgather(rows)).astype(np.float64).T
+    start, heavy = np.concatenate((yield Ask("gather", rows))).astype(np.float64).T
     start = start - base
     surplus = np.cumsum(heavy - level)
     begins = start - np.append(0.0, surplus[:-1])  # where heavy items begin, each counted as level

@@ -14,6 +14,7 @@ import numpy as np
 
 from sfcpart.comm.base import Comm
 from sfcpart.dtypes import OFFSET, WEIGHT, Int64Array
+from sfcpart.methods.curve.abreast import Ask, Asking, answered
 
 __all__ = ["Line"]
 
@@ -85,15 +86,19 @@ class Line:
 
     def sums_at(self, positions: Int64Array) -> Int64Array:
         """Return (weight, limited weight) before some positions, (n, 2), on every rank."""
+        return answered(self.comm, [self.ask_sums(positions)])[0]
+
+    def ask_sums(self, positions: Int64Array) -> Asking[Int64Array]:
+        """Ask for (weight, limited weight) before some positions, (n, 2)."""
         here = (positions > self.first) & (positions <= self.last)
         found = np.zeros((len(positions), 2), WEIGHT)
         for column, sums in enumerate((self.total, self.limit)):
             if len(sums):
                 found[here, column] = sums[positions[here] - self.first]
-        found = self.comm.allreduce(found)
+        before: Int64Array = yield Ask("sum", found)
         if not len(self.total):
-            found[:, 0] = positions
-        return found
+            before[:, 0] = positions
+        return before
 
     def windows(
         self, begin: int, end: int, width: int

@@ -17,6 +17,7 @@ import numpy as np
 
 from sfcpart.dtypes import Int64Array
 from sfcpart.kernels.curve import chunks as kernel
+from sfcpart.methods.curve.abreast import Ask, Asking
 from sfcpart.methods.curve.stretch import Stretch
 
 __all__ = ["place_cuts"]
@@ -48,8 +49,8 @@ class _Choice:
         return _Choice(self.part + 1, self.best)
 
 
-def place_cuts(here: Stretch, wanted: Int64Array, *, origin: Int64Array) -> Int64Array:
-    """Choose every cut; all ranks together.
+def place_cuts(here: Stretch, wanted: Int64Array, *, origin: Int64Array) -> Asking[Int64Array]:
+    """Choose every cut.
 
     Parameters
     ----------
@@ -72,11 +73,11 @@ def place_cuts(here: Stretch, wanted: Int64Array, *, origin: Int64Array) -> Int6
         choices[0].fixed = _NO_ROWS
         return _pack(choices)
 
-    comm = here.line.comm
-    left = _unpack(comm.relay(_pack([_Choice(0, origin)]), step, towards="last"))
+    left = _unpack((yield Ask("last", _pack([_Choice(0, origin)]), step)))
+    found: list[Int64Array] = yield Ask("gather", np.concatenate(certain))
     cut = np.full(len(here.cap) + 1, here.end, np.int64)
     cut[0] = here.begin
-    for rows in [*comm.allgather(np.concatenate(certain)), *(choice.fixed for choice in left)]:
+    for rows in [*found, *(choice.fixed for choice in left)]:
         cut[rows[:, 0]] = rows[:, 1]
     for choice in left:  # beyond the last rank there is no better end; then only empty parts
         if not choice.is_open:
