@@ -2,8 +2,9 @@
 
 Every free vertex points at its best free neighbour; two that point at each other are paired;
 a few rounds of this leave few free vertices (locally dominant edges, a half-approximation of
-the heaviest matching). Ties go to the edge with the larger hash, which both ends see alike,
-so the result does not depend on the number of threads.
+the heaviest matching); if many are left, they are paired one after the other. Ties go to the edge
+with the larger hash, which both ends see alike, so the result does not depend on the number of
+threads.
 """
 
 from __future__ import annotations
@@ -11,7 +12,7 @@ from __future__ import annotations
 from sfcpart.dtypes import Array
 from sfcpart.kernels._jit import jit
 
-__all__ = ["accept_mutual", "pair_leftovers", "point_at_best"]
+__all__ = ["accept_mutual", "pair_in_turn", "pair_leftovers", "point_at_best"]
 
 
 @jit
@@ -23,6 +24,42 @@ def edge_hash(u: int, v: int, seed: int) -> int:
     mixed = ((mixed ^ (mixed >> 15)) * 0x2C1B3C6D) & 0x7FFFFFFF
     mixed = ((mixed ^ (mixed >> 12)) * 0x297A2D39) & 0x7FFFFFFF
     return mixed ^ (mixed >> 15)
+
+
+@jit
+def best_mate(
+    v: int,
+    indptr: Array,
+    indices: Array,
+    edge_weight: Array,
+    vertex_weight: Array,
+    label: Array,
+    mate: Array,
+    heaviest: int,
+    seed: int,
+) -> int:
+    """Return the best free neighbour of v with its label (-1: none), for a pair not too heavy.
+
+    Rated by (edge weight)^2 / (product of vertex weights).
+    """
+    best = -1
+    best_rating = -1.0
+    best_hash = -1
+    weight_v = vertex_weight[v]
+    for j in range(indptr[v], indptr[v + 1]):
+        u = indices[j]
+        if mate[u] >= 0 or label[u] != label[v] or weight_v + vertex_weight[u] > heaviest:
+            continue
+        w = float(edge_weight[j])
+        rating = w * w / (float(max(1, weight_v)) * float(max(1, vertex_weight[u])))
+        if rating < best_rating:
+            continue
+        tie = edge_hash(u, v, seed)
+        if rating > best_rating or tie > best_hash or (tie == best_hash and u > best):
+            best = u
+            best_rating = rating
+            best_hash = tie
+    return best
 
 
 @jit
@@ -40,31 +77,11 @@ def point_at_best(
     seed: int,
     choice: Array,
 ) -> None:
-    """Write the best free neighbour of `free[start:stop]` to `choice` (-1: none).
-
-    Rated by (edge weight)^2 / (product of vertex weights); only neighbours with the same label
-    count, and only pairs no heavier than `heaviest`.
-    """
+    """Write the best free neighbour of `free[start:stop]` to `choice` (-1: none)."""
     for i in range(start, stop):
-        v = free[i]
-        best = -1
-        best_rating = -1.0
-        best_hash = -1
-        weight_v = vertex_weight[v]
-        for j in range(indptr[v], indptr[v + 1]):
-            u = indices[j]
-            if mate[u] >= 0 or label[u] != label[v] or weight_v + vertex_weight[u] > heaviest:
-                continue
-            w = float(edge_weight[j])
-            rating = w * w / (float(max(1, weight_v)) * float(max(1, vertex_weight[u])))
-            if rating < best_rating:
-                continue
-            tie = edge_hash(u, v, seed)
-            if rating > best_rating or tie > best_hash or (tie == best_hash and u > best):
-                best = u
-                best_rating = rating
-                best_hash = tie
-        choice[v] = best
+        choice[free[i]] = best_mate(
+            free[i], indptr, indices, edge_weight, vertex_weight, label, mate, heaviest, seed
+        )
 
 
 @jit
@@ -78,6 +95,33 @@ def accept_mutual(start: int, stop: int, free: Array, choice: Array, mate: Array
             mate[v] = u
             paired += 1
     return paired
+
+
+@jit
+def pair_in_turn(
+    free: Array,
+    indptr: Array,
+    indices: Array,
+    edge_weight: Array,
+    vertex_weight: Array,
+    label: Array,
+    mate: Array,
+    heaviest: int,
+    seed: int,
+) -> None:
+    """Pair free vertices with their best free neighbours one after the other.
+
+    Where edges get heavier and heavier along a path, as through wall layers, each round of
+    pointing pairs only its end.
+    """
+    for i in range(len(free)):
+        v = free[i]
+        if mate[v] >= 0:
+            continue
+        u = best_mate(v, indptr, indices, edge_weight, vertex_weight, label, mate, heaviest, seed)
+        if u >= 0:
+            mate[u] = v
+            mate[v] = u
 
 
 @jit

@@ -16,13 +16,21 @@ import numpy as np
 
 from sfcpart.dtypes import Int32Array, Int64Array
 from sfcpart.kernels.graph.contract import compact_rows, group_members, merge_rows
-from sfcpart.kernels.graph.matching import accept_mutual, pair_leftovers, point_at_best
+from sfcpart.kernels.graph.matching import (
+    accept_mutual,
+    pair_in_turn,
+    pair_leftovers,
+    point_at_best,
+)
 from sfcpart.kernels.threads import run_ranges
 
 __all__ = ["Level", "WeightedGraph", "coarsen", "contract", "hierarchy"]
 
 ROUNDS = 5
 """Rounds of pointing and pairing; a sixth pairs under 2 % of the vertices of meshes."""
+
+UNEVEN = 5
+"""A merged vertex weighs at most this many times the mean of the graph that is coarsened."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -69,13 +77,17 @@ def hierarchy(
     smallest : int
         Stop at this many vertices.
     heaviest : int
-        No merged vertex weighs more.
+        No merged vertex weighs more, nor more than a few times the mean on its level.
     seed : int
         Breaks ties between equally heavy edges.
     """
     levels: list[Level] = []
+    total = int(graph.vertex_weight.sum())
     while graph.n > smallest:
-        coarse_of, n_coarse = coarsen(graph, label, heaviest=heaviest, seed=seed + len(levels))
+        even = UNEVEN * total // graph.n + 1
+        coarse_of, n_coarse = coarsen(
+            graph, label, heaviest=min(heaviest, even), seed=seed + len(levels)
+        )
         if n_coarse > 0.95 * graph.n:
             break
         levels.append(Level(graph, coarse_of))
@@ -103,6 +115,7 @@ def coarsen(
         if paired * 50 < graph.n or len(free) == 0:
             break
     if len(free) * 4 > graph.n:
+        pair_in_turn(free, *rows, mate, heaviest, seed)
         waiting = np.full(graph.n + 1, -1, np.int32)
         pair_leftovers(free, *rows, mate, heaviest, waiting)
     return _number_pairs(mate)

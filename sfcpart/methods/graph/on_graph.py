@@ -8,22 +8,27 @@ split along the Hilbert curve is given, which keeps the limits or says that they
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import replace
 
 import numpy as np
 
 from sfcpart.dtypes import Array, FloatArray, Int32Array, Int64Array
 from sfcpart.errors import PartitionError
+from sfcpart.methods.bisection.bisect import coordinate
 from sfcpart.methods.curve.along_curve import along_hilbert
 from sfcpart.methods.graph.cell_problem import CellProblem, limits_kept
 from sfcpart.methods.graph.coarsen import WeightedGraph
 from sfcpart.methods.graph.labels import cut_of
 from sfcpart.methods.graph.search import best_of_many
-from sfcpart.methods.graph.vcycle import Aim
+from sfcpart.methods.graph.vcycle import Aim, improve, rank_of
 from sfcpart.methods.problem import Problem
 from sfcpart.methods.smoothing.on_slices import smoothed
 
 __all__ = ["multilevel"]
+
+PROMISING = 1.1
+"""A plain split that cuts at most this much more than a multilevel one is improved as well."""
 
 
 def multilevel(problem: Problem) -> Int32Array:
@@ -62,10 +67,35 @@ def multilevel(problem: Problem) -> Int32Array:
         part = solve(_both_weights(problem, cells), 0.0)
         if not limits_kept(problem, cells, part):
             return along_hilbert(problem)
-    start = cells.gather(np.concatenate(problem.comm.allgather(along_hilbert(problem))))
-    if cut_of(cells.graph, start) < cut_of(cells.graph, part):  # cubes of a full grid, for instance
+    start = _gathered(problem, cells, along_hilbert)
+    if len(sizes) == 1 and problem.limit_weight is None:
+        for other in (start, _gathered(problem, cells, coordinate)):
+            part = _better(problem, cells.graph, part, other)
+    if cut_of(cells.graph, start) < cut_of(cells.graph, part):
         return smoothed(problem)
     return cells.spread(part)
+
+
+def _gathered(
+    problem: Problem, cells: CellProblem, method: Callable[[Problem], Int32Array]
+) -> Int32Array:
+    """Return the part of each item by another method."""
+    return cells.gather(np.concatenate(problem.comm.allgather(method(problem))))
+
+
+def _better(
+    problem: Problem, graph: WeightedGraph, part: Int32Array, other: Int32Array
+) -> Int32Array:
+    """Improve another partition if it is promising; return the better of the two.
+
+    Cubes of a full grid and slabs across wall layers, for instance, are hard to find by merging.
+    """
+    if cut_of(graph, other) > PROMISING * cut_of(graph, part):
+        return part
+    total = int(graph.vertex_weight.sum())
+    aim = mesh_aim(total, problem.part_speed, problem.tolerance, problem.seed)
+    better = improve(graph, other, aim)
+    return min(part, better, key=lambda found: rank_of(graph, found, aim))
 
 
 def mesh_aim(total: int, speed: FloatArray, tolerance: float, seed: int) -> Aim:

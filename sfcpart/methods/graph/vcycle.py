@@ -29,7 +29,7 @@ from sfcpart.methods.graph.refine import flow_between, refine_between, search_lo
 
 __all__ = ["Aim", "divide", "improve", "rank_of"]
 
-SMALLEST = 200
+SMALLEST = 800
 """Vertices of the coarsest graph."""
 
 BLOCK = 100
@@ -46,6 +46,9 @@ LOOSER = 1.5
 ROOMY = 1500
 """Large graphs with more vertices a part are refined by flows alone: local searches cost a fifth
 of the time there and bring nothing that can be measured."""
+
+TINY = 500
+"""Parts of fewer vertices, on large graphs, have their borders refined in narrower bands."""
 
 RELAX = 0.06
 """Excess that parts may have on coarse graphs, so that full parts can exchange vertices."""
@@ -228,14 +231,16 @@ def _refine(
             capacity = aim.of_blocks(blocks, heaviest)
     labels = Labels(graph, part, capacity)
     rebalance(labels)
-    if sweeps > 1 or graph.n < ROOMY * (len(blocks) if blocks else aim.n_parts):
+    size = graph.n / (len(blocks) if blocks else aim.n_parts)
+    if sweeps > 1 or size < ROOMY:
         search_locally(labels, rounds=sweeps, patience=6 if sweeps == 1 else 15, seed=aim.seed)
     few = 8 * len(boundary_of(labels)) < graph.n  # then another sweep costs little
-    depth, stretch = (4, 16.0) if sweeps == 1 else (3, 4.0)
+    depth, stretch = (4 if size > TINY else 2, 16.0) if sweeps == 1 else (3, 4.0)
     flow_between(labels, sweeps=max(sweeps, 2) if few else sweeps, depth=depth, stretch=stretch)
     tight = float((aim.capacity - aim.share).max(initial=0.0)) < 4 * heaviest
     if sweeps > 1 or (tight and finest):
-        refine_between(labels, sweeps=3, patience=200, slack=heaviest if tight else 0)
+        turns, patience = (3, 200) if sweeps > 1 else (1, 20)
+        refine_between(labels, sweeps=turns, patience=patience, slack=heaviest if tight else 0)
     if finest and (blocks is None or len(blocks) == aim.n_parts):
         join_pieces(labels)
         fill_empty_parts(labels)
