@@ -96,8 +96,8 @@ def run_alone(
     comm, ended = world(), ("", 0)
     if comm.rank == 0:
         verb = next((word for word in arguments if not word.startswith("-")), None)
-        if comm.size > 1 and verb not in _WITHOUT_MESH:
-            note(f"{verb} runs on rank 0 alone, which must hold the mesh; the other ranks wait")
+        if verb not in _WITHOUT_MESH:
+            note(f"{verb} runs on rank 0 alone, which must hold the mesh; other ranks wait")
         try:
             act()
         except click.exceptions.Exit as leave:

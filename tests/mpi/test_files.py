@@ -60,7 +60,7 @@ def test_files_and_words_do_not_depend_on_the_ranks(size, folder, alone) -> None
     errors = [line for line in printed.splitlines() if line.startswith("sfcpart: error")]
     assert len(errors) == 5  # each is told once
     assert re.search(r"shell\.vtk is read by rank 0", printed)
-    assert re.search(r"replay runs on rank 0 alone", printed) or size == 1
+    assert re.search(r"replay runs on rank 0 alone", printed)
 
 
 def _is_aside(line: str) -> bool:
