@@ -8,6 +8,7 @@ data travels as bytes, never pickled. `sfcpart manual in_a_solver` has a complet
 from __future__ import annotations
 
 from sfcpart.comm.ending import ending_together
+from sfcpart.parallel.carry_out import carry_out
 from sfcpart.parallel.columns import Ragged
 from sfcpart.parallel.halo import Halo
 from sfcpart.parallel.migrate import migrate
@@ -20,6 +21,7 @@ __all__ = [
     "ExchangePlan",
     "Halo",
     "Ragged",
+    "carry_out",
     "ending_together",
     "migrate",
     "split_local",
