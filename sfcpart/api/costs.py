@@ -18,7 +18,8 @@ from sfcpart.graph import cell_graph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
 from sfcpart.weights.classes import count_classes
-from sfcpart.weights.fit import WeightFit, fit_weights
+from sfcpart.weights.fit import fit_weights
+from sfcpart.weights.fitted import WeightFit
 
 __all__ = ["class_counts", "fit_weights", "write_costs"]
 

@@ -13,7 +13,7 @@ if TYPE_CHECKING:
 
     from sfcpart.dtypes import FloatArray
     from sfcpart.files.timings import Timing
-    from sfcpart.weights.fit import WeightFit
+    from sfcpart.weights.fitted import WeightFit
 
 __all__ = ["command"]
 

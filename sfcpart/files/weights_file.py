@@ -28,7 +28,7 @@ from pathlib import Path
 from typing import Any
 
 from sfcpart.errors import FileError, WeightError
-from sfcpart.weights.fit import WeightFit
+from sfcpart.weights.fitted import WeightFit
 from sfcpart.weights.spec import WeightSpec, costs_spec
 
 __all__ = ["CostFile", "cost_file_content", "is_cost_file", "read_costs"]

@@ -12,16 +12,16 @@ not at their bound. Cost: O(rows classes^2) a sweep, a handful of sweeps.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
-from typing import Any, Literal, TypeAlias
+from dataclasses import dataclass
+from typing import Literal, TypeAlias
 
 import numpy as np
 from numpy.typing import ArrayLike
 
 from sfcpart.dtypes import BoolArray, FloatArray, Int64Array
 from sfcpart.errors import InputError, WeightError
+from sfcpart.weights.fitted import WeightFit
 from sfcpart.weights.measured import Measured, Rows, gather_rows
-from sfcpart.weights.spec import WeightSpec, costs_spec
 
 __all__ = ["Speeds", "WeightFit", "fit_weights"]
 
@@ -33,84 +33,6 @@ _SETTLED = 1e-12
 _NOTHING = 1e-10  # a cost that makes out less than this of every row is rounding
 _CHANCE = 1e-3  # speeds are fitted if less likely than this by chance
 _VAGUE = 0.95  # correlation above which two costs are said to go together
-
-
-@dataclass(frozen=True, eq=False)
-class WeightFit:
-    """What one of each class costs, and how fast each rank is.
-
-    Attributes
-    ----------
-    classes : tuple of str
-    cost : (n_classes,) float64
-        Seconds a step of one of the class on a rank of mean speed, >= 0.
-    standard_error : (n_classes,) float64
-        NaN where the observations leave nothing to tell it from. For a cost of 0: how far above
-        0 it may be.
-    speed : (n_ranks,) float64 or None
-        Relative, mean 1; None where ranks are taken as alike.
-    residual : float
-        Root mean square of the relative errors that remain, freedom taken into account (NaN if
-        none is left).
-    condition : float
-        Condition of the scaled counts: 1 is best, above 1e3 costs are vague.
-    n_rows, n_steps : int
-        Ranks times tables of counts; all steps together.
-    notes : tuple of str
-        What a user must know, a sentence each.
-
-    Examples
-    --------
-    >>> fit = fit_weights([3.0, 5.0, 4.0], {"tetra": [1, 1, 2], "wedge": [1, 2, 1]})
-    >>> fit.to_json_dict()["classes"]
-    ['tetra', 'wedge']
-    """
-
-    classes: tuple[str, ...]
-    cost: FloatArray
-    standard_error: FloatArray
-    speed: FloatArray | None
-    residual: float
-    condition: float
-    n_rows: int
-    n_steps: int
-    notes: tuple[str, ...] = field(default=())
-
-    def to_weights(self) -> WeightSpec:
-        """Return the costs as a specification of weights, which every call takes.
-
-        Raises
-        ------
-        WeightError
-            If a class is none that cells can have.
-
-        Examples
-        --------
-        >>> fit_weights([2.0, 4.0], {"cell": [10, 20]}).to_weights().needs_graph
-        True
-        """
-        cost = dict(zip(self.classes, self.cost.tolist(), strict=True))
-        return costs_spec(cost, text="the fit")
-
-    def to_json_dict(self) -> dict[str, Any]:
-        """Return all figures as plain Python values (NaN is for the writer to replace).
-
-        Examples
-        --------
-        >>> fit_weights([2.0, 4.0], {"cell": [10, 20]}).to_json_dict()["n_rows"]
-        2
-        """
-        return {
-            "classes": list(self.classes),
-            "cost": self.cost.tolist(),
-            "standard_error": self.standard_error.tolist(),
-            "speed": None if self.speed is None else self.speed.tolist(),
-            "residual": self.residual,
-            "condition": self.condition,
-            "n_rows": self.n_rows,
-            "n_steps": self.n_steps,
-            "notes": list(self.notes),
-        }
 
 
 def fit_weights(
