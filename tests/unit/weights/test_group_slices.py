@@ -7,6 +7,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+import sfcpart
 from sfcpart.comm import run_ranks
 from sfcpart.errors import WeightError
 from sfcpart.mesh.mesh import Mesh
@@ -158,3 +159,18 @@ def test_groups_of_a_mesh_that_is_no_slice_are_refused():
 
     with pytest.raises(WeightError, match="not known across ranks"):
         run_ranks(2, act)
+
+
+def test_a_split_of_slices_keeps_the_same_cells_together():
+    mesh = with_sides((5, 4, 2)).with_cell_field("zone", np.arange(40) % 13 - 9.5)
+    wish = {
+        "together": "zone",
+        "pairs": [[0, 39], [39, 20]],
+        "periodic": [("inflow", "outflow")],
+        "tolerance": 1.0,
+    }
+    whole = sfcpart.split(mesh, 3, **wish)
+    assert whole.cell_part[0] == whole.cell_part[39] == whole.cell_part[20]
+    for first in all_bounds(mesh.n_cells):
+        found = on_slices(mesh, first, lambda held: sfcpart.split(held, 3, **wish).cell_part)
+        assert np.concatenate(found).tolist() == whole.cell_part.tolist()
