@@ -15,6 +15,7 @@ PAGES: dict[str, str] = {
     "in_a_solver": "splitting, halo exchange and migration inside a running solver, with a program",
     "install": "on a laptop, and on a cluster with its own MPI",
     "parts_file": "the file of parts, for those who write a solver's reader",
+    "rebalance": "when the work moves: ways to split again, meshes that changed, lists of moves",
     "reading": "which mesh files are read, how, and what is refused",
     "recipes": "five jobs from begin to end: split, balance, restart, compare, split again",
     "series": "replaying a run in which the work moves: series of frames, rules, times",
