@@ -30,19 +30,24 @@ __all__ = ["caps", "pass_on", "pick", "sweep_back", "walk_forward"]
 
 
 @jit
+def cap_of(bottleneck: float, speed: float, most: int) -> int:
+    """Return the largest weight w <= most with float64(w) / speed <= bottleneck."""
+    if most / speed <= bottleneck:
+        return most
+    w = int(min(bottleneck * speed, 4.0e18))
+    while w > 0 and w / speed > bottleneck:
+        w -= 1
+    while (w + 1) / speed <= bottleneck:
+        w += 1
+    return min(w, most)
+
+
+@jit
 def caps(bottleneck: float, speed: FloatArray, most: int) -> Int64Array:
     """Return the largest weight w <= most of each part with float64(w) / speed <= bottleneck."""
     cap = np.empty(len(speed), np.int64)
     for p in range(len(speed)):
-        if most / speed[p] <= bottleneck:
-            cap[p] = most
-            continue
-        w = int(min(bottleneck * speed[p], 4.0e18))
-        while w > 0 and w / speed[p] > bottleneck:
-            w -= 1
-        while (w + 1) / speed[p] <= bottleneck:
-            w += 1
-        cap[p] = min(w, most)
+        cap[p] = cap_of(bottleneck, speed[p], most)
     return cap
 
 
@@ -91,7 +96,7 @@ def take_least(
     span: Int64Array,
     total: Int64Array,
     limit: Int64Array,
-    cap: Int64Array,
+    bottleneck: float,
     limit_cap: Int64Array,
     speed: FloatArray,
     heavy: Int64Array,
@@ -102,6 +107,7 @@ def take_least(
 ) -> int:
     """Append the positions left..right whose chunk p may take exactly `least` items."""
     base, least = span[2], span[3]
+    cap = cap_of(bottleneck, speed[p], span[5])
     h = count_up_to(heavy, right) - 1
     while right >= left:
         blocked = left - 1
@@ -110,11 +116,11 @@ def take_least(
             h -= 1
             w = sum_before(total, a + least, base) - sum_before(total, a, base)
             v = limit_before(limit, a + least, base) - limit_before(limit, a, base)
-            if w <= cap[p]:
+            if w <= cap:
                 brackets[1] = max(brackets[1], w / speed[p])
             else:
                 brackets[0] = min(brackets[0], w / speed[p])
-            if w > cap[p] or v > limit_cap[p]:
+            if w > cap or v > limit_cap[p]:
                 blocked = a
         if right > blocked:
             n = append_interval(own, fresh, n, blocked + 1, right)
@@ -131,7 +137,7 @@ def reach_back(
     span: Int64Array,
     total: Int64Array,
     limit: Int64Array,
-    cap: Int64Array,
+    bottleneck: float,
     limit_cap: Int64Array,
     speed: FloatArray,
     brackets: FloatArray,
@@ -140,12 +146,12 @@ def reach_back(
 
     `ends` is (position, position, total there, limit there).
     """
-    base = span[2]
+    base, cap = span[2], cap_of(bottleneck, speed[p], span[5])
     a, stop = low, top + 1
     while a < stop:
         middle = (a + stop) >> 1
         if (
-            ends[2] - sum_before(total, middle, base) <= cap[p]
+            ends[2] - sum_before(total, middle, base) <= cap
             and ends[3] - limit_before(limit, middle, base) <= limit_cap[p]
         ):
             stop = middle
@@ -155,7 +161,7 @@ def reach_back(
         brackets[1] = max(brackets[1], (ends[2] - sum_before(total, a, base)) / speed[p])
     if a > low:
         w = ends[2] - sum_before(total, a - 1, base)
-        if w > cap[p]:
+        if w > cap:
             brackets[0] = min(brackets[0], w / speed[p])
     return a
 
@@ -183,11 +189,12 @@ def sweep_back(
     span: Int64Array,
     total: Int64Array,
     limit: Int64Array,
-    cap: Int64Array,
+    bottleneck: float,
     limit_cap: Int64Array,
     speed: FloatArray,
     heavy: Int64Array,
-    reach: Int64Array,
+    speed_sums: FloatArray,
+    limit_sums: Int64Array,
     beyond: float,
     came: Int64Array,
     brackets: FloatArray,
@@ -200,12 +207,15 @@ def sweep_back(
 
     Parameters
     ----------
-    span : (5,) int64
-        first, last, base, least (items a chunk takes at least), begin of the range.
+    span : (7,) int64
+        first, last, base, least (items a chunk takes at least), begin of the range, its weight
+        (at least 1), weight before it.
     heavy : int64
         Positions whose next `least` items may be too much for some part, ascending.
-    reach : (P + 1, 2) int64
-        The most weight and limited weight before each cut, counted from the begin of the line.
+    speed_sums : (P + 1,) float64
+        Speeds of the chunks before each cut.
+    limit_sums : (P + 1,) int64
+        The most limited weight before each cut, counted from the begin of the line.
     beyond : float
         The least quotient above the bottleneck that any chunk may have.
     came : (m, 5) int64
@@ -223,7 +233,7 @@ def sweep_back(
     int
         Number of intervals; -1 if `own` is too short.
     """
-    first, least, n_parts = span[0], span[3], len(cap)
+    first, least, n_parts = span[0], span[3], len(speed)
     is_last = first <= span[4]
     ends = np.empty(4, np.int64)  # the interval of cut p + 1 at hand
     n = int(own_ptr[0])  # a plain 0 would compile the callees once more
@@ -244,7 +254,9 @@ def sweep_back(
         fresh = n
         top = span[1] - 1  # highest position not decided
         if not is_last:
-            top = last_within(span, total, limit, reach[p, 0], reach[p, 1])
+            # rounded up: a little too much does no harm
+            most = min(bottleneck * speed_sums[p] * (1 + 1e-9) + 1, float(span[5]))
+            top = last_within(span, total, limit, span[6] + int(most), limit_sums[p])
             if top < span[1] - 1:
                 brackets[0] = min(brackets[0], beyond)
             if top < first:
@@ -269,13 +281,13 @@ def sweep_back(
             # first the positions whose chunk ends inside the interval, `least` items on ...
             n = take_least(
                 max(first, ends[0] - least), min(top, ends[1] - least), p, span,
-                total, limit, cap, limit_cap, speed, heavy, brackets, own, fresh, n,
+                total, limit, bottleneck, limit_cap, speed, heavy, brackets, own, fresh, n,
             )  # fmt: skip
             top = min(top, ends[0] - least - 1)
             # ... then those whose chunk must reach up to its lower end
             if top >= below:
                 a = reach_back(
-                    below, top, p, ends, span, total, limit, cap, limit_cap, speed, brackets
+                    below, top, p, ends, span, total, limit, bottleneck, limit_cap, speed, brackets
                 )
                 if a <= top:
                     n = append_interval(own, fresh, n, a, top)
@@ -294,7 +306,7 @@ def pass_on(
     span: Int64Array,
     total: Int64Array,
     limit: Int64Array,
-    cap: Int64Array,
+    bottleneck: float,
     limit_cap: Int64Array,
     speed: FloatArray,
     came: Int64Array,
@@ -334,9 +346,10 @@ def pass_on(
             continue
         if c > 0:
             w = row[3] - total_here
-            if w > cap[c - 1]:
+            cap = cap_of(bottleneck, speed[c - 1], span[5])
+            if w > cap:
                 brackets[0] = min(brackets[0], w / speed[c - 1])
-            is_done = w > cap[c - 1] or row[4] - limit_here > limit_cap[c - 1]
+            is_done = w > cap or row[4] - limit_here > limit_cap[c - 1]
             if is_done:
                 continue
             is_done = row[1] >= first + least
@@ -354,8 +367,9 @@ def pick(
     span: Int64Array,
     total: Int64Array,
     limit: Int64Array,
-    cap: Int64Array,
+    bottleneck: float,
     limit_cap: Int64Array,
+    speed: FloatArray,
     own_ptr: Int64Array,
     own: Int64Array,
 ) -> tuple[int, int]:
@@ -363,7 +377,8 @@ def pick(
 
     `origin` is (begin of the chunk, total there, limit there).
     """
-    q = len(cap) - (p + 1)
+    q = len(speed) - (p + 1)
+    cap = cap_of(bottleneck, speed[p], span[5])
     first = int(origin[0] + span[3])
     base = int(span[2])
     above = -1
@@ -376,7 +391,7 @@ def pick(
             while a < stop:
                 middle = (a + stop + 1) >> 1
                 if (
-                    sum_before(total, middle, base) - origin[1] <= cap[p]
+                    sum_before(total, middle, base) - origin[1] <= cap
                     and limit_before(limit, middle, base) - origin[2] <= limit_cap[p]
                 ):
                     a = middle
@@ -398,8 +413,9 @@ def walk_forward(
     span: Int64Array,
     total: Int64Array,
     limit: Int64Array,
-    cap: Int64Array,
+    bottleneck: float,
     limit_cap: Int64Array,
+    speed: FloatArray,
     own_ptr: Int64Array,
     own: Int64Array,
     cut: Int64Array,
@@ -409,13 +425,13 @@ def walk_forward(
     `origin` and `cut` are changed; the last cut is not picked.
     """
     base, last = span[2], span[1]
-    while p < len(cap) - 1:
+    while p < len(speed) - 1:
         near, above = pick(
-            p, origin, wanted[p + 1], span, total, limit, cap, limit_cap, own_ptr, own
+            p, origin, wanted[p + 1], span, total, limit, bottleneck, limit_cap, speed, own_ptr, own
         )
         ends_here = (
             wanted[p + 1] < last
-            or sum_before(total, last, base) - origin[1] > cap[p]
+            or sum_before(total, last, base) - origin[1] > cap_of(bottleneck, speed[p], span[5])
             or limit_before(limit, last, base) - origin[2] > limit_cap[p]
         )
         chosen = near if near >= 0 else above

@@ -25,14 +25,13 @@ import numpy as np
 
 from sfcpart.dtypes import FloatArray, Int64Array
 from sfcpart.errors import PartitionError
-from sfcpart.kernels.curve import chunks as kernel
 from sfcpart.methods.curve.abreast import Ask, Asking, answered
 from sfcpart.methods.curve.chunk_bounds import Bounds
 from sfcpart.methods.curve.fair import fair_positions
 from sfcpart.methods.curve.line import Line
 from sfcpart.methods.curve.placing import place_cuts
 from sfcpart.methods.curve.probe_state import ProbeState, pack, unpack
-from sfcpart.methods.curve.stretch import Stretch
+from sfcpart.methods.curve.stretch import Stage, Stretch
 
 __all__ = ["cut_line", "cutting"]
 
@@ -93,17 +92,11 @@ def cutting(
     return (yield from task.place_cuts(bottleneck))
 
 
-@dataclass(eq=False)
+@dataclass(frozen=True, eq=False)
 class _Task:
-    """One range of a line to divide, with what all probes share."""
+    """One range of a line to divide, with what can be said before any probe."""
 
-    line: Line
-    begin: int
-    end: int
-    speed: FloatArray
-    limit: Int64Array
-    least: int
-    edge_sums: Int64Array
+    stage: Stage
     bounds: Bounds
 
     @classmethod
@@ -123,20 +116,15 @@ class _Task:
         bounds = yield from Bounds.asked(
             line, begin, end, speed=speed, limit=most, least=least, weight=weight
         )
-        return cls(line, begin, end, speed, most, least, sums, bounds)
-
-    @property
-    def weight(self) -> int:
-        """Weight of all items of the range."""
-        return int(self.edge_sums[1, 0] - self.edge_sums[0, 0])
+        return cls(Stage(line, begin, end, least, speed, most, bounds.heavy, sums), bounds)
 
     def least_bottleneck(self) -> Asking[float]:
         """Return the least bottleneck that some division keeps."""
         low, high = self.bounds.lowest, np.inf
-        top = max(self.weight / float(self.speed.min()), low)
+        top = max(self.stage.weight / float(self.stage.speed.min()), low)
         step = self.bounds.widest
         ladder = [low, low + step, min(low + 8 * step, top), top]
-        n_tries = min(self.line.comm.size, _TRIES)
+        n_tries = min(self.stage.line.comm.size, _TRIES)
         n_rungs = min(n_tries, 2)  # high rungs are dear: many cuts can be reached from anywhere
         while low < high:
             tries = _between(low, high, n_tries) if not ladder else []
@@ -148,7 +136,7 @@ class _Task:
             states = yield from self._probe(tries)
             for bottleneck, state in zip(tries, states, strict=True):
                 larger, smaller = state.brackets
-                if state.good_start(self.begin):
+                if state.good_start(self.stage.begin):
                     high = min(high, max(low, float(smaller)))
                 elif bottleneck >= top or not np.isfinite(larger):
                     yield from self._refuse()
@@ -160,58 +148,56 @@ class _Task:
 
     def _first_state(self) -> ProbeState:
         """Return what is known beyond the end: the line may end there."""
-        n_parts = len(self.speed)
-        cut = np.arange(n_parts if self.least else 0, n_parts + 1)  # empty parts may follow the end
+        stage, n_parts = self.stage, len(self.stage.speed)
+        cut = np.arange(
+            n_parts if stage.least else 0, n_parts + 1
+        )  # empty parts may follow the end
         rows = np.empty((len(cut), 5), np.int64)
-        rows[:, 0], rows[:, 1:3], rows[:, 3:] = cut, self.end, self.edge_sums[1]
+        rows[:, 0], rows[:, 1:3], rows[:, 3:] = cut, stage.end, stage.edge_sums[1]
         return ProbeState(rows, np.array([np.inf, 0.0]))
 
     def _probe(self, bottlenecks: list[float]) -> Asking[list[ProbeState]]:
         """Sweep the range from its end for each bottleneck; every rank gets the last states."""
-        stretches = [self.stretch(bottleneck) for bottleneck in bottlenecks]
+        beyond = [self.stage.beyond(bottleneck) for bottleneck in bottlenecks]
 
         def sweep(packed: Int64Array) -> Int64Array:
-            came = unpack(packed)
-            return pack([here.sweep(state) for here, state in zip(stretches, came, strict=True)])
+            came = zip(bottlenecks, beyond, unpack(packed), strict=True)
+            return pack([Stretch(self.stage, b, more).sweep(state) for b, more, state in came])
 
         first = pack([self._first_state()] * len(bottlenecks))
         return unpack((yield Ask("first", first, sweep)))
 
-    def stretch(self, bottleneck: float) -> Stretch:
-        """Return this rank's stretch of the range under a bottleneck."""
-        cap = kernel.caps(bottleneck, self.speed, max(self.weight, 1))
-        return Stretch(self.line, self.begin, self.end, self.least, cap, self.limit, self.speed,
-                       self.bounds.heavy, self.edge_sums)  # fmt: skip
-
     def place_cuts(self, bottleneck: float) -> Asking[Int64Array]:
         """Return cuts that keep the bottleneck, each as near to its fair position as it can."""
-        here = self.stretch(bottleneck)
+        stage = self.stage
+        here = Stretch(stage, bottleneck, stage.beyond(bottleneck))
         first = pack([self._first_state()])
         yield Ask("first", first, lambda packed: pack([here.sweep(unpack(packed)[0])]))
         wanted = yield from fair_positions(
-            self.line,
-            begin=self.begin,
-            end=self.end,
-            edge_sums=self.edge_sums,
-            speed=self.speed,
-            least=self.least,
+            stage.line,
+            begin=stage.begin,
+            end=stage.end,
+            edge_sums=stage.edge_sums,
+            speed=stage.speed,
+            least=stage.least,
         )
-        origin = np.array([self.begin, *self.edge_sums[0]], np.int64)
+        origin = np.array([stage.begin, *stage.edge_sums[0]], np.int64)
         return (yield from place_cuts(here, wanted, origin=origin))
 
     def _refuse(self) -> Asking[None]:
         """Raise the error for limits that cannot be kept, saying what would be needed."""
-        n_items, n_parts = self.end - self.begin, len(self.speed)
-        if n_items < self.least * n_parts:
+        stage, line = self.stage, self.stage.line
+        n_items, n_parts = stage.end - stage.begin, len(stage.speed)
+        if n_items < stage.least * n_parts:
             raise PartitionError(
-                f"{n_items} items cannot give {n_parts} parts {self.least} each; ask for fewer"
+                f"{n_items} items cannot give {n_parts} parts {stage.least} each; ask for fewer"
             )
-        swap = Line(self.line.comm, self.line.offset, self.line.limit, np.empty(0, np.int64))
-        positive = np.maximum(self.limit, 1).astype(np.float64)
-        scaled = yield from _Task.asked(swap, self.begin, self.end, positive, None, self.least)
+        swap = Line(line.comm, line.offset, line.limit, np.empty(0, np.int64))
+        positive = np.maximum(stage.limit, 1).astype(np.float64)
+        scaled = yield from _Task.asked(swap, stage.begin, stage.end, positive, None, stage.least)
         factor = yield from scaled.least_bottleneck()
-        need = int(self.edge_sums[1, 1] - self.edge_sums[0, 1]) * self.line.limit_unit
-        may_hold = sum(map(int, self.limit)) * self.line.limit_unit
+        need = int(stage.edge_sums[1, 1] - stage.edge_sums[0, 1]) * line.limit_unit
+        may_hold = sum(map(int, stage.limit)) * line.limit_unit
         raise PartitionError(
             f"the limits cannot be kept by contiguous parts: the cells need {need:.10g} in all, "
             f"the {n_parts} parts may hold {may_hold:.10g}; limits {factor:.6g} times as large "

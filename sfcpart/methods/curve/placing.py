@@ -16,7 +16,6 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from sfcpart.dtypes import Int64Array
-from sfcpart.kernels.curve import chunks as kernel
 from sfcpart.methods.curve.abreast import Ask, Asking
 from sfcpart.methods.curve.stretch import Stretch
 
@@ -75,7 +74,7 @@ def place_cuts(here: Stretch, wanted: Int64Array, *, origin: Int64Array) -> Aski
 
     left = _unpack((yield Ask("last", _pack([_Choice(0, origin)]), step)))
     found: list[Int64Array] = yield Ask("gather", np.concatenate(certain))
-    cut = np.full(len(here.cap) + 1, here.end, np.int64)
+    cut = np.full(here.n_parts + 1, here.end, np.int64)
     cut[0] = here.begin
     for rows in [*found, *(choice.fixed for choice in left)]:
         cut[rows[:, 0]] = rows[:, 1]
@@ -97,7 +96,7 @@ def _walk(here: Stretch, wanted: Int64Array, choices: list[_Choice]) -> list[_Ch
         if choice.is_open and not follow:
             choice, passed = _advance(here, wanted, choice)
             fixed.append(passed)
-        at_end = choice.part >= len(here.cap) - 1
+        at_end = choice.part >= here.n_parts - 1
         if not at_end and _decide(here, wanted, choice, follow):
             fixed.append(np.array([[choice.part + 1, choice.best[0]]], np.int64))
         else:
@@ -125,11 +124,8 @@ def _decide(here: Stretch, wanted: Int64Array, choice: _Choice, follow: list[_Ch
 def _advance(here: Stretch, wanted: Int64Array, choice: _Choice) -> tuple[_Choice, Int64Array]:
     """Make as many choices as lie on this stretch without doubt."""
     origin = choice.origin.copy()
-    cut = np.empty(len(here.cap) + 1, np.int64)
-    part = kernel.walk_forward(
-        choice.part, origin, wanted, here.span, here.line.total, here.line.limit, here.cap,
-        here.limit, here.own_ptr, here.own, cut,
-    )  # fmt: skip
+    cut = np.empty(here.n_parts + 1, np.int64)
+    part = here.walk(choice.part, origin, wanted, cut)
     passed = np.arange(choice.part + 1, part + 1)
     return _Choice(part, origin), np.stack([passed, cut[passed]], axis=1)
 
