@@ -122,6 +122,16 @@ class ExchangePlan(ExchangeLists):
 
     Attributes
     ----------
+    n_owned : int
+        Owned cells: local rows 0 to n_owned - 1, in the order of `cell_gid`.
+    halo_gid : (n_halo,) int64
+        Cells of others that are needed: local rows from n_owned on; by owner, then number.
+    source, target : int32, ascending
+        Ranks that own needed cells; ranks that need owned ones.
+    source_indptr, target_indptr : int64
+        Rows of `halo_gid` that come from each source; rows of `send` that go to each target.
+    send : (n_send,) int64
+        Local rows that are sent; by target, then cell number. A cell may go to several targets.
     known_gid, known_row : (n_owned + n_halo,) int64
         All local cells, ascending, and their local rows.
 
