@@ -13,14 +13,17 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from sfcpart.comm import SerialComm
 from sfcpart.curve import curve_slice
 from sfcpart.errors import InputError, SfcpartError
 from sfcpart.graph import CellGraph
 from sfcpart.measure.columns import RUN_COLUMNS, TOTAL_COLUMNS, Column
 from sfcpart.meter import Metered, metered
+from sfcpart.methods.on_one_rank import run_method
 from sfcpart.methods.problem import Problem
 from sfcpart.methods.registry import METHODS
 from sfcpart.partition import Partition
+from sfcpart.slices.gate import agreed
 
 if TYPE_CHECKING:
     from sfcpart.measure import Assessment
@@ -158,7 +161,10 @@ def compare_methods(
     names = _known(methods)
     steps, repeat = _whole(steps, "steps"), _whole(repeat, "repeat")
     problem = replace(problem, place=curve_slice)  # each method finds the curve anew, and is timed
-    others = [_given_row(name, given[name], problem, taken=names) for name in given]
+    others = agreed(
+        problem.comm,
+        lambda: [_given_row(name, given[name], problem, taken=names) for name in given],
+    )
     graph = time_graph(repeat)
     rows = []
     for name in names:
@@ -219,7 +225,9 @@ def _run(name: str, problem: Problem, *, repeat: int, graph: Metered | None) -> 
     method = METHODS[name]
     try:
         _warm_up(name, problem)
-        cell_part, took = metered(lambda: method.run(problem), repeat=repeat)
+        cell_part, took = metered(
+            lambda: run_method(method, problem), repeat=repeat, comm=problem.comm
+        )
         partition = Partition.from_array(cell_part, problem.n_parts)
     except SfcpartError as error:
         return ComparedSplit(name, failure=str(error))
@@ -234,12 +242,19 @@ def _run(name: str, problem: Problem, *, repeat: int, graph: Metered | None) -> 
 
 
 def _warm_up(name: str, problem: Problem) -> None:
-    """Load what a method needs on the first cells: a run that compiles is timed a second time."""
+    """Load what a method needs, on the first cells here alone.
+
+    A run that compiles is timed a second time.
+    """
     n = min(_WARM_CELLS, len(problem.centers))
     n_parts = min(problem.n_parts, max(1, n // 8))
     graph = _first_cells(problem.graph(), n) if METHODS[name].uses_graph(problem) else None
+    if not n:
+        return
     small = replace(
         problem,
+        comm=SerialComm(),
+        first_gid=0,
         centers=problem.centers[:n],
         n_parts=n_parts,
         part_speed=problem.part_speed[:n_parts],

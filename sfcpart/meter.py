@@ -10,6 +10,10 @@ from collections.abc import Callable
 from pathlib import Path
 from typing import NamedTuple, TypeVar
 
+import numpy as np
+
+from sfcpart.comm import SerialComm
+from sfcpart.comm.base import Comm
 from sfcpart.kernels._jit import count_compiled
 
 __all__ = ["Metered", "metered"]
@@ -35,7 +39,9 @@ class Metered(NamedTuple):
     peak_bytes: int | None
 
 
-def metered(call: Callable[[], T], *, repeat: int = 1) -> tuple[T, Metered]:
+def metered(
+    call: Callable[[], T], *, repeat: int = 1, comm: Comm | None = None
+) -> tuple[T, Metered]:
     """Call a function and measure it.
 
     Parameters
@@ -45,6 +51,8 @@ def metered(call: Callable[[], T], *, repeat: int = 1) -> tuple[T, Metered]:
     repeat : int
         How often to measure. A run in which kernels were compiled, or loaded from disk, does not
         count and is repeated.
+    comm : Comm, optional
+        Ranks that make the call together; what counts is the slowest, and the most memory of one.
 
     Returns
     -------
@@ -59,28 +67,32 @@ def metered(call: Callable[[], T], *, repeat: int = 1) -> tuple[T, Metered]:
     >>> result, took.seconds >= 0
     (42, True)
     """
+    comm = comm or SerialComm()
     known = count_compiled()
-    result, took = _once(call)
-    if count_compiled() > known:
-        result, took = _once(call)
+    result, took = _once(call, comm)
+    if comm.allreduce(np.array([count_compiled() > known]), "max")[0]:
+        result, took = _once(call, comm)
     runs = [took]
     for _ in range(repeat - 1):
         del result  # or two of them would be in memory
-        result, took = _once(call)
+        result, took = _once(call, comm)
         runs.append(took)
     peaks = [run.peak_bytes for run in runs if run.peak_bytes is not None]
     seconds = statistics.median(run.seconds for run in runs)
     return result, Metered(seconds, max(peaks, default=None))
 
 
-def _once(call: Callable[[], T]) -> tuple[T, Metered]:
+def _once(call: Callable[[], T], comm: Comm) -> tuple[T, Metered]:
     """Measure one call."""
     before = _resident_at_reset()
+    comm.barrier()
     start = time.perf_counter()
     result = call()
     seconds = time.perf_counter() - start
-    peak = None if before is None else max(0, _status("VmHWM") - before)
-    return result, Metered(seconds, peak)
+    peak = -1 if before is None else max(0, _status("VmHWM") - before)
+    most = float(comm.allreduce(np.array([seconds]), "max")[0])
+    peak = int(comm.allreduce(np.array([peak]), "max")[0])
+    return result, Metered(most, None if peak < 0 else peak)
 
 
 def _resident_at_reset() -> int | None:

@@ -8,7 +8,6 @@ from typing import TYPE_CHECKING, Any
 
 from numpy.typing import ArrayLike
 
-from sfcpart.comm import SerialComm
 from sfcpart.graph import CellGraph, cell_graph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
@@ -85,7 +84,7 @@ def assess(
 
 
 def compare(
-    mesh: Mesh,
+    mesh: Mesh | MeshSlice,
     n_parts: int,
     *,
     methods: Sequence[str] | None = None,
@@ -111,8 +110,9 @@ def compare(
 
     Parameters
     ----------
-    mesh : Mesh
-        Bare centres have no cut to compare; methods that need the cell graph refuse them.
+    mesh : Mesh or MeshSlice
+        With a slice all ranks work together. Bare centres have no cut to compare; methods that
+        need the cell graph refuse them.
     n_parts : int
     methods : sequence of str, optional
         All methods by default.
@@ -173,7 +173,6 @@ def compare(
         periodic=periodic,
         face_weight=face_weight,
         seed=seed,
-        comm=SerialComm(),
         **wish,
     )
     return compare_methods(
@@ -219,12 +218,18 @@ def inspect(mesh: Mesh | MeshSlice) -> Survey:
     return survey_mesh(mesh, graph_of(mesh))
 
 
-def _time_graph(mesh: Mesh, repeat: int) -> Metered | None:
+def _time_graph(mesh: Mesh | MeshSlice, repeat: int) -> Metered | None:
     """Build the cell graph as if for the first time, keep it, and return what it took."""
-    if mesh.points is None and mesh.faces is None:
-        return None
     from sfcpart.meter import metered
 
+    if isinstance(mesh, MeshSlice):
+        if mesh.mesh.points is None and mesh.mesh.faces is None:
+            return None
+        rows, took = metered(lambda: graph_slice(mesh.anew()), repeat=repeat, comm=mesh.comm)
+        mesh.mesh.keep("graph slice", lambda: rows)
+        return took
+    if mesh.points is None and mesh.faces is None:
+        return None
     graph, took = metered(lambda: cell_graph(replace(mesh)), repeat=repeat)
     mesh.keep("graph", lambda: graph)
     return took

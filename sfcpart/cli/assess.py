@@ -88,7 +88,8 @@ def command(mesh: str, parts: str | None, **given: Any) -> None:
     if given["csv_path"] is not None:
         once(lambda: _write_csv(given["csv_path"], assessment))
     if given["picture"] is not None or given["report"] is not None:
-        whole = (*whole_of(loaded, partition), assessment)
+        shown, gathered = whole_of(loaded, [partition])
+        whole = (shown, gathered[0], assessment)
     if given["picture"] is not None:
         with doing("drawing"):
             once(lambda: _draw(given["picture"], mesh, *whole))

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -20,6 +21,8 @@ from sfcpart.cli.wishes import METHOD, MethodOption, check_part_count, wish_opti
 if TYPE_CHECKING:
     from sfcpart.comparison import Comparison
     from sfcpart.mesh.mesh import Mesh
+    from sfcpart.partition import Partition
+    from sfcpart.slices.mesh_slice import MeshSlice
 
 __all__ = ["command"]
 
@@ -91,7 +94,7 @@ def command(mesh: str, **given: Any) -> None:
     from sfcpart.cli.compare_table import print_comparison
     from sfcpart.cli.console import Stages, print_json
     from sfcpart.cli.figures import print_verdict
-    from sfcpart.cli.inputs import partition_from_place, read_mesh
+    from sfcpart.cli.ranks import once, read_held
     from sfcpart.cli.wishes import load_wish, shape_wish
     from sfcpart.methods.registry import METHODS
     from sfcpart.report.verdict import judge_comparison
@@ -100,11 +103,8 @@ def command(mesh: str, **given: Any) -> None:
     methods = list(given["methods"]) or list(METHODS)
     doing = Stages(quiet=quiet, methods=methods)
     with doing(f"reading {mesh}"):
-        loaded = read_mesh(mesh, merge_points=given["merge_points"])
-        others = {
-            name: partition_from_place(loaded.cell_fields, place, loaded.n_cells)
-            for name, place in given["given_parts"]
-        }
+        loaded = read_held(mesh, merge_points=given["merge_points"])
+        others = {name: _given_parts(loaded, place) for name, place in given["given_parts"]}
     with doing.counted("splitting", len(methods)) as progress:
         comparison = api.compare(
             loaded,
@@ -119,13 +119,14 @@ def command(mesh: str, **given: Any) -> None:
             **load_wish(given),
         )
     if given["csv_path"]:
-        _write_csv(given["csv_path"], comparison)
+        once(lambda: _write_csv(given["csv_path"], comparison))
     if given["picture"]:
         with doing(f"drawing {given['picture']}"):
-            _draw(given["picture"], mesh, loaded, comparison)
+            whole, gathered = _whole(loaded, comparison)
+            once(lambda: _draw(given["picture"], mesh, whole, gathered))
     if given["report"]:
         with doing(f"writing {given['report']}"):
-            _write_page(given["report"], mesh, loaded, comparison)
+            once(lambda: _write_page(given["report"], mesh, loaded.n_cells, comparison))
     if given["as_json"]:
         print_json({"mesh": mesh, "n_parts": given["n_parts"], **comparison.to_json_dict()})
     elif not given["quiet"]:
@@ -140,6 +141,34 @@ def _check_names(given: dict[str, Any]) -> None:
     twice = [name for k, name in enumerate(names) if name in names[:k]]
     if twice:
         raise click.UsageError(f"two partitions are named {twice[0]!r}; name each its own")
+
+
+def _given_parts(mesh: Mesh | MeshSlice, place: str) -> Partition:
+    """Return parts from a field, a file or a folder."""
+    from sfcpart.cli.inputs import partition_from_place
+    from sfcpart.slices.mesh_slice import MeshSlice
+
+    if not isinstance(mesh, MeshSlice):
+        return partition_from_place(mesh.cell_fields, place, mesh.n_cells)
+    from sfcpart.cli.sliced_parts import partition_of_slice
+
+    if place in mesh.mesh.cell_fields:
+        return partition_of_slice(mesh, None, place)
+    return partition_of_slice(mesh, place, None)
+
+
+def _whole(mesh: Mesh | MeshSlice, comparison: Comparison) -> tuple[Any, Comparison]:
+    """Return mesh and partitions as wholes, where they are drawn (collective)."""
+    from sfcpart.cli.ranks import whole_of
+
+    there = [row.partition for row in comparison.rows if row.partition is not None]
+    whole, partitions = whole_of(mesh, there)
+    left = iter(partitions)
+    rows = tuple(
+        row if row.partition is None else replace(row, partition=next(left))
+        for row in comparison.rows
+    )
+    return whole, replace(comparison, rows=rows)
 
 
 def _draw(path: str, name: str, mesh: Mesh, comparison: Comparison) -> None:
@@ -162,12 +191,12 @@ def _draw(path: str, name: str, mesh: Mesh, comparison: Comparison) -> None:
         draw_side_by_side(place, mesh, splits=splits, graph=graph_of(mesh), title=name, notes=notes)
 
 
-def _write_page(path: str, name: str, mesh: Mesh, comparison: Comparison) -> None:
+def _write_page(path: str, name: str, n_cells: int, comparison: Comparison) -> None:
     """Write the report page."""
     from sfcpart.cli.outputs import new_file
     from sfcpart.report.page import compare_page, write_page
 
-    page = compare_page(comparison, title=Path(name).name, n_cells=mesh.n_cells)
+    page = compare_page(comparison, title=Path(name).name, n_cells=n_cells)
     with new_file(path) as place:
         write_page(place, page)
 

@@ -33,7 +33,7 @@ __all__ = [
     "whole_of",
 ]
 
-TOGETHER = frozenset({"split", "assess", "inspect", "network"})
+TOGETHER = frozenset({"split", "assess", "inspect", "compare", "network"})
 """Verbs that all ranks run."""
 _WITHOUT_MESH = frozenset({None, "completion", "figures", "manual"})
 
@@ -65,17 +65,20 @@ def once(act: Callable[[], None]) -> None:
     agreed(world(), lambda: act() if is_spokesman() else None)
 
 
-def whole_of(mesh: Mesh | MeshSlice, partition: Partition) -> tuple[Mesh | None, Partition]:
-    """Return mesh and partition as a whole, on the rank that draws (collective)."""
+def whole_of(
+    mesh: Mesh | MeshSlice, partitions: Sequence[Partition]
+) -> tuple[Mesh | None, list[Partition]]:
+    """Return mesh and partitions as wholes, on the rank that draws (collective)."""
+    from sfcpart.partition import Partition
     from sfcpart.slices.gathering import gather_mesh
     from sfcpart.slices.mesh_slice import MeshSlice
     from sfcpart.slices.routing import gather_rows
 
     if not isinstance(mesh, MeshSlice):
-        return mesh, partition
+        return mesh, list(partitions)
     note("pictures and reports are made by rank 0, which gathers the mesh")
-    cell_part = gather_rows(mesh.comm, partition.cell_part)
-    return gather_mesh(mesh), type(partition)(cell_part, partition.n_parts)
+    whole = [Partition(gather_rows(mesh.comm, each.cell_part), each.n_parts) for each in partitions]
+    return gather_mesh(mesh), whole
 
 
 def share_threads() -> None:

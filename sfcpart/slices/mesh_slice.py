@@ -122,6 +122,13 @@ class MeshSlice:
         """Global number of each cell held here, (n_local,) int64."""
         return np.arange(self.first_gid, self.first_gid + self.n_local, dtype=GID)
 
+    def anew(self) -> MeshSlice:
+        """Return the slice without what has been derived from it, such as the cell graph."""
+        mesh, old = replace(self.mesh), self.mesh
+        mesh.keep("dim", lambda: old.dim)
+        mesh.keep("space_dim", lambda: old.space_dim)
+        return replace(self, mesh=mesh)
+
     def global_points(self, points: IntArray) -> IntArray:
         """Return the global numbers of local points."""
         return points if self.point_gid is None else self.point_gid[points]
