@@ -29,8 +29,8 @@ from flow import Channel, Flow, work_of
 from forest import Forest
 from mpi4py import MPI
 
+from sfcpart import RebalanceClock
 from sfcpart.parallel import ending_together, migrate, split_local
-from sfcpart.rebalance.clock import RebalanceClock
 
 
 @dataclass
