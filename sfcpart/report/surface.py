@@ -70,12 +70,14 @@ def part_surface(mesh: Mesh, cell_part: Array, *, graph: CellGraph) -> Triangles
     """
     cell_part = np.asarray(cell_part)
     is_rim = rim_cells(cell_part, graph)
-    cells = np.flatnonzero(_with_neighbours(is_rim, graph))
+    # A face of a cell at the boundary is outer if no neighbour has it; elsewhere none is outer.
+    at_boundary = graph.boundary_count > 0
+    cells = np.flatnonzero(is_rim | _with_neighbours(at_boundary, graph))
     kinds = mesh.kind[cells]
     faces = _joined([_solid_faces(mesh, cells[kinds == k], k) for k in np.unique(kinds)])
     other = _behind(faces)
     is_cut = cell_part[other] != cell_part[faces.cell]
-    drawn = is_rim[faces.cell] & ((other < 0) | is_cut)
+    drawn = is_rim[faces.cell] & np.where(other < 0, at_boundary[faces.cell], is_cut)
     kept = _Faces(faces.corner[drawn], faces.size[drawn], faces.cell[drawn])
     return _fans(mesh, kept, other[drawn] < 0)
 
@@ -156,14 +158,23 @@ def _behind(faces: _Faces) -> Int64Array:
     highest = np.iinfo(faces.corner.dtype).max
     sorted_corner = np.sort(np.where(faces.corner < 0, highest, faces.corner), axis=1)
     low, middle, high = (sorted_corner[:, k].astype(np.int64) for k in range(3))
-    order = np.lexsort((high, low << np.int64(31) ^ middle))
-    key = np.stack([low, middle, high], axis=1)[order]
-    same = np.flatnonzero((key[1:] == key[:-1]).all(axis=1))
+    order = _sorted_rows(low, middle, high)
+    same = np.ones(max(0, len(order) - 1), bool)
+    for column in (low, middle, high):
+        same &= column[order][1:] == column[order][:-1]
+    same = np.flatnonzero(same)
     other = np.full(len(order), -1, np.int64)
     first, second = order[same], order[same + 1]
     other[first] = faces.cell[second]
     other[second] = faces.cell[first]
     return other
+
+
+def _sorted_rows(low: Int64Array, middle: Int64Array, high: Int64Array) -> Int64Array:
+    """Return an order in which equal triples are neighbours, by one sort if 63 bits hold each."""
+    if not len(low) or max(int(low.max()), int(middle.max()), int(high.max())) >= 1 << 21:
+        return np.lexsort((high, low << np.int64(31) ^ middle))
+    return np.argsort(low << 42 | middle << 21 | high, kind="stable")
 
 
 def _fans(mesh: Mesh, faces: _Faces, is_outer: BoolArray) -> Triangles:

@@ -103,24 +103,32 @@ def _coarsened(
     """Try coarser lattices, each chosen by what the last one left, until few enough are left."""
     steps = round(FIRST * most**0.5)
     while True:
-        corners, group = _united(place, steps)
+        group = _grouped(place, steps)
         kept = _different(group, part)
+        if not len(kept):  # no lattice leaves few but some: every so many, as they are
+            return steps, place, np.arange(0, len(place), -(-len(place) // most))
         if len(kept) <= most or steps <= COARSEST:
-            return steps, corners, kept[:most]
+            return steps, _at_means(place, group), kept[:most]
         shrink = max(0.5, 0.85 * (most / len(kept)) ** 0.5)  # triangles grow as steps squared
         steps = max(COARSEST, int(shrink * steps))
 
 
-def _united(place: Int64Array, steps: int) -> tuple[Int64Array, Int64Array]:
-    """Move points to the mean of those in the same cell of a lattice; return also the cells."""
+def _grouped(place: Int64Array, steps: int) -> Int64Array:
+    """Number the cells of a lattice that hold corners, (n, 3)."""
     cell = place * steps >> FINEST
-    group = _numbered(((cell[..., 0] * steps + cell[..., 1]) * steps + cell[..., 2]).ravel(), steps)
-    count = np.bincount(group)
+    key = (cell[..., 0] * steps + cell[..., 1]) * steps + cell[..., 2]
+    return _numbered(key.ravel(), steps).reshape(place.shape[:2])
+
+
+def _at_means(place: Int64Array, group: Int64Array) -> Int64Array:
+    """Move corners to the mean of their group."""
+    flat = group.ravel()
+    count = np.bincount(flat)
     mean = np.empty_like(place)
     for axis in range(3):  # sums of whole numbers below 2^53: exact in any order
-        sums = np.bincount(group, place[..., axis].ravel())
-        mean[..., axis] = np.rint(sums / count)[group].reshape(place.shape[:2])
-    return mean, group.reshape(place.shape[:2])
+        sums = np.bincount(flat, place[..., axis].ravel())
+        mean[..., axis] = np.rint(sums / count)[group]
+    return mean
 
 
 def _numbered(key: Int64Array, steps: int) -> Int64Array:

@@ -18,7 +18,7 @@ from sfcpart.report.views import PULL, View
 
 __all__ = ["still_picture"]
 
-WIDTH = 1100  # pixels
+WIDTH = 960  # pixels
 COLOURS = 128
 
 

@@ -17,7 +17,9 @@ def mesh():
 def test_an_even_split_is_said_to_be_even(mesh):
     first, second = judge(sfcpart.assess(mesh, sfcpart.split(mesh, 4)))
     assert first == ("The work is evenly shared: no part of 4 carries more than its fair share.")
-    assert second.startswith("It cuts 16 of 112 inner faces (14.3 %) and leaves every part in one piece;")
+    assert second.startswith(
+        "It cuts 16 of 112 inner faces (14.3 %) and leaves every part in one piece;"
+    )
     assert second.endswith("(model, network infiniband-edr).")
 
 
