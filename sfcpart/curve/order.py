@@ -190,7 +190,7 @@ def _even_edges(key: Int64Array, comm: Comm) -> Int64Array:
     slack = int(SLACK * (total // comm.size))
     low, high = np.zeros_like(wanted), np.full_like(wanted, np.iinfo(KEY).max)
     while np.any(low < high):  # the same on all ranks
-        probe = _probes(low, high, at_most=2 * comm.size + 62)
+        probe = _probes(low, high, at_most=comm.size + 62)
         below = comm.allreduce(np.searchsorted(key, probe, side="left").astype(np.int64))
         low, high = _narrowed(low, high, wanted, probe=probe, below=below, slack=slack)
     inner = np.searchsorted(key, low, side="left")
