@@ -9,6 +9,8 @@ import numpy as np
 
 from sfcpart.comm import SerialComm
 from sfcpart.dtypes import PART, Array, Int32Array, Int64Array
+from sfcpart.kernels.pair_sums import pair_sums
+from sfcpart.kernels.threads import run_ranges
 
 if TYPE_CHECKING:
     from scipy.sparse import csr_array
@@ -17,8 +19,8 @@ if TYPE_CHECKING:
 
 __all__ = ["Overlap"]
 
-_TABLE = 1 << 22
-"""Pairs of parts that a full table may have whatever the number of cells."""
+_BITS = 10
+"""2**_BITS pairs are counted before the table grows."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -67,8 +69,7 @@ class Overlap:
 
         Notes
         -----
-        O(n_local + n_old_parts n_parts) or O(n_local log n_local), whichever table is smaller;
-        ranks exchange their pairs.
+        O(n_local), and a sort of the pairs there are; ranks exchange theirs.
 
         Examples
         --------
@@ -78,8 +79,12 @@ class Overlap:
         ([0, 0, 1], [0, 1, 1], [1, 1, 2])
         """
         comm = comm or SerialComm()
-        key = home_part.astype(np.int64) * n_parts + cell_part
-        rows = np.concatenate(comm.allgather(_summed(key, weight, n_old_parts * n_parts)))
+        given = home_part, cell_part, np.empty(0, np.int64) if weight is None else weight
+        found = run_ranges(
+            pair_sums, len(cell_part), *given, np.int64(n_parts), _BITS, smallest=1 << 16
+        )
+        rows = np.concatenate(found)
+        rows = np.concatenate(comm.allgather(rows[rows[:, 0] >= 0]))
         pair, inverse = np.unique(rows[:, 0], return_inverse=True)
         sums = np.zeros((len(pair), 2), np.int64)
         np.add.at(sums, inverse, rows[:, 1:])
@@ -107,20 +112,3 @@ class Overlap:
             self.cells[order],
             self.weight[order],
         )
-
-
-def _summed(key: Int64Array, weight: Int64Array | None, n_keys: int) -> Int64Array:
-    """Return (key, cells, weight) of the keys there are, (k, 3), ascending."""
-    if n_keys <= max(_TABLE, 2 * len(key)):
-        count = np.bincount(key, minlength=n_keys)
-        pair = np.flatnonzero(count)
-        cells = count[pair]
-        if weight is None:
-            return np.column_stack([pair, cells, cells])
-        summed = np.bincount(key, weights=weight, minlength=n_keys)[pair]  # exact up to 2**53
-        return np.column_stack([pair, cells, summed.astype(np.int64)])
-    pair, inverse, cells = np.unique(key, return_inverse=True, return_counts=True)
-    if weight is None:
-        return np.column_stack([pair, cells, cells])
-    summed = np.bincount(inverse, weights=weight, minlength=len(pair))
-    return np.column_stack([pair, cells, summed.astype(np.int64)])
