@@ -79,7 +79,7 @@ def write_split(
 
     Notes
     -----
-    O(n_cells + halo) time; memory for blocks of about a million cells.
+    O(n_cells + halo) time; memory for blocks of a quarter of a million cells.
 
     Examples
     --------

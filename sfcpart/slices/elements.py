@@ -208,6 +208,7 @@ def _cells_here(
     np.logical_and.at(whole, np.repeat(np.arange(len(whole)), np.diff(asked.indptr)), there)
     rows = np.flatnonzero(whole)
     indptr, points = take_ragged(asked.indptr, place, rows)
+    points = points.astype(mesh.indices.dtype)  # one kernel for all
     group = BoundaryGroup("", -1, asked.kind[rows], indptr, points)
     used = np.zeros(mesh.n_points, np.bool_)
     used[points] = True

@@ -4,7 +4,7 @@ What: for each part its owned cells in curve order, then its halo cells, with po
 locally by first use; what the writers of VTKHDF and VTU put into files.
 How: a rank asks the ranks that hold the cells for those of a block of its own parts
 (`sfcpart.files.parts.supply`), and one compiled pass renumbers them (`sfcpart.kernels.pieces`); a
-block holds about a million cells, so that memory stays bounded.
+block holds about a quarter of a million cells, so that memory stays bounded.
 Cost: O(entries) time; O(block) memory.
 """
 
@@ -31,8 +31,8 @@ if TYPE_CHECKING:
 
 __all__ = ["GHOST", "POLYHEDRON", "Block", "Renumbered", "blocks", "check_same_cells"]
 
-BLOCK_CELLS = 1 << 20
-"""Cells in one block: 2^20 hexahedra take about 64 MB while they are renumbered."""
+BLOCK_CELLS = 1 << 18
+"""Cells in one block: 2^18 hexahedra take about 40 MB while they are fetched and renumbered."""
 GHOST = 1
 """`vtkGhostType` of a cell that another part owns (bit 1: duplicate cell)."""
 POLYHEDRON = 42

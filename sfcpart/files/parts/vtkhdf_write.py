@@ -80,7 +80,7 @@ def write_vtkhdf(
 
     Notes
     -----
-    O(entries) time; memory for one block of about a million cells and the point numbers. Rank 0
+    O(entries) time; memory for one block of cells and the point numbers. Rank 0
     lays the file out and ranks write their parts in turn: the bytes are the same for any number
     of ranks. Version 2.6 is declared because global ids carry the string attribute `Attribute`.
     """
