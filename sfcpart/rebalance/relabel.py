@@ -25,6 +25,7 @@ import numpy as np
 from sfcpart.dtypes import PART, Array, Int32Array, Int64Array
 from sfcpart.rebalance.bottleneck import match_least_largest
 from sfcpart.rebalance.overlap import Overlap
+from sfcpart.rebalance.settled import settle
 
 if TYPE_CHECKING:
     from scipy.sparse import csr_array
@@ -194,30 +195,42 @@ def match_most(shared: csr_array) -> Int64Array:
     >>> match_most(csr_array([[3, 2], [2, 0]])).tolist()
     [1, 0]
     """
-    from scipy.sparse import csr_array
-    from scipy.sparse.csgraph import min_weight_full_bipartite_matching
-
     n_rows, n_columns = shared.shape
     match = np.full(n_columns, -1, np.int64)
     if shared.nnz == 0:
         return match
-    weight = shared.data.astype(np.int64)
-    weight >>= max(0, int(weight.max()).bit_length() - _BITS)
+    row = np.repeat(np.arange(n_rows), np.diff(shared.indptr))
+    column, weight = shared.indices.astype(np.int64), shared.data.astype(np.int64)
+    settled, is_open = settle(row, column, weight)
+    match[column[settled]] = row[settled]
+    if is_open.any():
+        rows, at = np.unique(row[is_open], return_inverse=True)
+        pairs = _Pairs(at.astype(np.int64), column[is_open], weight[is_open])
+        taken, columns = _full_matching(pairs, len(rows), n_columns)
+        match[columns] = rows[taken]
+    return match
+
+
+def _full_matching(pairs: _Pairs, n_rows: int, n_columns: int) -> tuple[Int64Array, Int64Array]:
+    """Return rows and columns of the matching with the largest sum; every row has a pair."""
+    from scipy.sparse import csr_array
+    from scipy.sparse.csgraph import min_weight_full_bipartite_matching
+
+    weight = pairs.weight >> max(0, int(pairs.weight.max()).bit_length() - _BITS)
     none = float(weight.max()) + 1.0
-    indptr = shared.indptr + np.arange(n_rows + 1)
+    indptr = np.searchsorted(pairs.row, np.arange(n_rows + 1)) + np.arange(n_rows + 1)
     end_of_row = indptr[1:] - 1  # where each row's own column for "none" stands
     data = np.full(len(weight) + n_rows, none)
     indices = np.empty(len(data), np.int32)
     is_pair = np.ones(len(data), np.bool_)
     is_pair[end_of_row] = False
     data[is_pair] = none - weight
-    indices[is_pair] = shared.indices
+    indices[is_pair] = pairs.column
     indices[end_of_row] = n_columns + np.arange(n_rows)
     table = csr_array((data, indices, indptr), shape=(n_rows, n_columns + n_rows))
     rows, columns = min_weight_full_bipartite_matching(table)
     taken = columns < n_columns
-    match[columns[taken]] = rows[taken]
-    return match
+    return rows[taken].astype(np.int64), columns[taken].astype(np.int64)
 
 
 def _filled(match: Int64Array, kind: Int64Array) -> Int64Array:
