@@ -17,6 +17,11 @@ from sfcpart.comparison import COMPARED_COLUMNS
 SECTION = "compare meshes/channel_section.msh"
 
 
+def _head_of(out: str) -> list[str]:
+    """Return the heads of the columns of the printed table."""
+    return next(line for line in out.splitlines() if line.startswith("method")).split()
+
+
 def test_partitions_from_everywhere_join_the_table(sfcpart, meshes):
     mesh = api.read_mesh(meshes / "turbine.vtu")
     body = mesh.cell_fields["body"].astype(int)
@@ -65,7 +70,7 @@ def test_the_table_fits_and_says_what_it_leaves_out(sfcpart, mesh):
     out = sfcpart(f"compare meshes/{mesh} -n 8 -m hilbert -m rows -m smoothed").out
     assert "\u2026" not in out
     assert max(map(len, out.splitlines())) <= 80
-    head = out.splitlines()[2].split()
+    head = _head_of(out)
     assert {"method", "imbal.", "cut", "split", "run"} <= set(head)
     words = " ".join(out.split())
     for name in LEAST_NEEDED[:2]:
@@ -77,7 +82,7 @@ def test_the_table_fits_and_says_what_it_leaves_out(sfcpart, mesh):
 def test_a_wide_terminal_shows_all_columns(sfcpart, monkeypatch):
     monkeypatch.setattr("sfcpart.cli.console.PIPE_WIDTH", 140)
     out = sfcpart(f"{SECTION} -n 4 -m hilbert -m rows").out
-    head = out.splitlines()[2].split()
+    head = _head_of(out)
     assert {"surface", "effic.", "meets", "memory", "/least", "halo"} <= set(head)
     assert "not shown" not in out
 
