@@ -34,7 +34,7 @@ def digests(folder: Path) -> dict[str, str]:
 
 def deliver(mesh: Mesh | MeshSlice, place: Path, n_parts: int, **wish) -> None:
     """Split, measure and write."""
-    how = {name: wish.pop(name) for name in ("layers", "across") if name in wish}
+    how = {name: wish.pop(name) for name in ("layers", "across", "compress") if name in wish}
     partition = sfcpart.split(mesh, n_parts, **wish)
     load = {name: wish[name] for name in ("weights", "speeds") if name in wish}
     assessment = sfcpart.assess(mesh, partition, **load)
@@ -69,6 +69,10 @@ def test_any_slices_of_a_mesh_give_the_same_files(data) -> None:
 @pytest.mark.parametrize("name", [name for name in SAMPLES if name != "hybrid"])
 def test_all_sorts_of_meshes(name: str) -> None:
     assert_law(parted(name).mesh, 3, 5)
+
+
+def test_packed_files() -> None:
+    assert_law(parted("polyhedra").mesh, 2, 3, compress=True)
 
 
 def test_one_rank_holds_everything(degenerate: Case) -> None:

@@ -9,8 +9,9 @@ from collections.abc import Mapping
 from importlib import import_module
 from os import PathLike
 from pathlib import Path
+from typing import Any
 
-from sfcpart.comm.base import Comm
+from sfcpart.comm import adopt, world
 from sfcpart.files.meshes.formats import file_format
 from sfcpart.files.meshes.read import read_mesh
 from sfcpart.mesh.mesh import Mesh
@@ -36,15 +37,15 @@ def is_read_by_slices(path: str | PathLike[str]) -> bool:
     return file_format(path)[0] in _BY_SLICES
 
 
-def read_slice(path: str | PathLike[str], *, comm: Comm) -> MeshSlice:
+def read_slice(path: str | PathLike[str], *, comm: Any = None) -> MeshSlice:
     """Read this rank's slice of a mesh (collective).
 
     Parameters
     ----------
     path : path
         The same file on all ranks; any format of `read_mesh`.
-    comm : Comm
-        Ranks that share the mesh; `sfcpart.comm.world()` for all of an MPI job.
+    comm : Comm, or mpi4py communicator, optional
+        Ranks that share the mesh; all of this job by default.
 
     Returns
     -------
@@ -73,7 +74,7 @@ def read_slice(path: str | PathLike[str], *, comm: Comm) -> MeshSlice:
     ...     run_ranks(2, lambda comm: read_slice(f"{folder}/bar.h5", comm=comm).n_local)
     [1, 1]
     """
-    place = Path(path)
+    place, comm = Path(path), world() if comm is None else adopt(comm)
     formats = agreed(comm, lambda: file_format(place))
     if formats[0] in _BY_SLICES:
         module, name = _BY_SLICES[formats[0]]

@@ -278,3 +278,8 @@ def test_files_of_faces_are_checked(tmp_path) -> None:
         group.attrs["layout"] = 2
     with pytest.raises(FileError, match="has layout 2"):
         run_ranks(2, lambda comm: read_slice(tmp_path / "b.h5", comm=comm))
+
+
+def test_one_process_reads_everything(tmp_path) -> None:
+    held = read_slice(faces(tmp_path / "a.h5"))
+    assert (held.comm.size, held.n_local) == (1, held.n_cells)
