@@ -41,14 +41,17 @@ def bad_exchange(comm, folder):
 def full_disk(comm, folder):
     """Write more than one rank may: as a full disk, `OSError`, checked together."""
     error = None
+    whole = resource.getrlimit(resource.RLIMIT_FSIZE)
     if comm.rank == FAILING:
         signal.signal(signal.SIGXFSZ, signal.SIG_IGN)
-        resource.setrlimit(resource.RLIMIT_FSIZE, (10_000, 10_000))
+        resource.setrlimit(resource.RLIMIT_FSIZE, (10_000, whole[1]))
     try:
         with (folder / f"part{comm.rank}.bin").open("wb") as file:
             file.write(bytes(100_000))
     except OSError as caught:
         error = caught
+    finally:
+        resource.setrlimit(resource.RLIMIT_FSIZE, whole)  # for what is written at exit
     comm.check(error)
 
 

@@ -35,7 +35,8 @@ def full_disk(rank: int) -> None:
     """Let one rank write no more than a few bytes to a file, as on a full disk."""
     if rank == FAILING:
         signal.signal(signal.SIGXFSZ, signal.SIG_IGN)
-        resource.setrlimit(resource.RLIMIT_FSIZE, (2_000, 2_000))
+        hard = resource.getrlimit(resource.RLIMIT_FSIZE)[1]
+        resource.setrlimit(resource.RLIMIT_FSIZE, (2_000, hard))
 
 
 def while_writing(rank: int, act) -> None:
@@ -83,7 +84,10 @@ def main() -> None:
     folder = Path(sys.argv[1])
     globals()[folder.name](world().rank)
     mesh = (folder / "mesh").read_text()
-    sys.exit(run(["split", mesh, "-n", "4", "-o", str(folder / "parts"), "--overwrite", "-q"]))
+    whole = resource.getrlimit(resource.RLIMIT_FSIZE)
+    code = run(["split", mesh, "-n", "4", "-o", str(folder / "parts"), "--overwrite", "-q"])
+    resource.setrlimit(resource.RLIMIT_FSIZE, (whole[1], whole[1]))  # for what is written at exit
+    sys.exit(code)
 
 
 if __name__ == "__main__":
