@@ -12,6 +12,7 @@ from sfcpart.parallel.carry_out import carry_out
 from sfcpart.parallel.columns import Ragged
 from sfcpart.parallel.halo import Halo
 from sfcpart.parallel.migrate import migrate
+from sfcpart.parallel.resplit import LocalResplit, resplit_local
 from sfcpart.parallel.split import split_local
 from sfcpart.slices.exchange import Exchange
 from sfcpart.slices.lists import ExchangePlan
@@ -20,9 +21,11 @@ __all__ = [
     "Exchange",
     "ExchangePlan",
     "Halo",
+    "LocalResplit",
     "Ragged",
     "carry_out",
     "ending_together",
     "migrate",
+    "resplit_local",
     "split_local",
 ]

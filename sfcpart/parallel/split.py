@@ -20,10 +20,21 @@ if TYPE_CHECKING:
     from sfcpart.curve import CurveSlice
     from sfcpart.graph import CellGraph
 
-__all__ = ["split_local"]
+__all__ = [
+    "LocalWish",
+    "by_number",
+    "checked_wish",
+    "gathered",
+    "method_without_graph",
+    "one_a_cell",
+    "problem_of",
+    "quantised",
+    "refuse_differences",
+    "split_local",
+]
 
 
-class _Given(NamedTuple):
+class LocalWish(NamedTuple):
     """What this rank gave, checked: its cells, and what all ranks share."""
 
     centers: FloatArray
@@ -35,6 +46,8 @@ class _Given(NamedTuple):
     part_limit: Array | None
     level_sizes: tuple[int, ...]
     limit_unit: float = 1.0
+    weight_unit: float = 1.0
+    tolerance: float = 0.03
 
 
 def split_local(
@@ -106,19 +119,21 @@ def split_local(
     wanted = comm.size if n_parts is None else n_parts
     given = agreed(
         comm,
-        lambda: _checked(centers, weights, limit_weights, together, wanted, speeds, limits, levels),
+        lambda: checked_wish(
+            centers, weights, limit_weights, together, wanted, speeds, limits, levels
+        ),
     )
-    _refuse_differences(given, cell_gid is not None, method, comm)
-    run = agreed(comm, lambda: _method(method))
-    given = _quantised(given, comm)
+    refuse_differences(given, cell_gid is not None, method, comm)
+    run = agreed(comm, lambda: method_without_graph(method))
+    given = quantised(given, comm)
     if cell_gid is None:
-        return cast(Int32Array, run(_problem(given, comm)))
-    gids = agreed(comm, lambda: _one_a_cell(cell_gid, "cell_gid", len(given.centers)))
-    line = _by_number(checked_gids(gids, "cell_gid"), comm)
-    return cast(Int32Array, line.scatter(run(_problem(_gathered(given, line), comm))))
+        return cast(Int32Array, run(problem_of(given, comm)))
+    gids = agreed(comm, lambda: one_a_cell(cell_gid, "cell_gid", len(given.centers)))
+    line = by_number(checked_gids(gids, "cell_gid"), comm)
+    return cast(Int32Array, line.scatter(run(problem_of(gathered(given, line), comm))))
 
 
-def _problem(given: _Given, comm: Comm) -> Any:
+def problem_of(given: LocalWish, comm: Comm) -> Any:
     """Return the problem of cells in the order in which ranks hold them."""
     from sfcpart.methods.problem import Problem
 
@@ -130,6 +145,8 @@ def _problem(given: _Given, comm: Comm) -> Any:
         graph=_no_graph,
         first_gid=_first(given, comm),
         weight=given.weight,
+        weight_unit=given.weight_unit,
+        tolerance=given.tolerance,
         level_sizes=given.level_sizes,
         limit_weight=given.limit_weight,
         part_limit=given.part_limit,
@@ -138,13 +155,14 @@ def _problem(given: _Given, comm: Comm) -> Any:
     )
 
 
-def _quantised(given: _Given, comm: Comm) -> _Given:
+def quantised(given: LocalWish, comm: Comm) -> LocalWish:
     """Turn weights and limits into integers, alike on all ranks."""
     from sfcpart.weights import quantise, quantise_limits
 
     whole: dict[str, Any] = {"comm": comm, "first_gid": _first(given, comm)}
     if given.weight is not None:
-        given = given._replace(weight=quantise(given.weight, **whole).values)
+        work = quantise(given.weight, **whole)
+        given = given._replace(weight=work.values, weight_unit=work.unit)
     if given.part_limit is None or given.limit_weight is None:
         return given
     second = quantise(given.limit_weight, **whole, what="limited weight")
@@ -152,12 +170,12 @@ def _quantised(given: _Given, comm: Comm) -> _Given:
     return given._replace(limit_weight=second.values, part_limit=limit, limit_unit=second.unit)
 
 
-def _first(given: _Given, comm: Comm) -> int:
+def _first(given: LocalWish, comm: Comm) -> int:
     """Return the number of cells on lower ranks."""
     return int(comm.exscan(np.array([len(given.centers)]))[0])
 
 
-def _by_number(cell_gid: Int64Array, comm: Comm) -> CurveSlice:
+def by_number(cell_gid: Int64Array, comm: Comm) -> CurveSlice:
     """Return the way of values to ranks that hold consecutive cell numbers, and back."""
     from sfcpart.curve import CurveSlice
 
@@ -169,7 +187,7 @@ def _by_number(cell_gid: Int64Array, comm: Comm) -> CurveSlice:
     return CurveSlice(comm, row, edge, received, np.argsort(np.concatenate(pieces), kind="stable"))
 
 
-def _gathered(given: _Given, line: CurveSlice) -> _Given:
+def gathered(given: LocalWish, line: CurveSlice) -> LocalWish:
     """Bring what is given for each cell to the ranks that hold it by number."""
     columns = [line.gather(np.ascontiguousarray(column)) for column in given.centers.T]
     return given._replace(
@@ -185,7 +203,7 @@ def _along(line: CurveSlice, values: Array | None) -> Array | None:
     return None if values is None else line.gather(values)
 
 
-def _method(name: str) -> Any:
+def method_without_graph(name: str) -> Any:
     """Return a method that needs no cell graph."""
     from sfcpart.methods.registry import METHODS
 
@@ -197,7 +215,7 @@ def _method(name: str) -> Any:
     return METHODS[name].run
 
 
-def _checked(
+def checked_wish(
     centers: ArrayLike,
     weights: ArrayLike | None,
     limit_weights: ArrayLike | None,
@@ -206,7 +224,7 @@ def _checked(
     speeds: ArrayLike | None,
     limits: ArrayLike | None,
     levels: Sequence[int] | None,
-) -> _Given:
+) -> LocalWish:
     """Return well-formed input."""
     array = np.ascontiguousarray(centers, np.float64)
     if array.ndim != 2 or not 1 <= array.shape[1] <= 3:
@@ -216,10 +234,10 @@ def _checked(
     if isinstance(n_parts, bool) or not isinstance(n_parts, int | np.integer) or n_parts < 1:
         raise InputError(f"n_parts is {n_parts!r}; wanted a whole number, 1 or more")
     n_parts, n_local = int(n_parts), len(array)
-    group = None if together is None else _one_a_cell(together, "together", n_local)
-    return _Given(
+    group = None if together is None else one_a_cell(together, "together", n_local)
+    return LocalWish(
         centers=array,
-        weight=None if weights is None else _one_a_cell(weights, "weights", n_local),
+        weight=None if weights is None else one_a_cell(weights, "weights", n_local),
         limit_weight=_second_weight(limit_weights, limits, n_local),
         group=None if group is None else checked_gids(group, "together"),
         n_parts=n_parts,
@@ -239,7 +257,7 @@ def _second_weight(
         return None
     if limit_weights is None:
         return np.ones(n_local, np.int64)
-    return _one_a_cell(limit_weights, "limit_weights", n_local)
+    return one_a_cell(limit_weights, "limit_weights", n_local)
 
 
 def _one_a_part(limits: ArrayLike, n_parts: int) -> FloatArray:
@@ -253,7 +271,7 @@ def _one_a_part(limits: ArrayLike, n_parts: int) -> FloatArray:
     return np.broadcast_to(most, (n_parts,))
 
 
-def _one_a_cell(values: ArrayLike, what: str, n_local: int) -> Array:
+def one_a_cell(values: ArrayLike, what: str, n_local: int) -> Array:
     """Return an array with one number a cell."""
     array = np.asarray(values)
     if array.shape != (n_local,):
@@ -263,7 +281,7 @@ def _one_a_cell(values: ArrayLike, what: str, n_local: int) -> Array:
     return array
 
 
-def _refuse_differences(given: _Given, numbered: bool, method: str, comm: Comm) -> None:
+def refuse_differences(given: LocalWish, numbered: bool, method: str, comm: Comm) -> None:
     """Raise on all ranks if some rank wants something else than rank 0."""
     flags = {name: getattr(given, name) is not None for name in ("weight", "limit_weight", "group")}
     limit = np.empty(0) if given.part_limit is None else given.part_limit
