@@ -16,6 +16,7 @@ from sfcpart.methods.smoothing.moves import move_labels
 from sfcpart.methods.smoothing.pieces import join_pieces
 from sfcpart.methods.smoothing.smooth import smooth_slice
 from sfcpart.methods.smoothing.state import State
+from sfcpart.methods.smoothing.tidy import tidy_interfaces
 from sfcpart.methods.smoothing.weighted_slice import WeightedSlice
 
 
@@ -113,6 +114,7 @@ STEPS = {
     "rebalancing": rebalance,
     "pieces": join_pieces,
     "empty parts": fill_empty_parts,
+    "tiny interfaces": tidy_interfaces,
 }
 
 
@@ -134,7 +136,7 @@ def test_each_step_is_the_same_on_any_ranks(name, drawn):
         np.testing.assert_array_equal(load, other)
     np.testing.assert_array_equal(load, np.bincount(part, weights=drawn[1], minlength=k))
     assert after == (overload_of(drawn, part), cost_of(drawn, part))
-    if name in ("label moves", "flows"):
+    if name in ("label moves", "flows", "tiny interfaces"):
         assert after <= before
     if name in ("rebalancing", "pieces"):
         assert after[0] <= before[0]

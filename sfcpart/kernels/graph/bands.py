@@ -184,10 +184,10 @@ def pack_bands(
             own = pairs[i, side]
             for x in range(band_start[own], band_stop[own]):
                 v = band[x]
-                mixed = (((first_gid + v) >> shift) * 0x9E3779B1) & 0xFFFFFFFF
+                mixed = ((int(first_gid + v) >> shift) * 0x9E3779B1) & 0xFFFFFFFF
                 share = (mixed >> 24) & (SHARES - 1)
                 row_vertex[row] = v
-                row_note[row] = 2 * (layer[v] * SHARES + share) + side
+                row_note[row] = 2 * (int(layer[v]) * SHARES + share) + side
                 row_weight[row] = vertex_weight[v]
                 row_length[row] = indptr[v + 1] - indptr[v] + with_home
                 row += 1

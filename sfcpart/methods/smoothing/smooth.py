@@ -23,6 +23,7 @@ from sfcpart.methods.smoothing.excess import fill_empty_parts, rebalance
 from sfcpart.methods.smoothing.moves import move_labels
 from sfcpart.methods.smoothing.pieces import join_pieces
 from sfcpart.methods.smoothing.state import State
+from sfcpart.methods.smoothing.tidy import tidy_interfaces
 from sfcpart.methods.smoothing.weighted_slice import WeightedSlice
 
 __all__ = ["smooth_slice"]
@@ -32,8 +33,15 @@ BLOCKS = 128
 
 LEAST_BLOCK = 16
 
-RAGGED = 3
-"""If more than one vertex in so many lies at a border, label moves go first, two sweeps follow."""
+RAGGED = 0.7
+"""If a larger share of the vertices lies at borders, label moves go first."""
+
+CLOSE = 0.3
+"""If a larger share lies at borders (parts are small), borders are placed twice, no blocks moved.
+
+1,024 parts of the same mesh: two sweeps of flows 0.616 in 2.8 s; label moves before them 0.604 in
+4.9 s, but with threads along the edges of other parts (36 instead of 28 neighbours).
+"""
 
 
 def smooth_slice(
@@ -67,12 +75,13 @@ def smooth_slice(
     rebalance(state)
     size = graph.n_total // len(capacity)
     at_border = int(graph.comm.allreduce(np.array([len(state.boundary())], np.int64))[0])
-    ragged = at_border * RAGGED > graph.n_total
-    if ragged:
+    if at_border > RAGGED * graph.n_total:
         move_labels(state, patience=1)
-    elif size >= BLOCKS * LEAST_BLOCK:
+    close = at_border > CLOSE * graph.n_total
+    if not close and size >= BLOCKS * LEAST_BLOCK:
         _move_blocks(state, (size // BLOCKS).bit_length() - 1)
-    flow_between(state, sweeps=sweeps or (2 if ragged else 1))
+    flow_between(state, sweeps=sweeps or (2 if close else 1))
+    tidy_interfaces(state)
     join_pieces(state)
     fill_empty_parts(state)
     return state.own.copy() if (state.overload, state.cost()) <= start else part
