@@ -11,6 +11,7 @@ from sfcpart.manual import PAGES, read_page
 BLOCKS = re.findall(r"^```(\w*)\n(.*?)^```$", read_page("recipes"), re.M | re.S)
 
 
+@pytest.mark.large
 def test_every_recipe_but_the_last_runs_in_one_process(sfcpart, capsys):
     ran = {"sh": 0, "python": 0}
     for language, text in BLOCKS[:-1]:
@@ -27,6 +28,7 @@ def test_every_recipe_but_the_last_runs_in_one_process(sfcpart, capsys):
     assert told == "" or "missing" in told
 
 
+@pytest.mark.large
 def test_restarting_on_other_ranks_misses_no_value(sfcpart, capsys):
     sfcpart("split meshes/channel_mixed.vtu --parts 8 -o parts --weight work")
     line = next(text for _, text in BLOCKS if text.startswith("sfcpart rebalance"))

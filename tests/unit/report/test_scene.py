@@ -8,6 +8,8 @@ import pytest
 import sfcpart
 from sfcpart.graph import cell_graph
 from sfcpart.mesh.shapes import jittered_tets, lattice
+from sfcpart.report import surface as surface_module
+from sfcpart.report.page import scene as scene_module
 from sfcpart.report.page.scene import pack_scene, thin_triangles
 from sfcpart.report.page.space import view_section
 from sfcpart.report.surface import cell_triangles, part_surface
@@ -112,3 +114,20 @@ def test_levels_and_the_rule_are_told(solid, monkeypatch):
     assert "steps along the longest side" in note
     monkeypatch.setattr("sfcpart.report.page.space.MOST_TRIANGLES", 10)
     assert "too small to be seen" in view_section(mesh, parts, **how).note
+
+
+def test_cells_of_a_lattice_are_numbered_alike_by_table_and_by_sorting(monkeypatch):
+    key = np.random.default_rng(2).integers(0, 27, 50)
+    by_table = scene_module._numbered(key, 3)
+    monkeypatch.setattr(scene_module, "_TABLE", 1)
+    assert np.array_equal(scene_module._numbered(key, 3), by_table)
+
+
+def test_faces_of_meshes_with_very_many_points_are_matched_too():
+    big = 1 << 22
+    low, middle, high = np.array([[3, 5, big], [1, 2, 3], [3, 5, big]]).T
+    for shift in (0, big):  # beyond 21 bits, and within
+        columns = (low, middle, np.where(high > big - 1, high - shift, high))
+        order = surface_module._sorted_rows(*columns)
+        assert sorted(order.tolist()) == [0, 1, 2]
+        assert abs(order.tolist().index(0) - order.tolist().index(2)) == 1
