@@ -254,3 +254,9 @@ def test_a_forecast_shows_its_counts_and_what_it_leaves_out():
     none = forecast_page(sfcpart.forecast(mesh, [4], step_model=slow))
     assert none.verdict[0].startswith("No count keeps an efficiency of 80 %")
     assert none.figures[0].text == "none"
+
+
+def test_parts_can_be_coloured_by_the_ranks_of_nested_levels(mesh):
+    parts = sfcpart.split(mesh, 6, levels=(3, 2))
+    data = data_of(render_page(page_of(mesh, parts, levels=(3, 2))))
+    assert data["sections"][0]["levels"] == {"level 1 of 2": [0, 0, 1, 1, 2, 2]}
