@@ -49,6 +49,7 @@ def alone(folder: Path) -> tuple[dict[str, str], str]:
     return digests(out), done.stdout
 
 
+@pytest.mark.large  # seventeen processes
 @pytest.mark.parametrize("size", [1, 2, 3, 4, 7])
 def test_files_and_words_do_not_depend_on_the_ranks(size, folder, alone) -> None:
     out = folder / f"ranks{size}"
