@@ -98,6 +98,8 @@ class Partition:
             array = _whole_numbers(array)
         highest = int(array.max()) if len(array) else -1  # unsigned dtypes have no -1
         count = highest + 1 if n_parts is None else int(n_parts)
+        if n_parts is None and highest < 0 and len(array):
+            count = 1  # all are negative, which is what is said below
         if count < 1:
             raise PartitionError(f"n_parts is {count}; wanted at least 1")
         if highest >= count or int(array.min(initial=0)) < 0:
