@@ -25,6 +25,9 @@ if TYPE_CHECKING:
 
 __all__ = ["split_graph"]
 
+THOROUGH = 3
+"""Graphs get this many times the runs that cell graphs get."""
+
 
 def split_graph(
     adjacency: Any,
@@ -91,4 +94,4 @@ def split_graph(
     walked, place = in_walk_order(graph)
     total = int(graph.vertex_weight.sum())
     aim = Aim.of(total, np.ones(int(n_parts)), float(tolerance), int(seed) % (1 << 31))
-    return best_of_many(walked, aim, starts=int(starts))[place]
+    return best_of_many(walked, aim, starts=THOROUGH * int(starts))[place]
