@@ -36,6 +36,13 @@ LEAST_BLOCK = 16
 RAGGED = 0.7
 """If a larger share of the vertices lies at borders, label moves go first."""
 
+TIGHT = 0.015
+"""If all parts together have less room than this share, label moves go first, and no blocks move.
+
+Flows need room, label moves swap: 64 parts within 1 % 0.669 instead of 0.700, within 0.3 % 0.706
+instead of 0.848.
+"""
+
 CLOSE = 0.3
 """If a larger share lies at borders (parts are small), borders are placed twice, no blocks moved.
 
@@ -75,10 +82,12 @@ def smooth_slice(
     rebalance(state)
     size = graph.n_total // len(capacity)
     at_border = int(graph.comm.allreduce(np.array([len(state.boundary())], np.int64))[0])
-    if at_border > RAGGED * graph.n_total:
+    total = int(state.load.sum())
+    tight = int(np.minimum(capacity, total).sum()) - total < TIGHT * total
+    if tight or at_border > RAGGED * graph.n_total:
         move_labels(state, patience=1)
     close = at_border > CLOSE * graph.n_total
-    if not close and size >= BLOCKS * LEAST_BLOCK:
+    if not close and not tight and size >= BLOCKS * LEAST_BLOCK:
         _move_blocks(state, (size // BLOCKS).bit_length() - 1)
     flow_between(state, sweeps=sweeps or (2 if close else 1))
     tidy_interfaces(state)
