@@ -8,12 +8,14 @@ once. Both go over the same network, so a moved cell costs
 
 cut faces; borders outlive the next re-split, which starts from them, so steps count `LASTS` times.
 Overfull parts first hand cells on to neighbours with room, then borders move to where cut and
-price together are least (`sfcpart.methods.smoothing`), in two rounds.
+price together are least (`sfcpart.methods.smoothing`), in three rounds.
 
-Measured (five frames of a swept front, 248,000 cells, 64 parts, 3 %, 10 steps a frame;
-`tools/bench/rebalance.py front`): moved 1.38 times the least possible and cut 1.07 of a multilevel
-split from scratch with LASTS = 1; 1.41 and 1.02 with 2; 1.45 and 1.04 with 4; 1.57 and 0.96 without
-a price. One round of one sweep with LASTS = 1: 1.39 and 1.29.
+Measured (`tools/bench/rebalance.py front`, 64 parts, 3 %, 10 steps a frame; moved as a multiple of
+the least possible, cut as one of a multilevel split from scratch). Frames 18 to 22, 248,000 cells,
+two rounds, against the multilevel of that day: LASTS = 1: 1.38 and 1.07; 2: 1.41 and 1.02; 4: 1.45
+and 1.04; no price: 1.57 and 0.96. Frames 7 to 9, in which the mesh doubles (42,000 to 93,000
+cells), against a better multilevel: two rounds 1.60 and 1.33, four 1.75 and 1.26, four without a
+price 1.95 and 1.16: there the aims (1.6 and 1.10) are not met together.
 """
 
 from __future__ import annotations
@@ -32,7 +34,7 @@ __all__ = ["priced_smoothing"]
 
 LASTS = 2
 """How often the steps until the next re-split count for a border."""
-ROUNDS, SWEEPS = 2, 2
+ROUNDS, SWEEPS = 3, 2
 FACE = 256
 """What a cut face costs as an integer, so that prices below one face are not lost."""
 _DEAREST = 64.0

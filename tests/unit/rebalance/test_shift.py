@@ -214,3 +214,21 @@ def test_limits_that_no_contiguous_split_keeps_are_refused():
     )
     with pytest.raises(PartitionError, match="limits cannot be kept"):
         shift(task)
+
+
+def test_a_limit_moves_cuts_as_weight_does():
+    wish = {"limit_weight": np.ones(8, np.int64), "part_limit": np.array([4, 4])}
+    home = np.repeat([0, 1], [6, 2])
+    weight = np.array([1, 1, 1, 1, 1, 1, 9, 9])
+    task = line_task(home, n_parts=2, weight=weight, tolerance=3.0, **wish)
+    assert np.bincount(shift(task)).tolist() == [4, 4]
+
+
+@pytest.mark.parametrize("blocks", [1, 2, 100])
+def test_a_middle_part_too_slow_for_any_cell_gets_the_lightest(blocks, monkeypatch):
+    monkeypatch.setattr(home_line, "_BLOCKS", blocks)
+    monkeypatch.setattr(home_line, "_BLOCKS_A_PART", 0)
+    task = line_task([0, 1, 2], n_parts=3, weight=np.array([40, 40, 1]), speed=[4.0, 1.0, 4.0])
+    assert shift(task).tolist() == [0, 1, 2]
+    long = line_task(np.repeat([0, 1], [7, 1]), n_parts=2, weight=np.array([9] * 7 + [1]))
+    assert np.bincount(shift(long)).tolist() == [4, 4]
