@@ -33,10 +33,12 @@ Ways (--way):
 \b
 Examples:
   sfcpart rebalance meshes/channel_mixed.vtu --from parts --weight work
-  sfcpart rebalance MESH --from cell_part.npy --weight work --steps 500 -o parts_new
-  sfcpart rebalance MESH --from parts --parts 16 --way scratch -o parts_16
-  sfcpart rebalance FINER --from parts --parent parent --together parent -o parts_new
-  sfcpart rebalance FINER --from parts --old-mesh COARSER --json
+  sfcpart rebalance meshes/channel_mixed.vtu --from cell_part.npy -w work --way scratch
+  sfcpart rebalance meshes/channel_mixed.vtu --from parts -n 6 --way shift -o parts_6
+  sfcpart rebalance meshes/turbine.vtu --from body --steps 500 --json
+
+On a mesh that was refined or coarsened give the parent of each cell (--parent), what merged cells
+became (--merged-into), or the old mesh; --together FIELD keeps families in one part.
 
 \b
 Written to DIR: what split writes, and

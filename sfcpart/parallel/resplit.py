@@ -43,6 +43,12 @@ class LocalResplit(NamedTuple):
         New part of each local cell: where `migrate` sends it if parts are ranks.
     migration : Migration
         What moves, alike on all ranks.
+
+    Examples
+    --------
+    >>> from sfcpart.comm import SerialComm
+    >>> resplit_local([[0.0], [1.0]], comm=SerialComm()).migration.moved_cells
+    0
     """
 
     cell_part: Int32Array
