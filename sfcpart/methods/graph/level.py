@@ -60,7 +60,7 @@ class Effort:
 
 
 FULL = Effort(rounds=5, patience=15, sweeps=5, depth=3, stretch=4.0, turns=3, insistence=200)
-QUICK = Effort(rounds=1, patience=6, sweeps=1, depth=4, stretch=16.0, turns=1, insistence=20)
+QUICK = Effort(rounds=1, patience=6, sweeps=1, depth=4, stretch=8.0, turns=1, insistence=20)
 
 LARGE = 200_000
 """Vertices up to which graphs get full effort."""

@@ -25,7 +25,7 @@ if TYPE_CHECKING:
 
 __all__ = ["split_graph"]
 
-THOROUGH = 3
+THOROUGH = 4
 """Graphs get this many times the runs that cell graphs get."""
 
 

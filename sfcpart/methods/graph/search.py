@@ -49,7 +49,7 @@ def best_of_many(
     found = [divide(graph, aim)]
     runs = _affordable(graph, found[0]) * starts
     if runs >= 6:
-        found += [divide(graph, _reseeded(aim, i)) for i in range(1, max(2, runs // 5))]
+        found += [divide(graph, _reseeded(aim, i)) for i in range(1, max(2, runs // 4))]
         found.append(_swept(graph, aim, directions))
     ranked = [(rank_of(graph, part, aim), part) for part in found]
     return _evolved(graph, aim, ranked, runs=runs - len(ranked), idle=IDLE * starts)
@@ -75,7 +75,7 @@ def _evolved(
     waited = 0
     for run in range(runs):
         i = j = min(range(len(ranked)), key=lambda x: ranked[x][0])
-        if 3 * run < 2 * runs and len(ranked) > 1:
+        if 4 * run < 3 * runs and len(ranked) > 1:
             i, j = sorted(rng.choice(len(ranked), 2, replace=False), key=lambda x: ranked[x][0])
         other = ranked[j][1] if i != j else None
         child = improve(graph, ranked[i][1], _reseeded(aim, 100 + run), other=other)
