@@ -42,25 +42,27 @@ def run_job(module: str, size: int, folder: Path, *, timeout: float = 120.0) -> 
     _run(["-m", module, str(folder)], size, cwd=ROOT, what=module, timeout=timeout)
 
 
+def package_path() -> dict[str, str]:
+    """Return the variable by which another folder finds the package that is tested here."""
+    return {"PYTHONPATH": str(Path(sfcpart.__file__).parents[1])}
+
+
 def run_script(path: Path, size: int, *arguments: str, timeout: float = 120.0) -> str:
     """Run a script on `size` ranks in the folder it lies in; return what it printed."""
-    # from that folder, the package that is tested here is found by its path
-    package = {"PYTHONPATH": str(Path(sfcpart.__file__).parents[1])}
     return _run(
         [path.name, *arguments],
         size,
         cwd=path.parent,
         what=path.name,
         timeout=timeout,
-        more=package,
+        more=package_path(),
     )
 
 
 def run_command(arguments: list[str], size: int, folder: Path, *, timeout: float = 120.0) -> str:
     """Run `sfcpart` on `size` ranks in a folder; return what it printed."""
-    package = {"PYTHONPATH": str(Path(sfcpart.__file__).parents[1])}
     words, what = ["-m", "sfcpart.cli", *arguments], f"sfcpart {arguments[0]}"
-    return _run(words, size, cwd=folder, what=what, timeout=timeout, more=package)
+    return _run(words, size, cwd=folder, what=what, timeout=timeout, more=package_path())
 
 
 def _run(

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import re
 import shutil
 import subprocess
@@ -13,7 +14,7 @@ import pytest
 from sfcpart.files.meshes.faces_file import write_faces
 from sfcpart.files.parts.vtkhdf_write import write_vtkhdf
 from sfcpart.mesh.refined import refined_box
-from tests.mpi.harness import run_script
+from tests.mpi.harness import package_path, run_script
 from tests.parted import parted
 from tests.properties.test_any_ranks import digests
 
@@ -44,6 +45,7 @@ def alone(folder: Path) -> tuple[dict[str, str], str]:
         text=True,
         timeout=200,
         check=True,
+        env={**os.environ, **package_path()},
     )
     assert "exit codes [0, 0, 0, 0, 0, 0, 0, 0, 4, 5, 2, 3, 4, 0]" in done.stdout
     return digests(out), done.stdout
