@@ -90,6 +90,12 @@ def propose_moves(
         wish[v] = -1
         if best >= 0 and not locked[v]:
             gain = best_link - inside
+            if gain <= 0:  # threads would grow along the edges of other parts
+                n_best = 0
+                for j in range(indptr[v], indptr[v + 1]):
+                    n_best += 1 if part[indices[j]] == best else 0
+                if n_best < 2:
+                    continue
             if gain >= 0 or -gain * 256 < boldness * inside:
                 wish[v] = best
                 wish_gain[v] = gain
