@@ -5,13 +5,11 @@ The public names are loaded on first use: `import sfcpart` starts no MPI and com
 
 from __future__ import annotations
 
-import sys
 from importlib import import_module
-from types import ModuleType
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from sfcpart.api import (  # type: ignore[no-redef]  # the verb `rebalance` hides the room
+    from sfcpart.api import (  # type: ignore[no-redef]  # verbs share the names of their modules
         Frame,
         Mesh,
         Partition,
@@ -50,8 +48,8 @@ _PUBLIC = {
     "Frame": "sfcpart.files.series.frame",
     "Mesh": "sfcpart.mesh.mesh",
     "Partition": "sfcpart.partition",
-    "RebalanceClock": "sfcpart.rebalance.clock",
-    "ResplitCost": "sfcpart.rebalance.timetable",
+    "RebalanceClock": "sfcpart.resplit.clock",
+    "ResplitCost": "sfcpart.resplit.timetable",
     "assess": "sfcpart.api.judge",
     "cell_graph": "sfcpart.graph",
     "class_counts": "sfcpart.api.costs",
@@ -126,19 +124,3 @@ def __getattr__(name: str) -> Any:
 def __dir__() -> list[str]:
     """List the public names."""
     return sorted(__all__)
-
-
-class _Package(ModuleType):
-    """The package: its verb `rebalance` has the name of a room, which must not hide it."""
-
-    @property
-    def rebalance(self) -> Any:
-        """Return the verb."""
-        return __getattr__("rebalance")
-
-    @rebalance.setter
-    def rebalance(self, room: ModuleType) -> None:
-        """Do without the room, which Python hangs here when it is first imported."""
-
-
-sys.modules[__name__].__class__ = _Package

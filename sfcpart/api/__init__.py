@@ -25,8 +25,8 @@ from sfcpart.files.series.read import read_series
 from sfcpart.graph import cell_graph
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
-from sfcpart.rebalance.clock import RebalanceClock
-from sfcpart.rebalance.timetable import ResplitCost
+from sfcpart.resplit.clock import RebalanceClock
+from sfcpart.resplit.timetable import ResplitCost
 from sfcpart.scaling import forecast
 
 __all__ = [

@@ -21,9 +21,9 @@ if TYPE_CHECKING:
     from sfcpart.halo import Across
     from sfcpart.measure import Assessment, StepModel
     from sfcpart.methods.problem import Cuts
-    from sfcpart.rebalance.relabel import Keep
-    from sfcpart.rebalance.result import Rebalance
-    from sfcpart.rebalance.task import Task
+    from sfcpart.resplit.relabel import Keep
+    from sfcpart.resplit.result import Rebalance
+    from sfcpart.resplit.task import Task
     from sfcpart.weights import FaceWeight
 
 __all__ = ["rebalance", "write_rebalance"]
@@ -68,7 +68,7 @@ def rebalance(
         As many as before by default; growing and shrinking work.
     way : str
         "auto" tries several and takes the least predicted time of the steps to come and of
-        moving; or one of `sfcpart.rebalance.ways.WAYS`: "shift" (the cuts along the curve),
+        moving; or one of `sfcpart.resplit.ways.WAYS`: "shift" (the cuts along the curve),
         "smooth" (the old borders, with a price on moving), "scratch" (any method, renamed).
     method : str
         What splits from scratch, and whose curve cuts are shifted along.
@@ -120,7 +120,7 @@ def rebalance(
     """
     from sfcpart.measure import StepModel
     from sfcpart.methods.registry import METHODS
-    from sfcpart.rebalance.task import Task
+    from sfcpart.resplit.task import Task
 
     if method not in METHODS:
         raise InputError(f"method {method!r} is unknown; wanted one of {', '.join(METHODS)}")
@@ -245,7 +245,7 @@ def write_rebalance(
 
 def _ways(way: str, mesh: Mesh, method: str) -> list[str]:
     """Return the ways to try."""
-    from sfcpart.rebalance.ways import AUTO, WAYS
+    from sfcpart.resplit.ways import AUTO, WAYS
 
     if way != AUTO and way not in WAYS:
         raise InputError(f"way {way!r} is unknown; wanted one of {AUTO}, {', '.join(WAYS)}")
@@ -270,7 +270,7 @@ def _home(
     old_mesh: Mesh | None,
 ) -> Int32Array:
     """Return the part that holds each cell now."""
-    from sfcpart.rebalance.origin import home_parts
+    from sfcpart.resplit.origin import home_parts
 
     if isinstance(parent, str):
         if parent not in mesh.cell_fields:
@@ -289,9 +289,9 @@ def _home(
 
 def _judged(mesh: Mesh, task: Task, names: Sequence[str], load: dict[str, Any]) -> Rebalance:
     """Run the ways, take the best, and weigh it against keeping the old split."""
-    from sfcpart.rebalance.choose import best_trial, try_ways
-    from sfcpart.rebalance.result import Rebalance
-    from sfcpart.rebalance.verdict import Verdict
+    from sfcpart.resplit.choose import best_trial, try_ways
+    from sfcpart.resplit.result import Rebalance
+    from sfcpart.resplit.verdict import Verdict
 
     n_parts, model = task.problem.n_parts, task.step_model
     found: dict[int, Assessment] = {}

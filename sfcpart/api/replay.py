@@ -13,8 +13,8 @@ from sfcpart.dtypes import FloatArray, Int32Array
 from sfcpart.errors import InputError
 from sfcpart.files.series.frame import Frame
 from sfcpart.plan import plan_problem, weights_of
-from sfcpart.rebalance.replayed import DEFAULT_RULES, Replay, check_rules, replay_rules
-from sfcpart.rebalance.timetable import ResplitCost, frame_speed, make_timetable
+from sfcpart.resplit.replayed import DEFAULT_RULES, Replay, check_rules, replay_rules
+from sfcpart.resplit.timetable import ResplitCost, frame_speed, make_timetable
 
 if TYPE_CHECKING:
     from sfcpart.measure import StepModel

@@ -51,7 +51,7 @@ whether a simulation is right.
 
 def _ways() -> list[str]:
     """Load the names of the ways."""
-    from sfcpart.rebalance.ways import AUTO, WAYS
+    from sfcpart.resplit.ways import AUTO, WAYS
 
     return [AUTO, *WAYS]
 

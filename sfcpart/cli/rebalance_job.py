@@ -17,7 +17,7 @@ if TYPE_CHECKING:
     from sfcpart.measure.step_model import StepModel
     from sfcpart.mesh.mesh import Mesh
     from sfcpart.partition import Partition
-    from sfcpart.rebalance.result import Rebalance
+    from sfcpart.resplit.result import Rebalance
 
 __all__ = ["RebalanceJob"]
 

@@ -18,7 +18,7 @@ from sfcpart.cli.wishes import METHOD, MethodOption
 
 if TYPE_CHECKING:
     from sfcpart.files.series.read import Series
-    from sfcpart.rebalance.replayed import Replay
+    from sfcpart.resplit.replayed import Replay
 
 __all__ = ["command"]
 
@@ -113,9 +113,9 @@ def command(series: str, **given: Any) -> None:
     model = step_model(given)
     from sfcpart import api
     from sfcpart.cli.console import Stages, print_json
-    from sfcpart.rebalance.migration import CELL_BYTES
-    from sfcpart.rebalance.replayed import DEFAULT_RULES
-    from sfcpart.rebalance.timetable import ResplitCost
+    from sfcpart.resplit.migration import CELL_BYTES
+    from sfcpart.resplit.replayed import DEFAULT_RULES
+    from sfcpart.resplit.timetable import ResplitCost
 
     quiet = given["quiet"] or given["as_json"]
     doing = Stages(quiet=quiet, methods=["smoothed"])

@@ -28,8 +28,8 @@ from sfcpart.slices.gate import agreed, checked_gids
 if TYPE_CHECKING:
     from sfcpart.comm.base import Comm
     from sfcpart.measure.step_model import StepModel
-    from sfcpart.rebalance.migration import Migration
-    from sfcpart.rebalance.relabel import Keep
+    from sfcpart.resplit.migration import Migration
+    from sfcpart.resplit.relabel import Keep
 
 __all__ = ["LocalResplit", "resplit_local"]
 
@@ -150,8 +150,8 @@ class _Price(NamedTuple):
 def _resplit(given: LocalWish, home: Int32Array, price: _Price, comm: Comm) -> LocalResplit:
     """Split again in the order in which ranks hold the cells."""
     from sfcpart.measure.step_model import StepModel
-    from sfcpart.rebalance.task import Task
-    from sfcpart.rebalance.ways import WAYS
+    from sfcpart.resplit.task import Task
+    from sfcpart.resplit.ways import WAYS
 
     highest = int(comm.allreduce(np.array([home.max(initial=0)], np.int64), "max")[0])
     task = Task(

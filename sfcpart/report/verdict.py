@@ -14,8 +14,8 @@ from sfcpart.report.numbers import counted, duration, number, percent, seconds
 if TYPE_CHECKING:
     from sfcpart.comparison import Comparison
     from sfcpart.measure.assessment import Assessment
-    from sfcpart.rebalance.replayed import Replay
-    from sfcpart.rebalance.result import Rebalance
+    from sfcpart.resplit.replayed import Replay
+    from sfcpart.resplit.result import Rebalance
     from sfcpart.scaling import Forecast, Rung
 
 __all__ = [

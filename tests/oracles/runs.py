@@ -6,7 +6,7 @@ from itertools import combinations
 
 import numpy as np
 
-from sfcpart.rebalance.timetable import Timetable
+from sfcpart.resplit.timetable import Timetable
 
 
 def drawn_table(rng: np.random.Generator, n_frames: int) -> Timetable:

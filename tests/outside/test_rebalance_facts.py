@@ -14,10 +14,10 @@ import numpy as np
 import pytest
 from scipy.optimize import linear_sum_assignment, linprog
 
-from sfcpart.rebalance.caps import part_caps
-from sfcpart.rebalance.migration import Migration, least_moved
-from sfcpart.rebalance.overlap import Overlap
-from sfcpart.rebalance.relabel import best_labels
+from sfcpart.resplit.caps import part_caps
+from sfcpart.resplit.migration import Migration, least_moved
+from sfcpart.resplit.overlap import Overlap
+from sfcpart.resplit.relabel import best_labels
 
 
 def least_by_programme(home: np.ndarray, most: np.ndarray) -> float:

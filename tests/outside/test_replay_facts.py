@@ -5,8 +5,8 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from sfcpart.rebalance.hindsight import best_period, follow
-from sfcpart.rebalance.policies import StopAtRise
+from sfcpart.resplit.hindsight import best_period, follow
+from sfcpart.resplit.policies import StopAtRise
 from tests.oracles.runs import aging_table
 
 

@@ -7,9 +7,9 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from sfcpart.rebalance.hindsight import follow, hindsight, path_of
-from sfcpart.rebalance.policies import Regret
-from sfcpart.rebalance.replayed import replay_rules
+from sfcpart.resplit.hindsight import follow, hindsight, path_of
+from sfcpart.resplit.policies import Regret
+from sfcpart.resplit.replayed import replay_rules
 from tests.oracles.runs import drawn_table, seconds_of
 
 RULES = ("never", "every:1", "every:3", "threshold:0.2", "stop-at-rise", "clock", "best-period")

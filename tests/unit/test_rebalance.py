@@ -12,7 +12,7 @@ from sfcpart.errors import InputError, PartitionError
 from sfcpart.measure import StepModel
 from sfcpart.mesh.refined import refined_box
 from sfcpart.mesh.shapes import lattice
-from sfcpart.rebalance.choose import Trial, best_trial
+from sfcpart.resplit.choose import Trial, best_trial
 from tests.assertions import assert_partition
 
 WAYS = ["auto", "shift", "smooth", "scratch"]
@@ -145,6 +145,6 @@ def test_wishes_that_mean_nothing_are_refused(box, wish, text):
 
 
 def test_the_verb_is_not_hidden_by_the_room_of_its_name():
-    from sfcpart.rebalance import caps
+    from sfcpart.resplit import caps
 
     assert callable(sfcpart.rebalance) and caps.part_caps is not None

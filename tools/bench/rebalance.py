@@ -26,11 +26,11 @@ from sfcpart.methods.problem import Problem
 from sfcpart.methods.registry import METHODS
 from sfcpart.partition import Partition
 from sfcpart.plan import plan_problem
-from sfcpart.rebalance.origin import home_parts
-from sfcpart.rebalance.overlap import Overlap
-from sfcpart.rebalance.relabel import best_labels
-from sfcpart.rebalance.task import Task
-from sfcpart.rebalance.ways import WAYS
+from sfcpart.resplit.origin import home_parts
+from sfcpart.resplit.overlap import Overlap
+from sfcpart.resplit.relabel import best_labels
+from sfcpart.resplit.task import Task
+from sfcpart.resplit.ways import WAYS
 from tools.series.front import front_series
 
 

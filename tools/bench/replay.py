@@ -22,9 +22,9 @@ from dataclasses import replace
 import numpy as np
 
 import sfcpart
-from sfcpart.rebalance.hindsight import follow, hindsight
-from sfcpart.rebalance.replayed import check_rules, replay_rules
-from sfcpart.rebalance.timetable import Timetable
+from sfcpart.resplit.hindsight import follow, hindsight
+from sfcpart.resplit.replayed import check_rules, replay_rules
+from sfcpart.resplit.timetable import Timetable
 from tools.series.front import front_series
 from tools.series.spots import slow_series, spot_series
 

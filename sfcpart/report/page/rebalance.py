@@ -12,7 +12,7 @@ from sfcpart.report.page.content import Axis, Chart, Figure, MatrixPlot, Page, S
 from sfcpart.report.verdict import judge_rebalance
 
 if TYPE_CHECKING:
-    from sfcpart.rebalance.result import Rebalance
+    from sfcpart.resplit.result import Rebalance
 
 __all__ = ["break_even_chart", "migration_matrix", "rebalance_page"]
 

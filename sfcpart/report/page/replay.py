@@ -12,7 +12,7 @@ from sfcpart.report.page.split import CAUTION
 from sfcpart.report.verdict import judge_replay
 
 if TYPE_CHECKING:
-    from sfcpart.rebalance.replayed import Replay
+    from sfcpart.resplit.replayed import Replay
 
 __all__ = ["replay_page"]
 

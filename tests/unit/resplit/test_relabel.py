@@ -12,11 +12,11 @@ from hypothesis.extra import numpy as hnp
 from scipy.sparse import csr_array
 
 from sfcpart.comm import run_ranks
-from sfcpart.rebalance import overlap as overlaps
-from sfcpart.rebalance.overlap import Overlap
-from sfcpart.rebalance.relabel import best_labels, match_most
-from sfcpart.rebalance.scratch import scratch
-from tests.unit.rebalance.lines import line_task
+from sfcpart.resplit import overlap as overlaps
+from sfcpart.resplit.overlap import Overlap
+from sfcpart.resplit.relabel import best_labels, match_most
+from sfcpart.resplit.scratch import scratch
+from tests.unit.resplit.lines import line_task
 
 
 def overlap_of(table: np.ndarray) -> Overlap:

@@ -7,9 +7,9 @@ from typing import Any
 
 from sfcpart.measure import Assessment
 from sfcpart.partition import Partition
-from sfcpart.rebalance.choose import Trial
-from sfcpart.rebalance.migration import Migration
-from sfcpart.rebalance.verdict import Verdict
+from sfcpart.resplit.choose import Trial
+from sfcpart.resplit.migration import Migration
+from sfcpart.resplit.verdict import Verdict
 
 __all__ = ["Rebalance"]
 
@@ -25,7 +25,7 @@ class Rebalance:
     home : Partition
         The part that holds each cell now (the old one, carried over to a mesh that changed).
     way : str
-        How it was re-split; of `sfcpart.rebalance.ways.WAYS`.
+        How it was re-split; of `sfcpart.resplit.ways.WAYS`.
     migration : Migration
         Who sends how much to whom, how long that takes, and the least possible.
     verdict : Verdict

@@ -19,7 +19,7 @@ import numpy as np
 from sfcpart.dtypes import Array, FloatArray, Int32Array, Int64Array
 from sfcpart.errors import InputError
 from sfcpart.measure.step_model import DEFAULT_NETWORK, NETWORKS, Network
-from sfcpart.rebalance.overlap import Overlap
+from sfcpart.resplit.overlap import Overlap
 
 if TYPE_CHECKING:
     from scipy.sparse import csr_array

@@ -13,8 +13,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from sfcpart.dtypes import FloatArray, Int64Array
-from sfcpart.rebalance.policies import Every, Rule
-from sfcpart.rebalance.timetable import Timetable
+from sfcpart.resplit.policies import Every, Rule
+from sfcpart.resplit.timetable import Timetable
 
 __all__ = ["Path", "best_period", "follow", "hindsight", "path_of"]
 

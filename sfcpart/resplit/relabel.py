@@ -23,9 +23,9 @@ from typing import TYPE_CHECKING, Literal
 import numpy as np
 
 from sfcpart.dtypes import PART, Array, Int32Array, Int64Array
-from sfcpart.rebalance.bottleneck import match_least_largest
-from sfcpart.rebalance.overlap import Overlap
-from sfcpart.rebalance.settled import settle
+from sfcpart.resplit.bottleneck import match_least_largest
+from sfcpart.resplit.overlap import Overlap
+from sfcpart.resplit.settled import settle
 
 if TYPE_CHECKING:
     from scipy.sparse import csr_array

@@ -34,11 +34,11 @@ from sfcpart.kernels.curve.least_moves import least_moves
 from sfcpart.methods.curve.along_curve import unfit
 from sfcpart.methods.curve.chunks import cut_line
 from sfcpart.methods.curve.line import Line
-from sfcpart.rebalance.home_line import HomeLine
-from sfcpart.rebalance.overlap import Overlap
-from sfcpart.rebalance.relabel import best_labels
-from sfcpart.rebalance.task import Task
-from sfcpart.rebalance.windows import Bounds, find_windows
+from sfcpart.resplit.home_line import HomeLine
+from sfcpart.resplit.overlap import Overlap
+from sfcpart.resplit.relabel import best_labels
+from sfcpart.resplit.task import Task
+from sfcpart.resplit.windows import Bounds, find_windows
 
 __all__ = ["Wish", "least_moving_cuts", "shift"]
 

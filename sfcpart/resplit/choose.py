@@ -13,10 +13,10 @@ from typing import Any
 
 from sfcpart.dtypes import Int32Array
 from sfcpart.errors import PartitionError, SfcpartError
-from sfcpart.rebalance.migration import Migration
-from sfcpart.rebalance.task import Task
-from sfcpart.rebalance.warm import warm_up
-from sfcpart.rebalance.ways import WAYS
+from sfcpart.resplit.migration import Migration
+from sfcpart.resplit.task import Task
+from sfcpart.resplit.warm import warm_up
+from sfcpart.resplit.ways import WAYS
 
 __all__ = ["Trial", "best_trial", "try_ways"]
 
@@ -72,7 +72,7 @@ def try_ways(
     ----------
     task : Task
     names : sequence of str
-        Of `sfcpart.rebalance.ways.WAYS`. A single one that refuses raises its error.
+        Of `sfcpart.resplit.ways.WAYS`. A single one that refuses raises its error.
     step_seconds : callable
         Predicts a step from the parts of the cells.
     """

@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING, cast
 
 if TYPE_CHECKING:
     from sfcpart.dtypes import Int32Array
-    from sfcpart.rebalance.task import Task
+    from sfcpart.resplit.task import Task
 
 __all__ = ["AUTO", "WAYS", "Way"]
 
@@ -29,7 +29,7 @@ class Way:
     ----------
     name : str
     home : str
-        Module under `sfcpart.rebalance` and function, as "module:function".
+        Module under `sfcpart.resplit` and function, as "module:function".
     needs_graph : bool
         Whether it asks for the cell graph, whatever the method.
     summary : str
@@ -44,7 +44,7 @@ class Way:
     def run(self, task: Task) -> Int32Array:
         """Return the new part of each local cell, (n_local,) int32."""
         module, _, function = self.home.partition(":")
-        split = getattr(import_module(f"sfcpart.rebalance.{module}"), function)
+        split = getattr(import_module(f"sfcpart.resplit.{module}"), function)
         return cast("Int32Array", split(task))
 
 

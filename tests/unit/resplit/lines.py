@@ -8,7 +8,7 @@ import numpy as np
 
 from sfcpart.comm import SerialComm
 from sfcpart.methods.problem import Problem
-from sfcpart.rebalance.task import Task
+from sfcpart.resplit.task import Task
 
 __all__ = ["line_task"]
 

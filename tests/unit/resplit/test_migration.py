@@ -7,8 +7,8 @@ import pytest
 
 from sfcpart.errors import InputError
 from sfcpart.measure.step_model import Network
-from sfcpart.rebalance.migration import Migration, least_moved
-from sfcpart.rebalance.verdict import Verdict
+from sfcpart.resplit.migration import Migration, least_moved
+from sfcpart.resplit.verdict import Verdict
 
 NETWORK = Network("toy", latency=1.0, bandwidth=10.0)
 

@@ -11,13 +11,13 @@ from hypothesis import strategies as st
 
 from sfcpart.comm import run_ranks
 from sfcpart.errors import InsufficientMemoryError, PartitionError
-from sfcpart.rebalance import home_line
-from sfcpart.rebalance import shift as shifting
-from sfcpart.rebalance.caps import part_caps
-from sfcpart.rebalance.scratch import scratch
-from sfcpart.rebalance.shift import shift
+from sfcpart.resplit import home_line
+from sfcpart.resplit import shift as shifting
+from sfcpart.resplit.caps import part_caps
+from sfcpart.resplit.scratch import scratch
+from sfcpart.resplit.shift import shift
 from tests.oracles.least_moves import least_moved_weight
-from tests.unit.rebalance.lines import line_task
+from tests.unit.resplit.lines import line_task
 
 
 class Case(NamedTuple):

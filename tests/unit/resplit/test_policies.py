@@ -6,8 +6,8 @@ import numpy as np
 import pytest
 
 from sfcpart.errors import InputError
-from sfcpart.rebalance.hindsight import best_period, follow, hindsight
-from sfcpart.rebalance.policies import Every, Forecast, Never, Regret, StopAtRise, Threshold
+from sfcpart.resplit.hindsight import best_period, follow, hindsight
+from sfcpart.resplit.policies import Every, Forecast, Never, Regret, StopAtRise, Threshold
 from tests.oracles.runs import aging_table
 
 

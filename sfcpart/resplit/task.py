@@ -9,9 +9,9 @@ import numpy as np
 from sfcpart.dtypes import Int32Array, Int64Array
 from sfcpart.measure.step_model import StepModel
 from sfcpart.methods.problem import Problem
-from sfcpart.rebalance.caps import part_caps
-from sfcpart.rebalance.migration import CELL_BYTES, Migration
-from sfcpart.rebalance.relabel import Keep
+from sfcpart.resplit.caps import part_caps
+from sfcpart.resplit.migration import CELL_BYTES, Migration
+from sfcpart.resplit.relabel import Keep
 
 __all__ = ["Task"]
 
@@ -30,7 +30,7 @@ class Task:
     method : str
         What splits from scratch, and which curve cuts are shifted along if it is one.
     keep : {"total", "busiest"}
-        What a relabelling keeps small; see `sfcpart.rebalance.relabel`.
+        What a relabelling keeps small; see `sfcpart.resplit.relabel`.
     steps : int
         Steps of the solver until the next split.
     cell_bytes : float

@@ -13,8 +13,8 @@ from sfcpart.errors import SfcpartError
 from sfcpart.graph import cell_graph
 from sfcpart.mesh.shapes import lattice
 from sfcpart.methods.problem import Problem
-from sfcpart.rebalance.task import Task
-from sfcpart.rebalance.ways import WAYS
+from sfcpart.resplit.task import Task
+from sfcpart.resplit.ways import WAYS
 
 __all__ = ["warm_up"]
 

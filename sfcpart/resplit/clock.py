@@ -9,7 +9,7 @@ import numpy as np
 
 from sfcpart.comm import SerialComm, adopt
 from sfcpart.errors import InputError
-from sfcpart.rebalance.policies import Regret
+from sfcpart.resplit.policies import Regret
 
 if TYPE_CHECKING:
     from sfcpart.comm.base import Comm
@@ -23,7 +23,7 @@ class RebalanceClock:
     """Says after each step of a running solver whether to re-split before the next.
 
     Fed with the solver's own timings and with what re-splits cost, it re-splits when what a
-    re-split would have saved reaches what it costs (`sfcpart.rebalance.policies.Regret`). Every
+    re-split would have saved reaches what it costs (`sfcpart.resplit.policies.Regret`). Every
     rank gets the same answer, since every rank sees the same reduced numbers.
 
     Parameters

@@ -4,7 +4,7 @@ Frame k of a run can be computed with the split made in any frame i <= k. The ta
 predicted step of each pair, and what re-splitting in k costs where the split of i is in use. Splits
 are made by what a frame weighs alone, not by the split before, so these pairs are all there is:
 every rule is a path through the table, and the best path is found exactly
-(`sfcpart.rebalance.hindsight`). New parts are renamed to keep most cells at home, which does not
+(`sfcpart.resplit.hindsight`). New parts are renamed to keep most cells at home, which does not
 depend on earlier names; not so where ranks differ in speed, which a name stands for. Cost: n^2/2
 passes over the cells of n frames, and memory for the parts of every split, carried to the newest
 frame (a byte a cell up to 256 parts); frames are streamed, two meshes at a time.
@@ -29,10 +29,10 @@ from sfcpart.measure.pairs import PartPairs
 from sfcpart.measure.step_model import StepModel
 from sfcpart.mesh.mesh import Mesh
 from sfcpart.partition import Partition
-from sfcpart.rebalance.migration import CELL_BYTES, Migration
-from sfcpart.rebalance.origin import home_parts
-from sfcpart.rebalance.overlap import Overlap
-from sfcpart.rebalance.relabel import best_labels
+from sfcpart.resplit.migration import CELL_BYTES, Migration
+from sfcpart.resplit.origin import home_parts
+from sfcpart.resplit.overlap import Overlap
+from sfcpart.resplit.relabel import best_labels
 
 __all__ = ["ResplitCost", "Timetable", "frame_speed", "make_timetable"]
 

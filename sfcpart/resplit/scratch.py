@@ -7,9 +7,9 @@ import numpy as np
 from sfcpart.dtypes import Int32Array
 from sfcpart.methods.on_one_rank import run_method
 from sfcpart.methods.registry import METHODS
-from sfcpart.rebalance.overlap import Overlap
-from sfcpart.rebalance.relabel import best_labels
-from sfcpart.rebalance.task import Task
+from sfcpart.resplit.overlap import Overlap
+from sfcpart.resplit.relabel import best_labels
+from sfcpart.resplit.task import Task
 
 __all__ = ["relabelled", "scratch"]
 

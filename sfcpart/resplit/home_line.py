@@ -25,7 +25,7 @@ from sfcpart.kernels.curve.places import add_places, note_homes, take_names
 from sfcpart.kernels.threads import run_ranges
 from sfcpart.methods.curve.line import Line
 from sfcpart.methods.together import Bundles
-from sfcpart.rebalance.task import Task
+from sfcpart.resplit.task import Task
 
 __all__ = ["HomeLine"]
 

@@ -9,9 +9,9 @@ from typing import Any
 import numpy as np
 
 from sfcpart.errors import InputError
-from sfcpart.rebalance.hindsight import Path, best_period, follow, hindsight
-from sfcpart.rebalance.policies import Every, Never, Regret, Rule, StopAtRise, Threshold
-from sfcpart.rebalance.timetable import Timetable
+from sfcpart.resplit.hindsight import Path, best_period, follow, hindsight
+from sfcpart.resplit.policies import Every, Never, Regret, Rule, StopAtRise, Threshold
+from sfcpart.resplit.timetable import Timetable
 
 __all__ = ["DEFAULT_RULES", "Replay", "RuleOutcome", "check_rules", "replay_rules"]
 

@@ -7,7 +7,7 @@ import pytest
 
 from sfcpart.errors import InputError, PartitionError
 from sfcpart.partition import Partition
-from sfcpart.rebalance.origin import home_parts
+from sfcpart.resplit.origin import home_parts
 
 OLD = Partition.from_array([0, 0, 1, 2])
 

@@ -1,4 +1,4 @@
-"""Where the cuts of a least-moving contiguous split can lie (`sfcpart.rebalance.shift`).
+"""Where the cuts of a least-moving contiguous split can lie (`sfcpart.resplit.shift`).
 
 First in whole blocks of the line, rounded outwards; then place by place among those blocks.
 """
@@ -11,7 +11,7 @@ import numpy as np
 
 from sfcpart.dtypes import FloatArray, Int64Array
 from sfcpart.kernels.curve.least_moves import reach_down, reach_up
-from sfcpart.rebalance.home_line import HomeLine
+from sfcpart.resplit.home_line import HomeLine
 
 __all__ = ["Bounds", "Windows", "find_windows"]
 

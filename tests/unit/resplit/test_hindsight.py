@@ -8,9 +8,9 @@ import numpy as np
 import pytest
 
 from sfcpart.errors import InputError
-from sfcpart.rebalance.hindsight import best_period, follow, hindsight, path_of
-from sfcpart.rebalance.policies import Every, Never, StopAtRise
-from sfcpart.rebalance.replayed import DEFAULT_RULES, replay_rules
+from sfcpart.resplit.hindsight import best_period, follow, hindsight, path_of
+from sfcpart.resplit.policies import Every, Never, StopAtRise
+from sfcpart.resplit.replayed import DEFAULT_RULES, replay_rules
 from tests.oracles.runs import aging_table, drawn_table, least_seconds, seconds_of
 
 

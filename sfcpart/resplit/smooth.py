@@ -28,7 +28,7 @@ from sfcpart.dtypes import Int32Array, Int64Array
 from sfcpart.errors import PartitionError
 from sfcpart.methods.smoothing.cell_items import CellItems
 from sfcpart.methods.smoothing.smooth import smooth_slice
-from sfcpart.rebalance.task import Task
+from sfcpart.resplit.task import Task
 
 __all__ = ["priced_smoothing"]
 

@@ -7,10 +7,10 @@ import pytest
 
 from sfcpart.errors import PartitionError
 from sfcpart.kernels.curve.least_moves import least_moves
-from sfcpart.rebalance.shift import shift
-from sfcpart.rebalance.warm import warm_up
+from sfcpart.resplit.shift import shift
+from sfcpart.resplit.warm import warm_up
 from tests.oracles.least_moves import least_moved_weight
-from tests.unit.rebalance.lines import line_task
+from tests.unit.resplit.lines import line_task
 
 
 def kept(weight, cuts, most, second, limit) -> int:
