@@ -238,3 +238,18 @@ def test_bad_input_is_named(matrix, options, error, words):
     n_parts = options.pop("n_parts", 2) if "n_parts" in options else 2
     with pytest.raises(error, match=words):
         split_graph(matrix, n_parts, **options)
+
+
+def test_edges_heavier_and_heavier_along_a_path_still_merge():
+    n = 600
+    path = graph_of_matrix(
+        symmetric(n, pairwise(range(n)), (1.1 ** np.arange(n - 1) % 1e6 + 1).astype(int)), None
+    )
+    rising = graph_of_matrix(symmetric(n, pairwise(range(n)), np.arange(1, n)), None)
+    for graph in (path, rising):
+        levels = hierarchy(graph, np.zeros(n, np.int32), smallest=50, heaviest=n, seed=0)
+        assert levels[-1].graph.n <= 60
+        for fine, coarse in pairwise(levels):
+            mean = n / fine.graph.n
+            assert coarse.graph.n <= 0.75 * fine.graph.n
+            assert coarse.graph.vertex_weight.max() <= 5 * mean + 1

@@ -77,3 +77,22 @@ def test_large_faces_are_not_cut_where_small_ones_can_be():
     graph = sfcpart.cell_graph(mesh)
     row = np.repeat(part, np.diff(graph.indptr))
     assert graph.data[row != part[graph.indices]].sum() / 2 == 8.0
+
+
+def test_layers_are_cut_no_more_than_by_bisection():
+    # Eight layers, each twice as thick as the one below: face measures differ by a factor of 10^3.
+    x, z = np.meshgrid(np.arange(17.0), 2.0 ** np.arange(9) / 256, indexing="ij")
+    corner = (np.arange(16)[:, None] * 9 + np.arange(8)).ravel()
+    mesh = sfcpart.Mesh.from_arrays(
+        np.stack([x.ravel(), z.ravel()], 1),
+        {"quad": np.stack([corner, corner + 9, corner + 10, corner + 1], 1)},
+    )
+    graph = sfcpart.cell_graph(mesh)
+
+    def measure_cut(method, **wish):
+        part = sfcpart.split(mesh, 4, method=method, **wish).cell_part
+        row = np.repeat(part, np.diff(graph.indptr))
+        return graph.data[row != part[graph.indices]].sum() / 2
+
+    deep = measure_cut("multilevel", face_weight="measure")
+    assert deep <= measure_cut("coordinate") * (1 + 1e-4)  # faces keep 20 bits of the largest
