@@ -68,7 +68,8 @@ def smooth_slice(
     part : (n,) int32
         The start; not changed.
     capacity : (n_parts,) int64
-        The most each part may weigh. A start that exceeds it is rebalanced, and may then cost more.
+        The most each part may weigh. A start that exceeds it is rebalanced, and one with empty
+        parts filled; both may then cost more.
     sweeps : int
         Rounds of flows over all pairs of neighbouring parts; 1 by default, 2 where borders are
         ragged or parts small.
@@ -77,13 +78,13 @@ def smooth_slice(
         weight: the cost is the cut and these prices. A part of -1 is no home.
     """
     state = State.of(graph, part, capacity, home_part=home_part, home_price=home_price)
-    start = state.overload, state.cost()
+    start = _rank(state)
     fill_empty_parts(state)
     rebalance(state)
     size = graph.n_total // len(capacity)
     at_border = int(graph.comm.allreduce(np.array([len(state.boundary())], np.int64))[0])
-    total = int(state.load.sum())
-    tight = int(np.minimum(capacity, total).sum()) - total < TIGHT * total
+    total = float(state.load.sum())
+    tight = float(np.minimum(capacity, total).sum()) - total < TIGHT * total
     if tight or at_border > RAGGED * graph.n_total:
         move_labels(state, patience=1)
     close = at_border > CLOSE * graph.n_total
@@ -93,7 +94,13 @@ def smooth_slice(
     tidy_interfaces(state)
     join_pieces(state)
     fill_empty_parts(state)
-    return state.own.copy() if (state.overload, state.cost()) <= start else part
+    return state.own.copy() if _rank(state) <= start else part
+
+
+def _rank(state: State) -> tuple[int, int, int]:
+    """What counts: first that no part is empty, then the overload, then the cost."""
+    size = state.graph.sum_by(state.own, np.ones(state.graph.n, np.int64), state.n_parts)
+    return int((size == 0).sum()), state.overload, state.cost()
 
 
 def _move_blocks(state: State, bits: int) -> None:

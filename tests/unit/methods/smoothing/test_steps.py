@@ -94,6 +94,22 @@ def test_parts_that_hardly_touch_part_at_no_cost():
     assert len(touching_pairs(state)[0]) <= 5
 
 
+def test_large_parts_move_in_blocks_too():
+    rows, columns = np.divmod(np.arange(64 * 66), 66)
+    start = (columns + 4 * np.sin(rows / 3.0) >= 33).astype(np.int32)
+    capacity = np.full(2, 2300, np.int64)
+    graph = lattice(64, 66)
+    part = smooth_slice(graph, start, capacity)
+    assert State.of(graph, part, capacity).cost() == 64
+    assert np.bincount(part).max() <= 2300
+
+
+def test_an_empty_part_is_filled_though_it_costs():
+    graph, capacity = lattice(3, 6), np.array([18, 18], np.int64)
+    part = smooth_slice(graph, np.zeros(18, np.int32), capacity)
+    assert np.bincount(part, minlength=2).min() >= 1
+
+
 def test_buckets_rise_with_loss_per_weight():
     loss = np.array([-3, 0, 1, 2, 3, 50, 1 << 40], np.int64)
     bucket = bucket_of(loss, np.ones(7, np.int64))
