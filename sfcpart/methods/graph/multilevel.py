@@ -1,11 +1,11 @@
 """Divide any graph: multilevel partition of a symmetric sparse matrix, no coordinates needed.
 
 Measured, with default options: N x N grids at perfect balance, N = 32, 64, 128, p = 4, 16, 64: the
-optimum; 32^3 in 8 parts: the optimum; octahedral sphere n = 64: two parts 384 at 3 % and 386 at
-perfect balance, 1.018 of the best values known to us (from memory) over 2..64 parts at 3 %, in 1
-to 6 s. 1.08e6 random tets, 64 parts (`tools/bench/graph_methods.py`): 0.57 to 0.58 of the Hilbert
-cut in 4.2 to 5 s of one core; 4096 parts cost 2.7 times as much as 16. 2e6 hexahedra take 1.8
-times as long as 1e6.
+optimum; 32^3 in 8 parts: the optimum; octahedral sphere n = 64 at 3 %, 2 to 64 parts: 384, 766,
+1152, 1754, 2551, 3657 in 1.7 to 8.5 s of one shared core; two parts at perfect balance 386. 1.08e6
+random tets, 64 parts (`tools/bench/graph_methods.py`): 0.575 to 0.584 of the Hilbert cut, 0.579
+with seed 0, in 4.3 s of processor time; 546,750 tets: 4096 parts cost 3.1 times as much as 16.
+29,478 tets in 64 parts as a mesh: 4.4 s. Doubling cells costs less than twice the time.
 """
 
 from __future__ import annotations
