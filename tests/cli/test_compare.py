@@ -135,7 +135,7 @@ def test_a_method_that_refuses_says_so_everywhere(sfcpart, tmp_path):
 
 
 def test_faces_may_be_weighed(sfcpart):
-    line = f"{SECTION} -n 4 -m smoothed --json --face-weight"
+    line = f"{SECTION} -n 8 -m multilevel --json --face-weight"
     count, measure = (
         json.loads(sfcpart(f"{line} {way}").out)["rows"][0] for way in ("count", "measure")
     )
