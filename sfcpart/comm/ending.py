@@ -4,7 +4,8 @@ An error that all ranks meet (one passed through `Comm.check`, or the same mista
 is told once, and every rank leaves by itself. An error of some ranks alone would let the others
 wait for ever: the first of them to notice says so with its number, removes what was being
 written, and aborts the job. A rank that a signal kills is noticed by the launcher, which ends the
-others and tells the signal.
+others; which rank it was, its witness tells, which removes what was being written, too
+(`sfcpart.comm.witness`).
 
 All ranks are asked whether they failed too with a barrier that nobody waits in (`MPI_Ibarrier`),
 on a communicator of its own.
@@ -18,9 +19,12 @@ import traceback
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager, suppress
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from sfcpart.launcher import launched
+
+if TYPE_CHECKING:
+    from sfcpart.comm.witness import Witness
 
 __all__ = ["end_rank", "ending_together", "found_on", "removed_on_abort"]
 
@@ -31,8 +35,8 @@ _half_written: set[Path] = set()
 def removed_on_abort(path: Path) -> Iterator[None]:
     """Name a file or folder that is half-written during a block, on every rank that knows it.
 
-    Whichever of them aborts the job removes it first. (What a killed job leaves is removed by the
-    next run.)
+    Whichever of them aborts the job removes it first, and the witness of one that a signal kills.
+    (What a machine that goes down leaves is removed by the next run.)
 
     Examples
     --------
@@ -40,12 +44,26 @@ def removed_on_abort(path: Path) -> Iterator[None]:
     ...     pass  # write there, rename in the end
     """
     _half_written.add(path)
+    witness = _witness()
+    if witness is not None:
+        witness.is_written(path)
     try:
         yield
     finally:
         # not while an error is on its way out: whoever aborts still needs the name
         if sys.exc_info()[0] is None:
             _half_written.discard(path)
+            if witness is not None:
+                witness.has_written(path)
+
+
+def _witness() -> Witness | None:
+    """Return who tells of this rank's death, if a launcher started it."""
+    if not launched():
+        return None
+    from sfcpart.comm.mpi.ending import witness
+
+    return witness()
 
 
 def found_on(error: BaseException) -> int | None:

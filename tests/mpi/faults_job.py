@@ -68,6 +68,19 @@ def killed(comm, folder):
         os.kill(os.getpid(), signal.SIGKILL)
 
 
+def killed_writing(comm, folder):
+    """Kill one rank while a folder is half-written that all ranks know of."""
+    from sfcpart.comm import removed_on_abort
+
+    with removed_on_abort(folder / "parts.tmp"):
+        if comm.rank == 0:
+            (folder / "parts.tmp").mkdir()
+            (folder / "parts.tmp" / "half").touch()
+        comm.barrier()
+        killed(comm, folder)
+        comm.barrier()
+
+
 def two_fail(comm, folder):
     """Let two of the three fail at about the same time."""
     if comm.rank != 0:

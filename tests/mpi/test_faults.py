@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+import time
 
 import pytest
 
@@ -57,5 +58,16 @@ def test_what_all_ranks_find_is_said_once_and_names_none(tmp_path):
     assert "rank 0:" not in printed
 
 
-def test_a_rank_that_a_signal_kills_ends_the_job(tmp_path):
-    assert "ended with 9:" in printed_by(tmp_path / "killed")
+def test_a_rank_that_a_signal_kills_ends_the_job_and_is_named(tmp_path):
+    printed = printed_by(tmp_path / "killed")
+    assert "ended with 9:" in printed
+    assert re.findall(r"rank (\d) of 3 was killed by a signal", printed) == ["1"]
+
+
+def test_what_a_killed_rank_had_half_written_is_removed(tmp_path):
+    printed_by(tmp_path / "killed_writing")
+    left = tmp_path / "killed_writing" / "parts.tmp"
+    end = time.monotonic() + SECONDS
+    while left.exists() and time.monotonic() < end:  # its witness waits for the other ranks
+        time.sleep(0.05)
+    assert not left.exists()

@@ -10,7 +10,9 @@ from functools import lru_cache
 import numpy as np
 from mpi4py import MPI
 
-__all__ = ["everyone_failed", "prepare", "silent_abort", "this_rank"]
+from sfcpart.comm.witness import Witness
+
+__all__ = ["everyone_failed", "prepare", "silent_abort", "this_rank", "witness"]
 
 GRACE = 0.5
 """Seconds in which all ranks must have failed, if the error is everyone's."""
@@ -25,7 +27,14 @@ _CLAIM = 7
 @lru_cache(maxsize=1)
 def prepare() -> MPI.Intracomm:
     """Return the communicator on which ranks tell each other that they failed; collective."""
+    witness()
     return MPI.COMM_WORLD.Dup()
+
+
+@lru_cache(maxsize=1)
+def witness() -> Witness:
+    """Return this rank's witness; made on first use."""
+    return Witness(MPI.COMM_WORLD.Get_rank(), MPI.COMM_WORLD.Get_size())
 
 
 def this_rank() -> int:
@@ -55,6 +64,7 @@ def everyone_failed(speak_up: Callable[[], None]) -> bool:
 
 def silent_abort(code: int) -> int:
     """End all processes of the job; MPI's own lines about it are not shown."""
+    witness().aborts()
     time.sleep(0.1)  # what was printed is on its way through the launcher
     nowhere = os.open(os.devnull, os.O_WRONLY)
     os.dup2(nowhere, 2)
