@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import time
 from collections.abc import Callable
+from contextlib import suppress
 from functools import lru_cache
 
 import numpy as np
@@ -32,9 +33,11 @@ def prepare() -> MPI.Intracomm:
 
 
 @lru_cache(maxsize=1)
-def witness() -> Witness:
-    """Return this rank's witness; made on first use."""
-    return Witness(MPI.COMM_WORLD.Get_rank(), MPI.COMM_WORLD.Get_size())
+def witness() -> Witness | None:
+    """Return this rank's witness, made on first use; None where no file can be held open."""
+    with suppress(OSError):
+        return Witness(MPI.COMM_WORLD.Get_rank(), MPI.COMM_WORLD.Get_size())
+    return None
 
 
 def this_rank() -> int:
@@ -64,7 +67,8 @@ def everyone_failed(speak_up: Callable[[], None]) -> bool:
 
 def silent_abort(code: int) -> int:
     """End all processes of the job; MPI's own lines about it are not shown."""
-    witness().aborts()
+    if (seen_by := witness()) is not None:
+        seen_by.aborts()
     time.sleep(0.1)  # what was printed is on its way through the launcher
     nowhere = os.open(os.devnull, os.O_WRONLY)
     os.dup2(nowhere, 2)
