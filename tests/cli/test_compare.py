@@ -134,6 +134,7 @@ def test_a_method_that_refuses_says_so_everywhere(sfcpart, tmp_path):
     assert (tmp_path / "a.png").exists()
 
 
+@pytest.mark.large  # plain Python leaves `multilevel` out
 def test_faces_may_be_weighed(sfcpart):
     line = f"{SECTION} -n 8 -m multilevel --json --face-weight"
     count, measure = (
