@@ -132,11 +132,10 @@ def _listen(heard: int, watch: int, message: str, mark: Path) -> None:  # pragma
         os.write(2, f"sfcpart: error: {message}\n".encode())
     os.dup2(os.open(os.devnull, os.O_RDWR), 2)
     time.sleep(PAUSE)
-    if not left:
-        for name in map(os.fsdecode, half_written):
-            shutil.rmtree(name, ignore_errors=True)
-            with suppress(OSError):
-                Path(name).unlink()
+    for name in map(os.fsdecode, half_written):  # also where a rank left because another died
+        shutil.rmtree(name, ignore_errors=True)
+        with suppress(OSError):
+            Path(name).unlink()
     _clear_away(mark)
 
 
