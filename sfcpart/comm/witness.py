@@ -7,7 +7,9 @@ each witness has the closings queued in their order (inotify). The witness of th
 and each removes what its rank was writing. The launcher is not held up: a witness that has spoken
 lets go of the error stream.
 
-The witness is forked while the rank is small, and does nothing but wait in a read.
+The witness is forked while the rank is small, and does nothing but wait in a read. It leaves by
+`os._exit`, so that nothing of the rank's is run twice: that is why coverage cannot see its
+functions, which `tests/mpi/test_faults.py` checks by what they print and remove.
 """
 
 from __future__ import annotations
@@ -43,11 +45,6 @@ class Witness:
     ----------
     rank, size : int
         What the message names.
-
-    Examples
-    --------
-    >>> Witness  # forks: see `tests/mpi/test_faults.py`
-    <class 'sfcpart.comm.witness.Witness'>
     """
 
     def __init__(self, rank: int, size: int) -> None:
@@ -57,7 +54,7 @@ class Witness:
         self._held = os.open(self._mark, os.O_CREAT | os.O_WRONLY, 0o600)
         heard, self._told = os.pipe()
         ready, begun = os.pipe()
-        if os.fork() == 0:  # pragma: no cover - a process of its own, seen by its message
+        if os.fork() == 0:  # pragma: no cover - ends by os._exit
             _wait(heard, begun, f"rank {rank} of {size} was killed by a signal", self._mark)
         os.close(heard)
         os.close(begun)
@@ -97,7 +94,7 @@ def _told_by(job: Path) -> Path:
     return job / "told"
 
 
-def _wait(heard: int, begun: int, message: str, mark: Path) -> None:  # pragma: no cover
+def _wait(heard: int, begun: int, message: str, mark: Path) -> None:  # pragma: no cover - see above
     """Watch and listen until the rank has left, one way or the other; never return."""
     try:
         os.setsid()  # signals to the job are not for the witness
@@ -118,7 +115,9 @@ def _wait(heard: int, begun: int, message: str, mark: Path) -> None:  # pragma: 
         os._exit(0)
 
 
-def _listen(heard: int, watch: int, message: str, mark: Path) -> None:  # pragma: no cover
+def _listen(
+    heard: int, watch: int, message: str, mark: Path
+) -> None:  # pragma: no cover - see above
     """Follow what the rank says; speak for it if it ends without a word."""
     half_written: set[bytes] = set()
     left = False
@@ -139,7 +138,7 @@ def _listen(heard: int, watch: int, message: str, mark: Path) -> None:  # pragma
     _clear_away(mark)
 
 
-def _first_closed(watch: int, own: str) -> str:  # pragma: no cover
+def _first_closed(watch: int, own: str) -> str:  # pragma: no cover - see above
     """Return whose file was closed first, of those that had not taken theirs away before."""
     closed: list[str] = []
     deleted: set[str] = set()
@@ -156,7 +155,7 @@ def _first_closed(watch: int, own: str) -> str:  # pragma: no cover
     return closed[0] if closed else own
 
 
-def _clear_away(mark: Path) -> None:  # pragma: no cover
+def _clear_away(mark: Path) -> None:  # pragma: no cover - see above
     """Remove this rank's file; the last of the node removes the folder."""
     with suppress(OSError):
         mark.unlink()
