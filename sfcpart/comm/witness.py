@@ -94,7 +94,7 @@ def _told_by(job: Path) -> Path:
     return job / "told"
 
 
-def _wait(heard: int, begun: int, message: str, mark: Path) -> None:  # pragma: no cover - see above
+def _wait(heard: int, begun: int, message: str, mark: Path) -> None:  # pragma: no cover
     """Watch and listen until the rank has left, one way or the other; never return."""
     try:
         os.setsid()  # signals to the job are not for the witness
@@ -117,7 +117,7 @@ def _wait(heard: int, begun: int, message: str, mark: Path) -> None:  # pragma: 
 
 def _listen(
     heard: int, watch: int, message: str, mark: Path
-) -> None:  # pragma: no cover - see above
+) -> None:  # pragma: no cover
     """Follow what the rank says; speak for it if it ends without a word."""
     half_written: set[bytes] = set()
     left = False
@@ -138,7 +138,7 @@ def _listen(
     _clear_away(mark)
 
 
-def _first_closed(watch: int, own: str) -> str:  # pragma: no cover - see above
+def _first_closed(watch: int, own: str) -> str:  # pragma: no cover
     """Return whose file was closed first, of those that had not taken theirs away before."""
     closed: list[str] = []
     deleted: set[str] = set()
@@ -155,7 +155,7 @@ def _first_closed(watch: int, own: str) -> str:  # pragma: no cover - see above
     return closed[0] if closed else own
 
 
-def _clear_away(mark: Path) -> None:  # pragma: no cover - see above
+def _clear_away(mark: Path) -> None:  # pragma: no cover
     """Remove this rank's file; the last of the node removes the folder."""
     with suppress(OSError):
         mark.unlink()
