@@ -115,9 +115,7 @@ def _wait(heard: int, begun: int, message: str, mark: Path) -> None:  # pragma: 
         os._exit(0)
 
 
-def _listen(
-    heard: int, watch: int, message: str, mark: Path
-) -> None:  # pragma: no cover
+def _listen(heard: int, watch: int, message: str, mark: Path) -> None:  # pragma: no cover
     """Follow what the rank says; speak for it if it ends without a word."""
     half_written: set[bytes] = set()
     left = False
